@@ -1,0 +1,36 @@
+// SPDX-License-Identifier: Apache-2.0
+#pragma once
+#include <optional>
+
+#include "model/dynamics/start.hpp"
+#include "model/infer/candidate.hpp"
+
+namespace halfturn::infer {
+
+/// A quantity known beforehand: normal, mean and standard deviation; sigma 0 holds it fixed.
+struct Known {
+  double mean = 0.0;
+  double sigma = 0.0;
+};
+
+/// Where a frequency must lie, rad/s.
+struct Expected {
+  double low = 0.0;
+  double high = 0.0;
+};
+
+/// What is known before a scan is looked at: from the configuration, and from the drive's history where it has one. Angular
+/// rates in rad/s, decay rates in 1/s.
+struct Prior {
+  std::optional<Expected> expect;        // of the Rabi frequency; without: below the scan's sampling limit
+  std::optional<Known> log_rabi;         // history's prediction of ln(Omega / (rad/s)) at the scan's time and drive amplitude
+  std::optional<Known> detuning;         // drive minus transition; without: exactly 0 (duration scans), free (detuning scans)
+  std::optional<Known> floor, contrast;  // of the readout
+  Known dead_time{0.0, 100e-9};          // s
+  double decay = 0.0;                    // known natural decay within the pair
+  double loss = 0.0;                     // known natural decay out of the pair
+  dynamics::Start start;                 // prepared state, impurity, how lost population reads
+  DynamicsSet candidates;                // those to be compared
+};
+
+}  // namespace halfturn::infer
