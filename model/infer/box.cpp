@@ -25,14 +25,14 @@ double reach(const Vector& from, const Vector& direction, const Vector& lower, c
   return length;
 }
 
-/// The held coordinate whose release lowers the objective fastest, or -1.
-Index to_release(const Vector& slope, const Vector& step, const Vector& lower, const Vector& upper, const BoxStep& state,
-                 double tolerance) {
+/// The held coordinate whose release lowers the objective fastest, or -1. `unit` makes slopes comparable.
+Index to_release(const Vector& slope, const Vector& unit, const Vector& step, const Vector& lower, const Vector& upper,
+                 const BoxStep& state, double tolerance) {
   Index best = -1;
   double most = tolerance;
   for (Index i = 0; i < slope.size(); ++i) {
     if (state.free[i] || lower[i] == upper[i]) continue;
-    const double gain = step[i] == lower[i] ? -slope[i] : slope[i];
+    const double gain = (step[i] == lower[i] ? -slope[i] : slope[i]) / unit[i];
     if (gain > most) {
       most = gain;
       best = i;
@@ -73,8 +73,10 @@ bool minimise_in_box(const Vector& gradient, const Matrix& hessian, const Vector
   for (Index i = 0; i < n; ++i) {
     out.free[i] = !((lower[i] == 0.0 && gradient[i] >= 0.0) || (upper[i] == 0.0 && gradient[i] <= 0.0));
   }
+  const Vector diagonal = hessian.diagonal();
+  const Vector unit = (diagonal.array() > 0.0).select(diagonal.cwiseAbs().cwiseSqrt(), 1.0);
   // Multipliers smaller than this are rounding.
-  const double tolerance = 8.0 * std::numeric_limits<double>::epsilon() * gradient.cwiseAbs().maxCoeff();
+  const double tolerance = 8.0 * std::numeric_limits<double>::epsilon() * gradient.cwiseQuotient(unit).cwiseAbs().maxCoeff();
   // Each exchange lowers the objective, so no working set returns; this many only rounding could ask for.
   const int most = 10 * static_cast<int>(n) + 10;
   for (int exchange = 0; exchange < most; ++exchange) {
@@ -89,7 +91,7 @@ bool minimise_in_box(const Vector& gradient, const Matrix& hessian, const Vector
       out.free[blocking] = false;
       continue;
     }
-    const Index released = to_release(gradient + hessian * p, p, lower, upper, out, tolerance);
+    const Index released = to_release(gradient + hessian * p, unit, p, lower, upper, out, tolerance);
     if (released < 0) break;
     out.free[released] = true;
   }
