@@ -40,7 +40,7 @@ struct Day {
 struct Trend {
   int fits = 0;                     // not refused, with a value and a positive sigma
   double slope_hz_per_hour = kNone;
-  double slope_sigma = kNone;
+  double slope_sigma = kNone;       // widened by scatter
   double slope_low = kNone, slope_high = kNone;  // 95 % interval
   double mean_hz = kNone;           // weighted mean
   double relative_per_hour = kNone; // slope and its interval over the weighted mean
@@ -56,7 +56,7 @@ struct Summary {
 /// Summarises the fits. The trend has an interval from three fits at two or more different times; its sigma is that of the
 /// weights times `scatter` where that is above 1 (Birge, Phys. Rev. 40, 207 (1932); never narrower than the fits' own
 /// sigmas), its interval that of Student's t with n - 2 degrees of freedom. The standard error of a median is 1.2533 sigma/sqrt(n)
-/// from three fits on (exact for many normal values, up to 8 % too large for few), with sigma the larger of the fits' median
+/// from three fits on (exact for many normal values, up to 15 % too large for few), with sigma the larger of the fits' median
 /// sigma and 1.4826 times their median absolute deviation; below three fits it is the fits' sigma / sqrt(n).
 /// Fault `bad_shape` where the arrays differ in length.
 Result<Summary> summarise(const Fits& fits);
