@@ -96,7 +96,8 @@ std::string block(const DriveDrift& part, bool colour) {
   std::string text = "Drive " + part.drive;
   if (std::isfinite(part.drive_amplitude)) text += " at amplitude " + plain(part.drive_amplitude, 4);
   text += "\n" + laid_out(lines, colour) + trend_text(part.summary.trend);
-  if (part.at_other_amplitudes > 0) text += "  Left aside: " + std::to_string(part.at_other_amplitudes) + " scans at other drive amplitudes.\n";
+  if (part.at_other_amplitudes > 0) text += "  Left aside: " + std::to_string(part.at_other_amplitudes) +
+                                            (part.at_other_amplitudes == 1 ? " scan" : " scans") + " at other drive amplitudes.\n";
   return text;
 }
 
