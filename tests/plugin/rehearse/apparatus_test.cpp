@@ -98,6 +98,19 @@ TEST_CASE("What is true drifts as the settings say, whatever scans are taken") {
   CHECK(scanned.truth(0).rabi_hz == settings.rabi_hz);
 }
 
+TEST_CASE("Sudden changes come at random moments, as often and as large as the settings say") {
+  // Compound Poisson process (Campbell's theorem): the logarithm has variance n s^2 for a mean of n jumps of standard deviation s,
+  // and its square the variance (2 n^2 + 3 n) s^4. 400 nights; 4.5 standard errors.
+  auto settings = steady();
+  settings.jumps_per_hour = 1;
+  double variance = 0;
+  for (std::uint64_t seed = 0; seed < 400; ++seed) {
+    const Truth end = Apparatus(settings, seed, 4 * 3600).truth(4 * 3600);
+    variance += std::pow(std::log(end.rabi_hz / settings.rabi_hz), 2) / 400;
+  }
+  CHECK(std::abs(variance / (4 * 0.06 * 0.06) - 1) < 4.5 * std::sqrt((2 + 3.0 / 4) / 400));
+}
+
 TEST_CASE("Equal seeds give equal counts, others do not") {
   const std::vector<double> lengths_s = {1e-6, 2e-6, 3e-6, 4e-6, 5e-6, 6e-6};
   const auto counts = [&](std::uint64_t seed) { return Apparatus({}, seed, 3600).take_flop(600, lengths_s, 1000, 80e6).counts; };
