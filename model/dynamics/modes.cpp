@@ -47,12 +47,16 @@ struct Pole {
   S root, x, inverse_slope, curvature;
 };
 
-/// The amplitudes of one mode, row by row.
+/// The amplitudes of one mode, row by row, and the magnitudes of the terms that each constant is the sum of.
 template <class S>
 struct Amplitudes {
   S constant[kRowCount];
   S linear[kRowCount];
+  double size[kRowCount];
 };
+
+inline double magnitude(double a) { return std::abs(a); }
+inline double magnitude(Complex a) { return std::abs(a.re) + std::abs(a.im); }
 
 template <class S>
 Amplitudes<S> amplitudes(const Problem& p, const Pole<S>& pole) {
@@ -81,10 +85,14 @@ Amplitudes<S> amplitudes(const Problem& p, const Pole<S>& pole) {
   Amplitudes<S> result;
   struct Pair {
     S constant, linear;
+    double size;
   };
+  const S slope = inv * n_s;
   const auto derivative = [&](S n_p, S chi_p, S chi_ps) {
-    const S bracket = n_s * chi_p + n * (chi_ps - chi_p * pole.curvature);
-    return Pair{sign * (inv * (n_p - inv * bracket)), (-sign) * (amplitude * (inv * chi_p))};
+    const S shift = inv * chi_p;  // minus the derivative of the root by the parameter
+    const S a = inv * n_p, b = slope * shift, c = amplitude * (inv * chi_ps), d = amplitude * (shift * pole.curvature);
+    const double size = magnitude(a) + magnitude(b) + magnitude(c) + magnitude(d);
+    return Pair{sign * (a - b - c + d), (-sign) * (amplitude * shift), size};
   };
   const Pair by_rabi = derivative(m_w, m_w * u, m_ws * u + 2.0 * m_w);
   const Pair by_detuning = derivative(h_d * z, h_d * t, h_d * t_s);
@@ -97,22 +105,26 @@ Amplitudes<S> amplitudes(const Problem& p, const Pole<S>& pole) {
 
   result.constant[kValueRow] = sign * amplitude;
   result.linear[kValueRow] = S(0);
-  const auto set = [&](int rate, const S& constant, const S& linear) {
-    result.constant[kRateRow + rate] = constant;
-    result.linear[kRateRow + rate] = linear;
+  result.size[kValueRow] = magnitude(amplitude);
+  const auto set = [&](int rate, const Pair& of, double coherence_share) {
+    result.constant[kRateRow + rate] = of.constant + coherence_share * by_coherence.constant;
+    result.linear[kRateRow + rate] = of.linear + coherence_share * by_coherence.linear;
+    result.size[kRateRow + rate] = of.size + coherence_share * by_coherence.size;
   };
-  set(kByRabi, by_rabi.constant, by_rabi.linear);
-  set(kByDetuning, by_detuning.constant, by_detuning.linear);
-  set(kByDecay, by_decay.constant + 0.5 * by_coherence.constant, by_decay.linear + 0.5 * by_coherence.linear);
-  set(kByLoss, by_loss.constant + 0.5 * by_coherence.constant, by_loss.linear + 0.5 * by_coherence.linear);
-  set(kByDephasing, by_coherence.constant, by_coherence.linear);
+  set(kByRabi, by_rabi, 0);
+  set(kByDetuning, by_detuning, 0);
+  set(kByDecay, by_decay, 0.5);
+  set(kByLoss, by_loss, 0.5);
+  set(kByDephasing, by_coherence, 0);
   result.constant[kLengthRow] = sign * (amplitude * s);
   result.linear[kLengthRow] = S(0);
+  result.size[kLengthRow] = magnitude(result.constant[kLengthRow]);
   return result;
 }
 
 void put(Modes& modes, int slot, const Amplitudes<double>& real) {
   for (int row = 0; row < kRowCount; ++row) {
+    modes.size[row] += real.size[row];
     modes.constant[row][slot] = real.constant[row];
     modes.linear[row][slot] = real.linear[row];
   }
@@ -121,6 +133,7 @@ void put(Modes& modes, int slot, const Amplitudes<double>& real) {
 /// A pair of conjugate modes: a exp(r t) + its conjugate = 2 exp(Re r t) (Re a cos - Im a sin).
 void put(Modes& modes, const Amplitudes<Complex>& pair) {
   for (int row = 0; row < kRowCount; ++row) {
+    modes.size[row] += 2 * pair.size[row];
     modes.constant[row][2] = 2 * pair.constant[row].re;
     modes.constant[row][3] = -2 * pair.constant[row].im;
     modes.linear[row][2] = 2 * pair.linear[row].re;
@@ -140,9 +153,21 @@ Pole<S> pole(const S& root, const S& x, const S* others, int count) {
   return {root, x, inverse(slope), curvature};
 }
 
-void clear(Modes& modes) { modes = Modes{}; }
+/// The largest of |root|/gap: what a relative error of a root is multiplied by in the differences of roots.
+double crowding(const Complex* roots, int count) {
+  double worst = 0;
+  for (int i = 0; i < count; ++i)
+    for (int j = 0; j < i; ++j) {
+      const Complex a = roots[i], b = roots[j], gap = a - b;
+      const double size = std::max(a.re * a.re + a.im * a.im, b.re * b.re + b.im * b.im);
+      const double ratio = size / (gap.re * gap.re + gap.im * gap.im);
+      if (!(ratio <= worst)) worst = ratio;
+    }
+  return std::sqrt(worst);
+}
 
-void damped(const Problem& p, Modes& modes) {
+/// Fills in the modes and returns the crowding of their roots.
+double damped(const Problem& p, Modes& modes) {
   const Roots roots = find_roots(p.rabi, p.detuning, p.loss, p.coherence, p.leaving);
   const int singles = roots.singles;
   const double middle = -0.5 * roots.pair_sum;  // real part of the pair
@@ -161,7 +186,8 @@ void damped(const Problem& p, Modes& modes) {
       const double curvature = (singles == 2 ? 2 / gap : 0) + 4 * (r - middle) / to_pair;
       put(modes, i, amplitudes(p, Pole<double>{r, roots.single_x[i], 1 / (gap * to_pair), curvature}));
     }
-    return;
+    const Complex all[4] = {upper, others[0], others[1], others[2]};
+    return crowding(all, 2 + singles);
   }
   // Two real roots: the larger in magnitude without cancellation, the other from their product.
   const double fast = middle - spread, slow = fast == 0 ? 0 : roots.pair_product / fast;
@@ -174,8 +200,11 @@ void damped(const Problem& p, Modes& modes) {
     for (int j = 0; j < 2 + singles; ++j)
       if (j != i) others[count++] = all[j];
     const double x = i < 2 ? all[i] + p.coherence : roots.single_x[i - 2];
-    put(modes, i < 2 ? i + 2 : i - 2, amplitudes(p, pole<double>(all[i], x, others, count)));
+    const int slot = i < 2 ? i + 2 : i - 2;
+    put(modes, slot, amplitudes(p, pole<double>(all[i], x, others, count)));
   }
+  const Complex spread_out[4] = {all[0], all[1], all[2], all[3]};
+  return crowding(spread_out, 2 + singles);
 }
 
 /// No damping: X = s^2 (s^2 + w^2), w^2 = W^2 + D^2. In y = s^2, the population is c/s + (e0 - c) s/(y + w^2) and every
@@ -224,14 +253,16 @@ void undamped(const Problem& p, Modes& modes) {
   put_row(kByDecay, by_decay, 0.5);
   put_row(kByLoss, by_loss, 0.5);
   put_row(kByDephasing, zero, 1);
+  for (int row = 0; row < kRowCount; ++row)
+    for (double amplitude : modes.constant[row]) modes.size[row] += std::abs(amplitude);
 }
 
 /// The magnitude that a row's modes reach within the scan, added up without regard to sign.
 double reach(const Modes& modes, int row, double longest) {
-  double sum = 0;
+  double sum = modes.size[row];
   for (int i = 0; i < 4; ++i) {
     const double rate = std::abs(modes.rate[i == 3 && modes.oscillates ? 2 : i]);
-    sum += std::abs(modes.constant[row][i]) + std::abs(modes.linear[row][i]) * (rate * longest > 1 ? 1 / rate : longest);
+    sum += std::abs(modes.linear[row][i]) * (rate * longest > 1 ? 1 / rate : longest);
   }
   return sum;
 }
@@ -254,16 +285,18 @@ bool pose(const Rates& r, const Start& start, Problem& p) {
 }
 
 bool decompose(const Problem& problem, const Wanted& wanted, double longest, Modes& modes) {
-  clear(modes);
+  modes = Modes{};
+  double crowded = 1;
   if (problem.undamped) {
     undamped(problem, modes);
   } else {
-    damped(problem, modes);
+    crowded = damped(problem, modes);
   }
+  const double amplification = kAmplification * crowded;
   modes.offset[kValueRow] = problem.bright && !problem.undamped ? 1 : 0;
-  if (!(kAmplification * reach(modes, kValueRow, longest) <= kValueError)) return false;
+  if (!(amplification * reach(modes, kValueRow, longest) <= kValueError)) return false;
   for (int row = kRateRow; row < kLengthRow; ++row) {
-    if (wanted[row] && !(kAmplification * reach(modes, row, longest) <= kRateError * longest)) return false;
+    if (wanted[row] && !(amplification * reach(modes, row, longest) <= kRateError * longest)) return false;
   }
   return true;
 }

@@ -24,6 +24,7 @@ struct Modes {
   double offset[kRowCount];
   double rate[4];
   double frequency;
+  double size[kRowCount];  // the magnitudes of all terms whose sums are the constants of a row, added up
   bool oscillates;
 };
 
