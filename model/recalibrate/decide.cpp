@@ -16,9 +16,6 @@ using constants::kTwoPi;
 
 // The least rotation worth a change.
 constexpr double kLeastRotation = 5e-3;
-// Floors of the walks per square root of an hour: of the log Rabi frequency, and of the line in parts of its width.
-constexpr double kRabiNoise = 1e-3;
-constexpr double kLineNoise = 1e-2;
 // A line is moved to when it is this part of its width away, and its sigma as well.
 constexpr double kLeastCarrierStep = 5e-3;
 
