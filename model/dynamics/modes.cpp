@@ -11,15 +11,6 @@
 namespace halfturn::dynamics::detail {
 namespace {
 
-constexpr double kEpsilon = std::numeric_limits<double>::epsilon();
-
-// The sum of the magnitudes of the modes' amplitudes, times this, is taken as the error of their sum; it is held to a
-// hundredth of the stated accuracy of values and a tenth of that of derivatives. Over the 2400 sets of dynamics_expm.py,
-// which crowd around double and triple roots, the true error was at most 1.5 times this estimate.
-constexpr double kAmplification = 8 * kEpsilon;
-constexpr double kValueError = 1e-12;
-constexpr double kRateError = 1e-11;  // in units of the longest pulse length
-
 void put(Modes& modes, int slot, const Amplitudes<double>& real) {
   for (int row = 0; row < kRowCount; ++row) {
     modes.size[row] += real.size[row];
