@@ -56,17 +56,16 @@ Located coherence_root(double w2, double d2, double loss, double g, double k) {
     const double ratio_s = (s + s_plus_k - ratio) * pole, h = x * x + d2;
     return Slope{h * ratio + w2 * x, 2 * x * ratio + h * ratio_s + w2};
   };
-  const double from_detuning = d2 * g, from_rabi = w2 * (g - half), share = from_detuning / (from_detuning + from_rabi);
-  const double middle = 0.5 * end;
+  const double guess = coherence_guess(w2, d2, loss, g, k), middle = 0.5 * end;
   const bool beyond = (f(middle - g, middle, middle - end).value > 0) != (end > 0);  // the root lies between middle and end
   const double low = std::min(0.0, middle), high = std::max(0.0, middle);
   if (beyond) {
     const auto from_end = [=](double y) { return f(y - k, y + end, y); };
-    const double y = bracketed_newton(from_end, -high, -low, false, -std::min(1 - share, 0.5) * end);
+    const double y = bracketed_newton(from_end, -high, -low, false, std::clamp(guess - end, -high, -low));
     return {y - k, y + end};
   }
   const auto from_start = [=](double x) { return f(x - g, x, x - end); };
-  const double x = bracketed_newton(from_start, low, high, false, std::min(share, 0.5) * end);
+  const double x = bracketed_newton(from_start, low, high, false, std::clamp(guess, low, high));
   return {x - g, x};
 }
 
