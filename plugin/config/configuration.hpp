@@ -9,6 +9,8 @@
 #include "model/infer/prior.hpp"
 #include "model/quantity/result.hpp"
 #include "model/recalibrate/policy.hpp"
+#include "plugin/config/diagnosis.hpp"
+#include "plugin/wire/request.hpp"
 
 /// A configuration, read and checked: SI units, angular rates in rad/s.
 namespace halfturn::config {
@@ -26,6 +28,7 @@ struct Drive {
   std::optional<double> waist_m;                        // 1/e^2 radius of the beam's intensity
   std::optional<double> carrier_uncertainty;            // rad/s
   std::optional<infer::Known> floor, contrast;
+  wire::ReadoutKind readout_kind = wire::ReadoutKind::binomial;  // what floor and contrast are of: fractions, signal, photons
   std::optional<infer::Expected> expect;                // rad/s
   std::optional<infer::DynamicsSet> dynamics;
   std::optional<infer::Known> dead_time;                // s
@@ -41,28 +44,18 @@ struct Configuration {
   bool insecure = false;
   std::map<std::string, Drive> drives;
   std::string text;                                     // as read
-  std::string fingerprint;                              // of the text, hexadecimal
+  std::string fingerprint;                              // of the text: FNV-1a, 64 bits, 16 hexadecimal digits
 };
 
-/// A fault of a configuration: the place as `line:column` (from 1) and `path` (`drives.red.pulses.flip.length`).
-struct Diagnosis {
-  int line = 0, column = 0;
-  std::string path;
-  std::string message;  // `found ..., expected ...`
-};
-
-/// Reads a configuration from its text. `file` names it in messages; `folder` is what the log's path is relative to. All faults
-/// are found at once.
+/// Reads a configuration from its text, as schemas/configuration.schema.json describes it. `folder` is what the log's path is
+/// relative to; empty for the working directory. All faults are found at once, in the order of the text.
 struct Reading {
   std::optional<Configuration> configuration;           // present exactly where there are no faults
   std::vector<Diagnosis> faults;
 };
 Reading read(const std::string& text, const std::string& folder);
 
-/// Reads the file; a file that cannot be read is a fault at 0:0.
+/// Reads the file, and the log's path relative to its folder; a file that cannot be read is a fault at 0:0.
 Reading read_file(const std::string& path);
-
-/// `file:line:column: path: message`, as `check` prints it.
-std::string to_text(const Diagnosis& diagnosis, const std::string& file);
 
 }  // namespace halfturn::config

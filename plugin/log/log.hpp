@@ -59,10 +59,12 @@ struct Range {
   std::string drive;  // empty: all
   std::optional<Time> since, until;  // since <= happened_at < until
   std::int64_t limit = 1000;         // 0: no limit
-  std::int64_t after = 0;            // number of the event to go on behind, among those of equal time; 0: from the start
+  std::int64_t after = 0;            // number of the event to go on behind, among those at `since`; 0: from the start
 };
 
-/// One connection, one thread at a time. A Fault has the code `log_unavailable` and says what failed and what to do.
+/// One connection, one thread at a time. A Fault has the code `log_unavailable` and says what failed and what to do; the group
+/// of writes is then rolled back, and a later `begin` tries afresh. Misuse has other codes and leaves the group as it was:
+/// `bad_value` (an event that makes no sense), `id_reused`, `internal` (a write outside a group, a group inside a group).
 class Log {
  public:
   virtual ~Log() = default;
@@ -75,12 +77,14 @@ class Log {
   /// Appends an event, with a fit's bulk where given. Returns its number.
   virtual Result<std::int64_t> append(const Event& event, const Bulk* bulk) = 0;
 
-  /// Keeps the reply to a request for seven days, so that the same request finds it again.
+  /// Keeps the reply to a request for seven days, so that the same request finds it again. The first reply to an id stands:
+  /// the same digest again changes nothing, another one is a Fault `id_reused`.
   virtual Result<void> keep_reply(const std::string& id, const StoredReply& reply, Time now) = 0;
   virtual Result<std::optional<StoredReply>> find_reply(const std::string& id) = 0;
+  /// Forgets the replies kept before that time. May stand outside a group.
   virtual Result<void> forget_replies(Time before) = 0;
 
-  /// Stores the text of a configuration by its fingerprint, once.
+  /// Stores the text of a configuration by its fingerprint, once. May stand outside a group.
   virtual Result<void> keep_configuration(const std::string& fingerprint, const std::string& text, Time now) = 0;
 
   /// Every event of all drives in order of commitment: what states are folded from.

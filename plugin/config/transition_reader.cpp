@@ -1,0 +1,79 @@
+// SPDX-License-Identifier: Apache-2.0
+#include "plugin/config/atoms.hpp"
+#include "plugin/config/catalogue.hpp"
+#include "plugin/config/keys.hpp"
+#include "plugin/config/sections.hpp"
+
+namespace halfturn::config {
+namespace {
+
+constexpr int kLargest = 40;  // doubled: no atom has a spin or a projection of more than 20
+
+std::optional<atom::Level> read_level(Reader& reader, const Place& at) {
+  if (!at || !reader.map(at, {keys::kLevel})) return std::nullopt;
+  atom::Level level;
+  const Place term = at["term"];
+  if (term) level.term = reader.text(term, "a term such as 5S1/2").value_or("");
+  level.twice_J = read_doubled(reader, reader.need(at, "J", "the level's J, such as 3/2"), 0, kLargest).value_or(0);
+  level.twice_F = read_doubled(reader, at["F"], 0, kLargest);
+  level.twice_m = read_doubled(reader, at["m"], -kLargest, kLargest);
+  level.twice_S = read_doubled(reader, at["S"], 0, kLargest);
+  level.parity = read_parity(reader, at["parity"]);
+  return level;
+}
+
+std::optional<atom::Polarisation> read_polarisation(Reader& reader, const Place& at) {
+  const auto text = reader.text(at, "sigma-, pi or sigma+");
+  if (!text) return std::nullopt;
+  const auto polarisation = atom::read_polarisation(*text);
+  if (!polarisation) reader.fault(at, "found " + quoted(*text) + ", expected sigma-, pi or sigma+");
+  return polarisation;
+}
+
+atom::InlineTransition read_numbers(Reader& reader, const Place& at) {
+  atom::InlineTransition out;
+  out.name = at["name"] ? reader.text(at["name"], "a name").value_or("") : std::string();
+  out.multipole = read_multipole(reader, at["kind"]).value_or(out.multipole);
+  out.wavelength_m = reader.quantity(at["wavelength"], Dimension::length, kPositive);
+  out.frequency_hz = reader.quantity(at["frequency"], Dimension::frequency, kPositive);
+  out.linewidth_hz = reader.quantity(at["linewidth"], Dimension::frequency, kPositive);
+  out.lifetime_s = reader.quantity(at["lifetime"], Dimension::time, kPositive);
+  out.branching = reader.quantity(at["branching"], Dimension::fraction, {0.0, 1.0, true, "above 0 and at most 1"});
+  out.angular_factor = reader.quantity(at["angular_factor"], Dimension::number, {-1.0, 1.0, false, "between -1 and 1"});
+  out.moment_C_m = reader.quantity(at["moment"], Dimension::dipole, kPositive);
+  out.magnetic_moment_J_T = reader.quantity(at["magnetic_moment"], Dimension::magnetic, kPositive);
+  out.lower = read_level(reader, at["lower"]);
+  out.upper = read_level(reader, at["upper"]);
+  out.twice_I = read_doubled(reader, at["nuclear_spin"], 0, kLargest).value_or(0);
+  out.polarisation = read_polarisation(reader, at["polarisation"]);
+  return out;
+}
+
+std::optional<atom::Transition> keep(Reader& reader, const Place& at, Result<atom::Transition> transition) {
+  if (transition) return std::move(*transition);
+  const std::string& message = transition.error().message;
+  reader.fault(at, message);
+  return std::nullopt;
+}
+
+}  // namespace
+
+std::optional<atom::Transition> read_transition(Reader& reader, const Place& at) {
+  if (!at) return std::nullopt;
+  if (at.node->kind == Node::Kind::map) {
+    const std::size_t before = reader.faults.size();
+    if (!reader.map(at, {keys::kTransition})) return std::nullopt;
+    const atom::InlineTransition numbers = read_numbers(reader, at);
+    return reader.faults.size() > before ? std::nullopt : keep(reader, at, atom::inline_transition(numbers));
+  }
+  const auto name = reader.text(at, "the name of a transition, or a map with its numbers");
+  if (!name) return std::nullopt;
+  const auto& lines = built_in_catalogue();
+  if (!lines) {
+    reader.fault(at, "found no catalogue of transitions that can be read, expected the one of this program: " + lines.error().message);
+    return std::nullopt;
+  }
+  return keep(reader, at, atom::resolve(*name, *lines));
+}
+
+}  // namespace halfturn::config
