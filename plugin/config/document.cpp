@@ -92,7 +92,7 @@ class Builder : public YAML::EventHandler {
 
   void check_extras(const YAML::Mark& mark, const std::string& tag, YAML::anchor_t anchor) {
     if (anchor != 0) refuse(mark, "found an anchor (&), expected the value alone");
-    if (!tag.empty() && tag != "?" && tag != "!") refuse(mark, "found the tag " + quoted(tag) + ", expected the value alone");
+    if (!tag.empty() && tag != "?" && tag != "!") refuse(mark, "found the tag " + in_quotes(tag) + ", expected the value alone");
   }
 
   void count(const YAML::Mark& mark) {
@@ -122,7 +122,7 @@ class Builder : public YAML::EventHandler {
     level.key = text;
     level.key_mark = mark;
     const auto [seen, fresh] = level.seen.emplace(text, mark.line + 1);
-    if (!fresh) refuse(mark, "found the key " + quoted(text) + " a second time (first in line " + std::to_string(seen->second) +
+    if (!fresh) refuse(mark, "found the key " + in_quotes(text) + " a second time (first in line " + std::to_string(seen->second) +
                              "), expected it once");
   }
 

@@ -51,12 +51,12 @@ bool Reader::map(const Place& at, const Keys& keys) {
   for (const Node& child : at.node->children) {
     if (holds(keys.known, child.key)) continue;
     const Place place = at.child(child);
-    const std::string key = "the key " + quoted(child.key);
+    const std::string key = "the key " + in_quotes(child.key);
     if (holds(keys.later, child.key))
       fault_at_key(place, "found " + key + ", which is not available in this version, expected none");
     else
       fault_at_key(place, "found the unknown " + key.substr(4) + ", expected a known key: the nearest is " +
-                              quoted(nearest(child.key, keys.known)) + hint(*at.node, child));
+                              in_quotes(nearest(child.key, keys.known)) + hint(*at.node, child));
   }
   return true;
 }
@@ -70,7 +70,7 @@ bool Reader::map_of_names(const Place& at, std::string_view what) {
   }
   for (const Node& child : at.node->children)
     if (!is_name(child.key))
-      fault_at_key(at.child(child), "found the name " + quoted(child.key) + ", expected 1 to 48 of A-Z a-z 0-9 _ -");
+      fault_at_key(at.child(child), "found the name " + in_quotes(child.key) + ", expected 1 to 48 of A-Z a-z 0-9 _ -");
   return true;
 }
 
@@ -105,7 +105,7 @@ std::optional<double> Reader::quantity(const Place& at, Dimension dimension, con
   }
   if (*value < range.low || *value > range.high || (range.low_is_open && *value == range.low)) {
     const std::string what(expected(dimension).substr(0, expected(dimension).find(" with")));
-    fault(at, "found " + quoted(at.node->text) + ", expected " + what + " " + std::string(range.words));
+    fault(at, "found " + in_quotes(at.node->text) + ", expected " + what + " " + std::string(range.words));
     return std::nullopt;
   }
   return *value;
@@ -161,7 +161,7 @@ std::optional<std::size_t> Reader::choice(const Place& at, std::span<const std::
     const auto word = std::find(words.begin(), words.end(), node.text);
     if (word != words.end()) return static_cast<std::size_t>(word - words.begin());
     if (holds(later_words, node.text)) {
-      fault(at, "found " + quoted(node.text) + ", which is not available in this version, expected " + listed(words));
+      fault(at, "found " + in_quotes(node.text) + ", which is not available in this version, expected " + listed(words));
       return std::nullopt;
     }
   }
@@ -172,7 +172,7 @@ std::optional<std::size_t> Reader::choice(const Place& at, std::span<const std::
 std::string found(const Node& node) {
   switch (node.kind) {
     case Node::Kind::nothing: return "nothing";
-    case Node::Kind::scalar: return quoted(node.text);
+    case Node::Kind::scalar: return in_quotes(node.text);
     case Node::Kind::list: return "a list";
     case Node::Kind::map: return "a map";
   }

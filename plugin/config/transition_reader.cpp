@@ -26,7 +26,7 @@ std::optional<atom::Polarisation> read_polarisation(Reader& reader, const Place&
   const auto text = reader.text(at, "sigma-, pi or sigma+");
   if (!text) return std::nullopt;
   const auto polarisation = atom::read_polarisation(*text);
-  if (!polarisation) reader.fault(at, "found " + quoted(*text) + ", expected sigma-, pi or sigma+");
+  if (!polarisation) reader.fault(at, "found " + in_quotes(*text) + ", expected sigma-, pi or sigma+");
   return polarisation;
 }
 

@@ -179,7 +179,7 @@ std::string_view dimension_of(std::string_view unit) {
 }
 
 std::string complaint(std::string_view text, std::string_view number, std::string_view unit, Dimension dimension) {
-  std::string found = "found " + quoted(text);
+  std::string found = "found " + in_quotes(text);
   const std::string_view other = number.empty() ? std::string_view() : dimension_of(unit);
   if (!other.empty()) found += " (" + std::string(other) + ")";
   return found + ", expected " + expected(dimension, number);
@@ -221,7 +221,7 @@ std::string expected(Dimension dimension, std::string_view number) {
   return std::string(word.article) + " with its unit, such as " + example + " " + std::string(word.unit) + more;
 }
 
-std::string quoted(std::string_view text) {
+std::string in_quotes(std::string_view text) {
   std::string out = "\"";
   std::size_t characters = 0;
   for (const char c : text) {

@@ -24,6 +24,6 @@ std::optional<double> decimal(std::string_view text);
 std::string expected(Dimension dimension, std::string_view number = {});
 
 /// The text in quotation marks, cut after 60 characters, control characters as `?`.
-std::string quoted(std::string_view text);
+std::string in_quotes(std::string_view text);
 
 }  // namespace halfturn::config
