@@ -35,6 +35,7 @@ struct Pulse {
   double angle_rad = 0, length_s = 0, exact_s = 0, sigma_s = 0, low_s = 0, high_s = 0;
   std::int64_t ticks = 0;
   double previous_s = 0, change = 0, rotation_error_rad = 0, tick_error_rad = 0, transfer = 0;
+  bool in_amplitude = false;  // `adjust: amplitude`: the members `_s` are relative drive amplitudes and are written `_amplitude`
 };
 
 struct Candidate {
@@ -60,8 +61,19 @@ struct Overlay {
   std::vector<double> axis, signal, low, high;
 };
 
+/// One site of a scan of many; written by columns, one array a field.
+struct SiteFit {
+  std::string name;
+  std::string verdict;
+  std::vector<Reason> reasons;
+  std::vector<std::pair<std::string, Estimate>> estimates;
+  std::vector<std::pair<std::string, Pulse>> pulses;
+  std::string dynamics;
+  Quality quality;
+};
+
 struct Fitted {
-  std::string id;  // of the request
+  std::string id;  // of the request; empty: left out
   std::string scan_name, drive;
   std::optional<Time> taken_at;
   std::string verdict;
@@ -74,6 +86,7 @@ struct Fitted {
   std::vector<Candidate> candidates;
   Quality quality;
   std::optional<Overlay> overlay;
+  std::vector<SiteFit> sites;
   bool stored = false;
   bool replayed = false;
 };
@@ -86,6 +99,16 @@ struct Rows {
   std::string id;
   std::vector<std::string> rows;  // each a `fitted` in MessagePack, without overlay
   std::optional<std::string> next;
+};
+
+/// The next scan's points that teach most per shot.
+struct Advised {
+  std::string id;
+  std::string drive;
+  AxisKind axis_kind = AxisKind::duration;
+  std::vector<double> axis;
+  std::vector<std::int64_t> shots;                              // at each point
+  std::vector<std::pair<std::string, double>> expected_sigma;   // by the name of the estimate
 };
 
 struct DriveState {
@@ -124,7 +147,14 @@ struct Stored {
   std::string message;
 };
 
-using Reply = std::variant<Fitted, Noted, Rows, State, Error, Stored>;
+using Reply = std::variant<Fitted, Noted, Rows, State, Error, Stored, Advised>;
+
+/// Published as `live/DRIVE/`: the overlay of a scan in progress.
+struct Live {
+  std::string drive, scan_name;
+  std::int64_t points = 0;  // so far
+  Overlay overlay;
+};
 
 /// Published as `drift/DRIVE/`.
 struct Drift {
