@@ -68,6 +68,7 @@ class SqliteLog final : public Log {
   ~SqliteLog() override { roll_back(); }
 
   Result<void> begin() override {
+    if (!lock_) return fault("log_unavailable", "log", "The log was opened for reading alone; open it for writing to add to it.");
     if (database_->in_transaction()) return tl::unexpected<Fault>(group_open_already());
     return database_->run("BEGIN IMMEDIATE", "beginning to write");
   }
