@@ -2,7 +2,7 @@
 #pragma once
 #include <optional>
 
-#include "model/dynamics/start.hpp"
+#include "model/dynamics/two_level.hpp"
 #include "model/infer/candidate.hpp"
 
 namespace halfturn::infer {

@@ -1,0 +1,110 @@
+// SPDX-License-Identifier: Apache-2.0
+#pragma once
+#include <array>
+#include <cstdint>
+#include <limits>
+#include <optional>
+#include <span>
+#include <string_view>
+#include <vector>
+
+#include "model/infer/scan_objective.hpp"
+#include "model/infer/starts.hpp"
+
+/// The inference: from scans and what is known beforehand to estimates, intervals and the figures by which they are judged.
+namespace halfturn::infer {
+
+inline constexpr double kUnknown = std::numeric_limits<double>::quiet_NaN();
+
+/// A value with its standard error and interval at the level asked for; NaN where one does not exist, and then `why`.
+struct Estimate {
+  double value = kUnknown, sigma = kUnknown, low = kUnknown, high = kUnknown;
+  std::string_view why = {};
+};
+
+/// A pulse whose length is wanted: its angle, and its shape's area over peak times length.
+struct PulseAngle {
+  double angle_rad = 0.0;
+  double area_factor = 1.0;
+};
+
+struct FitOptions {
+  double level = 0.95;           // of the intervals
+  double rival_margin = 25.0;    // deviance within which another mode is a rival
+  std::vector<PulseAngle> pulses;
+};
+
+enum class FitOutcome : std::uint8_t {
+  fitted,
+  too_few_points,  // fewer measured points than parameters
+  not_converged,   // no start led to a minimum
+};
+
+struct CandidateScore {
+  Dynamics dynamics = Dynamics::undamped;
+  double aicc = kUnknown;
+  double weight = 0.0;  // Akaike weight among the candidates of the chosen mode; they sum to 1
+};
+
+/// The next best mode that `expect` and the sampling allow: another frequency (or line), or the same with the contrast's other sign.
+struct RivalMode {
+  double frequency = 0.0;    // rad/s: generalised Rabi frequency, or line offset
+  double deviance_above = 0.0;
+  bool opposite_contrast = false;
+};
+
+struct FitQuality {
+  double deviance = kUnknown, dof = kUnknown;
+  double p_value = kUnknown;        // of a deviance as large, moment-matched; before scatter is counted
+  double scatter = 1.0;             // variance of the residuals over the readout's own; above 1 where p_value < 0.01
+  double p_after_scatter = kUnknown;  // smallest p-value of runs, autocorrelation and largest residual, with scatter counted
+  double cycles = kUnknown;         // seen within the span, lower end of the interval; duration scans
+  double over_flat = kUnknown;      // deviance gained over a flat line, scatter counted
+  double over_monotone = kUnknown;  // over the best monotone curve of any shape, scatter counted
+  double range_low = kUnknown, range_high = kUnknown;  // rad/s: what the sampling and `expect` allow
+  double line_width = kUnknown;     // rad/s, full width at half maximum; detuning scans
+  int points = 0;                   // measured
+  bool outside_expect = false;
+  bool by_history = false;          // history decided among modes that fit alike
+  std::optional<RivalMode> rival;
+};
+
+struct Fit {
+  FitOutcome outcome = FitOutcome::not_converged;
+  Axis axis = Axis::duration;
+  Sampling sampling;
+  Dynamics chosen = Dynamics::undamped;
+  std::array<CandidateScore, 4> candidates{};
+  int candidate_count = 0;
+
+  Physical physical;            // of the chosen candidate
+  dynamics::Rates rates;        // of the chosen candidate
+  Vector x;                     // its free parameters, generalised lead
+  Matrix covariance;            // of x, scatter counted
+  bool negative_contrast = false;
+
+  Estimate rabi;                // rad/s, bare
+  Estimate generalised;         // rad/s, on the carrier as it stands
+  Estimate line_offset;         // rad/s
+  Estimate decay_s, dephasing_s, loss_s, envelope_s;
+  Estimate contrast, floor, dead_time_s;
+  std::vector<Estimate> pulse_length_s;  // as FitOptions::pulses; duration scans
+  FitQuality quality;
+};
+
+/// Working memory of the inference; one a thread.
+struct FitWorkspace {
+  ObjectiveWorkspace objective;
+  SearchWorkspace search;
+  std::vector<double> signal, order;
+};
+
+/// Fits each site of a batch under its own prior (`priors` has one a site). `fits` has one a site.
+void fit(const ScanBatch& scans, std::span<const Prior> priors, const FitOptions& options, std::span<Fit> fits, FitWorkspace& workspace);
+
+/// The fitted curve of a fit on any axis, with a pointwise band of +-`z` standard errors (delta method on the information
+/// matrix of the chosen candidate). Arrays as long as the axis. False where there is no fit.
+bool overlay(const ScanBatch& scan, const Prior& prior, const Fit& fit, std::span<const double> axis, double z,
+             std::span<double> signal, std::span<double> low, std::span<double> high);
+
+}  // namespace halfturn::infer

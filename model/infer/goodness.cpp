@@ -1,0 +1,186 @@
+// SPDX-License-Identifier: Apache-2.0
+#include "model/infer/goodness.hpp"
+
+#include <Eigen/Cholesky>
+#include <algorithm>
+#include <cmath>
+#include <limits>
+
+#include "model/infer/linear.hpp"
+#include "model/infer/statistics.hpp"
+
+namespace halfturn::infer {
+namespace {
+
+using Kind = Readout::Kind;
+constexpr double kFew = 20.0;
+constexpr double kNan = std::numeric_limits<double>::quiet_NaN();
+
+/// Sums over all outcomes that matter, from none of the rarer one upwards; probabilities by recurrence. `shots` is infinite
+/// for Poisson; `expected` counts of the rarer outcome. The covariances are with the count itself.
+DevianceMoments exact(double shots, double expected) {
+  const bool counted = std::isfinite(shots);
+  const double p = counted ? expected / shots : 0.0;
+  double probability = counted ? std::exp(shots * std::log1p(-p)) : std::exp(-expected);
+  const double last = std::min(shots, std::ceil(expected + 12.0 * std::sqrt(expected) + 30.0));
+  double d1 = 0.0, d2 = 0.0, dk = 0.0, dkk = 0.0;
+  for (double k = 0.0; k <= last; k += 1.0) {
+    const double d = 2.0 * (counted ? binomial(k, shots, p) : poisson(k, 1.0, expected)).half_deviance;
+    const double weighted = probability * d, away = k - expected;
+    d1 += weighted;
+    d2 += weighted * d;
+    dk += weighted * away;
+    dkk += weighted * away * away;
+    probability *= counted ? (shots - k) * p / ((k + 1.0) * (1.0 - p)) : expected / (k + 1.0);
+  }
+  const double spread = expected * (1.0 - p);
+  return {d1, d2 - d1 * d1, dk, dkk / spread - d1};
+}
+
+/// The binomial series to 1/n^3, in u = p (1 - p).
+DevianceMoments binomial_series(double n, double p) {
+  const double u = p * (1.0 - p), a = 1.0 / (n * u), lean = 1.0 - 2.0 * p;
+  const double mean = 1.0 + a * ((1.0 - u) / 6 + a * ((1.0 - 3 * u) / 6 + a * (19 - 87 * u + 70 * u * u + u * u * u) / 60));
+  const double variance =
+      2.0 + a * (2 * (1.0 - u) / 3 + a * (4 * (1.0 - 3 * u) / 3 + a * (701 - 3188 * u + 2520 * u * u + 24 * u * u * u) / 180));
+  const double third = 57 - 174 * p + 244 * p * p - 140 * p * p * p + 70 * p * p * p * p;
+  return {mean, variance, -lean * a * (1.0 / 6 + a * ((2.0 - 3 * u) / 6 + a * third / 60)), 2.0};
+}
+
+DevianceMoments poisson_series(double lambda) {
+  const double a = 1.0 / lambda;
+  return {1.0 + a * (1.0 / 6 + a * (1.0 / 6 + a * (19.0 / 60 + a * (0.9 + a * 863.0 / 252)))),
+          2.0 + a * (2.0 / 3 + a * (4.0 / 3 + a * (701.0 / 180 + a * (449.0 / 30 + a * 90329.0 / 1260)))),
+          -a * (1.0 / 6 + a * (1.0 / 3 + a * (0.95 + a * (3.6 + a * 4315.0 / 252)))), 2.0};
+}
+
+DevianceMoments binomial_moments(double shots, double mean) {
+  if (!(shots > 0.0 && mean > 0.0 && mean < 1.0)) return {0.0, 0.0, 0.0, 0.0};
+  const double rarer = std::min(mean, 1.0 - mean);
+  DevianceMoments out = binomial_series(shots, mean);
+  if (shots * rarer < kFew) {
+    out = exact(shots, shots * rarer);
+    if (mean > 0.5) out.covariance = -out.covariance;
+  }
+  out.covariance = -out.covariance / (mean * (1.0 - mean));
+  return out;
+}
+
+DevianceMoments poisson_moments(double exposures, double mean) {
+  if (!(exposures > 0.0 && mean > 0.0)) return {0.0, 0.0, 0.0, 0.0};
+  const double lambda = exposures * mean;
+  DevianceMoments out = lambda < kFew ? exact(std::numeric_limits<double>::infinity(), lambda) : poisson_series(lambda);
+  out.covariance = -out.covariance / mean;
+  return out;
+}
+
+/// 1 + E''/(2 information), with E'' the second derivative by mu of the expected deviance, whose first is -covariance: what
+/// of a point's leverage lowers the deviance by more than the moments under the fitted mean already say. 1 for many counts,
+/// 0 for one shot.
+double leverage_share(Kind kind, double weight, double mean, double information) {
+  const double rarer = kind == Kind::binomial ? std::min(mean, 1.0 - mean) : mean;
+  if (kind == Kind::gaussian || weight * rarer >= kFew) return 1.0;
+  const double h = 1e-3 * rarer;
+  const double rise = deviance_moments(kind, weight, mean + h).covariance - deviance_moments(kind, weight, mean - h).covariance;
+  return 1.0 - 0.25 * rise / (h * information);
+}
+
+/// Gradients of the means, information matrix and its inverse, for the leverages of the points.
+class Design {
+ public:
+  Design(std::span<const double> jacobian, std::size_t points, int parameters)
+      : jacobian_(jacobian), points_(points), n_(parameters), information_(Matrix::Zero(n_, n_)), covariance_(Vector::Zero(n_)) {}
+
+  Vector row(std::size_t point) const {
+    Vector out(n_);
+    for (int j = 0; j < n_; ++j) out[j] = jacobian_[static_cast<std::size_t>(j) * points_ + point];
+    return out;
+  }
+  void add(std::size_t point, double information, double covariance) {
+    const Vector r = row(point);
+    information_ += information * r * r.transpose();
+    covariance_ += covariance * r;
+  }
+  void factor() {
+    const Vector unit = information_.diagonal().cwiseSqrt().unaryExpr([](double d) { return d > 0.0 ? 1.0 / d : 0.0; });
+    unit_ = unit;
+    Matrix scaled = unit.asDiagonal() * information_ * unit.asDiagonal();
+    scaled.diagonal().array() += 1e-12;  // keeps parameters that the data do not tell apart from dividing by zero
+    factor_.compute(scaled);
+  }
+  double leverage(std::size_t point) const { return form(row(point)); }
+  double explained() const { return form(covariance_); }
+
+ private:
+  double form(const Vector& v) const {
+    const Vector scaled = unit_.cwiseProduct(v);
+    return scaled.dot(Vector(factor_.solve(scaled)));
+  }
+  std::span<const double> jacobian_;
+  std::size_t points_;
+  int n_;
+  Matrix information_;
+  Vector covariance_, unit_;
+  Eigen::LDLT<Matrix> factor_;
+};
+
+PointLikelihood point(const Readout& readout, std::size_t i, double mean) {
+  switch (readout.kind) {
+    case Kind::binomial: return binomial(readout.observed[i], readout.weight[i], mean);
+    case Kind::gaussian: return gaussian(readout.observed[i], readout.weight[i], mean);
+    case Kind::poisson: return poisson(readout.observed[i], readout.weight[i], mean);
+  }
+  return {kNan, 0.0, 0.0};
+}
+
+void judge(Goodness& out, double used) {
+  out.p_value = kNan;
+  if (!(out.expected > 0.0 && out.variance > 0.02 * used)) return;
+  if (!std::isfinite(out.deviance)) {
+    out.p_value = 0.0;
+    return;
+  }
+  const double scale = out.variance / (2.0 * out.expected);
+  out.p_value = chi_square_tail(out.deviance / scale, out.expected / scale);
+}
+
+}  // namespace
+
+DevianceMoments deviance_moments(Kind kind, double weight, double mean) {
+  if (kind == Kind::binomial) return binomial_moments(weight, mean);
+  if (kind == Kind::poisson) return poisson_moments(weight, mean);
+  if (!(weight < std::numeric_limits<double>::infinity())) return {0.0, 0.0, 0.0, 0.0};
+  return {1.0, 2.0, 0.0, 2.0};
+}
+
+Goodness goodness(const Readout& readout, std::span<const double> mean, int parameters, std::span<const double> jacobian) {
+  Goodness out{0.0, 0.0, 0.0, kNan};
+  const bool known = !jacobian.empty() && parameters > 0;
+  Design design(jacobian, mean.size(), known ? parameters : 0);
+  double used = 0.0;
+  for (std::size_t i = 0; i < mean.size(); ++i) {
+    const PointLikelihood at = point(readout, i, mean[i]);
+    out.deviance += 2.0 * at.half_deviance;
+    if (!(at.information > 0.0)) continue;
+    const DevianceMoments moments = deviance_moments(readout.kind, readout.weight[i], mean[i]);
+    out.expected += moments.mean;
+    out.variance += moments.variance;
+    if (known) design.add(i, at.information, moments.covariance);
+    used += 1.0;
+  }
+  if (known) design.factor();
+  for (std::size_t i = 0; i < mean.size(); ++i) {
+    const PointLikelihood at = point(readout, i, mean[i]);
+    if (!(at.information > 0.0)) continue;
+    const double leverage = known ? at.information * design.leverage(i) : parameters / used;
+    const double share = leverage_share(readout.kind, readout.weight[i], mean[i], at.information);
+    const double quadratic = deviance_moments(readout.kind, readout.weight[i], mean[i]).quadratic;
+    out.expected -= share * leverage;
+    out.variance += 2.0 * share * leverage * (share - quadratic);
+  }
+  if (known) out.variance -= design.explained();
+  judge(out, used);
+  return out;
+}
+
+}  // namespace halfturn::infer

@@ -1,0 +1,129 @@
+// SPDX-License-Identifier: Apache-2.0
+#include <algorithm>
+#include <cmath>
+#include <numeric>
+
+#include <Eigen/Cholesky>
+
+#include "model/infer/goodness.hpp"
+#include "model/infer/monotone.hpp"
+#include "model/infer/solution.hpp"
+#include "model/infer/statistics.hpp"
+#include "model/quantity/constants.hpp"
+
+namespace halfturn::infer {
+namespace {
+
+// A deviance this improbable under the readout's own noise is excess scatter, and widens every error.
+constexpr double kScatterSeen = 0.01;
+
+double standard_variance(const Readout& readout, std::size_t i, double mean) {
+  const double n = readout.weight[i];
+  if (readout.kind == Readout::Kind::gaussian) return n * n;
+  if (readout.kind == Readout::Kind::poisson) return std::max(mean, 1e-300) / n;
+  return std::max(mean * (1.0 - mean), 1e-12) / n;
+}
+
+double fraction(const Readout& readout, std::size_t i) {
+  return readout.kind == Readout::Kind::gaussian ? readout.observed[i] : readout.observed[i] / readout.weight[i];
+}
+
+bool measured(const Readout& readout, std::size_t i) {
+  return std::isfinite(readout.observed[i]) && std::isfinite(readout.weight[i]) && readout.weight[i] > 0.0;
+}
+
+/// How many of the parameters the scan's points determine, the rest being held by priors and references.
+double effective_parameters(const ScanObjective& objective, const Minimum& minimum) {
+  Matrix data;
+  if (!objective.data_information(minimum.x, data)) return static_cast<double>(minimum.x.size());
+  const Eigen::LDLT<Matrix> whole(minimum.information);
+  if (whole.info() != Eigen::Success) return static_cast<double>(minimum.x.size());
+  const Matrix share = whole.solve(data);
+  return std::clamp(share.trace(), 0.0, static_cast<double>(minimum.x.size()));
+}
+
+/// Smallest p-value, of three looks at the residuals in the axis's order and in units of their errors with scatter counted:
+/// too few runs of a sign, neighbours alike, the largest one (Bonferroni over both, and over the points).
+double residual_p_value(const Problem& problem, std::span<const double> signal, double scatter, std::vector<double>& order) {
+  const auto& axis = problem.scan.axis;
+  std::vector<std::size_t> index;
+  for (std::size_t i = 0; i < axis.size(); ++i)
+    if (measured(problem.readout, i)) index.push_back(i);
+  std::stable_sort(index.begin(), index.end(), [&](std::size_t a, std::size_t b) { return axis[a] < axis[b]; });
+  order.clear();
+  double largest = 0.0;
+  for (const auto i : index) {
+    const double sigma = std::sqrt(standard_variance(problem.readout, i, signal[i]) * scatter);
+    order.push_back((fraction(problem.readout, i) - signal[i]) / sigma);
+    largest = std::max(largest, std::abs(order.back()));
+  }
+  const double runs = runs_p_value(order);
+  const double z = autocorrelation_z(order);
+  const double neighbours = std::isfinite(z) ? normal_cdf(-z) : 1.0;
+  // Counting noise has longer tails than the normal law; a residual is held against a chi-square only where scatter was seen.
+  const double outlier = scatter > 1.0 ? std::min(1.0, 2.0 * normal_cdf(-largest) * static_cast<double>(order.size())) : 1.0;
+  return std::min(1.0, 3.0 * std::min({runs, neighbours, outlier}));
+}
+
+}  // namespace
+
+FitQuality judge(const Problem& problem, const Solution& solution, FitWorkspace& work) {
+  FitQuality quality;
+  const ScanObjective objective(problem.scan, problem.readout, problem.prior, solution.dynamics, {}, solution.negative_contrast,
+                                work.objective);
+  const auto n = problem.scan.points();
+  work.signal.resize(n);
+  double half_deviance = kUnknown;
+  if (!objective.data_part(solution.physical, half_deviance, work.signal)) return quality;
+  const double parameters = effective_parameters(objective, solution.minimum);
+  const auto goodness_of_fit = goodness(problem.readout, work.signal, static_cast<int>(std::lround(parameters)));
+  quality.points = problem.measured;
+  quality.deviance = 2.0 * half_deviance;
+  quality.dof = problem.measured - parameters;
+  quality.p_value = goodness_of_fit.p_value;
+  if (quality.p_value < kScatterSeen && goodness_of_fit.expected > 0.0)
+    quality.scatter = std::max(1.0, goodness_of_fit.deviance / goodness_of_fit.expected);
+  quality.p_after_scatter = residual_p_value(problem, work.signal, quality.scatter, work.order);
+
+  const auto monotone = monotone_half_deviance(problem.readout, problem.scan.axis);
+  quality.over_flat = 2.0 * (monotone.flat - half_deviance) / quality.scatter;
+  quality.over_monotone = 2.0 * (std::min(monotone.rising, monotone.falling) - half_deviance) / quality.scatter;
+
+  if (problem.scan.kind == Axis::detuning) {
+    const double length = problem.scan.pulse_length_s - solution.physical.dead_time;
+    quality.line_width = line_width(objective.rates(solution.physical), problem.prior.start, length);
+    return quality;
+  }
+  quality.range_low = constants::kTwoPi * 0.1 / problem.sampling.span;
+  quality.range_high = problem.sampling.limit;
+  if (problem.prior.expect) {
+    quality.range_low = problem.prior.expect->low;
+    quality.range_high = problem.prior.expect->high;
+  }
+  return quality;
+}
+
+double line_width(const dynamics::Rates& rates, const dynamics::Start& start, double length_s) {
+  dynamics::Rates at = rates;
+  const double unmoved = dynamics::population({}, start, 0.0);
+  auto moved = [&](double detuning) {
+    at.detuning = detuning;
+    return std::abs(dynamics::population(at, start, length_s) - unmoved);
+  };
+  // Beyond this the wings of any of the broadenings are below half.
+  const double far = 4.0 * (rates.rabi + rates.decay + rates.loss + rates.dephasing) + 4.0 * constants::kPi / length_s;
+  constexpr int kSteps = 400;
+  double peak = 0.0;
+  for (int i = 0; i <= kSteps; ++i) peak = std::max(peak, moved(far * i / kSteps));
+  if (!(peak > 0.0)) return kUnknown;
+  int outside = kSteps;
+  while (outside > 0 && moved(far * (outside - 1) / kSteps) < 0.5 * peak) --outside;
+  double low = far * std::max(0, outside - 1) / kSteps, high = far * outside / kSteps;
+  for (int i = 0; i < 40; ++i) {
+    const double middle = 0.5 * (low + high);
+    (moved(middle) < 0.5 * peak ? high : low) = middle;
+  }
+  return low + high;
+}
+
+}  // namespace halfturn::infer

@@ -1,0 +1,224 @@
+// SPDX-License-Identifier: Apache-2.0
+#include "model/infer/profile.hpp"
+
+#include <algorithm>
+#include <cmath>
+#include <optional>
+
+#include "model/infer/box.hpp"
+
+namespace halfturn::infer {
+namespace {
+
+using Index = Eigen::Index;
+using Kind = ProfileEnd::Kind;
+
+/// The search for one end: `side` is -1 for the low one, +1 for the high one; distances count outward from the minimum.
+class Search {
+ public:
+  Search(const Objective& objective, const Minimum& minimum, Index index, double deviance, const Bounds& bounds,
+         const ProfileOptions& options, int side)
+      : objective_(objective), minimum_(minimum), bounds_(bounds), options_(options), index_(index), side_(side),
+        target_(std::sqrt(deviance)), room_(side > 0 ? bounds.upper[index] - minimum.x[index] : minimum.x[index] - bounds.lower[index]) {}
+
+  ProfileEnd run() {
+    if (room_ <= 0.0) return end(Kind::bound, 0.0, minimum_.x);
+    if (const auto found = newton()) return *found;
+    return bracketed();
+  }
+  bool lower_found() const { return lowest_ < minimum_.value - 1e-3; }
+
+ private:
+  /// What the quadratic model at a point says of the profile there.
+  struct Local {
+    double root = 0.0;       // sqrt of twice the rise, the nuisance parameters at their best
+    double slope = 0.0;      // of the rise, outward
+    double curvature = 0.0;  // of the rise
+    double promised = 0.0;   // decrease that the nuisance parameters still promise
+    Matrix hessian;
+  };
+
+  double width(const Vector& x) const { return side_ * (x[index_] - minimum_.x[index_]); }
+
+  ProfileEnd end(Kind kind, double distance, const Vector& x) const {
+    ProfileEnd out;
+    out.kind = kind;
+    out.evaluations = evaluations_;
+    if (kind == Kind::open || kind == Kind::failed) return out;
+    out.x = x;
+    out.at = minimum_.x[index_] + side_ * distance;
+    if (kind == Kind::bound) out.at = side_ > 0 ? bounds_.upper[index_] : bounds_.lower[index_];
+    out.x[index_] = out.at;
+    return out;
+  }
+
+  bool evaluate(Minimum& at) {
+    ++evaluations_;
+    const bool good = objective_.evaluate(at.x, at.value, &at.gradient, &at.information) && std::isfinite(at.value) &&
+                      at.gradient.allFinite() && at.information.allFinite();
+    if (good) lowest_ = std::min(lowest_, at.value);
+    return good;
+  }
+
+  /// The best move of the nuisance parameters when the parameter of interest moves by `shift`.
+  bool follow(const Minimum& at, const Matrix& hessian, double shift, BoxStep& box) const {
+    Vector lower = bounds_.lower - at.x, upper = bounds_.upper - at.x;
+    lower[index_] = upper[index_] = 0.0;
+    const Vector gradient = at.gradient + shift * hessian.col(index_);
+    return minimise_in_box(gradient, hessian, lower.cwiseMin(0.0), upper.cwiseMax(0.0), box);
+  }
+
+  bool look(const Minimum& at, Local& local) const {
+    local.hessian = at.information;
+    for (Index i = 0; i < at.x.size(); ++i) {
+      double& h = local.hessian(i, i);
+      h = h > 0.0 ? h * (1.0 + 4.0 * std::numeric_limits<double>::epsilon()) : 1.0;
+    }
+    BoxStep box;
+    if (!follow(at, local.hessian, 0.0, box)) return false;
+    const Vector slope = at.gradient + local.hessian * box.step;
+    local.promised = -0.5 * box.step.dot(at.gradient + slope);
+    local.slope = side_ * slope[index_];
+    local.root = std::sqrt(2.0 * std::max(at.value - local.promised - minimum_.value, 0.0));
+    Vector carried;
+    if (!solve_free(local.hessian, box.free, local.hessian.col(index_), carried)) return false;
+    local.curvature = at.information(index_, index_) - carried.dot(local.hessian.col(index_));
+    return true;
+  }
+
+  /// How much further out the threshold should lie: by the parabola near the minimum, by Newton on the root beyond.
+  double advance(const Local& local) const {
+    if (local.root > 0.3 * target_) return local.root * (target_ - local.root) / local.slope;
+    const double rise = 0.5 * (target_ * target_ - local.root * local.root);
+    return (std::sqrt(local.slope * local.slope + 2.0 * local.curvature * rise) - local.slope) / local.curvature;
+  }
+
+  std::optional<ProfileEnd> newton() {
+    Minimum at = minimum_, trial = minimum_;
+    Local local;
+    BoxStep box;
+    while (look(at, local)) {
+      const double distance = width(at.x);
+      if (local.root > 0.3 * target_ && !(local.slope > 0.0)) return std::nullopt;
+      double step = advance(local);
+      if (!std::isfinite(step)) return std::nullopt;
+      const bool settled = local.promised <= options_.accuracy * target_ * target_;
+      const bool outside = distance + step >= room_;
+      if (settled && outside && distance >= room_) return end(Kind::bound, room_, at.x);
+      // Newton's error is about the square of its last step.
+      if (settled && distance > 0.0 && !outside && std::abs(step) <= 0.5 * std::sqrt(options_.accuracy) * distance) {
+        if (!follow(at, local.hessian, side_ * step, box)) return std::nullopt;
+        return end(Kind::reached, distance + step, (at.x + box.step).cwiseMax(bounds_.lower).cwiseMin(bounds_.upper));
+      }
+      if (distance > 0.0) step = std::clamp(step, -0.7 * distance, 2.0 * distance);
+      step = std::min(step, room_ - distance);
+      if (!advance_to(at, local, distance, step, trial)) return std::nullopt;
+      at = trial;
+    }
+    return std::nullopt;
+  }
+
+  /// Evaluates the point `step` further out, or nearer where the objective cannot be computed.
+  bool advance_to(const Minimum& at, const Local& local, double distance, double step, Minimum& trial) {
+    BoxStep box;
+    for (; evaluations_ < options_.newton_evaluations; step *= 0.3) {
+      if (!follow(at, local.hessian, side_ * step, box)) return false;
+      trial.x = (at.x + box.step).cwiseMax(bounds_.lower).cwiseMin(bounds_.upper);
+      trial.x[index_] = distance + step >= room_ ? (side_ > 0 ? bounds_.upper[index_] : bounds_.lower[index_])
+                                                 : at.x[index_] + side_ * step;
+      if (evaluate(trial)) return true;
+    }
+    return false;
+  }
+
+  /// The square root of twice the profile's rise at a distance, minus its target; `x` holds the start and then the optimum.
+  double excess(double distance, Vector& x) {
+    Bounds held = bounds_;
+    const double at = distance >= room_ ? (side_ > 0 ? bounds_.upper[index_] : bounds_.lower[index_])
+                                        : minimum_.x[index_] + side_ * distance;
+    x[index_] = held.lower[index_] = held.upper[index_] = at;
+    SolverOptions solver;
+    solver.decrease_tolerance = 0.02 * options_.accuracy * target_ * target_;
+    const Minimum found = minimise(objective_, x, held, solver);
+    evaluations_ += found.evaluations;
+    if (found.outcome == Outcome::not_finite) return std::numeric_limits<double>::infinity();
+    x = found.x;
+    lowest_ = std::min(lowest_, found.value);
+    return std::sqrt(2.0 * std::max(found.value - minimum_.value, 0.0)) - target_;
+  }
+
+  /// A first guess of the half-width, from the information at the minimum.
+  double guess() const {
+    Local local;
+    double distance = look(minimum_, local) ? advance(local) : 0.0;
+    if (!(distance > 0.0 && std::isfinite(distance))) distance = target_ / std::sqrt(minimum_.information(index_, index_));
+    if (!(distance > 0.0 && std::isfinite(distance))) distance = std::max(std::abs(minimum_.x[index_]), 1.0);
+    return std::min(distance, room_);
+  }
+
+  /// Steps outward until the threshold is passed, then closes in by false position (the Illinois rule: M. Dowell, P. Jarratt,
+  /// BIT 11, 168 (1971)).
+  ProfileEnd bracketed() {
+    Vector inside = minimum_.x, x = minimum_.x;
+    double low = 0.0, low_excess = -target_, high = guess();
+    const double farthest = 1e6 * high;
+    double high_excess = excess(high, x);
+    while (!(high_excess > 0.0)) {
+      if (high >= room_) return end(Kind::bound, room_, x);
+      if (high > farthest) return end(Kind::open, high, x);
+      if (evaluations_ > options_.max_evaluations) return end(Kind::failed, high, x);
+      inside = x, low = high, low_excess = high_excess;
+      high = std::min(1.7 * high, room_);
+      high_excess = excess(high, x);
+    }
+    int last = 0;
+    double low_weight = low_excess, high_weight = high_excess;
+    while (evaluations_ <= options_.max_evaluations) {
+      double middle = low + (high - low) * low_weight / (low_weight - high_weight);
+      if (!std::isfinite(high_weight)) middle = 0.5 * (low + high);
+      x = inside;
+      const double found = excess(middle, x);
+      const bool within = std::abs(found) <= 0.3 * options_.accuracy * target_ || high - low <= 0.3 * options_.accuracy * high;
+      if (within) return end(Kind::reached, middle, x);
+      if (found > 0.0) {
+        high = middle, high_weight = found;
+        if (last == 1) low_weight *= 0.5;
+        last = 1;
+      } else {
+        low = middle, low_weight = found, inside = x;
+        if (last == -1 && std::isfinite(high_weight)) high_weight *= 0.5;
+        last = -1;
+      }
+    }
+    return end(Kind::failed, high, x);
+  }
+
+  const Objective& objective_;
+  const Minimum& minimum_;
+  const Bounds& bounds_;
+  const ProfileOptions& options_;
+  Index index_;
+  int side_;
+  double target_;
+  double room_;
+  double lowest_ = std::numeric_limits<double>::infinity();
+  int evaluations_ = 0;
+};
+
+}  // namespace
+
+ProfileInterval profile_interval(const Objective& objective, const Minimum& minimum, int index, double deviance,
+                                 const Bounds& bounds, const ProfileOptions& options) {
+  ProfileInterval out;
+  const bool valid = index >= 0 && index < minimum.x.size() && bounds.lower.size() == minimum.x.size() &&
+                     bounds.upper.size() == minimum.x.size() && std::isfinite(minimum.value) && deviance > 0.0;
+  if (!valid) return out;
+  for (const int side : {-1, 1}) {
+    Search search(objective, minimum, index, deviance, bounds, options, side);
+    (side < 0 ? out.low : out.high) = search.run();
+    out.lower_found = out.lower_found || search.lower_found();
+  }
+  return out;
+}
+
+}  // namespace halfturn::infer

@@ -1,0 +1,194 @@
+// SPDX-License-Identifier: Apache-2.0
+#include <algorithm>
+#include <cmath>
+
+#include "model/infer/solution.hpp"
+#include "model/quantity/constants.hpp"
+
+namespace halfturn::infer {
+namespace {
+
+using constants::kTwoPi;
+
+// Modes this far beyond the rival margin after a first refinement are not refined under every candidate.
+constexpr double kWorthAll = 20.0;
+
+/// The rate of a candidate that damps an oscillation on resonance at `envelope`: gamma_phi/2, 3 Gamma/4, Gamma_loss/2.
+double damping_for(Dynamics dynamics, double envelope) {
+  switch (dynamics) {
+    case Dynamics::undamped: return 0.0;
+    case Dynamics::dephasing: return 2.0 * envelope;
+    case Dynamics::decay: return envelope / 0.75;
+    case Dynamics::leak: return 2.0 * envelope;
+  }
+  return 0.0;
+}
+
+double envelope_of(Dynamics dynamics, double damping) {
+  switch (dynamics) {
+    case Dynamics::undamped: return 0.0;
+    case Dynamics::dephasing: return 0.5 * damping;
+    case Dynamics::decay: return 0.75 * damping;
+    case Dynamics::leak: return 0.5 * damping;
+  }
+  return 0.0;
+}
+
+double length_scale(const Problem& problem) {
+  return problem.scan.kind == Axis::duration ? problem.sampling.span : problem.scan.pulse_length_s;
+}
+
+std::optional<Solution> refine(const Problem& problem, Dynamics candidate, const Physical& start, FitWorkspace& work) {
+  const bool negative = start.contrast() < 0.0;
+  const ScanObjective objective(problem.scan, problem.readout, problem.prior, candidate, {}, negative, work.objective);
+  Solution solution;
+  solution.dynamics = candidate;
+  solution.negative_contrast = negative;
+  solution.minimum = minimise(objective, objective.pack(start), objective.bounds());
+  const auto& minimum = solution.minimum;
+  const bool settled = minimum.outcome == Outcome::converged || (std::isfinite(minimum.value) && minimum.expected_decrease < 1e-3);
+  if (!settled) return std::nullopt;
+  solution.physical = objective.unpack(minimum.x);
+  if (solution.physical.contrast() * start.contrast() < 0.0) return std::nullopt;  // crossed no contrast: no oscillation
+  solution.parameters = objective.layout().count;
+  const double k = solution.parameters;
+  const double n = problem.measured + (problem.scan.references ? 2 : 0);
+  // Sugiura 1978; Hurvich & Tsai, Biometrika 76, 297 (1989).
+  if (n - k - 1.0 < 1.0) return std::nullopt;
+  solution.aicc = 2.0 * minimum.value + 2.0 * k + 2.0 * k * (k + 1.0) / (n - k - 1.0);
+  return solution;
+}
+
+void add_mode(const Problem& problem, std::vector<ModeSolutions>& modes, Solution solution) {
+  for (auto& mode : modes) {
+    if (!same_mode(problem, mode.best(), solution)) continue;
+    if (solution.minimum.value < mode.best().minimum.value) mode.solutions.front() = std::move(solution);
+    return;
+  }
+  modes.push_back({{std::move(solution)}});
+}
+
+void refine_candidates(const Problem& problem, ModeSolutions& mode, FitWorkspace& work) {
+  const Solution first = mode.best();
+  mode.solutions.clear();
+  const double least = 0.2 / length_scale(problem);
+  const double envelope = std::max(least, envelope_of(first.dynamics, first.physical.damping));
+  for (const Dynamics candidate : {Dynamics::undamped, Dynamics::dephasing, Dynamics::decay, Dynamics::leak}) {
+    if (!problem.prior.candidates.has(candidate)) continue;
+    std::optional<Solution> solution;
+    if (candidate == first.dynamics) {
+      solution = first;
+    } else {
+      Physical start = first.physical;
+      start.damping = damping_for(candidate, envelope);
+      solution = refine(problem, candidate, start, work);
+    }
+    // A start that slid to another frequency is not this mode's.
+    if (solution && same_mode(problem, first, *solution)) mode.solutions.push_back(std::move(*solution));
+  }
+  if (mode.solutions.empty()) mode.solutions.push_back(first);
+  std::stable_sort(mode.solutions.begin(), mode.solutions.end(), [](const Solution& a, const Solution& b) { return a.aicc < b.aicc; });
+}
+
+Dynamics first_candidate(const Prior& prior, bool damped) {
+  if (damped)
+    for (const Dynamics candidate : {Dynamics::dephasing, Dynamics::decay, Dynamics::leak})
+      if (prior.candidates.has(candidate)) return candidate;
+  for (const Dynamics candidate : {Dynamics::undamped, Dynamics::dephasing, Dynamics::decay})
+    if (prior.candidates.has(candidate)) return candidate;
+  return Dynamics::leak;
+}
+
+}  // namespace
+
+int measured_points(const Readout& readout) {
+  int measured = 0;
+  for (std::size_t i = 0; i < readout.weight.size(); ++i)
+    if (std::isfinite(readout.observed[i]) && std::isfinite(readout.weight[i]) && readout.weight[i] > 0.0) ++measured;
+  return measured;
+}
+
+bool same_mode(const Problem& problem, const Solution& a, const Solution& b) {
+  if (a.negative_contrast != b.negative_contrast) return false;
+  if (problem.scan.kind == Axis::detuning)
+    return std::abs(a.physical.line_offset - b.physical.line_offset) < kTwoPi * 0.2 / problem.scan.pulse_length_s;
+  return std::abs(a.physical.generalised - b.physical.generalised) < kTwoPi * 0.35 / problem.sampling.span;
+}
+
+std::vector<ModeSolutions> refine_modes(const Problem& problem, std::span<const Mode> starts, FitWorkspace& work) {
+  std::vector<ModeSolutions> modes;
+  for (const auto& start : starts) {
+    Physical from = start.start;
+    const Dynamics candidate = first_candidate(problem.prior, start.damped);
+    from.damping = start.damped ? damping_for(candidate, from.damping) : damping_for(candidate, 0.1 / length_scale(problem));
+    if (auto solution = refine(problem, candidate, from, work)) add_mode(problem, modes, std::move(*solution));
+  }
+  auto by_value = [](const ModeSolutions& a, const ModeSolutions& b) { return a.best().aicc < b.best().aicc; };
+  std::stable_sort(modes.begin(), modes.end(), by_value);
+  const double limit = problem.options.rival_margin + kWorthAll;
+  for (auto& mode : modes)
+    if (mode.best().aicc < modes.front().best().aicc + limit) refine_candidates(problem, mode, work);
+  std::stable_sort(modes.begin(), modes.end(), by_value);
+  return modes;
+}
+
+std::size_t choose_mode(const Problem& problem, std::span<const ModeSolutions> modes, FitQuality& quality) {
+  const bool line = problem.scan.kind == Axis::detuning;
+  auto inside = [&](const ModeSolutions& mode) {
+    if (line || !problem.prior.expect) return true;
+    const double rabi = mode.best().physical.generalised;
+    return rabi >= problem.prior.expect->low && rabi <= problem.prior.expect->high;
+  };
+  const double margin = problem.options.rival_margin * quality.scatter;
+  // The best mode of all; one that `expect` holds goes before it where the data hardly prefer the other.
+  std::size_t chosen = 0;
+  if (!inside(modes[0]))
+    for (std::size_t i = 1; i < modes.size(); ++i)
+      if (inside(modes[i]) && modes[i].best().aicc < modes[0].best().aicc + margin) {
+        chosen = i;
+        break;
+      }
+  quality.outside_expect = !inside(modes[chosen]);
+
+  std::vector<std::size_t> alike;
+  for (std::size_t i = 0; i < modes.size(); ++i)
+    if (i != chosen && (inside(modes[i]) || quality.outside_expect) && modes[i].best().aicc < modes[chosen].best().aicc + margin)
+      alike.push_back(i);
+  if (!alike.empty() && problem.prior.log_rabi && !line) {
+    // History decides where it knows one of them and none of the others.
+    const double sigma = std::max(problem.prior.log_rabi->sigma, 0.01);
+    auto distance = [&](std::size_t i) {
+      return std::abs(std::log(modes[i].best().physical.generalised) - problem.prior.log_rabi->mean) / sigma;
+    };
+    alike.push_back(chosen);
+    int known = 0, open = 0;
+    std::size_t which = chosen;
+    for (const std::size_t i : alike) {
+      if (distance(i) < 4.0) {
+        ++known;
+        which = i;
+      } else if (distance(i) < 8.0) {
+        ++open;
+      }
+    }
+    alike.pop_back();
+    if (known == 1 && open == 0) {
+      chosen = which;
+      quality.by_history = true;
+      return chosen;
+    }
+  }
+  // The next best is said even where it is no rival.
+  for (std::size_t i = 0; i < modes.size(); ++i) {
+    if (i == chosen || !(inside(modes[i]) || quality.outside_expect)) continue;
+    const auto& other = modes[i].best();
+    RivalMode rival;
+    rival.frequency = line ? other.physical.line_offset : other.physical.generalised;
+    rival.deviance_above = std::max(0.0, (other.aicc - modes[chosen].best().aicc) / quality.scatter);
+    rival.opposite_contrast = other.negative_contrast != modes[chosen].best().negative_contrast;
+    if (!quality.rival || rival.deviance_above < quality.rival->deviance_above) quality.rival = rival;
+  }
+  return chosen;
+}
+
+}  // namespace halfturn::infer

@@ -1,0 +1,100 @@
+// SPDX-License-Identifier: Apache-2.0
+#pragma once
+#include <array>
+#include <cstdint>
+#include <vector>
+
+#include "model/dynamics/two_level.hpp"
+#include "model/infer/candidate.hpp"
+#include "model/infer/prior.hpp"
+#include "model/infer/scan.hpp"
+#include "model/infer/solver.hpp"
+
+/// The negative log likelihood of one scan under one candidate, with the priors, as a function of the free parameters.
+namespace halfturn::infer {
+
+/// What a scan's signal depends on. The signal is signal_ground + (signal_excited - signal_ground) * population.
+struct Physical {
+  double generalised = 0.0;      // duration scans: sqrt(Omega^2 + Delta^2), rad/s; detuning scans: Omega, rad/s
+  double detuning_square = 0.0;  // duration scans: Delta^2 (a flop sees no more of Delta), rad^2/s^2
+  double line_offset = 0.0;      // detuning scans: where the line lies from the carrier, rad/s
+  double dead_time = 0.0;        // s
+  double signal_ground = 0.0;
+  double signal_excited = 1.0;
+  double damping = 0.0;          // the candidate's free rate, 1/s
+
+  double rabi() const;           // bare coupling, rad/s
+  double contrast() const { return signal_excited - signal_ground; }
+};
+
+/// The coordinate in place of `generalised`: itself, the bare coupling, or the length of a pulse of a given angle; any of
+/// them, with the others, says what the scan depends on. One is chosen so that its profile is an interval of that quantity.
+struct Lead {
+  enum class Kind : std::uint8_t { generalised, bare, pulse_length } kind = Kind::generalised;
+  double angle_rad = 0.0;    // pulse_length
+  double area_factor = 1.0;  // pulse_length
+};
+
+/// Positions of the free parameters in the solver's vector; -1 where one is held.
+struct Layout {
+  int lead = -1, line_offset = -1, detuning_square = -1, dead_time = -1, ground = -1, excited = -1, damping = -1;
+  int count = 0;
+};
+
+/// Arrays for the evaluations of scans of up to the reserved number of points; the caller keeps it, nothing allocates after
+/// `reserve`.
+struct ObjectiveWorkspace {
+  void reserve(std::size_t points);
+  std::vector<double> population, signal, score, information;
+  std::array<std::vector<double>, dynamics::kRateCount> by_rate;
+  std::vector<double> by_length;
+  dynamics::Workspace dynamics;
+};
+
+class ScanObjective final : public Objective {
+ public:
+  /// `scan`, `readout`, `prior` and `workspace` must outlive the objective. `negative_contrast` says which reference is the
+  /// ground state's. `held` gives the values of the parameters that are not free.
+  ScanObjective(const ScanBatch& scan, const Readout& readout, const Prior& prior, Dynamics candidate, Lead lead,
+                bool negative_contrast, ObjectiveWorkspace& workspace);
+
+  bool evaluate(const Vector& x, double& value, Vector* gradient, Matrix* information) const override;
+
+  const Layout& layout() const { return layout_; }
+  Bounds bounds() const;
+  Vector pack(const Physical& physical) const;
+  Physical unpack(const Vector& x) const;
+  dynamics::Rates rates(const Physical& physical) const;
+  const Prior& prior() const { return prior_; }
+  const ScanBatch& scan() const { return scan_; }
+  Dynamics candidate() const { return candidate_; }
+
+  /// The part of the value that comes from the scan's points alone, without references and priors, and the signal at each
+  /// point. False where it cannot be computed.
+  bool data_part(const Physical& physical, double& half_deviance, std::span<double> signal) const;
+
+  /// The signal at each point with a band of +-z standard errors from the covariance of x.
+  bool draw(const Vector& x, const Matrix& covariance, double z, std::span<double> signal, std::span<double> low,
+            std::span<double> high) const;
+
+  /// Information of the scan's points alone (no references, no priors) at x.
+  bool data_information(const Vector& x, Matrix& information) const;
+
+ private:
+  bool populate(const Physical& physical, bool derivatives) const;
+  void rows(const Physical& physical, std::size_t point, Vector& row) const;
+  bool accumulate(const Physical& physical, Vector* gradient, Matrix* information) const;
+  bool add_references(const Physical& physical, double& value, Vector* gradient, Matrix* information) const;
+  bool add_priors(const Physical& physical, double& value, Vector* gradient, Matrix* information) const;
+
+  const ScanBatch& scan_;
+  const Readout& readout_;
+  const Prior& prior_;
+  Dynamics candidate_;
+  Lead lead_;
+  bool negative_contrast_;
+  Layout layout_;
+  ObjectiveWorkspace& work_;
+};
+
+}  // namespace halfturn::infer

@@ -1,0 +1,54 @@
+// SPDX-License-Identifier: Apache-2.0
+#pragma once
+#include <span>
+#include <vector>
+
+#include "model/infer/scan_objective.hpp"
+
+/// Global starting points: for each trial frequency and damping (or line offset and pulse area) the linear part is solved
+/// exactly on the actual axis, and every distinct good mode is handed on.
+namespace halfturn::infer {
+
+/// A starting point. `gain` is the weighted sum of squares that it takes off a flat line (a deviance, nearly).
+struct Mode {
+  Physical start;
+  bool damped = false;
+  double gain = 0.0;
+};
+
+/// What the sampling of a duration scan can tell apart. `limit` is half the sampling rate of an even grid (or of the even grid
+/// of which a gapped one is part); of an uneven grid half of one over its smallest gap, at most 8 times that of an even grid
+/// of as many points over the same span. Angular, rad/s.
+struct Sampling {
+  double span = 0.0;       // s or rad/s, between the extremes of the axis
+  double spacing = 0.0;    // smallest gap
+  double limit = 0.0;      // rad/s, duration scans
+  bool even = false;       // all gaps are multiples of the smallest, to 1e-3 of it
+  int distinct = 0;        // different values on the axis
+};
+Sampling sampling_of(Axis kind, std::span<const double> axis);
+
+struct SearchWorkspace {
+  void reserve(std::size_t points);
+  std::vector<double> value, weight, cosine, sine, step_cosine, step_sine, envelope;
+  std::vector<Mode> found;
+  std::vector<double> table, table_axis;
+  dynamics::Workspace dynamics;
+};
+
+/// Starting points of a duration scan, best first, of at most `modes.size()`; returns how many. Frequencies from a tenth of a
+/// cycle in the span to the sampling limit or, where the prior expects more, to 1.25 times the upper end of that. Each sign of
+/// the contrast that priors admit is a mode of its own. 0 for a scan of fewer than 4 distinct lengths or without shots.
+std::size_t duration_starts(const ScanBatch& scan, const Readout& readout, const Prior& prior, const Sampling& sampling,
+                            std::span<Mode> modes, SearchWorkspace& workspace);
+
+/// Starting points of a detuning scan: offsets across the window and half a width beyond it, areas from 0.3 to 4.5 pi or
+/// around the one that history knows, undamped and dephased.
+std::size_t line_starts(const ScanBatch& scan, const Readout& readout, const Prior& prior, const Sampling& sampling,
+                        std::span<Mode> modes, SearchWorkspace& workspace);
+
+/// The scan's points as value and weight for a linear solve: fraction and n/(p(1-p)) with p = (k+2)/(n+4) (binomial), signal
+/// and 1/sigma^2 (Gaussian), rate and N^2/(k+1) (Poisson); weight 0 where nothing was measured.
+void linear_points(const Readout& readout, std::span<double> value, std::span<double> weight);
+
+}  // namespace halfturn::infer
