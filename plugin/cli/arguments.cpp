@@ -7,6 +7,7 @@
 #include <memory>
 
 #include "plugin/cli/check.hpp"
+#include "plugin/cli/drift.hpp"
 #include "plugin/cli/fit.hpp"
 #include "plugin/cli/intensity.hpp"
 #include "plugin/cli/serve.hpp"
@@ -33,6 +34,7 @@ struct Parser {
   ServeOptions serve;
   FitOptions fit;
   IntensityOptions intensity;
+  DriftOptions drift;
   rehearse::RehearseOptions rehearse;
   StatusOptions status;
   std::string checked;
@@ -42,6 +44,7 @@ struct Parser {
   void add_serve();
   void add_fit();
   void add_intensity();
+  void add_drift();
   void add_rehearse();
   void add_status();
   void add_check();
@@ -54,6 +57,7 @@ Parser::Parser() {
   add_serve();
   add_fit();
   add_intensity();
+  add_drift();
   add_rehearse();
   add_status();
   add_check();
@@ -92,6 +96,16 @@ void Parser::add_intensity() {
   sub->add_option("--power-w", intensity.power_w, "From the power of a Gaussian beam; needs --waist-m")->type_name("X");
   sub->add_option("--waist-m", intensity.waist_m, "1/e\u00b2 radius of the beam's intensity")->type_name("W");
   sub->add_flag("--json", intensity.json, "Print a JSON object");
+}
+
+void Parser::add_drift() {
+  auto* sub = add("drift", "The drift report from the log", [this](Streams& streams) { return cli::drift(drift, streams); });
+  sub->add_option("--log", drift.log, "The log; a daemon may be writing it")->required()->type_name("FILE");
+  sub->add_option("--drive", drift.drive, "One drive; without it all")->type_name("NAME");
+  sub->add_option("--since", drift.since, "Scans taken then or later: 2026-02-03T18:00:00Z, or a date")->type_name("T");
+  sub->add_option("--until", drift.until, "Scans taken before then")->type_name("T");
+  sub->add_option("--csv", drift.csv, "Write the fits to a file as CSV, one a row")->type_name("OUT");
+  sub->add_flag("--json", drift.json, "Print a JSON object instead of the table");
 }
 
 void Parser::add_rehearse() {

@@ -80,6 +80,19 @@ std::string pulses(const wire::Fitted& scan, const Style& style) {
   return "\n" + table(rows, "  ");
 }
 
+std::string sites(const wire::Fitted& scan, const Style& style) {
+  if (scan.sites.empty()) return {};
+  std::vector<std::vector<std::string>> rows = {{"site", "verdict", "Rabi frequency", "reasons"}};
+  for (const auto& site : scan.sites) {
+    std::string rabi = "none", codes;
+    for (const auto& [field, estimate] : site.estimates)
+      if (field == "rabi_hz" && std::isfinite(estimate.value)) rabi = with_uncertainty(estimate.value, estimate.sigma, "Hz");
+    for (const auto& reason : site.reasons) codes += (codes.empty() ? "" : ", ") + reason.code;
+    rows.push_back({site.name, style.verdict(site.verdict), rabi, codes});
+  }
+  return "\n" + table(rows, "  ");
+}
+
 std::string dynamics(const wire::Fitted& scan) {
   if (scan.dynamics.empty()) return {};
   std::string text = scan.dynamics;
@@ -119,7 +132,7 @@ Label label(std::string_view field) {
 std::string report(const wire::Fitted& scan, const Style& style) {
   std::string text = head(scan, style);
   if (!scan.estimates.empty()) text += "\n" + estimates(scan);
-  text += pulses(scan, style) + dynamics(scan);
+  text += pulses(scan, style) + sites(scan, style) + dynamics(scan);
   if (scan.quality.points > 0) text += quality(scan);
   return text;
 }

@@ -13,6 +13,8 @@ class Style {
  public:
   explicit Style(bool on = false) : on_(on) {}
 
+  bool on() const { return on_; }
+
   std::string strong(std::string_view text) const { return with("1", text); }
   std::string quiet(std::string_view text) const { return with("2", text); }
 

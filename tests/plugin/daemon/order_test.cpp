@@ -74,10 +74,7 @@ TEST_CASE("many workers: each drive is decided in order of arrival, the other do
   Gate gate;
   Running running([&](auto& options) {
     options.threads = 4;
-    options.fit = [&gate](auto& task) {
-      gate.wait(task.request.scans.front().scan_name);
-      halfturn::service::Service::fit(task);
-    };
+    hold_fits(options, gate);
   });
   Peer peer(zmq::socket_type::dealer, running.endpoints().requests);
   constexpr int kEach = 12;
@@ -100,10 +97,7 @@ TEST_CASE("above the limit of requests in flight the answer is busy, with a time
   Gate gate;
   Running running([&](auto& options) {
     options.limits.in_flight = 2;
-    options.fit = [&gate](auto& task) {
-      gate.wait(task.request.scans.front().scan_name);
-      halfturn::service::Service::fit(task);
-    };
+    hold_fits(options, gate);
   });
   Peer peer(zmq::socket_type::dealer, running.endpoints().requests);
   for (const char* id : {"a", "b", "c"}) peer.ask_json(fit_request(id));

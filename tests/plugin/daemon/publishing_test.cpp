@@ -81,10 +81,7 @@ TEST_CASE("a feed that brings more than can be fitted loses nothing") {
   Gate gate;
   Running running([&](auto& options) {
     options.limits.in_flight = 3;
-    options.fit = [&gate](auto& task) {
-      gate.wait(task.request.scans.front().scan_name);
-      halfturn::service::Service::fit(task);
-    };
+    hold_fits(options, gate);
   });
   Listener fitted(running.endpoints().results, "fitted/blue/");
   Peer feed(zmq::socket_type::push, running.endpoints().feed);

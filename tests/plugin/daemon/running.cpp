@@ -14,7 +14,14 @@ namespace halfturn::tests {
 
 void Gate::wait(const std::string& name) {
   std::unique_lock lock(mutex_);
+  arrived_.insert(name);
+  changed_.notify_all();
   changed_.wait(lock, [&] { return all_ || open_.count(name) > 0; });
+}
+
+void Gate::wait_for_arrival(const std::string& name) {
+  std::unique_lock lock(mutex_);
+  REQUIRE(changed_.wait_for(lock, kPatience, [&] { return arrived_.count(name) > 0; }));
 }
 
 void Gate::open(const std::string& name) {
@@ -27,6 +34,13 @@ void Gate::open_all() {
   const std::lock_guard lock(mutex_);
   all_ = true;
   changed_.notify_all();
+}
+
+void hold_fits(daemon::Options& options, Gate& gate) {
+  options.fit = [&gate](service::Task& task) {
+    gate.wait(task.request.scans.front().scan_name);
+    service::Service::fit(task);
+  };
 }
 
 std::shared_ptr<config::Configuration> configuration() {

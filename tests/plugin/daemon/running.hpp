@@ -27,15 +27,20 @@ inline constexpr std::chrono::seconds kPatience{20};  // a test that waits longe
 class Gate {
  public:
   void wait(const std::string& name);
+  /// Waits until a fit of this name stands before the gate.
+  void wait_for_arrival(const std::string& name);
   void open(const std::string& name);
   void open_all();
 
  private:
   std::mutex mutex_;
   std::condition_variable changed_;
-  std::set<std::string> open_;
+  std::set<std::string> open_, arrived_;
   bool all_ = false;
 };
+
+/// Fits wait at the gate.
+void hold_fits(daemon::Options& options, Gate& gate);
 
 /// Drives `red`, `red2` and `blue`, sockets on ports that the system chooses.
 std::shared_ptr<config::Configuration> configuration();

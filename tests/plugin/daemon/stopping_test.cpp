@@ -1,6 +1,7 @@
 // SPDX-License-Identifier: Apache-2.0
-// How the daemon stops, what survives a commit, and how it takes a new configuration.
+// How the daemon stops, and how it takes a new configuration.
 #include <atomic>
+#include <csignal>
 
 #include "plugin/log/memory_log.hpp"
 #include "tests/plugin/daemon/running.hpp"
@@ -23,21 +24,25 @@ json state_with(Peer& peer, const std::function<bool(const json&)>& wanted) {
   return {};
 }
 
-bool says(const json& state, const std::string& word) {
+bool troubled(const json& state, const std::string& word) {
   for (const auto& trouble : state.at("troubles"))
     if (trouble.get<std::string>().find(word) != std::string::npos) return true;
   return false;
 }
 
-void hold_fits(halfturn::daemon::Options& options, Gate& gate) {
-  options.fit = [&gate](auto& task) {
-    gate.wait(task.request.scans.front().scan_name);
-    halfturn::service::Service::fit(task);
-  };
-}
+/// A log that says whether a group was ever handed out before its commit was through.
+class WatchedLog : public halfturn::log::MemoryLog {
+ public:
+  explicit WatchedLog(std::atomic<int>& commits) : commits_(commits) {}
+  halfturn::Result<void> commit() override {
+    auto done = MemoryLog::commit();
+    ++commits_;
+    return done;
+  }
 
-/// A log whose commits can be told to have happened.
-class WatchedLog : public halfturn::log::MemoryLog {};
+ private:
+  std::atomic<int>& commits_;
+};
 
 }  // namespace
 
@@ -45,13 +50,13 @@ TEST_CASE("while stopping, what was accepted is answered and what comes is turne
   Gate gate;
   Running running([&](auto& options) { hold_fits(options, gate); });
   Peer worker(zmq::socket_type::dealer, running.endpoints().requests);
-  worker.ask_json(fit_request("a"));
   Peer asker(zmq::socket_type::req, running.endpoints().requests);
-  // The fit was sent before this is asked, yet by another connection: wait until it is in flight.
   Listener health(running.endpoints().results, "health/");
+  worker.ask_json(fit_request("a"));
+  gate.wait_for_arrival("a");
+
   running.daemon().stop();
   state_with(asker, [](const json& state) { return state.at("stopping") == true; });
-
   asker.ask_json(fit_request("b"));
   CHECK(asker.answer().at("code") == "stopping");
   auto heard = health.next();
@@ -63,4 +68,116 @@ TEST_CASE("while stopping, what was accepted is answered and what comes is turne
   CHECK(reply.at("kind") == "fitted");
   CHECK(running.wait() == 0);
   CHECK(running.daemon().in_flight() == 0);
+}
+
+TEST_CASE("a fit that outlasts the time to stop is answered `stopping`") {
+  Gate gate;
+  Running running([&](auto& options) {
+    hold_fits(options, gate);
+    options.stop_within = std::chrono::milliseconds(50);
+  });
+  Peer peer(zmq::socket_type::dealer, running.endpoints().requests);
+  peer.ask_json(fit_request("a"));
+  gate.wait_for_arrival("a");
+  CHECK(running.stop() == 0);
+  CHECK(running.daemon().in_flight() == 1);
+  const auto reply = peer.answer();
+  CHECK(reply.at("id") == "a");
+  CHECK(reply.at("code") == "stopping");
+  gate.open_all();
+}
+
+TEST_CASE("what lies on the feed when the daemon is told to stop is still decided") {
+  Gate gate;
+  Running running([&](auto& options) {
+    hold_fits(options, gate);
+    options.limits.in_flight = 1;
+  });
+  Listener fitted(running.endpoints().results, "fitted/red/");
+  Peer feed(zmq::socket_type::push, running.endpoints().feed);
+  feed.send({fit_request("a").dump()});
+  gate.wait_for_arrival("a");  // the feed is paused now: one is all that may be in flight
+  Listener health(running.endpoints().results, "health/");
+  const auto before = health.next().message.at("sequence").get<int>();
+  feed.send({fit_request("b").dump()});
+  // The second scan needs no more than the loopback to arrive; two turns of the loop that publish health are ample.
+  while (health.next().message.at("sequence").get<int>() < before + 2) continue;
+  running.daemon().stop();
+  gate.open_all();
+  auto heard = fitted.next();
+  if (heard.message.at("id") == "a") heard = fitted.next();
+  CHECK(heard.message.at("id") == "b");
+  CHECK(running.wait() == 0);
+}
+
+TEST_CASE("a reply leaves after the commit that holds it") {
+  std::atomic<int> commits = 0;
+  Running running([&](auto& options) { options.log = std::make_unique<WatchedLog>(commits); });
+  Peer peer(zmq::socket_type::dealer, running.endpoints().requests);
+  for (int i = 1; i <= 50; ++i) {
+    peer.ask_json(fit_request("n" + std::to_string(i)));
+    REQUIRE(peer.answer().at("kind") == "fitted");
+    CHECK(commits >= i);
+  }
+}
+
+TEST_CASE("a faulty configuration leaves the earlier one in force and says so; a good one takes its place") {
+  std::mutex mutex;
+  Reading next;
+  next.faults = {{12, 7, "drives.red.pulses", "found nothing, expected at least one pulse"}};
+  Running running([&](auto& options) {
+    options.configuration_name = "lab.yaml";
+    options.read_again = [&] {
+      const std::lock_guard lock(mutex);
+      return next;
+    };
+  });
+  Peer peer(zmq::socket_type::req, running.endpoints().requests);
+  running.daemon().reload();
+  const auto state = state_with(peer, [](const json& s) { return !s.at("troubles").empty(); });
+  CHECK(troubled(state, "lab.yaml:12:7"));
+  CHECK(troubled(state, "stays in force"));
+  peer.ask_json(fit_request("a"));
+  CHECK(peer.answer().at("kind") == "fitted");
+
+  auto fresh = *configuration();
+  fresh.drives["green"] = fresh.drives.at("red");
+  fresh.drives["green"].name = "green";
+  {
+    const std::lock_guard lock(mutex);
+    next = Reading{fresh, {}};
+  }
+  running.daemon().reload();
+  state_with(peer, [](const json& s) { return s.at("troubles").empty() && s.at("drives").contains("green"); });
+  peer.ask_json(fit_request("b", "green"));
+  CHECK(peer.answer().at("kind") == "fitted");
+
+  fresh.sockets.feed = "tcp://127.0.0.1:7999";
+  {
+    const std::lock_guard lock(mutex);
+    next = Reading{fresh, {}};
+  }
+  running.daemon().reload();
+  CHECK(troubled(state_with(peer, [](const json& s) { return !s.at("troubles").empty(); }), "restart"));
+}
+
+TEST_CASE("the signals of a service reach a daemon that takes them") {
+  Gate gate;
+  // The signals are blocked by the daemon in this thread and in those that it starts.
+  auto running = std::make_unique<Running>([&](auto& options) {
+    hold_fits(options, gate);
+    options.signals = true;
+    options.read_again = [] { return Reading{std::nullopt, {{1, 1, "format", "found 2, expected 1"}}}; };
+  });
+  Peer worker(zmq::socket_type::dealer, running->endpoints().requests);
+  Peer peer(zmq::socket_type::req, running->endpoints().requests);
+  worker.ask_json(fit_request("a"));
+  gate.wait_for_arrival("a");
+  ::kill(::getpid(), SIGHUP);
+  state_with(peer, [](const json& s) { return troubled(s, "format"); });
+  ::kill(::getpid(), SIGTERM);
+  state_with(peer, [](const json& s) { return s.at("stopping") == true; });
+  gate.open_all();
+  CHECK(worker.answer().at("kind") == "fitted");
+  CHECK(running->wait() == 0);
 }
