@@ -104,8 +104,8 @@ Result<int> read_half(std::string_view text, const std::string& where) {
     return fault("bad_value", where, "found '" + std::string(text) + "', expected a spin or projection such as 2, 3/2 or -1/2");
   };
   std::string_view digits = text;
+  if (digits.starts_with("+-")) return wrong();
   if (digits.starts_with('+')) digits.remove_prefix(1);
-  if (digits.starts_with('+')) return wrong();
   const bool is_half = digits.ends_with("/2");
   if (is_half) digits.remove_suffix(2);
   int value = 0;

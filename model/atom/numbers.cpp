@@ -26,7 +26,7 @@ Quoted follow(const Quoted& from, double value, double exponent) {
 /// A value that follows from two numbers measured apart; sigma by quadrature.
 Quoted follow(const Quoted& a, double exponent_a, const Quoted& b, double exponent_b, double value) {
   Quoted made{value, std::abs(value) * std::hypot(exponent_a * relative(a), exponent_b * relative(b)), a.source,
-              std::max(a.status, b.status)};
+              std::max(a.status, b.status), a.computed || b.computed};
   if (b.source != a.source) made.source += "; " + b.source;
   return made;
 }

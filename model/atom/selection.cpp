@@ -1,6 +1,7 @@
 // SPDX-License-Identifier: Apache-2.0
 #include "model/atom/selection.hpp"
 
+#include <algorithm>
 #include <cstdlib>
 
 #include "model/atom/angular.hpp"
@@ -64,6 +65,10 @@ Result<void> check_projection(const Level& lower, const Level& upper, std::optio
 }  // namespace
 
 Result<void> check_level(const Level& level, int twice_I, const std::string& prime, const std::string& where) {
+  if (std::min(twice_I, level.twice_J) < 0 || twice_I + level.twice_J > kLargestTwiceSpin) {
+    return fault("bad_value", where, "found J" + prime + " = " + half_text(level.twice_J) + " with nuclear spin " + half_text(twice_I) +
+                                         ", expected spins of at least 0 that add up to at most " + half_text(kLargestTwiceSpin));
+  }
   const int least = std::abs(twice_I - level.twice_J), most = twice_I + level.twice_J;
   if (level.twice_F && !is_triangle(twice_I, level.twice_J, *level.twice_F)) {
     return fault("bad_value", where, "found F" + prime + " = " + half_text(*level.twice_F) + ", but " + level.term + " with nuclear spin " +

@@ -7,8 +7,8 @@
 
 namespace halfturn::atom {
 
-/// Whether the level can be: F among |I-J| ... I+J, m among -F ... F (of J where I = 0). Fault `bad_value` at `where` that
-/// lists what exists; `prime` is ' for the upper level, in the names F' and m'.
+/// Whether the level can be: I + J at most 10, F among |I-J| ... I+J, m among -F ... F (of J where I = 0). Fault `bad_value`
+/// at `where` that lists what exists; `prime` is ' for the upper level, in the names F' and m'.
 Result<void> check_level(const Level& level, int twice_I, const std::string& prime, const std::string& where);
 
 /// Whether electric-dipole light of this polarisation can drive lower -> upper. Fault `bad_value` at `where` naming the rule

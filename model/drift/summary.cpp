@@ -80,7 +80,8 @@ Points points_of(const Fits& fits) {
   std::int64_t start = 0;
   for (std::size_t i = 0; i < fits.time_ns.size(); ++i) {
     const double sigma = fits.rabi_sigma_hz[i];
-    if (fits.verdict[i] == Verdict::refuse || !std::isfinite(fits.rabi_hz[i]) || !(sigma > 0.0) || !std::isfinite(sigma)) continue;
+    const bool usable = std::isfinite(fits.rabi_hz[i]) && sigma > 0.0 && std::isfinite(sigma);
+    if (fits.verdict[i] == Verdict::refuse || !usable) continue;
     if (points.hours.empty()) start = fits.time_ns[i];
     points.hours.push_back(static_cast<double>(fits.time_ns[i] - start) / kHourNs);
     points.value.push_back(fits.rabi_hz[i]);
@@ -141,7 +142,8 @@ double median(std::vector<double> values) {
 
 Result<Summary> summarise(const Fits& fits) {
   const auto count = fits.time_ns.size();
-  if (fits.rabi_hz.size() != count || fits.rabi_sigma_hz.size() != count || fits.verdict.size() != count || fits.intensity_w_m2.size() != count) {
+  if (fits.rabi_hz.size() != count || fits.rabi_sigma_hz.size() != count || fits.verdict.size() != count ||
+      fits.intensity_w_m2.size() != count) {
     return fault("bad_shape", "fits", "found arrays of different lengths, expected one value of each for every one of the " +
                  std::to_string(count) + " times");
   }

@@ -55,9 +55,9 @@ struct Summary {
 
 /// Summarises the fits. The trend has an interval from three fits at two or more different times; its sigma is that of the
 /// weights times `scatter` where that is above 1 (Birge, Phys. Rev. 40, 207 (1932); never narrower than the fits' own
-/// sigmas), its interval that of Student's t with n - 2 degrees of freedom. The standard error of a median is 1.2533 sigma/sqrt(n)
-/// from three fits on (exact for many normal values, up to 15 % too large for few), with sigma the larger of the fits' median
-/// sigma and 1.4826 times their median absolute deviation; below three fits it is the fits' sigma / sqrt(n).
+/// sigmas), its interval that of Student's t with n - 2 degrees of freedom. The standard error of a median is 1.2533
+/// sigma/sqrt(n) from three fits on (exact for many normal values, up to 15 % too large for few), with sigma the larger of
+/// the fits' median sigma and 1.4826 times their median absolute deviation; below three fits it is the fits' sigma / sqrt(n).
 /// Fault `bad_shape` where the arrays differ in length.
 Result<Summary> summarise(const Fits& fits);
 

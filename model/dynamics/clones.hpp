@@ -4,7 +4,7 @@
 
 /// HALFTURN_CLONES before a function compiles it for AVX2 and for the base instruction set, the loader choosing; elsewhere
 /// than x86 with glibc, and under sanitizers (whose start-up runs after the loader's choice), it is compiled once.
-/// HALFTURN_INLINE marks what must become part of such a function to profit.
+/// HALFTURN_INLINE marks what must become part of such a function to profit, HALFTURN_INLINE_LAMBDA the same for a lambda.
 #if defined(__SANITIZE_ADDRESS__) || defined(__SANITIZE_THREAD__)
 #define HALFTURN_SANITIZED 1
 #elif defined(__has_feature)
@@ -23,3 +23,4 @@
 #define HALFTURN_CLONES
 #endif
 #define HALFTURN_INLINE [[gnu::always_inline]] inline
+#define HALFTURN_INLINE_LAMBDA __attribute__((always_inline))

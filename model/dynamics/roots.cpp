@@ -41,18 +41,32 @@ double slow_root(double c0, double c1, double c2, double c3, double c4, double l
   return bracketed_newton(f, -0.5 * loss, 0.0, false, std::clamp(guess, -0.5 * loss, 0.0));
 }
 
-/// x of the root between s = -g and s = -k, of (x^2 + D^2) s (s + k)/(s + L/2) + W^2 x, which the bracket keeps from its pole.
-double coherence_root(double w2, double d2, double loss, double g, double k) {
+/// A root s and its x = s + g, each accurate relative to itself or to g and k.
+struct Located {
+  double s, x;
+};
+
+/// The root between s = -g and s = -k, as one of (x^2 + D^2) s (s + k)/(s + L/2) + W^2 x, which the bracket keeps from its
+/// pole. It is sought as a distance from the nearer end of the bracket, so that s stays accurate where k << g.
+Located coherence_root(double w2, double d2, double loss, double g, double k) {
   const double end = g - k, half = 0.5 * loss;
-  if (end == 0) return 0;
-  const auto f = [=](double x) {
-    const double s = x - g, pole = 1 / (s + half), ratio = s * (s + k) * pole;
-    const double ratio_s = (2 * s + k - ratio) * pole, h = x * x + d2;
+  if (end == 0) return {-g, 0};
+  const auto f = [=](double s, double x, double s_plus_k) {
+    const double pole = 1 / (s + half), ratio = s * s_plus_k * pole;
+    const double ratio_s = (s + s_plus_k - ratio) * pole, h = x * x + d2;
     return Slope{h * ratio + w2 * x, 2 * x * ratio + h * ratio_s + w2};
   };
-  const double from_detuning = d2 * g, from_rabi = w2 * (g - half);
-  const double guess = end * (from_detuning / (from_detuning + from_rabi));
-  return end > 0 ? bracketed_newton(f, 0.0, end, false, guess) : bracketed_newton(f, end, 0.0, false, guess);
+  const double guess = coherence_guess(w2, d2, loss, g, k), middle = 0.5 * end;
+  const bool beyond = (f(middle - g, middle, middle - end).value > 0) != (end > 0);  // the root lies between middle and end
+  const double low = std::min(0.0, middle), high = std::max(0.0, middle);
+  if (beyond) {
+    const auto from_end = [=](double y) { return f(y - k, y + end, y); };
+    const double y = bracketed_newton(from_end, -high, -low, false, std::clamp(guess - end, -high, -low));
+    return {y - k, y + end};
+  }
+  const auto from_start = [=](double x) { return f(x - g, x, x - end); };
+  const double x = bracketed_newton(from_start, low, high, false, std::clamp(guess, low, high));
+  return {x - g, x};
 }
 
 }  // namespace
@@ -73,7 +87,7 @@ Roots find_roots(double rabi, double detuning, double loss, double coherence, do
     const double c0 = 0.5 * w2 * g * loss, c1 = k * (g * g + d2) + w2 * (g + 0.5 * loss);
     const double c2 = g * g + d2 + 2 * g * k + w2, c3 = 2 * g + k;
     const double r = loss == 0 ? 0 : slow_root(c0, c1, c2, c3, 1, loss);
-    const double x = coherence_root(w2, d2, loss, g, k), second = x - g;
+    const auto [second, x] = coherence_root(w2, d2, loss, g, k);
     roots.single[0] = r;
     roots.single_x[0] = r + g;
     roots.single[1] = second;

@@ -6,6 +6,8 @@
 #include <limits>
 
 #include "model/dynamics/basis.hpp"
+#include "model/dynamics/detuning_block.hpp"
+#include "model/dynamics/elementary.hpp"
 #include "model/dynamics/flow.hpp"
 #include "model/dynamics/modes.hpp"
 
@@ -146,6 +148,40 @@ void at_one(const Problem& problem, const Wanted& wanted, double t, double* valu
   }
 }
 
+/// Whether a block's vector code serves, and for which rows not: derivatives by a damping where there is none.
+bool block_serves(const Problem& problem, const Wanted& wanted, const DetuningBlock& block, double t) {
+  if (problem.undamped && (wanted[kRateRow + kByDecay] || wanted[kRateRow + kByLoss] || wanted[kRateRow + kByDephasing]))
+    return false;
+  double largest = 0;
+  for (double detuning : block.detuning) largest = std::max(largest, std::abs(detuning));
+  return t > 0 && (largest + std::abs(problem.rabi)) * t <= kLargestPhase;  // false for NaN
+}
+
+void line_one(Problem problem, std::span<const double> axis, double length_s, const Rows& rows) {
+  const Wanted wanted = wanted_of(rows);
+  const double t = length_s < 0 ? 0.0 : length_s, offset = problem.detuning;  // a NaN stays
+  DetuningBlock block;
+  for (std::size_t begin = 0; begin < axis.size(); begin += kBlock) {
+    const std::size_t count = std::min<std::size_t>(kBlock, axis.size() - begin);
+    for (std::size_t i = 0; i < kBlock; ++i) block.detuning[i] = axis[begin + std::min(i, count - 1)] - offset;
+    const bool vector = block_serves(problem, wanted, block, t);
+    if (vector && problem.undamped) undamped_block(problem, t, block);
+    if (vector && !problem.undamped) damped_block(problem, wanted, t, block);
+    for (std::size_t i = 0; i < count; ++i) {
+      if (vector && block.doubtful[i] == 0) continue;
+      problem.detuning = block.detuning[i];
+      double values[kRowCount] = {};
+      at_one(problem, wanted, t, values);
+      for (int row = 0; row < kRowCount; ++row) block.rows[row][i] = values[row];
+    }
+    for (int row = 0; row < kRowCount; ++row)
+      if (rows[row] != nullptr) std::copy_n(block.rows[row], count, rows[row] + begin);
+  }
+  if (double* by_offset = rows[kRateRow + kByDetuning])
+    for (std::size_t k = 0; k < axis.size(); ++k) by_offset[k] = -by_offset[k];
+  if (length_s < 0 && rows[kLengthRow] != nullptr) std::fill_n(rows[kLengthRow], axis.size(), 0.0);
+}
+
 }  // namespace
 
 void Workspace::reserve(std::size_t points) {
@@ -172,25 +208,13 @@ void duration_scan(std::span<const Rates> batch, const Start& start, std::span<c
 void detuning_scan(std::span<const Rates> batch, const Start& start, std::span<const double> detuning,
                    std::span<const double> pulse_length_s, const Derivatives& out, std::span<Status> status,
                    Workspace& workspace) {
-  static_cast<void>(workspace);
+  static_cast<void>(workspace);  // blocks of fixed size serve so far
   const std::size_t points = detuning.size();
   for (std::size_t set = 0; set < batch.size(); ++set) {
     const Rows rows = rows_of(out, set * points);
-    const Wanted wanted = wanted_of(rows);
-    const double length = pulse_length_s[set], t = length < 0 ? 0.0 : length;
     fill(rows, points, kNaN);
-    for (std::size_t k = 0; k < points; ++k) {
-      Rates rates = batch[set];
-      rates.detuning = detuning[k] - rates.detuning;
-      Problem problem;
-      if (!pose(rates, start, problem)) continue;
-      double values[kRowCount] = {};
-      at_one(problem, wanted, t, values);
-      values[kRateRow + kByDetuning] *= -1;
-      if (length < 0) values[kLengthRow] = 0;
-      for (int row = 0; row < kRowCount; ++row)
-        if (rows[row] != nullptr) rows[row][k] = values[row];
-    }
+    Problem problem;
+    if (pose(batch[set], start, problem)) line_one(problem, detuning, pulse_length_s[set], rows);
     status[set] = finite(rows, points);
   }
 }

@@ -28,6 +28,7 @@ void fit_one(const ScanBatch& scan, std::size_t site, const Prior& prior, const 
   fit = Fit{};
   fit.axis = scan.kind;
   fit.sampling = sampling_of(scan.kind, scan.axis);
+  for (const double at : scan.axis) fit.longest = std::max(fit.longest, at);
   const Readout readout = scan.site(site);
   fit.quality.points = measured_points(readout);
   fit.pulse_length_s.clear();

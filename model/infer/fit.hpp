@@ -73,6 +73,7 @@ struct Fit {
   FitOutcome outcome = FitOutcome::not_converged;
   Axis axis = Axis::duration;
   Sampling sampling;
+  double longest = 0.0;         // the largest value on the axis
   Dynamics chosen = Dynamics::undamped;
   std::array<CandidateScore, 4> candidates{};
   int candidate_count = 0;

@@ -49,8 +49,7 @@ PointLikelihood binomial(double counts, double shots, double mean) {
   if (mean <= 0.0 || other <= 0.0) {
     return {deviance, mean <= 0.0 ? shots : -shots, shots * (shots + 1.0) * (shots + 1.0) / (0.5 * (shots + 0.5))};
   }
-  const double variance = mean * other;
-  return {deviance, (shots * mean - counts) / variance, shots / variance};
+  return {deviance, dark / other - counts / mean, shots / (mean * other)};
 }
 
 PointLikelihood gaussian(double signal, double sigma, double mean) {
@@ -65,7 +64,7 @@ PointLikelihood poisson(double photons, double exposures, double mean) {
   if (!(mean >= 0.0 && mean < kInfinity) || (photons > 0.0 && mean <= 0.0)) return kRuledOut;
   const double deviance = entropy(photons, exposures * mean);
   if (mean <= 0.0) return {deviance, exposures, 2.0 * exposures * exposures};
-  return {deviance, (exposures * mean - photons) / mean, exposures / mean};
+  return {deviance, exposures - photons / mean, exposures / mean};
 }
 
 bool evaluate(const Readout& readout, std::span<const double> mean, double& half_deviance, std::span<double> score,

@@ -12,6 +12,7 @@ namespace {
 
 using Index = Eigen::Index;
 using Kind = ProfileEnd::Kind;
+constexpr double kInfinity = std::numeric_limits<double>::infinity();
 
 /// The search for one end: `side` is -1 for the low one, +1 for the high one; distances count outward from the minimum.
 class Search {
@@ -86,63 +87,91 @@ class Search {
     return true;
   }
 
-  /// How much further out the threshold should lie: by the parabola near the minimum, by Newton on the root beyond.
-  double advance(const Local& local) const {
+  /// How much further out the threshold should lie: by the parabola at the minimum, by the chord of the root where it is still
+  /// far from its target (the information may promise far less room than there is, as for no counts of n), and then by Newton.
+  double advance(const Local& local, double distance) const {
     if (local.root > 0.3 * target_) return local.root * (target_ - local.root) / local.slope;
-    const double rise = 0.5 * (target_ * target_ - local.root * local.root);
-    return (std::sqrt(local.slope * local.slope + 2.0 * local.curvature * rise) - local.slope) / local.curvature;
+    if (distance > 0.0) return distance * std::min(target_ / local.root - 1.0, 30.0);
+    const double bend = 2.0 * local.curvature * 0.5 * target_ * target_;
+    return (std::sqrt(local.slope * local.slope + bend) - local.slope) / local.curvature;
   }
 
   std::optional<ProfileEnd> newton() {
     Minimum at = minimum_, trial = minimum_;
     Local local;
-    BoxStep box;
-    while (look(at, local)) {
+    if (!look(at, local)) return std::nullopt;
+    while (true) {
       const double distance = width(at.x);
       if (local.root > 0.3 * target_ && !(local.slope > 0.0)) return std::nullopt;
-      double step = advance(local);
+      double step = advance(local, distance);
       if (!std::isfinite(step)) return std::nullopt;
-      const bool settled = local.promised <= options_.accuracy * target_ * target_;
+      const bool settled = local.promised <= 0.3 * options_.accuracy * target_ * target_;
       const bool outside = distance + step >= room_;
       if (settled && outside && distance >= room_) return end(Kind::bound, room_, at.x);
-      // Newton's error is about the square of its last step.
-      if (settled && distance > 0.0 && !outside && std::abs(step) <= 0.5 * std::sqrt(options_.accuracy) * distance) {
+      if (settled && distance > 0.0 && !outside && close(local, step, distance)) {
+        BoxStep box;
         if (!follow(at, local.hessian, side_ * step, box)) return std::nullopt;
         return end(Kind::reached, distance + step, (at.x + box.step).cwiseMax(bounds_.lower).cwiseMin(bounds_.upper));
       }
-      if (distance > 0.0) step = std::clamp(step, -0.7 * distance, 2.0 * distance);
+      if (distance > 0.0) step = std::clamp(step, -0.7 * distance, (settled ? 30.0 : 2.0) * distance);
       step = std::min(step, room_ - distance);
       if (!advance_to(at, local, distance, step, trial)) return std::nullopt;
       at = trial;
     }
-    return std::nullopt;
   }
 
-  /// Evaluates the point `step` further out, or nearer where the objective cannot be computed.
-  bool advance_to(const Minimum& at, const Local& local, double distance, double step, Minimum& trial) {
+  /// Whether one more step of Newton's needs no check: its error is about the square of the step. Beside an edge of the domain a
+  /// steep slope makes steps short far from the target, so the root must be near as well.
+  bool close(const Local& local, double step, double distance) const {
+    const double small = 0.2 * std::sqrt(options_.accuracy);
+    return std::abs(step) <= small * distance && std::abs(local.root - target_) <= 3.0 * small * target_;
+  }
+
+  /// Evaluates the point `step` further out, or nearer where the objective cannot be computed or the target is far overshot.
+  bool advance_to(const Minimum& at, Local& local, double distance, double step, Minimum& trial) {
     BoxStep box;
-    for (; evaluations_ < options_.newton_evaluations; step *= 0.3) {
+    Local there;
+    while (evaluations_ < options_.newton_evaluations) {
       if (!follow(at, local.hessian, side_ * step, box)) return false;
       trial.x = (at.x + box.step).cwiseMax(bounds_.lower).cwiseMin(bounds_.upper);
       trial.x[index_] = distance + step >= room_ ? (side_ > 0 ? bounds_.upper[index_] : bounds_.lower[index_])
                                                  : at.x[index_] + side_ * step;
-      if (evaluate(trial)) return true;
+      double fraction = 0.3;
+      if (evaluate(trial) && look(trial, there)) {
+        if (step <= 0.0 || there.root <= 1.5 * target_) {
+          local = there;
+          return true;
+        }
+        fraction = std::clamp((target_ - local.root) / (there.root - local.root), 0.2, 0.7);
+      }
+      step *= fraction;
     }
     return false;
   }
 
-  /// The square root of twice the profile's rise at a distance, minus its target; `x` holds the start and then the optimum.
-  double excess(double distance, Vector& x) {
+  /// The square root of twice the profile's rise at a distance, minus its target. `near` is an optimum at another distance, and
+  /// then the one here. Where the way from there leads out of the objective's domain, it is walked in halves.
+  double excess(double distance, Minimum& near, int halvings = 6) {
+    const double from = width(near.x);
     Bounds held = bounds_;
-    const double at = distance >= room_ ? (side_ > 0 ? bounds_.upper[index_] : bounds_.lower[index_])
-                                        : minimum_.x[index_] + side_ * distance;
-    x[index_] = held.lower[index_] = held.upper[index_] = at;
+    Vector x = near.x;
+    BoxStep box;
+    Local local;
+    if (look(near, local) && follow(near, local.hessian, side_ * (distance - from), box)) x += box.step;
+    x[index_] = distance >= room_ ? (side_ > 0 ? bounds_.upper[index_] : bounds_.lower[index_]) : minimum_.x[index_] + side_ * distance;
+    held.lower[index_] = held.upper[index_] = x[index_];
     SolverOptions solver;
     solver.decrease_tolerance = 0.02 * options_.accuracy * target_ * target_;
     const Minimum found = minimise(objective_, x, held, solver);
     evaluations_ += found.evaluations;
-    if (found.outcome == Outcome::not_finite) return std::numeric_limits<double>::infinity();
-    x = found.x;
+    if (found.outcome == Outcome::not_finite) {
+      Minimum middle = near;
+      if (halvings == 0 || std::isinf(excess(0.5 * (from + distance), middle, halvings - 1))) return kInfinity;
+      const double here = excess(distance, middle, halvings - 1);
+      if (std::isfinite(here)) near = middle;
+      return here;
+    }
+    near = found;
     lowest_ = std::min(lowest_, found.value);
     return std::sqrt(2.0 * std::max(found.value - minimum_.value, 0.0)) - target_;
   }
@@ -150,7 +179,7 @@ class Search {
   /// A first guess of the half-width, from the information at the minimum.
   double guess() const {
     Local local;
-    double distance = look(minimum_, local) ? advance(local) : 0.0;
+    double distance = look(minimum_, local) ? advance(local, 0.0) : 0.0;
     if (!(distance > 0.0 && std::isfinite(distance))) distance = target_ / std::sqrt(minimum_.information(index_, index_));
     if (!(distance > 0.0 && std::isfinite(distance))) distance = std::max(std::abs(minimum_.x[index_]), 1.0);
     return std::min(distance, room_);
@@ -159,38 +188,41 @@ class Search {
   /// Steps outward until the threshold is passed, then closes in by false position (the Illinois rule: M. Dowell, P. Jarratt,
   /// BIT 11, 168 (1971)).
   ProfileEnd bracketed() {
-    Vector inside = minimum_.x, x = minimum_.x;
+    Minimum inside = minimum_, at = minimum_;
     double low = 0.0, low_excess = -target_, high = guess();
     const double farthest = 1e6 * high;
-    double high_excess = excess(high, x);
+    double high_excess = excess(high, at);
     while (!(high_excess > 0.0)) {
-      if (high >= room_) return end(Kind::bound, room_, x);
-      if (high > farthest) return end(Kind::open, high, x);
-      if (evaluations_ > options_.max_evaluations) return end(Kind::failed, high, x);
-      inside = x, low = high, low_excess = high_excess;
+      if (high >= room_) return end(Kind::bound, room_, at.x);
+      if (high > farthest) return end(Kind::open, high, at.x);
+      if (evaluations_ > options_.max_evaluations) return end(Kind::failed, high, at.x);
+      inside = at, low = high, low_excess = high_excess;
       high = std::min(1.7 * high, room_);
-      high_excess = excess(high, x);
+      high_excess = excess(high, at);
     }
+    return close_in(low, low_excess, high, high_excess, inside);
+  }
+
+  ProfileEnd close_in(double low, double low_weight, double high, double high_weight, Minimum& inside) {
     int last = 0;
-    double low_weight = low_excess, high_weight = high_excess;
     while (evaluations_ <= options_.max_evaluations) {
-      double middle = low + (high - low) * low_weight / (low_weight - high_weight);
-      if (!std::isfinite(high_weight)) middle = 0.5 * (low + high);
-      x = inside;
-      const double found = excess(middle, x);
-      const bool within = std::abs(found) <= 0.3 * options_.accuracy * target_ || high - low <= 0.3 * options_.accuracy * high;
-      if (within) return end(Kind::reached, middle, x);
+      const bool finite = std::isfinite(high_weight);
+      const double middle = finite ? low + (high - low) * low_weight / (low_weight - high_weight) : 0.5 * (low + high);
+      Minimum at = inside;
+      const double found = excess(middle, at);
+      if (std::abs(found) <= 0.3 * options_.accuracy * target_) return end(Kind::reached, middle, at.x);
+      if (high - low <= 0.3 * options_.accuracy * high) return end(Kind::reached, low, inside.x);
       if (found > 0.0) {
         high = middle, high_weight = found;
         if (last == 1) low_weight *= 0.5;
         last = 1;
       } else {
-        low = middle, low_weight = found, inside = x;
-        if (last == -1 && std::isfinite(high_weight)) high_weight *= 0.5;
+        low = middle, low_weight = found, inside = at;
+        if (last == -1) high_weight *= 0.5;
         last = -1;
       }
     }
-    return end(Kind::failed, high, x);
+    return end(Kind::failed, high, inside.x);
   }
 
   const Objective& objective_;
@@ -201,7 +233,7 @@ class Search {
   int side_;
   double target_;
   double room_;
-  double lowest_ = std::numeric_limits<double>::infinity();
+  double lowest_ = kInfinity;
   int evaluations_ = 0;
 };
 

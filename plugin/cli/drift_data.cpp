@@ -17,8 +17,8 @@ using Text = std::pair<const char*, std::string log::Event::*>;
 using Real = std::pair<const char*, double log::Event::*>;
 
 /// The columns behind `taken_at`, in order; one list for both forms.
-const std::array<Text, 6> kTexts = {{{"drive", &log::Event::drive}, {"scan_name", &log::Event::scan_name}, {"axis", &log::Event::axis},
-    {"verdict", &log::Event::verdict}, {"effect", &log::Event::effect}, {"reasons", &log::Event::reasons}}};
+const std::array<Text, 6> kTexts = {{{"drive", &log::Event::drive}, {"scan_name", &log::Event::scan_name},
+    {"axis", &log::Event::axis}, {"verdict", &log::Event::verdict}, {"effect", &log::Event::effect}, {"reasons", &log::Event::reasons}}};
 const std::array<Real, 13> kReals = {{{"rabi_hz", &log::Event::rabi_hz}, {"rabi_sigma_hz", &log::Event::rabi_sigma_hz},
     {"rabi_low_hz", &log::Event::rabi_low_hz}, {"rabi_high_hz", &log::Event::rabi_high_hz},
     {"generalised_hz", &log::Event::generalised_hz}, {"generalised_sigma_hz", &log::Event::generalised_sigma_hz},

@@ -55,7 +55,8 @@ Result<DriveDrift> drive_drift(const std::string& name, const std::vector<const 
     columns.intensity_w_m2.push_back(counted ? fit->intensity_w_m2 : drift::kNone);
     columns.verdict.push_back(verdict_of(fit->verdict));
   }
-  auto summary = drift::summarise({columns.time_ns, columns.rabi_hz, columns.sigma_hz, columns.verdict, columns.intensity_w_m2});
+  auto summary =
+      drift::summarise({columns.time_ns, columns.rabi_hz, columns.sigma_hz, columns.verdict, columns.intensity_w_m2});
   if (!summary) return tl::unexpected<Fault>(summary.error());
   result.summary = std::move(*summary);
   return result;
@@ -68,13 +69,17 @@ Result<void> check_known(log::Log& log, const std::string& drive) {
   if (!done || names.count(drive) != 0) return done;
   std::string list;
   for (const auto& name : names) list += (list.empty() ? "" : ", ") + name;
-  return fault("unknown_drive", "drive", "The log has no drive `" + drive + "`; it has " + (list.empty() ? "none yet" : list) + ".");
+  if (list.empty()) list = "none yet";
+  return fault("unknown_drive", "drive", "The log has no drive `" + drive + "`; it has " + list + ".");
 }
 
 }  // namespace
 
-Result<DriftReport> drift_report(log::Log& log, const std::string& drive, std::optional<log::Time> since, std::optional<log::Time> until) {
-  if (since && until && *until <= *since) return fault("bad_value", "until", "found an end that is not after the start, expected a later one");
+Result<DriftReport> drift_report(log::Log& log, const std::string& drive, std::optional<log::Time> since,
+                                 std::optional<log::Time> until) {
+  if (since && until && *until <= *since) {
+    return fault("bad_value", "until", "found an end that is not after the start, expected a later one");
+  }
   log::Range range;
   range.drive = drive;
   range.since = since;

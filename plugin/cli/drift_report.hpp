@@ -31,7 +31,8 @@ struct DriftReport {
 
 /// Reads the report from a log. Faults: `unknown_drive` where the log has never seen the drive, naming those it has;
 /// `bad_value` where `until` is not after `since`; `log_unavailable`. A known drive without fits in the range is no fault.
-Result<DriftReport> drift_report(log::Log& log, const std::string& drive, std::optional<log::Time> since, std::optional<log::Time> until);
+Result<DriftReport> drift_report(log::Log& log, const std::string& drive, std::optional<log::Time> since,
+                                 std::optional<log::Time> until);
 
 /// A table for reading, a block a drive. With `colour` refused scans and falls of 5 % and more are set off by ANSI colours.
 std::string to_table(const DriftReport& report, bool colour);

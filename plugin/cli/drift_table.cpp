@@ -23,7 +23,8 @@ using Line = std::array<Cell, 7>;
 
 /// Characters as a terminal shows them: bytes that begin one in UTF-8.
 std::size_t width(const std::string& text) {
-  return static_cast<std::size_t>(std::count_if(text.begin(), text.end(), [](char c) { return (static_cast<unsigned char>(c) & 0xC0) != 0x80; }));
+  const auto begins = [](char c) { return (static_cast<unsigned char>(c) & 0xC0) != 0x80; };
+  return static_cast<std::size_t>(std::count_if(text.begin(), text.end(), begins));
 }
 
 std::string tinted(const std::string& text, Tint tint, bool colour) {
@@ -77,18 +78,23 @@ std::string per_hour(double value) { return plain(100.0 * value, 3) + " %"; }
 
 std::string trend_text(const drift::Trend& trend) {
   if (!std::isfinite(trend.relative_per_hour)) {
-    return "  Trend: none yet; it takes three fits at different times that were not refused, here are " + std::to_string(trend.fits) + ".\n";
+    return "  Trend: none yet; it takes three fits at different times that were not refused, here are " +
+           std::to_string(trend.fits) + ".\n";
   }
   const bool resolved = trend.slope_low > 0.0 || trend.slope_high < 0.0;
-  std::string text = "  Trend: " + per_hour(trend.relative_per_hour) + " per hour, 95 % interval " + per_hour(trend.relative_low) + " to " +
-                     per_hour(trend.relative_high) + " (" + std::to_string(trend.fits) + " fits)" + (resolved ? ".\n" : ": none to be seen.\n");
-  if (trend.scatter > 1.5) text += "  The fits scatter about it " + plain(trend.scatter, 2) + " times as much as their own uncertainties say.\n";
+  std::string text = "  Trend: " + per_hour(trend.relative_per_hour) + " per hour, 95 % interval ";
+  text += per_hour(trend.relative_low) + " to " + per_hour(trend.relative_high) + " (" + std::to_string(trend.fits) + " fits)";
+  text += resolved ? ".\n" : ": none to be seen.\n";
+  if (trend.scatter > 1.5) {
+    text += "  The fits scatter about it " + plain(trend.scatter, 2) + " times as much as their own uncertainties say.\n";
+  }
   return text;
 }
 
 std::string block(const DriveDrift& part, bool colour) {
   std::vector<Line> lines;
-  const std::array<const char*, 7> titles = {"day (UTC)", "scans", "refused", "Rabi frequency", "intensity", "since first", "since last day"};
+  const std::array<const char*, 7> titles = {"day (UTC)", "scans", "refused", "Rabi frequency", "intensity",
+                                            "since first", "since last day"};
   Line head;
   for (std::size_t i = 0; i < head.size(); ++i) head[i] = {titles[i], Tint::faint};
   lines.push_back(head);
@@ -96,7 +102,8 @@ std::string block(const DriveDrift& part, bool colour) {
   std::string text = "Drive " + part.drive;
   if (std::isfinite(part.drive_amplitude)) text += " at amplitude " + plain(part.drive_amplitude, 4);
   text += "\n" + laid_out(lines, colour) + trend_text(part.summary.trend);
-  if (part.at_other_amplitudes > 0) text += "  Left aside: " + std::to_string(part.at_other_amplitudes) + " scans at other drive amplitudes.\n";
+  const auto aside = part.at_other_amplitudes;
+  if (aside > 0) text += "  Left aside: " + std::to_string(aside) + (aside == 1 ? " scan" : " scans") + " at other drive amplitudes.\n";
   return text;
 }
 
@@ -111,7 +118,8 @@ std::string range_text(const DriftReport& report) {
 
 std::string to_table(const DriftReport& report, bool colour) {
   if (report.drives.empty()) {
-    return "No scans" + (report.drive.empty() ? std::string() : " of drive " + report.drive) + range_text(report) + " in this log.\n";
+    const auto whose = report.drive.empty() ? std::string() : " of drive " + report.drive;
+    return "No scans" + whose + range_text(report) + " in this log.\n";
   }
   std::string text;
   for (const auto& part : report.drives) text += (text.empty() ? "" : "\n") + block(part, colour);

@@ -72,7 +72,7 @@ atom::CatalogueLine read_line(Reader& reader, const Place& at) {
                                                          {"saturation_w_m2", &atom::CatalogueLine::saturation_w_m2}};
   for (const auto& [key, number] : kNumbers) line.*number = read_quoted(reader, at[key]);
   line.recommended = read_texts(reader, at["recommended"], "a list of transitions");
-  if (at["note"]) line.note = reader.text(at["note"], "a text").value_or("");
+  line.note = reader.text(at["note"], "a text").value_or("");
   return line;
 }
 

@@ -8,6 +8,7 @@
 #include "plugin/config/file.hpp"
 #include "plugin/config/keys.hpp"
 #include "plugin/config/sections.hpp"
+#include "plugin/wire/words.hpp"
 
 namespace halfturn::config {
 namespace {
@@ -25,7 +26,7 @@ std::string fingerprint(std::string_view text) {
 
 std::string read_log(Reader& reader, const Place& at, const std::string& folder) {
   const std::string name = at ? reader.text(at, "the path of a file").value_or("") : std::string(kDefaultLog);
-  if (name.starts_with("~") || name.ends_with("/")) reader.fault(at, "found " + in_quotes(name) + ", expected the path of a file, without ~");
+  if (name.starts_with("~") || name.ends_with("/")) reader.fault(at, "found " + wire::in_quotes(name) + ", expected the path of a file, without ~");
   return folder.empty() ? name : (std::filesystem::path(folder) / name).string();
 }
 

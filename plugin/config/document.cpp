@@ -11,7 +11,7 @@
 #include <set>
 #include <sstream>
 
-#include "plugin/config/units.hpp"
+#include "plugin/wire/words.hpp"
 
 namespace halfturn::config {
 namespace {
@@ -92,7 +92,22 @@ class Builder : public YAML::EventHandler {
 
   void check_extras(const YAML::Mark& mark, const std::string& tag, YAML::anchor_t anchor) {
     if (anchor != 0) refuse(mark, "found an anchor (&), expected the value alone");
-    if (!tag.empty() && tag != "?" && tag != "!") refuse(mark, "found the tag " + in_quotes(tag) + ", expected the value alone");
+    if (!tag.empty() && tag != "?" && tag != "!") refuse(mark, "found the tag " + wire::in_quotes(tag) + ", expected the value alone");
+  }
+
+  /// A quoted scalar ends with its quote. (The parser takes the end of the text for it: version 0.7, ScanScalar.)
+  void check_quotes(const YAML::Mark& mark) {
+    const auto line = static_cast<std::size_t>(mark.line);
+    if (line >= lines_.size() || static_cast<std::size_t>(mark.column) >= lines_[line].size()) return;
+    const char* begin = lines_[line].data() + mark.column;
+    const std::string_view rest(begin, static_cast<std::size_t>(lines_.back().data() + lines_.back().size() - begin));
+    if (rest.front() != '"' && rest.front() != '\'') return;
+    for (std::size_t at = 1; at < rest.size(); ++at) {
+      if (rest.front() == '"' && rest[at] == '\\') ++at;
+      else if (rest.substr(at, 2) == "''" && rest.front() == '\'') ++at;
+      else if (rest[at] == rest.front()) return;
+    }
+    refuse(mark, "found an opening quotation mark without its end, expected two");
   }
 
   void count(const YAML::Mark& mark) {
@@ -106,6 +121,7 @@ class Builder : public YAML::EventHandler {
   void leaf(Node::Kind kind, const YAML::Mark& mark, const std::string& tag, YAML::anchor_t anchor, const std::string& text) {
     check_extras(mark, tag, anchor);
     count(mark);
+    if (tag == "!") check_quotes(mark);
     if (key_is_next()) return take_key(kind, mark, text);
     Node node;
     node.kind = kind;
@@ -122,7 +138,7 @@ class Builder : public YAML::EventHandler {
     level.key = text;
     level.key_mark = mark;
     const auto [seen, fresh] = level.seen.emplace(text, mark.line + 1);
-    if (!fresh) refuse(mark, "found the key " + in_quotes(text) + " a second time (first in line " + std::to_string(seen->second) +
+    if (!fresh) refuse(mark, "found the key " + wire::in_quotes(text) + " a second time (first in line " + std::to_string(seen->second) +
                              "), expected it once");
   }
 
@@ -188,6 +204,7 @@ std::vector<std::string_view> split_lines(std::string_view text) {
 std::string syntax_message(const std::string& reason, std::string_view line) {
   const std::size_t text = line.find_first_not_of(" \t");
   if (line.substr(0, text).find('\t') != std::string_view::npos) return "found a tab before the text, expected spaces";
+  if (reason.find("anchor") != std::string::npos) return "found an alias (*), expected the value itself";
   return "found text that is not YAML (" + reason + "), expected YAML; look at brackets, quotes, colons and indentation, also above";
 }
 
@@ -212,20 +229,12 @@ void parse(const std::string& text, const DocumentLimits& limits, Document& docu
   builder.close_all();
 }
 
-/// Length of the well-formed UTF-8 character at the start of `text` (Unicode 15, table 3-7); 0 where it is none.
+/// Length of the UTF-8 character at the start of `text`, which is not empty; 0 where it is none, or NUL.
 std::size_t character_length(std::string_view text) {
-  const auto byte = [&](std::size_t i) { return i < text.size() ? static_cast<unsigned char>(text[i]) : 0u; };
-  const auto follows = [&](std::size_t i) { return (byte(i) & 0xC0u) == 0x80u; };
-  const unsigned first = byte(0);
-  if (first < 0x80) return first == 0 ? 0 : 1;
-  if (first >= 0xC2 && first <= 0xDF) return follows(1) ? 2 : 0;
-  if (first >= 0xE0 && first <= 0xEF) {
-    const bool narrow = (first == 0xE0 && byte(1) < 0xA0) || (first == 0xED && byte(1) > 0x9F);
-    return follows(1) && follows(2) && !narrow ? 3 : 0;
-  }
-  if (first < 0xF0 || first > 0xF4) return 0;
-  const bool narrow = (first == 0xF0 && byte(1) < 0x90) || (first == 0xF4 && byte(1) > 0x8F);
-  return follows(1) && follows(2) && follows(3) && !narrow ? 4 : 0;
+  if (text.front() == '\0') return 0;
+  for (std::size_t length = 1; length <= std::min<std::size_t>(4, text.size()); ++length)
+    if (wire::is_utf8(text.substr(0, length))) return length;
+  return 0;
 }
 
 }  // namespace

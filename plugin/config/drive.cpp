@@ -5,6 +5,7 @@
 #include "model/quantity/constants.hpp"
 #include "plugin/config/keys.hpp"
 #include "plugin/config/sections.hpp"
+#include "plugin/wire/words.hpp"
 
 namespace halfturn::config {
 namespace {
@@ -26,9 +27,9 @@ void check_fractions(Reader& reader, const Place& at, const Drive& drive) {
   if (drive.contrast && drive.contrast->mean == 0.0) reader.fault(at["contrast"], "found a contrast of 0, expected one that shows the oscillation");
   if (drive.readout_kind != wire::ReadoutKind::binomial) return;
   if (drive.floor && (drive.floor->mean < 0.0 || drive.floor->mean > 1.0))
-    reader.fault(at["floor"], "found " + in_quotes(at["floor"].node->children[0].text) + ", expected a fraction of counts between 0 and 1");
+    reader.fault(at["floor"], "found " + wire::in_quotes(at["floor"].node->children[0].text) + ", expected a fraction of counts between 0 and 1");
   if (drive.contrast && std::abs(drive.contrast->mean) > 1.0)
-    reader.fault(at["contrast"], "found " + in_quotes(at["contrast"].node->children[0].text) + ", expected a fraction of counts between -1 and 1");
+    reader.fault(at["contrast"], "found " + wire::in_quotes(at["contrast"].node->children[0].text) + ", expected a fraction of counts between -1 and 1");
   if (!drive.floor || !drive.contrast) return;
   const double top = drive.floor->mean + drive.contrast->mean;
   const double slack = 1e-9;  // 0.02 + 0.98 is not quite 1 in binary
@@ -61,7 +62,7 @@ void read_dynamics(Reader& reader, const Place& at, Drive& drive) {
   for (const Node& child : at.node->children) {
     const auto one = reader.choice(at.child(child), infer::kDynamicsNames, keys::kDynamicsLater);
     if (!one) continue;
-    if (set.has(static_cast<infer::Dynamics>(*one))) reader.fault(at.child(child), "found " + in_quotes(child.text) + " a second time, expected it once");
+    if (set.has(static_cast<infer::Dynamics>(*one))) reader.fault(at.child(child), "found " + wire::in_quotes(child.text) + " a second time, expected it once");
     set.add(static_cast<infer::Dynamics>(*one));
   }
   drive.dynamics = set;

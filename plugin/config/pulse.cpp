@@ -6,6 +6,7 @@
 #include "plugin/config/keys.hpp"
 #include "plugin/config/sections.hpp"
 #include "plugin/config/shape.hpp"
+#include "plugin/wire/words.hpp"
 
 namespace halfturn::config {
 namespace {
@@ -31,7 +32,7 @@ void check_tick(Reader& reader, const Place& at, const recalibrate::Pulse& pulse
   if (!at || pulse.tick_s <= 0.0 || pulse.length_s <= 0.0) return;
   const double last = std::floor(pulse.maximum_s / pulse.tick_s * (1.0 + 1e-12)) * pulse.tick_s;
   if (last < pulse.minimum_s * (1.0 - 1e-12))
-    reader.fault(at, "found " + in_quotes(at.node->text) + ", of which no multiple lies within the limits, expected a shorter tick");
+    reader.fault(at, "found " + wire::in_quotes(at.node->text) + ", of which no multiple lies within the limits, expected a shorter tick");
 }
 
 void read_shape(Reader& reader, const Place& at, recalibrate::Pulse& pulse) {
@@ -46,7 +47,7 @@ void read_shape(Reader& reader, const Place& at, recalibrate::Pulse& pulse) {
   if (width && shape != Shape::gaussian) reader.fault(width, "found a width, expected none: only a Gaussian is cut");
   if (shape == Shape::gaussian) reader.need(at, "width", "where the Gaussian is cut: the whole pulse over its length at half amplitude, such as 3");
   if (edge_s && pulse.length_s > 0.0 && *edge_s > pulse.minimum_s)
-    reader.fault(edge, "found " + in_quotes(edge.node->text) + ", expected an edge of at most the shortest pulse, " + engineering(pulse.minimum_s, "s"));
+    reader.fault(edge, "found " + wire::in_quotes(edge.node->text) + ", expected an edge of at most the shortest pulse, " + engineering(pulse.minimum_s, "s"));
   pulse.area_factor = area_factor(shape, cut.value_or(3.0));
 }
 

@@ -4,7 +4,7 @@
 #include <algorithm>
 #include <charconv>
 
-#include "plugin/config/nearest.hpp"
+#include "plugin/wire/words.hpp"
 
 namespace halfturn::config {
 namespace {
@@ -51,12 +51,12 @@ bool Reader::map(const Place& at, const Keys& keys) {
   for (const Node& child : at.node->children) {
     if (holds(keys.known, child.key)) continue;
     const Place place = at.child(child);
-    const std::string key = "the key " + in_quotes(child.key);
+    const std::string key = "the key " + wire::in_quotes(child.key);
     if (holds(keys.later, child.key))
       fault_at_key(place, "found " + key + ", which is not available in this version, expected none");
     else
       fault_at_key(place, "found the unknown " + key.substr(4) + ", expected a known key: the nearest is " +
-                              in_quotes(nearest(child.key, keys.known)) + hint(*at.node, child));
+                              wire::in_quotes(wire::nearest(child.key, keys.known)) + hint(*at.node, child));
   }
   return true;
 }
@@ -69,8 +69,8 @@ bool Reader::map_of_names(const Place& at, std::string_view what) {
     return false;
   }
   for (const Node& child : at.node->children)
-    if (!is_name(child.key))
-      fault_at_key(at.child(child), "found the name " + in_quotes(child.key) + ", expected 1 to 48 of A-Z a-z 0-9 _ -");
+    if (!wire::is_name(child.key))
+      fault_at_key(at.child(child), "found the name " + wire::in_quotes(child.key) + ", expected 1 to 48 of A-Z a-z 0-9 _ -");
   return true;
 }
 
@@ -105,7 +105,7 @@ std::optional<double> Reader::quantity(const Place& at, Dimension dimension, con
   }
   if (*value < range.low || *value > range.high || (range.low_is_open && *value == range.low)) {
     const std::string what(expected(dimension).substr(0, expected(dimension).find(" with")));
-    fault(at, "found " + in_quotes(at.node->text) + ", expected " + what + " " + std::string(range.words));
+    fault(at, "found " + wire::in_quotes(at.node->text) + ", expected " + what + " " + std::string(range.words));
     return std::nullopt;
   }
   return *value;
@@ -161,7 +161,7 @@ std::optional<std::size_t> Reader::choice(const Place& at, std::span<const std::
     const auto word = std::find(words.begin(), words.end(), node.text);
     if (word != words.end()) return static_cast<std::size_t>(word - words.begin());
     if (holds(later_words, node.text)) {
-      fault(at, "found " + in_quotes(node.text) + ", which is not available in this version, expected " + listed(words));
+      fault(at, "found " + wire::in_quotes(node.text) + ", which is not available in this version, expected " + listed(words));
       return std::nullopt;
     }
   }
@@ -172,7 +172,7 @@ std::optional<std::size_t> Reader::choice(const Place& at, std::span<const std::
 std::string found(const Node& node) {
   switch (node.kind) {
     case Node::Kind::nothing: return "nothing";
-    case Node::Kind::scalar: return in_quotes(node.text);
+    case Node::Kind::scalar: return wire::in_quotes(node.text);
     case Node::Kind::list: return "a list";
     case Node::Kind::map: return "a map";
   }
@@ -184,13 +184,6 @@ std::string listed(std::span<const std::string_view> words) {
   for (std::size_t i = 0; i < words.size(); ++i)
     out += std::string(i == 0 ? "" : i + 1 == words.size() ? " or " : ", ") + std::string(words[i]);
   return out;
-}
-
-bool is_name(std::string_view text) {
-  const auto fits = [](char c) {
-    return (c >= 'A' && c <= 'Z') || (c >= 'a' && c <= 'z') || (c >= '0' && c <= '9') || c == '_' || c == '-';
-  };
-  return !text.empty() && text.size() <= 48 && std::all_of(text.begin(), text.end(), fits);
 }
 
 }  // namespace halfturn::config

@@ -70,7 +70,4 @@ std::string found(const Node& node);
 /// `one`, `one or two`, `one, two or three`.
 std::string listed(std::span<const std::string_view> words);
 
-/// Whether it is 1 to 48 of `A-Z a-z 0-9 _ -`.
-bool is_name(std::string_view text);
-
 }  // namespace halfturn::config

@@ -4,6 +4,7 @@
 
 #include "plugin/config/keys.hpp"
 #include "plugin/config/sections.hpp"
+#include "plugin/wire/words.hpp"
 
 namespace halfturn::config {
 namespace {
@@ -59,17 +60,17 @@ bool clash(const Endpoint& a, const Endpoint& b) {
 }
 
 std::optional<Endpoint> read_endpoint(Reader& reader, const Place& at, const std::string& normal, bool http, bool insecure) {
-  const std::string words = http ? "HOST:PORT, such as 127.0.0.1:7480" : "an endpoint such as " + in_quotes(normal);
+  const std::string words = http ? "HOST:PORT, such as 127.0.0.1:7480" : "an endpoint such as " + wire::in_quotes(normal);
   const auto text = at ? reader.text(at, words) : std::optional(normal);
   if (!text) return std::nullopt;
   auto endpoint = http ? host_and_port(*text) : zeromq_endpoint(*text);
   if (!endpoint) {
-    reader.fault(at, "found " + in_quotes(*text) + ", expected " + words);
+    reader.fault(at, "found " + wire::in_quotes(*text) + ", expected " + words);
     return std::nullopt;
   }
   endpoint->at = at;
   if (!is_loopback(endpoint->host) && !insecure)
-    reader.fault(at, "found " + in_quotes(*text) + ", expected a loopback address such as 127.0.0.1. Binding an address that is not " +
+    reader.fault(at, "found " + wire::in_quotes(*text) + ", expected a loopback address such as 127.0.0.1. Binding an address that is not " +
                          "loopback needs keys, or insecure: true; keys are not available in this version");
   return endpoint;
 }

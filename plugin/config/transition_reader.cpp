@@ -3,6 +3,7 @@
 #include "plugin/config/catalogue.hpp"
 #include "plugin/config/keys.hpp"
 #include "plugin/config/sections.hpp"
+#include "plugin/wire/words.hpp"
 
 namespace halfturn::config {
 namespace {
@@ -12,8 +13,7 @@ constexpr int kLargest = 40;  // doubled: no atom has a spin or a projection of 
 std::optional<atom::Level> read_level(Reader& reader, const Place& at) {
   if (!at || !reader.map(at, {keys::kLevel})) return std::nullopt;
   atom::Level level;
-  const Place term = at["term"];
-  if (term) level.term = reader.text(term, "a term such as 5S1/2").value_or("");
+  level.term = reader.text(at["term"], "a term such as 5S1/2").value_or(at.node->key);
   level.twice_J = read_doubled(reader, reader.need(at, "J", "the level's J, such as 3/2"), 0, kLargest).value_or(0);
   level.twice_F = read_doubled(reader, at["F"], 0, kLargest);
   level.twice_m = read_doubled(reader, at["m"], -kLargest, kLargest);
@@ -26,13 +26,13 @@ std::optional<atom::Polarisation> read_polarisation(Reader& reader, const Place&
   const auto text = reader.text(at, "sigma-, pi or sigma+");
   if (!text) return std::nullopt;
   const auto polarisation = atom::read_polarisation(*text);
-  if (!polarisation) reader.fault(at, "found " + in_quotes(*text) + ", expected sigma-, pi or sigma+");
+  if (!polarisation) reader.fault(at, "found " + wire::in_quotes(*text) + ", expected sigma-, pi or sigma+");
   return polarisation;
 }
 
 atom::InlineTransition read_numbers(Reader& reader, const Place& at) {
   atom::InlineTransition out;
-  out.name = at["name"] ? reader.text(at["name"], "a name").value_or("") : std::string();
+  out.name = reader.text(at["name"], "a name").value_or("");
   out.multipole = read_multipole(reader, at["kind"]).value_or(out.multipole);
   out.wavelength_m = reader.quantity(at["wavelength"], Dimension::length, kPositive);
   out.frequency_hz = reader.quantity(at["frequency"], Dimension::frequency, kPositive);
@@ -51,8 +51,7 @@ atom::InlineTransition read_numbers(Reader& reader, const Place& at) {
 
 std::optional<atom::Transition> keep(Reader& reader, const Place& at, Result<atom::Transition> transition) {
   if (transition) return std::move(*transition);
-  const std::string& message = transition.error().message;
-  reader.fault(at, message);
+  reader.fault(at, transition.error().message);
   return std::nullopt;
 }
 

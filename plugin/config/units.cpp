@@ -2,12 +2,11 @@
 #include "plugin/config/units.hpp"
 
 #include <array>
-#include <cctype>
 #include <charconv>
 #include <cmath>
-#include <vector>
 
 #include "model/quantity/constants.hpp"
+#include "plugin/wire/words.hpp"
 
 namespace halfturn::config {
 namespace {
@@ -16,18 +15,19 @@ struct Words {
   std::string_view article;  // what it is called
   std::string_view number;   // of the example, where none was found
   std::string_view unit;     // of the example
+  std::string_view others;   // likely units beside it
 };
 
-constexpr std::array<Words, 10> kWords = {{{"a number", "0.5", ""},
-                                          {"a fraction", "0.2", ""},
-                                          {"a time", "4", "us"},
-                                          {"a frequency", "12.5", "kHz"},
-                                          {"a length", "45", "um"},
-                                          {"an angle", "20", "mrad"},
-                                          {"a power", "1", "mW"},
-                                          {"an intensity", "1", "mW/cm^2"},
-                                          {"a dipole moment", "2.5", "e a0"},
-                                          {"a magnetic moment", "0.5", "muB"}}};
+constexpr std::array<Words, 10> kWords = {{{"a number", "0.5", "", ""},
+                                           {"a fraction", "0.2", "", ""},
+                                           {"a time", "4", "us", "ns, ms, s"},
+                                           {"a frequency", "12.5", "kHz", "Hz, MHz, GHz"},
+                                           {"a length", "45", "um", "nm, mm, m"},
+                                           {"an angle", "20", "mrad", "rad, deg, pi/2"},
+                                           {"a power", "1", "mW", "uW, W"},
+                                           {"an intensity", "1", "mW/cm^2", "W/m^2, W/cm^2"},
+                                           {"a dipole moment", "2.5", "e a0", "C m"},
+                                           {"a magnetic moment", "0.5", "muB", "J/T"}}};
 
 const Words& words(Dimension dimension) { return kWords[static_cast<std::size_t>(dimension)]; }
 
@@ -179,10 +179,11 @@ std::string_view dimension_of(std::string_view unit) {
 }
 
 std::string complaint(std::string_view text, std::string_view number, std::string_view unit, Dimension dimension) {
-  std::string found = "found " + in_quotes(text);
+  std::string found = "found " + wire::in_quotes(text);
   const std::string_view other = number.empty() ? std::string_view() : dimension_of(unit);
   if (!other.empty()) found += " (" + std::string(other) + ")";
-  return found + ", expected " + expected(dimension, number);
+  const bool meant = unit.empty() || !other.empty();  // the number can be trusted to be one
+  return found + ", expected " + expected(dimension, meant ? number : std::string_view());
 }
 
 }  // namespace
@@ -217,18 +218,7 @@ std::string expected(Dimension dimension, std::string_view number) {
   const std::string example(number.empty() ? word.number : number);
   if (dimension == Dimension::number) return "a number without a unit, such as " + example;
   if (dimension == Dimension::fraction) return "a fraction without a unit, such as 0.2 or 20 %";
-  const std::string more = dimension == Dimension::angle && number.empty() ? " or pi/2" : "";
-  return std::string(word.article) + " with its unit, such as " + example + " " + std::string(word.unit) + more;
-}
-
-std::string in_quotes(std::string_view text) {
-  std::string out = "\"";
-  std::size_t characters = 0;
-  for (const char c : text) {
-    if ((static_cast<unsigned char>(c) & 0xC0u) != 0x80u && ++characters > 60) return out + "...\"";
-    out += std::iscntrl(static_cast<unsigned char>(c)) != 0 ? '?' : c;
-  }
-  return out + "\"";
+  return std::string(word.article) + " with its unit, such as " + example + " " + std::string(word.unit) + " (or " + std::string(word.others) + ")";
 }
 
 }  // namespace halfturn::config

@@ -9,7 +9,9 @@ Result<void> check(const Event& event, const Bulk* bulk) {
   if (!fit && event.kind != "applied" && event.kind != "hold" && event.kind != "release") {
     return fault("bad_value", "event.kind", "found `" + event.kind + "`, expected fit, applied, hold or release");
   }
-  if (bulk != nullptr && !fit) return fault("bad_value", "event.kind", "found `" + event.kind + "` with a scan, expected that of a fit alone");
+  if (bulk != nullptr && !fit) {
+    return fault("bad_value", "event.kind", "found `" + event.kind + "` with a scan, expected that of a fit alone");
+  }
   return {};
 }
 
@@ -22,7 +24,8 @@ Fault group_open_already() {
 }
 
 Fault id_reused(const std::string& id) {
-  return {"id_reused", "id", "The id `" + id + "` already stands for a request of other content; every request needs an id of its own."};
+  return {"id_reused", "id",
+          "The id `" + id + "` already stands for a request of other content; every request needs an id of its own."};
 }
 
 }  // namespace halfturn::log

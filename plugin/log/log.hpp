@@ -2,6 +2,7 @@
 #pragma once
 #include <cstdint>
 #include <functional>
+#include <limits>
 #include <map>
 #include <optional>
 #include <string>
@@ -15,6 +16,9 @@ namespace halfturn::log {
 /// Nanoseconds since 1970-01-01 00:00:00 UTC.
 using Time = std::int64_t;
 
+/// Written as NULL.
+inline constexpr double kNull = std::numeric_limits<double>::quiet_NaN();
+
 /// One thing that happened to a drive, with what the drive's state is folded from, in columns. NaN (stored as NULL) where a
 /// column does not concern the kind.
 struct Event {
@@ -27,16 +31,16 @@ struct Event {
   std::string scan_name;
   std::string axis;         // duration, detuning; empty unless a fit
   std::string verdict;      // apply, keep, refuse
-  std::string effect;       // how it moved the tracked state: none, first, accepted, pending, confirmed
+  std::string effect;       // how it moved the tracked state: none, first, accepted, pending, confirmed, aside
   std::string reasons;      // codes, most serious first, separated by spaces
-  double rabi_hz = 0, rabi_sigma_hz = 0, rabi_low_hz = 0, rabi_high_hz = 0;
-  double generalised_hz = 0, generalised_sigma_hz = 0;
-  double line_offset_hz = 0, line_offset_sigma_hz = 0;
-  double carrier_hz = 0;
-  double dead_time_s = 0, dead_time_sigma_s = 0;
-  double intensity_w_m2 = 0;
-  double drive_amplitude = 0;
-  double span = 0, spacing = 0;  // of the scan's axis, s or Hz
+  double rabi_hz = kNull, rabi_sigma_hz = kNull, rabi_low_hz = kNull, rabi_high_hz = kNull;
+  double generalised_hz = kNull, generalised_sigma_hz = kNull;
+  double line_offset_hz = kNull, line_offset_sigma_hz = kNull, line_width_hz = kNull;  // width: full, at half maximum
+  double carrier_hz = kNull;
+  double dead_time_s = kNull, dead_time_sigma_s = kNull;
+  double intensity_w_m2 = kNull;
+  double drive_amplitude = kNull;
+  double span = kNull, spacing = kNull;  // of the scan's axis, s or Hz
   std::string by, why;           // hold, release
   std::map<std::string, double> pulses_s;  // fit: lengths proposed; applied: lengths reported
 };

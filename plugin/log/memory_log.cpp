@@ -83,12 +83,14 @@ std::vector<const MemoryLog::Entry*> MemoryLog::within(const Range& range, bool 
     const auto& event = entry.event;
     if (!range.drive.empty() && event.drive != range.drive) continue;
     if (fits_alone && event.kind != "fit") continue;
-    if (range.since && (event.happened_at < *range.since || (event.happened_at == *range.since && event.number <= range.after))) continue;
+    if (range.since && event.happened_at < *range.since) continue;
+    if (range.since && event.happened_at == *range.since && event.number <= range.after) continue;
     if (range.until && event.happened_at >= *range.until) continue;
     found.push_back(&entry);
   }
-  std::stable_sort(found.begin(), found.end(), [](const Entry* a, const Entry* b) { return a->event.happened_at < b->event.happened_at; });
-  if (range.limit > 0 && found.size() > static_cast<std::size_t>(range.limit)) found.resize(static_cast<std::size_t>(range.limit));
+  const auto earlier = [](const Entry* a, const Entry* b) { return a->event.happened_at < b->event.happened_at; };
+  std::stable_sort(found.begin(), found.end(), earlier);
+  if (range.limit > 0) found.resize(std::min(found.size(), static_cast<std::size_t>(range.limit)));
   return found;
 }
 

@@ -47,12 +47,13 @@ Result<Identity> identify(Database& database, const std::string& path, std::int6
   if (!tables) return tl::unexpected<Fault>(tables.error());
   if (*application == 0 && *version == 0 && *tables == 0) return Identity{true, 0};
   if (*application != kApplicationId) {
-    return fault("log_unavailable", path, "The file " + path + " is a SQLite file of another program, not a Halfturn log. It was "
-                 "left untouched; give the configuration another `log`.");
+    return fault("log_unavailable", path, "The file " + path + " is a SQLite file of another program, not a Halfturn log. "
+                 "It was left untouched; give the configuration another `log`.");
   }
   if (*version > newest) {
-    return fault("log_unavailable", path, "The log " + path + " was written by a newer Halfturn (version " + std::to_string(*version) +
-                 " of the log; this program knows up to " + std::to_string(newest) + "). It was left untouched; start the newer program.");
+    return fault("log_unavailable", path, "The log " + path + " was written by a newer Halfturn (its version is " +
+                 std::to_string(*version) + "; this program knows up to " + std::to_string(newest) +
+                 "). It was left untouched; start the newer program.");
   }
   return Identity{false, *version};
 }
@@ -61,8 +62,9 @@ Result<void> check_pages(Database& database, const std::string& path) {
   const auto answer = database.text("PRAGMA quick_check(1)", "checking its pages");
   if (!answer) return tl::unexpected<Fault>(answer.error());
   if (*answer == "ok") return {};
-  return fault("log_unavailable", path, "The log " + path + " is damaged: " + *answer + ". Keep the file as it is, restore the latest "
-               "backup in its place, or give the configuration another `log`; `sqlite3 " + path + " .recover` saves what can still be read.");
+  return fault("log_unavailable", path, "The log " + path + " is damaged: " + *answer + ". Keep the file as it is, restore the "
+               "latest backup in its place, or give the configuration another `log`; `sqlite3 " + path +
+               " .recover` saves what can still be read.");
 }
 
 Result<void> set_manners(Database& database, const std::string& path) {
@@ -85,15 +87,14 @@ Result<void> migrate(Database& database, const std::string& path, const Migratio
     const auto version = database.integer("PRAGMA user_version", doing);
     if (!version) done = tl::unexpected<Fault>(version.error());
     else if (*version != migration.number) {
-      done = fault("internal", path, "Migration " + std::to_string(migration.number) + " leaves version " + std::to_string(*version) + ".");
+      done = fault("internal", path, "Migration " + std::to_string(migration.number) + " leaves version " +
+                   std::to_string(*version) + ".");
     }
   }
   if (done) done = database.run("COMMIT", doing);
   if (!done && database.in_transaction()) (void)database.run("ROLLBACK", doing);
   return done;
 }
-
-std::string folder_of(const std::string& path) { return std::filesystem::path(path).parent_path().string(); }
 
 }  // namespace
 
@@ -117,8 +118,8 @@ Result<std::unique_ptr<Database>> open_to_write(const std::string& path) {
 Result<std::unique_ptr<Database>> open_to_read(const std::string& path) {
   std::error_code error;
   if (!std::filesystem::exists(path, error)) {
-    return fault("log_unavailable", path, "There is no log at " + path + ". Give the path of the daemon's `log`; its configuration says "
-                 "where that is, relative to " + (folder_of(path).empty() ? "the configuration's folder." : "the folder of the configuration."));
+    return fault("log_unavailable", path, "There is no log at " + path + ". Give the path of the daemon's log: `log` in its "
+                 "configuration, relative to the folder of that file.");
   }
   const auto known = migrations();
   const auto newest = known.empty() ? 0 : known.back().number;
@@ -126,10 +127,13 @@ Result<std::unique_ptr<Database>> open_to_read(const std::string& path) {
   if (!database) return database;
   const auto identity = identify(**database, path, newest);
   if (!identity) return tl::unexpected<Fault>(identity.error());
-  if (identity->empty) return fault("log_unavailable", path, "The file " + path + " is empty: no daemon has written a log there yet.");
+  if (identity->empty) {
+    return fault("log_unavailable", path, "The file " + path + " is empty: no daemon has written a log there yet.");
+  }
   if (identity->version < newest) {
-    return fault("log_unavailable", path, "The log " + path + " has the older version " + std::to_string(identity->version) + "; this program "
-                 "reads version " + std::to_string(newest) + ". Start `halfturn serve` once on it, which brings it up to date.");
+    return fault("log_unavailable", path, "The log " + path + " has the older version " + std::to_string(identity->version) +
+                 "; this program reads version " + std::to_string(newest) +
+                 ". Start `halfturn serve` once on it, which brings it up to date.");
   }
   return database;
 }

@@ -42,8 +42,8 @@ std::string advice(int code, const std::string& path) {
 
 Result<std::unique_ptr<Database>> Database::open(const std::string& path, Mode mode) {
   sqlite3* handle = nullptr;
-  const int flags = SQLITE_OPEN_NOMUTEX | (mode == Mode::create ? SQLITE_OPEN_READWRITE | SQLITE_OPEN_CREATE : SQLITE_OPEN_READONLY);
-  const int code = sqlite3_open_v2(path.c_str(), &handle, flags, nullptr);
+  const int flags = mode == Mode::create ? SQLITE_OPEN_READWRITE | SQLITE_OPEN_CREATE : SQLITE_OPEN_READONLY;
+  const int code = sqlite3_open_v2(path.c_str(), &handle, flags | SQLITE_OPEN_NOMUTEX, nullptr);
   std::unique_ptr<Database> database(new Database(path, handle));
   if (handle == nullptr) return fault("log_unavailable", path, "There is not enough memory to open the log.");
   if (code != SQLITE_OK) return tl::unexpected<Fault>(database->trouble("opening it"));

@@ -23,14 +23,16 @@ struct Column {
   const char* name;
   T Event::*member;
 };
-constexpr std::array<Column<Time>, 2> kTimes = {{{"happened_at", &Event::happened_at}, {"received_at", &Event::received_at}}};
+constexpr std::array<Column<Time>, 2> kTimes = {{{"happened_at", &Event::happened_at},
+                                                  {"received_at", &Event::received_at}}};
 constexpr std::array<Column<std::string>, 10> kTexts = {{{"drive", &Event::drive}, {"kind", &Event::kind}, {"id", &Event::id},
     {"scan_name", &Event::scan_name}, {"axis", &Event::axis}, {"verdict", &Event::verdict}, {"effect", &Event::effect},
     {"reasons", &Event::reasons}, {"by_whom", &Event::by}, {"why", &Event::why}}};
-constexpr std::array<Column<double>, 15> kReals = {{{"rabi_hz", &Event::rabi_hz}, {"rabi_sigma_hz", &Event::rabi_sigma_hz},
+constexpr std::array<Column<double>, 16> kReals = {{{"rabi_hz", &Event::rabi_hz}, {"rabi_sigma_hz", &Event::rabi_sigma_hz},
     {"rabi_low_hz", &Event::rabi_low_hz}, {"rabi_high_hz", &Event::rabi_high_hz}, {"generalised_hz", &Event::generalised_hz},
     {"generalised_sigma_hz", &Event::generalised_sigma_hz}, {"line_offset_hz", &Event::line_offset_hz},
-    {"line_offset_sigma_hz", &Event::line_offset_sigma_hz}, {"carrier_hz", &Event::carrier_hz}, {"dead_time_s", &Event::dead_time_s},
+    {"line_offset_sigma_hz", &Event::line_offset_sigma_hz}, {"line_width_hz", &Event::line_width_hz},
+    {"carrier_hz", &Event::carrier_hz}, {"dead_time_s", &Event::dead_time_s},
     {"dead_time_sigma_s", &Event::dead_time_sigma_s}, {"intensity_w_m2", &Event::intensity_w_m2},
     {"drive_amplitude", &Event::drive_amplitude}, {"span", &Event::span}, {"spacing", &Event::spacing}}};
 
@@ -121,7 +123,8 @@ class SqliteLog final : public Log {
   }
 
   Result<void> keep_configuration(const std::string& fingerprint, const std::string& text, Time now) override {
-    Query query(*database_, "INSERT OR IGNORE INTO configuration (fingerprint, text, kept_at) VALUES (?, ?, ?)", "keeping a configuration");
+    Query query(*database_, "INSERT OR IGNORE INTO configuration (fingerprint, text, kept_at) VALUES (?, ?, ?)",
+                "keeping a configuration");
     return or_roll_back(query.put_text(fingerprint).put_text(text).put(now).finish());
   }
 
@@ -136,7 +139,9 @@ class SqliteLog final : public Log {
     static const std::string kOfDrive = selection(", fit.reply", kFrom, "drive = ? AND kind = 'fit' AND");
     std::vector<Row> rows;
     Query query(*database_, range.drive.empty() ? kOfAll : kOfDrive, "reading the history");
-    auto done = visit_events(bind(query, range), [&](const Event& event, Query& row) { rows.push_back({event, row.blob()}); });
+    auto done = visit_events(bind(query, range), [&](const Event& event, Query& row) {
+      rows.push_back({event, row.blob()});
+    });
     if (!done) return tl::unexpected<Fault>(done.error());
     return rows;
   }
@@ -175,7 +180,8 @@ class SqliteLog final : public Log {
 
   Result<void> insert(std::int64_t number, const Bulk& bulk) {
     {
-      Query query(*database_, "INSERT INTO fit (event, scan, fingerprint, configuration, reply) VALUES (?, ?, ?, ?, ?)", "storing a scan");
+      Query query(*database_, "INSERT INTO fit (event, scan, fingerprint, configuration, reply) VALUES (?, ?, ?, ?, ?)",
+                  "storing a scan");
       query.put(number);
       if (bulk.scan.empty()) query.put_null();
       else query.put_blob(bulk.scan);
@@ -200,7 +206,9 @@ class SqliteLog final : public Log {
     if (!range.drive.empty()) query.put_text(range.drive);
     query.put(range.since.value_or(kNever)).put(range.since ? range.after : 0);
     const bool nothing = range.until == kNever;
-    return query.put(range.until && !nothing ? *range.until - 1 : kEver).put(nothing ? Time{0} : range.limit > 0 ? range.limit : -1);
+    query.put(range.until && !nothing ? *range.until - 1 : kEver);
+    const std::int64_t limit = range.limit > 0 ? range.limit : -1;
+    return query.put(nothing ? 0 : limit);
   }
 
   template <class Visit>

@@ -13,7 +13,7 @@ enum class Access { read_write, read_only };
 /// Opens the log at `path`.
 ///
 /// read_write: makes the file where there is none, brings an older one up to date, and holds the lock `PATH.lock`, so that one
-/// process writes at a time. The pages of an existing file are checked first (about 1 s for 500 MB). read_only: the file must
+/// process writes at a time. The pages of an existing file are checked first (0.13 s for 20,000 fits). read_only: the file must
 /// be there and of this version; reads while another process writes.
 ///
 /// Faults, `log_unavailable`: another process writes the log; the file is not a log of this program, is damaged, or is of a

@@ -28,8 +28,8 @@ Result<WriterLock> WriterLock::take(const std::string& log_path) {
   const std::string path = log_path + ".lock";
   const int descriptor = ::open(path.c_str(), O_RDWR | O_CREAT | O_CLOEXEC, 0644);
   if (descriptor < 0) {
-    return fault("log_unavailable", log_path, "The log " + log_path + " cannot be opened for writing, because its lock " + path +
-                 " cannot be made (" + std::strerror(errno) + "). See that the folder exists and that this user may write in it.");
+    return fault("log_unavailable", log_path, "The log " + log_path + " cannot be opened for writing, because its lock " +
+                 path + " cannot be made (" + std::strerror(errno) + "). See that the folder exists and that this user may write in it.");
   }
   WriterLock lock(descriptor);
   if (flock(descriptor, LOCK_EX | LOCK_NB) != 0) {

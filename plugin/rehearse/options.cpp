@@ -20,6 +20,7 @@ Result<void> check(const RehearseOptions& options) {
     return fault("bad_value", "starts_at", "found '" + options.starts_at + "', expected a time such as 2026-02-03T18:00:00Z");
   }
   Result<void> result = within("hours", options.hours, 1.0 / 60, 24.0 * 366, "hours");
+  if (result) result = within("timeout_s", options.timeout_s, 0.01, 3600, "s");
   if (result) result = within("flop_every_s", options.flop_every_s, 60, 86400, "s");
   if (result) result = within("line_every_s", options.line_every_s, 60, 86400 * 366, "s");
   if (result) result = within("shots", static_cast<double>(options.shots), 1, 1e6, "shots a point");

@@ -12,7 +12,7 @@ namespace halfturn::rehearse {
 
 struct RehearseOptions {
   std::string endpoint = "tcp://127.0.0.1:7411";  // requests of the daemon
-  double timeout_s = 30;                          // a reply that takes longer ends the rehearsal
+  double timeout_s = 10;                          // of one attempt; three without a reply end the rehearsal
   std::string drive;                              // of the daemon's configuration
   std::string pulse;                              // scored; empty: the one whose angle is nearest pi
   double hours = 8;                               // simulated

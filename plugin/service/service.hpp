@@ -38,9 +38,14 @@ struct Task {
   std::string drive;                                         // empty: concerns no single drive
   std::shared_ptr<const config::Configuration> configuration;
   recalibrate::State known;                                  // snapshot of the drive's state
-  std::optional<infer::Fit> fit;                             // filled by `fit` for requests of that kind
+  Time taken_at = 0;                                         // of the scan; when it arrived where it does not say
+  std::vector<std::string> assumed;                          // filled by `fit`, with what follows
+  infer::Prior prior;
+  std::optional<infer::Fit> fit;
 
   bool needs_fit() const { return request.kind == wire::Kind::fit; }
+  const wire::Scan& scan() const { return request.scans.front(); }
+  const config::Drive* configured() const;                   // null where the configuration has no such drive
 };
 
 struct Publication {
@@ -82,7 +87,11 @@ class Service {
 
  private:
   struct Group;  // of tasks inside one transaction
-  Settled settle_one(Task& task, Group& group);
+  Result<Settled> settle_one(Task& task, Group& group);
+  Result<Settled> settle_fit(Task& task, Group& group);
+  Result<Settled> settle_history(const Task& task);
+  Result<Settled> settle_note(Task& task, Group& group);
+  recalibrate::State known_of(const std::string& drive) const;
 
   mutable std::mutex mutex_;  // guards what follows
   std::shared_ptr<const config::Configuration> configuration_;

@@ -19,7 +19,7 @@ CREATE TABLE event (
   scan_name TEXT NOT NULL,
   axis TEXT NOT NULL,                              -- duration, detuning; '' unless a fit
   verdict TEXT NOT NULL,                           -- apply, keep, refuse; '' unless a fit
-  effect TEXT NOT NULL,                            -- how it moved the tracked state: none, first, accepted, pending, confirmed
+  effect TEXT NOT NULL,                            -- how it moved the tracked state: none, first, accepted, pending, confirmed, aside
   reasons TEXT NOT NULL,                           -- codes, most serious first, separated by spaces
   rabi_hz REAL,                                    -- bare peak coupling over 2 pi, with its sigma and 95 % interval
   rabi_sigma_hz REAL,
@@ -29,6 +29,7 @@ CREATE TABLE event (
   generalised_sigma_hz REAL,
   line_offset_hz REAL,                             -- to be added to the carrier
   line_offset_sigma_hz REAL,
+  line_width_hz REAL,                              -- full width at half maximum
   carrier_hz REAL,                                 -- the experiment's own number for its carrier
   dead_time_s REAL,
   dead_time_sigma_s REAL,

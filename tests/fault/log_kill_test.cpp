@@ -35,7 +35,9 @@ Event event_of(std::int64_t group, std::int64_t size) {
   return event;
 }
 
-std::string reply_of(std::int64_t number) { return std::string(static_cast<std::size_t>(1000 + number % 7 * 900), static_cast<char>('a' + number % 26)); }
+std::string reply_of(std::int64_t number) {
+  return std::string(static_cast<std::size_t>(1000 + number % 7 * 900), static_cast<char>('a' + number % 26));
+}
 
 /// Writes groups until it is killed, and tells the number of each committed event. Ends with 1 on any fault.
 [[noreturn]] void write_for_ever(const std::string& path, int pipe, std::uint64_t seed) {

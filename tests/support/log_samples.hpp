@@ -17,12 +17,15 @@ class LogSamples {
  public:
   explicit LogSamples(std::uint64_t seed) : random_(seed) {}
 
-  std::int64_t whole(std::int64_t low, std::int64_t high) { return std::uniform_int_distribution<std::int64_t>(low, high)(random_); }
+  std::int64_t whole(std::int64_t low, std::int64_t high) {
+    return std::uniform_int_distribution<std::int64_t>(low, high)(random_);
+  }
 
   /// A value of any magnitude, one time in five none.
   double real() {
     if (whole(0, 4) == 0) return kNone;
-    const double value = std::ldexp(std::uniform_real_distribution<double>(-1.0, 1.0)(random_), static_cast<int>(whole(-300, 300)));
+    const double mantissa = std::uniform_real_distribution<double>(-1.0, 1.0)(random_);
+    const double value = std::ldexp(mantissa, static_cast<int>(whole(-300, 300)));
     return value == 0.0 ? 1.0 : value;
   }
 

@@ -15,6 +15,11 @@ using tests::LogSamples;
 
 namespace {
 
+bool same_events(const std::vector<Event>& ours, const std::vector<Event>& theirs) {
+  return std::equal(ours.begin(), ours.end(), theirs.begin(), theirs.end(),
+                    [](const auto& a, const auto& b) { return tests::same(a, b); });
+}
+
 class Pair {
  public:
   explicit Pair(std::string path) : path_(std::move(path)) { reopen(); }
@@ -70,7 +75,7 @@ class Pair {
     std::vector<Event> ours, theirs;
     REQUIRE(file_->replay([&](const Event& event) { ours.push_back(event); }));
     REQUIRE(memory_.replay([&](const Event& event) { theirs.push_back(event); }));
-    CHECK(std::equal(ours.begin(), ours.end(), theirs.begin(), theirs.end(), [](const auto& a, const auto& b) { return tests::same(a, b); }));
+    CHECK(same_events(ours, theirs));
     for (std::size_t i = 0; i < ours.size(); ++i) REQUIRE(ours[i].number == static_cast<std::int64_t>(i) + 1);
     for (int id = 0; id <= 20; ++id) compare_reply("id-" + std::to_string(id));
   }
@@ -108,7 +113,7 @@ class Pair {
   void compare_events(const Range& range) {
     const auto ours = file_->events(range).value();
     const auto theirs = memory_.events(range).value();
-    CHECK(std::equal(ours.begin(), ours.end(), theirs.begin(), theirs.end(), [](const auto& a, const auto& b) { return tests::same(a, b); }));
+    CHECK(same_events(ours, theirs));
   }
 
   void compare_history(const Range& range) {

@@ -5,6 +5,7 @@
 #include <set>
 #include <sstream>
 
+#include "plugin/wire/decode.hpp"
 #include "tests/plugin/rehearse/fake_daemon.hpp"
 #include "tests/support/catch.hpp"
 
@@ -87,6 +88,26 @@ TEST_CASE("A night has 96 flops and 12 line scans, each as a laboratory takes th
   }
   CHECK(names.size() == 108);
   CHECK(daemon.scans.front().at("taken_at") == kEvening);
+}
+
+TEST_CASE("Every message of the rehearsal passes the decoder of the contract") {
+  auto options = red(6, 2);
+  options.apparatus.mishap_probability = 0.3;
+  auto daemon = knowing(options);
+  std::set<std::string> kinds;
+  int sent = 0;
+  const Ask decoding = [&](const std::string& kind, nlohmann::json body) {
+    nlohmann::json message = body;
+    message.update({{"proto", 1}, {"kind", kind}, {"id", "message-" + std::to_string(++sent)}});
+    const auto packed = nlohmann::json::to_msgpack(message);
+    const auto decoded = wire::decode_request(std::string(packed.begin(), packed.end()), {});
+    INFO(message.dump() << (decoded.request ? "" : decoded.request.error().message));
+    CHECK(decoded.request);
+    kinds.insert(kind);
+    return Result<nlohmann::json>(daemon.answer(kind, body));
+  };
+  REQUIRE(rehearse_night(options, decoding, always));
+  CHECK(kinds == std::set<std::string>{"applied", "fit", "status"});
 }
 
 TEST_CASE("Successive flops differ in span and in spacing by more than a tenth") {

@@ -1,0 +1,57 @@
+// SPDX-License-Identifier: Apache-2.0
+#pragma once
+#include <optional>
+#include <string>
+#include <vector>
+
+#include "model/infer/fit.hpp"
+#include "model/recalibrate/policy.hpp"
+#include "model/recalibrate/reason.hpp"
+#include "model/recalibrate/state.hpp"
+
+/// From a fit and the drive's history to verdicts and pulses.
+namespace halfturn::recalibrate {
+
+/// Most cautious last: a scan's verdict is the most cautious of its pulses'.
+enum class Verdict : std::uint8_t { apply, keep, refuse };
+std::string_view name(Verdict verdict);
+
+/// What is decided for one pulse; lengths in s, angles in rad. NaN where the fit gives no length.
+struct PulseDecision {
+  std::string name;
+  Verdict verdict = Verdict::keep;
+  double angle_rad = 0.0;
+  double length_s = 0.0;    // what to load: the one in force unless the verdict is `apply`
+  double exact_s = kAbsent, sigma_s = kAbsent, low_s = kAbsent, high_s = kAbsent;
+  std::int64_t ticks = 0;   // of length_s; 0 without a tick
+  double previous_s = 0.0;
+  double change = 0.0;      // length_s / previous_s - 1
+  double rotation_error_rad = kAbsent;  // previous_s rotates this much too far (negative: not far enough)
+  double tick_error_rad = kAbsent;      // what rounding to the tick costs, magnitude
+  double transfer = kAbsent;            // population moved by length_s under the fitted dynamics, from a pure start
+};
+
+/// What the decision rests on besides the fit.
+struct Context {
+  std::vector<Pulse> pulses;
+  Accept accept;
+  std::optional<infer::Expected> expect;
+  Time taken_at = 0;
+  double carrier = kAbsent;            // the experiment's own number for its carrier, rad/s
+  bool carrier_known = false;          // the configuration or history says how well the carrier sits on the line
+  double transition_frequency = kAbsent;  // rad/s, of the transition; for the rotating-wave check
+  double drive_amplitude = kAbsent;    // relative; absent where the scan does not say
+};
+
+struct Decision {
+  Verdict verdict = Verdict::refuse;
+  Reasons reasons;                     // most serious first
+  std::vector<PulseDecision> pulses;
+  double carrier_shift = 0.0;          // rad/s; 0 unless a line scan's verdict is `apply`
+  FitEvent event;                      // what the state is to be advanced by
+};
+
+/// Decides on a fit. `prior` is what it was fitted under. The angles fitted are those of `context.pulses`, in their order.
+Decision decide(const State& state, const infer::Fit& fit, const infer::Prior& prior, const Context& context);
+
+}  // namespace halfturn::recalibrate

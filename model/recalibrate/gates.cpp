@@ -1,0 +1,224 @@
+// SPDX-License-Identifier: Apache-2.0
+#include "model/recalibrate/gates.hpp"
+
+#include <algorithm>
+#include <cmath>
+
+#include "model/quantity/constants.hpp"
+#include "model/quantity/format.hpp"
+
+namespace halfturn::recalibrate {
+namespace {
+
+using constants::kTwoPi;
+
+// Excess scatter up to twice the readout's own sigma is taken as noise of the apparatus where the residuals show no order; above, the
+// model is wrong or the scan was disturbed.
+constexpr double kMostScatter = 4.0;
+// `max_step` sleeps until so many scans were accepted.
+constexpr int kStepAwake = 3;
+// Two scans repeat one another where span and spacing agree to this.
+constexpr double kSameAxis = 0.01;
+constexpr int kUnansweredSaid = 3;
+// So many flops in a row at another drive amplitude make it the new one.
+constexpr int kAmplitudeTaken = 3;
+constexpr double kSameAmplitude = 1e-3;
+
+std::string hertz(double angular) { return engineering(angular / kTwoPi, "Hz"); }
+
+std::string hertz(const infer::Estimate& e) { return with_uncertainty(e.value / kTwoPi, e.sigma / kTwoPi, "Hz"); }
+
+std::string percent(double ratio) { return plain(100.0 * ratio, 2) + " %"; }
+
+void refuse(Reasons& reasons, std::string code, std::string text) { reasons.push_back({std::move(code), std::move(text), true}); }
+
+void caution(Reasons& reasons, std::string code, std::string text) { reasons.push_back({std::move(code), std::move(text), false}); }
+
+bool poor(const infer::FitQuality& quality, const Accept& accept) {
+  if (!(quality.p_value < accept.min_p_value)) return false;
+  return quality.scatter > kMostScatter || quality.p_after_scatter < accept.min_p_value;
+}
+
+void evidence_gates(const infer::Fit& fit, const Context& context, Reasons& reasons) {
+  const bool line = fit.axis == infer::Axis::detuning;
+  const auto& quality = fit.quality;
+  const double least = context.accept.min_evidence;
+  if (!(quality.over_flat >= least)) {
+    refuse(reasons, line ? "no_line" : "no_oscillation",
+           "The scan is hardly better described by " + std::string(line ? "a line" : "an oscillation") + " than by a flat one (deviance gained " +
+               plain(quality.over_flat, 3) + ", asked for " + plain(least, 3) +
+               "). Look whether the light reaches the atoms, whether atoms are there, and whether the carrier is on the line; "
+               "then scan again with more shots.");
+  } else if (!(quality.over_monotone >= least)) {
+    refuse(reasons, "monotone",
+           std::string("A curve that only rises or only falls describes the scan nearly as well as ") + (line ? "a line" : "an oscillation") +
+               " (deviance gained " + plain(quality.over_monotone, 3) + ", asked for " + plain(least, 3) + "). " +
+               (line ? "Widen the window so that both sides of the line are in it." : "Scan to longer pulses so that a whole cycle is seen."));
+  }
+}
+
+void rival_gate(const infer::Fit& fit, const Context& context, Reasons& reasons) {
+  const auto& quality = fit.quality;
+  if (!quality.rival || quality.rival->deviance_above >= context.accept.rival_margin) return;
+  const auto& rival = *quality.rival;
+  const std::string margin = " fits worse by a deviance of only " + plain(rival.deviance_above, 3) + " (asked for " +
+                             plain(context.accept.rival_margin, 3) + "). ";
+  if (fit.axis == infer::Axis::detuning) {
+    refuse(reasons, "rival",
+           "A line at " + hertz(rival.frequency) + " instead of " + hertz(fit.line_offset.value) + margin +
+               "There may be two lines, or a side lobe was caught: scan a wider window with a shorter, weaker pulse.");
+  } else if (rival.opposite_contrast) {
+    refuse(reasons, "rival",
+           "Contrast of the opposite sign, at " + hertz(rival.frequency) + ", with a dead time half a cycle away," + margin +
+               "State readout.contrast (its sign is enough) or a tighter switching.uncertainty in the configuration.");
+  } else {
+    refuse(reasons, "rival",
+           "The scan cannot tell " + hertz(fit.generalised.value) + " from " + hertz(rival.frequency) + ": the latter" + margin +
+               "Step the pulse length unevenly or more finely, or narrow expect.rabi if you know which it is.");
+  }
+}
+
+void line_gates(const infer::Fit& fit, const Context& context, Reasons& reasons) {
+  const auto& offset = fit.line_offset;
+  const double width = fit.quality.line_width;
+  if (!std::isfinite(offset.sigma) || !std::isfinite(offset.low) || !std::isfinite(offset.high)) {
+    refuse(reasons, "uncertain", "The scan does not bound the line's centre. Widen the window so that both sides of the line are in it.");
+    return;
+  }
+  if (offset.sigma > context.accept.max_carrier_error * width)
+    refuse(reasons, "uncertain",
+           "The line's centre, " + hertz(offset) + ", is uncertain by " + percent(offset.sigma / width) + " of its width (allowed: " +
+               percent(context.accept.max_carrier_error) + "). Take more shots, or points on the line's flanks.");
+}
+
+/// A flop at another drive amplitude than the tracked one moves nothing, until several in a row make it the new one.
+std::optional<Effect> amplitude_gate(const State& state, const FitEvent& event, Reasons& reasons) {
+  if (event.quantity == Quantity::line || !std::isfinite(event.drive_amplitude) || !std::isfinite(state.drive_amplitude)) return std::nullopt;
+  if (std::abs(event.drive_amplitude / state.drive_amplitude - 1.0) <= kSameAmplitude) return std::nullopt;
+  const std::string seen = "Taken at the drive amplitude " + plain(event.drive_amplitude) + ", not at " + plain(state.drive_amplitude) +
+                           " as the scans before. ";
+  const bool again = event.drive_amplitude == state.other_amplitude && state.at_other_amplitude + 1 >= kAmplitudeTaken;
+  if (again) {
+    caution(reasons, "amplitude_changed", seen + "It is the " + std::to_string(kAmplitudeTaken) +
+                                              "rd in a row, so this is taken as the amplitude from now on; the history starts again.");
+    return Effect::first;
+  }
+  caution(reasons, "other_amplitude", seen + "The pulses rest as they are. After " + std::to_string(kAmplitudeTaken) +
+                                          " scans in a row at the new amplitude it becomes the one that is tracked.");
+  return Effect::aside;
+}
+
+}  // namespace
+
+bool refused(const Reasons& reasons) {
+  return std::any_of(reasons.begin(), reasons.end(), [](const Reason& reason) { return reason.refuses; });
+}
+
+void fit_gates(const infer::Fit& fit, const Context& context, Reasons& reasons) {
+  const auto& quality = fit.quality;
+  if (fit.outcome == infer::FitOutcome::too_few_points)
+    return refuse(reasons, "too_few_points",
+                  "Only " + std::to_string(quality.points) + " measured points at " + std::to_string(fit.sampling.distinct) +
+                      " different places: at least 7 at 5 are needed. Scan more points.");
+  if (fit.outcome == infer::FitOutcome::not_converged)
+    return refuse(reasons, "no_fit",
+                  "No model could be fitted: from every starting point the fit ran away. The scan holds no oscillation or line that "
+                  "could be told; look at the raw points, then scan again with more shots.");
+  evidence_gates(fit, context, reasons);
+  if (poor(quality, context.accept))
+    refuse(reasons, "poor_fit",
+           "The model does not describe the scan: the residuals' variance is " + plain(quality.scatter, 3) +
+               " times what the readout's own noise allows" +
+               (quality.p_after_scatter < context.accept.min_p_value ? ", and they follow one another or one stands far out" : "") +
+               ". Look for a laser that dropped out, atoms lost, a readout that drifted, or more than two levels taking part.");
+  rival_gate(fit, context, reasons);
+  if (quality.outside_expect)
+    refuse(reasons, "outside_expect",
+           "The best fit, " + hertz(fit.generalised) + ", lies outside expect.rabi, " + hertz(quality.range_low) + " to " +
+               hertz(quality.range_high) + ". If the light has really changed so much, widen expect; else look for the wrong attenuation, "
+               "polarisation or transition.");
+  if (fit.axis == infer::Axis::detuning) return line_gates(fit, context, reasons);
+  if (!(quality.cycles >= context.accept.min_cycles))
+    refuse(reasons, "too_few_cycles",
+           "The scan holds " + (std::isfinite(quality.cycles) ? "as few as " + plain(std::max(0.0, quality.cycles), 2) : std::string("an unknown number of")) +
+               " cycles (lower end of the interval; asked for " + plain(context.accept.min_cycles, 2) + "). Scan to longer pulses.");
+}
+
+void cautions(const State& state, const infer::Fit& fit, const infer::Prior& prior, const Context& context, Reasons& reasons) {
+  const auto& quality = fit.quality;
+  if (fit.outcome != infer::FitOutcome::fitted) return;
+  if (quality.by_history)
+    caution(reasons, "by_history",
+            "The scan alone cannot tell this frequency from another; the drive's history decided. Step the pulse length unevenly to have "
+            "the scan tell it.");
+  if (quality.scatter > 1.0 && !poor(quality, context.accept))
+    caution(reasons, "scatter",
+            "The points scatter with " + plain(quality.scatter, 3) + " times the variance of the readout's own noise; all errors were widened "
+            "for it. Something fluctuates from shot to shot or point to point.");
+  if (fit.dead_time_s.value != prior.dead_time.mean && std::abs(fit.dead_time_s.value - prior.dead_time.mean) > 3.0 * prior.dead_time.sigma)
+    caution(reasons, "dead_time",
+            "The dead time found, " + with_uncertainty(fit.dead_time_s.value, fit.dead_time_s.sigma, "s") + ", is more than 3 sigma from "
+            "the configured one. If it is right, state it under switching.");
+  if (fit.axis == infer::Axis::duration && prior.detuning) {
+    const double reach = std::abs(prior.detuning->mean) + 2.0 * prior.detuning->sigma;
+    const double effect = 0.5 * reach * reach / std::max(fit.generalised.value, 1e-300);
+    if (effect > fit.generalised.sigma)
+      caution(reasons, "detuning",
+              "The carrier is known to " + hertz(prior.detuning->sigma) + ", which leaves the bare Rabi frequency less certain than the "
+              "oscillation itself, " + hertz(fit.generalised) + ". Pulse lengths rest on the oscillation; for the intensity, scan the line.");
+  }
+  if (std::isfinite(context.transition_frequency) && fit.rabi.value > 0.0) {
+    const double shift = fit.rabi.value * fit.rabi.value / (4.0 * context.transition_frequency);
+    const double sigma = fit.axis == infer::Axis::detuning ? fit.line_offset.sigma : fit.rabi.sigma;
+    if (shift > sigma)
+      caution(reasons, "rotating_wave",
+              "The Bloch-Siegert shift, " + hertz(shift) + ", is as large as the fit's own uncertainty: the rotating-wave approximation is "
+              "no longer good enough for this drive.");
+  }
+  if (state.proposals_unanswered >= kUnansweredSaid)
+    caution(reasons, "applied_missing",
+            std::to_string(state.proposals_unanswered) + " proposals went by without an `applied` message, so lengths are compared with ones "
+            "that may no longer be in use. Send `applied` after loading pulses.");
+}
+
+Effect history_gate(const State& state, const FitEvent& event, const infer::Fit& fit, const Context& context, Reasons& reasons) {
+  const bool line = event.quantity == Quantity::line;
+  if (const auto effect = amplitude_gate(state, event, reasons)) return *effect;
+  const Track& track = line ? state.line : state.rabi;
+  const auto& step = line ? state.line_step : state.rabi_step;
+  const auto predicted = track.predict(event.at);
+  const double width = fit.quality.line_width;
+  // A carrier step is measured from the carrier as it stands: that is what the experiment relies on.
+  const double off = line ? std::abs(fit.line_offset.value) / width
+                          : (predicted ? std::abs(std::exp(event.value - predicted->mean) - 1.0) : 0.0);
+  const double allowed = line ? context.accept.max_carrier_step : context.accept.max_step;
+  const bool awake = line || track.accepted >= kStepAwake;
+  if (!awake || off <= allowed) {
+    if (track.accepted > 0) return Effect::accepted;
+    caution(reasons, "first", "First scan of this drive that was believed: there is no history to hold it against.");
+    return Effect::first;
+  }
+  const std::string seen =
+      line ? "The line lies " + hertz(fit.line_offset) + " from the carrier, " + percent(off) + " of its width (allowed at once: " +
+                 percent(allowed) + ")"
+           : "The Rabi frequency, " + hertz(fit.rabi) + ", is " + percent(off) + " from the " + hertz(std::exp(predicted->mean)) +
+                 " that history predicts (allowed at once: " + percent(allowed) + ")";
+  if (step) {
+    const double spread = std::hypot(step->sigma, event.sigma);
+    const bool agrees = std::abs(event.value - step->value) <= 3.0 * spread;
+    const bool differs = std::abs(event.span / step->span - 1.0) > kSameAxis || std::abs(event.spacing / step->spacing - 1.0) > kSameAxis;
+    if (agrees && differs) {
+      caution(reasons, "step_confirmed", seen + ", and a second scan with other points agrees: taken as a real change. Find out what moved.");
+      return Effect::confirmed;
+    }
+    if (agrees) {
+      refuse(reasons, "step", seen + ". A second scan agrees but has the same points, which would repeat the same mistake: scan once more with "
+                                     "another span or spacing to confirm.");
+      return Effect::pending;
+    }
+  }
+  refuse(reasons, "step", seen + ". Scan again with another span or spacing: if that agrees, the change is taken as real.");
+  return Effect::pending;
+}
+
+}  // namespace halfturn::recalibrate

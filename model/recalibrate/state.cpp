@@ -1,0 +1,90 @@
+// SPDX-License-Identifier: Apache-2.0
+#include "model/recalibrate/state.hpp"
+
+#include <algorithm>
+#include <cmath>
+
+namespace halfturn::recalibrate {
+namespace {
+
+constexpr double kNanosecondsAnHour = 3.6e12;
+// Weight of the newest innovation in the noise estimate: a change of pace is followed within about five scans
+// (state_test, "a ramp").
+constexpr double kForget = 0.2;
+// The walk's standard deviation before there are innovations to tell, in units of its floor.
+constexpr double kFirstNoise = 5.0;
+
+double hours(Time from, Time to) { return std::max(0.0, static_cast<double>(to - from) / kNanosecondsAnHour); }
+
+void restart(Track& track, double value, double variance, const FitEvent& event) {
+  const double first = kFirstNoise * event.noise_floor;
+  track.mean = value;
+  track.variance = variance;
+  track.noise = std::max(track.noise, first * first);
+  track.at = event.at;
+  ++track.accepted;
+}
+
+void update(Track& track, const FitEvent& event) {
+  const double elapsed = hours(track.at, event.at);
+  const double observed = event.sigma * event.sigma;
+  const double innovation = event.value - track.mean;
+  const double floor = event.noise_floor * event.noise_floor;
+  if (elapsed > 0.0) {
+    // Scans minutes apart say little of an hour's noise each; a minute at least keeps one of them from saying everything.
+    const double seen = std::max(0.0, innovation * innovation - observed - track.variance) / std::max(elapsed, 1.0 / 60.0);
+    track.noise = std::max(floor, (1.0 - kForget) * track.noise + kForget * seen);
+  }
+  const double predicted = track.variance + track.noise * elapsed;
+  const double gain = predicted / (predicted + observed);
+  track.mean += gain * innovation;
+  track.variance = (1.0 - gain) * predicted;
+  track.at = std::max(track.at, event.at);
+  ++track.accepted;
+}
+
+void confirm(Track& track, const Pending& pending, const FitEvent& event) {
+  const double a = 1.0 / (pending.sigma * pending.sigma), b = 1.0 / (event.sigma * event.sigma);
+  restart(track, (a * pending.value + b * event.value) / (a + b), 1.0 / (a + b), event);
+}
+
+}  // namespace
+
+std::optional<infer::Known> Track::predict(Time when) const {
+  if (accepted == 0) return std::nullopt;
+  return infer::Known{mean, std::sqrt(variance + noise * hours(at, when))};
+}
+
+void advance(State& state, const FitEvent& event) {
+  Track& track = event.quantity == Quantity::rabi ? state.rabi : state.line;
+  auto& step = event.quantity == Quantity::rabi ? state.rabi_step : state.line_step;
+  if (event.proposed) ++state.proposals_unanswered;
+  if (event.effect == Effect::aside) {
+    state.at_other_amplitude = event.drive_amplitude == state.other_amplitude ? state.at_other_amplitude + 1 : 1;
+    state.other_amplitude = event.drive_amplitude;
+    return;
+  }
+  if (event.effect != Effect::none && event.quantity == Quantity::rabi) {
+    state.at_other_amplitude = 0;
+    if (event.effect != Effect::pending && std::isfinite(event.drive_amplitude)) state.drive_amplitude = event.drive_amplitude;
+  }
+  switch (event.effect) {
+    case Effect::none:
+    case Effect::aside: return;
+    case Effect::pending: step = Pending{event.value, event.sigma, event.span, event.spacing, event.at}; return;
+    case Effect::first: restart(track, event.value, event.sigma * event.sigma, event); break;
+    case Effect::accepted: update(track, event); break;
+    case Effect::confirmed:
+      if (step) confirm(track, *step, event);
+      break;
+  }
+  step.reset();
+}
+
+void advance(State& state, const AppliedEvent& event) {
+  for (const auto& [name, length] : event.pulses_s) state.in_force_s[name] = length;
+  if (std::isfinite(event.carrier)) state.carrier = event.carrier;
+  state.proposals_unanswered = 0;
+}
+
+}  // namespace halfturn::recalibrate

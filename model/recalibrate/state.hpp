@@ -1,0 +1,87 @@
+// SPDX-License-Identifier: Apache-2.0
+#pragma once
+#include <cstdint>
+#include <limits>
+#include <map>
+#include <optional>
+#include <string>
+
+#include "model/infer/prior.hpp"
+
+/// What is known of a drive from its history: a fold over events, the same for the running program and for a log read again.
+namespace halfturn::recalibrate {
+
+/// Nanoseconds since 1970-01-01 00:00:00 UTC.
+using Time = std::int64_t;
+
+inline constexpr double kAbsent = std::numeric_limits<double>::quiet_NaN();
+
+/// Floors of the random walks, per square root of an hour: of the log Rabi frequency, and of the line in parts of its width.
+inline constexpr double kRabiNoise = 1e-3;
+inline constexpr double kLineNoise = 1e-2;
+
+/// How a fit moved the tracked state: `none` not at all; `first` begins it; `accepted` updates it; `pending` waits for a second
+/// scan to confirm a step; `confirmed` restarts it at the step; `aside` was taken at another drive amplitude.
+enum class Effect : std::uint8_t { none, first, accepted, pending, confirmed, aside };
+
+enum class Quantity : std::uint8_t { rabi, line };  // what a scan of durations, or of detunings, tells
+
+/// A fit's contribution to the state.
+struct FitEvent {
+  Time at = 0;
+  Quantity quantity = Quantity::rabi;
+  Effect effect = Effect::none;
+  bool proposed = false;           // the verdict was `apply`
+  double value = kAbsent;          // ln(Omega / (rad/s)), or the line's place in the experiment's own carrier numbers, rad/s
+  double sigma = kAbsent;
+  double noise_floor = 0.0;        // of the random walk, in the units of value per square root of an hour
+  double dead_time_s = kAbsent, dead_time_sigma_s = kAbsent;
+  double span = 0.0, spacing = 0.0;  // of the scan's axis
+  double drive_amplitude = kAbsent;  // relative; absent where the scan did not say
+};
+
+/// What the experiment reports to use from now on.
+struct AppliedEvent {
+  Time at = 0;
+  std::map<std::string, double> pulses_s;
+  double carrier = kAbsent;        // rad/s, the experiment's own number
+};
+
+/// A random walk tracked by a scalar Kalman filter (R. E. Kalman, J. Basic Eng. 82, 35 (1960)); its noise is estimated from the
+/// innovations (method of moments, exponentially forgotten) above a floor.
+struct Track {
+  int accepted = 0;
+  double mean = 0.0, variance = 0.0;
+  double noise = 0.0;              // variance an hour
+  Time at = 0;
+
+  /// Mean and standard deviation predicted for a time; a time before the last scan's counts as that. None before the first.
+  std::optional<infer::Known> predict(Time when) const;
+};
+
+/// A step that waits for confirmation.
+struct Pending {
+  double value = 0.0, sigma = 0.0;
+  double span = 0.0, spacing = 0.0;
+  Time at = 0;
+};
+
+struct State {
+  Track rabi, line;
+  std::optional<Pending> rabi_step, line_step;
+  std::map<std::string, double> in_force_s;  // as last reported
+  double carrier = kAbsent;                  // as last reported, rad/s
+  int proposals_unanswered = 0;              // `apply` since the experiment last reported what it uses
+  double drive_amplitude = kAbsent;          // at which the tracked Rabi frequency was taken
+  double other_amplitude = kAbsent;          // at which the last scans were taken, if at another
+  int at_other_amplitude = 0;                // how many in a row
+  bool held = false;
+  std::string held_by, held_why;
+  std::string last_verdict;                  // of the last scan
+};
+
+/// The state after an event.
+void advance(State& state, const FitEvent& event);
+void advance(State& state, const AppliedEvent& event);
+
+}  // namespace halfturn::recalibrate

@@ -1,0 +1,150 @@
+// SPDX-License-Identifier: Apache-2.0
+#include "plugin/service/known.hpp"
+
+#include <cmath>
+
+#include "model/quantity/constants.hpp"
+#include "model/quantity/format.hpp"
+
+namespace halfturn::service {
+namespace {
+
+using constants::kTwoPi;
+
+infer::Readout::Kind readout_of(wire::ReadoutKind kind) {
+  switch (kind) {
+    case wire::ReadoutKind::binomial: return infer::Readout::Kind::binomial;
+    case wire::ReadoutKind::gaussian: return infer::Readout::Kind::gaussian;
+    case wire::ReadoutKind::poisson: return infer::Readout::Kind::poisson;
+  }
+  return infer::Readout::Kind::binomial;
+}
+
+/// The known lifetime: what decays between the two states, and what leaves them.
+void add_lifetime(const atom::Transition& transition, infer::Prior& prior) {
+  if (!transition.linewidth_hz) return;
+  const double total = kTwoPi * *transition.linewidth_hz;
+  const double within = kTwoPi * transition.state_linewidth_hz.value_or(transition.partial_linewidth_hz.value_or(*transition.linewidth_hz));
+  prior.decay = std::min(within, total);
+  prior.loss = total - prior.decay;
+}
+
+void add_readout(const config::Drive& drive, const wire::Scan& scan, infer::Prior& prior, std::vector<std::string>& assumed) {
+  if (drive.readout_kind != scan.readout_kind) {
+    if (drive.floor || drive.contrast)
+      assumed.push_back("readout: floor and contrast are free, for the configured ones are of another kind of readout");
+    return;
+  }
+  prior.floor = drive.floor;
+  prior.contrast = drive.contrast;
+}
+
+void add_detuning(const config::Drive* drive, const recalibrate::State& state, const wire::Scan& scan, recalibrate::Time taken_at,
+                  infer::Prior& prior, std::vector<std::string>& assumed) {
+  if (scan.axis_kind == wire::AxisKind::detuning) return;
+  const auto line = state.line.predict(taken_at);
+  if (line && scan.carrier_hz) {
+    prior.detuning = infer::Known{kTwoPi * *scan.carrier_hz - line->mean, line->sigma};
+  } else if (drive != nullptr && drive->carrier_uncertainty) {
+    prior.detuning = infer::Known{0.0, *drive->carrier_uncertainty};
+  } else {
+    assumed.push_back("carrier_uncertainty: the carrier sits on the line");
+  }
+}
+
+infer::DynamicsSet candidates_of(const config::Drive* drive, const wire::Options& options) {
+  if (options.dynamics.empty()) return drive != nullptr && drive->dynamics ? *drive->dynamics : infer::DynamicsSet{};
+  auto set = infer::DynamicsSet::none();
+  for (const auto& name : options.dynamics)
+    if (const auto dynamics = infer::dynamics_named(name)) set.add(*dynamics);
+  return set;
+}
+
+}  // namespace
+
+ModelScan model_scan(const wire::Scan& scan) {
+  ModelScan model{scan.axis, {}};
+  const bool line = scan.axis_kind == wire::AxisKind::detuning;
+  if (line)
+    for (double& detuning : model.axis) detuning *= kTwoPi;
+  model.batch.kind = line ? infer::Axis::detuning : infer::Axis::duration;
+  model.batch.axis = model.axis;
+  model.batch.readout = readout_of(scan.readout_kind);
+  model.batch.observed = scan.observed.front();
+  model.batch.weight = scan.weight.front();
+  model.batch.pulse_length_s = scan.pulse_s.value_or(0.0);
+  if (scan.references)
+    model.batch.references =
+        infer::References{scan.references->bright, scan.references->bright_of, scan.references->dark, scan.references->dark_of};
+  return model;
+}
+
+infer::Prior prior_for(const config::Drive* drive, const recalibrate::State& state, const wire::Scan& scan, const wire::Options& options,
+                       recalibrate::Time taken_at, std::vector<std::string>& assumed) {
+  infer::Prior prior;
+  prior.start.prepared = scan.prepared_excited ? dynamics::Prepared::excited : dynamics::Prepared::ground;
+  prior.candidates = candidates_of(drive, options);
+  prior.log_rabi = state.rabi.predict(taken_at);
+  if (drive != nullptr) {
+    prior.expect = drive->expect;
+    prior.start.impurity = drive->impurity;
+    prior.start.lost_reads = drive->lost_reads;
+    if (drive->transition) add_lifetime(*drive->transition, prior);
+    add_readout(*drive, scan, prior, assumed);
+  }
+  if (drive != nullptr && drive->dead_time) prior.dead_time = *drive->dead_time;
+  else assumed.push_back("switching: a dead time of 0 +- 100 ns");
+  add_detuning(drive, state, scan, taken_at, prior, assumed);
+  if (!prior.expect && scan.axis_kind == wire::AxisKind::duration) {
+    const auto limit = infer::sampling_of(infer::Axis::duration, scan.axis).limit;
+    assumed.push_back("expect: the Rabi frequency lies below the scan's sampling limit, " + engineering(limit / kTwoPi, "Hz"));
+  }
+  return prior;
+}
+
+infer::FitOptions fit_options(const config::Drive* drive, const wire::Options& options) {
+  infer::FitOptions fit;
+  if (options.level) fit.level = *options.level;
+  if (drive == nullptr) return fit;
+  fit.rival_margin = drive->accept.rival_margin;
+  for (const auto& pulse : drive->pulses) fit.pulses.push_back({pulse.angle_rad, pulse.area_factor});
+  return fit;
+}
+
+recalibrate::Context context_for(const config::Drive* drive, const wire::Scan& scan, const infer::Prior& prior, recalibrate::Time taken_at) {
+  recalibrate::Context context;
+  context.taken_at = taken_at;
+  context.expect = prior.expect;
+  context.carrier_known = prior.detuning.has_value();
+  if (scan.carrier_hz) context.carrier = kTwoPi * *scan.carrier_hz;
+  if (scan.drive_amplitude) context.drive_amplitude = *scan.drive_amplitude;
+  if (drive == nullptr) return context;
+  context.pulses = drive->pulses;
+  context.accept = drive->accept;
+  if (drive->transition && std::isfinite(drive->transition->frequency_hz))
+    context.transition_frequency = kTwoPi * drive->transition->frequency_hz;
+  return context;
+}
+
+Result<void> check_scan(const wire::Request& request, const config::Configuration& configuration) {
+  if (request.joint) return fault("not_available", "scans", "joint fits of several scans are not available in this version; send each as `scan`");
+  const auto& scan = request.scans.front();
+  if (scan.axis_kind == wire::AxisKind::amplitude)
+    return fault("not_available", "scan.amplitude", "amplitude scans are not available in this version; send duration_s or detuning_hz");
+  if (!scan.sites.empty() || scan.observed.size() != 1)
+    return fault("not_available", "scan.sites", "scans of many sites are not available in this version; send one scan a site");
+  for (std::size_t i = 0; i < request.options.dynamics.size(); ++i) {
+    const auto& name = request.options.dynamics[i];
+    if (infer::dynamics_named(name)) continue;
+    return fault("bad_value", "options.dynamics[" + std::to_string(i) + "]",
+                 "found `" + name + "`, expected one of undamped, dephasing, decay, leak");
+  }
+  if (request.options.store && configuration.drives.count(scan.drive) == 0) {
+    std::string known;
+    for (const auto& [name, drive] : configuration.drives) known += (known.empty() ? "" : ", ") + name;
+    return fault("unknown_drive", "scan.drive", "found `" + scan.drive + "`, which the configuration does not have; it has " + known);
+  }
+  return {};
+}
+
+}  // namespace halfturn::service
