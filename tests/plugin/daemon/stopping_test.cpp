@@ -8,6 +8,8 @@
 #include "tests/support/catch.hpp"
 
 using namespace halfturn::tests;
+using namespace halfturn::log;
+using halfturn::Result;
 using halfturn::config::Reading;
 
 namespace {
@@ -30,17 +32,31 @@ bool troubled(const json& state, const std::string& word) {
   return false;
 }
 
-/// A log that says whether a group was ever handed out before its commit was through.
-class WatchedLog : public halfturn::log::MemoryLog {
+/// A log in memory that counts its commits.
+class WatchedLog : public Log {
  public:
   explicit WatchedLog(std::atomic<int>& commits) : commits_(commits) {}
-  halfturn::Result<void> commit() override {
-    auto done = MemoryLog::commit();
+  Result<void> begin() override { return log_.begin(); }
+  Result<void> commit() override {
+    auto done = log_.commit();
     ++commits_;
     return done;
   }
+  void roll_back() override { log_.roll_back(); }
+  Result<std::int64_t> append(const Event& event, const Bulk* bulk) override { return log_.append(event, bulk); }
+  Result<void> keep_reply(const std::string& id, const StoredReply& reply, Time now) override { return log_.keep_reply(id, reply, now); }
+  Result<std::optional<StoredReply>> find_reply(const std::string& id) override { return log_.find_reply(id); }
+  Result<void> forget_replies(Time before) override { return log_.forget_replies(before); }
+  Result<void> keep_configuration(const std::string& fingerprint, const std::string& text, Time now) override {
+    return log_.keep_configuration(fingerprint, text, now);
+  }
+  Result<void> replay(const std::function<void(const Event&)>& visit) override { return log_.replay(visit); }
+  Result<std::vector<Row>> history(const Range& range) override { return log_.history(range); }
+  Result<std::vector<Event>> events(const Range& range) override { return log_.events(range); }
+  Result<std::optional<std::string>> scan(std::int64_t number) override { return log_.scan(number); }
 
  private:
+  MemoryLog log_;
   std::atomic<int>& commits_;
 };
 
