@@ -3,7 +3,6 @@
 
 #include <algorithm>
 #include <array>
-#include <cmath>
 #include <filesystem>
 #include <limits>
 #include <map>
@@ -11,6 +10,7 @@
 
 #include "plugin/config/file.hpp"
 #include "plugin/config/scan_metadata.hpp"
+#include "plugin/wire/check.hpp"
 #include "plugin/wire/words.hpp"
 
 namespace halfturn::config {
@@ -131,7 +131,7 @@ class ScanReader {
     const bool sigma = scan_.readout_kind == wire::ReadoutKind::gaussian;
     const string_view expected = sigma ? "a number above 0" : "a whole number of at least 0";
     const auto value = number(cell, path, expected);
-    if (!value || (sigma ? *value > 0.0 : *value >= 0.0 && std::floor(*value) == *value)) return value;
+    if (!value || (sigma ? *value > 0.0 : wire::is_count(*value))) return value;
     fault(cell, path, "found " + wire::in_quotes(cell.text) + ", expected " + std::string(expected));
     return std::nullopt;
   }
@@ -147,7 +147,7 @@ class ScanReader {
     const auto kind = static_cast<std::size_t>(scan_.readout_kind);
     const auto observed = number(cell, kObserved[kind], "a number, or nothing where the point was not measured");
     if (!observed || scan_.readout_kind == wire::ReadoutKind::gaussian) return observed ? std::optional(Point{*axis, *observed, *weight}) : std::nullopt;
-    const bool whole = *observed >= 0.0 && std::floor(*observed) == *observed;
+    const bool whole = wire::is_count(*observed);
     const bool fits = scan_.readout_kind == wire::ReadoutKind::poisson || *observed <= *weight;
     if (whole && fits) return Point{*axis, *observed, *weight};
     fault(cell, kObserved[kind], "found " + wire::in_quotes(cell.text) + ", expected " + (whole ? "at most the shots beside it" : "a whole number of at least 0"));

@@ -2,8 +2,8 @@
 #include "plugin/config/scan_metadata.hpp"
 
 #include <algorithm>
-#include <cmath>
 
+#include "plugin/wire/check.hpp"
 #include "plugin/wire/time.hpp"
 #include "plugin/wire/words.hpp"
 
@@ -109,7 +109,7 @@ void read_comment(Reader& reader, Node& root, const Comment& comment) {
 
 std::optional<double> whole(Reader& reader, const Place& at) {
   const auto value = reader.quantity(at, Dimension::number, kNotNegative);
-  if (value && std::floor(*value) != *value) reader.fault(at, "found " + wire::in_quotes(at.node->text) + ", expected a whole number");
+  if (value && !wire::is_count(*value)) reader.fault(at, "found " + wire::in_quotes(at.node->text) + ", expected a whole number");
   return value;
 }
 

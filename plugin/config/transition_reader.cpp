@@ -1,4 +1,6 @@
 // SPDX-License-Identifier: Apache-2.0
+#include <algorithm>
+
 #include "plugin/config/atoms.hpp"
 #include "plugin/config/catalogue.hpp"
 #include "plugin/config/keys.hpp"
@@ -49,9 +51,24 @@ atom::InlineTransition read_numbers(Reader& reader, const Place& at) {
   return out;
 }
 
+/// The number that a fault speaks of (`transition.linewidth_hz` is the key `linewidth`), else the whole transition.
+Place culprit(const Place& at, std::string_view where) {
+  const std::string_view field = where.substr(std::min(where.find('.'), where.size() - 1) + 1);
+  for (const Node& child : at.node->children)
+    if (field == child.key || (field.starts_with(child.key) && (field[child.key.size()] == '_' || field[child.key.size()] == '.'))) return at.child(child);
+  return at;
+}
+
 std::optional<atom::Transition> keep(Reader& reader, const Place& at, Result<atom::Transition> transition) {
   if (transition) return std::move(*transition);
-  reader.fault(at, transition.error().message);
+  const Fault& wrong = transition.error();
+  std::string_view message = wrong.message;
+  if (at.node->kind == Node::Kind::map) {
+    reader.fault(culprit(at, wrong.where), (message.starts_with("found") ? "" : "found too little for a transition: ") + wrong.message);
+    return std::nullopt;
+  }
+  if (const std::string name = "'" + at.node->text + "': "; message.starts_with(name)) message.remove_prefix(name.size());
+  reader.fault(at, "found " + wire::in_quotes(at.node->text) + ": " + std::string(message));
   return std::nullopt;
 }
 

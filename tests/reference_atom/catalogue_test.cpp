@@ -1,6 +1,8 @@
 // SPDX-License-Identifier: Apache-2.0
 // The catalogue as it stands in schemas/transitions.yaml: every line consistent, every name usable, and its numbers those of
 // the published table of check values.
+#include "model/atom/catalogue.hpp"
+
 #include <yaml-cpp/yaml.h>
 
 #include <cmath>
@@ -11,7 +13,6 @@
 #include <string>
 #include <vector>
 
-#include "model/atom/catalogue.hpp"
 #include "model/atom/light.hpp"
 #include "model/quantity/constants.hpp"
 #include "tests/support/catch.hpp"
@@ -87,9 +88,12 @@ std::vector<std::string> cells(const std::string& row) {
   std::vector<std::string> made(1);
   bool is_quoted = false;
   for (const char c : row) {
-    if (c == '"') is_quoted = !is_quoted;
-    else if (c == ',' && !is_quoted) made.emplace_back();
-    else if (c != '\r') made.back() += c;
+    if (c == '"')
+      is_quoted = !is_quoted;
+    else if (c == ',' && !is_quoted)
+      made.emplace_back();
+    else if (c != '\r')
+      made.back() += c;
   }
   return made;
 }
@@ -131,14 +135,27 @@ TEST_CASE("the example of the contract resolves") {
 TEST_CASE("the catalogue has the numbers of the published table") {
   NEEDS_REFERENCE_DATA(folder);
   const std::map<std::string, std::pair<std::string, std::string>> wanted = {
-      {"Rb87 D2 5S1/2-5P3/2", {"Rb87", "D2"}},   {"Rb87 D1 5S1/2-5P1/2", {"Rb87", "D1"}},  {"Rb85 D2", {"Rb85", "D2"}},
-      {"Rb85 D1", {"Rb85", "D1"}},               {"Cs133 D2 6S1/2-6P3/2", {"Cs133", "D2"}}, {"Cs133 D1 6S1/2-6P1/2", {"Cs133", "D1"}},
-      {"Na23 D2 3S1/2-3P3/2", {"Na23", "D2"}},   {"Na23 D1", {"Na23", "D1"}},               {"K39 D2 4S1/2-4P3/2", {"K39", "D2"}},
-      {"K39 D1", {"K39", "D1"}},                 {"Li6 D2 2S1/2-2P3/2", {"Li6", "D2"}},     {"Li7 D2", {"Li7", "D2"}},
-      {"Sr88 461 1S0-1P1", {"Sr88", "461"}},     {"Sr88 689 1S0-3P1", {"Sr88", "689"}},     {"Yb174 399 1S0-1P1", {"Yb174", "399"}},
-      {"Yb174 556 1S0-3P1", {"Yb174", "556"}},   {"Ca40+ 397 4S1/2-4P1/2", {"Ca40+", "397"}},
-      {"Sr88+ 422 5S1/2-5P1/2", {"Sr88+", "422"}}, {"Ba138+ 493 6S1/2-6P1/2", {"Ba138+", "493"}},
-      {"Yb171+ 369.5 6S1/2-6P1/2", {"Yb171+", "369"}}, {"Be9+ 313 2S1/2-2P3/2 (A=1.128e8)", {"Be9+", "313"}},
+      {"Rb87 D2 5S1/2-5P3/2", {"Rb87", "D2"}},
+      {"Rb87 D1 5S1/2-5P1/2", {"Rb87", "D1"}},
+      {"Rb85 D2", {"Rb85", "D2"}},
+      {"Rb85 D1", {"Rb85", "D1"}},
+      {"Cs133 D2 6S1/2-6P3/2", {"Cs133", "D2"}},
+      {"Cs133 D1 6S1/2-6P1/2", {"Cs133", "D1"}},
+      {"Na23 D2 3S1/2-3P3/2", {"Na23", "D2"}},
+      {"Na23 D1", {"Na23", "D1"}},
+      {"K39 D2 4S1/2-4P3/2", {"K39", "D2"}},
+      {"K39 D1", {"K39", "D1"}},
+      {"Li6 D2 2S1/2-2P3/2", {"Li6", "D2"}},
+      {"Li7 D2", {"Li7", "D2"}},
+      {"Sr88 461 1S0-1P1", {"Sr88", "461"}},
+      {"Sr88 689 1S0-3P1", {"Sr88", "689"}},
+      {"Yb174 399 1S0-1P1", {"Yb174", "399"}},
+      {"Yb174 556 1S0-3P1", {"Yb174", "556"}},
+      {"Ca40+ 397 4S1/2-4P1/2", {"Ca40+", "397"}},
+      {"Sr88+ 422 5S1/2-5P1/2", {"Sr88+", "422"}},
+      {"Ba138+ 493 6S1/2-6P1/2", {"Ba138+", "493"}},
+      {"Yb171+ 369.5 6S1/2-6P1/2", {"Yb171+", "369"}},
+      {"Be9+ 313 2S1/2-2P3/2 (A=1.128e8)", {"Be9+", "313"}},
       {"Mg25+ 280 3S1/2-3P3/2", {"Mg25+", "280"}}};
   std::ifstream file(*folder + "/catalogue.csv");
   REQUIRE(file);

@@ -21,7 +21,8 @@ TEST_CASE("all 3j symbols with spins up to 4") {
           for (int beta = -b; beta <= b; ++beta) {
             const int gamma = -alpha - beta;
             if (std::abs(gamma) > c) continue;
-            worst = std::max(worst, std::abs(wigner_3j(a, b, c, alpha, beta, gamma) - gsl_sf_coupling_3j(a, b, c, alpha, beta, gamma)));
+            worst = std::max(
+                worst, std::abs(wigner_3j(a, b, c, alpha, beta, gamma) - gsl_sf_coupling_3j(a, b, c, alpha, beta, gamma)));
             ++count;
           }
   INFO(count << " symbols, largest difference " << worst);
@@ -54,7 +55,8 @@ TEST_CASE("symbols of larger spins drawn at random") {
     const int a = spin(random), b = spin(random), c = spin(random), d = spin(random), e = spin(random), f = spin(random);
     if (!is_triangle(a, b, c)) continue;
     const int alpha = a - 2 * (d % (a + 1)), beta = b - 2 * (e % (b + 1));
-    worst_3j = std::max(worst_3j, std::abs(wigner_3j(a, b, c, alpha, beta, -alpha - beta) - gsl_sf_coupling_3j(a, b, c, alpha, beta, -alpha - beta)));
+    worst_3j = std::max(worst_3j, std::abs(wigner_3j(a, b, c, alpha, beta, -alpha - beta) -
+                                           gsl_sf_coupling_3j(a, b, c, alpha, beta, -alpha - beta)));
     ++count_3j;
     if (!is_triangle(a, e, f) || !is_triangle(d, b, f) || !is_triangle(d, e, c)) continue;
     worst_6j = std::max(worst_6j, std::abs(wigner_6j(a, b, c, d, e, f) - gsl_sf_coupling_6j(a, b, c, d, e, f)));

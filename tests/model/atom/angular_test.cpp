@@ -53,7 +53,8 @@ struct Table {
   std::size_t elements, strengths;
 };
 
-// Every D1 and D2 element for the nuclear spins of the alkalis: exact squares by SymPy, equal to the tables of Steck's sheets.
+// Every D1 and D2 element for the nuclear spins of the alkalis: exact squares by SymPy, equal to the tables of Steck's
+// sheets.
 const Table kTables[] = {{"Li6", 2, 64, 9}, {"Rb87_Na23_K39_Li7", 3, 94, 10}, {"Rb85", 5, 154, 10}, {"Cs133", 7, 214, 10}};
 
 }  // namespace
@@ -65,6 +66,18 @@ TEST_CASE("single 3j and 6j symbols with their exact values") {
   CHECK(wigner_6j(2, 2, 2, 2, 2, 2) == Approx(1.0 / 6.0).epsilon(1e-15));
   CHECK(wigner_6j(0, 2, 2, 3, 1, 1) == Approx(-1.0 / std::sqrt(6.0)).epsilon(1e-15));
   CHECK(wigner_3j(0, 0, 0, 0, 0, 0) == 1.0);
+}
+
+TEST_CASE("symbols of the largest spins keep their accuracy") {
+  // Exact values by SymPy, printed to 20 digits.
+  const auto close = [](double found, double exact) { return std::abs(found - exact) < 1e-15; };
+  CHECK(close(wigner_3j(20, 20, 20, 0, 0, 0), -0.057688538682562716420));
+  CHECK(close(wigner_3j(20, 18, 16, 4, -10, 6), -0.060378994765803877587));
+  CHECK(close(wigner_3j(19, 17, 20, 1, -3, 2), -0.029139510088384717750));
+  CHECK(close(wigner_3j(20, 20, 2, 20, -18, -2), -0.065795169495976898838));
+  CHECK(close(wigner_6j(20, 20, 20, 20, 20, 20), -0.0029191867806092103112));
+  CHECK(close(wigner_6j(20, 18, 16, 14, 12, 18), 0.019561198269046944020));
+  CHECK(close(wigner_6j(19, 17, 18, 15, 17, 16), -0.016152169187363071084));
 }
 
 TEST_CASE("symbols vanish where a rule says so and are not a number beyond their range") {
@@ -121,11 +134,12 @@ TEST_CASE("every hyperfine element of the published tables with its sign") {
     REQUIRE(rows.size() == table.elements);
     for (const auto& row : rows) {  // line, F, mF, F', mF', polarisation, sign, square
       const int twice_J_upper = row.at(0) == "D1" ? 1 : 3;
-      const double found = signed_square(hyperfine_factor(table.twice_I, 1, doubled(row.at(1)), doubled(row.at(2)), twice_J_upper,
-                                                          doubled(row.at(3)), doubled(row.at(4))));
+      const double found = signed_square(hyperfine_factor(table.twice_I, 1, doubled(row.at(1)), doubled(row.at(2)),
+                                                          twice_J_upper, doubled(row.at(3)), doubled(row.at(4))));
       const double expected = ratio(row.at(6)) * ratio(row.at(7));
       worst = std::max(worst, std::abs(found - expected));
-      INFO(table.file << " " << row.at(0) << " F=" << row.at(1) << " m=" << row.at(2) << " F'=" << row.at(3) << " m'=" << row.at(4));
+      INFO(table.file << " " << row.at(0) << " F=" << row.at(1) << " m=" << row.at(2) << " F'=" << row.at(3)
+                      << " m'=" << row.at(4));
       CHECK(std::abs(found - expected) < 1e-15);
     }
   }
@@ -162,11 +176,13 @@ TEST_CASE("what decays from an upper state adds up to the line") {
 TEST_CASE("hydrogen: <1s|z|2p0> from the decay rate") {
   // Bethe & Salpeter (1957): omega = 3/8 E_h/hbar and A(2p) = (2/3)^8 alpha^3 E_h/hbar give 128 sqrt(2)/243 a0 exactly.
   using namespace constants;
-  const double fine_structure = kElementaryCharge * kElementaryCharge / (4.0 * kPi * kVacuumPermittivity * kReducedPlanck * kSpeedOfLight);
+  const double fine_structure =
+      kElementaryCharge * kElementaryCharge / (4.0 * kPi * kVacuumPermittivity * kReducedPlanck * kSpeedOfLight);
   const double hartree_hz = fine_structure * fine_structure * kElectronMass * kSpeedOfLight * kSpeedOfLight / kPlanck;
   const double frequency_hz = 0.375 * hartree_hz;
   const double linewidth_hz = std::pow(2.0 / 3.0, 8) * std::pow(fine_structure, 3) * hartree_hz;
-  const double element = reduced_dipole_C_m(frequency_hz, linewidth_hz, 0, 2) * std::abs(hyperfine_factor(0, 0, 0, 0, 2, 2, 0));
+  const double element =
+      reduced_dipole_C_m(frequency_hz, linewidth_hz, 0, 2) * std::abs(hyperfine_factor(0, 0, 0, 0, 2, 2, 0));
   CHECK(element / kDipoleAtomicUnit == Approx(128.0 * std::sqrt(2.0) / 243.0).epsilon(3e-9));  // CODATA's own consistency
   CHECK(element / kDipoleAtomicUnit == Approx(0.74493554).epsilon(1e-8));
   CHECK(partial_linewidth_hz(frequency_hz, reduced_dipole_C_m(frequency_hz, 1e6, 1, 3), 1, 3) == Approx(1e6).epsilon(1e-14));

@@ -52,7 +52,8 @@ void refuses(const InlineTransition& given, const std::string& words) {
 }  // namespace
 
 TEST_CASE("a transition by its numbers is the catalogue's") {
-  // Steck, "Rubidium 87 D Line Data" (as quoted): cycling Isat 1.66933(49) mW/cm^2; d_S/sqrt(2) = 2.98931 e a0 of Rb-85 to 4e-6.
+  // Steck, "Rubidium 87 D Line Data" (as quoted): cycling Isat 1.66933(49) mW/cm^2; d_S/sqrt(2) = 2.98931 e a0 of Rb-85 to
+  // 4e-6.
   const auto transition = made(rubidium());
   CHECK(saturation_intensity(transition).value() == Approx(16.6933).epsilon(1e-5));
   CHECK(*transition.dipole_C_m / kDipoleAtomicUnit == Approx(4.22752 / std::sqrt(2.0)).epsilon(3e-6));
@@ -163,7 +164,7 @@ TEST_CASE("the rules bind a transition by its numbers") {
   refuses(total, "J may change by 0 or 1 only");
   auto light = rubidium();
   light.polarisation = Polarisation::pi;
-  refuses(light, "pi light changes m by 0");
+  refuses(light, "pi polarisation changes m by 0");
   auto zero = rubidium();
   zero.twice_I = 0;
   zero.lower = state(2, 1, {}, 0);
@@ -176,8 +177,8 @@ TEST_CASE("the rules bind a transition by its numbers") {
 }
 
 TEST_CASE("words of kinds, polarisations and statuses") {
-  for (const auto kind : {Multipole::electric_dipole, Multipole::magnetic_dipole, Multipole::electric_quadrupole, Multipole::two_photon,
-                          Multipole::induced}) {
+  for (const auto kind : {Multipole::electric_dipole, Multipole::magnetic_dipole, Multipole::electric_quadrupole,
+                          Multipole::two_photon, Multipole::induced}) {
     CHECK(read_multipole(name_of(kind), "kind").value() == kind);
   }
   CHECK(read_multipole("E1", "kind").error().message.find("electric_dipole, magnetic_dipole") != std::string::npos);
@@ -186,7 +187,8 @@ TEST_CASE("words of kinds, polarisations and statuses") {
   }
   CHECK(read_polarisation("\u03c3+") == Polarisation::sigma_plus);
   CHECK_FALSE(read_polarisation("sigma"));
-  for (const auto status : {Status::read, Status::quoted, Status::recalled}) CHECK(read_status(name_of(status), "status").value() == status);
+  for (const auto status : {Status::read, Status::quoted, Status::recalled})
+    CHECK(read_status(name_of(status), "status").value() == status);
   CHECK(read_parity("odd", "parity").value() == -1);
   CHECK_FALSE(read_parity("+", "parity"));
 }

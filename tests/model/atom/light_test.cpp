@@ -101,13 +101,15 @@ TEST_CASE("the Bloch-Siegert shift") {
 }
 
 TEST_CASE("saturation of lines with branching") {
-  // Two-level forms 51.48 and 28.96 mW/cm^2 (computed from the quoted rates), not 45.07 and 16.49 of the partial width alone.
+  // Two-level forms 51.48 and 28.96 mW/cm^2 (computed from the quoted rates), not 45.07 and 16.49 of the partial width
+  // alone.
   const auto ca_pi = resolved("Ca40+ 4S1/2 m=-1/2 -> 4P1/2 m'=-1/2 pi");
   const auto ba_sigma = resolved("Ba138+ 493 m=-1/2 -> m'=1/2 sigma+");
   CHECK(two_level_saturation_intensity(ca_pi).value() / 10.0 == printed(51.48, 0.01));
   CHECK(two_level_saturation_intensity(ba_sigma).value() / 10.0 == printed(28.96, 0.01));
   CHECK(saturation_intensity(ca_pi).value() == Approx(3.0 * two_level_saturation_intensity(ca_pi).value()).epsilon(1e-9));
-  CHECK(saturation_intensity(ba_sigma).value() == Approx(1.5 * two_level_saturation_intensity(ba_sigma).value()).epsilon(1e-9));
+  CHECK(saturation_intensity(ba_sigma).value() ==
+        Approx(1.5 * two_level_saturation_intensity(ba_sigma).value()).epsilon(1e-9));
   CHECK(*ca_pi.linewidth_hz / 1e6 == printed(23.05, 0.01));
   CHECK(*ca_pi.partial_linewidth_hz / 1e6 == printed(21.57, 0.01));
   CHECK(*ca_pi.state_linewidth_hz == Approx(*ca_pi.partial_linewidth_hz / 3.0).epsilon(1e-14));
@@ -119,11 +121,12 @@ TEST_CASE("a report is the same from whichever quantity it starts") {
   const auto transition = resolved("Sr88 1S0 -> 3P1 m=0 pi");
   const double waist_m = 45e-6;
   const auto base = light_from_rabi_hz(transition, 125340.0, waist_m).value();
-  CHECK(base.field_v_m == Approx(constants::kReducedPlanck * constants::kTwoPi * 125340.0 / *transition.dipole_C_m).epsilon(1e-14));
+  CHECK(base.field_v_m ==
+        Approx(constants::kReducedPlanck * constants::kTwoPi * 125340.0 / *transition.dipole_C_m).epsilon(1e-14));
   const Result<LightReport> reports[] = {
-      light_from_pi_time_s(transition, base.pi_time_s, waist_m),          light_from_field_v_m(transition, base.field_v_m, waist_m),
-      light_from_intensity_w_m2(transition, base.intensity_w_m2, waist_m), light_from_saturation(transition, *base.saturation, waist_m),
-      light_from_power_w(transition, *base.power_w, waist_m)};
+      light_from_pi_time_s(transition, base.pi_time_s, waist_m), light_from_field_v_m(transition, base.field_v_m, waist_m),
+      light_from_intensity_w_m2(transition, base.intensity_w_m2, waist_m),
+      light_from_saturation(transition, *base.saturation, waist_m), light_from_power_w(transition, *base.power_w, waist_m)};
   for (const auto& report : reports) {
     REQUIRE(report);
     CHECK(report->rabi_hz == Approx(125340.0).epsilon(1e-13));
@@ -141,7 +144,8 @@ TEST_CASE("Sr-88 689 nm has the moment of its rate") {
   CHECK(*transition.reduced_dipole_C_m / kDipoleAtomicUnit == Approx(0.15086).epsilon(5e-5));
   CHECK(*transition.dipole_C_m == Approx(*transition.reduced_dipole_C_m / std::sqrt(3.0)).epsilon(1e-14));
   CHECK(*transition.state_linewidth_hz == Approx(*transition.linewidth_hz).epsilon(1e-14));
-  CHECK(transition.wavelength_m * 1e9 == Approx(689.449098).epsilon(0.0).margin(1.3e-6));  // both printed to 1e-6 of their unit
+  CHECK(transition.wavelength_m * 1e9 ==
+        Approx(689.449098).epsilon(0.0).margin(1.3e-6));  // both printed to 1e-6 of their unit
 }
 
 TEST_CASE("light faults name what is wrong") {

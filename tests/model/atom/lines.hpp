@@ -111,8 +111,17 @@ inline atom::CatalogueLine ca_729() {
   return made;
 }
 
+inline atom::CatalogueLine rb87_hyperfine() {
+  auto made = line("Rb87", "hyperfine", 3, level("5S1/2", 1, 1), level("5S1/2", 1, 1));
+  made.kind = atom::Multipole::magnetic_dipole;
+  made.frequency_hz = atom::Quoted{6834682610.9043126, 2.3e-6, "BIPM 2021"};
+  made.recommended = {"Rb87 hyperfine F=1 m=0 -> F'=2 m'=0"};
+  return made;
+}
+
 inline std::vector<atom::CatalogueLine> all_lines() {
-  return {rb87_d2(), rb87_d1(), rb85_d2(), rb85_d1(), ca_397(), ba_493(), sr88_689(), yb171_369(), ca_729()};
+  return {rb87_d2(), rb87_d1(),  rb85_d2(),   rb85_d1(), ca_397(),
+          ba_493(),  sr88_689(), yb171_369(), ca_729(),  rb87_hyperfine()};
 }
 
 }  // namespace halfturn::tests

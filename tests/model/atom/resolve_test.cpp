@@ -1,7 +1,10 @@
 // SPDX-License-Identifier: Apache-2.0
 #include <cmath>
+#include <iterator>
+#include <random>
 #include <string>
 
+#include "model/quantity/constants.hpp"
 #include "tests/model/atom/lines.hpp"
 #include "tests/support/catch.hpp"
 
@@ -87,6 +90,7 @@ TEST_CASE("an unknown name comes with near ones") {
     CHECK_FALSE(resolve(wrong, all_lines()));
   }
   CHECK_FALSE(resolve("Rb87 D2 F=2 m=2 -> F'=3 m'=3 sigma+", {}));
+  says(refused(std::string(100000, 'x')), "expected at most 200");
 }
 
 TEST_CASE("malformed names say where") {
@@ -113,7 +117,7 @@ TEST_CASE("forbidden pairs of states name their rule") {
   says(refused("Rb87 D2 F=1 m=1 -> F'=3 m'=2 sigma+"), "F may change by 0 or 1 only");
   says(refused("Rb87 D2 F=2 m=0 -> F'=2 m'=0 pi"), "m = 0 does not go to m' = 0 where F' = F");
   says(refused("Yb171+ 369 F=0 m=0 -> F'=0 m'=0 pi"), "F = 0 does not go to F' = 0");
-  says(refused("Rb87 D2 F=2 m=2 -> F'=3 m'=2 sigma+"), "sigma+ light changes m by +1");
+  says(refused("Rb87 D2 F=2 m=2 -> F'=3 m'=2 sigma+"), "sigma+ polarisation changes m by +1");
   says(refused("Rb87 D2 F=2 m=0 -> F'=3 m'=2"), "m may change by 0 or 1 only");
 }
 
@@ -123,6 +127,22 @@ TEST_CASE("another kind of transition needs no polarisation and has no electric 
   CHECK_FALSE(quadrupole.dipole_C_m);
   CHECK(*quadrupole.linewidth_hz == Approx(1.0 / (2.0 * 3.14159265358979 * 1.1649)).epsilon(1e-12));
   CHECK(resolved("Ca40+ 729 ->").frequency_hz == 411042129776400.4);
+}
+
+TEST_CASE("hyperfine transitions of a ground level have the electron's moment") {
+  // Rb-87 clock states: mu = (g_J - g_I) mu_B / 2 with g_J = 2.002 331 13, g_I = -0.000 995 14 (Steck, "Rubidium 87 D Line
+  // Data", from memory). Stretched F=1 m=1 to F'=2 m'=2: <1 1|S_-|2 2> over sqrt(2) = sqrt(3/8) by Clebsch-Gordan.
+  const auto clock = resolved("Rb87 hyperfine F=1 m=0 -> F'=2 m'=0");
+  CHECK(clock.polarisation == Polarisation::pi);
+  CHECK(*clock.magnetic_moment_J_T / constants::kBohrMagneton == Approx(0.5 * (2.00233113 + 0.00099514)).epsilon(1e-3));
+  const auto stretched = resolved("Rb87 hyperfine F=1 m=1 -> F'=2 m'=2 sigma+");
+  CHECK(*stretched.magnetic_moment_J_T / constants::kBohrMagneton ==
+        Approx(2.00233113 * std::sqrt(3.0 / 8.0)).epsilon(1e-3));
+  CHECK_FALSE(clock.dipole_C_m);
+  CHECK_FALSE(resolved("Rb87 hyperfine ->").magnetic_moment_J_T);
+  says(refused("Rb87 hyperfine F=2 m=0 -> F'=2 m'=0"),
+       "a magnetic-dipole transition is forbidden here: m = 0 does not go to m' = 0");
+  says(refused("Rb87 hyperfine F=1 m=-1 -> F'=2 m'=1"), "m may change by 0 or 1 only");
 }
 
 TEST_CASE("every recommended name resolves and can stand in a configuration") {
@@ -160,4 +180,32 @@ TEST_CASE("a line that cannot be used is refused") {
   auto clock = sr88_689();
   clock.upper = level("3P0", 0, -1);
   CHECK(check_line(clock).error().message.find("J = 0 does not go to J' = 0") != std::string::npos);
+}
+
+TEST_CASE("whatever is typed, a name that resolves has a sound moment and any other a full sentence") {
+  const std::string words[] = {"Rb87",   "Yb171+", "Sr88",   "Ca40+", "D2",     "369",  "689",   "nm",    "->",
+                               "F=2",    "F=0",    "m=2",    "m=0",   "m=-1/2", "F'=3", "F'=1",  "m'=3",  "m'=0",
+                               "m'=1/2", "sigma+", "sigma-", "pi",    "1S0",    "3P1",  "5S1/2", "5P3/2", "hyperfine",
+                               "=",      "m=",     "F'=x",   "m=99",  "\xff",   "'"};
+  const auto lines = all_lines();
+  std::mt19937 random(5771);
+  std::uniform_int_distribution<std::size_t> pick(0, std::size(words) - 1), length(0, 9);
+  int resolved_names = 0;
+  for (int i = 0; i < 40000; ++i) {
+    std::string name;
+    if (i % 2 == 0) name = i % 4 == 0 ? "Sr88 689 -> " : "Rb87 D2 F=2 m=2 -> ";
+    for (std::size_t count = length(random) / (i % 2 == 0 ? 3 : 1); count > 0; --count) name += words[pick(random)] + " ";
+    const auto found = resolve(name, lines);
+    INFO(name);
+    if (!found) {
+      REQUIRE(found.error().message.size() > 10);
+      continue;
+    }
+    ++resolved_names;
+    if (found->multipole != Multipole::electric_dipole) continue;
+    REQUIRE(*found->dipole_C_m > 0.0);
+    REQUIRE(*found->state_linewidth_hz <= *found->partial_linewidth_hz * (1.0 + 1e-12));
+    REQUIRE(*found->upper.twice_m - *found->lower.twice_m == 2 * static_cast<int>(*found->polarisation));
+  }
+  CHECK(resolved_names > 100);
 }
