@@ -1,0 +1,140 @@
+// SPDX-License-Identifier: Apache-2.0
+#include "plugin/cli/report.hpp"
+
+#include <array>
+#include <cmath>
+#include <utility>
+#include <vector>
+
+#include "model/quantity/format.hpp"
+#include "plugin/cli/layout.hpp"
+#include "plugin/wire/time.hpp"
+
+namespace halfturn::cli {
+
+namespace {
+
+constexpr std::array<std::pair<std::string_view, std::string_view>, 19> kNames = {{
+    {"rabi_hz", "Rabi frequency"},
+    {"rabi_mean_hz", "mean Rabi frequency"},
+    {"rabi_per_amplitude_hz", "Rabi frequency per amplitude"},
+    {"line_offset_hz", "line offset"},
+    {"decay_s", "decay time"},
+    {"dephasing_s", "dephasing time"},
+    {"loss_s", "loss time"},
+    {"envelope_s", "envelope, 1/e"},
+    {"contrast", "contrast"},
+    {"floor", "floor"},
+    {"rabi_spread", "spread of Rabi frequency"},
+    {"mean_phonons", "mean phonons"},
+    {"cloud_ratio", "cloud over waist"},
+    {"detuning_spread_hz", "spread of detuning"},
+    {"dead_time_s", "dead time"},
+    {"intensity_w_m2", "intensity"},
+    {"field_v_m", "peak field"},
+    {"saturation", "saturation I/Isat"},
+    {"power_w", "power"},
+}};
+
+/// Endings of fields and their units; the longer of two that fit stands first.
+constexpr std::array<std::pair<std::string_view, std::string_view>, 7> kUnits = {{
+    {"_w_m2", "W/m\u00b2"}, {"_v_m", "V/m"}, {"_hz", "Hz"}, {"_rad", "rad"}, {"_w", "W"}, {"_t", "T"}, {"_s", "s"}}};
+
+std::string interval(const wire::Estimate& estimate, const std::string& unit) {
+  if (!std::isfinite(estimate.low) || !std::isfinite(estimate.high)) return estimate.why;
+  return engineering(estimate.low, unit, 6) + " \u2026 " + engineering(estimate.high, unit, 6);
+}
+
+std::string percent(double fraction) { return std::isfinite(fraction) ? plain(100.0 * fraction, 3) + " %" : "unknown"; }
+
+std::string head(const wire::Fitted& scan, const Style& style) {
+  std::string text = style.strong(scan.scan_name.empty() ? "scan" : scan.scan_name) + ": " + style.verdict(scan.verdict);
+  if (!scan.drive.empty()) text += "  drive " + scan.drive;
+  if (scan.taken_at) text += "  taken " + wire::format_time(*scan.taken_at);
+  text += "\n";
+  for (const auto& reason : scan.reasons) text += wrapped(reason.text, "  " + reason.code + ": ");
+  for (const auto& assumed : scan.assumed) text += wrapped(assumed, "  assumed: ");
+  return text;
+}
+
+std::string estimates(const wire::Fitted& scan) {
+  std::vector<std::vector<std::string>> rows;
+  for (const auto& [field, estimate] : scan.estimates) {
+    const auto called = label(field);
+    if (std::isfinite(estimate.value))
+      rows.push_back({called.text, with_uncertainty(estimate.value, estimate.sigma, called.unit), interval(estimate, called.unit)});
+    else
+      rows.push_back({called.text, "none", estimate.why});
+  }
+  return table(rows, "  ");
+}
+
+std::string pulses(const wire::Fitted& scan, const Style& style) {
+  if (scan.pulses.empty()) return {};
+  std::vector<std::vector<std::string>> rows = {
+      {"pulse", "verdict", "angle", "in force", "proposed", "exact", "change", "rotation error"}};
+  for (const auto& [name, pulse] : scan.pulses)
+    rows.push_back({name, style.verdict(pulse.verdict), plain(pulse.angle_rad) + " rad", engineering(pulse.previous_s, "s"),
+                    engineering(pulse.length_s, "s"), with_uncertainty(pulse.exact_s, pulse.sigma_s, "s"), percent(pulse.change),
+                    engineering(pulse.rotation_error_rad, "rad", 3)});
+  return "\n" + table(rows, "  ");
+}
+
+std::string sites(const wire::Fitted& scan, const Style& style) {
+  if (scan.sites.empty()) return {};
+  std::vector<std::vector<std::string>> rows = {{"site", "verdict", "Rabi frequency", "reasons"}};
+  for (const auto& site : scan.sites) {
+    std::string rabi = "none", codes;
+    for (const auto& [field, estimate] : site.estimates)
+      if (field == "rabi_hz" && std::isfinite(estimate.value)) rabi = with_uncertainty(estimate.value, estimate.sigma, "Hz");
+    for (const auto& reason : site.reasons) codes += (codes.empty() ? "" : ", ") + reason.code;
+    rows.push_back({site.name, style.verdict(site.verdict), rabi, codes});
+  }
+  return "\n" + table(rows, "  ");
+}
+
+std::string dynamics(const wire::Fitted& scan) {
+  if (scan.dynamics.empty()) return {};
+  std::string text = scan.dynamics;
+  const char* separator = "; weights: ";
+  for (const auto& candidate : scan.candidates) {
+    text += separator + candidate.name + " " + plain(candidate.weight, 2);
+    separator = ", ";
+  }
+  return "\n" + wrapped(text, "  dynamics: ");
+}
+
+std::string quality(const wire::Fitted& scan) {
+  const auto& q = scan.quality;
+  std::string text = "deviance " + plain(q.deviance, 4) + " for " + plain(q.dof, 3) + " degrees of freedom, p = " +
+                     plain(q.p_value, 2) + "; " + plain(q.cycles, 3) + " cycles in " + std::to_string(q.points) + " points";
+  if (q.scatter > 1.0) text += "; the scatter has " + plain(q.scatter, 3) + " times the variance that the shots allow";
+  if (q.rival)
+    text += "; the next best frequency is " + engineering(q.rival->rabi_hz, "Hz") + ", worse by " +
+            plain(q.rival->deviance_above, 4) + " in deviance";
+  return wrapped(text, "  quality: ");
+}
+
+}  // namespace
+
+Label label(std::string_view field) {
+  Label label{std::string(field), {}};
+  for (const auto& [ending, unit] : kUnits)
+    if (field.size() > ending.size() && field.substr(field.size() - ending.size()) == ending) {
+      label.unit = unit;
+      break;
+    }
+  for (const auto& [name, text] : kNames)
+    if (name == field) label.text = text;
+  return label;
+}
+
+std::string report(const wire::Fitted& scan, const Style& style) {
+  std::string text = head(scan, style);
+  if (!scan.estimates.empty()) text += "\n" + estimates(scan);
+  text += pulses(scan, style) + sites(scan, style) + dynamics(scan);
+  if (scan.quality.points > 0) text += quality(scan);
+  return text;
+}
+
+}  // namespace halfturn::cli

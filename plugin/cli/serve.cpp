@@ -1,0 +1,65 @@
+// SPDX-License-Identifier: Apache-2.0
+#include "plugin/cli/serve.hpp"
+
+#include <spdlog/sinks/stdout_sinks.h>
+#include <spdlog/spdlog.h>
+
+#include <cstdlib>
+#include <memory>
+#include <utility>
+
+#include "plugin/cli/layout.hpp"
+#include "plugin/cli/version.hpp"
+#include "plugin/daemon/daemon.hpp"
+#include "plugin/log/sqlite_log.hpp"
+
+namespace halfturn::cli {
+
+namespace {
+
+constexpr std::string_view kCaution =
+    "Halfturn proposes settings and controls nothing. Limits and interlocks belong to the apparatus. Local safety rules and "
+    "the responsible laser-safety officer come first.";
+
+/// Lines such as `2026-02-03T04:05:06.789Z info red night-0041: apply, 125.34(12) kHz`, in UTC.
+std::shared_ptr<spdlog::logger> lines(const ServeOptions& options) {
+  auto logger = std::make_shared<spdlog::logger>("halfturn", std::make_shared<spdlog::sinks::stderr_sink_mt>());
+  logger->set_pattern("%Y-%m-%dT%H:%M:%S.%eZ %l %v", spdlog::pattern_time_type::utc);
+  logger->set_level(options.quiet ? spdlog::level::warn : options.verbose ? spdlog::level::debug : spdlog::level::info);
+  logger->flush_on(spdlog::level::trace);
+  return logger;
+}
+
+void print_faults(const config::Reading& reading, const std::string& file, std::ostream& err) {
+  for (const auto& each : reading.faults) err << config::to_text(each, file) << '\n';
+}
+
+}  // namespace
+
+Exit serve(const ServeOptions& options, Streams& streams) {
+  auto reading = config::read_file(options.config);
+  if (!reading.configuration) return print_faults(reading, options.config, streams.err), kBadInput;
+  if (!options.quiet) streams.err << wrapped(kCaution, "") << std::flush;
+
+  auto log = log::open(reading.configuration->log_path, log::Access::read_write);
+  if (!log) return print_fault(streams.err, "", log.error()), kFailed;
+
+  daemon::Options daemon_options;
+  daemon_options.configuration = std::make_shared<config::Configuration>(std::move(*reading.configuration));
+  daemon_options.log = std::move(*log);
+  daemon_options.version = kVersion;
+  daemon_options.lines = lines(options);
+  daemon_options.read_again = [file = options.config] { return config::read_file(file); };
+  daemon_options.configuration_name = options.config;
+  daemon_options.threads = options.threads;
+  daemon_options.signals = true;
+
+  daemon::Daemon daemon(std::move(daemon_options));
+  if (const auto started = daemon.start(); !started) return print_fault(streams.err, options.config, started.error()), kFailed;
+  const int status = daemon.run();
+  // A fit that outlasted the time to stop must not hold the exit; the log is as after the last commit.
+  if (daemon.in_flight() > 0) std::_Exit(status);
+  return static_cast<Exit>(status);
+}
+
+}  // namespace halfturn::cli

@@ -1,0 +1,72 @@
+// SPDX-License-Identifier: Apache-2.0
+#include <spdlog/spdlog.h>
+
+#include <utility>
+
+#include "plugin/daemon/daemon.hpp"
+#include "plugin/daemon/notify.hpp"
+
+/// What changes while the daemon runs: that it is to stop, and its configuration.
+namespace halfturn::daemon {
+
+namespace {
+
+constexpr int kFeedAtStop = 1000;  // what may have gathered in the feed's queue (its high-water mark)
+
+}  // namespace
+
+void Daemon::begin_stopping() {
+  if (stop_at_) return;
+  notify("STOPPING=1\nSTATUS=Answering what was accepted");
+  options_.lines->info("stopping: {} requests are still to be answered", in_flight_);
+  drain_feed();
+  stop_at_ = std::chrono::steady_clock::now() + options_.stop_within;
+  service_.set_stopping();
+  health_at_ = std::chrono::steady_clock::now();  // to be told at once
+}
+
+/// What has arrived on the feed was taken from its sender, so it is accepted before the door closes.
+void Daemon::drain_feed() {
+  sockets_->close_feed();
+  for (int i = 0; i < kFeedAtStop; ++i) {
+    auto incoming = sockets_->take_feed();
+    if (!incoming) return;
+    take_from_feed(std::move(*incoming));
+  }
+}
+
+void Daemon::take_new_configuration() {
+  if (!options_.read_again) return options_.lines->warn("this daemon was started without a file to read again");
+  notify("RELOADING=1");
+  auto reading = options_.read_again();
+  if (reading.configuration) {
+    trouble_.clear();
+    auto fresh = std::make_shared<config::Configuration>(std::move(*reading.configuration));
+    report_differences(*fresh);
+    configuration_ = fresh;
+    service_.configure(fresh);
+    options_.lines->info("the configuration was read again and is in force for requests from now on");
+  } else {
+    const auto& name = options_.configuration_name;
+    for (const auto& each : reading.faults) options_.lines->error("{}", config::to_text(each, name));
+    trouble_ = name + " has " + std::to_string(reading.faults.size()) +
+               " faults and was not taken; the earlier configuration stays in force. First: " +
+               config::to_text(reading.faults.front(), name);
+    options_.lines->error("the configuration is faulty and was not taken; the earlier one stays in force");
+  }
+  notify("READY=1\nSTATUS=Serving");
+}
+
+/// Sockets and the log are opened once; what a new configuration says of them waits for the next start.
+void Daemon::report_differences(const config::Configuration& fresh) {
+  const auto& a = options_.configuration->sockets;
+  const auto& b = fresh.sockets;
+  std::string changed;
+  if (a.requests != b.requests || a.feed != b.feed || a.results != b.results || a.display != b.display) changed = "sockets";
+  if (options_.configuration->log_path != fresh.log_path) changed += changed.empty() ? "log" : " and log";
+  if (changed.empty()) return;
+  trouble_ = "the configuration's " + changed + " changed: restart the daemon for that to take effect";
+  options_.lines->warn("{}", trouble_);
+}
+
+}  // namespace halfturn::daemon

@@ -1,0 +1,37 @@
+// SPDX-License-Identifier: Apache-2.0
+#include "plugin/daemon/scan_line.hpp"
+
+#include <cmath>
+#include <string_view>
+
+#include "model/quantity/format.hpp"
+
+namespace halfturn::daemon {
+
+namespace {
+
+/// Line scans are about the offset, all others about the coupling.
+std::string frequency(const wire::Fitted& scan) {
+  for (const std::string_view wanted : {"line_offset_hz", "rabi_hz"})
+    for (const auto& [name, estimate] : scan.estimates) {
+      if (name != wanted || !std::isfinite(estimate.value)) continue;
+      const auto text = with_uncertainty(estimate.value, estimate.sigma, "Hz");
+      return wanted == "rabi_hz" ? text : "line offset " + text;
+    }
+  return {};
+}
+
+}  // namespace
+
+std::string scan_line(const wire::Fitted& scan) {
+  std::string line = (scan.drive.empty() ? "(no drive)" : scan.drive) + " " + scan.scan_name + ": " + scan.verdict;
+  if (const auto found = frequency(scan); !found.empty()) line += ", " + found;
+  const char* separator = "; ";
+  for (const auto& reason : scan.reasons) {
+    line += separator + reason.code;
+    separator = " ";
+  }
+  return line;
+}
+
+}  // namespace halfturn::daemon
