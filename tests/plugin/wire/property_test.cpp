@@ -49,7 +49,9 @@ Scan random_scan(Random& random) {
   scan.readout_kind = static_cast<ReadoutKind>(random.below(3));
   const std::size_t points = 1 + random.below(30), sites = random.below(4);
   for (std::size_t i = 0; i < points; ++i)
-    scan.axis.push_back(scan.axis_kind == AxisKind::detuning ? random.real(-1e5, 1e5) : random.coin() ? random.real(0, 1e-4) : double(i));
+    scan.axis.push_back(scan.axis_kind == AxisKind::detuning ? random.real(-1e5, 1e5)
+                        : random.coin()                      ? random.real(0, 1e-4)
+                                                             : double(i));
   for (std::size_t s = 0; s < sites; ++s) scan.sites.push_back(random.word() + std::to_string(s));
   for (std::size_t s = 0; s < std::max<std::size_t>(sites, 1); ++s) {
     scan.observed.emplace_back(), scan.weight.emplace_back();
@@ -134,7 +136,8 @@ TEST_CASE("random bytes and mutations are requests or faults") {
     const std::string whole = encode_request(random_fit(random), random.coin() ? Encoding::json : Encoding::msgpack);
     for (int j = 0; j < 20; ++j) {
       std::string bytes = whole;
-      for (std::size_t k = 1 + random.below(3); k > 0; --k) bytes[random.below(bytes.size())] = static_cast<char>(random.engine());
+      for (std::size_t k = 1 + random.below(3); k > 0; --k)
+        bytes[random.below(bytes.size())] = static_cast<char>(random.engine());
       const Decoded decoded = decode(bytes);
       ++(decoded.request ? accepted : refused);
       if (!decoded.request) CHECK_FALSE(decoded.request.error().code.empty());

@@ -187,7 +187,8 @@ class Feed(_Socket):
         try:
             self._socket.send(pack({"proto": 1, "kind": kind, "id": id, **body}), zmq.DONTWAIT)
         except zmq.Again:
-            raise NoAnswer(f"the queue to {self.endpoint} is full: is the daemon running there? `halfturn status` says so", id) from None
+            raise NoAnswer(f"the queue to {self.endpoint} is full: is the daemon running there? "
+                           "`halfturn status` says so", id) from None
         return id
 
 
@@ -203,9 +204,9 @@ class Results(_Socket):
     def subscribe(self, drive=None, topics=None, timeout_s=None):
         """Yields (topic, message) for ever, or until nothing came for `timeout_s`.
 
-        With `drive`, what concerns that drive (`live/`, `fitted/`, `drift/`) and `rejected/`; without, everything; `topics` says the prefixes itself.
-        A message that was seen before is left out; a gap in the sequence adds to `lost`. A new start of the daemon (`boot`) is no
-        loss. "fitted/..." messages are Fitted.
+        With `drive`, what concerns that drive (`live/`, `fitted/`, `drift/`) and `rejected/`; without, everything; `topics` says
+        the prefixes itself. A message that was seen before is left out; a gap in the sequence adds to `lost`. A new start of the
+        daemon (`boot`) is no loss. "fitted/..." messages are Fitted.
         """
         if topics is None:
             topics = [""] if drive is None else [f"live/{drive}/", f"fitted/{drive}/", f"drift/{drive}/", "rejected/"]
