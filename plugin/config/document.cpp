@@ -26,7 +26,7 @@ class Builder : public YAML::EventHandler {
 
   void OnDocumentStart(const YAML::Mark& mark) override {
     if (++documents_ == 1) return;
-    refuse(mark, "found a second document, expected one: take the --- line out");
+    refuse(mark, "found a second document, or text behind the first, expected one document");
     throw Stop{};
   }
   void OnDocumentEnd() override {}

@@ -54,7 +54,7 @@ TEST_CASE("What YAML allows and a configuration must not have is found, all at o
   CHECK(faults("a: 1\nb: 2\na: 3\nb: 4\n") ==
         "f:3:1: a: found the key \"a\" a second time (first in line 1), expected it once\n"
         "f:4:1: b: found the key \"b\" a second time (first in line 2), expected it once\n");
-  CHECK(faults("a: 1\n---\nb: 2\n") == "f:2:1: found a second document, expected one: take the --- line out\n");
+  CHECK(faults("a: 1\n---\nb: 2\n") == "f:2:1: found a second document, or text behind the first, expected one document\n");
   CHECK(faults("a: &x 1\nb: *x\n") ==
         "f:1:4: a: found an anchor (&), expected the value alone\n"
         "f:2:4: b: found an alias (*), expected the value itself\n");
