@@ -29,7 +29,8 @@ long double factorial(int n) {
 long double binomial(int n, int k) {
   if (k < 0 || k > n) return 0.0L;
   long double value = 1.0L;
-  for (int i = 1; i <= std::min(k, n - k); ++i) value = value * static_cast<long double>(n - i + 1) / static_cast<long double>(i);
+  for (int i = 1; i <= std::min(k, n - k); ++i)
+    value = value * static_cast<long double>(n - i + 1) / static_cast<long double>(i);
   return value;
 }
 
@@ -37,7 +38,8 @@ long double sign_of(int exponent) { return exponent % 2 == 0 ? 1.0L : -1.0L; }
 
 /// (a+b-c)! (a-b+c)! (-a+b+c)! / (a+b+c+1)!, doubled arguments.
 long double triangle_squared(int a, int b, int c) {
-  return factorial((a + b - c) / 2) * factorial((a - b + c) / 2) * factorial((-a + b + c) / 2) / factorial((a + b + c) / 2 + 1);
+  return factorial((a + b - c) / 2) * factorial((a - b + c) / 2) * factorial((-a + b + c) / 2) /
+         factorial((a + b + c) / 2 + 1);
 }
 
 bool is_projection(int twice_j, int twice_m) { return std::abs(twice_m) <= twice_j && (twice_j - twice_m) % 2 == 0; }
@@ -74,8 +76,8 @@ double wigner_6j(int a, int b, int c, int d, int e, int f) {
     sum += sign_of(t) * binomial(t + 1, t - abc) * binomial((a + b - c) / 2, t - dec) * binomial((b + c - a) / 2, t - aef) *
            binomial((c + a - b) / 2, t - dbf);
   }
-  const long double squared = triangle_squared(a, e, f) * triangle_squared(d, b, f) * triangle_squared(d, e, c) /
-                              triangle_squared(a, b, c);
+  const long double squared =
+      triangle_squared(a, e, f) * triangle_squared(d, b, f) * triangle_squared(d, e, c) / triangle_squared(a, b, c);
   return static_cast<double>(std::sqrt(squared) * sum);
 }
 
@@ -101,11 +103,12 @@ std::string half_text(int twice) {
 
 Result<int> read_half(std::string_view text, const std::string& where) {
   const auto wrong = [&] {
-    return fault("bad_value", where, "found '" + std::string(text) + "', expected a spin or projection such as 2, 3/2 or -1/2");
+    return fault("bad_value", where,
+                 "found '" + std::string(text) + "', expected a spin or projection such as 2, 3/2 or -1/2");
   };
   std::string_view digits = text;
+  if (digits.starts_with("+-")) return wrong();
   if (digits.starts_with('+')) digits.remove_prefix(1);
-  if (digits.starts_with('+')) return wrong();
   const bool is_half = digits.ends_with("/2");
   if (is_half) digits.remove_suffix(2);
   int value = 0;

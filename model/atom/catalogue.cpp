@@ -13,6 +13,14 @@ namespace halfturn::atom {
 namespace {
 
 const std::string kWhere = "transition";
+constexpr double kElectronG = 2.00231930436092;  // CODATA 2022, absolute value
+
+bool is_dipole(Multipole kind) { return kind == Multipole::electric_dipole || kind == Multipole::magnetic_dipole; }
+
+bool has_states(const Transition& made) {
+  const bool has_f = made.twice_I == 0 || (made.lower.twice_F && made.upper.twice_F);
+  return has_f && made.lower.twice_m && made.upper.twice_m;
+}
 
 void add_source(Transition& made, const std::optional<Quoted>& number) {
   if (!number) return;
@@ -22,7 +30,8 @@ void add_source(Transition& made, const std::optional<Quoted>& number) {
   }
 }
 
-Transition transition_of(const CatalogueLine& line, const LineNumbers& numbers, const Level& lower, const Level& upper, std::string name) {
+Transition transition_of(const CatalogueLine& line, const LineNumbers& numbers, const Level& lower, const Level& upper,
+                         std::string name) {
   Transition made;
   made.name = std::move(name);
   made.multipole = line.kind;
@@ -53,11 +62,27 @@ Result<void> check_complete(const Transition& made) {
   return fault("missing_field", kWhere, "'" + made.name + "' does not say " + what + ", which its dipole moment needs");
 }
 
+/// The angular part between the addressed states; they are complete.
+double factor_of_states(const Transition& made) {
+  const Level &lower = made.lower, &upper = made.upper;
+  return hyperfine_factor(made.twice_I, lower.twice_J, lower.twice_F.value_or(lower.twice_J), *lower.twice_m, upper.twice_J,
+                          upper.twice_F.value_or(upper.twice_J), *upper.twice_m);
+}
+
+/// The moment within one S1/2 level: g_J mu_B sqrt(J(J+1)) times the angular part, for the electron's spin alone. g_J of the
+/// alkalis is the electron's to 1.1e-4, and their nuclei add less than 6e-4 (Arimondo, Inguscio & Violino, Rev. Mod. Phys.
+/// 49, 31 (1977), tables of g factors; from memory).
+void set_magnetic_moment(Transition& made) {
+  if (made.lower.term != made.upper.term || made.lower.term.find('S') == std::string::npos || made.lower.twice_J != 1)
+    return;
+  made.angular_factor = factor_of_states(made);
+  made.magnetic_moment_J_T = kElectronG * constants::kBohrMagneton * std::sqrt(0.75) * std::abs(*made.angular_factor);
+  made.assumed.push_back("the moment is that of the electron's spin alone, good to 1e-3");
+}
+
 /// Fills what the addressed states of an electric-dipole line add.
 void set_states(const LineNumbers& numbers, Transition& made) {
-  const Level &lower = made.lower, &upper = made.upper;
-  made.angular_factor = hyperfine_factor(made.twice_I, lower.twice_J, lower.twice_F.value_or(lower.twice_J), *lower.twice_m,
-                                         upper.twice_J, upper.twice_F.value_or(upper.twice_J), *upper.twice_m);
+  made.angular_factor = factor_of_states(made);
   if (!numbers.reduced_dipole_C_m) return;
   const double size = std::abs(*made.angular_factor);
   made.dipole_C_m = size * numbers.reduced_dipole_C_m->value;
@@ -70,8 +95,10 @@ Result<void> check_name(const std::string& name) {
       name.front() != ' ' && name.back() != ' ') {
     return {};
   }
-  return fault("bad_value", "transitions", "found the name '" + name + "', expected words parted by single blanks, without comma, colon, "
-                                                                       "hash or double quote");
+  return fault("bad_value", "transitions",
+               "found the name '" + name +
+                   "', expected words parted by single blanks, without comma, colon, "
+                   "hash or double quote");
 }
 
 Result<void> check_names(const CatalogueLine& line) {
@@ -87,13 +114,15 @@ Result<void> check_names(const CatalogueLine& line) {
 Result<void> check_levels(const CatalogueLine& line) {
   for (const auto& [level, field] : {std::pair{&line.lower, "lower"}, std::pair{&line.upper, "upper"}}) {
     if (level->twice_J < 0 || level->twice_J > 12 || line.twice_I < 0 || line.twice_I > 12) {
-      return fault("bad_value", std::string("transitions.") + field, line.species + ": J and the nuclear spin must lie between 0 and 6");
+      return fault("bad_value", std::string("transitions.") + field,
+                   line.species + ": J and the nuclear spin must lie between 0 and 6");
     }
     if (level->parity && std::abs(*level->parity) == 1) continue;
-    return fault("missing_field", std::string("transitions.") + field, line.species + " " + level->term + ": a level needs its parity");
+    return fault("missing_field", std::string("transitions.") + field,
+                 line.species + " " + level->term + ": a level needs its parity");
   }
-  if (line.kind != Multipole::electric_dipole) return {};
-  return check_electric_dipole(line.lower, line.upper, line.twice_I, std::nullopt, "transitions");
+  if (!is_dipole(line.kind)) return {};
+  return check_dipole(line.kind, line.lower, line.upper, line.twice_I, std::nullopt, "transitions");
 }
 
 }  // namespace
@@ -106,12 +135,18 @@ Result<Transition> make_transition(const CatalogueLine& line, const Level& lower
   made.polarisation = polarisation;
   if (auto checked = check_level(made.lower, made.twice_I, "", kWhere); !checked) return tl::unexpected(checked.error());
   if (auto checked = check_level(made.upper, made.twice_I, "'", kWhere); !checked) return tl::unexpected(checked.error());
-  if (made.multipole != Multipole::electric_dipole) return made;
-  if (auto complete = check_complete(made); !complete) return tl::unexpected(complete.error());
-  auto allowed = check_electric_dipole(made.lower, made.upper, made.twice_I, polarisation, kWhere);
+  if (!is_dipole(made.multipole)) return made;
+  const bool is_electric = made.multipole == Multipole::electric_dipole;
+  if (auto complete = check_complete(made); is_electric && !complete) return tl::unexpected(complete.error());
+  auto allowed = check_dipole(made.multipole, made.lower, made.upper, made.twice_I, polarisation, kWhere);
   if (!allowed) return tl::unexpected(allowed.error());
+  if (!has_states(made)) return made;
   if (!made.polarisation) made.polarisation = static_cast<Polarisation>((*upper.twice_m - *lower.twice_m) / 2);
-  set_states(*numbers, made);
+  if (is_electric) {
+    set_states(*numbers, made);
+  } else {
+    set_magnetic_moment(made);
+  }
   return made;
 }
 
@@ -119,7 +154,8 @@ Result<void> check_line(const CatalogueLine& line) {
   if (auto checked = check_names(line); !checked) return checked;
   if (auto checked = check_levels(line); !checked) return checked;
   if (auto checked = check_consistency(line); !checked) return checked;
-  if (line.recommended.empty()) return fault("missing_field", "transitions.recommended", line.species + ": a line needs a full name to list");
+  if (line.recommended.empty())
+    return fault("missing_field", "transitions.recommended", line.species + ": a line needs a full name to list");
   for (const auto& name : line.recommended) {
     if (auto made = resolve(name, std::span(&line, 1)); !made) return tl::unexpected(made.error());
   }

@@ -15,37 +15,37 @@ namespace halfturn::atom {
 /// A number with its one-sigma uncertainty and where it was found.
 struct Quoted {
   double value = 0.0;
-  double sigma = 0.0;        // 0: exact
+  double sigma = 0.0;  // 0: exact
   std::string source{};
   Status status = Status::read;
-  bool computed = false;     // the source itself computed it from the line's lifetime: it must agree to the printed digit
+  bool computed = false;  // the source itself computed it from the line's lifetime: it must agree to the printed digit
 };
 
 struct CatalogueLine {
-  std::string species{};                    // `Rb87`, `Ca40+`
-  std::vector<std::string> labels{};        // one word each: `D2`, `689`
-  int twice_I = 0;                          // nuclear spin
+  std::string species{};              // `Rb87`, `Ca40+`
+  std::vector<std::string> labels{};  // one word each: `D2`, `689`
+  int twice_I = 0;                    // nuclear spin
   Multipole kind = Multipole::electric_dipole;
-  Level lower{}, upper{};                   // term, J, parity, S; no states
-  std::optional<Quoted> wavelength_m{};     // in vacuum; this or the frequency must be there
+  Level lower{}, upper{};                // term, J, parity, S; no states
+  std::optional<Quoted> wavelength_m{};  // in vacuum; this or the frequency must be there
   std::optional<Quoted> frequency_hz{};
-  std::optional<Quoted> lifetime_s{};       // of the upper level
-  std::optional<Quoted> linewidth_hz{};     // total, Gamma / 2 pi
-  std::optional<Quoted> branching{};        // part of the decay that goes to the lower level; 1 where nothing partial is given
+  std::optional<Quoted> lifetime_s{};    // of the upper level
+  std::optional<Quoted> linewidth_hz{};  // total, Gamma / 2 pi
+  std::optional<Quoted> branching{};     // part of the decay that goes to the lower level; 1 where nothing partial is given
   std::optional<Quoted> partial_linewidth_hz{};
-  std::optional<Quoted> partial_rate_per_s{};      // Einstein's A
-  std::optional<Quoted> reduced_dipole_ea0{};      // d_S = <J||er||J'> in Steck's normalisation
-  std::optional<Quoted> saturation_w_m2{};         // two-level form, pi h c Gamma^2 / (3 lambda^3 Gamma_partial)
-  std::vector<std::string> recommended{};          // full names of transitions in this line; the first is shown in lists
+  std::optional<Quoted> partial_rate_per_s{};  // Einstein's A
+  std::optional<Quoted> reduced_dipole_ea0{};  // d_S = <J||er||J'> in Steck's normalisation
+  std::optional<Quoted> saturation_w_m2{};     // two-level form, pi h c Gamma^2 / (3 lambda^3 Gamma_partial)
+  std::vector<std::string> recommended{};      // full names of transitions in this line; the first is shown in lists
   std::string note{};
 };
 
 /// What a line's numbers say together, each from the best that is stated.
 struct LineNumbers {
   Quoted frequency_hz{};
-  std::optional<Quoted> linewidth_hz{};          // total
+  std::optional<Quoted> linewidth_hz{};  // total
   std::optional<Quoted> partial_linewidth_hz{};
-  std::optional<Quoted> reduced_dipole_C_m{};    // of an electric-dipole line
+  std::optional<Quoted> reduced_dipole_C_m{};  // of an electric-dipole line
 };
 Result<LineNumbers> numbers_of(const CatalogueLine& line);
 
@@ -60,7 +60,9 @@ Result<void> check_consistency(const CatalogueLine& line);
 Result<void> check_line(const CatalogueLine& line);
 
 /// The transition between two states of a line. Both states complete (F where the nucleus has spin, m); lines of another
-/// kind than electric dipole may leave states and polarisation open. Faults: `missing_field`, and those of the rules.
+/// kind than electric dipole may leave states and polarisation open. Between complete hyperfine states of one S1/2 level a
+/// magnetic-dipole transition gets its moment, that of the electron's spin (accuracy 1e-3; of the component of the field
+/// that drives it). Faults: `missing_field`, and those of the rules.
 Result<Transition> make_transition(const CatalogueLine& line, const Level& lower, const Level& upper,
                                    std::optional<Polarisation> polarisation, std::string name);
 

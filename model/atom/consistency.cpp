@@ -122,14 +122,16 @@ std::optional<Predicted> predict_dipole_ea0(const CatalogueLine& line) {
   auto predicted = predict_partial(line);
   const auto numbers = numbers_of(line);
   if (!predicted || !numbers) return std::nullopt;
-  const double moment = reduced_dipole_C_m(numbers->frequency_hz.value, predicted->value, line.lower.twice_J, line.upper.twice_J);
+  const double moment =
+      reduced_dipole_C_m(numbers->frequency_hz.value, predicted->value, line.lower.twice_J, line.upper.twice_J);
   predicted->value = moment / kDipoleAtomicUnit;
   predicted->sigma *= 0.5;
   predicted->digit *= 0.5;
   return predicted;
 }
 
-/// pi h c Gamma^2 / (3 lambda^3 Gamma_partial); the relative sigma is that of the width (twice the total's less the partial's).
+/// pi h c Gamma^2 / (3 lambda^3 Gamma_partial); the relative sigma is that of the width (twice the total's less the
+/// partial's).
 std::optional<Predicted> predict_saturation(const CatalogueLine& line) {
   auto predicted = predict_partial(line);
   const auto numbers = numbers_of(line);
@@ -147,11 +149,15 @@ double branching_of(const CatalogueLine& line) {
 }
 
 Result<void> check_positive(const CatalogueLine& line) {
-  const std::pair<const char*, const std::optional<Quoted>*> all[] = {
-      {"wavelength_m", &line.wavelength_m}, {"frequency_hz", &line.frequency_hz}, {"lifetime_s", &line.lifetime_s},
-      {"linewidth_hz", &line.linewidth_hz}, {"branching", &line.branching}, {"partial_linewidth_hz", &line.partial_linewidth_hz},
-      {"partial_rate_per_s", &line.partial_rate_per_s}, {"reduced_dipole_ea0", &line.reduced_dipole_ea0},
-      {"saturation_w_m2", &line.saturation_w_m2}};
+  const std::pair<const char*, const std::optional<Quoted>*> all[] = {{"wavelength_m", &line.wavelength_m},
+                                                                      {"frequency_hz", &line.frequency_hz},
+                                                                      {"lifetime_s", &line.lifetime_s},
+                                                                      {"linewidth_hz", &line.linewidth_hz},
+                                                                      {"branching", &line.branching},
+                                                                      {"partial_linewidth_hz", &line.partial_linewidth_hz},
+                                                                      {"partial_rate_per_s", &line.partial_rate_per_s},
+                                                                      {"reduced_dipole_ea0", &line.reduced_dipole_ea0},
+                                                                      {"saturation_w_m2", &line.saturation_w_m2}};
   for (const auto& [field, number] : all) {
     if (!*number) continue;
     const double value = (*number)->value, sigma = (*number)->sigma;
@@ -161,16 +167,18 @@ Result<void> check_positive(const CatalogueLine& line) {
                      ", expected a finite number above 0 with a sigma of at least 0 and below the number");
   }
   if (!line.branching || line.branching->value <= 1.0) return {};
-  return fault("bad_value", "transitions.branching", line_name(line) + ": found " + plain(line.branching->value) +
-                                                         ", expected a fraction of at most 1");
+  return fault("bad_value", "transitions.branching",
+               line_name(line) + ": found " + plain(line.branching->value) + ", expected a fraction of at most 1");
 }
 
 Result<void> check_widths(const CatalogueLine& line) {
   const double branching = branching_of(line);
-  const Slip partial{branching, branching < 1.0 ? 0.2 * (1.0 - branching) : 0.0, "that looks like the partial width; the total is wanted"};
+  const Slip partial{branching, branching < 1.0 ? 0.2 * (1.0 - branching) : 0.0,
+                     "that looks like the partial width; the total is wanted"};
   const Slip angular{kTwoPi, 0.02, "that looks like the angular rate; divide it by 2 pi"};
   const Slip total{1.0 / branching, partial.width, "that looks like the total width; the partial one is wanted"};
-  if (auto checked = compare(line, "linewidth_hz", line.linewidth_hz, predict_total(line), std::initializer_list<Slip>{partial, angular});
+  if (auto checked = compare(line, "linewidth_hz", line.linewidth_hz, predict_total(line),
+                             std::initializer_list<Slip>{partial, angular});
       !checked) {
     return checked;
   }
@@ -190,13 +198,14 @@ Result<void> check_partial_below_total(const CatalogueLine& line) {
   const Quoted &total = *numbers->linewidth_hz, &partial = *numbers->partial_linewidth_hz;
   if (partial.value <= total.value + 3.0 * std::hypot(partial.sigma, total.sigma)) return {};
   return fault("bad_value", "transitions.partial_linewidth_hz",
-               line_name(line) + ": the decay to the lower level, " + engineering(partial.value, "Hz") + ", is more than the total, " +
-                   engineering(total.value, "Hz"));
+               line_name(line) + ": the decay to the lower level, " + engineering(partial.value, "Hz") +
+                   ", is more than the total, " + engineering(total.value, "Hz"));
 }
 
 Result<void> check_dipole(const CatalogueLine& line) {
   const double racah = std::sqrt(line.lower.twice_J + 1.0);
-  const Slip slips[] = {{racah, racah > 1.0 ? 0.05 : 0.0, "that looks like Racah's normalisation, sqrt(2J+1) larger than Steck's"}};
+  const Slip slips[] = {
+      {racah, racah > 1.0 ? 0.05 : 0.0, "that looks like Racah's normalisation, sqrt(2J+1) larger than Steck's"}};
   return compare(line, "reduced_dipole_ea0", line.reduced_dipole_ea0, predict_dipole_ea0(line), slips);
 }
 
@@ -205,7 +214,8 @@ Result<void> check_saturation(const CatalogueLine& line) {
   const double width = branching < 1.0 ? 0.2 * (1.0 - branching) : 0.0;
   const Slip slips[] = {
       {1.0 / kPi, 0.05, "that looks like h nu Gamma / (3 lambda^2), pi smaller than the saturation intensity"},
-      {branching * branching, width, "that looks like the one of the partial width alone; it goes with total squared over partial"},
+      {branching * branching, width,
+       "that looks like the one of the partial width alone; it goes with total squared over partial"},
       {branching, width, "that looks like the one of the total width alone; it goes with total squared over partial"}};
   return compare(line, "saturation_w_m2", line.saturation_w_m2, predict_saturation(line), slips);
 }
@@ -218,7 +228,8 @@ Result<void> check_consistency(const CatalogueLine& line) {
   // n - 1 of air is 2.7e-4 to 3.3e-4 between 0.2 and 2 um (Peck & Reeder, J. Opt. Soc. Am. 62, 958 (1972)).
   const Slip air[] = {{1.0003, 4e-5, "that looks like c over the wavelength in air"},
                       {1.0 / 1.0003, 4e-5, "the stated wavelength looks like the one in air; the one in vacuum is wanted"}};
-  if (auto checked = compare(line, "frequency_hz", line.frequency_hz, predict_frequency(line), air); !checked) return checked;
+  if (auto checked = compare(line, "frequency_hz", line.frequency_hz, predict_frequency(line), air); !checked)
+    return checked;
   if (auto checked = check_widths(line); !checked) return checked;
   if (auto checked = check_partial_below_total(line); !checked) return checked;
   if (line.kind != Multipole::electric_dipole) return {};

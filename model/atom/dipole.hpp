@@ -12,7 +12,8 @@ double two_level_dipole_C_m(double frequency_hz, double linewidth_hz);
 double two_level_linewidth_hz(double frequency_hz, double dipole_C_m);
 
 /// d_S = <J||er||J'> in Steck's normalisation from the linewidth by decay J' -> J, in C m:
-/// Gamma = omega^3 / (3 pi epsilon_0 hbar c^3) (2J+1)/(2J'+1) d_S^2 (Steck, "Rubidium 87 D Line Data", section on lifetimes).
+/// Gamma = omega^3 / (3 pi epsilon_0 hbar c^3) (2J+1)/(2J'+1) d_S^2 (Steck, "Rubidium 87 D Line Data", section on
+/// lifetimes).
 double reduced_dipole_C_m(double frequency_hz, double partial_linewidth_hz, int twice_J, int twice_J_upper);
 
 /// The reverse, in Hz.

@@ -13,7 +13,9 @@ namespace {
 
 using namespace constants;
 
-std::string named(const Transition& transition) { return transition.name.empty() ? "the transition" : "'" + transition.name + "'"; }
+std::string named(const Transition& transition) {
+  return transition.name.empty() ? "the transition" : "'" + transition.name + "'";
+}
 
 std::string kind_of(const Transition& transition) {
   std::string words(name_of(transition.multipole));
@@ -28,9 +30,10 @@ Result<void> check_positive(double value, const std::string& field) {
 
 Result<double> dipole_of(const Transition& transition) {
   if (transition.dipole_C_m) return *transition.dipole_C_m;
-  return fault("not_available", "transition", named(transition) + " is of kind " + kind_of(transition) +
-                                                  " and states no dipole moment, so its Rabi frequency says nothing about intensity; "
-                                                  "state its moment to have one");
+  return fault("not_available", "transition",
+               named(transition) + " is of kind " + kind_of(transition) +
+                   " and states no dipole moment, so its Rabi frequency says nothing about intensity; "
+                   "state its moment to have one");
 }
 
 Result<double> linewidth_of(const Transition& transition) {
@@ -58,8 +61,8 @@ LightReport report_of(const Transition& transition, double rabi_hz, double dipol
 
 /// The report after `given` was checked, by way of the Rabi frequency that `to_rabi_hz` makes of it and the moment.
 template <class ToRabi>
-Result<LightReport> light_from(const Transition& transition, double given, const std::string& field, std::optional<double> waist_m,
-                               ToRabi to_rabi_hz) {
+Result<LightReport> light_from(const Transition& transition, double given, const std::string& field,
+                               std::optional<double> waist_m, ToRabi to_rabi_hz) {
   const auto dipole_C_m = dipole_of(transition);
   if (!dipole_C_m) return tl::unexpected(dipole_C_m.error());
   if (auto checked = check_positive(given, field); !checked) return tl::unexpected(checked.error());
@@ -123,10 +126,12 @@ Result<LightReport> light_from_pi_time_s(const Transition& transition, double pi
 }
 
 Result<LightReport> light_from_field_v_m(const Transition& transition, double field, std::optional<double> waist_m) {
-  return light_from(transition, field, "field_v_m", waist_m, [&](double dipole_C_m) { return rabi_hz_of_field(field, dipole_C_m); });
+  return light_from(transition, field, "field_v_m", waist_m,
+                    [&](double dipole_C_m) { return rabi_hz_of_field(field, dipole_C_m); });
 }
 
-Result<LightReport> light_from_intensity_w_m2(const Transition& transition, double intensity, std::optional<double> waist_m) {
+Result<LightReport> light_from_intensity_w_m2(const Transition& transition, double intensity,
+                                              std::optional<double> waist_m) {
   return light_from(transition, intensity, "intensity_w_m2", waist_m,
                     [&](double dipole_C_m) { return rabi_hz_of_field(field_of_intensity_v_m(intensity), dipole_C_m); });
 }
@@ -146,8 +151,10 @@ Result<LightReport> light_from_power_w(const Transition& transition, double powe
 
 Result<FluxReport> flux_from_rabi_hz(const Transition& transition, double rabi_hz) {
   if (!transition.magnetic_moment_J_T) {
-    return fault("not_available", "transition", named(transition) + " states no magnetic moment, so its Rabi frequency says nothing "
-                                                                    "about flux density; state the moment of the addressed states");
+    return fault("not_available", "transition",
+                 named(transition) +
+                     " states no magnetic moment, so its Rabi frequency says nothing "
+                     "about flux density; state the moment of the addressed states");
   }
   if (auto checked = check_positive(rabi_hz, "rabi_hz"); !checked) return tl::unexpected(checked.error());
   FluxReport report;

@@ -39,15 +39,15 @@ Result<double> two_level_saturation_intensity(const Transition& transition);
 
 struct LightReport {
   double rabi_hz = std::numeric_limits<double>::quiet_NaN();
-  double pi_time_s = std::numeric_limits<double>::quiet_NaN();         // 1 / (2 rabi_hz)
+  double pi_time_s = std::numeric_limits<double>::quiet_NaN();  // 1 / (2 rabi_hz)
   double field_v_m = std::numeric_limits<double>::quiet_NaN();
   double intensity_w_m2 = std::numeric_limits<double>::quiet_NaN();
-  std::optional<double> saturation{};                                  // I / Isat; none without a linewidth
+  std::optional<double> saturation{};  // I / Isat; none without a linewidth
   std::optional<double> saturation_intensity_w_m2{};
-  std::optional<double> power_w{};                                     // where a waist is given
+  std::optional<double> power_w{};  // where a waist is given
   double bloch_siegert_hz = std::numeric_limits<double>::quiet_NaN();
-  double rabi_over_carrier = std::numeric_limits<double>::quiet_NaN(); // Omega / omega_0; the rotating wave wants << 1
-  double dipole_c_m = std::numeric_limits<double>::quiet_NaN();        // of the addressed states
+  double rabi_over_carrier = std::numeric_limits<double>::quiet_NaN();  // Omega / omega_0; the rotating wave wants << 1
+  double dipole_c_m = std::numeric_limits<double>::quiet_NaN();         // of the addressed states
   double dipole_ea0 = std::numeric_limits<double>::quiet_NaN();
 };
 
@@ -56,8 +56,10 @@ struct LightReport {
 Result<LightReport> light_from_rabi_hz(const Transition& transition, double rabi_hz, std::optional<double> waist_m = {});
 Result<LightReport> light_from_pi_time_s(const Transition& transition, double pi_time_s, std::optional<double> waist_m = {});
 Result<LightReport> light_from_field_v_m(const Transition& transition, double field_v_m, std::optional<double> waist_m = {});
-Result<LightReport> light_from_intensity_w_m2(const Transition& transition, double intensity_w_m2, std::optional<double> waist_m = {});
-Result<LightReport> light_from_saturation(const Transition& transition, double saturation, std::optional<double> waist_m = {});
+Result<LightReport> light_from_intensity_w_m2(const Transition& transition, double intensity_w_m2,
+                                              std::optional<double> waist_m = {});
+Result<LightReport> light_from_saturation(const Transition& transition, double saturation,
+                                          std::optional<double> waist_m = {});
 Result<LightReport> light_from_power_w(const Transition& transition, double power_w, double waist_m);
 
 /// The same for a magnetic-dipole drive.

@@ -26,7 +26,7 @@ Quoted follow(const Quoted& from, double value, double exponent) {
 /// A value that follows from two numbers measured apart; sigma by quadrature.
 Quoted follow(const Quoted& a, double exponent_a, const Quoted& b, double exponent_b, double value) {
   Quoted made{value, std::abs(value) * std::hypot(exponent_a * relative(a), exponent_b * relative(b)), a.source,
-              std::max(a.status, b.status)};
+              std::max(a.status, b.status), a.computed || b.computed};
   if (b.source != a.source) made.source += "; " + b.source;
   return made;
 }
@@ -54,7 +54,8 @@ std::optional<Quoted> total_of(const CatalogueLine& line, const std::optional<Qu
   return std::nullopt;
 }
 
-std::optional<Quoted> partial_of(const CatalogueLine& line, const std::optional<Quoted>& total, const std::optional<Quoted>& stated) {
+std::optional<Quoted> partial_of(const CatalogueLine& line, const std::optional<Quoted>& total,
+                                 const std::optional<Quoted>& stated) {
   if (total && line.branching && (line.lifetime_s || line.linewidth_hz)) {
     return follow(*total, 1.0, *line.branching, 1.0, total->value * line.branching->value);
   }
@@ -66,7 +67,8 @@ std::optional<Quoted> partial_of(const CatalogueLine& line, const std::optional<
 
 Result<LineNumbers> numbers_of(const CatalogueLine& line) {
   if (!line.wavelength_m && !line.frequency_hz) {
-    return fault("missing_field", "transitions", line.species + " has a line with neither wavelength_m nor frequency_hz; one is needed");
+    return fault("missing_field", "transitions",
+                 line.species + " has a line with neither wavelength_m nor frequency_hz; one is needed");
   }
   LineNumbers numbers;
   numbers.frequency_hz = frequency_of(line);
@@ -74,8 +76,8 @@ Result<LineNumbers> numbers_of(const CatalogueLine& line) {
   numbers.linewidth_hz = total_of(line, stated);
   numbers.partial_linewidth_hz = partial_of(line, numbers.linewidth_hz, stated);
   if (line.kind != Multipole::electric_dipole || !numbers.partial_linewidth_hz) return numbers;
-  const double moment_C_m = reduced_dipole_C_m(numbers.frequency_hz.value, numbers.partial_linewidth_hz->value, line.lower.twice_J,
-                                               line.upper.twice_J);
+  const double moment_C_m = reduced_dipole_C_m(numbers.frequency_hz.value, numbers.partial_linewidth_hz->value,
+                                               line.lower.twice_J, line.upper.twice_J);
   numbers.reduced_dipole_C_m = follow(*numbers.partial_linewidth_hz, 0.5, numbers.frequency_hz, 1.5, moment_C_m);
   return numbers;
 }

@@ -13,10 +13,11 @@ namespace halfturn::atom {
 namespace {
 
 const std::string kWhere = "transition";
+constexpr std::size_t kLongestName = 200;  // twice what the longest one takes; keeps messages and edit distances small
 
 /// A name taken apart. An unprimed F or m after the arrow stays apart until the line is known.
 struct Parts {
-  std::string name{};  // with single blanks
+  std::string name{};                        // with single blanks
   std::string species{}, first{}, second{};  // first: label or lower term; second: upper term, empty after a label
   std::optional<int> twice_F{}, twice_m{}, twice_F_upper{}, twice_m_upper{};
   std::optional<int> loose_F{}, loose_m{};
@@ -86,7 +87,8 @@ Result<void> read_assignment(const std::string& word, bool is_after_arrow, Parts
   if (key == "F'") slot = &parts.twice_F_upper;
   if (key == "m'") slot = &parts.twice_m_upper;
   if (slot == nullptr) return wrong(parts, "found '" + word + "', expected F=, m=, F'= or m'=");
-  if (key.ends_with('\'') && !is_after_arrow) return wrong(parts, "found '" + word + "' before the arrow, expected it behind");
+  if (key.ends_with('\'') && !is_after_arrow)
+    return wrong(parts, "found '" + word + "' before the arrow, expected it behind");
   if (*slot) return wrong(parts, key + " is given twice");
   const auto value = read_half(std::string_view(word).substr(equals + 1), kWhere);
   if (!value) return wrong(parts, value.error().message + " after " + key + "=");
@@ -104,13 +106,19 @@ Result<void> read_word(const std::string& word, bool is_after_arrow, Parts& part
   }
   if (word == "nm" && !is_after_arrow && !parts.first.empty()) return {};
   std::string& slot = is_after_arrow ? parts.second : parts.species.empty() ? parts.species : parts.first;
-  if (!slot.empty()) return wrong(parts, "'" + word + "' was not understood behind '" + slot + "'; a polarisation is sigma-, pi or sigma+");
+  if (!slot.empty())
+    return wrong(parts, "'" + word + "' was not understood behind '" + slot + "'; a polarisation is sigma-, pi or sigma+");
   slot = word;
   return {};
 }
 
 Result<Parts> take_apart(std::string_view name, std::span<const CatalogueLine> lines) {
   Parts parts;
+  if (name.size() > kLongestName) {
+    return fault(
+        "bad_value", kWhere,
+        "found a name of " + std::to_string(name.size()) + " bytes, expected at most " + std::to_string(kLongestName));
+  }
   const auto words = words_of(name);
   parts.name = joined(words, " ");
   bool is_after_arrow = false;
@@ -122,8 +130,10 @@ Result<Parts> take_apart(std::string_view name, std::span<const CatalogueLine> l
     if (auto read = read_word(word, is_after_arrow, parts); !read) return tl::unexpected(read.error());
   }
   if (!is_after_arrow || parts.first.empty()) {
-    return wrong(parts, "expected SPECIES LINE [F=..] [m=..] -> [F'=..] [m'=..] POLARISATION, with a line's label or LOWER -> UPPER terms; " +
-                            near_names(parts.name, lines));
+    return wrong(parts,
+                 "expected SPECIES LINE [F=..] [m=..] -> [F'=..] [m'=..] POLARISATION, with a line's label or LOWER -> "
+                 "UPPER terms; " +
+                     near_names(parts.name, lines));
   }
   return parts;
 }
@@ -151,9 +161,10 @@ Result<const CatalogueLine*> find_line(const Parts& parts, std::span<const Catal
   if (found.size() == 1) return found.front();
   const std::string line = parts.second.empty() ? parts.first : parts.first + " -> " + parts.second;
   if (found.size() > 1) return wrong(parts, "the catalogue has more than one line " + line + " of " + parts.species);
-  if (of_species.empty()) return wrong(parts, "the catalogue has no species " + parts.species + "; " + near_names(parts.name, lines));
-  return wrong(parts, "the catalogue has no line " + line + " of " + parts.species + ", but " + joined(of_species, ", ") + "; " +
-                          near_names(parts.name, lines));
+  if (of_species.empty())
+    return wrong(parts, "the catalogue has no species " + parts.species + "; " + near_names(parts.name, lines));
+  return wrong(parts, "the catalogue has no line " + line + " of " + parts.species + ", but " + joined(of_species, ", ") +
+                          "; " + near_names(parts.name, lines));
 }
 
 bool has_one_f(const Level& level, int twice_I) { return twice_I == 0 || level.twice_J == 0; }
@@ -183,9 +194,11 @@ Result<void> settle_loose(const CatalogueLine& line, Parts& parts) {
 }
 
 /// F where there is only one; without nuclear spin a stated F is J itself and is dropped after a check.
-Result<void> settle_f(const Parts& parts, const Level& level, int twice_I, const std::string& prime, std::optional<int>& twice_F) {
+Result<void> settle_f(const Parts& parts, const Level& level, int twice_I, const std::string& prime,
+                      std::optional<int>& twice_F) {
   if (twice_I == 0) {
-    if (twice_F && *twice_F != level.twice_J) return wrong(parts, level.term + " has no hyperfine structure; leave F" + prime + " out");
+    if (twice_F && *twice_F != level.twice_J)
+      return wrong(parts, level.term + " has no hyperfine structure; leave F" + prime + " out");
     twice_F.reset();
     return {};
   }
@@ -195,7 +208,8 @@ Result<void> settle_f(const Parts& parts, const Level& level, int twice_I, const
 
 std::string choices(const Level& level, int twice_I) {
   std::vector<std::string> all;
-  for (int twice = std::abs(level.twice_J - twice_I); twice <= level.twice_J + twice_I; twice += 2) all.push_back(half_text(twice));
+  for (int twice = std::abs(level.twice_J - twice_I); twice <= level.twice_J + twice_I; twice += 2)
+    all.push_back(half_text(twice));
   return joined(all, " ");
 }
 
@@ -218,7 +232,8 @@ void settle_m(const CatalogueLine& line, Parts& parts) {
 
 Result<void> check_complete(const CatalogueLine& line, const Parts& parts) {
   if (line.kind != Multipole::electric_dipole) return {};
-  const std::string example = line.recommended.empty() ? "" : "; a full name of this line is '" + line.recommended.front() + "'";
+  const std::string example =
+      line.recommended.empty() ? "" : "; a full name of this line is '" + line.recommended.front() + "'";
   if (line.twice_I != 0 && !parts.twice_F) {
     return missing(parts, "F is missing; " + line.lower.term + " has F = " + choices(line.lower, line.twice_I) + example);
   }
@@ -242,7 +257,8 @@ Result<Transition> resolve(std::string_view name, std::span<const CatalogueLine>
   const auto found = find_line(*parts, lines);
   if (!found) return tl::unexpected(found.error());
   const CatalogueLine& line = **found;
-  if (auto settled = settle_f(*parts, line.lower, line.twice_I, "", parts->twice_F); !settled) return tl::unexpected(settled.error());
+  if (auto settled = settle_f(*parts, line.lower, line.twice_I, "", parts->twice_F); !settled)
+    return tl::unexpected(settled.error());
   if (auto settled = settle_loose(line, *parts); !settled) return tl::unexpected(settled.error());
   if (auto settled = settle_f(*parts, line.upper, line.twice_I, "'", parts->twice_F_upper); !settled) {
     return tl::unexpected(settled.error());

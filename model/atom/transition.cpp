@@ -22,7 +22,8 @@ constexpr std::array<std::pair<Status, std::string_view>, 3> kStatuses = {{
 }};
 
 template <class T, std::size_t N>
-Result<T> read_word(const std::array<std::pair<T, std::string_view>, N>& words, std::string_view text, const std::string& where) {
+Result<T> read_word(const std::array<std::pair<T, std::string_view>, N>& words, std::string_view text,
+                    const std::string& where) {
   std::string known;
   for (const auto& [value, word] : words) {
     if (word == text) return value;
@@ -43,7 +44,9 @@ std::string_view word_of(const std::array<std::pair<T, std::string_view>, N>& wo
 
 std::string_view name_of(Multipole multipole) { return word_of(kMultipoles, multipole); }
 
-Result<Multipole> read_multipole(std::string_view text, const std::string& where) { return read_word(kMultipoles, text, where); }
+Result<Multipole> read_multipole(std::string_view text, const std::string& where) {
+  return read_word(kMultipoles, text, where);
+}
 
 std::string_view name_of(Status status) { return word_of(kStatuses, status); }
 

@@ -27,12 +27,12 @@ enum class Polarisation { sigma_minus = -1, pi = 0, sigma_plus = +1 };
 enum class Status { read, quoted, recalled };
 
 struct Level {
-  std::string term;                // as in the catalogue: `5S1/2`, `3P1`
+  std::string term;  // as in the catalogue: `5S1/2`, `3P1`
   int twice_J = 0;
-  std::optional<int> twice_F{};    // hyperfine; none where the nucleus has no spin
-  std::optional<int> twice_m{};    // of F, or of J without hyperfine structure
-  std::optional<int> parity{};     // +1 even, -1 odd
-  std::optional<int> twice_S{};    // a change of spin forbids nothing; kept to be shown
+  std::optional<int> twice_F{};  // hyperfine; none where the nucleus has no spin
+  std::optional<int> twice_m{};  // of F, or of J without hyperfine structure
+  std::optional<int> parity{};   // +1 even, -1 odd
+  std::optional<int> twice_S{};  // a change of spin forbids nothing; kept to be shown
 };
 
 struct Transition {
@@ -51,9 +51,9 @@ struct Transition {
   Level lower{}, upper{};
   int twice_I = 0;
   std::optional<Polarisation> polarisation{};
-  std::vector<std::string> sources{};            // of the numbers used
-  Status status = Status::read;                  // the weakest of the numbers used
-  std::vector<std::string> assumed{};            // sentences: what was taken for granted
+  std::vector<std::string> sources{};  // of the numbers used
+  Status status = Status::read;        // the weakest of the numbers used
+  std::vector<std::string> assumed{};  // sentences: what was taken for granted
 };
 
 /// A transition by its numbers. Of wavelength and frequency one is needed. Then either a moment, or `linewidth_hz` (or
@@ -61,7 +61,7 @@ struct Transition {
 struct InlineTransition {
   std::string name{};
   Multipole multipole = Multipole::electric_dipole;
-  std::optional<double> wavelength_m{};         // vacuum
+  std::optional<double> wavelength_m{};  // vacuum
   std::optional<double> frequency_hz{};
   std::optional<double> linewidth_hz{};         // total, Gamma / 2 pi
   std::optional<double> lifetime_s{};           // of the upper level

@@ -15,16 +15,16 @@ void Checker::fail(std::string code, std::string where, std::string message) {
 }
 
 void Checker::allow_only(const FieldSet& allowed, const std::string& owner) {
-  std::vector<std::string_view> known;
-  for (std::size_t i = 0; i < kFields; ++i)
-    if (allowed.has(static_cast<Field>(i))) known.push_back(name(static_cast<Field>(i)));
+  std::string held;
+  for (std::size_t i = static_cast<std::size_t>(Field::id) + 1; i < kFields; ++i)
+    if (allowed.has(static_cast<Field>(i)))
+      held += (held.empty() ? "`" : ", `") + std::string(name(static_cast<Field>(i))) + "`";
   for (const Entry& entry : values_.entries()) {
     if (allowed.has(entry.field)) continue;
     const std::string found(name(entry.field));
     const bool in_scan = allowed.has(Field::scan) && field_named(found, Map::scan);
-    const std::string advice = in_scan ? "it belongs inside `scan`"
-                                       : "the nearest field that does is `" + std::string(nearest(found, known)) + "`";
-    fail("unknown_field", place(entry.field), "`" + found + "` does not belong to " + owner + "; " + advice);
+    fail("unknown_field", place(entry.field), "`" + found + "` does not belong to " + owner + "; " +
+             (in_scan ? "it belongs inside `scan`" : "expected " + (held.empty() ? "nothing more" : "none but " + held)));
   }
 }
 
@@ -62,7 +62,8 @@ std::string Checker::printable(Field field, std::size_t most) {
   const Value* value = find(field);
   if (value == nullptr) return {};
   if (is_printable(value->text, most)) return value->text;
-  fail("bad_value", place(field), "found " + in_quotes(value->text) + ", expected 1 to " + std::to_string(most) + " printable characters");
+  fail("bad_value", place(field),
+       "found " + in_quotes(value->text) + ", expected 1 to " + std::to_string(most) + " printable characters");
   return {};
 }
 
