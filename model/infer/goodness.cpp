@@ -124,13 +124,15 @@ class Design {
   Eigen::LDLT<Matrix> factor_;
 };
 
+/// The half deviance of a point, with the expected information as it is, not bounded.
 PointLikelihood point(const Readout& readout, std::size_t i, double mean) {
-  switch (readout.kind) {
-    case Kind::binomial: return binomial(readout.observed[i], readout.weight[i], mean);
-    case Kind::gaussian: return gaussian(readout.observed[i], readout.weight[i], mean);
-    case Kind::poisson: return poisson(readout.observed[i], readout.weight[i], mean);
-  }
-  return {kNan, 0.0, 0.0};
+  const double observed = readout.observed[i], weight = readout.weight[i];
+  if (readout.kind == Kind::gaussian) return gaussian(observed, weight, mean);
+  const bool counts = readout.kind == Kind::binomial;
+  PointLikelihood out = counts ? binomial(observed, weight, mean) : poisson(observed, weight, mean);
+  const double variance = counts ? mean * (1.0 - mean) : mean;
+  out.information = out.information > 0.0 && variance > 0.0 ? weight / variance : 0.0;
+  return out;
 }
 
 void judge(Goodness& out, double used) {

@@ -69,12 +69,14 @@ class Search {
     return minimise_in_box(gradient, hessian, lower.cwiseMin(0.0), upper.cwiseMax(0.0), box);
   }
 
-  bool look(const Minimum& at, Local& local) const {
+  /// `last` is the point before, where there is one: its gradient tells of the curvature between.
+  bool look(const Minimum& at, Local& local, const Minimum* last = nullptr) const {
     local.hessian = at.information;
     for (Index i = 0; i < at.x.size(); ++i) {
       double& h = local.hessian(i, i);
       h = h > 0.0 ? h * (1.0 + 4.0 * std::numeric_limits<double>::epsilon()) : 1.0;
     }
+    if (last != nullptr) learn_curvature(at.x - last->x, at.gradient - last->gradient, local.hessian);
     BoxStep box;
     if (!follow(at, local.hessian, 0.0, box)) return false;
     const Vector slope = at.gradient + local.hessian * box.step;
@@ -83,7 +85,7 @@ class Search {
     local.root = std::sqrt(2.0 * std::max(at.value - local.promised - minimum_.value, 0.0));
     Vector carried;
     if (!solve_free(local.hessian, box.free, local.hessian.col(index_), carried)) return false;
-    local.curvature = at.information(index_, index_) - carried.dot(local.hessian.col(index_));
+    local.curvature = local.hessian(index_, index_) - carried.dot(local.hessian.col(index_));
     return true;
   }
 
@@ -100,6 +102,10 @@ class Search {
     Minimum at = minimum_, trial = minimum_;
     Local local;
     if (!look(at, local)) return std::nullopt;
+    // A minimum with a slope outward, or with nuisance parameters not at their best, promises something lower.
+    const double downhill = std::max(-local.slope, 0.0), reach = std::min(downhill / local.curvature, room_);
+    const double promised = downhill > 0.0 ? reach * (downhill - 0.5 * local.curvature * reach) : 0.0;
+    lowest_ = std::min(lowest_, at.value - local.promised - promised);
     while (true) {
       const double distance = width(at.x);
       if (local.root > 0.3 * target_ && !(local.slope > 0.0)) return std::nullopt;
@@ -115,6 +121,7 @@ class Search {
       }
       if (distance > 0.0) step = std::clamp(step, -0.7 * distance, (settled ? 30.0 : 2.0) * distance);
       step = std::min(step, room_ - distance);
+      if (step > 0.7 * (ceiling_ - distance)) step = 0.6 * (ceiling_ - distance);
       if (!advance_to(at, local, distance, step, trial)) return std::nullopt;
       at = trial;
     }
@@ -131,22 +138,41 @@ class Search {
   bool advance_to(const Minimum& at, Local& local, double distance, double step, Minimum& trial) {
     BoxStep box;
     Local there;
-    while (evaluations_ < options_.newton_evaluations) {
+    while (trials_++ < options_.newton_steps) {
       if (!follow(at, local.hessian, side_ * step, box)) return false;
       trial.x = (at.x + box.step).cwiseMax(bounds_.lower).cwiseMin(bounds_.upper);
       trial.x[index_] = distance + step >= room_ ? (side_ > 0 ? bounds_.upper[index_] : bounds_.lower[index_])
                                                  : at.x[index_] + side_ * step;
-      double fraction = 0.3;
-      if (evaluate(trial) && look(trial, there)) {
+      double fraction = 0.5;
+      if (evaluate(trial) && look(trial, there, &at) && settle(local, trial, there)) {
         if (step <= 0.0 || there.root <= 1.5 * target_) {
           local = there;
           return true;
         }
         fraction = std::clamp((target_ - local.root) / (there.root - local.root), 0.2, 0.7);
       }
+      if (step > 0.0 && distance + step > 0.0) ceiling_ = std::min(ceiling_, distance + step);
       step *= fraction;
     }
     return false;
+  }
+
+  /// Where the nuisance parameters have strayed (the promise is no small part of the threshold, or does not shrink), they are
+  /// minimised in earnest at the trial's distance.
+  bool settle(const Local& before, Minimum& trial, Local& there) {
+    const double threshold = 0.5 * target_ * target_;
+    const bool shrinks = there.promised < 0.5 * before.promised || there.promised < 0.02 * threshold;
+    if (there.promised < 0.3 * threshold && shrinks) return true;
+    Bounds held = bounds_;
+    held.lower[index_] = held.upper[index_] = trial.x[index_];
+    SolverOptions solver;
+    solver.decrease_tolerance = 0.1 * options_.accuracy * threshold;
+    solver.max_evaluations = 30;
+    const int before_it = evaluations_;
+    trial = minimise(objective_, trial.x, held, solver);
+    evaluations_ = before_it + trial.evaluations;
+    lowest_ = std::min(lowest_, trial.value);
+    return trial.outcome == Outcome::converged && look(trial, there);
   }
 
   /// The square root of twice the profile's rise at a distance, minus its target. `near` is an optimum at another distance, and
@@ -235,6 +261,8 @@ class Search {
   double room_;
   double lowest_ = kInfinity;
   int evaluations_ = 0;
+  int trials_ = 0;
+  double ceiling_ = kInfinity;  // nearest distance known to lie beyond the threshold or the objective's domain
 };
 
 }  // namespace

@@ -91,6 +91,13 @@ TEST_CASE("the ends of the range, and points left out") {
   // One-sided limits.
   CHECK(binomial(0, 20, 1e-12).score == Approx(20.0));
   CHECK(binomial(20, 20, 1 - 1e-12).score == Approx(-20.0));
+  // The information towards the edge: that at half a count where the outcome was not seen, the expected one where it was.
+  CHECK(binomial(0, 20, 1e-9).information == Approx(20 / (0.5 / 21 * (1 - 0.5 / 21))));
+  CHECK(binomial(0, 20, 1e-9).information == binomial(0, 20, 0.0).information);
+  CHECK(binomial(20, 20, 1.0).information == Approx(binomial(0, 20, 0.0).information));
+  CHECK(binomial(1, 20, 1e-9).information == Approx(20e9));
+  CHECK(poisson(0, 5, 1e-9).information == poisson(0, 5, 0.0).information);
+  CHECK(poisson(0, 5, 2.0).information == Approx(2.5));
 }
 
 TEST_CASE("a whole scan is the sum of its points") {
