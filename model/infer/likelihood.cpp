@@ -16,13 +16,11 @@ constexpr PointLikelihood kRuledOut{kInfinity, 0.0, 0.0};
 double entropy(double k, double m) {
   if (k <= 0.0) return m;
   const double x = (m - k) / k;
-  if (std::abs(x) < 0.02) {
-    // x - log(1 + x) = x^2 (1/2 - x/3 + x^2/4 - ...); nine terms leave less than 0.02^9/11 < 1e-16 of the first.
-    double sum = 0.0;
-    for (int j = 10; j >= 2; --j) sum = 1.0 / j - x * sum;
-    return k * x * x * sum;
-  }
-  return k * (x - std::log1p(x));
+  if (std::abs(x) >= 0.02) return k * (x - std::log(m / k));
+  // x - log(1 + x) = x^2 (1/2 - x/3 + x^2/4 - ...); nine terms leave less than 0.02^9/11 < 1e-16 of the first.
+  double sum = 0.0;
+  for (int j = 10; j >= 2; --j) sum = 1.0 / j - x * sum;
+  return k * x * x * sum;
 }
 
 template <PointLikelihood (*point)(double, double, double)>

@@ -20,7 +20,8 @@ class Search {
   Search(const Objective& objective, const Minimum& minimum, Index index, double deviance, const Bounds& bounds,
          const ProfileOptions& options, int side)
       : objective_(objective), minimum_(minimum), bounds_(bounds), options_(options), index_(index), side_(side),
-        target_(std::sqrt(deviance)), room_(side > 0 ? bounds.upper[index] - minimum.x[index] : minimum.x[index] - bounds.lower[index]) {}
+        target_(std::sqrt(deviance)),
+        room_(side > 0 ? bounds.upper[index] - minimum.x[index] : minimum.x[index] - bounds.lower[index]) {}
 
   ProfileEnd run() {
     if (room_ <= 0.0) return end(Kind::bound, 0.0, minimum_.x);
@@ -39,6 +40,11 @@ class Search {
     Matrix hessian;
   };
 
+  /// The parameter at a distance, exactly on its bound from there on.
+  double position(double distance) const {
+    if (distance >= room_) return side_ > 0 ? bounds_.upper[index_] : bounds_.lower[index_];
+    return minimum_.x[index_] + side_ * distance;
+  }
   double width(const Vector& x) const { return side_ * (x[index_] - minimum_.x[index_]); }
 
   ProfileEnd end(Kind kind, double distance, const Vector& x) const {
@@ -47,9 +53,7 @@ class Search {
     out.evaluations = evaluations_;
     if (kind == Kind::open || kind == Kind::failed) return out;
     out.x = x;
-    out.at = minimum_.x[index_] + side_ * distance;
-    if (kind == Kind::bound) out.at = side_ > 0 ? bounds_.upper[index_] : bounds_.lower[index_];
-    out.x[index_] = out.at;
+    out.at = out.x[index_] = position(distance);
     return out;
   }
 
@@ -89,8 +93,9 @@ class Search {
     return true;
   }
 
-  /// How much further out the threshold should lie: by the parabola at the minimum, by the chord of the root where it is still
-  /// far from its target (the information may promise far less room than there is, as for no counts of n), and then by Newton.
+  /// How much further out the threshold should lie: by the parabola at the minimum, by the chord of the root where it is
+  /// still far from its target (the information may promise far less room than there is, as for no counts of n), and then
+  /// by Newton.
   double advance(const Local& local, double distance) const {
     if (local.root > 0.3 * target_) return local.root * (target_ - local.root) / local.slope;
     if (distance > 0.0) return distance * std::min(target_ / local.root - 1.0, 30.0);
@@ -127,22 +132,22 @@ class Search {
     }
   }
 
-  /// Whether one more step of Newton's needs no check: its error is about the square of the step. Beside an edge of the domain a
-  /// steep slope makes steps short far from the target, so the root must be near as well.
+  /// Whether one more step of Newton's needs no check: its error is about the square of the step. Beside an edge of the
+  /// domain a steep slope makes steps short far from the target, so the root must be near as well.
   bool close(const Local& local, double step, double distance) const {
     const double small = 0.2 * std::sqrt(options_.accuracy);
     return std::abs(step) <= small * distance && std::abs(local.root - target_) <= 3.0 * small * target_;
   }
 
-  /// Evaluates the point `step` further out, or nearer where the objective cannot be computed or the target is far overshot.
+  /// Evaluates the point `step` further out, or nearer where the objective cannot be computed or the target is far
+  /// overshot.
   bool advance_to(const Minimum& at, Local& local, double distance, double step, Minimum& trial) {
     BoxStep box;
     Local there;
     while (trials_++ < options_.newton_steps) {
       if (!follow(at, local.hessian, side_ * step, box)) return false;
       trial.x = (at.x + box.step).cwiseMax(bounds_.lower).cwiseMin(bounds_.upper);
-      trial.x[index_] = distance + step >= room_ ? (side_ > 0 ? bounds_.upper[index_] : bounds_.lower[index_])
-                                                 : at.x[index_] + side_ * step;
+      trial.x[index_] = position(distance + step);
       double fraction = 0.5;
       if (evaluate(trial) && look(trial, there, &at) && settle(local, trial, there)) {
         if (step <= 0.0 || there.root <= 1.5 * target_) {
@@ -157,8 +162,8 @@ class Search {
     return false;
   }
 
-  /// Where the nuisance parameters have strayed (the promise is no small part of the threshold, or does not shrink), they are
-  /// minimised in earnest at the trial's distance.
+  /// Where the nuisance parameters have strayed (the promise is no small part of the threshold, or does not shrink), they
+  /// are minimised in earnest at the trial's distance.
   bool settle(const Local& before, Minimum& trial, Local& there) {
     const double threshold = 0.5 * target_ * target_;
     const bool shrinks = there.promised < 0.5 * before.promised || there.promised < 0.02 * threshold;
@@ -175,8 +180,8 @@ class Search {
     return trial.outcome == Outcome::converged && look(trial, there);
   }
 
-  /// The square root of twice the profile's rise at a distance, minus its target. `near` is an optimum at another distance, and
-  /// then the one here. Where the way from there leads out of the objective's domain, it is walked in halves.
+  /// The square root of twice the profile's rise at a distance, minus its target. `near` is an optimum at another distance,
+  /// and then the one here. Where the way from there leads out of the objective's domain, it is walked in halves.
   double excess(double distance, Minimum& near, int halvings = 6) {
     const double from = width(near.x);
     Bounds held = bounds_;
@@ -184,7 +189,7 @@ class Search {
     BoxStep box;
     Local local;
     if (look(near, local) && follow(near, local.hessian, side_ * (distance - from), box)) x += box.step;
-    x[index_] = distance >= room_ ? (side_ > 0 ? bounds_.upper[index_] : bounds_.lower[index_]) : minimum_.x[index_] + side_ * distance;
+    x[index_] = position(distance);
     held.lower[index_] = held.upper[index_] = x[index_];
     SolverOptions solver;
     solver.decrease_tolerance = 0.02 * options_.accuracy * target_ * target_;
@@ -211,8 +216,8 @@ class Search {
     return std::min(distance, room_);
   }
 
-  /// Steps outward until the threshold is passed, then closes in by false position (the Illinois rule: M. Dowell, P. Jarratt,
-  /// BIT 11, 168 (1971)).
+  /// Steps outward until the threshold is passed, then closes in by false position (the Illinois rule: M. Dowell, P.
+  /// Jarratt, BIT 11, 168 (1971)).
   ProfileEnd bracketed() {
     Minimum inside = minimum_, at = minimum_;
     double low = 0.0, low_excess = -target_, high = guess();

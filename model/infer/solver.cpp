@@ -16,8 +16,8 @@ constexpr double kEpsilon = std::numeric_limits<double>::epsilon();
 constexpr double kRidge = 4.0 * kEpsilon;
 // Rounding in a sum of log likelihoods, relative: actual and promised decreases below it say nothing.
 constexpr double kNoise = 16.0 * kEpsilon;
-// Steps that promise less than this, in log likelihood, are short enough for gradients to tell of curvature: it halves the calls on
-// ENSO and MGH09 (second start), while learning on all steps lost the four Lanczos starts (solver_test).
+// Steps that promise less than this, in log likelihood, are short enough for gradients to tell of curvature: it halves the
+// calls on ENSO and MGH09 (second start), while learning on all steps lost the four Lanczos starts (solver_test).
 constexpr double kNear = 0.5;
 // A trust radius of 1e-8 conditional sigmas moves no parameter that anybody could tell: the search has stalled.
 constexpr double kSmallestRadius = 1e-8;

@@ -99,8 +99,8 @@ TEST_CASE("likelihood intervals of a proportion") {
   CHECK(evaluations <= 4 * ends);
 }
 
-// scipy.optimize: Nelder-Mead (xatol 1e-12) of the likelihood and of the profile's nuisance parameters from six starts, ends by
-// brentq (SciPy 1.10.1). In the second case the floor, at first a nuisance parameter, lies on its bound.
+// scipy.optimize: Nelder-Mead (xatol 1e-12) of the likelihood and of the profile's nuisance parameters from six starts,
+// ends by brentq (SciPy 1.10.1). In the second case the floor, at first a nuisance parameter, lies on its bound.
 TEST_CASE("profiles of a saturating rise") {
   struct Case {
     double floor_bound, value;
@@ -108,7 +108,9 @@ TEST_CASE("profiles of a saturating rise") {
   };
   const Case cases[] = {
       {-0.5, 0.8170894524179834, {0.87597911, 0.39271463, -0.0795182},
-       {{0.7073438958050824, 1.0521905534081066}, {0.1802607204666576, 0.6852652436349631}, {-0.22282647464318844, 0.07503135610715629}}},
+       {{0.7073438958050824, 1.0521905534081066},
+        {0.1802607204666576, 0.6852652436349631},
+        {-0.22282647464318844, 0.07503135610715629}}},
       {0.0, 1.3504537405221197, {0.84617283, 0.30300362, 0.0},
        {{0.6833814201673774, 1.1068540521689536}, {0.1539505576019102, 0.47660492362722023}, {0.0, 0.09597320864397421}}}};
   for (const Case& c : cases) {
@@ -119,7 +121,8 @@ TEST_CASE("profiles of a saturating rise") {
     CHECK(minimum.at_bound[2] == (c.floor_bound == 0.0 ? -1 : 0));
     for (int i = 0; i < 3; ++i) {
       const ProfileInterval found = profile_interval(kRise, minimum, i, kNinetyFive, bounds);
-      INFO("floor >= " << c.floor_bound << ", parameter " << i << ", evaluations " << found.low.evaluations << " and " << found.high.evaluations);
+      INFO("floor >= " << c.floor_bound << ", parameter " << i << ", evaluations " << found.low.evaluations
+                        << " and " << found.high.evaluations);
       CHECK(minimum.x[i] == Approx(c.at[i]).margin(2e-6));
       CHECK(std::abs(found.low.at - c.ends[i][0]) <= 1e-3 * (c.at[i] - c.ends[i][0]) + 1e-12);
       CHECK(std::abs(found.high.at - c.ends[i][1]) <= 1e-3 * (c.ends[i][1] - c.at[i]));
@@ -155,7 +158,8 @@ TEST_CASE("Newton's ends and bracketed ends agree on random scans") {
       for (int side = 0; side < 2; ++side) {
         const ProfileEnd& a = side ? quick.high : quick.low;
         const ProfileEnd& b = side ? sure.high : sure.low;
-        INFO("trial " << trial << " parameter " << i << " side " << side << " at " << minimum.x[i] << ": " << a.at << " " << b.at);
+        INFO("trial " << trial << " parameter " << i << " side " << side << " at "
+                      << minimum.x[i] << ": " << a.at << " " << b.at);
         CHECK(a.kind == b.kind);
         if (a.kind != b.kind || a.kind != Kind::reached) continue;
         CHECK(std::abs(a.at - b.at) <= 1e-3 * std::abs(b.at - minimum.x[i]));

@@ -83,7 +83,8 @@ const std::map<std::string, Model> kModels = {
     {"Gauss1", gauss},
     {"Gauss2", gauss},
     {"Gauss3", gauss},
-    {"Kirby2", [](const Parameters& b, long double x) { return (b[0] + b[1] * x + b[2] * x * x) / (1 + b[3] * x + b[4] * x * x); }},
+    {"Kirby2",
+     [](const Parameters& b, long double x) { return (b[0] + b[1] * x + b[2] * x * x) / (1 + b[3] * x + b[4] * x * x); }},
     {"Lanczos1", lanczos},
     {"Lanczos2", lanczos},
     {"MGH09", [](const Parameters& b, long double x) { return b[0] * (x * x + x * b[1]) / (x * x + x * b[2] + b[3]); }},
@@ -176,19 +177,22 @@ TEST_CASE("NIST StRD nonlinear regression") {
     for (const auto& start : set.starts) {
       SolverOptions options;
       options.decrease_tolerance = 1e-15;
-      const Minimum found = minimise(objective, Eigen::Map<const Eigen::VectorXd>(start.data(), n), Bounds::none(n), options);
+      const Vector from = Eigen::Map<const Eigen::VectorXd>(start.data(), n);
+      const Minimum found = minimise(objective, from, Bounds::none(n), options);
       const Eigen::MatrixXd inverse = Eigen::MatrixXd(found.information).inverse();
       const double points = static_cast<double>(set.x.size());
       double worst = 16, worst_deviation = 16;
       for (int i = 0; i < n; ++i) {
         worst = std::min(worst, digits(found.x[i], set.certified[i]));
-        worst_deviation = std::min(worst_deviation, digits(std::sqrt(inverse(i, i) * points / (points - n)), set.deviation[i]));
+        const double deviation = std::sqrt(inverse(i, i) * points / (points - n));
+        worst_deviation = std::min(worst_deviation, digits(deviation, set.deviation[i]));
       }
       const bool good = worst >= 6 && worst_deviation >= 4;
       passed += good;
       evaluations += found.evaluations;
       if (good) continue;
-      WARN(name << " from start " << 1 + (&start - set.starts) << " fails: parameters to " << worst << " digits, deviations to "
+      WARN(name << " from start " << 1 + (&start - set.starts) << " fails: parameters to "
+                << worst << " digits, deviations to "
                 << worst_deviation << ", after " << found.evaluations << " evaluations");
     }
   }
@@ -242,7 +246,9 @@ Cosine noisy_cosine(unsigned seed) {
   Cosine out;
   std::mt19937_64 random(seed);
   std::normal_distribution<double> noise(0.0, out.sigma);
-  for (int i = 0; i < 60; ++i) out.y.push_back(0.5 + 0.45 * std::exp(-0.15 * 0.1 * i) * std::cos(0.314 * i + 0.1) + noise(random));
+  for (int i = 0; i < 60; ++i) {
+    out.y.push_back(0.5 + 0.45 * std::exp(-0.15 * 0.1 * i) * std::cos(0.314 * i + 0.1) + noise(random));
+  }
   return out;
 }
 
