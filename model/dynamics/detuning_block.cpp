@@ -59,7 +59,8 @@ HALFTURN_INLINE void add(Sums& sums, const Amplitudes<Complex>& mode, double rat
 
 }  // namespace
 
-HALFTURN_CLONES void slow_roots(const Problem& p, DetuningBlock& block) {
+HALFTURN_CLONES void slow_roots(const Problem& problem, DetuningBlock& block) {
+  const Problem p = problem;  // a copy, which stores into the block cannot change
   const double w2 = p.rabi * p.rabi, g = p.coherence, k = p.leaving, half = 0.5 * p.loss;
   const double c0 = w2 * g * half, c3 = 2 * g + k;
   for (int i = 0; i < kBlock; ++i) {
@@ -76,7 +77,8 @@ HALFTURN_CLONES void slow_roots(const Problem& p, DetuningBlock& block) {
 }
 
 /// As coherence_root in roots.cpp: a distance y from s = -g, or from s = -k where the root lies nearer to it.
-HALFTURN_CLONES void second_roots(const Problem& p, DetuningBlock& block) {
+HALFTURN_CLONES void second_roots(const Problem& problem, DetuningBlock& block) {
+  const Problem p = problem;
   const double w2 = p.rabi * p.rabi, g = p.coherence, k = p.leaving, half = 0.5 * p.loss;
   const double end = g - k, middle = 0.5 * end;
   const double middle_ratio = (middle - g) * (middle - end) / (middle - g + half);
@@ -99,8 +101,11 @@ HALFTURN_CLONES void second_roots(const Problem& p, DetuningBlock& block) {
   }
 }
 
-/// `weight` is 1/(the error allowed) of a wanted row, else 0.
-HALFTURN_CLONES void sum_modes(const Problem& p, const double* weight, double t, DetuningBlock& block) {
+/// `weights` are 1/(the error allowed) of a wanted row, else 0.
+HALFTURN_CLONES void sum_modes(const Problem& problem, const double* weights, double t, DetuningBlock& block) {
+  const Problem p = problem;
+  double weight[kRowCount];
+  for (int row = 0; row < kRowCount; ++row) weight[row] = weights[row];
   const Numerator of = numerator(p);
   const double w2 = p.rabi * p.rabi, g = p.coherence, k = p.leaving, c0 = 0.5 * w2 * g * p.loss;
   const bool lossless = p.loss == 0;
@@ -133,7 +138,8 @@ HALFTURN_CLONES void sum_modes(const Problem& p, const double* weight, double t,
   }
 }
 
-HALFTURN_CLONES void undamped_block(const Problem& p, double t, DetuningBlock& block) {
+HALFTURN_CLONES void undamped_block(const Problem& problem, double t, DetuningBlock& block) {
+  const Problem p = problem;
   const double tilt = 1 - 2 * p.excited, w2 = p.rabi * p.rabi;
   for (int i = 0; i < kBlock; ++i) {
     const double d = block.detuning[i], f2 = w2 + d * d, f = std::sqrt(f2);

@@ -44,7 +44,9 @@ bool pose(const Rates& rates, const Start& start, Problem& problem);
 
 // What rounding leaves in a sum of modes is taken as the magnitudes of all terms in it, times this, times the largest
 // |root|/gap among the roots. It is held to a hundredth of the stated accuracy of populations and, with a scale of at least
-// 1e-3 of the longest length, to a tenth of that of derivatives. EVIDENCE
+// 1e-3 of the longest length, to a tenth of that of derivatives. Over the 2550 sets of dynamics_expm.py, which crowd around
+// double and triple roots, the largest errors are then 2.5e-12 of populations and 1.7e-10 of derivatives; with both limits
+// 10, 100, 1000 and 10000 times wider, those of derivatives are 2e-9, 3e-9, 8e-8 and 1e-6.
 inline constexpr double kAmplification = 8 * 2.220446049250313e-16;
 inline constexpr double kValueError = 1e-12;
 inline constexpr double kRateError = 1e-11;  // in units of the longest pulse length

@@ -148,7 +148,7 @@ void at_one(const Problem& problem, const Wanted& wanted, double t, double* valu
   }
 }
 
-/// Whether a block's vector code serves, and for which rows not: derivatives by a damping where there is none.
+/// Whether vector code serves: not for derivatives by a damping where there is none, nor for phases beyond its sine.
 bool block_serves(const Problem& problem, const Wanted& wanted, const DetuningBlock& block, double t) {
   if (problem.undamped && (wanted[kRateRow + kByDecay] || wanted[kRateRow + kByLoss] || wanted[kRateRow + kByDephasing]))
     return false;

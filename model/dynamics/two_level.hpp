@@ -19,7 +19,9 @@
 /// damping and at it, even and uneven grids: |population error| < 1e-10; |derivative error| < 1e-7 of its scale, where the
 /// scale of a derivative is its largest magnitude within the scan, but at least 1e-3 of the longest pulse length for a
 /// derivative by a rate (a rate is felt through rate*length), and at least 1e-3 of the largest rate for one by length.
-/// Both hold with room to spare (tests/model/dynamics). Beyond that range the phase limits: 4e-16 * rabi * length.
+/// Over 2550 random sets of that range the largest errors against SciPy's matrix exponential are 3e-12 and 2e-10
+/// (tests/model/dynamics/expm_test.cpp); over 25500 of another seed 8e-12 and 9e-10. Beyond it the rounding of the phase
+/// limits: 4e-16 * rabi * length.
 namespace halfturn::dynamics {
 
 struct Rates {
@@ -72,7 +74,8 @@ enum class Status : unsigned char { ok, not_finite };
 /// or empty for none. The effective length is length - dead time; below 0 it counts as 0, and by_length is then 0.
 /// by_length is the derivative by the effective length, so d/d(dead time) = -by_length.
 /// `status` has one entry a set; every span that is not empty has batch*points entries.
-/// A grid even to 2 ulp of its longest length is evaluated by a recurrence, which adds less than 1e-12.
+/// A grid even to 2 ulp of its longest length is evaluated by a recurrence, which adds less than 1e-12 to populations, and to
+/// derivatives in units of their scale, up to a phase of 1000 rad, and 1e-15 of the phase beyond.
 void duration_scan(std::span<const Rates> batch, const Start& start, std::span<const double> length_s,
                    std::span<const double> dead_time_s, const Derivatives& out, std::span<Status> status, Workspace& workspace);
 
@@ -80,7 +83,8 @@ void duration_scan(std::span<const Rates> batch, const Start& start, std::span<c
 /// Given: `detuning`, the axis (rad/s, any order), common to the batch; `Rates::detuning` is the line's offset on that axis,
 /// so the detuning at point k is detuning[k] - rates.detuning, and by_rate[kByDetuning] is the derivative by that offset
 /// (minus the derivative by detuning); `pulse_length_s`, one a set, the effective length (s; below 0 it counts as 0).
-/// Shapes, status and accuracy as for duration_scan.
+/// Shapes, status and accuracy as for duration_scan. Points are computed by vector code, and one by one, some ten times
+/// slower, where modes nearly meet (damping*length below about 1e-4 with derivatives by a damping; overdamped lines' centres).
 void detuning_scan(std::span<const Rates> batch, const Start& start, std::span<const double> detuning,
                    std::span<const double> pulse_length_s, const Derivatives& out, std::span<Status> status,
                    Workspace& workspace);

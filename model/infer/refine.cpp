@@ -38,6 +38,13 @@ double length_scale(const Problem& problem) {
   return problem.scan.kind == Axis::duration ? problem.sampling.span : problem.scan.pulse_length_s;
 }
 
+/// A fit that leaves its start by more than this many resolution elements has jumped to a mode that has, or does not deserve,
+/// a start of its own (fit_test, "every phase and frequency": a flop of 0.9 cycles ran to twice the sampling limit).
+bool strayed(const Problem& problem, const Physical& start, const Physical& end) {
+  if (problem.scan.kind == Axis::detuning) return false;
+  return std::abs(end.generalised - start.generalised) > kTwoPi * 1.5 / problem.sampling.span;
+}
+
 std::optional<Solution> refine(const Problem& problem, Dynamics candidate, const Physical& start, FitWorkspace& work) {
   const bool negative = start.contrast() < 0.0;
   const ScanObjective objective(problem.scan, problem.readout, problem.prior, candidate, {}, negative, work.objective);
@@ -50,6 +57,7 @@ std::optional<Solution> refine(const Problem& problem, Dynamics candidate, const
   if (!settled) return std::nullopt;
   solution.physical = objective.unpack(minimum.x);
   if (solution.physical.contrast() * start.contrast() < 0.0) return std::nullopt;  // crossed no contrast: no oscillation
+  if (strayed(problem, start, solution.physical)) return std::nullopt;
   solution.parameters = objective.layout().count;
   const double k = solution.parameters;
   const double n = problem.measured + (problem.scan.references ? 2 : 0);

@@ -101,6 +101,22 @@ Trial solve_trial(const Grid& g, double frequency, double damping) {
   return trial;
 }
 
+/// Moves signals that a linear solve put where no signal can be.
+void keep_signals_possible(Readout::Kind kind, Physical& start) {
+  if (kind == Readout::Kind::binomial) {
+    const double contrast = start.contrast();
+    start.signal_ground = std::clamp(start.signal_ground, 0.005, 0.995);
+    start.signal_excited = std::clamp(start.signal_excited, 0.005, 0.995);
+    // Both at one end: a contrast must be left, or the fit has nothing to hold on to.
+    if (start.signal_ground == start.signal_excited) start.signal_excited = start.signal_ground < 0.5 ? 0.5 : 0.5 * start.signal_ground;
+    if (contrast * start.contrast() < 0.0) std::swap(start.signal_ground, start.signal_excited);
+  } else if (kind == Readout::Kind::poisson) {
+    const double least = 1e-3 * std::max(std::abs(start.signal_ground), std::abs(start.signal_excited));
+    start.signal_ground = std::max(start.signal_ground, least);
+    start.signal_excited = std::max(start.signal_excited, least);
+  }
+}
+
 /// The start that a trial stands for, with the sign of the contrast asked for; false where priors rule it out.
 bool physical_from(const Trial& trial, bool negative, const ScanBatch& scan, const Prior& prior, Readout::Kind kind, Physical& out) {
   const auto& k = trial.coefficients;
@@ -135,15 +151,45 @@ bool physical_from(const Trial& trial, bool negative, const ScanBatch& scan, con
   }
   out.signal_ground = middle - sign * amplitude;
   out.signal_excited = out.signal_ground + contrast;
-  if (kind == Readout::Kind::binomial) {
-    out.signal_ground = std::clamp(out.signal_ground, 0.005, 0.995);
-    out.signal_excited = std::clamp(out.signal_excited, 0.005, 0.995);
-  } else if (kind == Readout::Kind::poisson) {
-    const double least = 1e-3 * std::max(std::abs(middle), amplitude);
-    out.signal_ground = std::max(out.signal_ground, least);
-    out.signal_excited = std::max(out.signal_excited, least);
-  }
+  keep_signals_possible(kind, out);
   return true;
+}
+
+/// Starts of less than two cycles, whose phase and amplitude a linear solve cannot tell apart: the dead time is held at its
+/// prior and only the two signals are solved for.
+std::size_t add_slow_starts(const ScanBatch& scan, const Prior& prior, Readout::Kind kind, const Sampling& sampling, std::span<Mode> modes,
+                            std::size_t found, const SearchWorkspace& work) {
+  for (const double cycles : {0.3, 0.5, 0.75, 1.0, 1.4}) {
+    if (found == modes.size()) break;
+    Mode mode;
+    auto& start = mode.start;
+    start.generalised = kTwoPi * cycles / sampling.span;
+    start.dead_time = prior.dead_time.mean;
+    double w1 = 0, p1 = 0, pp = 0, wy = 0, py = 0;
+    for (std::size_t i = 0; i < scan.points(); ++i) {
+      const double p = 0.5 - 0.5 * std::cos(start.generalised * std::max(0.0, scan.axis[i] - start.dead_time)), w = work.weight[i];
+      w1 += w;
+      p1 += w * p;
+      pp += w * p * p;
+      wy += w * work.value[i];
+      py += w * p * work.value[i];
+    }
+    const double determinant = w1 * pp - p1 * p1;
+    if (!(determinant > 1e-12 * w1 * pp)) continue;
+    double slope = (w1 * py - p1 * wy) / determinant;
+    start.signal_ground = (wy - slope * p1) / w1;
+    if (prior.start.prepared == dynamics::Prepared::excited) {
+      start.signal_ground += slope;
+      slope = -slope;
+    }
+    if (prior.contrast && slope * prior.contrast->mean < 0.0 && std::abs(prior.contrast->mean) > 6.0 * prior.contrast->sigma) continue;
+    start.signal_excited = start.signal_ground + slope;
+    if (slope != 0.0) {
+      keep_signals_possible(kind, start);
+      modes[found++] = mode;
+    }
+  }
+  return found;
 }
 
 /// Keeps the best trial within `width` of each other's frequency.
@@ -274,7 +320,8 @@ std::size_t duration_starts(const ScanBatch& scan, const Readout& readout, const
       if (found < modes.size() && physical_from(peak, negative, scan, prior, readout.kind, mode.start)) modes[found++] = mode;
     }
   }
-  return found;
+  const bool slow = found == 0 || peaks.front().frequency * sampling.span < 2.0 * kTwoPi;
+  return slow ? add_slow_starts(scan, prior, readout.kind, sampling, modes, found, work) : found;
 }
 
 std::size_t line_starts(const ScanBatch& scan, const Readout& readout, const Prior& prior, const Sampling& sampling,
@@ -365,14 +412,7 @@ std::size_t line_starts(const ScanBatch& scan, const Readout& readout, const Pri
                         modes[i].damped == mode.damped);
     if (known) continue;
     modes[found] = mode;
-    auto& s = modes[found++].start;
-    if (readout.kind == Readout::Kind::binomial) {
-      s.signal_ground = std::clamp(s.signal_ground, 0.005, 0.995);
-      s.signal_excited = std::clamp(s.signal_excited, 0.005, 0.995);
-    } else if (readout.kind == Readout::Kind::poisson) {
-      s.signal_ground = std::max(s.signal_ground, 1e-3 * std::abs(s.signal_excited));
-      s.signal_excited = std::max(s.signal_excited, 1e-3 * std::abs(s.signal_ground));
-    }
+    keep_signals_possible(readout.kind, modes[found++].start);
   }
   return found;
 }

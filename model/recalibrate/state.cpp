@@ -8,9 +8,11 @@ namespace halfturn::recalibrate {
 namespace {
 
 constexpr double kNanosecondsAnHour = 3.6e12;
-// Weight of the newest innovation in the noise estimate: a change of pace is followed within about five scans
-// (state_test, "a ramp").
-constexpr double kForget = 0.2;
+// Weight of the newest innovation in the noise estimate: small enough that a quiet drive is averaged, large enough that a
+// ramp is followed (state_test).
+constexpr double kForget = 0.1;
+// An innovation beyond so many sigmas is believed at once: the walk was that much wider.
+constexpr double kSurprise = 3.0;
 // The walk's standard deviation before there are innovations to tell, in units of its floor.
 constexpr double kFirstNoise = 5.0;
 
@@ -21,6 +23,7 @@ void restart(Track& track, double value, double variance, const FitEvent& event)
   track.mean = value;
   track.variance = variance;
   track.noise = std::max(track.noise, first * first);
+  track.floor = event.noise_floor * event.noise_floor;
   track.at = event.at;
   ++track.accepted;
 }
@@ -32,10 +35,13 @@ void update(Track& track, const FitEvent& event) {
   const double floor = event.noise_floor * event.noise_floor;
   if (elapsed > 0.0) {
     // Scans minutes apart say little of an hour's noise each; a minute at least keeps one of them from saying everything.
-    const double seen = std::max(0.0, innovation * innovation - observed - track.variance) / std::max(elapsed, 1.0 / 60.0);
-    track.noise = std::max(floor, (1.0 - kForget) * track.noise + kForget * seen);
+    const double seen = (innovation * innovation - observed - track.variance) / std::max(elapsed, 1.0 / 60.0);
+    const double foreseen = observed + track.variance + std::max(floor, track.noise) * elapsed;
+    const bool surprise = innovation * innovation > kSurprise * kSurprise * foreseen;
+    track.noise = surprise ? seen : (1.0 - kForget) * track.noise + kForget * seen;
+    track.floor = floor;
   }
-  const double predicted = track.variance + track.noise * elapsed;
+  const double predicted = track.variance + track.hourly() * elapsed;
   const double gain = predicted / (predicted + observed);
   track.mean += gain * innovation;
   track.variance = (1.0 - gain) * predicted;
@@ -50,9 +56,11 @@ void confirm(Track& track, const Pending& pending, const FitEvent& event) {
 
 }  // namespace
 
+double Track::hourly() const { return std::max(floor, noise); }
+
 std::optional<infer::Known> Track::predict(Time when) const {
   if (accepted == 0) return std::nullopt;
-  return infer::Known{mean, std::sqrt(variance + noise * hours(at, when))};
+  return infer::Known{mean, std::sqrt(variance + hourly() * hours(at, when))};
 }
 
 void advance(State& state, const FitEvent& event) {

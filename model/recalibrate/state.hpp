@@ -52,8 +52,11 @@ struct AppliedEvent {
 struct Track {
   int accepted = 0;
   double mean = 0.0, variance = 0.0;
-  double noise = 0.0;              // variance an hour
+  double noise = 0.0;              // variance an hour as estimated; may be below 0 while the scans agree better than their errors
+  double floor = 0.0;              // and the least that is taken
   Time at = 0;
+
+  double hourly() const;           // variance an hour as taken
 
   /// Mean and standard deviation predicted for a time; a time before the last scan's counts as that. None before the first.
   std::optional<infer::Known> predict(Time when) const;

@@ -118,9 +118,12 @@ Result<Json> Client::request(const std::string& kind, Json body) {
   } catch (const Json::exception& problem) {
     return fault("bad_value", kind, std::string("the request cannot be written: ") + problem.what());
   }
-  return fault("no_answer", options.endpoint, "found no answer from " + options.endpoint + " in " + std::to_string(options.attempts) + " attempts of " +
-               std::to_string(options.timeout.count()) + " ms; is the daemon running there (halfturn serve)? The request may have arrived: "
-               "repeating it with the id " + id + " is safe");
+  return fault("no_answer", options.endpoint,
+               "found no answer from " + options.endpoint + " in " + std::to_string(options.attempts) + " attempts of " +
+                   std::to_string(options.timeout.count()) +
+                   " ms; is the daemon running there (halfturn serve)? The request may have arrived: "
+                   "repeating it with the id " +
+                   id + " is safe");
 }
 
 std::optional<std::uint64_t> LossCounter::see(const std::string& topic, const std::string& boot, std::uint64_t sequence) {
@@ -141,7 +144,8 @@ struct Subscriber::Wire {
   zmq::socket_t socket{context, zmq::socket_type::sub};
 };
 
-Subscriber::Subscriber(const std::string& endpoint, const std::vector<std::string>& prefixes) : wire_(std::make_unique<Wire>()) {
+Subscriber::Subscriber(const std::string& endpoint, const std::vector<std::string>& prefixes)
+    : wire_(std::make_unique<Wire>()) {
   try {
     wire_->socket.set(zmq::sockopt::linger, 0);
     for (const std::string& prefix : prefixes) wire_->socket.set(zmq::sockopt::subscribe, prefix);

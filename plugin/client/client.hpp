@@ -32,8 +32,8 @@ class Client {
   Client& operator=(Client&&) noexcept;
 
   /// Sends `body` (the request's fields apart from `proto`, `kind` and `id`) as one request and returns the reply. A reply
-  /// `error` is a Fault with its code, place and message. Without a reply in all attempts the Fault is `no_answer`; an endpoint
-  /// that is none is `bad_endpoint`. An `id` may be given in the body; otherwise each call has a new one.
+  /// `error` is a Fault with its code, place and message. Without a reply in all attempts the Fault is `no_answer`; an
+  /// endpoint that is none is `bad_endpoint`. An `id` may be given in the body; otherwise each call has a new one.
   Result<nlohmann::json> request(const std::string& kind, nlohmann::json body = nlohmann::json::object());
 
  private:

@@ -3,6 +3,7 @@
 
 #include <unistd.h>
 
+#include <atomic>
 #include <chrono>
 #include <cmath>
 #include <csignal>
@@ -17,15 +18,16 @@
 namespace halfturn::rehearse {
 namespace {
 
-volatile std::sig_atomic_t stop_requested = 0;
+std::atomic<bool> stop_requested = false;
+static_assert(std::atomic<bool>::is_always_lock_free, "a signal handler may touch nothing else");
 
-extern "C" void request_stop(int) { stop_requested = 1; }
+extern "C" void request_stop(int) { stop_requested = true; }
 
 /// Catches SIGINT and SIGTERM while it lives, each once: a second one ends the program at once.
 class StopSignals {
  public:
   StopSignals() {
-    stop_requested = 0;
+    stop_requested = false;
     struct sigaction action {};
     action.sa_handler = request_stop;
     action.sa_flags = static_cast<int>(SA_RESETHAND);
@@ -69,7 +71,7 @@ int run(const RehearseOptions& options, std::ostream& out, std::ostream& progres
     Progress line(progress, &progress == &std::cerr && isatty(STDERR_FILENO) == 1);
     return rehearse_night(options, ask, [&](const Moment& moment) {
       line.show(moment);
-      return stop_requested == 0;
+      return !stop_requested;
     });
   }();
   if (!night) {

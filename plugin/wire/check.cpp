@@ -17,7 +17,8 @@ void Checker::fail(std::string code, std::string where, std::string message) {
 void Checker::allow_only(const FieldSet& allowed, const std::string& owner) {
   std::string held;
   for (std::size_t i = static_cast<std::size_t>(Field::id) + 1; i < kFields; ++i)
-    if (allowed.has(static_cast<Field>(i))) held += (held.empty() ? "`" : ", `") + std::string(name(static_cast<Field>(i))) + "`";
+    if (allowed.has(static_cast<Field>(i)))
+      held += (held.empty() ? "`" : ", `") + std::string(name(static_cast<Field>(i))) + "`";
   for (const Entry& entry : values_.entries()) {
     if (allowed.has(entry.field)) continue;
     const std::string found(name(entry.field));
@@ -61,7 +62,8 @@ std::string Checker::printable(Field field, std::size_t most) {
   const Value* value = find(field);
   if (value == nullptr) return {};
   if (is_printable(value->text, most)) return value->text;
-  fail("bad_value", place(field), "found " + in_quotes(value->text) + ", expected 1 to " + std::to_string(most) + " printable characters");
+  fail("bad_value", place(field),
+       "found " + in_quotes(value->text) + ", expected 1 to " + std::to_string(most) + " printable characters");
   return {};
 }
 

@@ -12,7 +12,9 @@ namespace {
 using Rows = std::vector<std::vector<double>>;
 using Form = Value::Form;
 
-std::string plural(std::size_t count, const std::string& what) { return std::to_string(count) + " " + what + (count == 1 ? "" : "s"); }
+std::string plural(std::size_t count, const std::string& what) {
+  return std::to_string(count) + " " + what + (count == 1 ? "" : "s");
+}
 
 std::string points_of(const Scan& scan) {
   return plural(scan.axis.size(), "point") + " of `" + std::string(axis_name(scan.axis_kind)) + "`";
@@ -25,17 +27,21 @@ std::optional<ReadoutKind> readout_of(Checker& in) {
     if (!in.has(kObservedFields[k]) && !in.has(kWeightFields[k])) continue;
     if (found) {
       const Field other = in.has(kObservedFields[k]) ? kObservedFields[k] : kWeightFields[k];
-      in.fail("bad_shape", in.place(other), "found `" + std::string(name(other)) + "` beside another readout, expected one pair: "
-              "`counts` and `shots`, `signal` and `sigma`, or `photons` and `exposures`");
+      in.fail("bad_shape", in.place(other),
+              "found `" + std::string(name(other)) +
+                  "` beside another readout, expected one pair: "
+                  "`counts` and `shots`, `signal` and `sigma`, or `photons` and `exposures`");
       return std::nullopt;
     }
     found = static_cast<ReadoutKind>(k);
-    const std::string pair = "`" + std::string(name(kObservedFields[k])) + "` and `" + std::string(name(kWeightFields[k])) + "` come together";
+    const std::string pair =
+        "`" + std::string(name(kObservedFields[k])) + "` and `" + std::string(name(kWeightFields[k])) + "` come together";
     in.need(kObservedFields[k], pair);
     in.need(kWeightFields[k], pair);
   }
   if (!found)
-    in.fail("missing_field", in.place(Field::counts), "found no readout; send `counts` and `shots`, `signal` and `sigma`, or `photons` and `exposures`");
+    in.fail("missing_field", in.place(Field::counts),
+            "found no readout; send `counts` and `shots`, `signal` and `sigma`, or `photons` and `exposures`");
   return found;
 }
 
@@ -44,7 +50,8 @@ bool fits_axis(Checker& in, Field field, const Value& value, const Scan& scan) {
   for (std::size_t s = 0; s < value.rows.size(); ++s) {
     if (value.rows[s].size() == scan.axis.size()) continue;
     const std::string where = value.form == Form::rows ? in.place(field, s) : in.place(field);
-    in.fail("bad_shape", where, "found " + plural(value.rows[s].size(), "number") + ", expected one for each of the " + points_of(scan));
+    in.fail("bad_shape", where,
+            "found " + plural(value.rows[s].size(), "number") + ", expected one for each of the " + points_of(scan));
     return false;
   }
   return true;
@@ -59,12 +66,14 @@ bool take_observed(Checker& in, ScanPart part, Field field, Scan& scan) {
     return false;
   }
   if (part == ScanPart::whole && value.form == Form::rows && scan.sites.empty()) {
-    in.fail("bad_shape", in.place(field), "found a list of lists, expected one list of numbers; " + what + "[site][point] needs `sites`");
+    in.fail("bad_shape", in.place(field),
+            "found a list of lists, expected one list of numbers; " + what + "[site][point] needs `sites`");
     return false;
   }
   if (!scan.sites.empty() && (value.form != Form::rows || value.rows.size() != scan.sites.size())) {
     const std::string found = value.form == Form::rows ? plural(value.rows.size(), "row") : "one list of numbers";
-    in.fail("bad_shape", in.place(field), "found " + found + ", expected one list for each of the " + plural(scan.sites.size(), "site"));
+    in.fail("bad_shape", in.place(field),
+            "found " + found + ", expected one list for each of the " + plural(scan.sites.size(), "site"));
     return false;
   }
   if (value.rows.empty()) {
@@ -85,7 +94,8 @@ bool take_weight(Checker& in, Field field, Scan& scan) {
     return true;
   }
   if (value.form == Form::rows && value.rows.size() != rows) {
-    in.fail("bad_shape", in.place(field), "found " + plural(value.rows.size(), "row") + ", expected as many as observed, " + std::to_string(rows));
+    in.fail("bad_shape", in.place(field),
+            "found " + plural(value.rows.size(), "row") + ", expected as many as observed, " + std::to_string(rows));
     return false;
   }
   if (!fits_axis(in, field, value, scan)) return false;
@@ -129,7 +139,8 @@ void check_points(Checker& in, Scan& scan, Form observed_form, Form weight_form)
       const Wrong wrong = std::isnan(weight) ? Wrong{} : wrong_point(scan.readout_kind, observed, weight);
       if (!wrong.sentence.empty()) {
         const Field field = wrong.in_weight ? kWeightFields[k] : kObservedFields[k];
-        return in.fail("bad_value", point_place(in, field, wrong.in_weight ? weight_form : observed_form, s, p), wrong.sentence);
+        return in.fail("bad_value", point_place(in, field, wrong.in_weight ? weight_form : observed_form, s, p),
+                       wrong.sentence);
       }
       if (!std::isnan(observed) && !std::isnan(weight) && weight != 0) continue;
       observed = 0;
@@ -144,9 +155,11 @@ void check_readout(Checker& in, ScanPart part, Scan& scan) {
   const auto kind = readout_of(in);
   if (!kind || in.failed()) return;
   scan.readout_kind = *kind;
-  const Field observed = kObservedFields[static_cast<std::size_t>(*kind)], weight = kWeightFields[static_cast<std::size_t>(*kind)];
+  const Field observed = kObservedFields[static_cast<std::size_t>(*kind)],
+              weight = kWeightFields[static_cast<std::size_t>(*kind)];
   const Form observed_form = in.find(observed)->form, weight_form = in.find(weight)->form;
-  if (take_observed(in, part, observed, scan) && take_weight(in, weight, scan)) check_points(in, scan, observed_form, weight_form);
+  if (take_observed(in, part, observed, scan) && take_weight(in, weight, scan))
+    check_points(in, scan, observed_form, weight_form);
 }
 
 }  // namespace halfturn::wire

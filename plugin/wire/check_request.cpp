@@ -19,8 +19,8 @@ KindRow fields_of(Kind kind) {
     case Kind::begin: return {{Field::scan}, {Field::options}};
     case Kind::points:
       return {{Field::scan_name},
-              {Field::duration_s, Field::detuning_hz, Field::amplitude, Field::counts, Field::shots, Field::signal, Field::sigma,
-               Field::photons, Field::exposures, Field::at_s}};
+              {Field::duration_s, Field::detuning_hz, Field::amplitude, Field::counts, Field::shots, Field::signal,
+               Field::sigma, Field::photons, Field::exposures, Field::at_s}};
     case Kind::end: return {{Field::scan_name}, {Field::options}};
     case Kind::applied: return {{Field::drive}, {Field::applied_at, Field::pulses, Field::carrier_hz}};
     case Kind::history: return {{Field::drive}, {Field::since, Field::until, Field::limit}};
@@ -34,9 +34,11 @@ KindRow fields_of(Kind kind) {
 
 void check_kind_fields(Checker& in, Kind kind) {
   const KindRow row = fields_of(kind);
-  in.allow_only(FieldSet{Field::proto, Field::kind, Field::id} | row.required | row.optional, "a message `" + std::string(name(kind)) + "`");
+  in.allow_only(FieldSet{Field::proto, Field::kind, Field::id} | row.required | row.optional,
+                "a message `" + std::string(name(kind)) + "`");
   for (std::size_t i = 0; i < kFields; ++i)
-    if (row.required.has(static_cast<Field>(i))) in.need(static_cast<Field>(i), "a message `" + std::string(name(kind)) + "` holds it");
+    if (row.required.has(static_cast<Field>(i)))
+      in.need(static_cast<Field>(i), "a message `" + std::string(name(kind)) + "` holds it");
 }
 
 void take_scan(Values& values, const std::string& prefix, ScanPart part, std::optional<Fault>& fault, Request& request) {
@@ -51,8 +53,9 @@ void take_joint_scans(Checker& in, Request& request) {
   for (std::size_t i = 0; i < value.maps.size() && !in.failed(); ++i) {
     take_scan(value.maps[i], in.place(Field::scans, i), ScanPart::whole, in.fault(), request);
     if (request.scans[i].drive != request.scans[0].drive)
-      in.fail("bad_value", in.place(Field::scans, i) + ".drive", "found " + in_quotes(request.scans[i].drive) +
-              ", expected the drive of the first scan, " + in_quotes(request.scans[0].drive) + "; a joint fit is of one drive");
+      in.fail("bad_value", in.place(Field::scans, i) + ".drive",
+              "found " + in_quotes(request.scans[i].drive) + ", expected the drive of the first scan, " +
+                  in_quotes(request.scans[0].drive) + "; a joint fit is of one drive");
   }
 }
 
@@ -81,14 +84,17 @@ void take_options(Checker& in, Request& request) {
   options.overlay_points = inner.whole(Field::overlay_points, 0, 10'000);
   options.level = inner.any_number(Field::level);
   if (options.level && !(*options.level > 0.5 && *options.level < 0.9999))
-    in.fail("bad_value", "options.level", "found " + number_text(*options.level) + ", expected a number between 0.5 and 0.9999, such as 0.95");
+    in.fail("bad_value", "options.level",
+            "found " + number_text(*options.level) + ", expected a number between 0.5 and 0.9999, such as 0.95");
   Value* dynamics = inner.find(Field::dynamics);
   if (dynamics == nullptr) return;
   options.dynamics = std::move(dynamics->texts);
-  if (options.dynamics.empty()) in.fail("bad_shape", "options.dynamics", "found no names, expected at least one; leave it out for all");
+  if (options.dynamics.empty())
+    in.fail("bad_shape", "options.dynamics", "found no names, expected at least one; leave it out for all");
   for (std::size_t i = 0; i < options.dynamics.size(); ++i)
     if (!is_name(options.dynamics[i]))
-      in.fail("bad_value", inner.place(Field::dynamics, i), "found " + in_quotes(options.dynamics[i]) + ", expected the name of a candidate, such as \"decay\"");
+      in.fail("bad_value", inner.place(Field::dynamics, i),
+              "found " + in_quotes(options.dynamics[i]) + ", expected the name of a candidate, such as \"decay\"");
 }
 
 void take_pulses(Checker& in, Request& request) {
@@ -98,8 +104,11 @@ void take_pulses(Checker& in, Request& request) {
   if (value == nullptr) return;
   if (value->named.empty()) in.fail("bad_shape", "pulses", "found no pulses, expected at least one");
   for (const auto& [pulse, length] : value->named) {
-    if (!is_name(pulse)) in.fail("bad_value", "pulses", "found the pulse " + in_quotes(pulse) + ", expected a name of 1 to 48 of A-Z a-z 0-9 _ -");
-    if (!(length > 0)) in.fail("bad_value", "pulses." + pulse, "found " + number_text(length) + ", expected a number above 0");
+    if (!is_name(pulse))
+      in.fail("bad_value", "pulses",
+              "found the pulse " + in_quotes(pulse) + ", expected a name of 1 to 48 of A-Z a-z 0-9 _ -");
+    if (!(length > 0))
+      in.fail("bad_value", "pulses." + pulse, "found " + number_text(length) + ", expected a number above 0");
     request.pulses_s.emplace(pulse, length);
   }
 }

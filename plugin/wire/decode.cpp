@@ -19,8 +19,9 @@ using Problem = std::optional<Fault>;
 Problem size_problem(std::string_view bytes, const DecodeLimits& limits) {
   if (bytes.empty()) return Fault{"bad_encoding", "", "found an empty message, expected a MessagePack map or a JSON object"};
   if (bytes.size() <= limits.bytes) return std::nullopt;
-  return Fault{"too_large", "",
-               "found a message of " + std::to_string(bytes.size()) + " bytes, expected at most " + std::to_string(limits.bytes)};
+  return Fault{
+      "too_large", "",
+      "found a message of " + std::to_string(bytes.size()) + " bytes, expected at most " + std::to_string(limits.bytes)};
 }
 
 /// Reads all bytes into the sink; a fault that ended the reading.
@@ -35,12 +36,14 @@ Problem read(std::string_view bytes, Encoding encoding, Sink& sink) {
 Problem wrong_proto(const Values& values) {
   const Value* proto = values.find(Field::proto);
   if (proto == nullptr || proto->number == 1) return std::nullopt;
-  return Fault{"proto", "proto", "found " + number_text(proto->number) + ", expected 1, the only version that this program speaks"};
+  return Fault{"proto", "proto",
+               "found " + number_text(proto->number) + ", expected 1, the only version that this program speaks"};
 }
 
 Problem unknown_kind(const Values& values) {
   const Value* kind = values.find(Field::kind);
-  if (kind == nullptr || std::find(kKindNames.begin(), kKindNames.end(), kind->text) != kKindNames.end()) return std::nullopt;
+  if (kind == nullptr || std::find(kKindNames.begin(), kKindNames.end(), kind->text) != kKindNames.end())
+    return std::nullopt;
   return Fault{"unknown_kind", "kind", "found " + in_quotes(kind->text) + "; the nearest known kind is \"" +
                                            std::string(nearest(kind->text, kKindNames)) + "\""};
 }

@@ -34,8 +34,8 @@ struct Decoded {
 /// `bad_encoding`), a wrong `proto`, an unknown kind, then the first in the message. Memory stays below 40 times the bytes.
 Decoded decode_request(std::string_view bytes, const DecodeLimits& limits);
 
-/// The canonical MessagePack of a scan, which the log stores: fields in the order of the contract, absent ones left out, whole
-/// numbers as the shortest integer, others as 64-bit floats, a weight that is the same everywhere as one number.
+/// The canonical MessagePack of a scan, which the log stores: fields in the order of the contract, absent ones left out,
+/// whole numbers as the shortest integer, others as 64-bit floats, a weight that is the same everywhere as one number.
 std::string encode_scan(const Scan& scan);
 
 /// Reads what encode_scan wrote (and any scan object of a `fit`): decode_scan(encode_scan(s)) equals s.

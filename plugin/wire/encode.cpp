@@ -60,7 +60,8 @@ std::string reply(const Rows& rows, Encoding encoding) {
 
 std::string reply(const Stored& stored, Encoding encoding) {
   const auto to = make_writer(encoding);
-  if (!transcribe(stored.message, *to, [](Writer& end) { end.field("replayed", true); })) return unreadable(stored.id, encoding);
+  if (!transcribe(stored.message, *to, [](Writer& end) { end.field("replayed", true); }))
+    return unreadable(stored.id, encoding);
   return to->take();
 }
 
@@ -72,7 +73,8 @@ void write_published(Writer& to, const Published& published) {
 }
 
 template <class Body>
-std::string published_message(const Published& published, std::string_view kind, const std::string& id, const Body& body, Encoding encoding) {
+std::string published_message(const Published& published, std::string_view kind, const std::string& id, const Body& body,
+                              Encoding encoding) {
   const auto to = make_writer(encoding);
   begin(*to, kind, id);
   write_published(*to, published);

@@ -7,11 +7,12 @@
 /// Replies and published messages to bytes, with the contract's names. Numbers that are not finite are null.
 namespace halfturn::wire {
 
-/// A reply in the encoding of its request. `Stored` is sent as it was stored, with `replayed: true`; the rows of `Rows` likewise
-/// without. A stored reply that cannot be read becomes an error `internal`.
+/// A reply in the encoding of its request. `Stored` is sent as it was stored, with `replayed: true`; the rows of `Rows`
+/// likewise without. A stored reply that cannot be read becomes an error `internal`.
 std::string encode(const Reply& reply, Encoding encoding);
 
-/// The form of a fitted reply that is stored and given out by `history`: MessagePack, without overlay and without `replayed`.
+/// The form of a fitted reply that is stored and given out by `history`: MessagePack, without overlay and without
+/// `replayed`.
 std::string encode_stored(const Fitted& fitted);
 
 /// Published messages: `boot`, `sequence` and `published_at` before the body. Errors are what `rejected/` carries.

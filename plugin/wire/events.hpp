@@ -10,7 +10,8 @@
 /// The one stream of events that both encodings are read into.
 namespace halfturn::wire {
 
-/// What a reader meets, in the order of the bytes. Each returns false to stop the reading. Views live until the call returns.
+/// What a reader meets, in the order of the bytes. Each returns false to stop the reading. Views live until the call
+/// returns.
 class Events {
  public:
   virtual ~Events() = default;
@@ -37,8 +38,8 @@ struct ReadEnd {
 /// Reads one MessagePack value that fills all the bytes. Keys that are no text stop as broken.
 ReadEnd read_msgpack(std::string_view bytes, Events& events);
 
-/// Reads one JSON value (RFC 8259) that fills all the bytes. A number too large for a double comes as an infinity and ends the
-/// reading.
+/// Reads one JSON value (RFC 8259) that fills all the bytes. A number too large for a double comes as an infinity and ends
+/// the reading.
 ReadEnd read_json(std::string_view bytes, Events& events);
 
 }  // namespace halfturn::wire

@@ -102,7 +102,8 @@ constexpr std::string_view name(Field field) { return row(field).name; }
 /// The field of that name in that map.
 constexpr std::optional<Field> field_named(std::string_view text, Map map) {
   for (std::size_t i = 0; i < kFields; ++i)
-    if ((kFieldTable[i].maps >> static_cast<unsigned>(map) & 1u) && kFieldTable[i].name == text) return static_cast<Field>(i);
+    if ((kFieldTable[i].maps >> static_cast<unsigned>(map) & 1u) && kFieldTable[i].name == text)
+      return static_cast<Field>(i);
   return std::nullopt;
 }
 

@@ -23,7 +23,8 @@ std::optional<Time> timestamp(const char* bytes, std::size_t size) {
     return time_from_parts(static_cast<std::int64_t>(both & 0x3FFFFFFFFull), static_cast<std::uint32_t>(both >> 34));
   }
   if (size == 12)
-    return time_from_parts(static_cast<std::int64_t>(big_endian(bytes + 4, 8)), static_cast<std::uint32_t>(big_endian(bytes, 4)));
+    return time_from_parts(static_cast<std::int64_t>(big_endian(bytes + 4, 8)),
+                           static_cast<std::uint32_t>(big_endian(bytes, 4)));
   return std::nullopt;
 }
 
@@ -36,7 +37,8 @@ class Visitor {
   bool visit_boolean(bool v) { return value() && events_.flag(v); }
   bool visit_positive_integer(std::uint64_t v) {
     if (!value()) return false;
-    if (v > static_cast<std::uint64_t>(std::numeric_limits<std::int64_t>::max())) return events_.number(static_cast<double>(v));
+    if (v > static_cast<std::uint64_t>(std::numeric_limits<std::int64_t>::max()))
+      return events_.number(static_cast<double>(v));
     return events_.integer(static_cast<std::int64_t>(v));
   }
   bool visit_negative_integer(std::int64_t v) { return value() && events_.integer(v); }

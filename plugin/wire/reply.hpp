@@ -11,8 +11,8 @@
 #include "model/quantity/result.hpp"
 #include "plugin/wire/request.hpp"
 
-/// Replies and published messages as plain structs. An optional member that is empty is left out of the message; a double that
-/// is not finite is written as null.
+/// Replies and published messages as plain structs. An optional member that is empty is left out of the message; a double
+/// that is not finite is written as null.
 namespace halfturn::wire {
 
 /// `{value, sigma, low, high}`, or `{value: null, why}` where there is no value. A value may have no symmetric error or no
@@ -35,7 +35,8 @@ struct Pulse {
   double angle_rad = 0, length_s = 0, exact_s = 0, sigma_s = 0, low_s = 0, high_s = 0;
   std::int64_t ticks = 0;
   double previous_s = 0, change = 0, rotation_error_rad = 0, tick_error_rad = 0, transfer = 0;
-  bool in_amplitude = false;  // `adjust: amplitude`: the members `_s` are relative drive amplitudes and are written `_amplitude`
+  bool in_amplitude =
+      false;  // `adjust: amplitude`: the members `_s` are relative drive amplitudes and are written `_amplitude`
 };
 
 struct Candidate {

@@ -59,7 +59,8 @@ struct Request {
   Encoding encoding = Encoding::msgpack;
   Kind kind = Kind::status;
   std::string id;
-  std::vector<Scan> scans;  // fit: `scan` (one) or `scans` (a joint fit, `joint` set); begin: the scan without data; points: the data
+  std::vector<Scan>
+      scans;  // fit: `scan` (one) or `scans` (a joint fit, `joint` set); begin: the scan without data; points: the data
   bool joint = false;
   std::string scan_name;    // points, end
   Options options;

@@ -101,7 +101,8 @@ bool Sink::null() {
   const Frame& top = frames_.back();
   const bool in_rows = top.level == Level::list && top.field && row(*top.field).shape == Shape::rows;
   if (in_rows) return list_number(std::numeric_limits<double>::quiet_NaN());
-  if (top.level == Level::map) return fail("bad_type", "found null, expected " + expected() + "; leave the field out where it has no value");
+  if (top.level == Level::map)
+    return fail("bad_type", "found null, expected " + expected() + "; leave the field out where it has no value");
   return wrong_type("null");
 }
 
@@ -146,7 +147,8 @@ bool Sink::text(std::string_view value) {
   Frame& top = frames_.back();
   if (top.level == Level::texts && !next_member(top.field == Field::sites ? limits_.sites : 100, "entries")) return true;
   if (value.size() > limits_.text)
-    return fail("too_large", "found a text of " + std::to_string(value.size()) + " bytes, expected at most " + std::to_string(limits_.text));
+    return fail("too_large", "found a text of " + std::to_string(value.size()) + " bytes, expected at most " +
+                                 std::to_string(limits_.text));
   if (!is_utf8(value)) return fail("bad_encoding", "found bytes that are no UTF-8, expected a text");
   if (top.level == Level::texts) {
     top.value->texts.emplace_back(value);
@@ -221,7 +223,8 @@ bool Sink::key(std::string_view key_name) {
   top.field = top.level == Level::map ? std::nullopt : top.field;
   top.name.clear();
   if (key_name.size() > limits_.text || !is_utf8(key_name))
-    return fail(key_name.size() > limits_.text ? "too_large" : "bad_encoding", "found a key that is too long or no UTF-8, expected the name of a field");
+    return fail(key_name.size() > limits_.text ? "too_large" : "bad_encoding",
+                "found a key that is too long or no UTF-8, expected the name of a field");
   return top.level == Level::map ? map_key(key_name) : named_key(key_name);
 }
 
@@ -264,7 +267,8 @@ bool Sink::open_list() {
   if (!enter()) return false;
   if (skim()) return true;
   Frame& top = frames_.back();
-  if (top.level == Level::list && top.count == 0 && row(*top.field).shape == Shape::rows && top.value->form == Value::Form::list) {
+  if (top.level == Level::list && top.count == 0 && row(*top.field).shape == Shape::rows &&
+      top.value->form == Value::Form::list) {
     top.level = Level::rows;  // a list that begins with a list is a list of rows
     top.value->form = Value::Form::rows;
     top.value->rows.clear();
@@ -285,7 +289,8 @@ bool Sink::open_list() {
       return true;
     }
     if (shape == Shape::texts || shape == Shape::maps) {
-      frames_.push_back({shape == Shape::texts ? Level::texts : Level::maps, Map::request, nullptr, top.field, begin_value(shape), {}, 0});
+      frames_.push_back(
+          {shape == Shape::texts ? Level::texts : Level::maps, Map::request, nullptr, top.field, begin_value(shape), {}, 0});
       return true;
     }
   }

@@ -12,9 +12,9 @@
 
 namespace halfturn::wire {
 
-/// Takes the events of both encodings and fills the known fields, checking names, types, limits, UTF-8, unique keys and finite
-/// numbers as they come. After a first fault it keeps no values but `proto`, `kind` and `id` of the request, so that the reply
-/// to a faulty request can carry its id.
+/// Takes the events of both encodings and fills the known fields, checking names, types, limits, UTF-8, unique keys and
+/// finite numbers as they come. After a first fault it keeps no values but `proto`, `kind` and `id` of the request, so that
+/// the reply to a faulty request can carry its id.
 class Sink : public Events {
  public:
   Sink(const DecodeLimits& limits, Map root);

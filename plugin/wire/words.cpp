@@ -95,7 +95,8 @@ std::size_t edit_distance(std::string_view one, std::string_view other) {
     for (std::size_t j = 1; j <= other.size(); ++j) {
       const std::size_t replaced = (*last)[j - 1] + (one[i - 1] == other[j - 1] ? 0 : 1);
       std::size_t best = std::min({(*last)[j] + 1, (*current)[j - 1] + 1, replaced});
-      if (i > 1 && j > 1 && one[i - 1] == other[j - 2] && one[i - 2] == other[j - 1]) best = std::min(best, (*before)[j - 2] + 1);
+      if (i > 1 && j > 1 && one[i - 1] == other[j - 2] && one[i - 2] == other[j - 1])
+        best = std::min(best, (*before)[j - 2] + 1);
       (*current)[j] = best;
     }
     std::swap(before, last);

@@ -96,6 +96,7 @@ void write_estimate(Writer& to, const Estimate& estimate) {
     to.field("high", estimate.high);
   }
   if (!estimate.why.empty()) to.field("why", estimate.why);
+  else if (!std::isfinite(estimate.value)) to.field("why", "not determined by this scan");
   to.close_map();
 }
 

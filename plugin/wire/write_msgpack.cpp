@@ -1,6 +1,7 @@
 // SPDX-License-Identifier: Apache-2.0
 #include "plugin/wire/write_msgpack.hpp"
 
+#include <bit>
 #include <msgpack.hpp>
 
 namespace halfturn::wire {
@@ -44,8 +45,11 @@ class MsgpackWriter : public BytesWriter {
 
  protected:
   void finite(double value) override {
+    // msgpack-c's pack_double writes whole numbers as integers; here a number is a float whatever its value.
     member();
-    packer_.pack_double(value);
+    const auto bits = std::bit_cast<std::uint64_t>(value);
+    buffer_.bytes += '\xcb';
+    for (int shift = 56; shift >= 0; shift -= 8) buffer_.bytes += static_cast<char>(bits >> shift & 0xff);
   }
 
  private:

@@ -6,7 +6,8 @@
 namespace halfturn::wire {
 
 /// Writes a scan as an object with the fields of the contract, in its order; absent ones are left out. Whole numbers are
-/// written as integers, a weight that is the same everywhere as one number, and one that is the same at every site as one list.
+/// written as integers, a weight that is the same everywhere as one number, and one that is the same at every site as one
+/// list.
 void write_scan(Writer& to, const Scan& scan);
 
 /// Writes a request's fields apart from `proto`, `kind` and `id` into the map that is open. `points` holds its data beside

@@ -59,7 +59,8 @@ void write_estimates(Writer& to, const std::vector<SiteFit>& sites) {
 }
 
 void write_pulse_columns(Writer& to, const std::vector<const Pulse*>& rows) {
-  const bool in_amplitude = std::any_of(rows.begin(), rows.end(), [](const Pulse* p) { return p != nullptr && p->in_amplitude; });
+  const bool in_amplitude =
+      std::any_of(rows.begin(), rows.end(), [](const Pulse* p) { return p != nullptr && p->in_amplitude; });
   const std::string unit = in_amplitude ? "_amplitude" : "_s";
   to.open_map();
   column(to, "verdict", rows, [&](const Pulse& p) { to.text(p.verdict); });

@@ -54,8 +54,8 @@ class BytesWriter : public Writer {
   virtual std::string take() = 0;  // the finished bytes; once
 };
 
-/// MessagePack: integers and texts in their shortest form, numbers as 64-bit floats. JSON: one line, no blanks, numbers in the
-/// fewest digits that read back to them, bytes that are no UTF-8 replaced by U+FFFD.
+/// MessagePack: integers and texts in their shortest form, numbers as 64-bit floats. JSON: one line, no blanks, numbers in
+/// the fewest digits that read back to them, bytes that are no UTF-8 replaced by U+FFFD.
 std::unique_ptr<BytesWriter> make_writer(Encoding encoding);
 
 }  // namespace halfturn::wire

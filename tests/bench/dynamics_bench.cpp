@@ -28,6 +28,7 @@ const std::vector<Case> kCases = {
     {"leak_detuned", {kRabi, 0.3 * kRabi, 1e4, 1e4, 0}, {kByRabi, kByDetuning, kByDecay, kByLoss}},
     {"everything", {kRabi, 0.3 * kRabi, 1e4, 1e4, 1e4}, {kByRabi, kByDetuning, kByDecay, kByLoss, kByDephasing}},
     {"critical", {5e3, 0, 2e4, 0, 0}, {kByRabi, kByDecay}},
+    {"known_lifetime", {kRabi, 0.3 * kRabi, 0.86, 0, 0}, {kByRabi, kByDetuning}},
     {"slightest_decay", {kRabi, 0, 1e-3, 0, 0}, {kByRabi, kByDecay}},
 };
 

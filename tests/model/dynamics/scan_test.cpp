@@ -32,7 +32,7 @@ double worst_difference(const std::vector<double>& a, const std::vector<double>&
 
 // The same lengths in another order are no even grid, so each point has its own exponentials.
 TEST_CASE("the recurrence of an even grid adds less than 1e-12") {
-  for (const Rates& rates : std::vector<Rates>{{1, 0, 0, 0, 0}, {1, 0.4, 0, 0, 0}, {1, 0.4, 0.01, 0.003, 0.02}, {0.1, 0, 1, 0.01, 0}})
+  for (const Rates& rates : std::vector<Rates>{{2.6, 0, 0, 0, 0}, {1, 0.4, 0, 0, 0}, {1, 0.4, 0.01, 0.003, 0.02}, {0.1, 0, 1, 0.01, 0}})
     for (int points : {2, 3, 7, 8, 9, 60, 513, 3000}) {
       const auto even = even_grid(0.25, 0.125, points);
       auto shuffled = even;
@@ -108,6 +108,32 @@ TEST_CASE("what cannot be computed is NaN and says so, beside what can") {
   CHECK(std::isnan(population({1, 0, -1, 0, 0}, {}, 1.0)));
   CHECK(std::isnan(population({1, 0, 1, 0, 0}, {}, kNaN)));
   CHECK(std::isnan(population({1, 0, 1, 0, 0}, {Prepared::ground, kNaN}, 1.0)));
+}
+
+// Each point of a line is a duration scan of one point; the line is longer than the blocks it is computed in.
+TEST_CASE("a detuning scan agrees with duration scans at each detuning") {
+  const std::vector<double> axis = even_grid(-12.9, 0.2, 130), pulse = {3.0, 1.3, 0.0, 2.0, -1.0, 2.0, 2.0};
+  const std::vector<Rates> batch = {{1, 0.3, 0, 0, 0}, {1, -0.3, 0.2, 0.1, 0.3}, {1, 0.1, 0.2, 0, 0}, {0.1, 0.1, 0.5, 0.01, 0},
+                                    {1, 0.1, 0.2, 0, 0}, {1, 0.1, 1e-9, 0, 0},   {0.8, 0, 0, 1, 0}};
+  const Start start{Prepared::excited, 0.1, LostReads::bright};
+  std::vector<double> rows[7];
+  const auto out = tests::spans(rows, batch.size() * axis.size());
+  std::vector<Status> status(batch.size());
+  Workspace workspace;
+  detuning_scan(batch, start, axis, pulse, out, status, workspace);
+  for (std::size_t set = 0; set < batch.size(); ++set) {
+    CHECK(status[set] == Status::ok);
+    for (std::size_t k = 0; k < axis.size(); ++k) {
+      Rates rates = batch[set];
+      rates.detuning = axis[k] - rates.detuning;
+      auto one = tests::evaluate(rates, start, {pulse[set]});
+      one.rows[1 + kByDetuning][0] *= -1;
+      for (int row = 0; row < 7; ++row) {
+        INFO("set " << set << " row " << row << " at " << axis[k]);
+        CHECK(rows[row][set * axis.size() + k] == Approx(one.rows[row][0]).margin(1e-10).epsilon(0));
+      }
+    }
+  }
 }
 
 TEST_CASE("an empty scan and an empty batch are no fault") {

@@ -21,8 +21,8 @@ std::string packed(const json& message) {
   return {bytes.begin(), bytes.end()};
 }
 
-/// A ROUTER that hands each request (peer, message) to a function, which sends what it likes; at most `count` requests, and no
-/// longer than 20 s for each.
+/// A ROUTER that hands each request (peer, message) to a function, which sends what it likes; at most `count` requests, and
+/// no longer than 20 s for each.
 class Peer {
  public:
   using Answer = std::function<void(zmq::socket_t&, const std::string& peer, const json& request)>;
@@ -87,7 +87,12 @@ TEST_CASE("a request without a reply is repeated with the same id") {
 
 TEST_CASE("an error is a fault with its code, place and message") {
   Peer peer(1, [](auto& router, const auto& from, const json& request) {
-    send(router, from, {{"kind", "error"}, {"id", request["id"]}, {"code", "unknown_drive"}, {"where", "drive"}, {"message", "found \"rad\""}});
+    send(router, from,
+         {{"kind", "error"},
+          {"id", request["id"]},
+          {"code", "unknown_drive"},
+          {"where", "drive"},
+          {"message", "found \"rad\""}});
   });
   Client client(peer.endpoint, milliseconds(10'000));
   const auto reply = client.request("history", {{"drive", "rad"}});
@@ -125,7 +130,8 @@ TEST_CASE("a subscriber receives its topics") {
   client::Subscriber subscriber(pub.get(zmq::sockopt::last_endpoint), {"fitted/red/"});
   zmq::message_t subscription;
   REQUIRE(pub.recv(subscription));  // readiness: the subscription has arrived
-  for (const auto& [topic, sequence] : {std::pair("fitted/red2/", 1), std::pair("fitted/red/", 1), std::pair("fitted/red/", 1), std::pair("fitted/red/", 4)}) {
+  for (const auto& [topic, sequence] : {std::pair("fitted/red2/", 1), std::pair("fitted/red/", 1),
+                                        std::pair("fitted/red/", 1), std::pair("fitted/red/", 4)}) {
     pub.send(zmq::buffer(std::string(topic)), zmq::send_flags::sndmore);
     pub.send(zmq::buffer(packed({{"boot", "b"}, {"sequence", sequence}, {"kind", "fitted"}})), zmq::send_flags::none);
   }

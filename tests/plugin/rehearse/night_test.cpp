@@ -1,7 +1,7 @@
 // SPDX-License-Identifier: Apache-2.0
 #include "plugin/rehearse/night.hpp"
 
-#include <chrono>
+#include <ctime>
 #include <set>
 #include <sstream>
 
@@ -304,10 +304,10 @@ TEST_CASE("The table and the JSON tell the same night") {
   CHECK(drive.at("truth").at("rabi_start_hz").get<double>() == Approx(0.5 / 3.99e-6));
 }
 
-TEST_CASE("Simulating eight hours costs less than five seconds") {
+TEST_CASE("Simulating eight hours costs less than five seconds of processor time") {
   const auto options = red();
   auto daemon = knowing(options);
-  const auto start = std::chrono::steady_clock::now();
+  const auto start = std::clock();
   rehearsed(options, daemon);
-  CHECK(std::chrono::duration<double>(std::chrono::steady_clock::now() - start).count() < 5.0);
+  CHECK(static_cast<double>(std::clock() - start) / CLOCKS_PER_SEC < 5.0);
 }

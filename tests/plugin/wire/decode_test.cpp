@@ -1,6 +1,6 @@
 // SPDX-License-Identifier: Apache-2.0
-// Messages are made by nlohmann's JSON and MessagePack encoders, which share nothing with plugin/wire; what fields mean is the
-// contract's (schemas/messages.schema.json).
+// Messages are made by nlohmann's JSON and MessagePack encoders, which share nothing with plugin/wire; what fields mean is
+// the contract's (schemas/messages.schema.json).
 #include <cmath>
 
 #include "plugin/wire/digest.hpp"
@@ -113,7 +113,8 @@ TEST_CASE("the MessagePack timestamp type is a time") {
   CHECK(decode(bytes + key + "\xd6\xff\x65\x53\xf1\x00"s).request->since == second);
   CHECK(decode(bytes + key + "\xd7\xff\x00\x00\x00\x04\x65\x53\xf1\x00"s).request->since == second + 1);
   CHECK(decode(bytes + key + "\xc7\x0c\xff\x00\x00\x00\x07\x00\x00\x00\x00\x65\x53\xf1\x00"s).request->since == second + 7);
-  CHECK(decode(bytes + key + "\xc7\x0c\xff\x00\x00\x00\x07\xff\xff\xff\xff\xff\xff\xff\xff"s).request->since == -1'000'000'000 + 7);
+  CHECK(decode(bytes + key + "\xc7\x0c\xff\x00\x00\x00\x07\xff\xff\xff\xff\xff\xff\xff\xff"s).request->since ==
+        -1'000'000'000 + 7);
   const auto other = decode(bytes + key + "\xd6\x05\x65\x53\xf1\x00"s);
   CHECK(other.request.error().code == "bad_type");
   CHECK(other.request.error().where == "since");

@@ -25,11 +25,13 @@ Fault fault_with(const std::string& text, const DecodeLimits& limits) {
 }  // namespace
 
 TEST_CASE("five bytes that ask for gigabytes") {
-  for (const std::string& bomb : {"\xdd\xff\xff\xff\xff"s, "\xdf\xff\xff\xff\xff"s, "\xdb\xff\xff\xff\xff"s, "\xc6\xff\xff\xff\xff"s,
-                                  "\xc9\xff\xff\xff\xff"s, "\xc9\xff\xff\xff\xff\x01"s, "\xdc\xff\xff"s, "\xde\xff\xff"s})
+  for (const std::string& bomb :
+       {"\xdd\xff\xff\xff\xff"s, "\xdf\xff\xff\xff\xff"s, "\xdb\xff\xff\xff\xff"s, "\xc6\xff\xff\xff\xff"s,
+        "\xc9\xff\xff\xff\xff"s, "\xc9\xff\xff\xff\xff\x01"s, "\xdc\xff\xff"s, "\xde\xff\xff"s})
     CHECK(code_of(bomb) == "bad_encoding");
   const std::string head = "\x84\xa5proto\x01\xa4kind\xa3" "fit\xa2id\xa1i\xa4scan\x81\xa6" "counts"s;
-  for (const std::string& bomb : {"\xdd\xff\xff\xff\xff"s, "\xdb\xff\xff\xff\xff"s, "\xdd\xff\xff\xff\xff\xdd\xff\xff\xff\xff"s}) {
+  for (const std::string& bomb :
+       {"\xdd\xff\xff\xff\xff"s, "\xdb\xff\xff\xff\xff"s, "\xdd\xff\xff\xff\xff\xdd\xff\xff\xff\xff"s}) {
     CHECK(code_of(head + bomb) == "bad_encoding");
     CHECK(decode(head + bomb).id == "i");
   }
@@ -95,7 +97,10 @@ TEST_CASE("limits name what was found and where") {
 }
 
 TEST_CASE("a message of the largest size is read") {
-  Json scan = {{"drive", "red"}, {"duration_s", std::vector<double>(100'000, 1.5e-6)}, {"shots", 100}, {"counts", std::vector<int>(100'000, 7)}};
+  Json scan = {{"drive", "red"},
+               {"duration_s", std::vector<double>(100'000, 1.5e-6)},
+               {"shots", 100},
+               {"counts", std::vector<int>(100'000, 7)}};
   const Decoded decoded = decode(msgpack_of({{"proto", 1}, {"kind", "fit"}, {"id", "big"}, {"scan", scan}}));
   REQUIRE(decoded.request);
   CHECK(decoded.request->scans[0].axis.size() == 100'000);

@@ -16,22 +16,28 @@ TEST_CASE("times of day") {
   CHECK(parse_time("1969-12-31T23:59:59.999999999z") == -1);
   CHECK(parse_time("2026-02-03 04:05:06-00:00") == 1'770'091'506'000'000'000);
   CHECK(parse_time("2026-02-03T04:05:06.1234567899Z") == 1'770'091'506'123'456'789);
-  CHECK(parse_time("2016-12-31T23:59:60Z") == parse_time("2017-01-01T00:00:00Z"));  // the leap second of 2016 (IERS Bulletin C 52)
-  for (const char* wrong : {"", "2026", "2026-02-03", "2026-02-03T04:05:06", "2025-02-29T00:00:00Z", "2026-13-01T00:00:00Z", "2026-02-03T24:00:00Z",
-                            "2026-02-03T04:60:06Z", "2026-02-03T04:05:61Z", "2026-02-03T04:05:06.Z", "2026-02-03T04:05:06+0100", "2026-02-03T04:05:06Z ",
-                            "2026-02-03T04:05:06+24:00", "2026-2-3T04:05:06Z", "1500-01-01T00:00:00Z", "2262-06-01T00:00:00Z", "+026-02-03T04:05:06Z"})
+  CHECK(parse_time("2016-12-31T23:59:60Z") ==
+        parse_time("2017-01-01T00:00:00Z"));  // the leap second of 2016 (IERS Bulletin C 52)
+  for (const char* wrong : {"", "2026", "2026-02-03", "2026-02-03T04:05:06", "2025-02-29T00:00:00Z", "2026-13-01T00:00:00Z",
+                            "2026-02-03T24:00:00Z", "2026-02-03T04:60:06Z", "2026-02-03T04:05:61Z", "2026-02-03T04:05:06.Z",
+                            "2026-02-03T04:05:06+0100", "2026-02-03T04:05:06Z ", "2026-02-03T04:05:06+24:00",
+                            "2026-2-3T04:05:06Z", "1500-01-01T00:00:00Z", "2262-06-01T00:00:00Z", "+026-02-03T04:05:06Z"})
     CHECK(parse_time(wrong) == std::nullopt);
   CHECK(format_time(0) == "1970-01-01T00:00:00Z");
   CHECK(format_time(-1) == "1969-12-31T23:59:59.999999999Z");
   CHECK(format_time(1'770'091'506'120'000'000) == "2026-02-03T04:05:06.120Z");
   CHECK(format_time(1'770'091'506'000'007'000) == "2026-02-03T04:05:06.000007Z");
-  for (const Time time : {Time{0}, Time{-1}, Time{1'770'091'506'123'456'789}, Time{-9'000'000'000'000'000'001}}) CHECK(parse_time(format_time(time)) == time);
+  for (const Time time : {Time{0}, Time{-1}, Time{1'770'091'506'123'456'789}, Time{-9'000'000'000'000'000'001}})
+    CHECK(parse_time(format_time(time)) == time);
 }
 
 TEST_CASE("UTF-8") {
   // The examples of RFC 3629, sections 7 and 10, and Unicode 15, table 3-7.
-  for (const char* good : {"", "A\xE2\x89\xA2\xCE\x91.", "\xED\x95\x9C", "\xE6\x97\xA5", "\xEF\xBB\xBF\xF0\xA3\x8E\xB4", "\xF4\x8F\xBF\xBF"}) CHECK(is_utf8(good));
-  for (const char* bad : {"\xC0\x80", "\xC1\xBF", "\xED\xA1\x8C", "\xE0\x9F\xBF", "\xF0\x8F\xBF\xBF", "\xF4\x90\x80\x80", "\xF5\x80\x80\x80", "\x80", "\xE2\x89", "a\xFF"})
+  for (const char* good :
+       {"", "A\xE2\x89\xA2\xCE\x91.", "\xED\x95\x9C", "\xE6\x97\xA5", "\xEF\xBB\xBF\xF0\xA3\x8E\xB4", "\xF4\x8F\xBF\xBF"})
+    CHECK(is_utf8(good));
+  for (const char* bad : {"\xC0\x80", "\xC1\xBF", "\xED\xA1\x8C", "\xE0\x9F\xBF", "\xF0\x8F\xBF\xBF", "\xF4\x90\x80\x80",
+                          "\xF5\x80\x80\x80", "\x80", "\xE2\x89", "a\xFF"})
     CHECK_FALSE(is_utf8(bad));
   CHECK(characters("\xC2\xB5s") == 2);
   CHECK_FALSE(is_printable("a\xC2\x85", 9));
