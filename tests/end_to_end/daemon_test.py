@@ -214,7 +214,7 @@ class Published(InFolder):
     def test_the_feed_is_not_answered_and_what_it_brings_is_published(self):
         daemon = self.daemon()
         context = zmq.Context()
-        self.addCleanup(context.destroy, linger=0)
+        self.addCleanup(lambda: context.destroy(linger=0))
         feed, listener = context.socket(zmq.PUSH), context.socket(zmq.SUB)
         feed.connect(daemon.feed)
         listener.connect(daemon.results)
@@ -223,7 +223,6 @@ class Published(InFolder):
         self.assertTrue(listener.poll(1000 * PATIENCE_S))
         topic, message = listener.recv_multipart()
         self.assertEqual(topic, b"fitted/red/")
-        feed.close(linger=0)
 
 
 if __name__ == "__main__":
