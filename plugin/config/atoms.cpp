@@ -23,12 +23,14 @@ std::optional<int> read_doubled(Reader& reader, const Place& at, int low, int hi
     const double twice = 2.0 * *value;
     if (std::floor(twice) == twice && twice >= low && twice <= high) return static_cast<int>(twice);
   }
-  reader.fault(at, "found " + found(*at.node) + ", expected a whole or half number, such as 3/2" + (low >= 0 ? ", of at least 0" : ""));
+  reader.fault(at, "found " + found(*at.node) + ", expected a whole or half number, such as 3/2" +
+                       (low >= 0 ? ", of at least 0" : ""));
   return std::nullopt;
 }
 
 std::optional<atom::Multipole> read_multipole(Reader& reader, const Place& at) {
-  static constexpr std::string_view kKinds[] = {"electric_dipole", "magnetic_dipole", "electric_quadrupole", "two_photon", "induced"};
+  static constexpr std::string_view kKinds[] = {"electric_dipole", "magnetic_dipole", "electric_quadrupole", "two_photon",
+                                                "induced"};
   const auto kind = reader.choice(at, kKinds);  // in the order of atom::Multipole
   return kind ? std::optional(static_cast<atom::Multipole>(*kind)) : std::nullopt;
 }

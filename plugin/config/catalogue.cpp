@@ -11,9 +11,23 @@ using std::string_view;
 
 constexpr int kLargest = 40;  // doubled
 constexpr string_view kTop[] = {"format", "lines"};
-constexpr string_view kLine[] = {"species",           "labels",               "twice_I",    "kind",         "lower",     "upper",
-                                 "wavelength_m",      "frequency_hz",         "lifetime_s", "linewidth_hz", "branching", "partial_linewidth_hz",
-                                 "partial_rate_per_s", "reduced_dipole_ea0", "saturation_w_m2", "recommended", "note"};
+constexpr string_view kLine[] = {"species",
+                                 "labels",
+                                 "twice_I",
+                                 "kind",
+                                 "lower",
+                                 "upper",
+                                 "wavelength_m",
+                                 "frequency_hz",
+                                 "lifetime_s",
+                                 "linewidth_hz",
+                                 "branching",
+                                 "partial_linewidth_hz",
+                                 "partial_rate_per_s",
+                                 "reduced_dipole_ea0",
+                                 "saturation_w_m2",
+                                 "recommended",
+                                 "note"};
 constexpr string_view kLevel[] = {"term", "twice_J", "twice_S", "parity"};
 constexpr string_view kQuoted[] = {"value", "sigma", "source", "status", "computed"};
 constexpr string_view kStatus[] = {"read", "quoted", "recalled"};  // in the order of atom::Status
@@ -37,9 +51,12 @@ std::optional<atom::Quoted> read_quoted(Reader& reader, const Place& at) {
   if (!at || !reader.map(at, {kQuoted})) return std::nullopt;
   atom::Quoted out;
   out.value = reader.quantity(reader.need(at, "value", "a number"), Dimension::number).value_or(0.0);
-  out.sigma = reader.quantity(reader.need(at, "sigma", "one standard deviation"), Dimension::number, kNotNegative).value_or(0.0);
-  out.source = reader.text(reader.need(at, "source", "where the number was found"), "where the number was found").value_or("");
-  if (const auto status = reader.choice(reader.need(at, "status", listed(kStatus)), kStatus)) out.status = static_cast<atom::Status>(*status);
+  out.sigma =
+      reader.quantity(reader.need(at, "sigma", "one standard deviation"), Dimension::number, kNotNegative).value_or(0.0);
+  out.source =
+      reader.text(reader.need(at, "source", "where the number was found"), "where the number was found").value_or("");
+  if (const auto status = reader.choice(reader.need(at, "status", listed(kStatus)), kStatus))
+    out.status = static_cast<atom::Status>(*status);
   out.computed = reader.flag(at["computed"]).value_or(false);
   return out;
 }
@@ -61,15 +78,16 @@ atom::CatalogueLine read_line(Reader& reader, const Place& at) {
   line.lower = read_level(reader, reader.need(at, "lower", "the lower level"));
   line.upper = read_level(reader, reader.need(at, "upper", "the upper level"));
   using Number = std::optional<atom::Quoted> atom::CatalogueLine::*;
-  constexpr std::pair<string_view, Number> kNumbers[] = {{"wavelength_m", &atom::CatalogueLine::wavelength_m},
-                                                         {"frequency_hz", &atom::CatalogueLine::frequency_hz},
-                                                         {"lifetime_s", &atom::CatalogueLine::lifetime_s},
-                                                         {"linewidth_hz", &atom::CatalogueLine::linewidth_hz},
-                                                         {"branching", &atom::CatalogueLine::branching},
-                                                         {"partial_linewidth_hz", &atom::CatalogueLine::partial_linewidth_hz},
-                                                         {"partial_rate_per_s", &atom::CatalogueLine::partial_rate_per_s},
-                                                         {"reduced_dipole_ea0", &atom::CatalogueLine::reduced_dipole_ea0},
-                                                         {"saturation_w_m2", &atom::CatalogueLine::saturation_w_m2}};
+  constexpr std::pair<string_view, Number> kNumbers[] = {
+      {"wavelength_m", &atom::CatalogueLine::wavelength_m},
+      {"frequency_hz", &atom::CatalogueLine::frequency_hz},
+      {"lifetime_s", &atom::CatalogueLine::lifetime_s},
+      {"linewidth_hz", &atom::CatalogueLine::linewidth_hz},
+      {"branching", &atom::CatalogueLine::branching},
+      {"partial_linewidth_hz", &atom::CatalogueLine::partial_linewidth_hz},
+      {"partial_rate_per_s", &atom::CatalogueLine::partial_rate_per_s},
+      {"reduced_dipole_ea0", &atom::CatalogueLine::reduced_dipole_ea0},
+      {"saturation_w_m2", &atom::CatalogueLine::saturation_w_m2}};
   for (const auto& [key, number] : kNumbers) line.*number = read_quoted(reader, at[key]);
   line.recommended = read_texts(reader, at["recommended"], "a list of transitions");
   line.note = reader.text(at["note"], "a text").value_or("");
@@ -98,7 +116,8 @@ Result<std::vector<atom::CatalogueLine>> read_catalogue(const std::string& text)
         const std::size_t before = reader.faults.size();
         lines.push_back(read_line(reader, list.child(child)));
         if (reader.faults.size() > before) continue;
-        if (const auto sound = atom::check_line(lines.back()); !sound) reader.fault(list.child(child), sound.error().message);
+        if (const auto sound = atom::check_line(lines.back()); !sound)
+          reader.fault(list.child(child), sound.error().message);
       }
   }
   if (!reader.faults.empty()) return fault("bad_value", "catalogue", all(reader.faults));

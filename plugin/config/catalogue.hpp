@@ -8,8 +8,8 @@
 
 namespace halfturn::config {
 
-/// The lines of a catalogue in the form of schemas/transitions.yaml. Fault `bad_value` with all that is wrong, one a line, each
-/// with line, column and path.
+/// The lines of a catalogue in the form of schemas/transitions.yaml. Fault `bad_value` with all that is wrong, one a line,
+/// each with line, column and path.
 Result<std::vector<atom::CatalogueLine>> read_catalogue(const std::string& text);
 
 /// The catalogue that the program carries inside itself, read once.

@@ -8,6 +8,7 @@
 #include "plugin/config/file.hpp"
 #include "plugin/config/keys.hpp"
 #include "plugin/config/sections.hpp"
+#include "plugin/wire/digest.hpp"
 #include "plugin/wire/words.hpp"
 
 namespace halfturn::config {
@@ -15,18 +16,10 @@ namespace {
 
 constexpr std::string_view kDefaultLog = "halfturn.db";
 
-/// FNV-1a, 64 bits (Fowler, Noll, Vo; RFC 9923).
-std::string fingerprint(std::string_view text) {
-  std::uint64_t hash = 0xcbf29ce484222325u;
-  for (const char c : text) hash = (hash ^ static_cast<unsigned char>(c)) * 0x100000001b3u;
-  std::string out(16, '0');
-  for (std::size_t i = 16; i-- > 0; hash >>= 4) out[i] = "0123456789abcdef"[hash & 0xf];
-  return out;
-}
-
 std::string read_log(Reader& reader, const Place& at, const std::string& folder) {
   const std::string name = at ? reader.text(at, "the path of a file").value_or("") : std::string(kDefaultLog);
-  if (name.starts_with("~") || name.ends_with("/")) reader.fault(at, "found " + wire::in_quotes(name) + ", expected the path of a file, without ~");
+  if (name.starts_with("~") || name.ends_with("/"))
+    reader.fault(at, "found " + wire::in_quotes(name) + ", expected the path of a file, without ~");
   return folder.empty() ? name : (std::filesystem::path(folder) / name).string();
 }
 
@@ -65,7 +58,7 @@ Reading read(const std::string& text, const std::string& folder) {
     Configuration configuration = read_top(reader, {&document.root, ""}, folder);
     reading.faults.insert(reading.faults.end(), reader.faults.begin(), reader.faults.end());
     configuration.text = text;
-    configuration.fingerprint = fingerprint(text);
+    configuration.fingerprint = wire::fingerprint(text);
     if (reading.faults.empty()) reading.configuration = std::move(configuration);
   }
   sort(reading.faults);

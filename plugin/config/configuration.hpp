@@ -25,32 +25,33 @@ struct Sockets {
 struct Drive {
   std::string name;
   std::optional<atom::Transition> transition;
-  std::optional<double> waist_m;                        // 1/e^2 radius of the beam's intensity
-  std::optional<double> carrier_uncertainty;            // rad/s
+  std::optional<double> waist_m;              // 1/e^2 radius of the beam's intensity
+  std::optional<double> carrier_uncertainty;  // rad/s
   std::optional<infer::Known> floor, contrast;
-  wire::ReadoutKind readout_kind = wire::ReadoutKind::binomial;  // what floor and contrast are of: fractions, signal, photons
-  std::optional<infer::Expected> expect;                // rad/s
+  wire::ReadoutKind readout_kind =
+      wire::ReadoutKind::binomial;        // what floor and contrast are of: fractions, signal, photons
+  std::optional<infer::Expected> expect;  // rad/s
   std::optional<infer::DynamicsSet> dynamics;
-  std::optional<infer::Known> dead_time;                // s
+  std::optional<infer::Known> dead_time;  // s
   dynamics::LostReads lost_reads = dynamics::LostReads::dark;
   double impurity = 0.0;
-  std::vector<recalibrate::Pulse> pulses;               // in the order of the file
+  std::vector<recalibrate::Pulse> pulses;  // in the order of the file
   recalibrate::Accept accept;
 };
 
 struct Configuration {
   Sockets sockets;
-  std::string log_path;                                 // absolute, or relative to the working directory
+  std::string log_path;  // absolute, or relative to the working directory
   bool insecure = false;
   std::map<std::string, Drive> drives;
-  std::string text;                                     // as read
-  std::string fingerprint;                              // of the text: FNV-1a, 64 bits, 16 hexadecimal digits
+  std::string text;         // as read
+  std::string fingerprint;  // wire::fingerprint of the text
 };
 
-/// Reads a configuration from its text, as schemas/configuration.schema.json describes it. `folder` is what the log's path is
-/// relative to; empty for the working directory. All faults are found at once, in the order of the text.
+/// Reads a configuration from its text, as schemas/configuration.schema.json describes it. `folder` is what the log's path
+/// is relative to; empty for the working directory. All faults are found at once, in the order of the text.
 struct Reading {
-  std::optional<Configuration> configuration;           // present exactly where there are no faults
+  std::optional<Configuration> configuration;  // present exactly where there are no faults
   std::vector<Diagnosis> faults;
 };
 Reading read(const std::string& text, const std::string& folder);

@@ -50,8 +50,11 @@ class Parser {
       const std::string_view rest = rest_of_line();
       const std::size_t mark = rest.find('#');
       const std::size_t begin = std::min(rest.find_first_not_of(" \t", mark + 1), rest.size());
-      if (table_.rows.empty()) table_.comments.push_back({std::string(trimmed(rest.substr(begin))), row, static_cast<int>(begin) + 1});
-      else fault(row, static_cast<int>(mark) + 1, "found a line that begins with #, expected such lines before the header only");
+      if (table_.rows.empty())
+        table_.comments.push_back({std::string(trimmed(rest.substr(begin))), row, static_cast<int>(begin) + 1});
+      else
+        fault(row, static_cast<int>(mark) + 1,
+              "found a line that begins with #, expected such lines before the header only");
     } else {
       row();
     }

@@ -9,7 +9,7 @@
 namespace halfturn::config {
 
 struct Cell {
-  std::string text;        // without its quotes; blanks around it are taken off where it has none
+  std::string text;          // without its quotes; blanks around it are taken off where it has none
   int line = 0, column = 0;  // from 1, in characters
 };
 

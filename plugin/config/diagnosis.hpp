@@ -4,7 +4,8 @@
 
 namespace halfturn::config {
 
-/// A fault of a file: the place as `line:column` (from 1; 0 where it has no place) and `path` (`drives.red.pulses.flip.length`).
+/// A fault of a file: the place as `line:column` (from 1; 0 where it has no place) and `path`
+/// (`drives.red.pulses.flip.length`).
 struct Diagnosis {
   int line = 0, column = 0;
   std::string path;

@@ -26,7 +26,7 @@ class Builder : public YAML::EventHandler {
 
   void OnDocumentStart(const YAML::Mark& mark) override {
     if (++documents_ == 1) return;
-    refuse(mark, "found a second document, expected one: take the --- line out");
+    refuse(mark, "found a second document, or text behind the first, expected one document");
     throw Stop{};
   }
   void OnDocumentEnd() override {}
@@ -48,7 +48,8 @@ class Builder : public YAML::EventHandler {
   }
   void OnSequenceEnd() override { close(); }
 
-  void OnMapStart(const YAML::Mark& mark, const std::string& tag, YAML::anchor_t anchor, YAML::EmitterStyle::value style) override {
+  void OnMapStart(const YAML::Mark& mark, const std::string& tag, YAML::anchor_t anchor,
+                  YAML::EmitterStyle::value style) override {
     open(Node::Kind::map, mark, tag, anchor, style);
   }
   void OnMapEnd() override { close(); }
@@ -71,7 +72,8 @@ class Builder : public YAML::EventHandler {
 
   void place(const YAML::Mark& mark, int& line, int& column) const {
     line = mark.line + 1;
-    const std::string_view text = mark.line >= 0 && static_cast<std::size_t>(mark.line) < lines_.size() ? lines_[mark.line] : "";
+    const std::string_view text =
+        mark.line >= 0 && static_cast<std::size_t>(mark.line) < lines_.size() ? lines_[mark.line] : "";
     column = position(text, static_cast<std::size_t>(std::max(mark.column, 0))).column;
   }
 
@@ -92,7 +94,8 @@ class Builder : public YAML::EventHandler {
 
   void check_extras(const YAML::Mark& mark, const std::string& tag, YAML::anchor_t anchor) {
     if (anchor != 0) refuse(mark, "found an anchor (&), expected the value alone");
-    if (!tag.empty() && tag != "?" && tag != "!") refuse(mark, "found the tag " + wire::in_quotes(tag) + ", expected the value alone");
+    if (!tag.empty() && tag != "?" && tag != "!")
+      refuse(mark, "found the tag " + wire::in_quotes(tag) + ", expected the value alone");
   }
 
   /// A quoted scalar ends with its quote. (The parser takes the end of the text for it: version 0.7, ScanScalar.)
@@ -118,7 +121,8 @@ class Builder : public YAML::EventHandler {
 
   bool key_is_next() const { return !open_.empty() && open_.back().node.kind == Node::Kind::map && !open_.back().has_key; }
 
-  void leaf(Node::Kind kind, const YAML::Mark& mark, const std::string& tag, YAML::anchor_t anchor, const std::string& text) {
+  void leaf(Node::Kind kind, const YAML::Mark& mark, const std::string& tag, YAML::anchor_t anchor,
+            const std::string& text) {
     check_extras(mark, tag, anchor);
     count(mark);
     if (tag == "!") check_quotes(mark);
@@ -138,11 +142,13 @@ class Builder : public YAML::EventHandler {
     level.key = text;
     level.key_mark = mark;
     const auto [seen, fresh] = level.seen.emplace(text, mark.line + 1);
-    if (!fresh) refuse(mark, "found the key " + wire::in_quotes(text) + " a second time (first in line " + std::to_string(seen->second) +
-                             "), expected it once");
+    if (!fresh)
+      refuse(mark, "found the key " + wire::in_quotes(text) + " a second time (first in line " +
+                       std::to_string(seen->second) + "), expected it once");
   }
 
-  void open(Node::Kind kind, const YAML::Mark& mark, const std::string& tag, YAML::anchor_t anchor, YAML::EmitterStyle::value style) {
+  void open(Node::Kind kind, const YAML::Mark& mark, const std::string& tag, YAML::anchor_t anchor,
+            YAML::EmitterStyle::value style) {
     check_extras(mark, tag, anchor);
     count(mark);
     if (static_cast<int>(open_.size()) >= limits_.depth) {
@@ -205,7 +211,8 @@ std::string syntax_message(const std::string& reason, std::string_view line) {
   const std::size_t text = line.find_first_not_of(" \t");
   if (line.substr(0, text).find('\t') != std::string_view::npos) return "found a tab before the text, expected spaces";
   if (reason.find("anchor") != std::string::npos) return "found an alias (*), expected the value itself";
-  return "found text that is not YAML (" + reason + "), expected YAML; look at brackets, quotes, colons and indentation, also above";
+  return "found text that is not YAML (" + reason +
+         "), expected YAML; look at brackets, quotes, colons and indentation, also above";
 }
 
 void parse(const std::string& text, const DocumentLimits& limits, Document& document) {
@@ -266,7 +273,8 @@ Document read_document(const std::string& text, const DocumentLimits& limits) {
   Document document;
   document.complete = false;
   if (text.size() > limits.bytes) {
-    document.faults.push_back({0, 0, "", "found " + std::to_string(text.size()) + " bytes, expected at most " + std::to_string(limits.bytes)});
+    document.faults.push_back(
+        {0, 0, "", "found " + std::to_string(text.size()) + " bytes, expected at most " + std::to_string(limits.bytes)});
     return document;
   }
   if (const std::size_t bad = first_bad_byte(text); bad != std::string_view::npos) {

@@ -13,11 +13,11 @@ namespace halfturn::config {
 struct Node {
   enum class Kind { nothing, scalar, list, map };
   Kind kind = Kind::nothing;
-  std::string text;            // of a scalar, as written, never interpreted
-  bool plain = false;          // a scalar without quotation marks
-  bool inline_style = false;   // a list or map in brackets or braces
-  int line = 0, column = 0;    // from 1, in characters; of `nothing`, where its key stands
-  std::string key;             // of a child of a map
+  std::string text;           // of a scalar, as written, never interpreted
+  bool plain = false;         // a scalar without quotation marks
+  bool inline_style = false;  // a list or map in brackets or braces
+  int line = 0, column = 0;   // from 1, in characters; of `nothing`, where its key stands
+  std::string key;            // of a child of a map
   int key_line = 0, key_column = 0;
   std::vector<Node> children;
 
@@ -37,8 +37,9 @@ struct Document {
   bool complete = true;
 };
 
-/// Reads YAML 1.2 in UTF-8. Faults: text that is not YAML or not UTF-8, no document or several, duplicate keys, keys that are
-/// not scalars, anchors, aliases, tags, and what passes the limits. Scalars stay text: `0123`, `y` and `1e3` mean nothing here.
+/// Reads YAML 1.2 in UTF-8. Faults: text that is not YAML or not UTF-8, no document or several, duplicate keys, keys that
+/// are not scalars, anchors, aliases, tags, and what passes the limits. Scalars stay text: `0123`, `y` and `1e3` mean
+/// nothing here.
 Document read_document(const std::string& text, const DocumentLimits& limits = {});
 
 /// The place of the byte at `offset`, both from 1, the column in characters.

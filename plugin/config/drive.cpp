@@ -24,23 +24,28 @@ std::optional<infer::Known> known(Reader& reader, const Place& at, const char* e
 
 /// Fractions of counts lie between 0 and 1, at both ends of the oscillation; signals and photons lie where they will.
 void check_fractions(Reader& reader, const Place& at, const Drive& drive) {
-  if (drive.contrast && drive.contrast->mean == 0.0) reader.fault(at["contrast"], "found a contrast of 0, expected one that shows the oscillation");
+  if (drive.contrast && drive.contrast->mean == 0.0)
+    reader.fault(at["contrast"], "found a contrast of 0, expected one that shows the oscillation");
   if (drive.readout_kind != wire::ReadoutKind::binomial) return;
   if (drive.floor && (drive.floor->mean < 0.0 || drive.floor->mean > 1.0))
-    reader.fault(at["floor"], "found " + wire::in_quotes(at["floor"].node->children[0].text) + ", expected a fraction of counts between 0 and 1");
+    reader.fault(at["floor"], "found " + wire::in_quotes(at["floor"].node->children[0].text) +
+                                  ", expected a fraction of counts between 0 and 1");
   if (drive.contrast && std::abs(drive.contrast->mean) > 1.0)
-    reader.fault(at["contrast"], "found " + wire::in_quotes(at["contrast"].node->children[0].text) + ", expected a fraction of counts between -1 and 1");
+    reader.fault(at["contrast"], "found " + wire::in_quotes(at["contrast"].node->children[0].text) +
+                                     ", expected a fraction of counts between -1 and 1");
   if (!drive.floor || !drive.contrast) return;
   const double top = drive.floor->mean + drive.contrast->mean;
   const double slack = 1e-9;  // 0.02 + 0.98 is not quite 1 in binary
   const bool inside = top >= -slack && top <= 1.0 + slack;
   if (!inside && std::abs(drive.contrast->mean) <= 1.0 && drive.floor->mean >= 0.0 && drive.floor->mean <= 1.0)
-    reader.fault(at["contrast"], "found floor + contrast outside 0 to 1, expected fractions of counts (or kind: signal, kind: photons)");
+    reader.fault(at["contrast"],
+                 "found floor + contrast outside 0 to 1, expected fractions of counts (or kind: signal, kind: photons)");
 }
 
 void read_readout(Reader& reader, const Place& at, Drive& drive) {
   if (!at || !reader.map(at, {keys::kReadout})) return;
-  if (const auto kind = reader.choice(at["kind"], keys::kReadoutKinds)) drive.readout_kind = static_cast<wire::ReadoutKind>(*kind);
+  if (const auto kind = reader.choice(at["kind"], keys::kReadoutKinds))
+    drive.readout_kind = static_cast<wire::ReadoutKind>(*kind);
   drive.floor = known(reader, at["floor"], "its value and sigma, such as [0.02, 0.01]");
   drive.contrast = known(reader, at["contrast"], "its value and sigma, such as [0.93, 0.02]");
   check_fractions(reader, at, drive);
@@ -52,7 +57,8 @@ void read_expect(Reader& reader, const Place& at, Drive& drive) {
   const auto pair = reader.pair(rabi, Dimension::frequency, kPositive, Dimension::frequency, kPositive,
                                 "the lowest and the highest Rabi frequency, such as [10 kHz, 1 MHz]");
   if (!pair) return;
-  if (pair->first >= pair->second) reader.fault(rabi, "found a lower end that is not below the upper one, expected [lowest, highest]");
+  if (pair->first >= pair->second)
+    reader.fault(rabi, "found a lower end that is not below the upper one, expected [lowest, highest]");
   drive.expect = infer::Expected{kTwoPi * pair->first, kTwoPi * pair->second};
 }
 
@@ -62,7 +68,8 @@ void read_dynamics(Reader& reader, const Place& at, Drive& drive) {
   for (const Node& child : at.node->children) {
     const auto one = reader.choice(at.child(child), infer::kDynamicsNames, keys::kDynamicsLater);
     if (!one) continue;
-    if (set.has(static_cast<infer::Dynamics>(*one))) reader.fault(at.child(child), "found " + wire::in_quotes(child.text) + " a second time, expected it once");
+    if (set.has(static_cast<infer::Dynamics>(*one)))
+      reader.fault(at.child(child), "found " + wire::in_quotes(child.text) + " a second time, expected it once");
     set.add(static_cast<infer::Dynamics>(*one));
   }
   drive.dynamics = set;
@@ -92,7 +99,8 @@ void read_accept(Reader& reader, const Place& at, recalibrate::Accept& accept) {
 
 void read_beam(Reader& reader, const Place& at, Drive& drive) {
   if (!at || !reader.map(at, {keys::kBeam})) return;
-  drive.waist_m = reader.quantity(reader.need(at, "waist", "the 1/e^2 radius of the beam, such as 45 um"), Dimension::length, kPositive);
+  drive.waist_m =
+      reader.quantity(reader.need(at, "waist", "the 1/e^2 radius of the beam, such as 45 um"), Dimension::length, kPositive);
 }
 
 void read_pulses(Reader& reader, const Place& at, Drive& drive) {
@@ -108,12 +116,14 @@ Drive read_drive(Reader& reader, const Place& at) {
   if (!reader.map(at, {keys::kDrive, keys::kDriveLater})) return drive;
   drive.transition = read_transition(reader, at["transition"]);
   read_beam(reader, at["beam"], drive);
-  if (const auto sigma = reader.quantity(at["carrier_uncertainty"], Dimension::frequency, kNotNegative)) drive.carrier_uncertainty = kTwoPi * *sigma;
+  if (const auto sigma = reader.quantity(at["carrier_uncertainty"], Dimension::frequency, kNotNegative))
+    drive.carrier_uncertainty = kTwoPi * *sigma;
   read_readout(reader, at["readout"], drive);
   read_expect(reader, at["expect"], drive);
   read_dynamics(reader, at["dynamics"], drive);
   read_switching(reader, at["switching"], drive);
-  if (const auto lost = reader.choice(at["lost_reads"], keys::kLostReads)) drive.lost_reads = static_cast<dynamics::LostReads>(*lost);
+  if (const auto lost = reader.choice(at["lost_reads"], keys::kLostReads))
+    drive.lost_reads = static_cast<dynamics::LostReads>(*lost);
   drive.impurity = reader.quantity(at["impurity"], Dimension::fraction, kHalf).value_or(0.0);
   read_pulses(reader, reader.need(at, "pulses", "at least one pulse by its name"), drive);
   read_accept(reader, at["accept"], drive.accept);

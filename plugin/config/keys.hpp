@@ -11,8 +11,9 @@ using std::string_view;
 inline constexpr string_view kTop[] = {"format", "sockets", "log", "insecure", "drives"};
 inline constexpr string_view kTopLater[] = {"catalogue", "keys", "secret_keys", "public_keys", "curve"};
 inline constexpr string_view kSockets[] = {"requests", "feed", "results", "display"};
-inline constexpr string_view kDrive[] = {"transition", "beam",      "carrier_uncertainty", "readout",    "expect",  "dynamics",
-                                         "pulses",     "switching", "accept",              "lost_reads", "impurity"};
+inline constexpr string_view kDrive[] = {"transition", "beam",   "carrier_uncertainty", "readout", "expect",
+                                         "dynamics",   "pulses", "switching",           "accept",  "lost_reads",
+                                         "impurity"};
 inline constexpr string_view kDriveLater[] = {"motion", "sideband", "cloud", "doppler", "spread", "light_shift"};
 inline constexpr string_view kBeam[] = {"waist"};
 inline constexpr string_view kReadout[] = {"kind", "floor", "contrast"};
@@ -23,8 +24,9 @@ inline constexpr string_view kAccept[] = {"max_step",         "min_cycles",     
 inline constexpr string_view kPulse[] = {"angle", "length", "tick", "limits", "shape", "adjust"};
 inline constexpr string_view kPulseLater[] = {"amplitude", "step"};
 inline constexpr string_view kShape[] = {"kind", "edge", "width"};
-inline constexpr string_view kTransition[] = {"name",           "kind",   "wavelength",      "frequency", "linewidth", "lifetime",     "branching",
-                                              "angular_factor", "moment", "magnetic_moment", "lower",     "upper",     "nuclear_spin", "polarisation"};
+inline constexpr string_view kTransition[] = {"name",     "kind",      "wavelength",     "frequency",   "linewidth",
+                                              "lifetime", "branching", "angular_factor", "moment",      "magnetic_moment",
+                                              "lower",    "upper",     "nuclear_spin",   "polarisation"};
 inline constexpr string_view kLevel[] = {"term", "J", "F", "m", "parity", "S"};
 
 inline constexpr string_view kShapes[] = {"square", "gaussian", "blackman", "raised_cosine"};

@@ -20,11 +20,13 @@ void read_limits(Reader& reader, const Place& at, recalibrate::Pulse& pulse) {
   const auto pair = reader.pair(at, Dimension::time, kPositive, Dimension::time, kPositive,
                                 "the shortest and the longest length that may be proposed, such as [1 us, 20 us]");
   if (!pair) return;
-  if (pair->first >= pair->second) return reader.fault(at, "found a lower end that is not below the upper one, expected [shortest, longest]");
+  if (pair->first >= pair->second)
+    return reader.fault(at, "found a lower end that is not below the upper one, expected [shortest, longest]");
   pulse.minimum_s = pair->first;
   pulse.maximum_s = pair->second;
   if (pulse.length_s > 0.0 && (pulse.length_s < pair->first || pulse.length_s > pair->second))
-    reader.fault(at, "found limits that do not hold the length of " + engineering(pulse.length_s, "s") + ", expected limits around it");
+    reader.fault(at, "found limits that do not hold the length of " + engineering(pulse.length_s, "s") +
+                         ", expected limits around it");
 }
 
 /// Whether a length that can be played lies within the limits.
@@ -32,7 +34,8 @@ void check_tick(Reader& reader, const Place& at, const recalibrate::Pulse& pulse
   if (!at || pulse.tick_s <= 0.0 || pulse.length_s <= 0.0) return;
   const double last = std::floor(pulse.maximum_s / pulse.tick_s * (1.0 + 1e-12)) * pulse.tick_s;
   if (last < pulse.minimum_s * (1.0 - 1e-12))
-    reader.fault(at, "found " + wire::in_quotes(at.node->text) + ", of which no multiple lies within the limits, expected a shorter tick");
+    reader.fault(at, "found " + wire::in_quotes(at.node->text) +
+                         ", of which no multiple lies within the limits, expected a shorter tick");
 }
 
 void read_shape(Reader& reader, const Place& at, recalibrate::Pulse& pulse) {
@@ -40,14 +43,18 @@ void read_shape(Reader& reader, const Place& at, recalibrate::Pulse& pulse) {
   const auto kind = reader.choice(reader.need(at, "kind", listed(keys::kShapes)), keys::kShapes);
   const Place edge = at["edge"], width = at["width"];
   const auto edge_s = reader.quantity(edge, Dimension::time, kNotNegative);
-  const auto cut = reader.quantity(width, Dimension::number, {1.0, 100.0, true, "above 1 and at most 100: the whole pulse over its length"});
+  const auto cut = reader.quantity(width, Dimension::number,
+                                   {1.0, 100.0, true, "above 1 and at most 100: the whole pulse over its length"});
   if (!kind) return;
   const auto shape = static_cast<Shape>(*kind);
-  if (edge && shape != Shape::square) reader.fault(edge, "found an edge, expected none: only a square pulse has edges of its own");
+  if (edge && shape != Shape::square)
+    reader.fault(edge, "found an edge, expected none: only a square pulse has edges of its own");
   if (width && shape != Shape::gaussian) reader.fault(width, "found a width, expected none: only a Gaussian is cut");
-  if (shape == Shape::gaussian) reader.need(at, "width", "where the Gaussian is cut: the whole pulse over its length at half amplitude, such as 3");
+  if (shape == Shape::gaussian)
+    reader.need(at, "width", "where the Gaussian is cut: the whole pulse over its length at half amplitude, such as 3");
   if (edge_s && pulse.length_s > 0.0 && *edge_s > pulse.minimum_s)
-    reader.fault(edge, "found " + wire::in_quotes(edge.node->text) + ", expected an edge of at most the shortest pulse, " + engineering(pulse.minimum_s, "s"));
+    reader.fault(edge, "found " + wire::in_quotes(edge.node->text) + ", expected an edge of at most the shortest pulse, " +
+                           engineering(pulse.minimum_s, "s"));
   pulse.area_factor = area_factor(shape, cut.value_or(3.0));
 }
 
@@ -58,8 +65,12 @@ recalibrate::Pulse read_pulse(Reader& reader, const Place& at) {
   pulse.name = at.node->key;
   if (!reader.map(at, {keys::kPulse, keys::kPulseLater})) return pulse;
   reader.choice(at["adjust"], keys::kAdjust, keys::kAdjustLater);
-  pulse.angle_rad = reader.quantity(reader.need(at, "angle", "the angle of the pulse, such as pi/2"), Dimension::angle, kAngles).value_or(0.0);
-  pulse.length_s = reader.quantity(reader.need(at, "length", "the length in force, such as 4 us"), Dimension::time, kPositive).value_or(0.0);
+  pulse.angle_rad =
+      reader.quantity(reader.need(at, "angle", "the angle of the pulse, such as pi/2"), Dimension::angle, kAngles)
+          .value_or(0.0);
+  pulse.length_s =
+      reader.quantity(reader.need(at, "length", "the length in force, such as 4 us"), Dimension::time, kPositive)
+          .value_or(0.0);
   pulse.tick_s = reader.quantity(at["tick"], Dimension::time, kNotNegative).value_or(0.0);
   read_limits(reader, at["limits"], pulse);
   check_tick(reader, at["tick"], pulse);

@@ -44,7 +44,8 @@ void Reader::fault_at_key(const Place& at, std::string message) {
 bool Reader::map(const Place& at, const Keys& keys) {
   if (!at) return false;
   if (at.node->kind != Node::Kind::map) {
-    std::vector<std::string_view> few(keys.known.begin(), keys.known.begin() + std::min<std::ptrdiff_t>(3, std::ssize(keys.known)));
+    std::vector<std::string_view> few(keys.known.begin(),
+                                      keys.known.begin() + std::min<std::ptrdiff_t>(3, std::ssize(keys.known)));
     fault(at, "found " + found(*at.node) + ", expected a map with keys such as " + listed(few));
     return false;
   }
@@ -65,19 +66,22 @@ bool Reader::map_of_names(const Place& at, std::string_view what) {
   if (!at) return false;
   if (at.node->kind != Node::Kind::map || at.node->children.empty()) {
     const bool empty = at.node->kind == Node::Kind::map;
-    fault(at, "found " + (empty ? "an empty map" : found(*at.node)) + ", expected at least one " + std::string(what) + " by its name");
+    fault(at, "found " + (empty ? "an empty map" : found(*at.node)) + ", expected at least one " + std::string(what) +
+                  " by its name");
     return false;
   }
   for (const Node& child : at.node->children)
     if (!wire::is_name(child.key))
-      fault_at_key(at.child(child), "found the name " + wire::in_quotes(child.key) + ", expected 1 to 48 of A-Z a-z 0-9 _ -");
+      fault_at_key(at.child(child),
+                   "found the name " + wire::in_quotes(child.key) + ", expected 1 to 48 of A-Z a-z 0-9 _ -");
   return true;
 }
 
 bool Reader::list(const Place& at, std::string_view expected) {
   if (!at) return false;
   if (at.node->kind == Node::Kind::list && !at.node->children.empty()) return true;
-  fault(at, "found " + (at.node->kind == Node::Kind::list ? "an empty list" : found(*at.node)) + ", expected " + std::string(expected));
+  fault(at, "found " + (at.node->kind == Node::Kind::list ? "an empty list" : found(*at.node)) + ", expected " +
+                std::string(expected));
   return false;
 }
 
@@ -111,12 +115,14 @@ std::optional<double> Reader::quantity(const Place& at, Dimension dimension, con
   return *value;
 }
 
-std::optional<std::pair<double, double>> Reader::pair(const Place& at, Dimension first, const Range& first_range, Dimension second,
-                                                      const Range& second_range, std::string_view expected) {
+std::optional<std::pair<double, double>> Reader::pair(const Place& at, Dimension first, const Range& first_range,
+                                                      Dimension second, const Range& second_range,
+                                                      std::string_view expected) {
   if (!at) return std::nullopt;
   if (at.node->kind != Node::Kind::list || at.node->children.size() != 2) {
     const bool list = at.node->kind == Node::Kind::list;
-    fault(at, "found " + (list ? "a list of " + std::to_string(at.node->children.size()) : found(*at.node)) + ", expected " + std::string(expected));
+    fault(at, "found " + (list ? "a list of " + std::to_string(at.node->children.size()) : found(*at.node)) + ", expected " +
+                  std::string(expected));
     return std::nullopt;
   }
   const auto a = quantity(at.child(at.node->children[0]), first, first_range);
@@ -134,7 +140,8 @@ std::optional<long long> Reader::integer(const Place& at, long long low, long lo
   const bool octal = text.size() > 1 && text[0] == '0';
   if (whole && !octal && value >= low && value <= high) return value;
   fault(at, "found " + found(*at.node) + ", expected " +
-                (low == high ? std::to_string(low) : "a whole number from " + std::to_string(low) + " to " + std::to_string(high)));
+                (low == high ? std::to_string(low)
+                             : "a whole number from " + std::to_string(low) + " to " + std::to_string(high)));
   return std::nullopt;
 }
 
@@ -154,14 +161,16 @@ std::optional<std::string> Reader::text(const Place& at, std::string_view expect
   return std::nullopt;
 }
 
-std::optional<std::size_t> Reader::choice(const Place& at, std::span<const std::string_view> words, std::span<const std::string_view> later_words) {
+std::optional<std::size_t> Reader::choice(const Place& at, std::span<const std::string_view> words,
+                                          std::span<const std::string_view> later_words) {
   if (!at) return std::nullopt;
   const Node& node = *at.node;
   if (node.kind == Node::Kind::scalar) {
     const auto word = std::find(words.begin(), words.end(), node.text);
     if (word != words.end()) return static_cast<std::size_t>(word - words.begin());
     if (holds(later_words, node.text)) {
-      fault(at, "found " + wire::in_quotes(node.text) + ", which is not available in this version, expected " + listed(words));
+      fault(at,
+            "found " + wire::in_quotes(node.text) + ", which is not available in this version, expected " + listed(words));
       return std::nullopt;
     }
   }

@@ -19,7 +19,7 @@ struct Place {
   std::string path;
 
   explicit operator bool() const { return node != nullptr; }
-  Place child(const Node& child) const;       // of a map by its key, of a list by its number
+  Place child(const Node& child) const;          // of a map by its key, of a list by its number
   Place operator[](std::string_view key) const;  // child of a map; empty where there is none
 };
 
@@ -48,8 +48,9 @@ class Reader {
   void fault(const Place& at, std::string message);
   void fault_at_key(const Place& at, std::string message);  // at the key of a map's child instead of its value
 
-  bool map(const Place& at, const Keys& keys);        // whether it is a map; unknown keys are noted
-  bool map_of_names(const Place& at, std::string_view what);  // whether it is a map whose keys are names of 1 to 48 characters
+  bool map(const Place& at, const Keys& keys);  // whether it is a map; unknown keys are noted
+  bool map_of_names(const Place& at,
+                    std::string_view what);  // whether it is a map whose keys are names of 1 to 48 characters
   bool list(const Place& at, std::string_view expected);
   Place need(const Place& map, std::string_view key, std::string_view expected);  // the child; its absence is a fault
 
@@ -59,7 +60,8 @@ class Reader {
   std::optional<long long> integer(const Place& at, long long low, long long high);
   std::optional<bool> flag(const Place& at);
   std::optional<std::string> text(const Place& at, std::string_view expected);
-  std::optional<std::size_t> choice(const Place& at, std::span<const std::string_view> words, std::span<const std::string_view> later = {});
+  std::optional<std::size_t> choice(const Place& at, std::span<const std::string_view> words,
+                                    std::span<const std::string_view> later = {});
 
   std::vector<Diagnosis> faults;
 };

@@ -23,7 +23,8 @@ constexpr std::size_t kNone = std::numeric_limits<std::size_t>::max();
 constexpr string_view kAxes[] = {"duration_s", "detuning_hz", "amplitude"};  // in the order of wire::AxisKind
 constexpr string_view kObserved[] = {"counts", "signal", "photons"};         // in the order of wire::ReadoutKind
 constexpr string_view kWeights[] = {"shots", "sigma", "exposures"};
-constexpr string_view kColumns[] = {"duration_s", "detuning_hz", "amplitude", "counts", "shots", "signal", "sigma", "photons", "exposures", "site"};
+constexpr string_view kColumns[] = {"duration_s", "detuning_hz", "amplitude", "counts",    "shots",
+                                    "signal",     "sigma",       "photons",   "exposures", "site"};
 
 /// Where the columns are.
 struct Layout {
@@ -69,14 +70,19 @@ class ScanReader {
     const std::size_t before = reader_.faults.size();
     for (std::size_t i = 0; i < header.size(); ++i) {
       const Cell& cell = header[i];
-      const string_view separators = cell.text.find_first_of(";\t") == std::string::npos ? "" : "; columns are separated by commas";
+      const string_view separators =
+          cell.text.find_first_of(";\t") == std::string::npos ? "" : "; columns are separated by commas";
       if (index_of(kColumns, cell.text) == kNone)
-        fault(cell, "", "found the unknown column " + wire::in_quotes(cell.text) + ", expected a known one: the nearest is " +
-                            wire::in_quotes(wire::nearest(cell.text, kColumns)) + std::string(separators));
-      else if (std::any_of(header.begin(), header.begin() + static_cast<std::ptrdiff_t>(i), [&](const Cell& c) { return c.text == cell.text; }))
+        fault(cell, "",
+              "found the unknown column " + wire::in_quotes(cell.text) + ", expected a known one: the nearest is " +
+                  wire::in_quotes(wire::nearest(cell.text, kColumns)) + std::string(separators));
+      else if (std::any_of(header.begin(), header.begin() + static_cast<std::ptrdiff_t>(i),
+                           [&](const Cell& c) { return c.text == cell.text; }))
         fault(cell, cell.text, "found the column a second time, expected it once");
       else if ((i == 0) != (index_of(kAxes, cell.text) != kNone))
-        fault(cell, cell.text, "found " + wire::in_quotes(cell.text) + ", expected duration_s, detuning_hz or amplitude as the first column, and only there");
+        fault(cell, cell.text,
+              "found " + wire::in_quotes(cell.text) +
+                  ", expected duration_s, detuning_hz or amplitude as the first column, and only there");
     }
     return reader_.faults.size() == before;
   }
@@ -100,9 +106,14 @@ class ScanReader {
     }
     const auto kind = static_cast<std::size_t>(scan_.readout_kind);
     layout_.fixed_weight = std::array{metadata.shots, metadata.sigma, metadata.exposures}[kind];
-    if (readouts == 1 && layout_.observed != kNone && (layout_.weight != kNone) != layout_.fixed_weight.has_value()) return true;
-    fault(header[0], "", "found " + std::string(readouts > 1 ? "several readouts" : readouts == 0 ? "no readout" : "half of a readout or a weight given twice") +
-                             ", expected one of counts,shots or signal,sigma or photons,exposures");
+    if (readouts == 1 && layout_.observed != kNone && (layout_.weight != kNone) != layout_.fixed_weight.has_value())
+      return true;
+    fault(header[0], "",
+          "found " +
+              std::string(readouts > 1    ? "several readouts"
+                          : readouts == 0 ? "no readout"
+                                          : "half of a readout or a weight given twice") +
+              ", expected one of counts,shots or signal,sigma or photons,exposures");
     return false;
   }
 
@@ -136,7 +147,9 @@ class ScanReader {
     return std::nullopt;
   }
 
-  double no_weight() const { return scan_.readout_kind == wire::ReadoutKind::gaussian ? std::numeric_limits<double>::infinity() : 0.0; }
+  double no_weight() const {
+    return scan_.readout_kind == wire::ReadoutKind::gaussian ? std::numeric_limits<double>::infinity() : 0.0;
+  }
 
   std::optional<Point> read_point(const Row& row) {
     const auto axis = read_axis(row[0]);
@@ -146,11 +159,14 @@ class ScanReader {
     if (not_measured(cell) || *weight == 0.0) return Point{*axis, 0.0, no_weight()};
     const auto kind = static_cast<std::size_t>(scan_.readout_kind);
     const auto observed = number(cell, kObserved[kind], "a number, or nothing where the point was not measured");
-    if (!observed || scan_.readout_kind == wire::ReadoutKind::gaussian) return observed ? std::optional(Point{*axis, *observed, *weight}) : std::nullopt;
+    if (!observed || scan_.readout_kind == wire::ReadoutKind::gaussian)
+      return observed ? std::optional(Point{*axis, *observed, *weight}) : std::nullopt;
     const bool whole = wire::is_count(*observed);
     const bool fits = scan_.readout_kind == wire::ReadoutKind::poisson || *observed <= *weight;
     if (whole && fits) return Point{*axis, *observed, *weight};
-    fault(cell, kObserved[kind], "found " + wire::in_quotes(cell.text) + ", expected " + (whole ? "at most the shots beside it" : "a whole number of at least 0"));
+    fault(cell, kObserved[kind],
+          "found " + wire::in_quotes(cell.text) + ", expected " +
+              (whole ? "at most the shots beside it" : "a whole number of at least 0"));
     return std::nullopt;
   }
 
@@ -164,7 +180,8 @@ class ScanReader {
     }
     const auto [at, fresh] = sites_.emplace(cell.text, sites_.size());
     if (fresh) scan_.sites.push_back(cell.text);
-    if (fresh && scan_.sites.size() > limits_.sites) fault(cell, "site", "found more than " + std::to_string(limits_.sites) + " sites, expected fewer");
+    if (fresh && scan_.sites.size() > limits_.sites)
+      fault(cell, "site", "found more than " + std::to_string(limits_.sites) + " sites, expected fewer");
     return scan_.sites.size() > limits_.sites ? kNone : at->second;
   }
 
@@ -178,7 +195,9 @@ class ScanReader {
 
   void read_row(const Row& row) {
     if (row.size() != layout_.width)
-      return fault(row[0], "", "found " + std::to_string(row.size()) + " values, expected " + std::to_string(layout_.width) + " as in the header");
+      return fault(row[0], "",
+                   "found " + std::to_string(row.size()) + " values, expected " + std::to_string(layout_.width) +
+                       " as in the header");
     const auto point = read_point(row);
     const std::size_t site = site_index(row);
     if (!point || site == kNone) return;
@@ -212,9 +231,11 @@ class ScanReader {
     const Place top{&metadata.node, ""};
     if (scan_.axis_kind == wire::AxisKind::duration) scan_.pulse_s.reset();
     if (scan_.axis_kind != wire::AxisKind::duration && !scan_.pulse_s && !top["pulse_s"])
-      fault(header[0], "pulse_s", "found nothing, expected the length of the pulse as a line such as # pulse_s: 4.2e-6 above the header");
+      fault(header[0], "pulse_s",
+            "found nothing, expected the length of the pulse as a line such as # pulse_s: 4.2e-6 above the header");
     if (metadata.references_kind && *metadata.references_kind != scan_.readout_kind)
-      reader_.fault(top["references"], "found references of another readout than the scan's, expected the same (a Gaussian signal has none)");
+      reader_.fault(top["references"],
+                    "found references of another readout than the scan's, expected the same (a Gaussian signal has none)");
     if (!scan_.at_s.empty() && scan_.at_s.size() != scan_.axis.size())
       reader_.fault(top["at_s"], "found " + std::to_string(scan_.at_s.size()) + " times, expected one for each of " +
                                      std::to_string(scan_.axis.size()) + " points");
@@ -259,7 +280,8 @@ ScanReading read_scan_file(const std::string& path, const ScanLimits& limits) {
   const auto text = file_text(path, limits.bytes);
   if (!text) return {std::nullopt, {{0, 0, "", text.error().message}}};
   ScanReading reading = read_scan(*text, limits);
-  if (reading.scan && reading.scan->scan_name.empty()) reading.scan->scan_name = std::filesystem::path(path).stem().string().substr(0, 64);
+  if (reading.scan && reading.scan->scan_name.empty())
+    reading.scan->scan_name = std::filesystem::path(path).stem().string().substr(0, 64);
   return reading;
 }
 

@@ -12,15 +12,17 @@ namespace {
 
 using std::string_view;
 
-constexpr string_view kKeys[] = {"scan_name",  "drive", "taken_at", "pulse_s", "drive_amplitude", "carrier_hz", "prepared",
-                                 "references", "ambient", "at_s",   "shots",   "sigma",           "exposures"};
+constexpr string_view kKeys[] = {"scan_name",  "drive",   "taken_at", "pulse_s", "drive_amplitude", "carrier_hz", "prepared",
+                                 "references", "ambient", "at_s",     "shots",   "sigma",           "exposures"};
 constexpr string_view kColumns[] = {"duration_s", "detuning_hz", "amplitude", "counts", "signal", "photons", "sites"};
 constexpr string_view kCounts[] = {"bright_counts", "bright_shots", "dark_counts", "dark_shots"};
 constexpr string_view kPhotons[] = {"bright_photons", "bright_exposures", "dark_photons", "dark_exposures"};
 constexpr string_view kReferences[] = {"bright_counts",  "bright_shots",     "dark_counts",  "dark_shots",
                                        "bright_photons", "bright_exposures", "dark_photons", "dark_exposures"};
 
-bool holds(std::span<const string_view> words, string_view word) { return std::find(words.begin(), words.end(), word) != words.end(); }
+bool holds(std::span<const string_view> words, string_view word) {
+  return std::find(words.begin(), words.end(), word) != words.end();
+}
 
 bool is_key(string_view text) {
   const auto fits = [](char c) {
@@ -32,7 +34,8 @@ bool is_key(string_view text) {
 /// Whether a word is so near to a key that it was meant as one: two letters off, or its beginning of at least four letters
 /// (`pulse`, `referneces`). Words such as `note`, `date` and `lab` are further away.
 bool nearly(string_view word, string_view key) {
-  return wire::edit_distance(word, key) <= std::min<std::size_t>(2, key.size() / 3) || (word.size() >= 4 && key.starts_with(word));
+  return wire::edit_distance(word, key) <= std::min<std::size_t>(2, key.size() / 3) ||
+         (word.size() >= 4 && key.starts_with(word));
 }
 
 void shift(Node& node, int line, int column) {
@@ -51,7 +54,8 @@ Node value_node(Reader& reader, string_view text, int line, int column) {
   if (quotes) node.text = text.substr(1, text.size() - 2);
   if (!text.starts_with('{') && !text.starts_with('[')) return node;
   Document document = read_document(std::string(text), {std::size_t{16} << 20, 200'000, 4});
-  for (Diagnosis& one : document.faults) reader.faults.push_back({line, column + std::max(one.column, 1) - 1, one.path, one.message});
+  for (Diagnosis& one : document.faults)
+    reader.faults.push_back({line, column + std::max(one.column, 1) - 1, one.path, one.message});
   if (!document.complete) return node;
   shift(document.root, line, column - 1);
   return std::move(document.root);
@@ -64,7 +68,9 @@ void place(Reader& reader, Node& map, string_view key, Node value, int column, c
   auto child = std::find_if(map.children.begin(), map.children.end(), [&](const Node& node) { return node.key == head; });
   const bool fresh = child == map.children.end();
   if (!fresh && (dot == string_view::npos || child->kind != Node::Kind::map)) {
-    reader.faults.push_back({value.line, column, path, "found the key a second time (first in line " + std::to_string(child->key_line) + "), expected it once"});
+    reader.faults.push_back(
+        {value.line, column, path,
+         "found the key a second time (first in line " + std::to_string(child->key_line) + "), expected it once"});
     return;
   }
   const int line = value.line;
@@ -88,28 +94,33 @@ void read_comment(Reader& reader, Node& root, const Comment& comment) {
   const string_view head = key.substr(0, key.find('.'));
   if (lead == std::string::npos || !is_key(key)) return;
   if (holds(kColumns, key)) {
-    reader.faults.push_back({comment.line, comment.column, std::string(key), "found a column above the header, expected it in the table"});
+    reader.faults.push_back(
+        {comment.line, comment.column, std::string(key), "found a column above the header, expected it in the table"});
     return;
   }
   const bool known = holds(kKeys, head) && (head == key || head == "references" || head == "ambient");
   if (!known) {
     const string_view nearest = wire::nearest(head, kKeys);
     if (nearly(head, nearest))
-      reader.faults.push_back({comment.line, comment.column, std::string(key), "found an unknown key, expected a key of a scan: the nearest is " +
-                                                                                    wire::in_quotes(nearest) + " (a remark has no colon after its first word)"});
+      reader.faults.push_back({comment.line, comment.column, std::string(key),
+                               "found an unknown key, expected a key of a scan: the nearest is " + wire::in_quotes(nearest) +
+                                   " (a remark has no colon after its first word)"});
     return;
   }
   std::size_t begin = comment.text.find_first_not_of(" \t", colon + 1);
   if (begin == std::string::npos) begin = comment.text.size();
   const int offset = position(comment.text, begin).column - 1;
-  if (!spaced) reader.faults.push_back({comment.line, comment.column, std::string(key), "found no space after the colon, expected one"});
+  if (!spaced)
+    reader.faults.push_back(
+        {comment.line, comment.column, std::string(key), "found no space after the colon, expected one"});
   Node value = value_node(reader, string_view(comment.text).substr(begin), comment.line, comment.column + offset);
   place(reader, root, key, std::move(value), comment.column, std::string(key));
 }
 
 std::optional<double> whole(Reader& reader, const Place& at) {
   const auto value = reader.quantity(at, Dimension::number, kNotNegative);
-  if (value && !wire::is_count(*value)) reader.fault(at, "found " + wire::in_quotes(at.node->text) + ", expected a whole number");
+  if (value && !wire::is_count(*value))
+    reader.fault(at, "found " + wire::in_quotes(at.node->text) + ", expected a whole number");
   return value;
 }
 
@@ -132,7 +143,8 @@ void read_references(Reader& reader, const Place& at, Metadata& out) {
 
 void read_ambient(Reader& reader, const Place& at, wire::Scan& scan) {
   if (!at) return;
-  if (at.node->kind != Node::Kind::map) return reader.fault(at, "found " + found(*at.node) + ", expected a map of names and numbers");
+  if (at.node->kind != Node::Kind::map)
+    return reader.fault(at, "found " + found(*at.node) + ", expected a map of names and numbers");
   for (const Node& child : at.node->children)
     if (const auto value = reader.quantity(at.child(child), Dimension::number)) scan.ambient[child.key] = *value;
 }
@@ -140,21 +152,25 @@ void read_ambient(Reader& reader, const Place& at, wire::Scan& scan) {
 void read_times(Reader& reader, const Place& top, wire::Scan& scan) {
   if (const auto text = reader.text(top["taken_at"], "a time such as 2026-02-03T04:05:06Z")) {
     scan.taken_at = wire::parse_time(*text);
-    if (!scan.taken_at) reader.fault(top["taken_at"], "found " + wire::in_quotes(*text) + ", expected a time such as 2026-02-03T04:05:06Z");
+    if (!scan.taken_at)
+      reader.fault(top["taken_at"], "found " + wire::in_quotes(*text) + ", expected a time such as 2026-02-03T04:05:06Z");
   }
   const Place at = top["at_s"];
   if (!at || !reader.list(at, "a list of seconds, one a point")) return;
-  for (const Node& child : at.node->children) scan.at_s.push_back(reader.quantity(at.child(child), Dimension::number).value_or(0.0));
+  for (const Node& child : at.node->children)
+    scan.at_s.push_back(reader.quantity(at.child(child), Dimension::number).value_or(0.0));
 }
 
 void read_names(Reader& reader, const Place& top, wire::Scan& scan) {
   if (const auto name = reader.text(top["scan_name"], "a name")) {
     scan.scan_name = *name;
-    if (!wire::is_printable(*name, 128)) reader.fault(top["scan_name"], "found " + wire::in_quotes(*name) + ", expected 1 to 128 printable characters");
+    if (!wire::is_printable(*name, 128))
+      reader.fault(top["scan_name"], "found " + wire::in_quotes(*name) + ", expected 1 to 128 printable characters");
   }
   if (const auto name = reader.text(top["drive"], "the name of a drive")) {
     scan.drive = *name;
-    if (!wire::is_name(*name)) reader.fault(top["drive"], "found " + wire::in_quotes(*name) + ", expected 1 to 48 of A-Z a-z 0-9 _ -");
+    if (!wire::is_name(*name))
+      reader.fault(top["drive"], "found " + wire::in_quotes(*name) + ", expected 1 to 48 of A-Z a-z 0-9 _ -");
   }
 }
 

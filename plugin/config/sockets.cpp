@@ -30,7 +30,8 @@ std::optional<Endpoint> host_and_port(std::string_view text) {
   std::string_view host = text.substr(0, colon);
   const bool bracketed = host.size() > 2 && host.front() == '[' && host.back() == ']';
   if (bracketed) host = host.substr(1, host.size() - 2);
-  if (host.find_first_of(" /[]") != std::string_view::npos || (!bracketed && host.find(':') != std::string_view::npos)) return std::nullopt;
+  if (host.find_first_of(" /[]") != std::string_view::npos || (!bracketed && host.find(':') != std::string_view::npos))
+    return std::nullopt;
   const auto number = port(text.substr(colon + 1));
   if (!number) return std::nullopt;
   return Endpoint{std::string(host), *number, std::string(text), {}};
@@ -70,7 +71,8 @@ std::optional<Endpoint> read_endpoint(Reader& reader, const Place& at, const std
   }
   endpoint->at = at;
   if (!is_loopback(endpoint->host) && !insecure)
-    reader.fault(at, "found " + wire::in_quotes(*text) + ", expected a loopback address such as 127.0.0.1. Binding an address that is not " +
+    reader.fault(at, "found " + wire::in_quotes(*text) +
+                         ", expected a loopback address such as 127.0.0.1. Binding an address that is not " +
                          "loopback needs keys, or insecure: true; keys are not available in this version");
   return endpoint;
 }
@@ -81,7 +83,9 @@ Sockets read_sockets(Reader& reader, const Place& at, bool insecure) {
   Sockets sockets;
   if (!at || !reader.map(at, {keys::kSockets})) return sockets;
   if (const Place feed = at["feed"]; feed && feed.node->kind == Node::Kind::map)
-    reader.fault(feed, "found a map; a feed that connects to the experiment's own PUB is not available in this version, expected an endpoint");
+    reader.fault(feed,
+                 "found a map; a feed that connects to the experiment's own PUB is not available in this version, expected "
+                 "an endpoint");
   const std::array<std::string*, 4> texts = {&sockets.requests, &sockets.feed, &sockets.results, &sockets.display};
   std::array<std::optional<Endpoint>, 4> endpoints;
   for (std::size_t i = 0; i < texts.size(); ++i) {
@@ -92,7 +96,8 @@ Sockets read_sockets(Reader& reader, const Place& at, bool insecure) {
     for (std::size_t j = 0; j < i; ++j)
       if (endpoints[i] && endpoints[j] && clash(*endpoints[i], *endpoints[j]))
         reader.fault(endpoints[i]->at ? endpoints[i]->at : endpoints[j]->at,
-                     "found the address of sockets." + std::string(keys::kSockets[endpoints[i]->at ? j : i]) + " again, expected one of its own");
+                     "found the address of sockets." + std::string(keys::kSockets[endpoints[i]->at ? j : i]) +
+                         " again, expected one of its own");
   }
   return sockets;
 }

@@ -55,7 +55,9 @@ atom::InlineTransition read_numbers(Reader& reader, const Place& at) {
 Place culprit(const Place& at, std::string_view where) {
   const std::string_view field = where.substr(std::min(where.find('.'), where.size() - 1) + 1);
   for (const Node& child : at.node->children)
-    if (field == child.key || (field.starts_with(child.key) && (field[child.key.size()] == '_' || field[child.key.size()] == '.'))) return at.child(child);
+    if (field == child.key ||
+        (field.starts_with(child.key) && (field[child.key.size()] == '_' || field[child.key.size()] == '.')))
+      return at.child(child);
   return at;
 }
 
@@ -64,7 +66,8 @@ std::optional<atom::Transition> keep(Reader& reader, const Place& at, Result<ato
   const Fault& wrong = transition.error();
   std::string_view message = wrong.message;
   if (at.node->kind == Node::Kind::map) {
-    reader.fault(culprit(at, wrong.where), (message.starts_with("found") ? "" : "found too little for a transition: ") + wrong.message);
+    reader.fault(culprit(at, wrong.where),
+                 (message.starts_with("found") ? "" : "found too little for a transition: ") + wrong.message);
     return std::nullopt;
   }
   if (const std::string name = "'" + at.node->text + "': "; message.starts_with(name)) message.remove_prefix(name.size());
@@ -86,7 +89,8 @@ std::optional<atom::Transition> read_transition(Reader& reader, const Place& at)
   if (!name) return std::nullopt;
   const auto& lines = built_in_catalogue();
   if (!lines) {
-    reader.fault(at, "found no catalogue of transitions that can be read, expected the one of this program: " + lines.error().message);
+    reader.fault(at, "found no catalogue of transitions that can be read, expected the one of this program: " +
+                         lines.error().message);
     return std::nullopt;
   }
   return keep(reader, at, atom::resolve(*name, *lines));

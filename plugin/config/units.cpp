@@ -77,8 +77,18 @@ double prefixed(std::string_view unit, std::string_view base) {
     std::string_view text;
     double factor;
   };
-  static constexpr std::array<Prefix, 12> kPrefixes = {{{"", 1.0}, {"f", 1e-15}, {"p", 1e-12}, {"n", 1e-9}, {"u", 1e-6}, {"\u00b5", 1e-6},
-                                                        {"\u03bc", 1e-6}, {"m", 1e-3}, {"k", 1e3}, {"M", 1e6}, {"G", 1e9}, {"T", 1e12}}};
+  static constexpr std::array<Prefix, 12> kPrefixes = {{{"", 1.0},
+                                                        {"f", 1e-15},
+                                                        {"p", 1e-12},
+                                                        {"n", 1e-9},
+                                                        {"u", 1e-6},
+                                                        {"\u00b5", 1e-6},
+                                                        {"\u03bc", 1e-6},
+                                                        {"m", 1e-3},
+                                                        {"k", 1e3},
+                                                        {"M", 1e6},
+                                                        {"G", 1e9},
+                                                        {"T", 1e12}}};
   if (!unit.ends_with(base)) return std::nan("");
   const std::string_view head = unit.substr(0, unit.size() - base.size());
   for (const Prefix& prefix : kPrefixes)
@@ -218,7 +228,8 @@ std::string expected(Dimension dimension, std::string_view number) {
   const std::string example(number.empty() ? word.number : number);
   if (dimension == Dimension::number) return "a number without a unit, such as " + example;
   if (dimension == Dimension::fraction) return "a fraction without a unit, such as 0.2 or 20 %";
-  return std::string(word.article) + " with its unit, such as " + example + " " + std::string(word.unit) + " (or " + std::string(word.others) + ")";
+  return std::string(word.article) + " with its unit, such as " + example + " " + std::string(word.unit) + " (or " +
+         std::string(word.others) + ")";
 }
 
 }  // namespace halfturn::config

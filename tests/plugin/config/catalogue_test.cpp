@@ -11,7 +11,8 @@ std::string line(const std::string& change) {
   return "format: 1\nlines:\n  - species: Rb85\n    labels: [D2]\n    twice_I: 5\n    kind: electric_dipole\n"
          "    lower: {term: 5S1/2, twice_J: 1, parity: even}\n    upper: {term: 5P3/2, twice_J: 3, parity: odd}\n"
          "    lifetime_s: {value: 26.2348e-9, sigma: 7.7e-12, source: \"D. A. Steck\", status: read}\n"
-         "    recommended: [\"Rb85 D2 F=3 m=3 -> F'=4 m'=4 sigma+\"]\n    " + change + "\n";
+         "    recommended: [\"Rb85 D2 F=3 m=3 -> F'=4 m'=4 sigma+\"]\n    " +
+         change + "\n";
 }
 
 std::string faults(const std::string& text) {
@@ -19,7 +20,8 @@ std::string faults(const std::string& text) {
   return lines ? "" : lines.error().message;
 }
 
-const std::string kWavelength = "wavelength_m: {value: 780.241368271e-9, sigma: 2.7e-17, source: \"D. A. Steck\", status: read, computed: false}";
+const std::string kWavelength =
+    "wavelength_m: {value: 780.241368271e-9, sigma: 2.7e-17, source: \"D. A. Steck\", status: read, computed: false}";
 
 }  // namespace
 
@@ -55,14 +57,18 @@ TEST_CASE("A line of the catalogue is read to the letter") {
 }
 
 TEST_CASE("Faults of a catalogue have their places") {
-  CHECK(faults(line("wavelength: {value: 1}")).find("catalogue:11:5: lines[0].wavelength: found the unknown key \"wavelength\", expected a known key: "
-                                                    "the nearest is \"wavelength_m\"") == 0);
+  CHECK(faults(line("wavelength: {value: 1}"))
+            .find("catalogue:11:5: lines[0].wavelength: found the unknown key \"wavelength\", expected a known key: "
+                  "the nearest is \"wavelength_m\"") == 0);
   CHECK(faults(line("wavelength_m: {value: 780 nm, sigma: 0, source: x, status: seen}")) ==
-        "catalogue:11:27: lines[0].wavelength_m.value: found \"780 nm\" (a length), expected a number without a unit, such as 780\n"
+        "catalogue:11:27: lines[0].wavelength_m.value: found \"780 nm\" (a length), expected a number without a unit, such "
+        "as 780\n"
         "catalogue:11:64: lines[0].wavelength_m.status: found \"seen\", expected read, quoted or recalled");
-  CHECK(faults(line(kWavelength + "\n    twice_I: 5")) == "catalogue:12:5: lines[0].twice_I: found the key \"twice_I\" a second time (first in line 5), expected it once");
+  CHECK(faults(line(kWavelength + "\n    twice_I: 5")) ==
+        "catalogue:12:5: lines[0].twice_I: found the key \"twice_I\" a second time (first in line 5), expected it once");
   CHECK(faults("format: 1\nlines: []\n") == "catalogue:2:8: lines: found an empty list, expected a list of lines");
   CHECK(faults("format: 1\n").find("catalogue:1:1: lines: found nothing, expected a list of lines") == 0);
   // A line that contradicts itself: the lifetime of Rb85's D2 beside the linewidth of its D1.
-  CHECK(faults(line(kWavelength + "\n    linewidth_hz: {value: 5.75e+6, sigma: 1.0e+3, source: x, status: read}")).find("catalogue:3:5: lines[0]: ") == 0);
+  CHECK(faults(line(kWavelength + "\n    linewidth_hz: {value: 5.75e+6, sigma: 1.0e+3, source: x, status: read}"))
+            .find("catalogue:3:5: lines[0]: ") == 0);
 }

@@ -44,14 +44,17 @@ TEST_CASE("Columns count characters, not bytes") {
   REQUIRE(document.faults.empty());
   CHECK(document.root.find("a")->children[1].column == 12);
   CHECK(document.root.find("b")->line == 2);
-  CHECK(read_document("\xEF\xBB\xBF" "a: 1").root.find("a")->column == 4);
+  CHECK(read_document("\xEF\xBB\xBF"
+                      "a: 1")
+            .root.find("a")
+            ->column == 4);
 }
 
 TEST_CASE("What YAML allows and a configuration must not have is found, all at once") {
   CHECK(faults("a: 1\nb: 2\na: 3\nb: 4\n") ==
         "f:3:1: a: found the key \"a\" a second time (first in line 1), expected it once\n"
         "f:4:1: b: found the key \"b\" a second time (first in line 2), expected it once\n");
-  CHECK(faults("a: 1\n---\nb: 2\n") == "f:2:1: found a second document, expected one: take the --- line out\n");
+  CHECK(faults("a: 1\n---\nb: 2\n") == "f:2:1: found a second document, or text behind the first, expected one document\n");
   CHECK(faults("a: &x 1\nb: *x\n") ==
         "f:1:4: a: found an anchor (&), expected the value alone\n"
         "f:2:4: b: found an alias (*), expected the value itself\n");
@@ -63,8 +66,9 @@ TEST_CASE("What YAML allows and a configuration must not have is found, all at o
   CHECK(faults("") == "f:1:1: found nothing, expected a YAML document\n");
   CHECK(faults("# only a remark\n") == "f:1:1: found nothing, expected a YAML document\n");
   CHECK(faults("a: 1\n\tb: 2\n") == "f:2:1: found a tab before the text, expected spaces\n");
-  CHECK(faults("a: [1, 2\n") == "f:2:1: found text that is not YAML (end of sequence flow not found), expected YAML; look at brackets, "
-                                 "quotes, colons and indentation, also above\n");
+  CHECK(faults("a: [1, 2\n") ==
+        "f:2:1: found text that is not YAML (end of sequence flow not found), expected YAML; look at brackets, "
+        "quotes, colons and indentation, also above\n");
   const std::string open_quote = "found an opening quotation mark without its end, expected two\n";
   CHECK(faults("a: \"x\n") == "f:1:4: a: " + open_quote);
   CHECK(faults("a: \"x\\\"\n") == "f:1:4: a: " + open_quote);
@@ -90,6 +94,14 @@ TEST_CASE("A document that passes a limit is refused, however it tries") {
 TEST_CASE("Only well-formed UTF-8 is text") {
   const std::string good[] = {"a", "\xC2\xB5", "\xE0\xA0\x80", "\xED\x9F\xBF", "\xF0\x90\x80\x80", "\xF4\x8F\xBF\xBF"};
   for (const std::string& text : good) CHECK(first_bad_byte(text) == std::string::npos);
-  const std::string bad[] = {"\x80", "\xC0\x80", "\xC1\xBF", "\xC2", "\xE0\x9F\xBF", "\xED\xA0\x80", "\xF0\x8F\xBF\xBF", "\xF4\x90\x80\x80", "\xF5\x80\x80\x80"};
+  const std::string bad[] = {"\x80",
+                             "\xC0\x80",
+                             "\xC1\xBF",
+                             "\xC2",
+                             "\xE0\x9F\xBF",
+                             "\xED\xA0\x80",
+                             "\xF0\x8F\xBF\xBF",
+                             "\xF4\x90\x80\x80",
+                             "\xF5\x80\x80\x80"};
   for (const std::string& text : bad) CHECK(first_bad_byte("x" + text) == 1);
 }

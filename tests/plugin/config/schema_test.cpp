@@ -80,7 +80,8 @@ TEST_CASE("The schema's defaults are those of the program") {
 TEST_CASE("The example of a night names every key") {
   std::ifstream stream(std::string(HALFTURN_SOURCE_DIR) + "/examples/first-night.yaml");
   const std::string text{std::istreambuf_iterator<char>(stream), {}};
-  const std::span<const std::string_view> maps[] = {keys::kTop, keys::kSockets, keys::kDrive, keys::kBeam, keys::kReadout, keys::kExpect, keys::kSwitching, keys::kAccept};
+  const std::span<const std::string_view> maps[] = {keys::kTop,     keys::kSockets, keys::kDrive,     keys::kBeam,
+                                                    keys::kReadout, keys::kExpect,  keys::kSwitching, keys::kAccept};
   for (const auto& map : maps)
     for (const std::string_view key : map) {
       CAPTURE(key);

@@ -3,8 +3,8 @@
 
 #include "tests/support/catch.hpp"
 
-using halfturn::config::Dimension;
 using halfturn::config::decimal;
+using halfturn::config::Dimension;
 using halfturn::config::quantity;
 
 namespace {
@@ -82,22 +82,28 @@ TEST_CASE("Quantities read as SI values") {
 TEST_CASE("A quantity without its unit names the likely ones") {
   CHECK(message("45", Dimension::length) == "found \"45\", expected a length with its unit, such as 45 um (or nm, mm, m)");
   CHECK(message("8", Dimension::time) == "found \"8\", expected a time with its unit, such as 8 us (or ns, ms, s)");
-  CHECK(message("2000", Dimension::frequency) == "found \"2000\", expected a frequency with its unit, such as 2000 kHz (or Hz, MHz, GHz)");
-  CHECK(message("1.5", Dimension::angle) == "found \"1.5\", expected an angle with its unit, such as 1.5 mrad (or rad, deg, pi/2)");
+  CHECK(message("2000", Dimension::frequency) ==
+        "found \"2000\", expected a frequency with its unit, such as 2000 kHz (or Hz, MHz, GHz)");
+  CHECK(message("1.5", Dimension::angle) ==
+        "found \"1.5\", expected an angle with its unit, such as 1.5 mrad (or rad, deg, pi/2)");
   CHECK(message("0", Dimension::time) == "found \"0\", expected a time with its unit, such as 0 us (or ns, ms, s)");
 }
 
 TEST_CASE("A quantity of another kind is named") {
-  CHECK(message("2 um", Dimension::time) == "found \"2 um\" (a length), expected a time with its unit, such as 2 us (or ns, ms, s)");
+  CHECK(message("2 um", Dimension::time) ==
+        "found \"2 um\" (a length), expected a time with its unit, such as 2 us (or ns, ms, s)");
   CHECK(message("1e6 rad/s", Dimension::frequency) ==
-        "found \"1e6 rad/s\" (an angular frequency: divide it by 2 pi), expected a frequency with its unit, such as 1e6 kHz (or Hz, MHz, GHz)");
+        "found \"1e6 rad/s\" (an angular frequency: divide it by 2 pi), expected a frequency with its unit, such as 1e6 kHz "
+        "(or Hz, MHz, GHz)");
   CHECK(message("3 us", Dimension::number) == "found \"3 us\" (a time), expected a number without a unit, such as 3");
-  CHECK(message("3 us", Dimension::fraction) == "found \"3 us\" (a time), expected a fraction without a unit, such as 0.2 or 20 %");
+  CHECK(message("3 us", Dimension::fraction) ==
+        "found \"3 us\" (a time), expected a fraction without a unit, such as 0.2 or 20 %");
 }
 
 TEST_CASE("What is not a decimal number with a known unit is refused") {
-  for (const char* text : {"", " ", "um", "4 khz", "4 KHz", "4 HZ", "4 mhz", "0x10 kHz", "010 kHz", "1_000 kHz", "1,5 kHz", "inf kHz", "nan kHz",
-                           "1e999 kHz", "1e kHz", "4 kHz kHz", "4 k Hz", "--4 kHz", "4 xHz", "4 pi Hz"}) {
+  for (const char* text :
+       {"",        " ",       "um",      "4 khz",     "4 KHz",  "4 HZ",      "4 mhz",  "0x10 kHz", "010 kHz", "1_000 kHz",
+        "1,5 kHz", "inf kHz", "nan kHz", "1e999 kHz", "1e kHz", "4 kHz kHz", "4 k Hz", "--4 kHz",  "4 xHz",   "4 pi Hz"}) {
     CAPTURE(text);
     CHECK_FALSE(quantity(text, Dimension::frequency).has_value());
   }
