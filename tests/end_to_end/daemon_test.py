@@ -2,6 +2,7 @@
 """A running daemon: answers, signals, kills. What a fit holds is in the contract; what it should say is the truth
 that the scans were drawn from."""
 
+import fcntl
 import json
 import os
 import random
@@ -11,9 +12,10 @@ import subprocess
 import time
 import unittest
 
+import msgpack
 import zmq
 
-from apparatus import PROGRAM, RABI_HZ, DEAD_TIME_S, PATIENCE_S, InFolder, flop, program
+from apparatus import PROGRAM, RABI_HZ, DEAD_TIME_S, PATIENCE_S, InFolder, Peer, flop, program
 
 
 def moment(minutes):
@@ -210,20 +212,38 @@ class Exclusive(InFolder):
         self.assertRegex(daemon.line_with("listening"), r"^\d{4}-\d\d-\d\dT\d\d:\d\d:\d\d\.\d{3}Z info ")
 
 
+class Deaf(InFolder):
+    def test_a_supervisor_that_reads_no_log_lines_stops_nothing(self):
+        # Standard error is a pipe of the smallest size that nobody reads; 200 scans write more lines than it holds.
+        read, write = os.pipe()
+        fcntl.fcntl(write, fcntl.F_SETPIPE_SZ, 4096)
+        ports = self.daemon()
+        config = self.write("deaf.yaml", ports.config.read_text().replace("nights.db", "deaf.db").replace(
+            "tcp://127.0.0.1:0", f"ipc://{self.folder}/deaf", 1))
+        process = subprocess.Popen([PROGRAM, "serve", "--config", str(config)], stderr=write)
+        self.addCleanup(lambda: process.poll() is None and process.kill())
+        os.close(write)
+        peer = Peer(f"ipc://{self.folder}/deaf")
+        self.addCleanup(peer.close)
+        for i in range(200):
+            self.assertEqual(peer.ask("fit", {"scan": flop(seed=i, points=20, shots=20)})["kind"], "fitted")
+        process.send_signal(signal.SIGTERM)
+        self.assertEqual(process.wait(PATIENCE_S), 0)
+        os.close(read)
+
+
 class Published(InFolder):
     def test_the_feed_is_not_answered_and_what_it_brings_is_published(self):
         daemon = self.daemon()
-        context = zmq.Context()
-        self.addCleanup(context.destroy, linger=0)
-        feed, listener = context.socket(zmq.PUSH), context.socket(zmq.SUB)
-        feed.connect(daemon.feed)
-        listener.connect(daemon.results)
-        listener.subscribe(b"fitted/red/")
-        feed.send(json.dumps({"proto": 1, "kind": "fit", "id": "f1", "scan": flop(seed=31)}).encode())
-        self.assertTrue(listener.poll(1000 * PATIENCE_S))
-        topic, message = listener.recv_multipart()
+        with zmq.Context() as context, context.socket(zmq.PUSH) as feed, context.socket(zmq.SUB) as listener:
+            feed.connect(daemon.feed)
+            listener.connect(daemon.results)
+            listener.subscribe(b"fitted/red/")
+            feed.send(json.dumps({"proto": 1, "kind": "fit", "id": "f1", "scan": flop(seed=31)}).encode())
+            self.assertTrue(listener.poll(1000 * PATIENCE_S))
+            topic, message = listener.recv_multipart()
         self.assertEqual(topic, b"fitted/red/")
-        feed.close(linger=0)
+        self.assertEqual(msgpack.unpackb(message, timestamp=3)["scan_name"], "flop-31")
 
 
 if __name__ == "__main__":
