@@ -24,7 +24,7 @@ struct Expected {
 struct Prior {
   std::optional<Expected> expect;        // of the Rabi frequency; without: below the scan's sampling limit
   std::optional<Known> log_rabi;         // history's prediction of ln(Omega / (rad/s)) at the scan's time and drive amplitude
-  std::optional<Known> detuning;         // drive minus transition; without: exactly 0 (duration scans), free (detuning scans)
+  std::optional<Known> detuning;         // drive minus transition; without: exactly 0. The fit of a detuning scan does not read it
   std::optional<Known> floor, contrast;  // of the readout
   Known dead_time{0.0, 100e-9};          // s
   double decay = 0.0;                    // known natural decay within the pair

@@ -129,11 +129,11 @@ FitEvent event_of(const infer::Fit& fit, const Context& context) {
   return event;
 }
 
-/// What is tracked, as it will be when this fit has been taken.
+/// The Rabi frequency as it will be tracked when this fit has been taken.
 infer::Known tracked_after(const State& state, const FitEvent& event) {
   State after = state;
   advance(after, event);
-  return *(event.quantity == Quantity::line ? after.line : after.rabi).predict(event.at);
+  return *after.rabi.predict(event.at);
 }
 
 void decide_pulses(const State& state, const infer::Fit& fit, const infer::Prior& prior, const Context& context, Decision& decision) {
@@ -162,16 +162,22 @@ void keep_all(const State& state, const infer::Fit& fit, const infer::Prior& pri
   }
 }
 
-/// The line's offset from the carrier: this scan's, drawn towards the history where the experiment's own carrier numbers give it a
-/// place to be tracked at.
-infer::Known tracked_offset(const State& state, const infer::Fit& fit, const Context& context, const FitEvent& event) {
-  if (!std::isfinite(event.value)) return {fit.line_offset.value, fit.line_offset.sigma};
-  const infer::Known line = tracked_after(state, event);
-  return {line.mean - context.carrier, line.sigma};
+// A line further than so many sigmas from where it was known to lie has moved: what was known no longer counts.
+constexpr double kLineMoved = 3.0;
+
+/// The line's offset from the carrier: this scan's, weighed with what was known before it (how well the carrier sits on the
+/// line, or the tracked line), so that the carrier is not moved after the noise of single scans.
+infer::Known weighed_offset(const infer::Fit& fit, const infer::Prior& prior) {
+  const infer::Known seen{fit.line_offset.value, fit.line_offset.sigma};
+  if (!prior.detuning || !(prior.detuning->sigma > 0.0)) return seen;
+  const infer::Known known{-prior.detuning->mean, prior.detuning->sigma};
+  if (std::abs(seen.mean - known.mean) > kLineMoved * std::hypot(seen.sigma, known.sigma)) return seen;
+  const double a = 1.0 / (seen.sigma * seen.sigma), b = 1.0 / (known.sigma * known.sigma);
+  return {(a * seen.mean + b * known.mean) / (a + b), 1.0 / std::sqrt(a + b)};
 }
 
-void decide_carrier(const State& state, const infer::Fit& fit, const Context& context, Decision& decision) {
-  const infer::Known offset = tracked_offset(state, fit, context, decision.event);
+void decide_carrier(const infer::Fit& fit, const infer::Prior& prior, Decision& decision) {
+  const infer::Known offset = weighed_offset(fit, prior);
   decision.verdict = Verdict::keep;
   if (std::abs(offset.mean) <= std::max(offset.sigma, kLeastCarrierStep * fit.quality.line_width)) return;
   decision.verdict = Verdict::apply;
@@ -222,7 +228,7 @@ Decision decide(const State& state, const infer::Fit& fit, const infer::Prior& p
     decision.verdict = Verdict::refuse;
     keep_all(state, fit, prior, context, Verdict::refuse, decision);
   } else if (fit.axis == infer::Axis::detuning) {
-    decide_carrier(state, fit, context, decision);
+    decide_carrier(fit, prior, decision);
     keep_all(state, fit, prior, context, Verdict::keep, decision);
   } else {
     decide_pulses(state, fit, prior, context, decision);

@@ -38,7 +38,6 @@ struct Context {
   std::optional<infer::Expected> expect;
   Time taken_at = 0;
   double carrier = kAbsent;            // the experiment's own number for its carrier, rad/s
-  bool carrier_known = false;          // the configuration or history says how well the carrier sits on the line
   double transition_frequency = kAbsent;  // rad/s, of the transition; for the rotating-wave check
   double drive_amplitude = kAbsent;    // relative; absent where the scan does not say
 };

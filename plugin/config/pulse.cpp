@@ -2,10 +2,10 @@
 #include <cmath>
 
 #include "model/quantity/constants.hpp"
+#include "model/dynamics/pulse_shape.hpp"
 #include "model/quantity/format.hpp"
 #include "plugin/config/keys.hpp"
 #include "plugin/config/sections.hpp"
-#include "plugin/config/shape.hpp"
 #include "plugin/wire/words.hpp"
 
 namespace halfturn::config {
@@ -46,16 +46,20 @@ void read_shape(Reader& reader, const Place& at, recalibrate::Pulse& pulse) {
   const auto cut = reader.quantity(width, Dimension::number,
                                    {1.0, 100.0, true, "above 1 and at most 100: the whole pulse over its length"});
   if (!kind) return;
-  const auto shape = static_cast<Shape>(*kind);
-  if (edge && shape != Shape::square)
+  const auto shape = static_cast<dynamics::Envelope>(*kind);
+  if (edge && shape != dynamics::Envelope::square)
     reader.fault(edge, "found an edge, expected none: only a square pulse has edges of its own");
-  if (width && shape != Shape::gaussian) reader.fault(width, "found a width, expected none: only a Gaussian is cut");
-  if (shape == Shape::gaussian)
+  if (width && shape != dynamics::Envelope::gaussian) reader.fault(width, "found a width, expected none: only a Gaussian is cut");
+  if (shape == dynamics::Envelope::gaussian)
     reader.need(at, "width", "where the Gaussian is cut: the whole pulse over its length at half amplitude, such as 3");
   if (edge_s && pulse.length_s > 0.0 && *edge_s > pulse.minimum_s)
     reader.fault(edge, "found " + wire::in_quotes(edge.node->text) + ", expected an edge of at most the shortest pulse, " +
                            engineering(pulse.minimum_s, "s"));
-  pulse.area_factor = area_factor(shape, cut.value_or(3.0));
+  dynamics::PulseShape played;
+  played.envelope = shape;
+  played.cut = cut.value_or(played.cut);
+  // What an area would be refused for has been said above, at its place.
+  if (const auto factor = dynamics::area_factor(played, pulse.length_s)) pulse.area_factor = *factor;
 }
 
 }  // namespace

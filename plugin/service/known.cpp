@@ -41,13 +41,12 @@ void add_readout(const config::Drive& drive, const wire::Scan& scan, infer::Prio
 
 void add_detuning(const config::Drive* drive, const recalibrate::State& state, const wire::Scan& scan, recalibrate::Time taken_at,
                   infer::Prior& prior, std::vector<std::string>& assumed) {
-  if (scan.axis_kind == wire::AxisKind::detuning) return;
   const auto line = state.line.predict(taken_at);
   if (line && scan.carrier_hz) {
     prior.detuning = infer::Known{kTwoPi * *scan.carrier_hz - line->mean, line->sigma};
   } else if (drive != nullptr && drive->carrier_uncertainty) {
     prior.detuning = infer::Known{0.0, *drive->carrier_uncertainty};
-  } else {
+  } else if (scan.axis_kind == wire::AxisKind::duration) {
     assumed.push_back("carrier_uncertainty: the carrier sits on the line");
   }
 }
@@ -115,7 +114,6 @@ recalibrate::Context context_for(const config::Drive* drive, const wire::Scan& s
   recalibrate::Context context;
   context.taken_at = taken_at;
   context.expect = prior.expect;
-  context.carrier_known = prior.detuning.has_value();
   if (scan.carrier_hz) context.carrier = kTwoPi * *scan.carrier_hz;
   if (scan.drive_amplitude) context.drive_amplitude = *scan.drive_amplitude;
   if (drive == nullptr) return context;
