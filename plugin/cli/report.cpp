@@ -1,6 +1,7 @@
 // SPDX-License-Identifier: Apache-2.0
 #include "plugin/cli/report.hpp"
 
+#include <algorithm>
 #include <array>
 #include <cmath>
 #include <utility>
@@ -57,14 +58,28 @@ std::string head(const wire::Fitted& scan, const Style& style) {
   return text;
 }
 
+/// What has no value, by reason: `line offset: a scan of this kind does not hold it`.
+std::string absent(const wire::Fitted& scan) {
+  std::vector<std::pair<std::string, std::string>> reasons;  // why, names
+  for (const auto& [field, estimate] : scan.estimates) {
+    if (std::isfinite(estimate.value)) continue;
+    const auto same = std::find_if(reasons.begin(), reasons.end(), [&](const auto& each) { return each.first == estimate.why; });
+    if (same == reasons.end())
+      reasons.emplace_back(estimate.why, label(field).text);
+    else
+      same->second += ", " + label(field).text;
+  }
+  std::string text;
+  for (const auto& [why, names] : reasons) text += wrapped(names + ": " + (why.empty() ? "not known" : why), "  without: ");
+  return text;
+}
+
 std::string estimates(const wire::Fitted& scan) {
   std::vector<std::vector<std::string>> rows;
   for (const auto& [field, estimate] : scan.estimates) {
+    if (!std::isfinite(estimate.value)) continue;
     const auto called = label(field);
-    if (std::isfinite(estimate.value))
-      rows.push_back({called.text, with_uncertainty(estimate.value, estimate.sigma, called.unit), interval(estimate, called.unit)});
-    else
-      rows.push_back({called.text, "none", estimate.why});
+    rows.push_back({called.text, with_uncertainty(estimate.value, estimate.sigma, called.unit), interval(estimate, called.unit)});
   }
   return table(rows, "  ");
 }
@@ -131,9 +146,10 @@ Label label(std::string_view field) {
 
 std::string report(const wire::Fitted& scan, const Style& style) {
   std::string text = head(scan, style);
-  if (!scan.estimates.empty()) text += "\n" + estimates(scan);
+  if (const auto found = estimates(scan); !found.empty()) text += "\n" + found;
   text += pulses(scan, style) + sites(scan, style) + dynamics(scan);
   if (scan.quality.points > 0) text += quality(scan);
+  text += absent(scan);
   return text;
 }
 

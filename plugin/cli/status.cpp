@@ -26,6 +26,13 @@ double number_of(const json& object, const char* key) {
   return found != object.end() && found->is_number() ? found->get<double>() : std::nan("");
 }
 
+/// The object or array under a key; an empty one where there is none.
+const json& part_of(const json& object, const char* key) {
+  static const json kNothing = json::object();
+  const auto found = object.find(key);
+  return found != object.end() && found->is_structured() ? *found : kNothing;
+}
+
 std::string uptime(double seconds) {
   const auto minutes = static_cast<long long>(seconds / 60.0);
   if (minutes < 1) return plain(seconds, 2) + " s";
@@ -45,7 +52,7 @@ std::string drive_line(const json& drive) {
   if (drive.value("held", false)) text += "on hold, so every verdict is keep; ";
   text += "in force:";
   const char* separator = " ";
-  for (const auto& [name, length_s] : drive.value("pulses", json::object()).items()) {
+  for (const auto& [name, length_s] : part_of(drive, "pulses").items()) {
     if (!length_s.is_number()) continue;
     text += separator + name + " " + engineering(length_s.get<double>(), "s");
     separator = ", ";
@@ -58,7 +65,7 @@ std::vector<std::string> wrong_with(const json& state) {
   std::vector<std::string> wrong;
   if (const auto log = text_of(state, "log"); !log.empty() && log != "ok") wrong.push_back("log: " + log);
   if (state.value("stopping", false)) wrong.push_back("the daemon is stopping: it takes no new requests");
-  for (const auto& trouble : state.value("troubles", json::array()))
+  for (const auto& trouble : part_of(state, "troubles"))
     if (trouble.is_string()) wrong.push_back(trouble.get<std::string>());
   return wrong;
 }
@@ -69,7 +76,7 @@ void print(const json& state, const StatusOptions& options, Streams& streams) {
   for (const auto& each : wrong) streams.out << wrapped(each, "  - ");
   streams.out << "halfturn " << text_of(state, "version") << " at " << options.endpoint << ", up for "
               << uptime(number_of(state, "uptime_s")) << '\n';
-  for (const auto& [name, drive] : state.value("drives", json::object()).items()) streams.out << wrapped(drive_line(drive), "  " + name + ": ");
+  for (const auto& [name, drive] : part_of(state, "drives").items()) streams.out << wrapped(drive_line(drive), "  " + name + ": ");
 }
 
 }  // namespace

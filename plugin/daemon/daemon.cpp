@@ -168,7 +168,7 @@ void Daemon::close() {
 wire::State Daemon::state() const {
   auto state = service_.state();
   state.limits = options_.limits;
-  if (!trouble_.empty()) state.troubles.push_back(trouble_);
+  state.troubles.insert(state.troubles.end(), troubles_.begin(), troubles_.end());
   return state;
 }
 

@@ -6,6 +6,7 @@
 #include <memory>
 #include <optional>
 #include <string>
+#include <vector>
 
 #include "plugin/daemon/ledger.hpp"
 #include "plugin/daemon/publisher.hpp"
@@ -96,6 +97,7 @@ class Daemon {
   void begin_stopping();
   void drain_feed();
   void take_new_configuration();
+  void report_faults(const std::vector<config::Diagnosis>& faults);
   void report_differences(const config::Configuration& configuration);
 
   Options options_;
@@ -119,7 +121,7 @@ class Daemon {
   Instant last_settled_;
   std::optional<Instant> stop_at_;  // set while stopping
   Instant health_at_;
-  std::string trouble_;  // of the configuration
+  std::vector<std::string> troubles_;  // of the configuration
 };
 
 }  // namespace halfturn::daemon

@@ -12,6 +12,7 @@ namespace halfturn::daemon {
 namespace {
 
 constexpr int kFeedAtStop = 1000;  // what may have gathered in the feed's queue (its high-water mark)
+constexpr std::size_t kFaultsInStatus = 20;
 
 }  // namespace
 
@@ -39,22 +40,28 @@ void Daemon::take_new_configuration() {
   if (!options_.read_again) return options_.lines->warn("this daemon was started without a file to read again");
   notify("RELOADING=1");
   auto reading = options_.read_again();
+  troubles_.clear();
   if (reading.configuration) {
-    trouble_.clear();
     auto fresh = std::make_shared<config::Configuration>(std::move(*reading.configuration));
     report_differences(*fresh);
     configuration_ = fresh;
     service_.configure(fresh);
     options_.lines->info("the configuration was read again and is in force for requests from now on");
   } else {
-    const auto& name = options_.configuration_name;
-    for (const auto& each : reading.faults) options_.lines->error("{}", config::to_text(each, name));
-    trouble_ = name + " has " + std::to_string(reading.faults.size()) +
-               " faults and was not taken; the earlier configuration stays in force. First: " +
-               config::to_text(reading.faults.front(), name);
-    options_.lines->error("the configuration is faulty and was not taken; the earlier one stays in force");
+    report_faults(reading.faults);
   }
   notify("READY=1\nSTATUS=Serving");
+}
+
+void Daemon::report_faults(const std::vector<config::Diagnosis>& faults) {
+  const auto& name = options_.configuration_name;
+  troubles_ = {name + " is faulty and was not taken; the earlier configuration stays in force. Mend it, then reload (SIGHUP)."};
+  for (const auto& each : faults) {
+    const auto text = config::to_text(each, name);
+    options_.lines->error("{}", text);
+    if (troubles_.size() <= kFaultsInStatus) troubles_.push_back(text);
+  }
+  options_.lines->error("{}", troubles_.front());
 }
 
 /// Sockets and the log are opened once; what a new configuration says of them waits for the next start.
@@ -65,8 +72,8 @@ void Daemon::report_differences(const config::Configuration& fresh) {
   if (a.requests != b.requests || a.feed != b.feed || a.results != b.results || a.display != b.display) changed = "sockets";
   if (options_.configuration->log_path != fresh.log_path) changed += changed.empty() ? "log" : " and log";
   if (changed.empty()) return;
-  trouble_ = "the configuration's " + changed + " changed: restart the daemon for that to take effect";
-  options_.lines->warn("{}", trouble_);
+  troubles_ = {"the configuration's " + changed + " changed: restart the daemon for that to take effect"};
+  options_.lines->warn("{}", troubles_.front());
 }
 
 }  // namespace halfturn::daemon

@@ -25,6 +25,7 @@ std::string frequency(const wire::Fitted& scan) {
 
 std::string scan_line(const wire::Fitted& scan) {
   std::string line = (scan.drive.empty() ? "(no drive)" : scan.drive) + " " + scan.scan_name + ": " + scan.verdict;
+  if (!scan.stored) line += " (not stored)";
   if (const auto found = frequency(scan); !found.empty()) line += ", " + found;
   const char* separator = "; ";
   for (const auto& reason : scan.reasons) {

@@ -25,6 +25,16 @@ PATIENCE_S = 30
 
 RABI_HZ = 123_456.0
 DEAD_TIME_S = 12e-9
+DECAY_PER_S = 2 * math.pi * 7.48e3  # the natural linewidth of strontium's line at 689 nm, which drive `red` is known to have
+
+
+def excited(length_s, rabi_hz, decay_per_s=DECAY_PER_S):
+    """Resonance with radiative decay from the ground state (Torrey, Phys. Rev. 76, 1059 (1949)): with L^2 = W^2 - G^2/16,
+    W^2/(2 W^2 + G^2) [1 - exp(-3 G t/4) (cos L t + 3 G/(4 L) sin L t)]."""
+    rabi, decay, t = 2 * math.pi * rabi_hz, decay_per_s, max(0.0, length_s)
+    root = math.sqrt(rabi**2 - decay**2 / 16)
+    damped = math.exp(-0.75 * decay * t) * (math.cos(root * t) + 0.75 * decay / root * math.sin(root * t))
+    return rabi**2 / (2 * rabi**2 + decay**2) * (1 - damped)
 
 
 def program(*arguments, **more):
@@ -34,13 +44,13 @@ def program(*arguments, **more):
 
 
 def flop(drive="red", seed=1, points=41, shots=200, rabi_hz=RABI_HZ, span_s=16e-6, taken_at=None, flat=False):
-    """A scan of the pulse length on resonance without damping: counts drawn from 0.02 + 0.93 sin^2(pi f (t - dead time))."""
+    """A scan of the pulse length on resonance: counts drawn from 0.02 + 0.93 times the excited population."""
     draw = random.Random(seed)
     axis = [span_s * (i + 1) / points for i in range(points)]
     counts = []
     for length in axis:
-        excited = 0.0 if flat else math.sin(math.pi * rabi_hz * max(0.0, length - DEAD_TIME_S)) ** 2
-        counts.append(sum(draw.random() < 0.02 + 0.93 * excited for _ in range(shots)))
+        bright = 0.02 + (0.0 if flat else 0.93 * excited(length - DEAD_TIME_S, rabi_hz))
+        counts.append(sum(draw.random() < bright for _ in range(shots)))
     scan = {"scan_name": f"flop-{seed}", "drive": drive, "duration_s": axis, "counts": counts, "shots": shots}
     if taken_at:
         scan["taken_at"] = taken_at

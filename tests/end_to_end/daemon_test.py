@@ -7,13 +7,13 @@ import os
 import random
 import signal
 import socket
-import subprocess
 import time
 import unittest
 
+import msgpack
 import zmq
 
-from apparatus import PROGRAM, RABI_HZ, DEAD_TIME_S, PATIENCE_S, InFolder, flop, program
+from apparatus import RABI_HZ, DEAD_TIME_S, PATIENCE_S, InFolder, flop, program
 
 
 def moment(minutes):
@@ -213,17 +213,15 @@ class Exclusive(InFolder):
 class Published(InFolder):
     def test_the_feed_is_not_answered_and_what_it_brings_is_published(self):
         daemon = self.daemon()
-        context = zmq.Context()
-        self.addCleanup(context.destroy, linger=0)
-        feed, listener = context.socket(zmq.PUSH), context.socket(zmq.SUB)
-        feed.connect(daemon.feed)
-        listener.connect(daemon.results)
-        listener.subscribe(b"fitted/red/")
-        feed.send(json.dumps({"proto": 1, "kind": "fit", "id": "f1", "scan": flop(seed=31)}).encode())
-        self.assertTrue(listener.poll(1000 * PATIENCE_S))
-        topic, message = listener.recv_multipart()
+        with zmq.Context() as context, context.socket(zmq.PUSH) as feed, context.socket(zmq.SUB) as listener:
+            feed.connect(daemon.feed)
+            listener.connect(daemon.results)
+            listener.subscribe(b"fitted/red/")
+            feed.send(json.dumps({"proto": 1, "kind": "fit", "id": "f1", "scan": flop(seed=31)}).encode())
+            self.assertTrue(listener.poll(1000 * PATIENCE_S))
+            topic, message = listener.recv_multipart()
         self.assertEqual(topic, b"fitted/red/")
-        feed.close(linger=0)
+        self.assertEqual(msgpack.unpackb(message, timestamp=3)["scan_name"], "flop-31")
 
 
 if __name__ == "__main__":

@@ -27,11 +27,10 @@ TEST_CASE("sentences break at blanks and keep their indent") {
   std::size_t words = 0, count = 0;
   while (std::getline(stream, line)) {
     CHECK(width(line) <= kColumns);
-    CHECK(width(line) >= kColumns - 5);  // no line breaks early, but for the last
     CHECK(line.substr(0, 9) == (count++ == 0 ? "  first: " : "         "));
     for (std::size_t at = line.find("word"); at != std::string::npos; at = line.find("word", at + 1)) ++words;
-    if (words == 60) break;
     CHECK(line.back() == 'd');
+    if (words < 60) CHECK(width(line) >= kColumns - 4);  // the next word, with its blank, would have been too much
   }
   CHECK(words == 60);
   CHECK(wrapped(std::string(200, 'x'), "- ") == "- " + std::string(200, 'x') + "\n");
@@ -82,9 +81,9 @@ TEST_CASE("the report says the verdict first, then reasons, estimates, pulses an
   std::size_t at = 0;
   for (const char* expected :
        {"night-41: apply", "first: No earlier scan", "assumed: the carrier", "Rabi frequency", "125.34(12) kHz",
-        "125.105 kHz \u2026 125.575 kHz", "decay time", "none", "no decay", "0.934(11)", "1.234(3) kW/m\u00b2", "flip", "apply",
+        "125.105 kHz \u2026 125.575 kHz", "0.934(11)", "1.234(3) kW/m\u00b2", "flip", "apply",
         "3.1416 rad", "4.0000 \u00b5s", "3.9920 \u00b5s", "3.989(4) \u00b5s", "-0.200 %", "12.6 mrad", "undamped", "0.70",
-        "deviance 35.10", "3.20 cycles in 40 points", "874.00 kHz"}) {
+        "deviance 35.10", "3.20 cycles in 40 points", "874.00 kHz", "decay time: the chosen dynamics have no decay"}) {
     const auto found = text.find(expected, at);
     INFO(expected << " in\n" << text);
     REQUIRE(found != std::string::npos);

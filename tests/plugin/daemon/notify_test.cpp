@@ -43,6 +43,8 @@ TEST_CASE("a scan is one line: drive, name, verdict, frequency, codes of the rea
   scan.drive = "red";
   scan.scan_name = "night-41";
   scan.verdict = "apply";
+  CHECK(daemon::scan_line(scan) == "red night-41: apply (not stored)");
+  scan.stored = true;
   CHECK(daemon::scan_line(scan) == "red night-41: apply");
   scan.estimates = {{"rabi_hz", {125340.0, 120.0, 125100.0, 125580.0, ""}}};
   scan.reasons = {{"first", "This is the first scan."}, {"readout", "..."}};
