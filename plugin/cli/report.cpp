@@ -63,9 +63,10 @@ std::string absent(const wire::Fitted& scan) {
   std::vector<std::pair<std::string, std::string>> reasons;  // why, names
   for (const auto& [field, estimate] : scan.estimates) {
     if (std::isfinite(estimate.value)) continue;
-    const auto same = std::find_if(reasons.begin(), reasons.end(), [&](const auto& each) { return each.first == estimate.why; });
+    const std::string& why = estimate.why;
+    const auto same = std::find_if(reasons.begin(), reasons.end(), [&why](const auto& each) { return each.first == why; });
     if (same == reasons.end())
-      reasons.emplace_back(estimate.why, label(field).text);
+      reasons.emplace_back(why, label(field).text);
     else
       same->second += ", " + label(field).text;
   }

@@ -1,8 +1,9 @@
 // SPDX-License-Identifier: Apache-2.0
 #include "plugin/cli/serve.hpp"
 
-#include <spdlog/sinks/stdout_sinks.h>
+#include <signal.h>
 #include <spdlog/spdlog.h>
+#include <unistd.h>
 
 #include <cstdlib>
 #include <memory>
@@ -11,6 +12,7 @@
 #include "plugin/cli/layout.hpp"
 #include "plugin/cli/version.hpp"
 #include "plugin/daemon/daemon.hpp"
+#include "plugin/daemon/lines.hpp"
 #include "plugin/log/sqlite_log.hpp"
 
 namespace halfturn::cli {
@@ -21,13 +23,8 @@ constexpr std::string_view kCaution =
     "Halfturn proposes settings and controls nothing. Limits and interlocks belong to the apparatus. Local safety rules and "
     "the responsible laser-safety officer come first.";
 
-/// Lines such as `2026-02-03T04:05:06.789Z info red night-0041: apply, 125.34(12) kHz`, in UTC.
-std::shared_ptr<spdlog::logger> lines(const ServeOptions& options) {
-  auto logger = std::make_shared<spdlog::logger>("halfturn", std::make_shared<spdlog::sinks::stderr_sink_mt>());
-  logger->set_pattern("%Y-%m-%dT%H:%M:%S.%eZ %l %v", spdlog::pattern_time_type::utc);
-  logger->set_level(options.quiet ? spdlog::level::warn : options.verbose ? spdlog::level::debug : spdlog::level::info);
-  logger->flush_on(spdlog::level::trace);
-  return logger;
+spdlog::level::level_enum level(const ServeOptions& options) {
+  return options.quiet ? spdlog::level::warn : options.verbose ? spdlog::level::debug : spdlog::level::info;
 }
 
 void print_faults(const config::Reading& reading, const std::string& file, std::ostream& err) {
@@ -41,6 +38,7 @@ Exit serve(const ServeOptions& options, Streams& streams) {
   if (!reading.configuration) return print_faults(reading, options.config, streams.err), kBadInput;
   if (!options.quiet) streams.err << wrapped(kCaution, "") << std::flush;
 
+  ::signal(SIGPIPE, SIG_IGN);  // the reader of the log lines may go away
   auto log = log::open(reading.configuration->log_path, log::Access::read_write);
   if (!log) return print_fault(streams.err, "", log.error()), kFailed;
 
@@ -48,7 +46,7 @@ Exit serve(const ServeOptions& options, Streams& streams) {
   daemon_options.configuration = std::make_shared<config::Configuration>(std::move(*reading.configuration));
   daemon_options.log = std::move(*log);
   daemon_options.version = kVersion;
-  daemon_options.lines = lines(options);
+  daemon_options.lines = daemon::lines_to(STDERR_FILENO, level(options));
   daemon_options.read_again = [file = options.config] { return config::read_file(file); };
   daemon_options.configuration_name = options.config;
   daemon_options.threads = options.threads;

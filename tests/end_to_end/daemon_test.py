@@ -2,18 +2,20 @@
 """A running daemon: answers, signals, kills. What a fit holds is in the contract; what it should say is the truth
 that the scans were drawn from."""
 
+import fcntl
 import json
 import os
 import random
 import signal
 import socket
+import subprocess
 import time
 import unittest
 
 import msgpack
 import zmq
 
-from apparatus import RABI_HZ, DEAD_TIME_S, PATIENCE_S, InFolder, flop, program
+from apparatus import PROGRAM, RABI_HZ, DEAD_TIME_S, PATIENCE_S, InFolder, Peer, flop, program
 
 
 def moment(minutes):
@@ -208,6 +210,26 @@ class Exclusive(InFolder):
         self.assertIn("controls nothing", daemon.lines[0])
         self.assertIn("laser-safety officer", " ".join(daemon.lines))
         self.assertRegex(daemon.line_with("listening"), r"^\d{4}-\d\d-\d\dT\d\d:\d\d:\d\d\.\d{3}Z info ")
+
+
+class Deaf(InFolder):
+    def test_a_supervisor_that_reads_no_log_lines_stops_nothing(self):
+        # Standard error is a pipe of the smallest size that nobody reads; 200 scans write more lines than it holds.
+        read, write = os.pipe()
+        fcntl.fcntl(write, fcntl.F_SETPIPE_SZ, 4096)
+        ports = self.daemon()
+        config = self.write("deaf.yaml", ports.config.read_text().replace("nights.db", "deaf.db").replace(
+            "tcp://127.0.0.1:0", f"ipc://{self.folder}/deaf", 1))
+        process = subprocess.Popen([PROGRAM, "serve", "--config", str(config)], stderr=write)
+        self.addCleanup(lambda: process.poll() is None and process.kill())
+        os.close(write)
+        peer = Peer(f"ipc://{self.folder}/deaf")
+        self.addCleanup(peer.close)
+        for i in range(200):
+            self.assertEqual(peer.ask("fit", {"scan": flop(seed=i, points=20, shots=20)})["kind"], "fitted")
+        process.send_signal(signal.SIGTERM)
+        self.assertEqual(process.wait(PATIENCE_S), 0)
+        os.close(read)
 
 
 class Published(InFolder):

@@ -2,6 +2,7 @@
 // What the service manager is told, and the lines of the program's own log.
 #include "plugin/daemon/notify.hpp"
 
+#include <spdlog/spdlog.h>
 #include <sys/socket.h>
 #include <sys/un.h>
 #include <unistd.h>
@@ -10,6 +11,7 @@
 #include <cstring>
 #include <string>
 
+#include "plugin/daemon/lines.hpp"
 #include "plugin/daemon/scan_line.hpp"
 #include "tests/support/catch.hpp"
 
@@ -51,4 +53,25 @@ TEST_CASE("a scan is one line: drive, name, verdict, frequency, codes of the rea
   CHECK(daemon::scan_line(scan) == "red night-41: apply, 125.34(12) kHz; first readout");
   scan.estimates = {{"rabi_hz", {}}, {"line_offset_hz", {-310.0, 25.0, -360.0, -260.0, ""}}};
   CHECK(daemon::scan_line(scan) == "red night-41: apply, line offset -310(25) Hz; first readout");
+}
+
+TEST_CASE("a pipe that nobody empties costs lines and never makes the program wait") {
+  int ends[2];
+  REQUIRE(::pipe(ends) == 0);
+  const auto lines = daemon::lines_to(ends[1], spdlog::level::info);
+  // 10,000 lines are ten times what a pipe holds (pipe(7): 65,536 bytes).
+  for (int i = 0; i < 10'000; ++i) lines->info("line {} {}", i, std::string(50, '.'));
+  std::string text(1 << 20, '\0');
+  text.resize(static_cast<std::size_t>(::read(ends[0], text.data(), text.size())));
+  CHECK(text.find("line 0 ") != std::string::npos);
+  CHECK(text.find("line 9999 ") == std::string::npos);
+  CHECK(text.back() == '\n');
+
+  lines->info("room again");
+  std::string after(4096, '\0');
+  after.resize(static_cast<std::size_t>(::read(ends[0], after.data(), after.size())));
+  CHECK(after.find("lines before this one were lost") != std::string::npos);
+  CHECK(after.find("Z info room again\n") != std::string::npos);
+  ::close(ends[0]);
+  ::close(ends[1]);
 }
