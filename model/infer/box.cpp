@@ -99,4 +99,11 @@ bool minimise_in_box(const Vector& gradient, const Matrix& hessian, const Vector
   return true;
 }
 
+void learn_curvature(const Vector& s, const Vector& y, Matrix& hessian) {
+  const Vector expected = hessian * s;
+  const double along = s.dot(expected), seen = s.dot(y);
+  if (!(along > 0.0 && seen > 0.25 * along && seen < 4.0 * along)) return;
+  hessian += y * (y.transpose() / seen) - expected * (expected.transpose() / along);
+}
+
 }  // namespace halfturn::infer

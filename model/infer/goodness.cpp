@@ -5,6 +5,7 @@
 #include <algorithm>
 #include <cmath>
 #include <limits>
+#include <vector>
 
 #include "model/infer/linear.hpp"
 #include "model/infer/statistics.hpp"
@@ -22,7 +23,7 @@ DevianceMoments exact(double shots, double expected) {
   const bool counted = std::isfinite(shots);
   const double p = counted ? expected / shots : 0.0;
   double probability = counted ? std::exp(shots * std::log1p(-p)) : std::exp(-expected);
-  const double last = std::min(shots, std::ceil(expected + 12.0 * std::sqrt(expected) + 30.0));
+  const double last = std::min(shots, std::ceil(expected + 10.0 * std::sqrt(expected) + 20.0));
   double d1 = 0.0, d2 = 0.0, dk = 0.0, dkk = 0.0;
   for (double k = 0.0; k <= last; k += 1.0) {
     const double d = 2.0 * (counted ? binomial(k, shots, p) : poisson(k, 1.0, expected)).half_deviance;
@@ -42,7 +43,8 @@ DevianceMoments binomial_series(double n, double p) {
   const double u = p * (1.0 - p), a = 1.0 / (n * u), lean = 1.0 - 2.0 * p;
   const double mean = 1.0 + a * ((1.0 - u) / 6 + a * ((1.0 - 3 * u) / 6 + a * (19 - 87 * u + 70 * u * u + u * u * u) / 60));
   const double variance =
-      2.0 + a * (2 * (1.0 - u) / 3 + a * (4 * (1.0 - 3 * u) / 3 + a * (701 - 3188 * u + 2520 * u * u + 24 * u * u * u) / 180));
+      2.0 + a * (2 * (1.0 - u) / 3 +
+                 a * (4 * (1.0 - 3 * u) / 3 + a * (701 - 3188 * u + 2520 * u * u + 24 * u * u * u) / 180));
   const double third = 57 - 174 * p + 244 * p * p - 140 * p * p * p + 70 * p * p * p * p;
   return {mean, variance, -lean * a * (1.0 / 6 + a * ((2.0 - 3 * u) / 6 + a * third / 60)), 2.0};
 }
@@ -74,22 +76,23 @@ DevianceMoments poisson_moments(double exposures, double mean) {
   return out;
 }
 
-/// 1 + E''/(2 information), with E'' the second derivative by mu of the expected deviance, whose first is -covariance: what
-/// of a point's leverage lowers the deviance by more than the moments under the fitted mean already say. 1 for many counts,
-/// 0 for one shot.
-double leverage_share(Kind kind, double weight, double mean, double information) {
-  const double rarer = kind == Kind::binomial ? std::min(mean, 1.0 - mean) : mean;
-  if (kind == Kind::gaussian || weight * rarer >= kFew) return 1.0;
-  const double h = 1e-3 * rarer;
-  const double rise = deviance_moments(kind, weight, mean + h).covariance - deviance_moments(kind, weight, mean - h).covariance;
-  return 1.0 - 0.25 * rise / (h * information);
+/// 1 + E''/(2 information), with E'' the second derivative by mu of the expected deviance: what of a point's leverage
+/// lowers the deviance by more than the moments under the fitted mean already say. 1 for many counts, 0 for one shot.
+/// Since the score s is minus the derivative of log p and E' = -Cov[D, s], E'' follows from the moments: (quadratic - 2)
+/// information + covariance times the derivative of mu (1 - mu)/weight (binomial) or mu/weight (Poisson) times
+/// information.
+double leverage_share(Kind kind, double weight, double mean, const DevianceMoments& moments) {
+  if (kind == Kind::gaussian) return 1.0;
+  const double bend = kind == Kind::binomial ? 1.0 - 2.0 * mean : 1.0;
+  return 0.5 * (moments.quadratic + moments.covariance * bend / weight);
 }
 
 /// Gradients of the means, information matrix and its inverse, for the leverages of the points.
 class Design {
  public:
   Design(std::span<const double> jacobian, std::size_t points, int parameters)
-      : jacobian_(jacobian), points_(points), n_(parameters), information_(Matrix::Zero(n_, n_)), covariance_(Vector::Zero(n_)) {}
+      : jacobian_(jacobian), points_(points), n_(parameters), information_(Matrix::Zero(n_, n_)),
+        covariance_(Vector::Zero(n_)) {}
 
   Vector row(std::size_t point) const {
     Vector out(n_);
@@ -124,13 +127,15 @@ class Design {
   Eigen::LDLT<Matrix> factor_;
 };
 
+/// The half deviance of a point, with the expected information as it is, not bounded.
 PointLikelihood point(const Readout& readout, std::size_t i, double mean) {
-  switch (readout.kind) {
-    case Kind::binomial: return binomial(readout.observed[i], readout.weight[i], mean);
-    case Kind::gaussian: return gaussian(readout.observed[i], readout.weight[i], mean);
-    case Kind::poisson: return poisson(readout.observed[i], readout.weight[i], mean);
-  }
-  return {kNan, 0.0, 0.0};
+  const double observed = readout.observed[i], weight = readout.weight[i];
+  if (readout.kind == Kind::gaussian) return gaussian(observed, weight, mean);
+  const bool counts = readout.kind == Kind::binomial;
+  PointLikelihood out = counts ? binomial(observed, weight, mean) : poisson(observed, weight, mean);
+  const double variance = counts ? mean * (1.0 - mean) : mean;
+  out.information = out.information > 0.0 && variance > 0.0 ? weight / variance : 0.0;
+  return out;
 }
 
 void judge(Goodness& out, double used) {
@@ -157,26 +162,27 @@ Goodness goodness(const Readout& readout, std::span<const double> mean, int para
   Goodness out{0.0, 0.0, 0.0, kNan};
   const bool known = !jacobian.empty() && parameters > 0;
   Design design(jacobian, mean.size(), known ? parameters : 0);
+  std::vector<DevianceMoments> moments(mean.size());
+  std::vector<double> information(mean.size());
   double used = 0.0;
   for (std::size_t i = 0; i < mean.size(); ++i) {
     const PointLikelihood at = point(readout, i, mean[i]);
     out.deviance += 2.0 * at.half_deviance;
+    information[i] = at.information;
     if (!(at.information > 0.0)) continue;
-    const DevianceMoments moments = deviance_moments(readout.kind, readout.weight[i], mean[i]);
-    out.expected += moments.mean;
-    out.variance += moments.variance;
-    if (known) design.add(i, at.information, moments.covariance);
+    moments[i] = deviance_moments(readout.kind, readout.weight[i], mean[i]);
+    out.expected += moments[i].mean;
+    out.variance += moments[i].variance;
+    if (known) design.add(i, at.information, moments[i].covariance);
     used += 1.0;
   }
   if (known) design.factor();
   for (std::size_t i = 0; i < mean.size(); ++i) {
-    const PointLikelihood at = point(readout, i, mean[i]);
-    if (!(at.information > 0.0)) continue;
-    const double leverage = known ? at.information * design.leverage(i) : parameters / used;
-    const double share = leverage_share(readout.kind, readout.weight[i], mean[i], at.information);
-    const double quadratic = deviance_moments(readout.kind, readout.weight[i], mean[i]).quadratic;
+    if (!(information[i] > 0.0)) continue;
+    const double leverage = known ? information[i] * design.leverage(i) : parameters / used;
+    const double share = leverage_share(readout.kind, readout.weight[i], mean[i], moments[i]);
     out.expected -= share * leverage;
-    out.variance += 2.0 * share * leverage * (share - quadratic);
+    out.variance += 2.0 * share * leverage * (share - moments[i].quadratic);
   }
   if (known) out.variance -= design.explained();
   judge(out, used);

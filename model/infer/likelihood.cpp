@@ -1,6 +1,7 @@
 // SPDX-License-Identifier: Apache-2.0
 #include "model/infer/likelihood.hpp"
 
+#include <algorithm>
 #include <cmath>
 #include <limits>
 
@@ -15,13 +16,11 @@ constexpr PointLikelihood kRuledOut{kInfinity, 0.0, 0.0};
 double entropy(double k, double m) {
   if (k <= 0.0) return m;
   const double x = (m - k) / k;
-  if (std::abs(x) < 0.02) {
-    // x - log(1 + x) = x^2 (1/2 - x/3 + x^2/4 - ...); nine terms leave less than 0.02^9/11 < 1e-16 of the first.
-    double sum = 0.0;
-    for (int j = 10; j >= 2; --j) sum = 1.0 / j - x * sum;
-    return k * x * x * sum;
-  }
-  return k * (x - std::log1p(x));
+  if (std::abs(x) >= 0.02) return k * (x - std::log(m / k));
+  // x - log(1 + x) = x^2 (1/2 - x/3 + x^2/4 - ...); nine terms leave less than 0.02^9/11 < 1e-16 of the first.
+  double sum = 0.0;
+  for (int j = 10; j >= 2; --j) sum = 1.0 / j - x * sum;
+  return k * x * x * sum;
 }
 
 template <PointLikelihood (*point)(double, double, double)>
@@ -46,10 +45,13 @@ PointLikelihood binomial(double counts, double shots, double mean) {
   const double dark = shots - counts, other = 1.0 - mean;
   if ((counts > 0.0 && mean <= 0.0) || (dark > 0.0 && other <= 0.0)) return kRuledOut;
   const double deviance = entropy(counts, shots * mean) + entropy(dark, shots * other);
-  if (mean <= 0.0 || other <= 0.0) {
-    return {deviance, mean <= 0.0 ? shots : -shots, shots * (shots + 1.0) * (shots + 1.0) / (0.5 * (shots + 0.5))};
-  }
-  return {deviance, dark / other - counts / mean, shots / (mean * other)};
+  const double bright = counts > 0.0 ? counts / mean : 0.0, unlit = dark > 0.0 ? dark / other : 0.0;
+  double variance = mean * other;
+  // Half a count of the outcome that was never seen, in shots + 1.
+  const double least = 0.5 * (shots + 0.5) / ((shots + 1.0) * (shots + 1.0));
+  const bool unseen = (counts <= 0.0 && mean < 0.5) || (dark <= 0.0 && other < 0.5);
+  if (unseen && variance < least) variance = least;
+  return {deviance, unlit - bright, shots / variance};
 }
 
 PointLikelihood gaussian(double signal, double sigma, double mean) {
@@ -63,7 +65,7 @@ PointLikelihood poisson(double photons, double exposures, double mean) {
   if (!(exposures > 0.0) || std::isnan(photons)) return kNothing;
   if (!(mean >= 0.0 && mean < kInfinity) || (photons > 0.0 && mean <= 0.0)) return kRuledOut;
   const double deviance = entropy(photons, exposures * mean);
-  if (mean <= 0.0) return {deviance, exposures, 2.0 * exposures * exposures};
+  if (photons <= 0.0) return {deviance, exposures, exposures / std::max(mean, 0.5 / exposures)};
   return {deviance, exposures - photons / mean, exposures / mean};
 }
 

@@ -22,18 +22,22 @@ struct Readout {
 struct PointLikelihood {
   double half_deviance;  // >= 0; +inf where the model rules the reading out
   double score;          // d half_deviance / d mu
-  double information;    // expectation of score^2
+  double information;    // expectation of score^2, bounded where an outcome was never seen (evaluate)
 };
 PointLikelihood binomial(double counts, double shots, double mean);
 PointLikelihood gaussian(double signal, double sigma, double mean);
 PointLikelihood poisson(double photons, double exposures, double mean);
 
-/// The same over a scan: the sum of the half deviances, and score and information of every point (arrays as long as the scan,
-/// or empty where they are not wanted). Returns false, with half_deviance = +inf, where the model rules a reading out (a
-/// probability outside 0...1, or 0 where bright counts were seen, or 1 where dark ones were; a negative mean of photons, or
-/// 0 where photons were seen) or a mean is not finite. At mu = 0 with k = 0 (and mu = 1 with k = n) the deviance is 0, the
-/// score is the one-sided n (or -n), and the information, which diverges, is that of the estimate (k + 1/2)/(n + 1) (for
-/// photons, half a photon). Relative error of the sum < 1e-13 (likelihood_test); about 10 ns a point.
+/// The same over a scan: the sum of the half deviances, and score and information of every point (arrays as long as the
+/// scan, or empty where they are not wanted). Returns false, with half_deviance = +inf, where the model rules a reading
+/// out (a probability outside 0...1, or 0 where bright counts were seen, or 1 where dark ones were; a negative mean of
+/// photons, or 0 where photons were seen) or a mean is not finite. Where an outcome was never seen (k = 0, k = n, no
+/// photons) and the model expects less than about half a count of it, the information is that at half a count: the
+/// expected information diverges towards the edge while the likelihood stays linear, and a search that believed it would
+/// stop beside the edge for good. At mu = 0 with k = 0 (mu = 1 with k = n) the deviance is 0 and the score the one-sided
+/// n (or -n).
+/// Relative error of a half deviance < 1e-13, < 1e-11 where mu is within 1e-3 of the observed mean (likelihood_test). 60
+/// points take 1.6 us (binomial), 0.4 us (gaussian), 0.7 us (poisson) on a 2-core virtual machine.
 bool evaluate(const Readout& readout, std::span<const double> mean, double& half_deviance, std::span<double> score,
               std::span<double> information);
 

@@ -13,10 +13,10 @@ struct MonotoneFit {
   double flat;     // of the best constant mean
 };
 
-/// Half deviances of the maximum-likelihood means that are monotone in `axis` (any order; points at equal axis share a mean), by
-/// pooling adjacent violators, which for these three likelihoods are weighted means (R. E. Barlow, D. J. Bartholomew, J. M.
-/// Bremner, H. D. Brunk, Statistical Inference under Order Restrictions (1972), section 2.3). `rising` and `falling` never
-/// exceed `flat`. Points left out of the likelihood are left out here. Time n log n.
+/// Half deviances of the maximum-likelihood means that are monotone in `axis` (any order; points at equal axis share a
+/// mean), by pooling adjacent violators, which for these three likelihoods are weighted means (R. E. Barlow, D. J.
+/// Bartholomew, J. M. Bremner, H. D. Brunk, Statistical Inference under Order Restrictions (1972), section 2.3). `rising`
+/// and `falling` never exceed `flat`. Points left out of the likelihood are left out here. Time n log n.
 MonotoneFit monotone_half_deviance(const Readout& readout, std::span<const double> axis);
 
 }  // namespace halfturn::infer

@@ -20,7 +20,8 @@ class Search {
   Search(const Objective& objective, const Minimum& minimum, Index index, double deviance, const Bounds& bounds,
          const ProfileOptions& options, int side)
       : objective_(objective), minimum_(minimum), bounds_(bounds), options_(options), index_(index), side_(side),
-        target_(std::sqrt(deviance)), room_(side > 0 ? bounds.upper[index] - minimum.x[index] : minimum.x[index] - bounds.lower[index]) {}
+        target_(std::sqrt(deviance)),
+        room_(side > 0 ? bounds.upper[index] - minimum.x[index] : minimum.x[index] - bounds.lower[index]) {}
 
   ProfileEnd run() {
     if (room_ <= 0.0) return end(Kind::bound, 0.0, minimum_.x);
@@ -39,6 +40,11 @@ class Search {
     Matrix hessian;
   };
 
+  /// The parameter at a distance, exactly on its bound from there on.
+  double position(double distance) const {
+    if (distance >= room_) return side_ > 0 ? bounds_.upper[index_] : bounds_.lower[index_];
+    return minimum_.x[index_] + side_ * distance;
+  }
   double width(const Vector& x) const { return side_ * (x[index_] - minimum_.x[index_]); }
 
   ProfileEnd end(Kind kind, double distance, const Vector& x) const {
@@ -47,9 +53,7 @@ class Search {
     out.evaluations = evaluations_;
     if (kind == Kind::open || kind == Kind::failed) return out;
     out.x = x;
-    out.at = minimum_.x[index_] + side_ * distance;
-    if (kind == Kind::bound) out.at = side_ > 0 ? bounds_.upper[index_] : bounds_.lower[index_];
-    out.x[index_] = out.at;
+    out.at = out.x[index_] = position(distance);
     return out;
   }
 
@@ -69,12 +73,14 @@ class Search {
     return minimise_in_box(gradient, hessian, lower.cwiseMin(0.0), upper.cwiseMax(0.0), box);
   }
 
-  bool look(const Minimum& at, Local& local) const {
+  /// `last` is the point before, where there is one: its gradient tells of the curvature between.
+  bool look(const Minimum& at, Local& local, const Minimum* last = nullptr) const {
     local.hessian = at.information;
     for (Index i = 0; i < at.x.size(); ++i) {
       double& h = local.hessian(i, i);
       h = h > 0.0 ? h * (1.0 + 4.0 * std::numeric_limits<double>::epsilon()) : 1.0;
     }
+    if (last != nullptr) learn_curvature(at.x - last->x, at.gradient - last->gradient, local.hessian);
     BoxStep box;
     if (!follow(at, local.hessian, 0.0, box)) return false;
     const Vector slope = at.gradient + local.hessian * box.step;
@@ -83,12 +89,13 @@ class Search {
     local.root = std::sqrt(2.0 * std::max(at.value - local.promised - minimum_.value, 0.0));
     Vector carried;
     if (!solve_free(local.hessian, box.free, local.hessian.col(index_), carried)) return false;
-    local.curvature = at.information(index_, index_) - carried.dot(local.hessian.col(index_));
+    local.curvature = local.hessian(index_, index_) - carried.dot(local.hessian.col(index_));
     return true;
   }
 
-  /// How much further out the threshold should lie: by the parabola at the minimum, by the chord of the root where it is still
-  /// far from its target (the information may promise far less room than there is, as for no counts of n), and then by Newton.
+  /// How much further out the threshold should lie: by the parabola at the minimum, by the chord of the root where it is
+  /// still far from its target (the information may promise far less room than there is, as for no counts of n), and then
+  /// by Newton.
   double advance(const Local& local, double distance) const {
     if (local.root > 0.3 * target_) return local.root * (target_ - local.root) / local.slope;
     if (distance > 0.0) return distance * std::min(target_ / local.root - 1.0, 30.0);
@@ -100,6 +107,10 @@ class Search {
     Minimum at = minimum_, trial = minimum_;
     Local local;
     if (!look(at, local)) return std::nullopt;
+    // A minimum with a slope outward, or with nuisance parameters not at their best, promises something lower.
+    const double downhill = std::max(-local.slope, 0.0), reach = std::min(downhill / local.curvature, room_);
+    const double promised = downhill > 0.0 ? reach * (downhill - 0.5 * local.curvature * reach) : 0.0;
+    lowest_ = std::min(lowest_, at.value - local.promised - promised);
     while (true) {
       const double distance = width(at.x);
       if (local.root > 0.3 * target_ && !(local.slope > 0.0)) return std::nullopt;
@@ -115,42 +126,62 @@ class Search {
       }
       if (distance > 0.0) step = std::clamp(step, -0.7 * distance, (settled ? 30.0 : 2.0) * distance);
       step = std::min(step, room_ - distance);
+      if (step > 0.7 * (ceiling_ - distance)) step = 0.6 * (ceiling_ - distance);
       if (!advance_to(at, local, distance, step, trial)) return std::nullopt;
       at = trial;
     }
   }
 
-  /// Whether one more step of Newton's needs no check: its error is about the square of the step. Beside an edge of the domain a
-  /// steep slope makes steps short far from the target, so the root must be near as well.
+  /// Whether one more step of Newton's needs no check: its error is about the square of the step. Beside an edge of the
+  /// domain a steep slope makes steps short far from the target, so the root must be near as well.
   bool close(const Local& local, double step, double distance) const {
     const double small = 0.2 * std::sqrt(options_.accuracy);
     return std::abs(step) <= small * distance && std::abs(local.root - target_) <= 3.0 * small * target_;
   }
 
-  /// Evaluates the point `step` further out, or nearer where the objective cannot be computed or the target is far overshot.
+  /// Evaluates the point `step` further out, or nearer where the objective cannot be computed or the target is far
+  /// overshot.
   bool advance_to(const Minimum& at, Local& local, double distance, double step, Minimum& trial) {
     BoxStep box;
     Local there;
-    while (evaluations_ < options_.newton_evaluations) {
+    while (trials_++ < options_.newton_steps) {
       if (!follow(at, local.hessian, side_ * step, box)) return false;
       trial.x = (at.x + box.step).cwiseMax(bounds_.lower).cwiseMin(bounds_.upper);
-      trial.x[index_] = distance + step >= room_ ? (side_ > 0 ? bounds_.upper[index_] : bounds_.lower[index_])
-                                                 : at.x[index_] + side_ * step;
-      double fraction = 0.3;
-      if (evaluate(trial) && look(trial, there)) {
+      trial.x[index_] = position(distance + step);
+      double fraction = 0.5;
+      if (evaluate(trial) && look(trial, there, &at) && settle(local, trial, there)) {
         if (step <= 0.0 || there.root <= 1.5 * target_) {
           local = there;
           return true;
         }
         fraction = std::clamp((target_ - local.root) / (there.root - local.root), 0.2, 0.7);
       }
+      if (step > 0.0 && distance + step > 0.0) ceiling_ = std::min(ceiling_, distance + step);
       step *= fraction;
     }
     return false;
   }
 
-  /// The square root of twice the profile's rise at a distance, minus its target. `near` is an optimum at another distance, and
-  /// then the one here. Where the way from there leads out of the objective's domain, it is walked in halves.
+  /// Where the nuisance parameters have strayed (the promise is no small part of the threshold, or does not shrink), they
+  /// are minimised in earnest at the trial's distance.
+  bool settle(const Local& before, Minimum& trial, Local& there) {
+    const double threshold = 0.5 * target_ * target_;
+    const bool shrinks = there.promised < 0.5 * before.promised || there.promised < 0.02 * threshold;
+    if (there.promised < 0.3 * threshold && shrinks) return true;
+    Bounds held = bounds_;
+    held.lower[index_] = held.upper[index_] = trial.x[index_];
+    SolverOptions solver;
+    solver.decrease_tolerance = 0.1 * options_.accuracy * threshold;
+    solver.max_evaluations = 30;
+    const int before_it = evaluations_;
+    trial = minimise(objective_, trial.x, held, solver);
+    evaluations_ = before_it + trial.evaluations;
+    lowest_ = std::min(lowest_, trial.value);
+    return trial.outcome == Outcome::converged && look(trial, there);
+  }
+
+  /// The square root of twice the profile's rise at a distance, minus its target. `near` is an optimum at another distance,
+  /// and then the one here. Where the way from there leads out of the objective's domain, it is walked in halves.
   double excess(double distance, Minimum& near, int halvings = 6) {
     const double from = width(near.x);
     Bounds held = bounds_;
@@ -158,7 +189,7 @@ class Search {
     BoxStep box;
     Local local;
     if (look(near, local) && follow(near, local.hessian, side_ * (distance - from), box)) x += box.step;
-    x[index_] = distance >= room_ ? (side_ > 0 ? bounds_.upper[index_] : bounds_.lower[index_]) : minimum_.x[index_] + side_ * distance;
+    x[index_] = position(distance);
     held.lower[index_] = held.upper[index_] = x[index_];
     SolverOptions solver;
     solver.decrease_tolerance = 0.02 * options_.accuracy * target_ * target_;
@@ -185,8 +216,8 @@ class Search {
     return std::min(distance, room_);
   }
 
-  /// Steps outward until the threshold is passed, then closes in by false position (the Illinois rule: M. Dowell, P. Jarratt,
-  /// BIT 11, 168 (1971)).
+  /// Steps outward until the threshold is passed, then closes in by false position (the Illinois rule: M. Dowell, P.
+  /// Jarratt, BIT 11, 168 (1971)).
   ProfileEnd bracketed() {
     Minimum inside = minimum_, at = minimum_;
     double low = 0.0, low_excess = -target_, high = guess();
@@ -235,6 +266,8 @@ class Search {
   double room_;
   double lowest_ = kInfinity;
   int evaluations_ = 0;
+  int trials_ = 0;
+  double ceiling_ = kInfinity;  // nearest distance known to lie beyond the threshold or the objective's domain
 };
 
 }  // namespace

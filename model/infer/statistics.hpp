@@ -5,8 +5,8 @@
 /// Distributions and tests of classical statistics.
 namespace halfturn::infer {
 
-/// Regularised incomplete gamma functions P(a, x) and Q(a, x) = 1 - P, a > 0, x >= 0 (NIST DLMF 8.2.4): series below
-/// x = a + 1, continued fraction above (DLMF 8.7.1, 8.9.2). Relative error of the smaller one < 1e-12 for a <= 1e3, 1e-10 for
+/// Regularised incomplete gamma functions P(a, x) and Q(a, x) = 1 - P, a > 0, x >= 0 (NIST DLMF 8.2.4): series below x =
+/// a + 1, continued fraction above (DLMF 8.7.1, 8.9.2). Relative error of the smaller one < 1e-12 for a <= 1e3, 1e-10 for
 /// a <= 1e6. NaN outside the domain.
 double gamma_p(double a, double x);
 double gamma_q(double a, double x);
@@ -30,15 +30,15 @@ struct Interval {
 /// `level` such as 0.95.
 Interval wilson_interval(double k, double n, double level);
 
-/// Probability of as few runs of equal sign as `residuals` have, or fewer, were the order random (A. Wald, J. Wolfowitz, Ann.
-/// Math. Stat. 11, 147 (1940)): small where a model misses a slow shape. Zeros and NaN are left out. Exact up to 1000
-/// signs, a normal law with continuity correction beyond. 1 where one of the signs is missing.
+/// Probability of as few runs of equal sign as `residuals` have, or fewer, were the order random (A. Wald, J. Wolfowitz,
+/// Ann. Math. Stat. 11, 147 (1940)): small where a model misses a slow shape. Zeros and NaN are left out. Exact up to
+/// 1000 signs, a normal law with continuity correction beyond. 1 where one of the signs is missing.
 double runs_p_value(std::span<const double> residuals);
 
 /// The lag-one autocorrelation sum of `residuals` about their mean, less its expectation over all orders, in units of its
-/// standard deviation over all orders (moments by permutation, as in A. Wald, J. Wolfowitz, Ann. Math. Stat. 14, 378 (1943), for the
-/// sum that is not circular). Near standard normal for random order; > 0 where neighbours agree. NaN for fewer than 4 numbers or
-/// where all are equal.
+/// standard deviation over all orders (moments by permutation, as in A. Wald, J. Wolfowitz, Ann. Math. Stat. 14, 378
+/// (1943), for the sum that is not circular). Near standard normal for random order; > 0 where neighbours agree. NaN for
+/// fewer than 4 numbers or where all are equal.
 double autocorrelation_z(std::span<const double> residuals);
 
 }  // namespace halfturn::infer

@@ -1,7 +1,6 @@
 // SPDX-License-Identifier: Apache-2.0
 #include "model/infer/likelihood.hpp"
 
-#include <chrono>
 #include <cmath>
 #include <limits>
 #include <random>
@@ -28,8 +27,8 @@ PointLikelihood point(Kind kind, double observed, double weight, double mean) {
 
 }  // namespace
 
-// scipy.special.xlogy (SciPy 1.10.1): xlogy(k, k/(n m)) + xlogy(n-k, (n-k)/(n(1-m))), and xlogy(k, k/(N m)) - (k - N m). The
-// two near m = k/n with mpmath at 40 digits, since double precision leaves eight digits of that formula.
+// scipy.special.xlogy (SciPy 1.10.1): xlogy(k, k/(n m)) + xlogy(n-k, (n-k)/(n(1-m))), and xlogy(k, k/(N m)) - (k - N m).
+// The two near m = k/n with mpmath at 40 digits, since double precision leaves eight digits of that formula.
 TEST_CASE("half deviances of single points") {
   CHECK(binomial(7, 20, 0.3).half_deviance == Approx(0.11565112079242457).epsilon(1e-13));
   CHECK(binomial(0, 20, 0.1).half_deviance == Approx(2.107210313156527).epsilon(1e-13));
@@ -48,7 +47,8 @@ TEST_CASE("scores are the derivatives of half deviances, and information their m
     for (const double observed : {0.0, 1.0, 7.0, 20.0}) {
       for (const double mean : {0.03, 0.35, 0.351, 0.8, 0.97}) {
         const double h = 1e-5 * mean;
-        const double rise = point(kind, observed, 20, mean + h).half_deviance - point(kind, observed, 20, mean - h).half_deviance;
+        const double rise =
+            point(kind, observed, 20, mean + h).half_deviance - point(kind, observed, 20, mean - h).half_deviance;
         CHECK(point(kind, observed, 20, mean).score == Approx(rise / (2 * h)).epsilon(1e-6).margin(1e-6));
       }
     }
@@ -91,6 +91,13 @@ TEST_CASE("the ends of the range, and points left out") {
   // One-sided limits.
   CHECK(binomial(0, 20, 1e-12).score == Approx(20.0));
   CHECK(binomial(20, 20, 1 - 1e-12).score == Approx(-20.0));
+  // The information towards the edge: that at half a count where the outcome was not seen, the expected one where it was.
+  CHECK(binomial(0, 20, 1e-9).information == Approx(20 / (0.5 / 21 * (1 - 0.5 / 21))));
+  CHECK(binomial(0, 20, 1e-9).information == binomial(0, 20, 0.0).information);
+  CHECK(binomial(20, 20, 1.0).information == Approx(binomial(0, 20, 0.0).information));
+  CHECK(binomial(1, 20, 1e-9).information == Approx(20e9));
+  CHECK(poisson(0, 5, 1e-9).information == poisson(0, 5, 0.0).information);
+  CHECK(poisson(0, 5, 2.0).information == Approx(2.5));
 }
 
 TEST_CASE("a whole scan is the sum of its points") {
@@ -114,8 +121,8 @@ TEST_CASE("a whole scan is the sum of its points") {
   CHECK(total == kInfinity);
 }
 
-// Sums over scipy.stats.binom.pmf and poisson.pmf (SciPy 1.10.1) of D, D^2, D*score and D*score^2; the last rows lie on both
-// sides of the switch from sums to series.
+// Sums over scipy.stats.binom.pmf and poisson.pmf (SciPy 1.10.1) of D, D^2, D*score and D*score^2; the last rows lie on
+// both sides of the switch from sums to series.
 TEST_CASE("moments of the deviance under its own model") {
   const auto check = [](const DevianceMoments& m, double mean, double variance, double covariance, double quadratic,
                         double tolerance, double quadratic_tolerance) {
@@ -185,19 +192,21 @@ struct Tally {
   double mean = 0, variance = 0, expected = 0, predicted = 0, below_5 = 0, below_1 = 0;
 };
 
-/// Fits `scans` simulated scans and compares deviance and prediction. (deviance - expected) has mean 0 and the predicted variance.
+/// Fits `scans` simulated scans and compares deviance and prediction. (deviance - expected) has mean 0 and the predicted
+/// variance.
 Tally simulate(Kind kind, double weight_each, double top, int scans, bool with_jacobian) {
   std::mt19937_64 random(20240717);
   const std::vector<double> weight(Flop::kPoints, weight_each);
   std::vector<double> observed(Flop::kPoints), mean(Flop::kPoints), jacobian(2 * Flop::kPoints);
   Vector truth(2);
   truth << 0.85, 1.7;
+  const int shots = static_cast<int>(weight_each);
   Tally out;
   for (int scan = 0; scan < scans; ++scan) {
     const Flop flop(Readout{kind, observed, weight}, top);
     flop.means(truth, mean, jacobian);
     for (int i = 0; i < Flop::kPoints; ++i) {
-      if (kind == Kind::binomial) observed[i] = std::binomial_distribution<int>(static_cast<int>(weight_each), mean[i])(random);
+      if (kind == Kind::binomial) observed[i] = std::binomial_distribution<int>(shots, mean[i])(random);
       if (kind == Kind::poisson) observed[i] = std::poisson_distribution<int>(weight_each * mean[i])(random);
     }
     Bounds bounds{Vector::Constant(2, 0.1), Vector::Constant(2, 3.0)};
@@ -220,18 +229,20 @@ Tally simulate(Kind kind, double weight_each, double top, int scans, bool with_j
 
 }  // namespace
 
-// 4000 scans of 40 points: the mean excess is known to sqrt(2*40/4000) = 0.14, its variance to about 3 %, the rate of p < 0.05
-// to 0.0034 (one sigma). Bounds at 4 sigma and more: a seeded test, and by chance a fresh seed would fail once in 1e3.
+// 4000 scans of 40 points: the mean excess is known to sqrt(2*40/4000) = 0.14, its variance to about 3 %, the rate of p <
+// 0.05 to 0.0034 (one sigma). Bounds at 4 sigma and more: a seeded test, and by chance a fresh seed would fail once in 1e3.
 TEST_CASE("fitted deviances have the predicted mean and variance") {
   struct Case {
     Kind kind;
     double weight, top;
     bool jacobian;
   };
-  for (const Case c : {Case{Kind::binomial, 3, 1, true}, Case{Kind::binomial, 20, 1, true}, Case{Kind::binomial, 100, 1, true},
-                       Case{Kind::binomial, 100, 1, false}, Case{Kind::poisson, 1, 2, true}, Case{Kind::poisson, 50, 3, true}}) {
+  const Case cases[] = {{Kind::binomial, 3, 1, true},    {Kind::binomial, 20, 1, true}, {Kind::binomial, 100, 1, true},
+                        {Kind::binomial, 100, 1, false}, {Kind::poisson, 1, 2, true},   {Kind::poisson, 50, 3, true}};
+  for (const Case& c : cases) {
     const Tally tally = simulate(c.kind, c.weight, c.top, 4000, c.jacobian);
-    INFO("weight " << c.weight << " mean excess " << tally.mean << " variance " << tally.variance << " predicted " << tally.predicted
+    INFO("weight " << c.weight << " mean excess " << tally.mean << " variance " << tally.variance
+                   << " predicted " << tally.predicted
                    << " expected " << tally.expected << " p<0.05 " << tally.below_5 << " p<0.01 " << tally.below_1);
     CHECK(std::abs(tally.mean) < 0.6);
     CHECK(tally.predicted == Approx(tally.variance).epsilon(0.12));

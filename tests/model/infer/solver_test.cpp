@@ -1,13 +1,14 @@
 // SPDX-License-Identifier: Apache-2.0
 #include "model/infer/solver.hpp"
 
-#include <Eigen/Cholesky>
+#include <Eigen/QR>
 #include <Eigen/LU>
 #include <cmath>
 #include <fstream>
 #include <functional>
 #include <map>
 #include <numbers>
+#include <random>
 #include <sstream>
 #include <vector>
 
@@ -82,7 +83,8 @@ const std::map<std::string, Model> kModels = {
     {"Gauss1", gauss},
     {"Gauss2", gauss},
     {"Gauss3", gauss},
-    {"Kirby2", [](const Parameters& b, long double x) { return (b[0] + b[1] * x + b[2] * x * x) / (1 + b[3] * x + b[4] * x * x); }},
+    {"Kirby2",
+     [](const Parameters& b, long double x) { return (b[0] + b[1] * x + b[2] * x * x) / (1 + b[3] * x + b[4] * x * x); }},
     {"Lanczos1", lanczos},
     {"Lanczos2", lanczos},
     {"MGH09", [](const Parameters& b, long double x) { return b[0] * (x * x + x * b[1]) / (x * x + x * b[2] + b[3]); }},
@@ -175,24 +177,184 @@ TEST_CASE("NIST StRD nonlinear regression") {
     for (const auto& start : set.starts) {
       SolverOptions options;
       options.decrease_tolerance = 1e-15;
-      const Minimum found = minimise(objective, Eigen::Map<const Eigen::VectorXd>(start.data(), n), Bounds::none(n), options);
+      const Vector from = Eigen::Map<const Eigen::VectorXd>(start.data(), n);
+      const Minimum found = minimise(objective, from, Bounds::none(n), options);
       const Eigen::MatrixXd inverse = Eigen::MatrixXd(found.information).inverse();
       const double points = static_cast<double>(set.x.size());
       double worst = 16, worst_deviation = 16;
       for (int i = 0; i < n; ++i) {
         worst = std::min(worst, digits(found.x[i], set.certified[i]));
-        worst_deviation = std::min(worst_deviation, digits(std::sqrt(inverse(i, i) * points / (points - n)), set.deviation[i]));
+        const double deviation = std::sqrt(inverse(i, i) * points / (points - n));
+        worst_deviation = std::min(worst_deviation, digits(deviation, set.deviation[i]));
       }
       const bool good = worst >= 6 && worst_deviation >= 4;
       passed += good;
       evaluations += found.evaluations;
-      const std::string report = name + " start " + std::to_string(1 + (&start - set.starts)) + ": parameters " + std::to_string(worst) +
-           " digits, deviations " + std::to_string(worst_deviation) + ", evaluations " + std::to_string(found.evaluations) +
-           ", outcome " + std::to_string(static_cast<int>(found.outcome));
-      if (std::getenv("HALFTURN_VERBOSE")) WARN(report);
-      if (!good) WARN("failed: " << report);
+      if (good) continue;
+      WARN(name << " from start " << 1 + (&start - set.starts) << " fails: parameters to "
+                << worst << " digits, deviations to "
+                << worst_deviation << ", after " << found.evaluations << " evaluations");
     }
   }
-  WARN(passed << " of 38 starts pass, " << evaluations << " evaluations");
+  CAPTURE(evaluations);
   CHECK(passed >= 36);
+  CHECK(evaluations < 1600);  // 1330 at present, 600 of them in the two that fail
+}
+
+namespace {
+
+/// Sum of squares of linear residuals, so that minima within bounds are known in closed form.
+struct Quadratic final : Objective {
+  Eigen::MatrixXd a;
+  Eigen::VectorXd b;
+  bool evaluate(const Vector& x, double& value, Vector* gradient, Matrix* information) const override {
+    const Eigen::VectorXd r = a * x - b;
+    value = 0.5 * r.squaredNorm();
+    if (gradient) *gradient = a.transpose() * r;
+    if (information) *information = a.transpose() * a;
+    return true;
+  }
+};
+
+/// A damped cosine of 60 normal readings: five parameters, amplitude, rate, decay, phase, floor, in the given units.
+struct Cosine final : Objective {
+  std::vector<double> y;
+  Vector unit = Vector::Ones(5);
+  double sigma = 0.05;
+  bool evaluate(const Vector& scaled, double& value, Vector* gradient, Matrix* information) const override {
+    const Vector x = scaled.cwiseProduct(unit);
+    value = 0.0;
+    Vector g = Vector::Zero(5);
+    Matrix h = Matrix::Zero(5, 5);
+    for (int i = 0; i < 60; ++i) {
+      const double t = 0.1 * i, e = std::exp(-x[2] * t), c = std::cos(x[1] * t + x[3]), s = std::sin(x[1] * t + x[3]);
+      const double r = (x[4] + x[0] * e * c - y[i]) / sigma;
+      Vector row(5);
+      row << e * c, -x[0] * e * t * s, -x[0] * e * t * c, -x[0] * e * s, 1.0;
+      row = row.cwiseProduct(unit) / sigma;
+      value += 0.5 * r * r;
+      g += r * row;
+      h += row * row.transpose();
+    }
+    if (gradient) *gradient = g;
+    if (information) *information = h;
+    return std::isfinite(value);
+  }
+};
+
+Cosine noisy_cosine(unsigned seed) {
+  Cosine out;
+  std::mt19937_64 random(seed);
+  std::normal_distribution<double> noise(0.0, out.sigma);
+  for (int i = 0; i < 60; ++i) {
+    out.y.push_back(0.5 + 0.45 * std::exp(-0.15 * 0.1 * i) * std::cos(0.314 * i + 0.1) + noise(random));
+  }
+  return out;
+}
+
+Vector five(double a, double b, double c, double d, double e) {
+  Vector out(5);
+  out << a, b, c, d, e;
+  return out;
+}
+
+}  // namespace
+
+// Constrained quadratic minima by complete enumeration of the active sets, an independent and slow method.
+TEST_CASE("quadratic problems end at their bounded minimum") {
+  std::mt19937_64 random(11);
+  std::normal_distribution<double> normal;
+  for (int trial = 0; trial < 200; ++trial) {
+    const int n = 1 + trial % 5;
+    Quadratic objective;
+    objective.a = Eigen::MatrixXd::NullaryExpr(n + 2, n, [&] { return normal(random); });
+    objective.b = Eigen::VectorXd::NullaryExpr(n + 2, [&] { return 2.0 * normal(random); });
+    const Bounds bounds{Vector::Constant(n, -0.3), Vector::Constant(n, 0.5)};
+    double lowest = 1e300;
+    for (int code = 0; code < std::pow(3, n); ++code) {
+      Eigen::VectorXd x(n);
+      std::vector<int> free;
+      for (int i = 0, c = code; i < n; ++i, c /= 3) {
+        x[i] = c % 3 == 0 ? -0.3 : 0.5;
+        if (c % 3 == 2) x[i] = 0.0, free.push_back(i);
+      }
+      if (!free.empty()) {
+        const Eigen::MatrixXd columns = objective.a(Eigen::all, free);
+        x(free) = columns.colPivHouseholderQr().solve(objective.b - objective.a * x);
+      }
+      if (x.minCoeff() < -0.3 - 1e-12 || x.maxCoeff() > 0.5 + 1e-12) continue;
+      lowest = std::min(lowest, 0.5 * (objective.a * x - objective.b).squaredNorm());
+    }
+    const Minimum found = minimise(objective, Vector::Zero(n), bounds);
+    CHECK(found.outcome == Outcome::converged);
+    CHECK(found.value == Approx(lowest).epsilon(1e-9));
+    CHECK(found.evaluations <= 3);
+    for (int i = 0; i < n; ++i) {
+      CHECK((found.at_bound[i] == -1) == (found.x[i] == -0.3));
+      CHECK((found.at_bound[i] == 1) == (found.x[i] == 0.5));
+    }
+  }
+}
+
+TEST_CASE("a well-started problem of five parameters takes few evaluations, in any units") {
+  double evaluations = 0;
+  for (unsigned seed = 0; seed < 100; ++seed) {
+    Cosine objective = noisy_cosine(seed);
+    const Vector start = five(0.42, 3.18, 0.1, 0.0, 0.48);
+    const Minimum found = minimise(objective, start, Bounds::none(5));
+    CHECK(found.outcome == Outcome::converged);
+    CHECK(found.evaluations <= 9);
+    evaluations += found.evaluations / 100.0;
+    objective.unit = five(1e-9, 1e6, 1e3, 1.0, 1e-3);
+    const Minimum rescaled = minimise(objective, start.cwiseQuotient(objective.unit), Bounds::none(5));
+    CHECK(rescaled.evaluations == found.evaluations);
+    CHECK(rescaled.value == Approx(found.value).epsilon(1e-12));
+  }
+  CAPTURE(evaluations);
+  CHECK(evaluations <= 6.0);
+}
+
+TEST_CASE("a parameter that the data do not determine does not run away") {
+  Quadratic objective;
+  objective.a = Eigen::MatrixXd::Zero(3, 3);
+  objective.a << 1, 1, 0, 2, 2, 0, 3, 3, 0;  // only the sum of the first two counts, and the third not at all
+  objective.b = Eigen::Vector3d(1, 2, 3.5);
+  Vector start(3);
+  start << 5, 5, 7;
+  const Minimum found = minimise(objective, start, Bounds::none(3));
+  CHECK(found.outcome == Outcome::converged);
+  CHECK(found.x[0] + found.x[1] == Approx(15.5 / 14.0).epsilon(1e-6));
+  CHECK(std::abs(found.x[0] - found.x[1]) < 10.0);
+  CHECK(found.x[2] == Approx(7.0));
+}
+
+TEST_CASE("fixed parameters, edges of the domain and nonsense") {
+  Cosine objective = noisy_cosine(3);
+  Bounds bounds = Bounds::none(5);
+  bounds.lower[2] = bounds.upper[2] = 0.15;
+  const Minimum held = minimise(objective, five(0.42, 3.18, 0.9, 0.0, 0.48), bounds);
+  CHECK(held.outcome == Outcome::converged);
+  CHECK(held.x[2] == 0.15);
+  CHECK(held.at_bound[2] == 2);
+
+  CHECK(minimise(objective, Vector::Zero(4), bounds).outcome == Outcome::not_finite);
+  CHECK(minimise(objective, five(NAN, 1, 1, 1, 1), Bounds::none(5)).outcome == Outcome::not_finite);
+  std::swap(bounds.lower[0], bounds.upper[0]);
+  CHECK(minimise(objective, Vector::Ones(5), bounds).outcome == Outcome::not_finite);
+  CHECK(minimise(objective, Vector(), Bounds{}).outcome == Outcome::not_finite);
+
+  // log x + 1/x is not defined below 0 and has its minimum at 1; a free step from 0.05 leaps far across.
+  struct Edge final : Objective {
+    bool evaluate(const Vector& x, double& value, Vector* gradient, Matrix* information) const override {
+      if (!(x[0] > 0.0 && x[0] < 3.0)) return false;
+      value = std::log(x[0]) + 1.0 / x[0];
+      if (gradient) *gradient = Vector::Constant(1, 1.0 / x[0] - 1.0 / (x[0] * x[0]));
+      if (information) *information = Matrix::Constant(1, 1, 0.01);
+      return true;
+    }
+  };
+  const Minimum edge = minimise(Edge(), Vector::Constant(1, 0.05), Bounds::none(1));
+  CHECK(edge.outcome == Outcome::converged);
+  CHECK(edge.x[0] == Approx(1.0).epsilon(1e-3));
+  CHECK(minimise(Edge(), Vector::Constant(1, -1.0), Bounds::none(1)).outcome == Outcome::not_finite);
 }

@@ -115,7 +115,8 @@ TEST_CASE("runs of signs") {
   CHECK(runs_p_value({}) == 1.0);
 }
 
-// 1000 signs are summed exactly and 1001 go by the normal law: in the body of the distribution the two agree to its accuracy.
+// 1000 signs are summed exactly and 1001 go by the normal law: in the body of the distribution the two agree to its
+// accuracy.
 TEST_CASE("exact and normal laws of runs meet") {
   std::mt19937_64 random(5);
   std::vector<double> signs(1001);
@@ -146,15 +147,17 @@ struct Scan {
   double rising, flat;
 };
 const Scan kScans[] = {
-    {Readout::Kind::binomial, {9, 4, 2, 8, 14, 11, 19, 15}, {20, 20, 10, 20, 25, 20, 20, 20}, 2.3669752573322036, 18.813264282429948},
-    {Readout::Kind::gaussian, {.31, .22, .18, .42, .55, .47, .93, .71}, {.05, .05, .1, .05, .04, .05, .05, .08}, 4.967311648954555,
-     70.55111703022843},
-    {Readout::Kind::poisson, {31, 12, 9, 55, 48, 40, 90, 71}, {10, 5, 5, 10, 8, 10, 10, 10}, 3.142059488881426, 33.67288881642818},
+    {Readout::Kind::binomial, {9, 4, 2, 8, 14, 11, 19, 15}, {20, 20, 10, 20, 25, 20, 20, 20},
+     2.3669752573322036, 18.813264282429948},
+    {Readout::Kind::gaussian, {.31, .22, .18, .42, .55, .47, .93, .71}, {.05, .05, .1, .05, .04, .05, .05, .08},
+     4.967311648954555, 70.55111703022843},
+    {Readout::Kind::poisson, {31, 12, 9, 55, 48, 40, 90, 71}, {10, 5, 5, 10, 8, 10, 10, 10},
+     3.142059488881426, 33.67288881642818},
 };
 }  // namespace
 
-// scipy.optimize.minimize(method="SLSQP") of each likelihood itself over means with increments >= 0 (SciPy 1.10.1, ftol 1e-15,
-// five starts). Its accuracy is that of the comparison.
+// scipy.optimize.minimize(method="SLSQP") of each likelihood itself over means with increments >= 0 (SciPy 1.10.1, ftol
+// 1e-15, five starts). Its accuracy is that of the comparison.
 TEST_CASE("monotone fits") {
   std::vector<double> mirrored(kAxis);
   for (auto& a : mirrored) a = -a;
