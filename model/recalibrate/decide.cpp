@@ -129,11 +129,11 @@ FitEvent event_of(const infer::Fit& fit, const Context& context) {
   return event;
 }
 
-/// The state as it will be when this fit has been taken.
+/// What is tracked, as it will be when this fit has been taken.
 infer::Known tracked_after(const State& state, const FitEvent& event) {
   State after = state;
   advance(after, event);
-  return *after.rabi.predict(event.at);
+  return *(event.quantity == Quantity::line ? after.line : after.rabi).predict(event.at);
 }
 
 void decide_pulses(const State& state, const infer::Fit& fit, const infer::Prior& prior, const Context& context, Decision& decision) {
@@ -162,12 +162,20 @@ void keep_all(const State& state, const infer::Fit& fit, const infer::Prior& pri
   }
 }
 
-void decide_carrier(const infer::Fit& fit, Decision& decision) {
-  const double least = std::max(fit.line_offset.sigma, kLeastCarrierStep * fit.quality.line_width);
+/// The line's offset from the carrier: this scan's, drawn towards the history where the experiment's own carrier numbers give it a
+/// place to be tracked at.
+infer::Known tracked_offset(const State& state, const infer::Fit& fit, const Context& context, const FitEvent& event) {
+  if (!std::isfinite(event.value)) return {fit.line_offset.value, fit.line_offset.sigma};
+  const infer::Known line = tracked_after(state, event);
+  return {line.mean - context.carrier, line.sigma};
+}
+
+void decide_carrier(const State& state, const infer::Fit& fit, const Context& context, Decision& decision) {
+  const infer::Known offset = tracked_offset(state, fit, context, decision.event);
   decision.verdict = Verdict::keep;
-  if (std::abs(fit.line_offset.value) <= least) return;
+  if (std::abs(offset.mean) <= std::max(offset.sigma, kLeastCarrierStep * fit.quality.line_width)) return;
   decision.verdict = Verdict::apply;
-  decision.carrier_shift = fit.line_offset.value;
+  decision.carrier_shift = offset.mean;
 }
 
 Verdict most_cautious(const std::vector<PulseDecision>& pulses) {
@@ -214,7 +222,7 @@ Decision decide(const State& state, const infer::Fit& fit, const infer::Prior& p
     decision.verdict = Verdict::refuse;
     keep_all(state, fit, prior, context, Verdict::refuse, decision);
   } else if (fit.axis == infer::Axis::detuning) {
-    decide_carrier(fit, decision);
+    decide_carrier(state, fit, context, decision);
     keep_all(state, fit, prior, context, Verdict::keep, decision);
   } else {
     decide_pulses(state, fit, prior, context, decision);

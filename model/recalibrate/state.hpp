@@ -18,7 +18,7 @@ inline constexpr double kAbsent = std::numeric_limits<double>::quiet_NaN();
 
 /// Floors of the random walks, per square root of an hour: of the log Rabi frequency, and of the line in parts of its width.
 inline constexpr double kRabiNoise = 1e-3;
-inline constexpr double kLineNoise = 1e-2;
+inline constexpr double kLineNoise = 2e-3;
 
 /// How a fit moved the tracked state: `none` not at all; `first` begins it; `accepted` updates it; `pending` waits for a second
 /// scan to confirm a step; `confirmed` restarts it at the step; `aside` was taken at another drive amplitude.

@@ -36,7 +36,7 @@ struct Options {
   std::string configuration_name = "the configuration";              // for messages
   unsigned threads = 0;                                              // that fit; 0: one a hardware core
   wire::Limits limits = {};
-  std::chrono::milliseconds stop_within = std::chrono::seconds(10);  // for what was accepted before a stop
+  std::chrono::milliseconds stop_within{9500};                       // for what was accepted before a stop; 10 s are promised
   bool signals = false;                                              // take SIGTERM, SIGINT and SIGHUP
   std::function<void(service::Task&)> fit = &service::Service::fit;
 };

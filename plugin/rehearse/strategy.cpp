@@ -4,6 +4,7 @@
 #include <algorithm>
 #include <cmath>
 #include <limits>
+#include <numbers>
 
 namespace halfturn::rehearse {
 namespace {
@@ -17,7 +18,8 @@ double root_mean_square(const std::vector<double>& values) {
 }  // namespace
 
 void Strategy::note(const Apparatus& apparatus, double time_s, double angle_rad) {
-  errors_rad_.push_back(apparatus.rotation(time_s, pulse_s, carrier_hz) - angle_rad);
+  // A whole turn too much is no error: atoms feel the angle within a turn.
+  errors_rad_.push_back(std::remainder(apparatus.rotation(time_s, pulse_s, carrier_hz) - angle_rad, 2.0 * std::numbers::pi));
   carrier_errors_hz_.push_back(carrier_hz - apparatus.truth(time_s).line_hz);
 }
 

@@ -64,9 +64,11 @@ TEST_CASE("a closed order gives back what stood in line and lets nobody wait") {
   Order order;
   order.add(job("a"), false);
   order.add(job("b"), false);
-  std::thread waiter([&] { CHECK(order.wait().empty()); });
+  bool empty = false;
+  std::thread waiter([&] { empty = order.wait().empty(); });
   CHECK(order.close().size() == 2);
   waiter.join();
+  CHECK(empty);
   CHECK(order.wait().empty());
 }
 
