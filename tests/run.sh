@@ -10,7 +10,7 @@ export CCACHE_DIR="${CCACHE_DIR:-$HOME/.cache/ccache}"
 export HALFTURN_PYTHON=/usr/bin/python3
 
 echo "== build (GCC, Release)"
-cmake -S . -B build -G Ninja -DCMAKE_CXX_COMPILER=g++ -DHALFTURN_BENCHMARKS=ON >/dev/null
+cmake -S . -B build -G Ninja -DCMAKE_CXX_COMPILER=g++ -DCMAKE_BUILD_TYPE=Release -DHALFTURN_TESTS=ON -DHALFTURN_BENCHMARKS=ON >/dev/null
 cmake --build build -j2
 
 if [[ ${HALFTURN_CLANG:-0} == 1 ]]; then

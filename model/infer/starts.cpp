@@ -211,54 +211,6 @@ void SearchWorkspace::reserve(std::size_t points) {
     if (array->size() < points) array->resize(points);
 }
 
-void linear_points(const Readout& readout, std::span<double> value, std::span<double> weight) {
-  for (std::size_t i = 0; i < value.size(); ++i) {
-    const double k = readout.observed[i], n = readout.weight[i];
-    value[i] = weight[i] = 0.0;
-    if (!std::isfinite(k) || !std::isfinite(n) || !(n > 0.0)) continue;
-    if (readout.kind == Readout::Kind::gaussian) {
-      value[i] = k;
-      weight[i] = 1.0 / (n * n);
-    } else if (readout.kind == Readout::Kind::poisson) {
-      value[i] = k / n;
-      weight[i] = n * n / (k + 1.0);
-    } else {
-      const double p = (k + 2.0) / (n + 4.0);
-      value[i] = k / n;
-      weight[i] = n / (p * (1.0 - p));
-    }
-  }
-}
-
-Sampling sampling_of(Axis kind, std::span<const double> axis) {
-  Sampling sampling;
-  if (axis.empty()) return sampling;
-  std::vector<double> sorted(axis.begin(), axis.end());
-  std::sort(sorted.begin(), sorted.end());
-  sampling.span = sorted.back() - sorted.front();
-  // Values closer than 1e-9 of the span are one.
-  const double same = 1e-9 * sampling.span;
-  sampling.distinct = 1;
-  sampling.spacing = sampling.span;
-  for (std::size_t i = 1; i < sorted.size(); ++i) {
-    const double gap = sorted[i] - sorted[i - 1];
-    if (gap <= same) continue;
-    ++sampling.distinct;
-    sampling.spacing = std::min(sampling.spacing, gap);
-  }
-  if (sampling.distinct < 2) return sampling;
-  sampling.even = true;
-  for (const double value : sorted) {
-    const double steps = (value - sorted.front()) / sampling.spacing;
-    if (std::abs(steps - std::round(steps)) > 1e-3 * std::max(1.0, steps)) sampling.even = false;
-  }
-  if (kind == Axis::detuning) return sampling;
-  const double of_gap = kPi / sampling.spacing;
-  const double of_count = kPi * static_cast<double>(sampling.distinct - 1) / sampling.span;
-  sampling.limit = sampling.even ? of_gap : std::min(of_gap, 8.0 * of_count);
-  return sampling;
-}
-
 std::size_t duration_starts(const ScanBatch& scan, const Readout& readout, const Prior& prior, const Sampling& sampling,
                             std::span<Mode> modes, SearchWorkspace& work) {
   const auto n = scan.points();

@@ -15,7 +15,9 @@ using nlohmann::json;
 std::string fixed(double value, int decimals) {
   if (!std::isfinite(value)) return "-";
   std::ostringstream text;
-  text << std::fixed << std::setprecision(decimals) << value;
+  // What a fit of a flat scan asks for can be any number; past this the digits would burst the column.
+  if (std::abs(value) >= 1e7) text << std::scientific << std::setprecision(1) << value;
+  else text << std::fixed << std::setprecision(decimals) << value;
   return text.str();
 }
 

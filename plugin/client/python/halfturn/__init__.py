@@ -4,9 +4,8 @@
     import halfturn
     with halfturn.Client() as client:
         fit = client.fit(drive="red", duration_s=durations, counts=counts, shots=100)
-        if fit.applies:
-            load(fit.length_s("flip"))
-            client.applied("red", pulses={"flip": fit.length_s("flip")})
+        load(fit.lengths_s())  # always what to load: without a new proposal the lengths in force
+        client.applied("red", pulses=fit.lengths_s())
 
 All quantities are SI; a name ends in its unit. NumPy arrays and scalars may be given anywhere. A fit that is refused is no
 exception: its `verdict` is "refuse" and its `reasons` say why. A client belongs to one thread.

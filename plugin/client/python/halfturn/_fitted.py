@@ -13,7 +13,8 @@ class Fitted(dict):
 
     @property
     def applies(self):
-        """Whether new pulses are proposed: the verdict is "apply"."""
+        """Whether the scan's verdict is "apply": every pulse has a new length, or the carrier is to be moved. One pulse alone may
+        have a new length where it is not, so `lengths_s` is what to load in any case."""
         return self.get("verdict") == "apply"
 
     @property
