@@ -10,7 +10,7 @@ namespace {
 constexpr double kNanosecondsAnHour = 3.6e12;
 // Weight of the newest innovation in the noise estimate: small enough that a quiet drive is averaged, large enough that a
 // ramp is followed (state_test).
-constexpr double kForget = 0.15;
+constexpr double kForget = 0.1;
 // An innovation beyond so many sigmas is believed at once: the walk was that much wider.
 constexpr double kSurprise = 3.0;
 // The walk's standard deviation before there are innovations to tell, in units of its floor.
