@@ -2,7 +2,7 @@
 #pragma once
 #include <cmath>
 
-#include "model/dynamics/clones.hpp"
+#include "model/quantity/clones.hpp"
 #include "model/dynamics/modes.hpp"
 
 // With s the Laplace variable, x = s + g, k = G + L, h = x^2 + D^2 and M = (W^2/2) x, eliminating u and v gives

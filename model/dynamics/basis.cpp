@@ -7,10 +7,13 @@
 #include <cstdint>
 #include <limits>
 
-#include "model/dynamics/clones.hpp"
-#include "model/dynamics/elementary.hpp"
+#include "model/quantity/clones.hpp"
+#include "model/quantity/elementary.hpp"
 
 namespace halfturn::dynamics::detail {
+
+using namespace elementary;
+
 namespace {
 
 constexpr std::size_t kWidth = 8;      // lanes of the recurrence: two AVX2 registers a mode

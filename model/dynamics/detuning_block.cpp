@@ -4,11 +4,14 @@
 #include <cmath>
 
 #include "model/dynamics/amplitudes.hpp"
-#include "model/dynamics/clones.hpp"
-#include "model/dynamics/elementary.hpp"
+#include "model/quantity/clones.hpp"
+#include "model/quantity/elementary.hpp"
 #include "model/dynamics/roots.hpp"
 
 namespace halfturn::dynamics::detail {
+
+using namespace elementary;
+
 namespace {
 
 // Steps of Newton's method, from the guesses of roots.hpp; what has not settled to 1e-9 by then is doubtful.

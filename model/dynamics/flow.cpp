@@ -5,7 +5,7 @@
 #include <cmath>
 #include <limits>
 
-#include "model/dynamics/clones.hpp"
+#include "model/quantity/clones.hpp"
 
 namespace halfturn::dynamics::detail {
 namespace {

@@ -2,7 +2,7 @@
 #pragma once
 #include <cmath>
 
-#include "model/dynamics/clones.hpp"
+#include "model/quantity/clones.hpp"
 
 namespace halfturn::dynamics::detail {
 

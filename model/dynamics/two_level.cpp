@@ -7,7 +7,7 @@
 
 #include "model/dynamics/basis.hpp"
 #include "model/dynamics/detuning_block.hpp"
-#include "model/dynamics/elementary.hpp"
+#include "model/quantity/elementary.hpp"
 #include "model/dynamics/flow.hpp"
 #include "model/dynamics/modes.hpp"
 
@@ -154,7 +154,7 @@ bool block_serves(const Problem& problem, const Wanted& wanted, const DetuningBl
     return false;
   double largest = 0;
   for (double detuning : block.detuning) largest = std::max(largest, std::abs(detuning));
-  return t > 0 && (largest + std::abs(problem.rabi)) * t <= kLargestPhase;  // false for NaN
+  return t > 0 && (largest + std::abs(problem.rabi)) * t <= elementary::kLargestPhase;  // false for NaN
 }
 
 void line_one(Problem problem, std::span<const double> axis, double length_s, const Rows& rows) {

@@ -2,36 +2,109 @@
 #include "model/infer/likelihood.hpp"
 
 #include <algorithm>
+#include <array>
 #include <cmath>
 #include <limits>
+
+#include "model/quantity/clones.hpp"
+#include "model/quantity/elementary.hpp"
 
 namespace halfturn::infer {
 namespace {
 
 constexpr double kInfinity = std::numeric_limits<double>::infinity();
-constexpr PointLikelihood kNothing{0.0, 0.0, 0.0};
-constexpr PointLikelihood kRuledOut{kInfinity, 0.0, 0.0};
 
 /// k log(k/m) - (k - m), without cancellation near m = k; m where k = 0.
-double entropy(double k, double m) {
-  if (k <= 0.0) return m;
-  const double x = (m - k) / k;
-  if (std::abs(x) >= 0.02) return k * (x - std::log(m / k));
-  // x - log(1 + x) = x^2 (1/2 - x/3 + x^2/4 - ...); nine terms leave less than 0.02^9/11 < 1e-16 of the first.
-  double sum = 0.0;
-  for (int j = 10; j >= 2; --j) sum = 1.0 / j - x * sum;
-  return k * x * x * sum;
+HALFTURN_INLINE double entropy(double k, double m) {
+  const bool some = k > 0.0;
+  const double inverse = 1.0 / (some ? k : 1.0), safe = m > 1e-300 ? m : 1e-300;
+  return some ? k * elementary::excess_over_log(safe * inverse, (safe - k) * inverse) : m;
 }
 
-template <PointLikelihood (*point)(double, double, double)>
-bool sum(const Readout& readout, std::span<const double> mean, double& half_deviance, std::span<double> score,
+// Choices are written with & and |, which have no short cut to be taken: a loop over them becomes vector instructions.
+
+HALFTURN_INLINE PointLikelihood binomial_point(double counts, double shots, double mean) {
+  const double dark = shots - counts, other = 1.0 - mean;
+  const bool counted = (shots > 0.0) & (counts == counts);
+  const bool possible = (mean >= 0.0) & (mean <= 1.0) & ((counts <= 0.0) | (mean > 0.0)) & ((dark <= 0.0) | (other > 0.0));
+  const double deviance = entropy(counts, shots * mean) + entropy(dark, shots * other);
+  const double bright = counts > 0.0 ? counts / mean : 0.0, unlit = dark > 0.0 ? dark / other : 0.0;
+  const double variance = mean * other;
+  // Half a count of the outcome that was never seen, in shots + 1.
+  const double least = 0.5 * (shots + 0.5) / ((shots + 1.0) * (shots + 1.0));
+  const bool unseen = ((counts <= 0.0) & (mean < 0.5)) | ((dark <= 0.0) & (other < 0.5));
+  const double taken = unseen & (variance < least) ? least : variance;
+  const double seen = possible ? deviance : kInfinity;
+  return {counted ? seen : 0.0, counted & possible ? unlit - bright : 0.0, counted & possible ? shots / taken : 0.0};
+}
+
+HALFTURN_INLINE PointLikelihood gaussian_point(double signal, double sigma, double mean) {
+  const bool counted = (sigma < kInfinity) & (signal == signal), possible = std::abs(mean) < kInfinity;
+  const double z = (mean - signal) / sigma, seen = possible ? 0.5 * z * z : kInfinity;
+  return {counted ? seen : 0.0, counted & possible ? z / sigma : 0.0, counted & possible ? 1.0 / (sigma * sigma) : 0.0};
+}
+
+HALFTURN_INLINE PointLikelihood poisson_point(double photons, double exposures, double mean) {
+  const bool counted = (exposures > 0.0) & (photons == photons), some = photons > 0.0;
+  const bool possible = (mean >= 0.0) & (mean < kInfinity) & ((photons <= 0.0) | (mean > 0.0));
+  const double deviance = entropy(photons, exposures * mean);
+  const double least = 0.5 / exposures;
+  const double score = exposures - (some ? photons / mean : 0.0);
+  const double information = exposures / (some | (mean > least) ? mean : least);
+  const double seen = possible ? deviance : kInfinity;
+  return {counted ? seen : 0.0, counted & possible ? score : 0.0, counted & possible ? information : 0.0};
+}
+
+/// As many points at a time as stay in the first cache with all that is made of them.
+constexpr std::size_t kChunk = 64;
+
+struct Chunk {
+  const double *observed, *weight, *mean;
+  std::size_t count;
+  std::array<double, kChunk> deviance, score, information;
+};
+
+HALFTURN_CLONES void binomial_chunk(Chunk& c) {
+  for (std::size_t i = 0; i < c.count; ++i) {
+    const PointLikelihood at = binomial_point(c.observed[i], c.weight[i], c.mean[i]);
+    c.deviance[i] = at.half_deviance;
+    c.score[i] = at.score;
+    c.information[i] = at.information;
+  }
+}
+
+HALFTURN_CLONES void gaussian_chunk(Chunk& c) {
+  for (std::size_t i = 0; i < c.count; ++i) {
+    const PointLikelihood at = gaussian_point(c.observed[i], c.weight[i], c.mean[i]);
+    c.deviance[i] = at.half_deviance;
+    c.score[i] = at.score;
+    c.information[i] = at.information;
+  }
+}
+
+HALFTURN_CLONES void poisson_chunk(Chunk& c) {
+  for (std::size_t i = 0; i < c.count; ++i) {
+    const PointLikelihood at = poisson_point(c.observed[i], c.weight[i], c.mean[i]);
+    c.deviance[i] = at.half_deviance;
+    c.score[i] = at.score;
+    c.information[i] = at.information;
+  }
+}
+
+bool sum(void (*fill)(Chunk&), const Readout& readout, std::span<const double> mean, double& half_deviance, std::span<double> score,
          std::span<double> information) {
   double total = 0.0;
-  for (std::size_t i = 0; i < mean.size(); ++i) {
-    const PointLikelihood at = point(readout.observed[i], readout.weight[i], mean[i]);
-    total += at.half_deviance;
-    if (!score.empty()) score[i] = at.score;
-    if (!information.empty()) information[i] = at.information;
+  Chunk chunk;
+  for (std::size_t first = 0; first < mean.size(); first += kChunk) {
+    chunk.observed = readout.observed.data() + first;
+    chunk.weight = readout.weight.data() + first;
+    chunk.mean = mean.data() + first;
+    chunk.count = std::min(kChunk, mean.size() - first);
+    fill(chunk);
+    for (std::size_t i = 0; i < chunk.count; ++i) total += chunk.deviance[i];
+    if (!score.empty()) std::copy_n(chunk.score.begin(), chunk.count, score.begin() + static_cast<std::ptrdiff_t>(first));
+    if (!information.empty())
+      std::copy_n(chunk.information.begin(), chunk.count, information.begin() + static_cast<std::ptrdiff_t>(first));
   }
   half_deviance = std::isnan(total) ? kInfinity : total;
   return std::isfinite(total);
@@ -39,42 +112,18 @@ bool sum(const Readout& readout, std::span<const double> mean, double& half_devi
 
 }  // namespace
 
-PointLikelihood binomial(double counts, double shots, double mean) {
-  if (!(shots > 0.0) || std::isnan(counts)) return kNothing;
-  if (!(mean >= 0.0 && mean <= 1.0)) return kRuledOut;
-  const double dark = shots - counts, other = 1.0 - mean;
-  if ((counts > 0.0 && mean <= 0.0) || (dark > 0.0 && other <= 0.0)) return kRuledOut;
-  const double deviance = entropy(counts, shots * mean) + entropy(dark, shots * other);
-  const double bright = counts > 0.0 ? counts / mean : 0.0, unlit = dark > 0.0 ? dark / other : 0.0;
-  double variance = mean * other;
-  // Half a count of the outcome that was never seen, in shots + 1.
-  const double least = 0.5 * (shots + 0.5) / ((shots + 1.0) * (shots + 1.0));
-  const bool unseen = (counts <= 0.0 && mean < 0.5) || (dark <= 0.0 && other < 0.5);
-  if (unseen && variance < least) variance = least;
-  return {deviance, unlit - bright, shots / variance};
-}
+PointLikelihood binomial(double counts, double shots, double mean) { return binomial_point(counts, shots, mean); }
 
-PointLikelihood gaussian(double signal, double sigma, double mean) {
-  if (!(sigma < kInfinity) || std::isnan(signal)) return kNothing;
-  if (!std::isfinite(mean)) return kRuledOut;
-  const double z = (mean - signal) / sigma;
-  return {0.5 * z * z, z / sigma, 1.0 / (sigma * sigma)};
-}
+PointLikelihood gaussian(double signal, double sigma, double mean) { return gaussian_point(signal, sigma, mean); }
 
-PointLikelihood poisson(double photons, double exposures, double mean) {
-  if (!(exposures > 0.0) || std::isnan(photons)) return kNothing;
-  if (!(mean >= 0.0 && mean < kInfinity) || (photons > 0.0 && mean <= 0.0)) return kRuledOut;
-  const double deviance = entropy(photons, exposures * mean);
-  if (photons <= 0.0) return {deviance, exposures, exposures / std::max(mean, 0.5 / exposures)};
-  return {deviance, exposures - photons / mean, exposures / mean};
-}
+PointLikelihood poisson(double photons, double exposures, double mean) { return poisson_point(photons, exposures, mean); }
 
 bool evaluate(const Readout& readout, std::span<const double> mean, double& half_deviance, std::span<double> score,
               std::span<double> information) {
   switch (readout.kind) {
-    case Readout::Kind::binomial: return sum<binomial>(readout, mean, half_deviance, score, information);
-    case Readout::Kind::gaussian: return sum<gaussian>(readout, mean, half_deviance, score, information);
-    case Readout::Kind::poisson: return sum<poisson>(readout, mean, half_deviance, score, information);
+    case Readout::Kind::binomial: return sum(binomial_chunk, readout, mean, half_deviance, score, information);
+    case Readout::Kind::gaussian: return sum(gaussian_chunk, readout, mean, half_deviance, score, information);
+    case Readout::Kind::poisson: return sum(poisson_chunk, readout, mean, half_deviance, score, information);
   }
   return false;
 }

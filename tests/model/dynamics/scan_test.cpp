@@ -4,7 +4,6 @@
 #include <limits>
 #include <random>
 
-#include "model/dynamics/elementary.hpp"
 #include "tests/model/dynamics/reference_table.hpp"
 #include "tests/support/catch.hpp"
 
@@ -140,23 +139,4 @@ TEST_CASE("an empty scan and an empty batch are no fault") {
   CHECK(tests::evaluate({1, 0, 0, 0, 0}, {}, {}).status == Status::ok);
   Workspace workspace;
   duration_scan({}, {}, even_grid(0, 1, 3), {}, {}, {}, workspace);
-}
-
-// Source: the C library's exp, sin and cos, of which glibc states an error below 1 ulp.
-TEST_CASE("exponentials and sines of the vector kernels agree with the C library") {
-  std::mt19937_64 random(4);
-  std::uniform_real_distribution<double> exponent(-16, 0), unit(-1, 1);
-  double worst_exponential = 0, worst_sine = 0;
-  for (int i = 0; i < 200000; ++i) {
-    const double x = -700 * std::exp(exponent(random));
-    worst_exponential = std::max(worst_exponential, std::abs(detail::decaying_exponential(x) / std::exp(x) - 1));
-    const double phase = detail::kLargestPhase * unit(random) * std::exp(exponent(random));
-    const auto at = detail::sine_cosine(phase);
-    worst_sine = std::max({worst_sine, std::abs(at.sine - std::sin(phase)), std::abs(at.cosine - std::cos(phase))});
-  }
-  CHECK(worst_exponential < 5e-16);
-  CHECK(worst_sine < 3e-16);
-  CHECK(detail::decaying_exponential(0) == 1);
-  CHECK(detail::decaying_exponential(-kInfinity) == 0);
-  CHECK(std::isnan(detail::decaying_exponential(kNaN)));
 }
