@@ -30,6 +30,34 @@ void linear_points(const Readout& readout, std::span<double> value, std::span<do
   }
 }
 
+void SearchWorkspace::reserve(std::size_t points) {
+  for (auto* array : {&value, &weight})
+    if (array->size() < points) array->resize(points);
+}
+
+void keep_signals_possible(Readout::Kind kind, Physical& start) {
+  if (kind == Readout::Kind::binomial) {
+    const double contrast = start.contrast();
+    start.signal_ground = std::clamp(start.signal_ground, 0.005, 0.995);
+    start.signal_excited = std::clamp(start.signal_excited, 0.005, 0.995);
+    // Both at one end: a contrast must be left, or the fit has nothing to hold on to.
+    if (start.signal_ground == start.signal_excited) start.signal_excited = start.signal_ground < 0.5 ? 0.5 : 0.5 * start.signal_ground;
+    if (contrast * start.contrast() < 0.0) std::swap(start.signal_ground, start.signal_excited);
+  } else if (kind == Readout::Kind::poisson) {
+    const double least = 1e-3 * std::max(std::abs(start.signal_ground), std::abs(start.signal_excited));
+    start.signal_ground = std::max(start.signal_ground, least);
+    start.signal_excited = std::max(start.signal_excited, least);
+  }
+}
+
+bool sign_admitted(const Prior& prior, double contrast) {
+  constexpr double kReach = 6.0;
+  if (!prior.contrast) return true;
+  return contrast * prior.contrast->mean >= 0.0 || std::abs(prior.contrast->mean) <= kReach * prior.contrast->sigma;
+}
+
+double kept_above(double best_gain) { return best_gain - std::max(60.0, 0.3 * best_gain); }
+
 Sampling sampling_of(Axis kind, std::span<const double> axis) {
   Sampling sampling;
   if (axis.empty()) return sampling;

@@ -7,6 +7,7 @@
 namespace halfturn::infer {
 namespace {
 
+constexpr std::size_t kMostFree = 7;  // lead, offset, detuning, dead time, two signals, damping
 // A signal at exactly 0 or 1 makes the information of a binomial point infinite. 1e-7 costs at most 2e-7 of deviance a shot.
 constexpr double kSignalMargin = 1e-7;
 // |Delta| is taken as at least this part of the generalised frequency while Delta^2 is fitted, so that dP/d(Delta^2) =
@@ -20,6 +21,17 @@ constexpr double kPriorReach = 8.0;
 constexpr double kLineDeadTime = 1e-3;
 
 double held_sigma(const Known& known) { return std::max(known.sigma, 1e-6); }
+
+/// Sum of products in four lanes, which makes it vector instructions without leave to reorder sums.
+double dot(const double* a, const double* b, std::size_t n) {
+  double lanes[4] = {0.0, 0.0, 0.0, 0.0};
+  std::size_t i = 0;
+  for (; i + 4 <= n; i += 4)
+    for (std::size_t lane = 0; lane < 4; ++lane) lanes[lane] += a[i + lane] * b[i + lane];
+  double sum = (lanes[0] + lanes[1]) + (lanes[2] + lanes[3]);
+  for (; i < n; ++i) sum += a[i] * b[i];
+  return sum;
+}
 
 double square(double x) { return x * x; }
 
@@ -38,6 +50,8 @@ void ObjectiveWorkspace::reserve(std::size_t points) {
     if (array->size() < points) array->resize(points);
   for (auto& array : by_rate)
     if (array.size() < points) array.resize(points);
+  // One column a parameter, and one to spare for products.
+  if (jacobian.size() < (kMostFree + 1) * points) jacobian.resize((kMostFree + 1) * points);
   dynamics.reserve(points);
 }
 
@@ -168,36 +182,54 @@ bool ScanObjective::data_part(const Physical& p, double& half_deviance, std::spa
   return infer::evaluate(readout_, {work_.signal.data(), n}, half_deviance, {}, {});
 }
 
-/// The derivative of the signal at a point with respect to the free parameters.
-void ScanObjective::rows(const Physical& p, std::size_t i, Vector& row) const {
+std::span<double> ScanObjective::column(int parameter) const {
+  return {work_.jacobian.data() + static_cast<std::size_t>(parameter) * scan_.points(), scan_.points()};
+}
+
+/// Derivatives of the signal by the free parameters, from those of the population by rates and length.
+void ScanObjective::fill_columns(const Physical& p) const {
   const double contrast = p.contrast();
-  const bool line = scan_.kind == Axis::detuning;
-  double by_generalised = work_.by_rate[0][i];
-  double by_square = 0.0, by_dead_time = 0.0, lead_factor = 1.0;
-  if (layout_.dead_time >= 0) by_dead_time = -work_.by_length[i];
-  if (!line) {
+  const double* const population = work_.population.data();
+  // d signal / d parameter = a * d P/d Omega + b * d P/d Delta + c * d P/d length, with one (a, b, c) a parameter.
+  double of_generalised = contrast;  // d P/d generalised, at fixed Delta^2, is this times d P/d Omega
+  double square_by_rabi = 0.0, square_by_detuning = 0.0, dead_by_rabi = 0.0, lead_factor = 1.0;
+  if (scan_.kind == Axis::duration) {
     const auto now = rates(p);
-    by_generalised *= p.generalised / now.rabi;
-    if (layout_.detuning_square >= 0)
-      by_square = 0.5 * (work_.by_rate[1][i] / now.detuning - work_.by_rate[0][i] / now.rabi);
+    of_generalised *= p.generalised / now.rabi;
+    if (layout_.detuning_square >= 0) {
+      square_by_rabi = -0.5 * contrast / now.rabi;
+      square_by_detuning = 0.5 * contrast / now.detuning;
+    }
+    if (lead_.kind == Lead::Kind::bare) {
+      lead_factor = p.rabi() / p.generalised;
+      square_by_rabi += of_generalised * 0.5 / p.generalised;
+    } else if (lead_.kind == Lead::Kind::pulse_length) {
+      const double slope = square(p.generalised) * lead_.area_factor / lead_.angle_rad;  // generalised / (length - dead time)
+      lead_factor = -slope;
+      dead_by_rabi = of_generalised * slope;
+    }
   }
-  if (lead_.kind == Lead::Kind::bare) {
-    lead_factor = p.rabi() / p.generalised;
-    by_square += by_generalised * 0.5 / p.generalised;
-  } else if (lead_.kind == Lead::Kind::pulse_length) {
-    const double slope = square(p.generalised) * lead_.area_factor / lead_.angle_rad;  // generalised / (length - dead time)
-    lead_factor = -slope;
-    by_dead_time += by_generalised * slope;
-  }
-  row[layout_.lead] = contrast * by_generalised * lead_factor;
-  if (layout_.line_offset >= 0) row[layout_.line_offset] = contrast * work_.by_rate[1][i];
-  if (layout_.detuning_square >= 0) row[layout_.detuning_square] = contrast * by_square;
-  if (layout_.dead_time >= 0) row[layout_.dead_time] = contrast * by_dead_time;
-  row[layout_.ground] = 1.0 - work_.population[i];
-  row[layout_.excited] = work_.population[i];
-  if (layout_.damping >= 0) {
-    const std::size_t rate = candidate_ == Dynamics::decay ? 2 : candidate_ == Dynamics::leak ? 3 : 4;
-    row[layout_.damping] = contrast * work_.by_rate[rate][i];
+  auto scaled = [this](int slot, double a, const std::vector<double>& by) {
+    if (slot < 0) return;
+    const auto out = column(slot);
+    for (std::size_t i = 0; i < out.size(); ++i) out[i] = a * by[i];
+  };
+  auto added = [this](int slot, double a, const std::vector<double>& by) {
+    if (slot < 0 || a == 0.0) return;
+    const auto out = column(slot);
+    for (std::size_t i = 0; i < out.size(); ++i) out[i] += a * by[i];
+  };
+  scaled(layout_.lead, of_generalised * lead_factor, work_.by_rate[0]);
+  scaled(layout_.line_offset, contrast, work_.by_rate[1]);
+  scaled(layout_.detuning_square, square_by_rabi, work_.by_rate[0]);
+  added(layout_.detuning_square, square_by_detuning, work_.by_rate[1]);
+  scaled(layout_.dead_time, -contrast, work_.by_length);
+  added(layout_.dead_time, dead_by_rabi, work_.by_rate[0]);
+  scaled(layout_.damping, contrast, work_.by_rate[candidate_ == Dynamics::decay ? 2 : candidate_ == Dynamics::leak ? 3 : 4]);
+  const auto ground = column(layout_.ground), excited = column(layout_.excited);
+  for (std::size_t i = 0; i < ground.size(); ++i) {
+    ground[i] = 1.0 - population[i];
+    excited[i] = population[i];
   }
 }
 
@@ -215,19 +247,18 @@ bool ScanObjective::evaluate(const Vector& x, double& value, Vector* gradient, M
   return add_references(p, value, gradient, information) && add_priors(p, value, gradient, information) && std::isfinite(value);
 }
 
-bool ScanObjective::accumulate(const Physical& p, Vector* gradient, Matrix* information) const {
-  Vector row(layout_.count);
-  for (std::size_t i = 0; i < scan_.points(); ++i) {
-    rows(p, i, row);
-    if (gradient != nullptr) *gradient += work_.score[i] * row;
-    if (information != nullptr)
-      for (int a = 0; a < layout_.count; ++a)
-        for (int b = 0; b <= a; ++b) (*information)(a, b) += work_.information[i] * row[a] * row[b];
+void ScanObjective::accumulate(const Physical& p, Vector* gradient, Matrix* information) const {
+  fill_columns(p);
+  const auto n = scan_.points();
+  const int count = layout_.count;
+  double* const weighted = column(count).data();
+  for (int a = 0; a < count; ++a) {
+    const double* const column_a = column(a).data();
+    if (gradient != nullptr) (*gradient)[a] += dot(work_.score.data(), column_a, n);
+    if (information == nullptr) continue;
+    for (std::size_t i = 0; i < n; ++i) weighted[i] = work_.information[i] * column_a[i];
+    for (int b = 0; b <= a; ++b) (*information)(a, b) = (*information)(b, a) = dot(weighted, column(b).data(), n);
   }
-  if (information != nullptr)
-    for (int a = 0; a < layout_.count; ++a)
-      for (int b = 0; b < a; ++b) (*information)(b, a) = (*information)(a, b);
-  return true;
 }
 
 bool ScanObjective::data_information(const Vector& x, Matrix& information) const {
@@ -235,18 +266,21 @@ bool ScanObjective::data_information(const Vector& x, Matrix& information) const
   const auto n = scan_.points();
   double half_deviance = 0.0;
   information.setZero(layout_.count, layout_.count);
-  return populate(p, true) &&
-         infer::evaluate(readout_, {work_.signal.data(), n}, half_deviance, {work_.score.data(), n}, {work_.information.data(), n}) &&
-         accumulate(p, nullptr, &information);
+  if (!populate(p, true)) return false;
+  if (!infer::evaluate(readout_, {work_.signal.data(), n}, half_deviance, {work_.score.data(), n}, {work_.information.data(), n}))
+    return false;
+  accumulate(p, nullptr, &information);
+  return true;
 }
 
 bool ScanObjective::draw(const Vector& x, const Matrix& covariance, double z, std::span<double> signal, std::span<double> low,
                          std::span<double> high) const {
   const Physical p = unpack(x);
   if (!populate(p, true)) return false;
+  fill_columns(p);
   Vector row(layout_.count);
   for (std::size_t i = 0; i < scan_.points(); ++i) {
-    rows(p, i, row);
+    for (int a = 0; a < layout_.count; ++a) row[a] = column(a)[i];
     const double half = z * std::sqrt(std::max(0.0, row.dot(covariance * row)));
     signal[i] = work_.signal[i];
     low[i] = signal[i] - half;

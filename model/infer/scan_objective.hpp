@@ -48,6 +48,7 @@ struct ObjectiveWorkspace {
   std::vector<double> population, signal, score, information;
   std::array<std::vector<double>, dynamics::kRateCount> by_rate;
   std::vector<double> by_length;
+  std::vector<double> jacobian;  // [parameter][point], the signal's derivatives
   dynamics::Workspace dynamics;
 };
 
@@ -82,8 +83,9 @@ class ScanObjective final : public Objective {
 
  private:
   bool populate(const Physical& physical, bool derivatives) const;
-  void rows(const Physical& physical, std::size_t point, Vector& row) const;
-  bool accumulate(const Physical& physical, Vector* gradient, Matrix* information) const;
+  std::span<double> column(int parameter) const;
+  void fill_columns(const Physical& physical) const;
+  void accumulate(const Physical& physical, Vector* gradient, Matrix* information) const;
   bool add_references(const Physical& physical, double& value, Vector* gradient, Matrix* information) const;
   bool add_priors(const Physical& physical, double& value, Vector* gradient, Matrix* information) const;
 

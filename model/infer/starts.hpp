@@ -3,6 +3,7 @@
 #include <span>
 #include <vector>
 
+#include "model/infer/frequency_search.hpp"
 #include "model/infer/scan_objective.hpp"
 
 /// Global starting points: for each trial frequency and damping (or line offset and pulse area) the linear part is solved
@@ -30,7 +31,8 @@ Sampling sampling_of(Axis kind, std::span<const double> axis);
 
 struct SearchWorkspace {
   void reserve(std::size_t points);
-  std::vector<double> value, weight, cosine, sine, step_cosine, step_sine, envelope;
+  std::vector<double> value, weight;
+  FrequencySearch frequencies;
   std::vector<Mode> found;
   std::vector<double> table, table_axis;
   dynamics::Workspace dynamics;
@@ -46,6 +48,15 @@ std::size_t duration_starts(const ScanBatch& scan, const Readout& readout, const
 /// around the one that history knows, undamped and dephased.
 std::size_t line_starts(const ScanBatch& scan, const Readout& readout, const Prior& prior, const Sampling& sampling,
                         std::span<Mode> modes, SearchWorkspace& workspace);
+
+/// Moves signals that a linear solve put where no signal can be: probabilities between 0.005 and 0.995 and apart, rates above 0.
+void keep_signals_possible(Readout::Kind kind, Physical& start);
+
+/// Whether the contrast's prior admits this sign, to 6 sigma.
+bool sign_admitted(const Prior& prior, double contrast);
+
+/// Modes are kept down to this below the best: the linear solve is not the likelihood.
+double kept_above(double best_gain);
 
 /// The scan's points as value and weight for a linear solve: fraction and n/(p(1-p)) with p = (k+2)/(n+4) (binomial), signal
 /// and 1/sigma^2 (Gaussian), rate and N^2/(k+1) (Poisson); weight 0 where nothing was measured.
