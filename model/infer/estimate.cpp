@@ -31,8 +31,9 @@ struct Scale {
 Matrix covariance_of(const Minimum& minimum) {
   const auto k = minimum.x.size();
   Matrix information = minimum.information;
+  auto held = [&minimum](Eigen::Index i) { return minimum.at_bound[static_cast<std::size_t>(i)] != 0 || !(minimum.information(i, i) > 0.0); };
   for (Eigen::Index i = 0; i < k; ++i) {
-    if (minimum.at_bound[static_cast<std::size_t>(i)] == 0) continue;
+    if (!held(i)) continue;
     information.row(i).setZero();
     information.col(i).setZero();
     information(i, i) = 1.0;
@@ -45,7 +46,7 @@ Matrix covariance_of(const Minimum& minimum) {
   Matrix covariance = Matrix::Constant(k, k, kUnknown);
   if (factors.isInvertible()) covariance = scale.asDiagonal() * factors.inverse() * scale.asDiagonal();
   for (Eigen::Index i = 0; i < k; ++i)
-    if (minimum.at_bound[static_cast<std::size_t>(i)] != 0) {
+    if (held(i)) {
       covariance.row(i).setZero();
       covariance.col(i).setZero();
     }
@@ -115,6 +116,10 @@ double mixture_quantile(std::span<const Part> parts, double probability, double 
 /// Value and variance averaged over candidates with their weights (K. P. Burnham, D. R. Anderson, Model Selection and Multimodel
 /// Inference, 2nd ed. (2002), section 4.3), the interval from the mixture of their profile intervals.
 Estimate averaged(std::span<Part> parts, const Scale& scale) {
+  // A candidate whose rate ran where nothing holds it has no error to average: the others speak.
+  const auto sure = [](const Part& part) { return std::isfinite(part.estimate.sigma); };
+  if (std::any_of(parts.begin(), parts.end(), sure))
+    parts = parts.first(static_cast<std::size_t>(std::stable_partition(parts.begin(), parts.end(), sure) - parts.begin()));
   double total = 0.0;
   for (const auto& part : parts) total += part.weight;
   Estimate mean;
@@ -191,6 +196,10 @@ Estimate inverse_rate(double rate, double variance, const Scale& scale) {
   const Estimate of_rate = from_covariance(rate, variance, scale);
   e.value = 1.0 / rate;
   e.why = of_rate.why;
+  if (!(of_rate.sigma < rate)) {
+    if (e.why.empty()) e.why = kNotDetermined;
+    return e;
+  }
   e.sigma = of_rate.sigma / (rate * rate);
   e.low = 1.0 / of_rate.high;
   if (of_rate.low > 0.0) e.high = 1.0 / of_rate.low;
