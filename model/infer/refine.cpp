@@ -126,9 +126,10 @@ int measured_points(const Readout& readout) {
 }
 
 bool same_mode(const Problem& problem, const Solution& a, const Solution& b) {
-  if (a.negative_contrast != b.negative_contrast) return false;
+  // What a line scan is asked for is the centre: an inverted line there, or one of another area, agrees.
   if (problem.scan.kind == Axis::detuning)
     return std::abs(a.physical.line_offset - b.physical.line_offset) < kTwoPi * 0.2 / problem.scan.pulse_length_s;
+  if (a.negative_contrast != b.negative_contrast) return false;
   return std::abs(a.physical.generalised - b.physical.generalised) < kTwoPi * 0.35 / problem.sampling.span;
 }
 

@@ -42,8 +42,8 @@ int measured_points(const Readout& readout);
 /// under every candidate. Best first by AICc.
 std::vector<ModeSolutions> refine_modes(const Problem& problem, std::span<const Mode> starts, FitWorkspace& workspace);
 
-/// Where two solutions count as one mode: equal sign of contrast and a frequency (or line offset) within a third of a
-/// resolution element.
+/// Where two solutions count as one mode: equal sign of contrast and a frequency within a third of a resolution element; of a
+/// line, a centre within a fifth of one over the pulse length.
 bool same_mode(const Problem& problem, const Solution& a, const Solution& b);
 
 /// Deviance, scatter, evidence over a flat line and a monotone curve, range: what needs no rival and no interval.
