@@ -100,7 +100,9 @@ Result<Settled> Service::settle_one(Task& task, Group& group) {
       Settled again;
       if ((*before)->digest == request.digest) again.reply = wire::Stored{request.id, (*before)->reply};
       else again.reply = error_of(request.id, {"id_reused", "id", "this id came before with other content; give every request an id of its own, such as a UUID"});
-      if (!task.answers) again.reply.reset();
+      if (task.answers) return again;
+      if (const auto* error = std::get_if<wire::Error>(&*again.reply)) again.publications.push_back({"rejected/", *error});
+      again.reply.reset();
       return again;
     }
   }

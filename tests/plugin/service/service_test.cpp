@@ -80,15 +80,25 @@ struct House {
     service = std::make_unique<service::Service>(configured, log, clock, "test");
     REQUIRE(service->restore());
   }
-  wire::Reply ask(wire::Request request) {
-    auto accepted = service->accept(std::move(request), true);
-    if (auto* reply = std::get_if<wire::Reply>(&accepted)) return *reply;
-    auto task = std::get<service::Task>(std::move(accepted));
+  /// Accepted and fitted.
+  service::Task accepted(wire::Request request, bool answers = true) {
+    auto taken = service->accept(std::move(request), answers);
+    REQUIRE(std::holds_alternative<service::Task>(taken));
+    auto task = std::get<service::Task>(std::move(taken));
     if (task.needs_fit()) service::Service::fit(task);
+    return task;
+  }
+  service::Settled settle(service::Task task) {
     auto settled = service->settle({&task, 1});
     REQUIRE(settled.size() == 1);
-    REQUIRE(settled[0].reply);
-    return *settled[0].reply;
+    return std::move(settled[0]);
+  }
+  wire::Reply ask(wire::Request request) {
+    auto taken = service->accept(request, true);
+    if (auto* reply = std::get_if<wire::Reply>(&taken)) return *reply;
+    auto settled = settle(accepted(std::move(request)));
+    REQUIRE(settled.reply);
+    return *settled.reply;
   }
 };
 
@@ -146,6 +156,24 @@ TEST_CASE("the same id with the same content is answered from the log, with othe
   int events = 0;
   REQUIRE(house.log.replay([&](const log::Event&) { ++events; }));
   CHECK(events == 1);
+}
+
+// An id that came on the feed with other content vanished without a word: it is published under `rejected/`.
+TEST_CASE("an id reused on the feed is rejected in public") {
+  House house;
+  std::mt19937_64 random(1);
+  const auto request = flop("a", 118e3, random);
+  house.ask(request);
+  auto other = request;
+  other.digest = "another";
+  auto settled = house.settle(house.accepted(other, false));
+  CHECK_FALSE(settled.reply);
+  REQUIRE(settled.publications.size() == 1);
+  CHECK(settled.publications[0].topic == "rejected/");
+  CHECK(std::get<wire::Error>(settled.publications[0].body).fault.code == "id_reused");
+  settled = house.settle(house.accepted(request, false));
+  CHECK_FALSE(settled.reply);
+  CHECK(settled.publications.empty());
 }
 
 TEST_CASE("the state after a restart is the state before it") {
