@@ -1,5 +1,7 @@
 // SPDX-License-Identifier: Apache-2.0
+#include <algorithm>
 #include <cmath>
+#include <iterator>
 
 #include "model/quantity/constants.hpp"
 #include "plugin/service/answer.hpp"
@@ -151,24 +153,24 @@ Result<Settled> Service::settle_note(Task& task, Group& group) {
   return settled;
 }
 
+/// A page ends with all rows of its last time, beyond the limit where need be: the next one then begins strictly later.
 Result<Settled> Service::settle_history(const Task& task) {
   const auto& request = task.request;
-  log::Range range;
-  range.drive = request.drive;
-  range.since = request.since;
-  range.until = request.until;
-  range.limit = request.limit.value_or(kHistoryRows);
-  auto rows = log_.history({range.drive, range.since, range.until, range.limit + 1, 0});
+  const std::int64_t limit = request.limit.value_or(kHistoryRows);
+  auto rows = log_.history({request.drive, request.since, request.until, limit, 0});
   if (!rows) return tl::unexpected(rows.error());
   wire::Rows answer;
   answer.id = request.id;
-  for (const auto& row : *rows) {
-    if (static_cast<std::int64_t>(answer.rows.size()) == range.limit) {
-      answer.next = wire::format_time(row.event.happened_at);
-      break;
-    }
-    answer.rows.push_back(row.reply);
+  if (static_cast<std::int64_t>(rows->size()) == limit) {
+    const auto last = rows->back().event;
+    auto ties = log_.history({request.drive, last.happened_at, last.happened_at + 1, 0, last.number});
+    if (!ties) return tl::unexpected(ties.error());
+    std::move(ties->begin(), ties->end(), std::back_inserter(*rows));
+    const auto following = log_.history({request.drive, last.happened_at + 1, request.until, 1, 0});
+    if (!following) return tl::unexpected(following.error());
+    if (!following->empty()) answer.next = wire::format_time(following->front().event.happened_at);
   }
+  for (auto& row : *rows) answer.rows.push_back(std::move(row.reply));
   Settled settled;
   if (task.answers) settled.reply = std::move(answer);
   return settled;

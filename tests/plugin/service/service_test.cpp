@@ -5,12 +5,14 @@
 #include <cstdio>
 #include <fstream>
 #include <random>
+#include <set>
 
 #include "model/atom/catalogue.hpp"
 #include "plugin/config/scan_file.hpp"
 #include "plugin/log/memory_log.hpp"
 #include "plugin/wire/decode.hpp"
 #include "plugin/wire/encode.hpp"
+#include "plugin/wire/time.hpp"
 #include "tests/support/catch.hpp"
 
 using namespace halfturn;
@@ -236,6 +238,35 @@ TEST_CASE("hold keeps, release lets go, history lists") {
   const auto rows = std::get<wire::Rows>(house.ask(history));
   CHECK(rows.rows.size() == 1);
   CHECK(rows.next);
+}
+
+// Pages of `history` repeated rows, or never ended, where scans had the same taken_at.
+TEST_CASE("history by pages ends and repeats nothing where times tie") {
+  House house;
+  std::mt19937_64 random(11);
+  const std::vector<int> minutes = {1, 1, 1, 2, 3, 3, 3, 3, 4};
+  for (std::size_t i = 0; i < minutes.size(); ++i) {
+    auto request = flop("s" + std::to_string(i), 118e3, random);
+    request.scans[0].taken_at = house.clock.time - kMinute * (10 - minutes[i]);
+    house.ask(request);
+  }
+  for (const std::int64_t limit : {1, 2, 3, 4, 9}) {
+    std::vector<std::string> seen;
+    wire::Request history;
+    history.kind = wire::Kind::history;
+    history.drive = "red";
+    history.limit = limit;
+    for (std::size_t page = 0;; ++page) {
+      REQUIRE(page < minutes.size());
+      history.id = "page " + std::to_string(page);
+      const auto rows = std::get<wire::Rows>(house.ask(history));
+      seen.insert(seen.end(), rows.rows.begin(), rows.rows.end());
+      if (!rows.next) break;
+      history.since = wire::parse_time(*rows.next);
+    }
+    CHECK(seen.size() == minutes.size());
+    CHECK(std::set<std::string>(seen.begin(), seen.end()).size() == minutes.size());
+  }
 }
 
 TEST_CASE("what cannot be done is said with its code and place") {
