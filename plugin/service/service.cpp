@@ -13,7 +13,6 @@
 namespace halfturn::service {
 namespace {
 
-constexpr Time kWeek = 7LL * 24 * 3600 * 1'000'000'000;
 
 wire::Error error_of(std::string id, Fault fault) { return {std::move(id), std::move(fault), std::nullopt}; }
 
@@ -72,14 +71,18 @@ Result<void> Service::restore() {
     states_ = std::move(states);
     configuration = configuration_;
   }
+  const Time now = clock_.now();
   if (auto begun = log_.begin(); !begun) return begun;
-  auto kept = log_.keep_configuration(configuration->fingerprint, configuration->text, clock_.now());
-  if (kept) kept = log_.forget_replies(clock_.now() - kWeek);
+  auto kept = log_.keep_configuration(configuration->fingerprint, configuration->text, now);
+  if (kept) kept = log_.forget_replies(now - kRepliesKept);
+  if (kept) kept = log_.commit();
   if (!kept) {
     log_.roll_back();
     return kept;
   }
-  return log_.commit();
+  kept_configurations_ = {configuration->fingerprint};
+  forgot_at_ = now;
+  return {};
 }
 
 std::variant<wire::Reply, Task> Service::accept(wire::Request request, bool answers) {

@@ -2,7 +2,9 @@
 #include <algorithm>
 #include <cmath>
 #include <iterator>
+#include <set>
 
+#include "model/infer/statistics.hpp"
 #include "model/quantity/constants.hpp"
 #include "plugin/service/answer.hpp"
 #include "plugin/service/known.hpp"
@@ -15,8 +17,25 @@ namespace halfturn::service {
 namespace {
 
 constexpr std::int64_t kHistoryRows = 1000;
+constexpr Time kDay = 24LL * 3600 * 1'000'000'000;
 
-wire::Error error_of(std::string id, Fault fault) { return {std::move(id), std::move(fault), std::nullopt}; }
+/// Takes back what was not committed, whichever way the group is left.
+struct Rollback {
+  log::Log& log;
+  ~Rollback() { log.roll_back(); }
+};
+
+/// Whether a task changes the log; all others are settled without a transaction.
+bool writes(const Task& task) { return task.request.kind != wire::Kind::history && (!task.needs_fit() || task.request.options.store); }
+
+/// A fault for who asked, or for who listens where the task came by the feed.
+Settled unanswered(const Task& task, Fault fault) {
+  const wire::Error error{task.request.id, std::move(fault), std::nullopt};
+  Settled settled;
+  if (task.answers) settled.reply = error;
+  else settled.publications.push_back({"rejected/", error});
+  return settled;
+}
 
 log::Event noted_event(const Task& task) {
   const auto& request = task.request;
@@ -46,16 +65,19 @@ wire::Drift drift_of(const std::string& drive, const recalibrate::State& state, 
   auto& rabi = drift.rabi_hz;
   rabi.value = std::exp(known->mean) / constants::kTwoPi;
   rabi.sigma = rabi.value * known->sigma;
-  rabi.low = rabi.value * std::exp(-1.96 * known->sigma);
-  rabi.high = rabi.value * std::exp(1.96 * known->sigma);
+  const double reach = infer::normal_quantile(0.975) * known->sigma;  // of the interval of 95 %
+  rabi.low = rabi.value * std::exp(-reach);
+  rabi.high = rabi.value * std::exp(reach);
   return drift;
 }
 
 }  // namespace
 
-/// States as they will be when the group is committed.
+/// What will hold once the group is committed.
 struct Service::Group {
   std::map<std::string, recalibrate::State> states;
+  std::set<std::string> kept_configurations;
+  std::optional<Time> forgot_at;
   recalibrate::State& of(const Service& service, const std::string& drive) {
     const auto found = states.find(drive);
     return found != states.end() ? found->second : states.emplace(drive, service.known_of(drive)).first->second;
@@ -63,50 +85,86 @@ struct Service::Group {
 };
 
 std::vector<Settled> Service::settle(std::span<Task> tasks) {
-  Group group;
-  std::vector<Settled> settled;
-  settled.reserve(tasks.size());
-  auto written = log_.begin();
-  for (Task& task : tasks) {
-    if (!written) break;
-    auto one = settle_one(task, group);
-    if (one) settled.push_back(std::move(*one));
-    else written = tl::unexpected(one.error());
+  std::vector<Settled> settled(tasks.size());
+  std::vector<std::size_t> writers;  // that wait for their transaction
+  Result<void> written;
+  const auto write = [&] {
+    if (written) written = settle_writers(tasks, writers, settled);
+    if (!written)
+      for (const auto i : writers) settled[i] = unanswered(tasks[i], {"log_unavailable", "", written.error().message});
+    writers.clear();
+  };
+  for (std::size_t i = 0; i < tasks.size(); ++i) {
+    Task& task = tasks[i];
+    if (writes(task)) {
+      writers.push_back(i);
+      continue;
+    }
+    // What is read of the history shows what came before it, and nothing that came later.
+    if (task.request.kind == wire::Kind::history) write();
+    Group none;
+    auto one = task.request.kind == wire::Kind::history ? settle_history(task) : settle_fit(task, none);
+    if (!one) note_log(one.error().message);
+    settled[i] = one ? std::move(*one) : unanswered(task, {"log_unavailable", "", one.error().message});
   }
-  if (written) written = log_.commit();
-  else log_.roll_back();
-
-  const std::lock_guard lock(mutex_);
-  log_trouble_ = written ? "" : written.error().message;
-  if (written) {
-    for (auto& [drive, state] : group.states) states_[drive] = std::move(state);
-    return settled;
-  }
-  settled.clear();
-  for (const Task& task : tasks) {
-    Settled failed;
-    if (task.answers) failed.reply = error_of(task.request.id, {"log_unavailable", "", written.error().message});
-    else failed.publications.push_back({"rejected/", error_of(task.request.id, {"log_unavailable", "", written.error().message})});
-    settled.push_back(std::move(failed));
-  }
+  write();
   return settled;
+}
+
+/// One transaction. A failure is the log's, and then nothing has changed.
+Result<void> Service::settle_writers(std::span<Task> tasks, const std::vector<std::size_t>& chosen, std::vector<Settled>& settled) {
+  if (chosen.empty()) return {};
+  Group group;
+  const auto decided = [&]() -> Result<void> {
+    const Rollback rollback{log_};
+    if (auto begun = log_.begin(); !begun) return begun;
+    if (auto kept = keep_house(group); !kept) return kept;
+    for (const auto i : chosen) {
+      auto one = settle_one(tasks[i], group);
+      if (!one) return tl::unexpected(one.error());
+      settled[i] = std::move(*one);
+    }
+    return log_.commit();
+  }();
+  note_log(decided ? "" : decided.error().message);
+  if (!decided) return decided;
+  kept_configurations_.merge(group.kept_configurations);
+  forgot_at_ = group.forgot_at.value_or(forgot_at_);
+  const std::lock_guard lock(mutex_);
+  for (auto& [drive, state] : group.states) states_[drive] = std::move(state);
+  return {};
+}
+
+/// Once a day the replies of more than a week ago go.
+Result<void> Service::keep_house(Group& group) {
+  const Time now = clock_.now();
+  if (now - forgot_at_ < kDay) return {};
+  group.forgot_at = now;
+  return log_.forget_replies(now - kRepliesKept);
+}
+
+/// The text of a configuration, before the first fit that names it.
+Result<void> Service::keep_configuration(const config::Configuration& configuration, Group& group) {
+  if (kept_configurations_.count(configuration.fingerprint) > 0) return {};
+  if (!group.kept_configurations.insert(configuration.fingerprint).second) return {};
+  return log_.keep_configuration(configuration.fingerprint, configuration.text, clock_.now());
+}
+
+void Service::note_log(std::string trouble) {
+  const std::lock_guard lock(mutex_);
+  log_trouble_ = std::move(trouble);
 }
 
 Result<Settled> Service::settle_one(Task& task, Group& group) {
   const auto& request = task.request;
-  if (request.kind == wire::Kind::history) return settle_history(task);
-  if (request.options.store) {
-    auto before = log_.find_reply(request.id);
-    if (!before) return tl::unexpected(before.error());
-    if (*before) {
-      Settled again;
-      if ((*before)->digest == request.digest) again.reply = wire::Stored{request.id, (*before)->reply};
-      else again.reply = error_of(request.id, {"id_reused", "id", "this id came before with other content; give every request an id of its own, such as a UUID"});
-      if (task.answers) return again;
-      if (const auto* error = std::get_if<wire::Error>(&*again.reply)) again.publications.push_back({"rejected/", *error});
-      again.reply.reset();
-      return again;
-    }
+  auto before = log_.find_reply(request.id);
+  if (!before) return tl::unexpected(before.error());
+  if (*before && (*before)->digest != request.digest)
+    return unanswered(task, {"id_reused", "id", "this id came before with other content; give every request an id of its own, such as a UUID"});
+  if (*before) {
+    Settled again;
+    if (task.answers) again.reply = wire::Stored{request.id, std::move((*before)->reply)};
+    return again;
   }
   return task.needs_fit() ? settle_fit(task, group) : settle_note(task, group);
 }
@@ -127,6 +185,7 @@ Result<Settled> Service::settle_fit(Task& task, Group& group) {
     event.received_at = task.received_at;
     event.id = task.request.id;
     const std::string reply = wire::encode_stored(fitted);
+    if (auto kept = keep_configuration(*task.configuration, group); !kept) return tl::unexpected(kept.error());
     const log::Bulk bulk{wire::encode_scan(task.scan()), task.request.digest, task.configuration->fingerprint, reply, task.scan().ambient};
     if (auto number = log_.append(event, &bulk); !number) return tl::unexpected(number.error());
     if (auto kept = log_.keep_reply(task.request.id, {task.request.digest, reply}, task.received_at); !kept) return tl::unexpected(kept.error());

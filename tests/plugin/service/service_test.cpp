@@ -1,11 +1,13 @@
 // SPDX-License-Identifier: Apache-2.0
 #include "plugin/service/service.hpp"
 
+#include <algorithm>
 #include <cmath>
 #include <cstdio>
 #include <fstream>
 #include <random>
 #include <set>
+#include <stdexcept>
 
 #include "model/atom/catalogue.hpp"
 #include "plugin/config/scan_file.hpp"
@@ -71,13 +73,62 @@ wire::Request flop(const std::string& id, double rabi_hz, std::mt19937_64& rando
   return request;
 }
 
-struct House {
+/// A log in memory with faults to be switched on, which notes what is asked of it.
+struct FaultyLog final : log::Log {
+  log::MemoryLog under;
+  bool full = false, locked = false, unreadable = false, broken = false;
+  std::vector<std::string> configurations;
+  std::vector<log::Time> forgotten;
+  int fits_before_a_configuration = 0;
+
+  static tl::unexpected<Fault> trouble() { return fault("log_unavailable", "nights.db", "the disk is full; make room, then go on"); }
+  Result<void> begin() override { return locked ? trouble() : under.begin(); }
+  Result<void> commit() override {
+    if (!full) return under.commit();
+    under.roll_back();
+    return trouble();
+  }
+  void roll_back() override { under.roll_back(); }
+  Result<std::int64_t> append(const log::Event& e, const log::Bulk* b) override {
+    if (broken) throw std::runtime_error("broken");
+    if (b != nullptr && std::count(configurations.begin(), configurations.end(), b->configuration) == 0) ++fits_before_a_configuration;
+    return under.append(e, b);
+  }
+  Result<void> keep_reply(const std::string& id, const log::StoredReply& r, log::Time t) override { return under.keep_reply(id, r, t); }
+  Result<std::optional<log::StoredReply>> find_reply(const std::string& id) override { return under.find_reply(id); }
+  Result<void> forget_replies(log::Time t) override {
+    forgotten.push_back(t);
+    return under.forget_replies(t);
+  }
+  Result<void> keep_configuration(const std::string& f, const std::string& t, log::Time n) override {
+    configurations.push_back(f);
+    return under.keep_configuration(f, t, n);
+  }
+  Result<void> replay(const std::function<void(const log::Event&)>& v) override { return under.replay(v); }
+  Result<std::vector<Row>> history(const log::Range& r) override {
+    if (unreadable) return trouble();
+    return under.history(r);
+  }
+  Result<std::vector<log::Event>> events(const log::Range& r) override { return under.events(r); }
+  Result<std::optional<std::string>> scan(std::int64_t n) override { return under.scan(n); }
+};
+
+wire::Request history_of(const std::string& id) {
+  wire::Request history;
+  history.kind = wire::Kind::history;
+  history.id = history.digest = id;
+  history.drive = "red";
+  return history;
+}
+
+template <class Log>
+struct HouseWith {
   StoppedClock clock;
-  log::MemoryLog log;
+  Log log;
   std::shared_ptr<const config::Configuration> configured = configuration();
   std::unique_ptr<service::Service> service;
 
-  House() { restart(); }
+  HouseWith() { restart(); }
   void restart() {
     service = std::make_unique<service::Service>(configured, log, clock, "test");
     REQUIRE(service->restore());
@@ -103,6 +154,9 @@ struct House {
     return *settled.reply;
   }
 };
+
+using House = HouseWith<log::MemoryLog>;
+using FaultyHouse = HouseWith<FaultyLog>;
 
 const wire::Estimate& estimate(const wire::Fitted& fitted, const std::string& name) {
   for (const auto& [key, value] : fitted.estimates)
@@ -292,26 +346,7 @@ TEST_CASE("what cannot be done is said with its code and place") {
 }
 
 TEST_CASE("a log that fails answers log_unavailable and moves no state") {
-  struct Full final : log::Log {
-    log::MemoryLog under;
-    bool full = false;
-    Result<void> begin() override { return under.begin(); }
-    Result<void> commit() override {
-      if (!full) return under.commit();
-      under.roll_back();
-      return fault("log_unavailable", "nights.db", "the disk is full; make room, then go on");
-    }
-    void roll_back() override { under.roll_back(); }
-    Result<std::int64_t> append(const log::Event& e, const log::Bulk* b) override { return under.append(e, b); }
-    Result<void> keep_reply(const std::string& id, const log::StoredReply& r, log::Time t) override { return under.keep_reply(id, r, t); }
-    Result<std::optional<log::StoredReply>> find_reply(const std::string& id) override { return under.find_reply(id); }
-    Result<void> forget_replies(log::Time t) override { return under.forget_replies(t); }
-    Result<void> keep_configuration(const std::string& f, const std::string& t, log::Time n) override { return under.keep_configuration(f, t, n); }
-    Result<void> replay(const std::function<void(const log::Event&)>& v) override { return under.replay(v); }
-    Result<std::vector<Row>> history(const log::Range& r) override { return under.history(r); }
-    Result<std::vector<log::Event>> events(const log::Range& r) override { return under.events(r); }
-    Result<std::optional<std::string>> scan(std::int64_t n) override { return under.scan(n); }
-  } log;
+  FaultyLog log;
   StoppedClock clock;
   service::Service service(configuration(), log, clock, "test");
   REQUIRE(service.restore());
@@ -328,6 +363,91 @@ TEST_CASE("a log that fails answers log_unavailable and moves no state") {
   settled = service.settle({&task, 1});
   CHECK(std::holds_alternative<wire::Fitted>(*settled[0].reply));
   CHECK(service.state().log == "ok");
+}
+
+// A history that could not be read, or a log that could not be written, failed every task that was settled beside.
+TEST_CASE("what needs no writing is settled apart from what does, in order") {
+  FaultyHouse house;
+  std::mt19937_64 random(7);
+  auto loose = flop("loose", 118e3, random);
+  loose.options.store = false;
+  const auto group = [&](const std::string& name) {
+    std::vector<service::Task> tasks;
+    for (const auto& request : {flop("a" + name, 118e3, random), history_of("h" + name), loose, flop("b" + name, 118e3, random)})
+      tasks.push_back(house.accepted(request));
+    return house.service->settle(tasks);
+  };
+  const auto code = [](const service::Settled& settled) {
+    const auto* error = std::get_if<wire::Error>(&*settled.reply);
+    return error == nullptr ? std::string() : error->fault.code;
+  };
+  auto settled = group("1");
+  REQUIRE(settled.size() == 4);
+  CHECK(std::get<wire::Fitted>(*settled[0].reply).stored);
+  CHECK(std::get<wire::Rows>(*settled[1].reply).rows.size() == 1);
+  CHECK_FALSE(std::get<wire::Fitted>(*settled[2].reply).stored);
+  CHECK(std::get<wire::Fitted>(*settled[3].reply).stored);
+
+  house.log.unreadable = true;
+  settled = group("2");
+  CHECK(code(settled[0]).empty());
+  CHECK(code(settled[1]) == "log_unavailable");
+  CHECK(code(settled[2]).empty());
+  CHECK(code(settled[3]).empty());
+
+  house.log.unreadable = false;
+  house.log.locked = true;
+  settled = group("3");
+  CHECK(code(settled[0]) == "log_unavailable");
+  CHECK(std::get<wire::Rows>(*settled[1].reply).rows.size() == 4);
+  CHECK(code(settled[2]).empty());
+  CHECK(code(settled[3]) == "log_unavailable");
+}
+
+// An exception between begin and commit left the transaction open: every later request failed.
+TEST_CASE("an exception takes back the transaction") {
+  FaultyHouse house;
+  std::mt19937_64 random(8);
+  house.log.broken = true;
+  auto task = house.accepted(flop("a", 118e3, random));
+  CHECK_THROWS(house.service->settle({&task, 1}));
+  house.log.broken = false;
+  CHECK(std::holds_alternative<wire::Fitted>(house.ask(flop("b", 118e3, random))));
+  CHECK(std::get<wire::Rows>(house.ask(history_of("h"))).rows.size() == 1);
+}
+
+// After a reload the log named configurations of which it did not hold the text.
+TEST_CASE("the text of a configuration is in the log before the first fit under it") {
+  FaultyHouse house;
+  std::mt19937_64 random(9);
+  house.ask(flop("a", 118e3, random));
+  auto fresh = *configuration();
+  fresh.fingerprint = "another";
+  house.service->configure(std::make_shared<const config::Configuration>(fresh));
+  house.log.full = true;
+  CHECK(std::holds_alternative<wire::Error>(house.ask(flop("b", 118e3, random))));
+  house.log.full = false;
+  house.log.configurations.pop_back();  // taken back with its group
+  CHECK(std::holds_alternative<wire::Fitted>(house.ask(flop("b", 118e3, random))));
+  house.ask(flop("c", 118e3, random));
+  CHECK(house.log.configurations == std::vector<std::string>{configuration()->fingerprint, "another"});
+  CHECK(house.log.fits_before_a_configuration == 0);
+}
+
+// Replies were forgotten at the start alone: a daemon that ran for months kept them all.
+TEST_CASE("replies of more than seven days ago are forgotten once a day") {
+  FaultyHouse house;
+  std::mt19937_64 random(10);
+  const auto request = flop("a", 118e3, random);
+  house.ask(request);
+  CHECK(house.log.forgotten.size() == 1);
+  for (int day = 1; day <= 9; ++day) {
+    house.clock.time += 24 * 60 * kMinute;
+    for (int i = 0; i < 3; ++i) house.ask(flop("d" + std::to_string(3 * day + i), 118e3, random));
+  }
+  REQUIRE(house.log.forgotten.size() == 10);
+  CHECK(house.log.forgotten.back() == house.clock.time - 7 * 24 * 60 * kMinute);
+  CHECK_FALSE(house.log.find_reply("a").value());
 }
 
 TEST_CASE("a measured flop that no damped cosine describes is refused, and its frequency shown") {
