@@ -19,7 +19,6 @@ constexpr double kMostScatter = 4.0;
 constexpr int kStepAwake = 3;
 // Two scans repeat one another where span and spacing agree to this.
 constexpr double kSameAxis = 0.01;
-constexpr int kUnansweredSaid = 3;
 // So many flops in a row at another drive amplitude make it the new one.
 constexpr int kAmplitudeTaken = 3;
 constexpr double kSameAmplitude = 1e-3;

@@ -4,11 +4,14 @@
 #include <cmath>
 
 #include "model/quantity/constants.hpp"
+#include "model/quantity/format.hpp"
+#include "model/recalibrate/gates.hpp"
 #include "plugin/service/answer.hpp"
 #include "plugin/service/known.hpp"
 #include "plugin/wire/decode.hpp"
 #include "plugin/wire/encode.hpp"
 #include "plugin/wire/time.hpp"
+#include "plugin/wire/words.hpp"
 
 namespace halfturn::service {
 namespace {
@@ -33,15 +36,75 @@ std::string known_drives(const config::Configuration& configuration) {
   return known;
 }
 
+// 5 min: clocks that no time service keeps, of two machines of a laboratory, differ by as much.
+constexpr Time kClocksDiffer = 300LL * 1'000'000'000;
+
+/// A time in the future would stay the newest of its drive until then, and be taken for the state of things.
+Result<void> check_time(const std::optional<Time>& time, Time now, const std::string& where) {
+  if (!time || *time <= now + kClocksDiffer) return {};
+  return fault("bad_value", where,
+               "found " + wire::format_time(*time) + ", expected a time at most 5 min ahead of this computer's clock, which shows " +
+                   wire::format_time(now) + ": set the clocks of both computers, in UTC");
+}
+
+Result<void> check_times(const wire::Request& request, Time now) {
+  for (std::size_t i = 0; i < request.scans.size(); ++i) {
+    const auto place = request.joint ? "scans[" + std::to_string(i) + "]" : std::string("scan");
+    if (auto checked = check_time(request.scans[i].taken_at, now, place + ".taken_at"); !checked) return checked;
+  }
+  return check_time(request.applied_at, now, "applied_at");
+}
+
+constexpr double kSlip = 10.0;  // a length so many times beyond a limit is a slip of units: prefixes are 1000 apart, limits seldom
+
+const recalibrate::Pulse* find_pulse(const config::Drive& drive, const std::string& name) {
+  for (const auto& pulse : drive.pulses)
+    if (pulse.name == name) return &pulse;
+  return nullptr;
+}
+
+std::string limits_of(const recalibrate::Pulse& pulse) {
+  return engineering(pulse.minimum_s, "s") + " to " + engineering(pulse.maximum_s, "s");
+}
+
+Result<void> check_length(const config::Drive& drive, const std::string& name, double length_s) {
+  const std::string where = "pulses." + name;
+  const auto* pulse = find_pulse(drive, name);
+  if (pulse == nullptr)
+    return fault("bad_value", where, "the drive `" + drive.name + "` has no pulse of that name in the configuration");
+  if (length_s >= pulse->minimum_s / kSlip && length_s <= pulse->maximum_s * kSlip) return {};
+  return fault("bad_value", where,
+               "found " + wire::number_text(length_s) + ", which is far outside the pulse's limits, " + limits_of(*pulse) +
+                   ": expected its length in seconds, such as " + wire::number_text(pulse->length_s) +
+                   "; look for a slip of units (\u00b5s or ns sent as s), or widen the limits");
+}
+
+/// What is wrong with a drive, each with what to do about it.
+std::vector<std::string> troubles_of(const config::Drive& drive, const recalibrate::State& state,
+                                     const std::map<std::string, double>& in_force_s) {
+  std::vector<std::string> troubles;
+  if (state.held)
+    troubles.push_back("held by " + state.held_by + " (" + state.held_why +
+                       "), so every verdict is keep. Send `release` once its pulses may change again.");
+  if (state.proposals_unanswered >= recalibrate::kUnansweredSaid)
+    troubles.push_back(std::to_string(state.proposals_unanswered) +
+                       " proposals went by without an `applied` message. Have the control software load what is proposed, and send "
+                       "`applied` with the lengths that it uses; else `hold` the drive.");
+  for (const auto& pulse : drive.pulses) {
+    const double length_s = in_force_s.at(pulse.name);
+    if (length_s >= pulse.minimum_s && length_s <= pulse.maximum_s) continue;
+    troubles.push_back("the pulse `" + pulse.name + "` in force, " + engineering(length_s, "s") + ", lies outside its limits, " +
+                       limits_of(pulse) + ". Load a length within them and send `applied`, or widen `limits` in the configuration.");
+  }
+  return troubles;
+}
+
 Result<void> check_drive(const wire::Request& request, const config::Configuration& configuration) {
   if (configuration.drives.count(request.drive) == 0)
     return fault("unknown_drive", "drive",
                  "found `" + request.drive + "`, which the configuration does not have; it has " + known_drives(configuration));
-  for (const auto& [name, length] : request.pulses_s) {
-    bool found = false;
-    for (const auto& pulse : configuration.drives.at(request.drive).pulses) found = found || pulse.name == name;
-    if (!found) return fault("bad_value", "pulses." + name, "the drive `" + request.drive + "` has no pulse of that name in the configuration");
-  }
+  for (const auto& [name, length_s] : request.pulses_s)
+    if (auto checked = check_length(configuration.drives.at(request.drive), name, length_s); !checked) return checked;
   return {};
 }
 
@@ -102,6 +165,7 @@ std::variant<wire::Reply, Task> Service::accept(wire::Request request, bool answ
   if (auto missing = not_here(request)) return refuse(request, std::move(*missing));
   const bool fits = request.kind == wire::Kind::fit;
   auto checked = fits ? check_scan(request, *task.configuration) : check_drive(request, *task.configuration);
+  if (checked) checked = check_times(request, task.received_at);
   if (!checked) return refuse(request, checked.error());
   task.drive = fits ? request.scans.front().drive : request.drive;
   if (fits) task.taken_at = request.scans.front().taken_at.value_or(task.received_at);
@@ -150,9 +214,7 @@ wire::State Service::state() const {
     if (state.rabi.accepted > 0) out.rabi_hz = std::exp(state.rabi.mean) / constants::kTwoPi;
     out.last_verdict = state.last_verdict;
     out.held = state.held;
-    if (state.held) now.troubles.push_back(name + ": held by " + state.held_by + ": " + state.held_why);
-    if (state.proposals_unanswered >= 3)
-      now.troubles.push_back(name + ": " + std::to_string(state.proposals_unanswered) + " proposals without an `applied` message");
+    for (auto& trouble : troubles_of(drive, state, out.pulses_s)) now.troubles.push_back(name + ": " + std::move(trouble));
   }
   return now;
 }

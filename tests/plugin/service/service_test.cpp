@@ -121,6 +121,15 @@ wire::Request history_of(const std::string& id) {
   return history;
 }
 
+wire::Request applied_of(const std::string& id, const std::map<std::string, double>& pulses_s) {
+  wire::Request applied;
+  applied.kind = wire::Kind::applied;
+  applied.id = applied.digest = id;
+  applied.drive = "red";
+  applied.pulses_s = pulses_s;
+  return applied;
+}
+
 template <class Log>
 struct HouseWith {
   StoppedClock clock;
@@ -363,6 +372,73 @@ TEST_CASE("a log that fails answers log_unavailable and moves no state") {
   settled = service.settle({&task, 1});
   CHECK(std::holds_alternative<wire::Fitted>(*settled[0].reply));
   CHECK(service.state().log == "ok");
+}
+
+// A scan of the year 2199 was believed, and the drive's tracked state stayed there.
+TEST_CASE("a time in the future is refused, a clock that is a little ahead is not") {
+  House house;
+  std::mt19937_64 random(12);
+  auto request = flop("a", 118e3, random);
+  request.scans[0].taken_at = wire::parse_time("2199-01-01T00:00:00Z");
+  auto fault = std::get<wire::Error>(house.ask(request)).fault;
+  CHECK(fault.code == "bad_value");
+  CHECK(fault.where == "scan.taken_at");
+  CHECK(fault.message.find("2199") != std::string::npos);
+  request.scans[0].taken_at = house.clock.time + 5 * kMinute + 1;
+  CHECK(std::holds_alternative<wire::Error>(house.ask(request)));
+  request.scans[0].taken_at = house.clock.time + 5 * kMinute;
+  CHECK(std::holds_alternative<wire::Fitted>(house.ask(request)));
+  auto applied = applied_of("b", {{"flip", 4.16e-6}});
+  applied.applied_at = house.clock.time + 6 * kMinute;
+  CHECK(std::get<wire::Error>(house.ask(applied)).fault.where == "applied_at");
+}
+
+// `applied` with 4.1 for 4.1 us was noted, and every later change was reckoned from it.
+TEST_CASE("a length applied in other units is refused, one outside the limits is noted and said") {
+  House house;  // flip: limits 1 us to 20 us
+  for (const double length_s : {4.1, 4100.0, 1e9, 201e-6, 0.09e-6, 4.1e-15}) {
+    const auto fault = std::get<wire::Error>(house.ask(applied_of("slip", {{"flip", length_s}}))).fault;
+    CHECK(fault.code == "bad_value");
+    CHECK(fault.where == "pulses.flip");
+    CHECK(fault.message.find("seconds") != std::string::npos);
+  }
+  CHECK(house.service->state().troubles.empty());
+  CHECK(std::holds_alternative<wire::Noted>(house.ask(applied_of("a", {{"flip", 25e-6}}))));
+  const auto said = house.service->state();
+  CHECK(said.drives.at("red").pulses_s.at("flip") == 25e-6);
+  REQUIRE(said.troubles.size() == 1);
+  CHECK(said.troubles[0].find("red: the pulse `flip` in force, 25") == 0);
+  CHECK(said.troubles[0].find("widen `limits`") != std::string::npos);
+  CHECK(std::holds_alternative<wire::Noted>(house.ask(applied_of("b", {{"flip", 20e-6}}))));
+  CHECK(house.service->state().troubles.empty());
+}
+
+// Troubles said what was wrong and not what to do.
+TEST_CASE("troubles say what to do") {
+  House house;
+  std::mt19937_64 random(13);
+  for (int i = 0; i < 3; ++i) {
+    CHECK(house.service->state().troubles.empty());
+    house.clock.time += 10 * kMinute;
+    REQUIRE(std::get<wire::Fitted>(house.ask(flop("s" + std::to_string(i), 118e3 * (1 + 0.03 * i), random))).verdict == "apply");
+  }
+  auto troubles = house.service->state().troubles;
+  REQUIRE(troubles.size() == 1);
+  CHECK(troubles[0].find("3 proposals") != std::string::npos);
+  CHECK(troubles[0].find("send `applied`") != std::string::npos);
+  house.ask(applied_of("applied", {{"flip", 4.16e-6}}));
+  CHECK(house.service->state().troubles.empty());
+  wire::Request hold;
+  hold.kind = wire::Kind::hold;
+  hold.id = "h";
+  hold.drive = "red";
+  hold.by = "Ada";
+  hold.why = "realigning";
+  house.ask(hold);
+  troubles = house.service->state().troubles;
+  REQUIRE(troubles.size() == 1);
+  CHECK(troubles[0].find("red: held by Ada (realigning)") == 0);
+  CHECK(troubles[0].find("`release`") != std::string::npos);
 }
 
 // A history that could not be read, or a log that could not be written, failed every task that was settled beside.
