@@ -55,7 +55,7 @@ Result<void> check_times(const wire::Request& request, Time now) {
   return check_time(request.applied_at, now, "applied_at");
 }
 
-constexpr double kSlip = 10.0;  // a length so many times beyond a limit is a slip of units: prefixes are 1000 apart, limits seldom
+constexpr double kSlip = 10.0;  // beyond a limit; a slip of units is a factor of 1000, an adventurous length is not
 
 const recalibrate::Pulse* find_pulse(const config::Drive& drive, const std::string& name) {
   for (const auto& pulse : drive.pulses)
