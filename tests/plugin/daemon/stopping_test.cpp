@@ -103,6 +103,26 @@ TEST_CASE("a fit that outlasts the time to stop is answered `stopping`") {
   gate.open_all();
 }
 
+// Scans that had come by the feed and were not decided in time vanished without a word.
+TEST_CASE("a scan of the feed that outlasts the time to stop is published as rejected") {
+  Gate gate;
+  Running running([&](auto& options) {
+    hold_fits(options, gate);
+    options.stop_within = std::chrono::milliseconds(50);
+  });
+  Listener all(running.endpoints().results, "");
+  Peer feed(zmq::socket_type::push, running.endpoints().feed);
+  all.next();  // the health of this second: the listener is there
+  feed.send({fit_request("a").dump()});
+  gate.wait_for_arrival("a");
+  CHECK(running.stop() == 0);
+  auto heard = all.next();
+  while (heard.topic != "rejected/") heard = all.next();
+  CHECK(heard.message.at("id") == "a");
+  CHECK(heard.message.at("code") == "stopping");
+  gate.open_all();
+}
+
 TEST_CASE("what lies on the feed when the daemon is told to stop is still decided") {
   Gate gate;
   Running running([&](auto& options) {
