@@ -8,8 +8,6 @@
 #include "model/recalibrate/gates.hpp"
 #include "plugin/service/answer.hpp"
 #include "plugin/service/known.hpp"
-#include "plugin/wire/decode.hpp"
-#include "plugin/wire/encode.hpp"
 #include "plugin/wire/time.hpp"
 #include "plugin/wire/words.hpp"
 

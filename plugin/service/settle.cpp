@@ -9,6 +9,7 @@
 #include "plugin/service/answer.hpp"
 #include "plugin/service/known.hpp"
 #include "plugin/service/service.hpp"
+#include "plugin/wire/decode.hpp"
 #include "plugin/wire/encode.hpp"
 #include "plugin/wire/time.hpp"
 

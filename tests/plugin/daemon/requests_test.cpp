@@ -1,7 +1,10 @@
 // SPDX-License-Identifier: Apache-2.0
 // Requests and replies: peers of both kinds, both encodings, envelopes, and what is too large or no message at all.
+#include <atomic>
+#include <map>
 #include <random>
 
+#include "plugin/service/service.hpp"
 #include "tests/plugin/daemon/running.hpp"
 #include "tests/support/catch.hpp"
 
