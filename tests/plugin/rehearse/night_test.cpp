@@ -31,10 +31,10 @@ RehearseOptions red(std::uint64_t seed = 1, double hours = 8) {
 }
 
 /// A daemon that knows what RehearsedDrive will take for the truth: 4.00 us is a pi pulse at the start.
-FakeDaemon knowing(const RehearseOptions& options) {
+FakeDaemon knowing(const RehearseOptions& options, wire::Time starts_at = *wire::parse_time(kEvening)) {
   auto settings = options.apparatus;
   settings.rabi_hz = 0.5 / (4.00e-6 - settings.dead_time_s);
-  return FakeDaemon(settings, options.seed, options.hours * 3600, *wire::parse_time(kEvening));
+  return FakeDaemon(settings, options.seed, options.hours * 3600, starts_at);
 }
 
 bool always(const Moment&) { return true; }
@@ -70,7 +70,7 @@ TEST_CASE("A night that is not given its start ends now, and nothing in it lies 
   for (const double hours : {1.0 / 60, 0.1, 3.0}) {
     auto options = red(1, hours);
     options.starts_at.clear();
-    auto daemon = knowing(options);
+    auto daemon = knowing(options, wire::now() - static_cast<wire::Time>(hours * 3600e9));
     rehearsed(options, daemon);
     const wire::Time now = wire::now();
     REQUIRE_FALSE(daemon.scans.empty());
