@@ -55,6 +55,8 @@ Result<void> check_times(const wire::Request& request, Time now) {
 
 constexpr double kSlip = 10.0;  // beyond a limit; a slip of units is a factor of 1000, an adventurous length is not
 
+constexpr double kRounding = 1e-9;  // of a length that was reckoned in other units
+
 const recalibrate::Pulse* find_pulse(const config::Drive& drive, const std::string& name) {
   for (const auto& pulse : drive.pulses)
     if (pulse.name == name) return &pulse;
@@ -90,7 +92,7 @@ std::vector<std::string> troubles_of(const config::Drive& drive, const recalibra
                        "`applied` with the lengths that it uses; else `hold` the drive.");
   for (const auto& pulse : drive.pulses) {
     const double length_s = in_force_s.at(pulse.name);
-    if (length_s >= pulse.minimum_s && length_s <= pulse.maximum_s) continue;
+    if (length_s >= pulse.minimum_s * (1.0 - kRounding) && length_s <= pulse.maximum_s * (1.0 + kRounding)) continue;
     troubles.push_back("the pulse `" + pulse.name + "` in force, " + engineering(length_s, "s") + ", lies outside its limits, " +
                        limits_of(pulse) + ". Load a length within them and send `applied`, or widen `limits` in the configuration.");
   }

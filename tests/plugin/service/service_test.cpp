@@ -292,6 +292,7 @@ TEST_CASE("hold keeps, release lets go, history lists") {
   hold.kind = wire::Kind::release;
   hold.id = "r";
   house.ask(hold);
+  house.clock.time += kMinute;
   CHECK(std::get<wire::Fitted>(house.ask(flop("b", 118e3, random))).verdict == "apply");
   wire::Request history;
   history.kind = wire::Kind::history;
@@ -420,7 +421,7 @@ TEST_CASE("troubles say what to do") {
   for (int i = 0; i < 3; ++i) {
     CHECK(house.service->state().troubles.empty());
     house.clock.time += 10 * kMinute;
-    REQUIRE(std::get<wire::Fitted>(house.ask(flop("s" + std::to_string(i), 118e3 * (1 + 0.03 * i), random))).verdict == "apply");
+    REQUIRE(std::get<wire::Fitted>(house.ask(flop("s" + std::to_string(i), 118e3 * (1 - 0.01 * i), random))).verdict == "apply");
   }
   auto troubles = house.service->state().troubles;
   REQUIRE(troubles.size() == 1);
