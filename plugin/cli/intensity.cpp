@@ -4,6 +4,7 @@
 #include <algorithm>
 #include <cmath>
 #include <nlohmann/json.hpp>
+#include <string_view>
 #include <vector>
 
 #include "model/atom/light.hpp"
@@ -86,7 +87,16 @@ void print(const atom::Transition& transition, const atom::LightReport& light, S
 
 }  // namespace
 
-std::vector<std::string> sources_once(const std::vector<std::string>& sources) {
+std::vector<std::string> sources_once(const std::vector<std::string>& given) {
+  std::vector<std::string> sources;
+  for (std::string_view rest : given) {
+    while (!rest.empty()) {
+      const auto end = std::min(rest.find("; "), rest.size());
+      const std::string source(rest.substr(0, end));
+      if (std::find(sources.begin(), sources.end(), source) == sources.end()) sources.push_back(source);
+      rest.remove_prefix(std::min(end + 2, rest.size()));
+    }
+  }
   const auto tells_more = [](const std::string& source, const std::string& base) { return source.starts_with(base + ", "); };
   std::vector<std::string> once;
   for (const auto& base : sources) {

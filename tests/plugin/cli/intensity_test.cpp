@@ -9,5 +9,6 @@ using halfturn::cli::sources_once;
 TEST_CASE("a source is named once, with all that is said of it") {
   const std::vector<std::string> sources = {"A. One (2015), 2.89 over sqrt 2", "B. Two", "A. One (2015)", "A. One (2015), table 1", "B. Twosome"};
   CHECK(sources_once(sources) == std::vector<std::string>{"B. Two", "A. One (2015): 2.89 over sqrt 2; table 1", "B. Twosome"});
+  CHECK(sources_once({"A. One", "A. One; B. Two", "B. Two; A. One, page 3"}) == std::vector<std::string>{"A. One: page 3", "B. Two"});
   CHECK(sources_once({}).empty());
 }
