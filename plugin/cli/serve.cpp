@@ -58,6 +58,8 @@ Exit serve(const ServeOptions& options, Streams& streams) {
   // A fit that outlasted the time to stop, or a failure, must not hold the exit; the log is as after the last commit.
   try {
     const int status = daemon.run();
+    // The stop is done: one more signal must not turn it into a death by signal.
+    for (const int signal : {SIGINT, SIGTERM, SIGHUP}) ::signal(signal, SIG_IGN);
     if (daemon.in_flight() > 0) std::_Exit(status);
     return static_cast<Exit>(status);
   } catch (const std::exception& error) {
