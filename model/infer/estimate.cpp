@@ -24,15 +24,19 @@ constexpr std::string_view kNotThisScan = "a scan of this kind does not hold it"
 struct Scale {
   double scatter = 1.0;
   double level = 0.95;
-  double quantile() const { return chi_square_quantile(1.0 - level, 1.0); }  // deviance
+  double z = 0.0;  // of the level, two-sided; its square is the deviance's quantile
+  double quantile() const { return z * z; }
+
+  Scale(double scatter_, double level_) : scatter(scatter_), level(level_), z(normal_quantile(0.5 + 0.5 * level_)) {}
 };
 
 /// Inverse of the information over the parameters that are not at a bound; rows and columns of those that are stay 0.
 Matrix covariance_of(const Minimum& minimum) {
   const auto k = minimum.x.size();
   Matrix information = minimum.information;
+  auto held = [&minimum](Eigen::Index i) { return minimum.at_bound[static_cast<std::size_t>(i)] != 0 || !(minimum.information(i, i) > 0.0); };
   for (Eigen::Index i = 0; i < k; ++i) {
-    if (minimum.at_bound[static_cast<std::size_t>(i)] == 0) continue;
+    if (!held(i)) continue;
     information.row(i).setZero();
     information.col(i).setZero();
     information(i, i) = 1.0;
@@ -45,7 +49,7 @@ Matrix covariance_of(const Minimum& minimum) {
   Matrix covariance = Matrix::Constant(k, k, kUnknown);
   if (factors.isInvertible()) covariance = scale.asDiagonal() * factors.inverse() * scale.asDiagonal();
   for (Eigen::Index i = 0; i < k; ++i)
-    if (minimum.at_bound[static_cast<std::size_t>(i)] != 0) {
+    if (held(i)) {
       covariance.row(i).setZero();
       covariance.col(i).setZero();
     }
@@ -60,7 +64,7 @@ Estimate from_covariance(double value, double variance, const Scale& scale) {
     return e;
   }
   e.sigma = std::sqrt(variance * scale.scatter);
-  const double z = std::sqrt(scale.quantile());
+  const double z = scale.z;
   e.low = value - z * e.sigma;
   e.high = value + z * e.sigma;
   return e;
@@ -103,7 +107,7 @@ double mixture_quantile(std::span<const Part> parts, double probability, double 
     low = std::min(low, 2.0 * part.estimate.low - part.estimate.value);
     high = std::max(high, 2.0 * part.estimate.high - part.estimate.value);
   }
-  for (int i = 0; i < 50; ++i) {
+  for (int i = 0; i < 30; ++i) {  // to 1e-9 of the width
     const double middle = 0.5 * (low + high);
     double sum = 0.0;
     for (const auto& part : parts) sum += part.weight * below(part.estimate, middle, z);
@@ -115,6 +119,10 @@ double mixture_quantile(std::span<const Part> parts, double probability, double 
 /// Value and variance averaged over candidates with their weights (K. P. Burnham, D. R. Anderson, Model Selection and Multimodel
 /// Inference, 2nd ed. (2002), section 4.3), the interval from the mixture of their profile intervals.
 Estimate averaged(std::span<Part> parts, const Scale& scale) {
+  // A candidate whose rate ran where nothing holds it has no error to average: the others speak.
+  const auto sure = [](const Part& part) { return std::isfinite(part.estimate.sigma); };
+  if (std::any_of(parts.begin(), parts.end(), sure))
+    parts = parts.first(static_cast<std::size_t>(std::stable_partition(parts.begin(), parts.end(), sure) - parts.begin()));
   double total = 0.0;
   for (const auto& part : parts) total += part.weight;
   Estimate mean;
@@ -133,7 +141,7 @@ Estimate averaged(std::span<Part> parts, const Scale& scale) {
   }
   mean.sigma = std::sqrt(variance);
   if (!bounded) return mean;
-  const double z = std::sqrt(scale.quantile()), tail = 0.5 * (1.0 - scale.level);
+  const double z = scale.z, tail = 0.5 * (1.0 - scale.level);
   if (parts.size() == 1) {
     mean.low = parts[0].estimate.low;
     mean.high = parts[0].estimate.high;
@@ -157,7 +165,13 @@ void weigh(const ModeSolutions& mode, double scatter, Fit& fit) {
   for (int i = 0; i < fit.candidate_count; ++i) fit.candidates[static_cast<std::size_t>(i)].weight /= total;
 }
 
-/// The average over candidates of a lead coordinate (or of the coordinate that `slot` picks), each with its profile interval.
+/// Estimate of one coordinate with the interval of its standard error.
+Estimate normal(const Minimum& minimum, int index, const Scale& scale) {
+  return from_covariance(minimum.x[index], covariance_of(minimum)(index, index), scale);
+}
+
+/// The average over candidates of a lead coordinate (or of the coordinate that `slot` picks). The best has its profile interval; the
+/// others, which fit worse and weigh less, that of their standard error.
 template <class Slot>
 Estimate over_candidates(const Problem& problem, const ModeSolutions& mode, const Fit& fit, Lead lead, const Scale& scale, Slot slot,
                          FitWorkspace& work) {
@@ -168,7 +182,9 @@ Estimate over_candidates(const Problem& problem, const ModeSolutions& mode, cons
     if (i > 0 && fit.candidates[i].weight < kWeightHeard) continue;
     const ScanObjective objective(problem.scan, problem.readout, problem.prior, solution.dynamics, lead, solution.negative_contrast,
                                   work.objective);
-    parts[count++] = {fit.candidates[i].weight, profiled(objective, in_coordinates(objective, solution), slot(objective.layout()), scale)};
+    const Minimum minimum = in_coordinates(objective, solution);
+    const int index = slot(objective.layout());
+    parts[count++] = {fit.candidates[i].weight, i == 0 ? profiled(objective, minimum, index, scale) : normal(minimum, index, scale)};
   }
   return averaged({parts.data(), count}, scale);
 }
@@ -191,6 +207,10 @@ Estimate inverse_rate(double rate, double variance, const Scale& scale) {
   const Estimate of_rate = from_covariance(rate, variance, scale);
   e.value = 1.0 / rate;
   e.why = of_rate.why;
+  if (!(of_rate.sigma < rate)) {
+    if (e.why.empty()) e.why = kNotDetermined;
+    return e;
+  }
   e.sigma = of_rate.sigma / (rate * rate);
   e.low = 1.0 / of_rate.high;
   if (of_rate.low > 0.0) e.high = 1.0 / of_rate.low;
@@ -238,7 +258,7 @@ void fill_readout(const ScanObjective& objective, const Scale& scale, Fit& fit) 
 }  // namespace
 
 void estimate(const Problem& problem, const ModeSolutions& mode, Fit& fit, FitWorkspace& work) {
-  const Scale scale{fit.quality.scatter, problem.options.level};
+  const Scale scale(fit.quality.scatter, problem.options.level);
   weigh(mode, scale.scatter, fit);
   const auto& best = mode.best();
   const ScanObjective objective(problem.scan, problem.readout, problem.prior, best.dynamics, {}, best.negative_contrast, work.objective);

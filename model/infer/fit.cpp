@@ -24,6 +24,79 @@ Prior felt(const Prior& prior, std::span<const Mode> starts) {
   return reduced;
 }
 
+// A prior contradicted by more than so many of its own sigmas is not believed against the data.
+constexpr double kContradicted = 3.0;
+// ... and is then held this much more loosely, or not at all (readout).
+constexpr double kLoosened = 10.0;
+// Deviance gained over a flat line that a fit must show for what it says of the readout to count.
+constexpr double kEvidence = 30.0;
+
+/// What the scan shows under one prior; false where nothing could be fitted.
+bool fit_under(const ScanBatch& scan, const Readout& readout, const Prior& prior, const FitOptions& options, Fit& fit, FitWorkspace& work) {
+  std::array<Mode, kMostModes> starts;
+  const auto find = scan.kind == Axis::duration ? duration_starts : line_starts;
+  const std::size_t count = find(scan, readout, prior, fit.sampling, starts, work.search);
+  const Prior known = felt(prior, {starts.data(), count});
+  const int points = fit.quality.points;
+  const Problem problem{scan, readout, known, options, fit.sampling, points};
+  const auto modes = refine_modes(problem, {starts.data(), count}, work);
+  fit.pulse_length_s.clear();
+  fit.quality = FitQuality{};
+  fit.quality.points = points;
+  fit.outcome = FitOutcome::not_converged;
+  if (modes.empty()) return false;
+
+  const FitQuality of_best = judge(problem, modes.front().best(), work);
+  FitQuality of_choice = of_best;
+  const std::size_t chosen = choose_mode(problem, modes, of_choice, work);
+  fit.quality = chosen == 0 ? of_choice : judge(problem, modes[chosen].best(), work);
+  fit.quality.outside_expect = of_choice.outside_expect;
+  fit.quality.by_history = of_choice.by_history;
+  fit.quality.rival = of_choice.rival;
+  estimate(problem, modes[chosen], fit, work);
+  fit.outcome = FitOutcome::fitted;
+  return true;
+}
+
+bool contradicts(const std::optional<Known>& known, const Estimate& found) {
+  return known && std::abs(found.value - known->mean) > kContradicted * std::max(known->sigma, 1e-6);
+}
+
+/// Whether the fit is believable but for what the readout's prior held against it: no oscillation under it, or one with signals
+/// far from it.
+bool readout_contradicted(const Prior& prior, const Fit& fit) {
+  if (!prior.floor && !prior.contrast) return false;
+  if (fit.outcome != FitOutcome::fitted || !(fit.quality.over_flat >= kEvidence)) return true;
+  return contradicts(prior.contrast, fit.contrast) || contradicts(prior.floor, fit.floor);
+}
+
+/// The prior with what the scan contradicts set aside; the same where it contradicts nothing.
+Prior reconciled(const ScanBatch& scan, const Readout& readout, const Prior& prior, const FitOptions& options, Fit& fit, FitWorkspace& work) {
+  Prior loose = prior;
+  if (readout_contradicted(prior, fit)) {
+    loose.floor.reset();
+    loose.contrast.reset();
+    Fit freed = fit;
+    // A scan that shows nothing with the readout free shows nothing.
+    if (fit_under(scan, readout, loose, options, freed, work) && freed.quality.over_flat >= kEvidence) {
+      fit = std::move(freed);
+      fit.quality.readout_released = true;
+    } else {
+      loose = prior;
+    }
+  }
+  const bool late = fit.outcome == FitOutcome::fitted && scan.kind == Axis::duration && prior.dead_time.sigma > 0.0 &&
+                    std::abs(fit.physical.dead_time - prior.dead_time.mean) > kContradicted * prior.dead_time.sigma;
+  if (late) {
+    const bool readout_released = fit.quality.readout_released;
+    loose.dead_time.sigma *= kLoosened;
+    fit_under(scan, readout, loose, options, fit, work);
+    fit.quality.readout_released = readout_released;
+    fit.quality.dead_time_released = true;
+  }
+  return loose;
+}
+
 void fit_one(const ScanBatch& scan, std::size_t site, const Prior& prior, const FitOptions& options, Fit& fit, FitWorkspace& work) {
   fit = Fit{};
   fit.axis = scan.kind;
@@ -31,34 +104,15 @@ void fit_one(const ScanBatch& scan, std::size_t site, const Prior& prior, const 
   for (const double at : scan.axis) fit.longest = std::max(fit.longest, at);
   const Readout readout = scan.site(site);
   fit.quality.points = measured_points(readout);
-  fit.pulse_length_s.clear();
-  // Four parameters at least, and one degree of freedom that AICc needs beyond them and one more.
-  if (fit.quality.points < 7 || fit.sampling.distinct < 5) {
+  work.objective.reserve(scan.points());
+  // AICc needs two points more than there are parameters.
+  const ScanObjective simplest(scan, readout, prior, Dynamics::undamped, {}, false, work.objective);
+  if (fit.quality.points < std::max(7, simplest.layout().count + 2) || fit.sampling.distinct < 5) {
     fit.outcome = FitOutcome::too_few_points;
     return;
   }
-  work.objective.reserve(scan.points());
-  std::array<Mode, kMostModes> starts;
-  const auto find = scan.kind == Axis::duration ? duration_starts : line_starts;
-  const std::size_t count = find(scan, readout, prior, fit.sampling, starts, work.search);
-  const Prior known = felt(prior, {starts.data(), count});
-  const Problem problem{scan, readout, known, options, fit.sampling, fit.quality.points};
-  const auto modes = refine_modes(problem, {starts.data(), count}, work);
-  if (modes.empty()) return;
-
-  fit.quality = judge(problem, modes.front().best(), work);
-  FitQuality of_choice = fit.quality;
-  const std::size_t chosen = choose_mode(problem, modes, of_choice);
-  if (chosen != 0) {
-    fit.quality = judge(problem, modes[chosen].best(), work);
-    fit.quality.outside_expect = of_choice.outside_expect;
-    fit.quality.by_history = of_choice.by_history;
-    fit.quality.rival = of_choice.rival;
-  } else {
-    fit.quality = of_choice;
-  }
-  estimate(problem, modes[chosen], fit, work);
-  fit.outcome = FitOutcome::fitted;
+  fit_under(scan, readout, prior, options, fit, work);
+  fit.prior = reconciled(scan, readout, prior, options, fit, work);
 }
 
 }  // namespace
@@ -67,8 +121,8 @@ void fit(const ScanBatch& scans, std::span<const Prior> priors, const FitOptions
   for (std::size_t site = 0; site < fits.size(); ++site) fit_one(scans, site, priors[site], options, fits[site], work);
 }
 
-bool overlay(const ScanBatch& scan, const Prior& prior, const Fit& fit, std::span<const double> axis, double z, std::span<double> signal,
-             std::span<double> low, std::span<double> high) {
+bool overlay(const ScanBatch& scan, const Fit& fit, std::span<const double> axis, double z, std::span<double> signal, std::span<double> low,
+             std::span<double> high) {
   if (fit.outcome != FitOutcome::fitted) return false;
   ScanBatch drawn = scan;
   drawn.axis = axis;
@@ -77,9 +131,8 @@ bool overlay(const ScanBatch& scan, const Prior& prior, const Fit& fit, std::spa
   ObjectiveWorkspace work;
   work.reserve(axis.size());
   // Whether Delta was fitted follows from the number of parameters.
-  Prior known = prior;
-  ScanObjective objective(drawn, nothing, known, fit.chosen, {}, fit.negative_contrast, work);
-  if (objective.layout().count != fit.x.size()) known.detuning.reset();
+  Prior known = fit.prior;
+  if (ScanObjective(drawn, nothing, known, fit.chosen, {}, fit.negative_contrast, work).layout().count != fit.x.size()) known.detuning.reset();
   const ScanObjective curve(drawn, nothing, known, fit.chosen, {}, fit.negative_contrast, work);
   return curve.layout().count == fit.x.size() && curve.draw(fit.x, fit.covariance, z, signal, low, high);
 }

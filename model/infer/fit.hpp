@@ -36,7 +36,7 @@ struct FitOptions {
 
 enum class FitOutcome : std::uint8_t {
   fitted,
-  too_few_points,  // fewer measured points than parameters
+  too_few_points,  // fewer measured points than parameters and two, or fewer than 7, or at fewer than 5 places
   not_converged,   // no start led to a minimum
 };
 
@@ -66,6 +66,8 @@ struct FitQuality {
   int points = 0;                   // measured
   bool outside_expect = false;
   bool by_history = false;          // history decided among modes that fit alike
+  bool dead_time_released = false;  // the data contradicted the dead time's prior, which was set aside
+  bool readout_released = false;    // the same of floor and contrast
   std::optional<RivalMode> rival;
 };
 
@@ -83,6 +85,7 @@ struct Fit {
   Vector x;                     // its free parameters, generalised lead
   Matrix covariance;            // of x, scatter counted
   bool negative_contrast = false;
+  Prior prior;                  // under which it was fitted: the one given, less what the data contradicted
 
   Estimate rabi;                // rad/s, bare
   Estimate generalised;         // rad/s, on the carrier as it stands
@@ -105,7 +108,7 @@ void fit(const ScanBatch& scans, std::span<const Prior> priors, const FitOptions
 
 /// The fitted curve of a fit on any axis, with a pointwise band of +-`z` standard errors (delta method on the information
 /// matrix of the chosen candidate). Arrays as long as the axis. False where there is no fit.
-bool overlay(const ScanBatch& scan, const Prior& prior, const Fit& fit, std::span<const double> axis, double z,
-             std::span<double> signal, std::span<double> low, std::span<double> high);
+bool overlay(const ScanBatch& scan, const Fit& fit, std::span<const double> axis, double z, std::span<double> signal, std::span<double> low,
+             std::span<double> high);
 
 }  // namespace halfturn::infer

@@ -3,7 +3,7 @@
 #include <array>
 #include <cmath>
 
-#include "model/infer/starts.hpp"
+#include "model/infer/solution.hpp"
 #include "model/quantity/constants.hpp"
 
 /// Starting points of duration scans.
@@ -15,7 +15,9 @@ using constants::kTwoPi;
 // Trial frequencies stand this part of one over the span apart: a fit started half a step off its mode stays on it
 // (fit_test, "every phase and frequency").
 constexpr double kFrequencyStep = 0.2;
-constexpr int kMostFrequencies = 20000;
+// Most products of a frequency and a point: half a second.
+constexpr double kMostWork = 4e7;
+constexpr double kMostFrequencies = 2e6;
 // Free dampings tried, times the span: none, mild, one that leaves a cycle or two.
 constexpr std::array<double, 3> kDampings = {0.0, 1.2, 4.0};
 // Below so many cycles phase and amplitude cannot be told apart by a linear solve, and starts with the phase held are added.
@@ -25,14 +27,6 @@ struct Peak {
   double frequency = 0.0, damping = 0.0;  // the latter beyond what is known
   LinearFit fit;
 };
-
-TrialGrid trial_grid(const Prior& prior, const Sampling& sampling) {
-  double top = sampling.limit;
-  if (prior.expect) top = std::max(top, 1.25 * prior.expect->high);
-  TrialGrid grid{kTwoPi * 0.1 / sampling.span, kTwoPi * kFrequencyStep / sampling.span, 0};
-  grid.count = static_cast<int>(std::min<double>(kMostFrequencies, std::floor(std::max(0.0, top - grid.bottom) / grid.step) + 2.0));
-  return grid;
-}
 
 /// Highest first, each further from those before it than their resolution.
 void keep_distinct(std::vector<Peak>& peaks, double width) {
@@ -130,6 +124,15 @@ bool slow_start(const LinearPoints& points, const Prior& prior, Readout::Kind ki
 
 }  // namespace
 
+TrialGrid trial_grid(const Prior& prior, const Sampling& sampling, std::size_t points) {
+  double top = sampling.limit;
+  if (prior.expect) top = std::max(top, 1.25 * prior.expect->high);
+  TrialGrid grid{kTwoPi * 0.1 / sampling.span, kTwoPi * kFrequencyStep / sampling.span, 0};
+  const double most = std::min(kMostFrequencies, std::max(500.0, kMostWork / static_cast<double>(points)));
+  grid.count = static_cast<int>(std::min(most, std::floor(std::max(0.0, top - grid.bottom) / grid.step) + 2.0));
+  return grid;
+}
+
 std::size_t duration_starts(const ScanBatch& scan, const Readout& readout, const Prior& prior, const Sampling& sampling,
                             std::span<Mode> modes, SearchWorkspace& work) {
   const auto n = scan.points();
@@ -140,15 +143,24 @@ std::size_t duration_starts(const ScanBatch& scan, const Readout& readout, const
   const LinearPoints points{scan.axis, {work.value.data(), n}, {work.weight.data(), n}, *std::min_element(scan.axis.begin(), scan.axis.end())};
   // A known decay damps the oscillation at 3/4 of its rate (Torrey 1949, resonance), a loss at half.
   const double known_damping = 0.75 * prior.decay + 0.5 * prior.loss;
-  const auto peaks = find_peaks(points, trial_grid(prior, sampling), known_damping, sampling.span, work.frequencies);
+  const auto peaks = find_peaks(points, trial_grid(prior, sampling, n), known_damping, sampling.span, work.frequencies);
 
   std::size_t found = 0;
+  if (prior.log_rabi) {
+    // What history knows is always among the modes, however many others fit as well.
+    const double frequency = std::exp(prior.log_rabi->mean);
+    const Peak known{frequency, 0.0, solve_linear(points, frequency, known_damping)};
+    for (const double sign : {1.0, -1.0}) {
+      Mode mode{{}, false, known.fit.gain};
+      if (known.fit.gain > 0.0 && found < modes.size() && physical_from(known, sign, prior, readout.kind, mode.start)) modes[found++] = mode;
+    }
+  }
   for (const Peak& peak : peaks)
     for (const double sign : {1.0, -1.0}) {
       Mode mode{{}, peak.damping > 0.0, peak.fit.gain};
       if (found < modes.size() && physical_from(peak, sign, prior, readout.kind, mode.start)) modes[found++] = mode;
     }
-  if (found > 0 && peaks.front().frequency * sampling.span > kSlowCycles * kTwoPi) return found;
+  if (found > 0 && !peaks.empty() && peaks.front().frequency * sampling.span > kSlowCycles * kTwoPi) return found;
   for (const double cycles : {0.3, 0.5, 0.75, 1.0, 1.4}) {
     Mode mode;
     if (found < modes.size() && slow_start(points, prior, readout.kind, kTwoPi * cycles / sampling.span, mode.start)) modes[found++] = mode;

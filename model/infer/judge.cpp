@@ -95,10 +95,11 @@ FitQuality judge(const Problem& problem, const Solution& solution, FitWorkspace&
     return quality;
   }
   quality.range_low = constants::kTwoPi * 0.1 / problem.sampling.span;
-  quality.range_high = problem.sampling.limit;
+  const TrialGrid searched = trial_grid(problem.prior, problem.sampling, problem.scan.points());
+  quality.range_high = std::min(problem.sampling.limit, searched.at(searched.count - 1));
   if (problem.prior.expect) {
     quality.range_low = problem.prior.expect->low;
-    quality.range_high = problem.prior.expect->high;
+    quality.range_high = std::min(problem.prior.expect->high, searched.at(searched.count - 1));
   }
   return quality;
 }

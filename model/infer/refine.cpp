@@ -10,6 +10,8 @@ namespace {
 
 using constants::kTwoPi;
 
+// `expect` decides between modes whose points differ by less deviance than this; a truth outside is not hidden by it.
+constexpr double kExpectDecides = 4.0;
 // Modes this far beyond the rival margin after a first refinement are not refined under every candidate.
 constexpr double kWorthAll = 20.0;
 
@@ -107,6 +109,13 @@ Dynamics first_candidate(const Prior& prior, bool damped) {
   return Dynamics::leak;
 }
 
+/// Deviance of the scan's points alone: priors, that of the dead time above all, say nothing of an alias.
+double data_deviance(const Problem& problem, const Solution& solution, FitWorkspace& work) {
+  const ScanObjective objective(problem.scan, problem.readout, problem.prior, solution.dynamics, {}, solution.negative_contrast, work.objective);
+  double half = kUnknown;
+  return objective.data_part(solution.physical, half, {}) ? 2.0 * half : std::numeric_limits<double>::infinity();
+}
+
 }  // namespace
 
 int measured_points(const Readout& readout) {
@@ -140,7 +149,7 @@ std::vector<ModeSolutions> refine_modes(const Problem& problem, std::span<const 
   return modes;
 }
 
-std::size_t choose_mode(const Problem& problem, std::span<const ModeSolutions> modes, FitQuality& quality) {
+std::size_t choose_mode(const Problem& problem, std::span<const ModeSolutions> modes, FitQuality& quality, FitWorkspace& work) {
   const bool line = problem.scan.kind == Axis::detuning;
   auto inside = [&](const ModeSolutions& mode) {
     if (line || !problem.prior.expect) return true;
@@ -148,14 +157,10 @@ std::size_t choose_mode(const Problem& problem, std::span<const ModeSolutions> m
     return rabi >= problem.prior.expect->low && rabi <= problem.prior.expect->high;
   };
   const double margin = problem.options.rival_margin * quality.scatter;
-  // The best mode of all; one that `expect` holds goes before it where the data hardly prefer the other.
+  // The best mode of all; one that `expect` holds goes before it only where the points hardly prefer the other.
   std::size_t chosen = 0;
-  if (!inside(modes[0]))
-    for (std::size_t i = 1; i < modes.size(); ++i)
-      if (inside(modes[i]) && modes[i].best().aicc < modes[0].best().aicc + margin) {
-        chosen = i;
-        break;
-      }
+  for (std::size_t i = 1; i < modes.size() && !inside(modes[0]) && chosen == 0; ++i)
+    if (inside(modes[i]) && data_deviance(problem, modes[i].best(), work) < data_deviance(problem, modes[0].best(), work) + kExpectDecides) chosen = i;
   quality.outside_expect = !inside(modes[chosen]);
 
   std::vector<std::size_t> alike;

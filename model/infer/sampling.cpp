@@ -11,6 +11,9 @@ namespace halfturn::infer {
 
 using constants::kPi;
 
+// Points this part of a step off an even grid leave its aliases within a few units of deviance of the truth.
+constexpr double kOffGrid = 0.05;
+
 void linear_points(const Readout& readout, std::span<double> value, std::span<double> weight) {
   for (std::size_t i = 0; i < value.size(); ++i) {
     const double k = readout.observed[i], n = readout.weight[i];
@@ -76,10 +79,15 @@ Sampling sampling_of(Axis kind, std::span<const double> axis) {
   }
   if (sampling.distinct < 2) return sampling;
   sampling.even = true;
-  for (const double value : sorted) {
-    const double steps = (value - sorted.front()) / sampling.spacing;
-    if (std::abs(steps - std::round(steps)) > 1e-3 * std::max(1.0, steps)) sampling.even = false;
+  // The step is refined along the way, so that a grid whose points are off by a few hundredths of it still counts as even:
+  // its aliases fit nearly as well.
+  double step = sampling.spacing;
+  for (std::size_t i = 1; i < sorted.size(); ++i) {
+    const double from_first = sorted[i] - sorted.front(), steps = std::round(from_first / step);
+    if (std::abs(from_first / step - steps) > kOffGrid) sampling.even = false;
+    if (steps > 0.0 && sampling.even) step = from_first / steps;
   }
+  if (sampling.even) sampling.spacing = step;
   if (kind == Axis::detuning) return sampling;
   const double of_gap = kPi / sampling.spacing;
   const double of_count = kPi * static_cast<double>(sampling.distinct - 1) / sampling.span;

@@ -49,8 +49,12 @@ bool same_mode(const Problem& problem, const Solution& a, const Solution& b);
 /// Deviance, scatter, evidence over a flat line and a monotone curve, range: what needs no rival and no interval.
 FitQuality judge(const Problem& problem, const Solution& solution, FitWorkspace& workspace);
 
-/// Chooses among modes: by `expect`, then by history where the data cannot; says the rival left. `scatter` divides deviances.
-std::size_t choose_mode(const Problem& problem, std::span<const ModeSolutions> modes, FitQuality& quality);
+/// Chooses among modes: by `expect` where the data prefer none, then by history where the data cannot tell; says the rival left.
+/// `quality.scatter` divides deviances.
+std::size_t choose_mode(const Problem& problem, std::span<const ModeSolutions> modes, FitQuality& quality, FitWorkspace& workspace);
+
+/// The frequencies that the start search of a duration scan goes through.
+TrialGrid trial_grid(const Prior& prior, const Sampling& sampling, std::size_t points);
 
 /// Fills the estimates, averaged over candidates with their Akaike weights, and the pulse lengths.
 void estimate(const Problem& problem, const ModeSolutions& mode, Fit& fit, FitWorkspace& workspace);

@@ -107,7 +107,7 @@ PulseDecision decide_length(const State& state, const Pulse& pulse, const infer:
   return decision;
 }
 
-FitEvent event_of(const infer::Fit& fit, const Context& context) {
+FitEvent event_of(const State& state, const infer::Fit& fit, const Context& context) {
   FitEvent event;
   event.at = context.taken_at;
   event.span = fit.sampling.span;
@@ -116,7 +116,8 @@ FitEvent event_of(const infer::Fit& fit, const Context& context) {
   if (fit.outcome != infer::FitOutcome::fitted) return event;
   if (fit.axis == infer::Axis::detuning) {
     event.quantity = Quantity::line;
-    event.value = context.carrier + fit.line_offset.value;  // NaN without the experiment's own number
+    event.carrier = std::isfinite(context.carrier) ? context.carrier : state.carrier;
+    event.value = fit.line_offset.value + (std::isfinite(event.carrier) ? event.carrier : 0.0);
     event.sigma = fit.line_offset.sigma;
     event.noise_floor = kLineNoise * fit.quality.line_width;
     return event;
@@ -190,18 +191,11 @@ Verdict most_cautious(const std::vector<PulseDecision>& pulses) {
   return pulses.empty() ? Verdict::keep : verdict;
 }
 
-void hold(const State& state, Decision& decision) {
+void say_held(const State& state, Decision& decision) {
   decision.reasons.push_back({"held",
                               "This drive is held" + (state.held_by.empty() ? std::string() : " by " + state.held_by) +
                                   (state.held_why.empty() ? std::string() : ": " + state.held_why) + ". Nothing is proposed until it is released.",
                               false});
-  decision.verdict = Verdict::keep;
-  decision.carrier_shift = 0.0;
-  for (auto& pulse : decision.pulses) {
-    pulse.verdict = Verdict::keep;
-    pulse.length_s = pulse.previous_s;
-    pulse.change = 0.0;
-  }
 }
 
 }  // namespace
@@ -217,11 +211,12 @@ std::string_view name(Verdict verdict) {
 
 Decision decide(const State& state, const infer::Fit& fit, const infer::Prior& prior, const Context& context) {
   Decision decision;
-  decision.event = event_of(fit, context);
+  decision.event = event_of(state, fit, context);
   fit_gates(fit, context, decision.reasons);
   if (!refused(decision.reasons)) decision.event.effect = history_gate(state, decision.event, fit, context, decision.reasons);
 
-  if (decision.event.effect == Effect::aside) {
+  const bool rests = decision.event.effect == Effect::aside || (!refused(decision.reasons) && decision.event.effect == Effect::none);
+  if (rests || state.held) {
     decision.verdict = Verdict::keep;
     keep_all(state, fit, prior, context, Verdict::keep, decision);
   } else if (refused(decision.reasons)) {
@@ -234,10 +229,11 @@ Decision decide(const State& state, const infer::Fit& fit, const infer::Prior& p
     decide_pulses(state, fit, prior, context, decision);
     decision.verdict = most_cautious(decision.pulses);
   }
-  // A line without the experiment's own carrier number has no place of its own to be tracked.
-  if (!std::isfinite(decision.event.value) || !(decision.event.sigma > 0.0)) decision.event.effect = Effect::none;
+  const bool placed = fit.axis == infer::Axis::duration || std::isfinite(decision.event.carrier);
+  const bool tracks = decision.event.effect == Effect::first || decision.event.effect == Effect::accepted;
+  if (!std::isfinite(decision.event.value) || !(decision.event.sigma > 0.0) || (tracks && !placed)) decision.event.effect = Effect::none;
   cautions(state, fit, prior, context, decision.reasons);
-  if (state.held) hold(state, decision);
+  if (state.held) say_held(state, decision);
   decision.event.proposed = decision.verdict == Verdict::apply ||
                             std::any_of(decision.pulses.begin(), decision.pulses.end(), [](const auto& p) { return p.verdict == Verdict::apply; });
   std::stable_sort(decision.reasons.begin(), decision.reasons.end(), [](const Reason& a, const Reason& b) { return a.refuses && !b.refuses; });

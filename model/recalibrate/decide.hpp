@@ -50,6 +50,9 @@ struct Decision {
   FitEvent event;                      // what the state is to be advanced by
 };
 
+/// Whether a scan was taken at the drive amplitude that is tracked, to 1e-3; one that does not say is taken to be.
+bool same_amplitude(double tracked, double taken);
+
 /// Decides on a fit. `prior` is what it was fitted under. The angles fitted are those of `context.pulses`, in their order.
 Decision decide(const State& state, const infer::Fit& fit, const infer::Prior& prior, const Context& context);
 

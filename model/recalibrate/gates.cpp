@@ -21,7 +21,6 @@ constexpr int kStepAwake = 3;
 constexpr double kSameAxis = 0.01;
 // So many flops in a row at another drive amplitude make it the new one.
 constexpr int kAmplitudeTaken = 3;
-constexpr double kSameAmplitude = 1e-3;
 
 std::string hertz(double angular) { return engineering(angular / kTwoPi, "Hz"); }
 
@@ -90,12 +89,15 @@ void line_gates(const infer::Fit& fit, const Context& context, Reasons& reasons)
                percent(context.accept.max_carrier_error) + "). Take more shots, or points on the line's flanks.");
 }
 
-/// A flop at another drive amplitude than the tracked one moves nothing, until several in a row make it the new one.
+/// A scan at another drive amplitude than the tracked one moves nothing; several flops in a row make it the new one.
 std::optional<Effect> amplitude_gate(const State& state, const FitEvent& event, Reasons& reasons) {
-  if (event.quantity == Quantity::line || !std::isfinite(event.drive_amplitude) || !std::isfinite(state.drive_amplitude)) return std::nullopt;
-  if (std::abs(event.drive_amplitude / state.drive_amplitude - 1.0) <= kSameAmplitude) return std::nullopt;
+  if (same_amplitude(state.drive_amplitude, event.drive_amplitude)) return std::nullopt;
   const std::string seen = "Taken at the drive amplitude " + plain(event.drive_amplitude) + ", not at " + plain(state.drive_amplitude) +
                            " as the scans before. ";
+  if (event.quantity == Quantity::line) {
+    caution(reasons, "other_amplitude", seen + "The line may be shifted by the light, by an amount that is not known here, so the carrier rests as it is.");
+    return Effect::aside;
+  }
   const bool again = event.drive_amplitude == state.other_amplitude && state.at_other_amplitude + 1 >= kAmplitudeTaken;
   if (again) {
     caution(reasons, "amplitude_changed", seen + "It is the " + std::to_string(kAmplitudeTaken) +
@@ -108,6 +110,12 @@ std::optional<Effect> amplitude_gate(const State& state, const FitEvent& event, 
 }
 
 }  // namespace
+
+bool same_amplitude(double tracked, double taken) {
+  constexpr double kSame = 1e-3;
+  if (!std::isfinite(tracked) || !std::isfinite(taken)) return true;
+  return std::abs(taken / tracked - 1.0) <= kSame;
+}
 
 bool refused(const Reasons& reasons) {
   return std::any_of(reasons.begin(), reasons.end(), [](const Reason& reason) { return reason.refuses; });
@@ -154,10 +162,16 @@ void cautions(const State& state, const infer::Fit& fit, const infer::Prior& pri
     caution(reasons, "scatter",
             "The points scatter with " + plain(quality.scatter, 3) + " times the variance of the readout's own noise; all errors were widened "
             "for it. Something fluctuates from shot to shot or point to point.");
-  if (fit.dead_time_s.value != prior.dead_time.mean && std::abs(fit.dead_time_s.value - prior.dead_time.mean) > 3.0 * prior.dead_time.sigma)
+  if (quality.dead_time_released)
     caution(reasons, "dead_time",
-            "The dead time found, " + with_uncertainty(fit.dead_time_s.value, fit.dead_time_s.sigma, "s") + ", is more than 3 sigma from "
-            "the configured one. If it is right, state it under switching.");
+            "The dead time found, " + with_uncertainty(fit.dead_time_s.value, fit.dead_time_s.sigma, "s") + ", is far from what is configured, " +
+                with_uncertainty(prior.dead_time.mean, prior.dead_time.sigma, "s") + ", so the latter was set aside. If the former is right, state it "
+                "under switching.");
+  if (quality.readout_released)
+    caution(reasons, "readout",
+            "Floor " + with_uncertainty(fit.floor.value, fit.floor.sigma, "") + " and contrast " +
+                with_uncertainty(fit.contrast.value, fit.contrast.sigma, "") + " are far from what is configured under readout, which was set aside. "
+                "Look for a readout that drifted, or atoms prepared in the other state.");
   if (fit.axis == infer::Axis::duration && prior.detuning) {
     const double reach = std::abs(prior.detuning->mean) + 2.0 * prior.detuning->sigma;
     const double effect = 0.5 * reach * reach / std::max(fit.generalised.value, 1e-300);
@@ -184,6 +198,10 @@ Effect history_gate(const State& state, const FitEvent& event, const infer::Fit&
   const bool line = event.quantity == Quantity::line;
   if (const auto effect = amplitude_gate(state, event, reasons)) return *effect;
   const Track& track = line ? state.line : state.rabi;
+  if (track.accepted > 0 && event.at < track.at) {
+    caution(reasons, "late", "Taken before the last scan that was believed: it is logged and moves nothing.");
+    return Effect::none;
+  }
   const auto& step = line ? state.line_step : state.rabi_step;
   const auto predicted = track.predict(event.at);
   const double width = fit.quality.line_width;
@@ -194,7 +212,8 @@ Effect history_gate(const State& state, const FitEvent& event, const infer::Fit&
   const bool awake = line || track.accepted >= kStepAwake;
   if (!awake || off <= allowed) {
     if (track.accepted > 0) return Effect::accepted;
-    caution(reasons, "first", "First scan of this drive that was believed: there is no history to hold it against.");
+    if (!line || std::isfinite(event.carrier))
+      caution(reasons, "first", std::string("First ") + (line ? "line" : "flop") + " of this drive that was believed: there is no history to hold it against.");
     return Effect::first;
   }
   const std::string seen =
@@ -203,7 +222,9 @@ Effect history_gate(const State& state, const FitEvent& event, const infer::Fit&
            : "The Rabi frequency, " + hertz(fit.rabi) + ", is " + percent(off) + " from the " + hertz(std::exp(predicted->mean)) +
                  " that history predicts (allowed at once: " + percent(allowed) + ")";
   if (step) {
-    const double spread = std::hypot(step->sigma, event.sigma);
+    // The drive went on drifting in between.
+    const double drifted = track.hourly() * std::max(0.0, static_cast<double>(event.at - step->at)) / 3.6e12;
+    const double spread = std::sqrt(step->sigma * step->sigma + event.sigma * event.sigma + drifted);
     const bool agrees = std::abs(event.value - step->value) <= 3.0 * spread;
     const bool differs = std::abs(event.span / step->span - 1.0) > kSameAxis || std::abs(event.spacing / step->spacing - 1.0) > kSameAxis;
     if (agrees && differs) {

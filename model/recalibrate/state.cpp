@@ -24,6 +24,7 @@ void restart(Track& track, double value, double variance, const FitEvent& event)
   track.variance = variance;
   track.noise = std::max(track.noise, first * first);
   track.floor = event.noise_floor * event.noise_floor;
+  track.usual = event.sigma * event.sigma;
   track.at = event.at;
   ++track.accepted;
 }
@@ -38,7 +39,10 @@ void update(Track& track, const FitEvent& event) {
     const double seen = (innovation * innovation - observed - track.variance) / std::max(elapsed, 1.0 / 60.0);
     const double foreseen = observed + track.variance + std::max(floor, track.noise) * elapsed;
     const bool surprise = innovation * innovation > kSurprise * kSurprise * foreseen;
-    track.noise = surprise ? seen : (1.0 - kForget) * track.noise + kForget * seen;
+    // An imprecise scan says little of the noise: its say goes with the inverse square of its variance.
+    const double say = kForget * std::min(1.0, (track.usual / observed) * (track.usual / observed));
+    track.noise = surprise ? seen : (1.0 - say) * track.noise + say * seen;
+    track.usual += kForget * (observed - track.usual);
     track.floor = floor;
   }
   const double predicted = track.variance + track.hourly() * elapsed;
@@ -68,6 +72,7 @@ void advance(State& state, const FitEvent& event) {
   auto& step = event.quantity == Quantity::rabi ? state.rabi_step : state.line_step;
   if (event.proposed) ++state.proposals_unanswered;
   if (event.effect == Effect::aside) {
+    if (event.quantity == Quantity::line) return;
     state.at_other_amplitude = event.drive_amplitude == state.other_amplitude ? state.at_other_amplitude + 1 : 1;
     state.other_amplitude = event.drive_amplitude;
     return;
@@ -80,18 +85,30 @@ void advance(State& state, const FitEvent& event) {
     case Effect::none:
     case Effect::aside: return;
     case Effect::pending: step = Pending{event.value, event.sigma, event.span, event.spacing, event.at}; return;
-    case Effect::first: restart(track, event.value, event.sigma * event.sigma, event); break;
+    case Effect::first:
+      track = Track{};
+      restart(track, event.value, event.sigma * event.sigma, event);
+      break;
     case Effect::accepted: update(track, event); break;
     case Effect::confirmed:
-      if (step) confirm(track, *step, event);
+      // A line without the experiment's own carrier number has no place to be tracked at.
+      if (step && (event.quantity == Quantity::rabi || std::isfinite(event.carrier))) confirm(track, *step, event);
       break;
   }
   step.reset();
 }
 
 void advance(State& state, const AppliedEvent& event) {
-  for (const auto& [name, length] : event.pulses_s) state.in_force_s[name] = length;
-  if (std::isfinite(event.carrier)) state.carrier = event.carrier;
+  for (const auto& [name, length] : event.pulses_s) {
+    const auto [since, fresh] = state.in_force_at.try_emplace(name, event.at);
+    if (!fresh && event.at < since->second) continue;  // a newer report is known already
+    since->second = event.at;
+    state.in_force_s[name] = length;
+  }
+  if (std::isfinite(event.carrier) && event.at >= state.carrier_at) {
+    state.carrier = event.carrier;
+    state.carrier_at = event.at;
+  }
   state.proposals_unanswered = 0;
 }
 

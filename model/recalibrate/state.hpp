@@ -33,6 +33,7 @@ struct FitEvent {
   Effect effect = Effect::none;
   bool proposed = false;           // the verdict was `apply`
   double value = kAbsent;          // ln(Omega / (rad/s)), or the line's place in the experiment's own carrier numbers, rad/s
+  double carrier = kAbsent;        // rad/s, the experiment's own number; absent: a line's place is its offset alone
   double sigma = kAbsent;
   double noise_floor = 0.0;        // of the random walk, in the units of value per square root of an hour
   double dead_time_s = kAbsent, dead_time_sigma_s = kAbsent;
@@ -54,6 +55,7 @@ struct Track {
   double mean = 0.0, variance = 0.0;
   double noise = 0.0;              // variance an hour as estimated; may be below 0 while the scans agree better than their errors
   double floor = 0.0;              // and the least that is taken
+  double usual = 0.0;              // usual variance of an observation, against which others are weighed
   Time at = 0;
 
   double hourly() const;           // variance an hour as taken
@@ -72,8 +74,10 @@ struct Pending {
 struct State {
   Track rabi, line;
   std::optional<Pending> rabi_step, line_step;
-  std::map<std::string, double> in_force_s;  // as last reported
+  std::map<std::string, double> in_force_s;  // as last reported, by the time of application
+  std::map<std::string, Time> in_force_at;
   double carrier = kAbsent;                  // as last reported, rad/s
+  Time carrier_at = 0;
   int proposals_unanswered = 0;              // `apply` since the experiment last reported what it uses
   double drive_amplitude = kAbsent;          // at which the tracked Rabi frequency was taken
   double other_amplitude = kAbsent;          // at which the last scans were taken, if at another

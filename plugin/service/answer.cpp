@@ -31,7 +31,7 @@ wire::Estimate scaled(const wire::Estimate& rabi_hz, double value, double power)
   wire::Estimate e;
   e.value = value;
   e.sigma = value * power * rabi_hz.sigma / rabi_hz.value;
-  e.low = value * std::pow(std::max(0.0, rabi_hz.low) / rabi_hz.value, power);
+  e.low = value * std::pow((rabi_hz.low < 0.0 ? 0.0 : rabi_hz.low) / rabi_hz.value, power);
   e.high = value * std::pow(rabi_hz.high / rabi_hz.value, power);
   e.why = rabi_hz.why;
   return e;
@@ -129,7 +129,7 @@ std::optional<wire::Overlay> overlay(const Answer& answer) {
   if (model.batch.kind == infer::Axis::detuning)
     for (double& detuning : axis) detuning *= kTwoPi;
   const double z = infer::normal_quantile(0.5 + 0.5 * answer.options.level.value_or(0.95));
-  if (!infer::overlay(model.batch, answer.prior, answer.fit, axis, z, curve.signal, curve.low, curve.high)) return std::nullopt;
+  if (!infer::overlay(model.batch, answer.fit, axis, z, curve.signal, curve.low, curve.high)) return std::nullopt;
   return curve;
 }
 
@@ -156,7 +156,8 @@ recalibrate::FitEvent fit_event(const log::Event& row) {
   event.drive_amplitude = row.drive_amplitude;
   if (row.axis == "detuning") {
     event.quantity = recalibrate::Quantity::line;
-    event.value = kTwoPi * (row.carrier_hz + row.line_offset_hz);
+    event.carrier = kTwoPi * row.carrier_hz;
+    event.value = kTwoPi * (row.line_offset_hz + (std::isfinite(row.carrier_hz) ? row.carrier_hz : 0.0));
     event.sigma = kTwoPi * row.line_offset_sigma_hz;
     event.noise_floor = recalibrate::kLineNoise * kTwoPi * row.line_width_hz;
   } else {
@@ -206,6 +207,7 @@ log::Event event_from(const Answer& answer, const wire::Fitted& fitted) {
   const double unit = fit.axis == infer::Axis::detuning ? kTwoPi : 1.0;
   event.span = fit.sampling.span / unit;
   event.spacing = fit.sampling.spacing / unit;
+  event.carrier_hz = answer.decision.event.carrier / kTwoPi;
   if (answer.scan.carrier_hz) event.carrier_hz = *answer.scan.carrier_hz;
   if (answer.scan.drive_amplitude) event.drive_amplitude = *answer.scan.drive_amplitude;
   for (const auto& decision : answer.decision.pulses)

@@ -42,13 +42,26 @@ void add_readout(const config::Drive& drive, const wire::Scan& scan, infer::Prio
 void add_detuning(const config::Drive* drive, const recalibrate::State& state, const wire::Scan& scan, recalibrate::Time taken_at,
                   infer::Prior& prior, std::vector<std::string>& assumed) {
   const auto line = state.line.predict(taken_at);
-  if (line && scan.carrier_hz) {
-    prior.detuning = infer::Known{kTwoPi * *scan.carrier_hz - line->mean, line->sigma};
+  const double carrier = scan.carrier_hz ? kTwoPi * *scan.carrier_hz : state.carrier;
+  if (line && std::isfinite(carrier)) {
+    prior.detuning = infer::Known{carrier - line->mean, line->sigma};
   } else if (drive != nullptr && drive->carrier_uncertainty) {
     prior.detuning = infer::Known{0.0, *drive->carrier_uncertainty};
   } else if (scan.axis_kind == wire::AxisKind::duration) {
     assumed.push_back("carrier_uncertainty: the carrier sits on the line");
   }
+}
+
+/// History's Rabi frequency holds at the amplitude it was tracked at. For a line at another it is scaled, and held as loosely as
+/// an amplifier may be off its straight line; a flop at another tells for itself.
+std::optional<infer::Known> history_of(const recalibrate::State& state, const wire::Scan& scan, recalibrate::Time taken_at) {
+  constexpr double kAmplifier = 0.3;  // of the logarithm of the amplitudes' ratio
+  auto known = state.rabi.predict(taken_at);
+  const double taken = scan.drive_amplitude.value_or(recalibrate::kAbsent);
+  if (!known || recalibrate::same_amplitude(state.drive_amplitude, taken)) return known;
+  if (scan.axis_kind == wire::AxisKind::duration) return std::nullopt;
+  const double ratio = std::log(taken / state.drive_amplitude);
+  return infer::Known{known->mean + ratio, std::hypot(known->sigma, kAmplifier * ratio)};
 }
 
 infer::DynamicsSet candidates_of(const config::Drive* drive, const wire::Options& options) {
@@ -83,7 +96,7 @@ infer::Prior prior_for(const config::Drive* drive, const recalibrate::State& sta
   infer::Prior prior;
   prior.start.prepared = scan.prepared_excited ? dynamics::Prepared::excited : dynamics::Prepared::ground;
   prior.candidates = candidates_of(drive, options);
-  prior.log_rabi = state.rabi.predict(taken_at);
+  prior.log_rabi = history_of(state, scan, taken_at);
   if (drive != nullptr) {
     prior.expect = drive->expect;
     prior.start.impurity = drive->impurity;

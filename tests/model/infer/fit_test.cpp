@@ -190,6 +190,42 @@ TEST_CASE("an alias inside `expect` is a rival, which an uneven grid or history 
   }
 }
 
+TEST_CASE("`expect` does not hide a truth outside it on a grid that tells") {
+  // Bug: a mode inside `expect` was taken although the points spoke against it by a deviance of up to 25.
+  std::mt19937_64 random(8);
+  int hidden = 0;
+  for (int i = 0; i < 40; ++i) {
+    Truth truth;
+    truth.rabi = kTwoPi * 70e3;
+    std::vector<double> lengths = even(0.0, 39 * 8e-6, 40);
+    for (auto& length : lengths) length = std::abs(length + 0.04 * 8e-6 * std::normal_distribution<double>()(random));
+    Sample sample;
+    take_flop(sample, truth, lengths, 100, random);
+    Prior prior;
+    prior.dead_time = {0.0, 50e-9};
+    prior.expect = Expected{kTwoPi * 10e3, kTwoPi * 60e3};
+    const Fit fit = fit_one(sample, prior);
+    hidden += fit.outcome == FitOutcome::fitted && !fit.quality.outside_expect && (!fit.quality.rival || fit.quality.rival->deviance_above > 25.0);
+  }
+  CHECK(hidden == 0);
+}
+
+TEST_CASE("two random lengths close together do not make a grid even") {
+  std::mt19937_64 random(6);
+  std::uniform_real_distribution<double> uniform(0.0, 100e-6);
+  std::vector<double> lengths;
+  for (int i = 0; i < 60; ++i) lengths.push_back(uniform(random));
+  lengths[1] = lengths[0] + 1e-9;
+  const auto sampling = sampling_of(Axis::duration, lengths);
+  CHECK_FALSE(sampling.even);
+  CHECK(sampling.limit / kTwoPi < 8.0 * 60 / (2 * 90e-6));
+  // A grid whose points are rounded to a clock of 1 ns stays even.
+  std::vector<double> rounded;
+  for (int i = 0; i < 60; ++i) rounded.push_back(1e-9 * std::round(i * 333.33));
+  CHECK(sampling_of(Axis::duration, rounded).even);
+  CHECK(sampling_of(Axis::duration, rounded).limit == Approx(kPi / 333.33e-9).epsilon(1e-3));
+}
+
 TEST_CASE("history never overrules data that can tell") {
   std::mt19937_64 random(4);
   Truth truth;
