@@ -5,9 +5,6 @@
 /// The questions that a fit must pass, each with its sentence; used by decide.cpp.
 namespace halfturn::recalibrate {
 
-/// `apply` so many times without an `applied`: said from then on.
-inline constexpr int kUnansweredSaid = 3;
-
 /// Refusals of the fit itself, most serious first: no fit, nothing seen, poor fit, rivals, too little seen, outside `expect`.
 void fit_gates(const infer::Fit& fit, const Context& context, Reasons& reasons);
 
