@@ -28,6 +28,8 @@ Prior felt(const Prior& prior, std::span<const Mode> starts) {
 constexpr double kContradicted = 3.0;
 // ... and is then held this much more loosely, or not at all (readout).
 constexpr double kLoosened = 10.0;
+// Deviance by which a fit without history's frequency must be better to be taken.
+constexpr double kClearlyBetter = 10.0;
 // Deviance gained over a flat line that a fit must show for what it says of the readout to count.
 constexpr double kEvidence = 30.0;
 
@@ -70,6 +72,24 @@ bool readout_contradicted(const Prior& prior, const Fit& fit) {
   return contradicts(prior.contrast, fit.contrast) || contradicts(prior.floor, fit.floor);
 }
 
+/// Whether the dead time that the points alone ask for lies far from its prior, by both their errors: with the fit z prior sigmas
+/// away and its variance a part r of the prior's, that distance is z / sqrt(1 - r).
+bool dead_time_contradicted(const ScanBatch& scan, const Prior& prior, const Fit& fit) {
+  const double sigma = prior.dead_time.sigma;
+  if (fit.outcome != FitOutcome::fitted || scan.kind != Axis::duration || !(sigma > 0.0)) return false;
+  const double z = (fit.physical.dead_time - prior.dead_time.mean) / sigma;
+  const double share = fit.dead_time_s.sigma * fit.dead_time_s.sigma / (fit.quality.scatter * sigma * sigma);
+  return std::abs(z) > kContradicted || (share < 1.0 && z * z > kContradicted * kContradicted * (1.0 - share));
+}
+
+/// Whether a line scan is badly described with the Rabi frequency that history knows: it may have been taken at another power that
+/// nobody stated.
+bool history_contradicted(const ScanBatch& scan, const Prior& prior, const Fit& fit) {
+  if (scan.kind == Axis::duration || !prior.log_rabi) return false;
+  if (fit.outcome != FitOutcome::fitted || !(fit.quality.over_flat >= kEvidence) || fit.quality.p_value < 0.01) return true;
+  return std::abs(std::log(fit.physical.generalised) - prior.log_rabi->mean) > kContradicted * std::max(prior.log_rabi->sigma, 1e-6);
+}
+
 /// The prior with what the scan contradicts set aside; the same where it contradicts nothing.
 Prior reconciled(const ScanBatch& scan, const Readout& readout, const Prior& prior, const FitOptions& options, Fit& fit, FitWorkspace& work) {
   Prior loose = prior;
@@ -85,8 +105,16 @@ Prior reconciled(const ScanBatch& scan, const Readout& readout, const Prior& pri
       loose = prior;
     }
   }
-  const bool late = fit.outcome == FitOutcome::fitted && scan.kind == Axis::duration && prior.dead_time.sigma > 0.0 &&
-                    std::abs(fit.physical.dead_time - prior.dead_time.mean) > kContradicted * prior.dead_time.sigma;
+  if (history_contradicted(scan, prior, fit)) {
+    loose.log_rabi.reset();
+    Fit freed = fit;
+    const double under = fit.outcome == FitOutcome::fitted ? fit.quality.deviance : std::numeric_limits<double>::infinity();
+    if (fit_under(scan, readout, loose, options, freed, work) && freed.quality.over_flat >= kEvidence && freed.quality.deviance < under - kClearlyBetter)
+      fit = std::move(freed);
+    else
+      loose.log_rabi = prior.log_rabi;
+  }
+  const bool late = dead_time_contradicted(scan, prior, fit);
   if (late) {
     const bool readout_released = fit.quality.readout_released;
     loose.dead_time.sigma *= kLoosened;
@@ -101,7 +129,11 @@ void fit_one(const ScanBatch& scan, std::size_t site, const Prior& prior, const 
   fit = Fit{};
   fit.axis = scan.kind;
   fit.sampling = sampling_of(scan.kind, scan.axis);
-  for (const double at : scan.axis) fit.longest = std::max(fit.longest, at);
+  if (!scan.axis.empty()) {
+    const auto [low, high] = std::minmax_element(scan.axis.begin(), scan.axis.end());
+    fit.lowest = *low;
+    fit.longest = *high;
+  }
   const Readout readout = scan.site(site);
   fit.quality.points = measured_points(readout);
   work.objective.reserve(scan.points());

@@ -56,7 +56,7 @@ struct RivalMode {
 struct FitQuality {
   double deviance = kUnknown, dof = kUnknown;
   double p_value = kUnknown;        // of a deviance as large, moment-matched; before scatter is counted
-  double scatter = 1.0;             // variance of the residuals over the readout's own; above 1 where p_value < 0.01
+  double scatter = 1.0;             // variance of the residuals over the readout's own; above 1 where p_value < 0.1, in full where < 0.01
   double p_after_scatter = kUnknown;  // smallest p-value of runs, autocorrelation and largest residual, with scatter counted
   double cycles = kUnknown;         // seen within the span, lower end of the interval; duration scans
   double over_flat = kUnknown;      // deviance gained over a flat line, scatter counted
@@ -75,7 +75,7 @@ struct Fit {
   FitOutcome outcome = FitOutcome::not_converged;
   Axis axis = Axis::duration;
   Sampling sampling;
-  double longest = 0.0;         // the largest value on the axis
+  double lowest = 0.0, longest = 0.0;  // the smallest and the largest value on the axis
   Dynamics chosen = Dynamics::undamped;
   std::array<CandidateScore, 4> candidates{};
   int candidate_count = 0;

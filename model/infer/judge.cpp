@@ -14,8 +14,9 @@
 namespace halfturn::infer {
 namespace {
 
-// A deviance this improbable under the readout's own noise is excess scatter, and widens every error.
-constexpr double kScatterSeen = 0.01;
+// A deviance as improbable as the first of these under the readout's own noise begins to count as excess scatter, which widens
+// every error; at the second it counts in full.
+constexpr double kScatterBegins = 0.1, kScatterFull = 0.01;
 
 double standard_variance(const Readout& readout, std::size_t i, double mean) {
   const double n = readout.weight[i];
@@ -81,8 +82,10 @@ FitQuality judge(const Problem& problem, const Solution& solution, FitWorkspace&
   quality.deviance = 2.0 * half_deviance;
   quality.dof = problem.measured - parameters;
   quality.p_value = goodness_of_fit.p_value;
-  if (quality.p_value < kScatterSeen && goodness_of_fit.expected > 0.0)
-    quality.scatter = std::max(1.0, goodness_of_fit.deviance / goodness_of_fit.expected);
+  if (quality.p_value < kScatterBegins && goodness_of_fit.expected > 0.0) {
+    const double counted = std::clamp((kScatterBegins - quality.p_value) / (kScatterBegins - kScatterFull), 0.0, 1.0);
+    quality.scatter = 1.0 + counted * std::max(0.0, goodness_of_fit.deviance / goodness_of_fit.expected - 1.0);
+  }
   quality.p_after_scatter = residual_p_value(problem, work.signal, quality.scatter, work.order);
 
   const auto monotone = monotone_half_deviance(problem.readout, problem.scan.axis);

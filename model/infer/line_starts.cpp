@@ -15,7 +15,7 @@ using constants::kTwoPi;
 // In units of 2 pi over the pulse length, of which the line of a pi pulse is 0.8 wide: the profile's table, the trial offsets, and
 // how far beyond the window a line is looked for. Linear interpolation in the table is good to 1e-3 at areas to 4.5 pi.
 constexpr double kTableStep = 0.02, kOffsetStep = 0.15, kMargin = 0.5;
-constexpr double kMostOffsets = 400.0;
+constexpr double kMostOffsets = 4000.0;
 constexpr double kMostTable = 20000.0;
 
 /// The population's profile on an even axis about the line's centre.

@@ -26,7 +26,7 @@ struct Prior {
   std::optional<Known> log_rabi;         // history's prediction of ln(Omega / (rad/s)) at the scan's time and drive amplitude
   std::optional<Known> detuning;         // drive minus transition; without: exactly 0. The fit of a detuning scan does not read it
   std::optional<Known> floor, contrast;  // of the readout
-  Known dead_time{0.0, 100e-9};          // s
+  Known dead_time{0.0, 100e-9};          // s; normal with a wide tail (scan_objective.cpp), for it is a guess at times
   double decay = 0.0;                    // known natural decay within the pair
   double loss = 0.0;                     // known natural decay out of the pair
   dynamics::Start start;                 // prepared state, impurity, how lost population reads

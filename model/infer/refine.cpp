@@ -12,8 +12,11 @@ using constants::kTwoPi;
 
 // `expect` decides between modes whose points differ by less deviance than this; a truth outside is not hidden by it.
 constexpr double kExpectDecides = 4.0;
-// Modes this far beyond the rival margin after a first refinement are not refined under every candidate.
-constexpr double kWorthAll = 20.0;
+// So many modes, the best by their first refinement, are refined under every candidate before they are compared: the first
+// candidate may be the wrong one, and costs hundreds of deviance where there is much data.
+constexpr std::size_t kModesInFull = 6;
+// Within so many resolution elements of half the sampling rate a frequency and its mirror image are one bump: neither is told.
+constexpr double kMirrorZone = 0.5;
 
 /// The rate of a candidate that damps an oscillation on resonance at `envelope`: gamma_phi/2, 3 Gamma/4, Gamma_loss/2.
 double damping_for(Dynamics dynamics, double envelope) {
@@ -130,6 +133,8 @@ bool same_mode(const Problem& problem, const Solution& a, const Solution& b) {
   if (problem.scan.kind == Axis::detuning)
     return std::abs(a.physical.line_offset - b.physical.line_offset) < kTwoPi * 0.2 / problem.scan.pulse_length_s;
   if (a.negative_contrast != b.negative_contrast) return false;
+  const double limit = problem.sampling.limit;
+  if ((a.physical.generalised > limit) != (b.physical.generalised > limit)) return false;  // mirror images near the limit
   return std::abs(a.physical.generalised - b.physical.generalised) < kTwoPi * 0.35 / problem.sampling.span;
 }
 
@@ -141,20 +146,20 @@ std::vector<ModeSolutions> refine_modes(const Problem& problem, std::span<const 
     from.damping = start.damped ? damping_for(candidate, from.damping) : damping_for(candidate, 0.1 / length_scale(problem));
     if (auto solution = refine(problem, candidate, from, work)) add_mode(problem, modes, std::move(*solution));
   }
-  auto by_value = [](const ModeSolutions& a, const ModeSolutions& b) { return a.best().aicc < b.best().aicc; };
-  std::stable_sort(modes.begin(), modes.end(), by_value);
-  const double limit = problem.options.rival_margin + kWorthAll;
-  for (auto& mode : modes)
-    if (mode.best().aicc < modes.front().best().aicc + limit) refine_candidates(problem, mode, work);
-  std::stable_sort(modes.begin(), modes.end(), by_value);
+  auto by_deviance = [](const ModeSolutions& a, const ModeSolutions& b) { return a.best().minimum.value < b.best().minimum.value; };
+  std::stable_sort(modes.begin(), modes.end(), by_deviance);
+  if (modes.size() > kModesInFull) modes.resize(kModesInFull);
+  for (auto& mode : modes) refine_candidates(problem, mode, work);
+  std::stable_sort(modes.begin(), modes.end(), [](const ModeSolutions& a, const ModeSolutions& b) { return a.best().aicc < b.best().aicc; });
   return modes;
 }
 
 std::size_t choose_mode(const Problem& problem, std::span<const ModeSolutions> modes, FitQuality& quality, FitWorkspace& work) {
   const bool line = problem.scan.kind == Axis::detuning;
   auto inside = [&](const ModeSolutions& mode) {
-    if (line || !problem.prior.expect) return true;
+    if (line) return true;
     const double rabi = mode.best().physical.generalised;
+    if (!problem.prior.expect) return rabi <= problem.sampling.limit;
     return rabi >= problem.prior.expect->low && rabi <= problem.prior.expect->high;
   };
   const double margin = problem.options.rival_margin * quality.scatter;
@@ -191,6 +196,12 @@ std::size_t choose_mode(const Problem& problem, std::span<const ModeSolutions> m
       quality.by_history = true;
       return chosen;
     }
+  }
+  if (!line && problem.sampling.even) {
+    const double found = modes[chosen].best().physical.generalised, mirror = 2.0 * problem.sampling.limit - found;
+    const bool close = std::abs(mirror - found) < 2.0 * kMirrorZone * kTwoPi / problem.sampling.span;
+    const auto& expect = problem.prior.expect;
+    if (close && (!expect || (mirror >= expect->low && mirror <= expect->high))) quality.rival = RivalMode{mirror, 0.0, false};
   }
   // The next best is said even where it is no rival.
   for (std::size_t i = 0; i < modes.size(); ++i) {

@@ -83,6 +83,10 @@ void line_gates(const infer::Fit& fit, const Context& context, Reasons& reasons)
     refuse(reasons, "uncertain", "The scan does not bound the line's centre. Widen the window so that both sides of the line are in it.");
     return;
   }
+  if (offset.value - 0.5 * width < fit.lowest || offset.value + 0.5 * width > fit.longest)
+    refuse(reasons, "edge",
+           "The line's centre, " + hertz(offset) + ", is less than half its width, " + hertz(width) + ", from the edge of the window, " +
+               hertz(fit.lowest) + " to " + hertz(fit.longest) + ". Scan around that centre, so that both sides of the line are seen.");
   if (offset.sigma > context.accept.max_carrier_error * width)
     refuse(reasons, "uncertain",
            "The line's centre, " + hertz(offset) + ", is uncertain by " + percent(offset.sigma / width) + " of its width (allowed: " +
@@ -139,7 +143,11 @@ void fit_gates(const infer::Fit& fit, const Context& context, Reasons& reasons) 
                (quality.p_after_scatter < context.accept.min_p_value ? ", and they follow one another or one stands far out" : "") +
                ". Look for a laser that dropped out, atoms lost, a readout that drifted, or more than two levels taking part.");
   rival_gate(fit, context, reasons);
-  if (quality.outside_expect)
+  if (quality.outside_expect && !context.expect)
+    refuse(reasons, "rival",
+           "The only frequency that fits, " + hertz(fit.generalised) + ", lies above the scan's sampling limit, " + hertz(quality.range_high) +
+               ". Step the pulse length more finely, or state expect.rabi.");
+  else if (quality.outside_expect)
     refuse(reasons, "outside_expect",
            "The best fit, " + hertz(fit.generalised) + ", lies outside expect.rabi, " + hertz(quality.range_low) + " to " +
                hertz(quality.range_high) + ". If the light has really changed so much, widen expect; else look for the wrong attenuation, "
