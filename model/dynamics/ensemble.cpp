@@ -18,8 +18,9 @@ using Kind = Ensemble::Kind;
 
 constexpr std::size_t kChunk = 8;  // members evaluated at a time: seven rows of 60 points of each stay in the first cache
 // Costs of one member, in units of merging one level into one member (motion.hpp): that takes some 0.5 ns, a two-level scan
-// with derivatives some 0.5 us and 15 ns a point, a member of a flop in closed form 0.4 ns a point (dynamics_bench).
-constexpr double kScanCost = 1000, kScanPointCost = 30, kFlopPointCost = 1;
+// with derivatives some 0.3 us and 5 ns a point, a member of a flop in closed form 0.7 ns a point on an even grid and 3 ns on
+// another (bench_dynamics).
+constexpr double kScanCost = 600, kScanPointCost = 10, kEvenPointCost = 1.4, kPointCost = 6;
 
 /// A scan of either kind: `point` holds lengths or detunings, `other` the dead time or the pulse length.
 struct Scan {
@@ -201,7 +202,8 @@ Status add_part(const Rates& rates, const Ensemble& ensemble, const Part& part, 
   demand.excited = part.start.prepared == Prepared::excited;
   const bool closed = closed_form(rates, ensemble, scan, out, demand.longest_s);
   const double points = static_cast<double>(scan.point.size());
-  demand.cost = closed ? kFlopPointCost * points : kScanCost + kScanPointCost * points;
+  demand.cost = kScanCost + kScanPointCost * points;
+  if (closed) demand.cost = (find_grid(scan.point).even ? kEvenPointCost : kPointCost) * points;
   if (!closed || ensemble.kind != Kind::spread) {
     const Status status = choose_members(ensemble, demand, workspace);
     if (status != Status::ok) return status;

@@ -49,7 +49,7 @@ struct Ensemble {
   std::span<const Mode> modes;     // thermal: at least one
 };
 
-/// Members beyond which an ensemble is not averaged: some 800 cycles in a cloud, 1800 rad of detuning's or coupling's spread.
+/// Members beyond which an ensemble is not averaged: 2000 cycles in a cloud, a = 1900 of a Gaussian spread.
 inline constexpr std::size_t kMostMembers = 4096;
 /// The same for the levels of one mode, or the product of two modes' members: 2300 mean phonons.
 inline constexpr std::size_t kMostLevels = 65536;

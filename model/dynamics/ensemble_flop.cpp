@@ -4,6 +4,7 @@
 #include <algorithm>
 #include <cmath>
 
+#include "model/dynamics/four.hpp"
 #include "model/quantity/clones.hpp"
 #include "model/quantity/elementary.hpp"
 
@@ -68,32 +69,24 @@ HALFTURN_CLONES void turn_lanes(const double* frequency, double t, std::size_t c
   }
 }
 
-HALFTURN_CLONES FlopSums sum_lanes(const Lanes& lanes, double theta) {
-  double mean[kWidth] = {}, by_theta[kWidth] = {}, by_weight[kWidth] = {}, by_scale[kWidth] = {};
+/// The sums at one length; then turns each member on by a step.
+HALFTURN_CLONES FlopSums sum_and_advance(const Lanes& lanes, double theta) {
+  Four mean[2] = {}, by_theta[2] = {}, by_weight[2] = {}, by_scale[2] = {};
   for (std::size_t i = 0; i < lanes.count; i += kWidth)
-    for (std::size_t j = 0; j < kWidth; ++j) {
-      const double cosine = lanes.cosine[i + j], sine = lanes.sine[i + j];
-      mean[j] += lanes.weight[i + j] * cosine;
-      by_weight[j] += lanes.by_weight[i + j] * cosine;
-      by_theta[j] += lanes.scaled[i + j] * sine;
-      by_scale[j] += lanes.by_scaled[i + j] * sine;
+    for (std::size_t half = 0; half < 2; ++half) {
+      const std::size_t j = i + 4 * half;
+      const Four cosine = four(lanes.cosine + j), sine = four(lanes.sine + j);
+      mean[half] += four(lanes.weight + j) * cosine;
+      by_weight[half] += four(lanes.by_weight + j) * cosine;
+      by_theta[half] += four(lanes.scaled + j) * sine;
+      by_scale[half] += four(lanes.by_scaled + j) * sine;
+      const Four step_cosine = four(lanes.step_cosine + j), step_sine = four(lanes.step_sine + j);
+      four(lanes.cosine + j) = cosine * step_cosine - sine * step_sine;
+      four(lanes.sine + j) = cosine * step_sine + sine * step_cosine;
     }
-  FlopSums sums{1, 0, 0};
-  for (std::size_t j = 0; j < kWidth; ++j) {
-    sums.fall -= mean[j];
-    sums.by_theta += by_theta[j];
-    sums.by_parameter += theta * by_scale[j] - by_weight[j];
-  }
-  return sums;
-}
-
-HALFTURN_CLONES void advance_lanes(double* cosine, double* sine, const double* step_cosine, const double* step_sine,
-                                   std::size_t count) {
-  for (std::size_t j = 0; j < count; ++j) {
-    const double c = cosine[j], s = sine[j];
-    cosine[j] = c * step_cosine[j] - s * step_sine[j];
-    sine[j] = c * step_sine[j] + s * step_cosine[j];
-  }
+  const Four sum_weight = by_weight[0] + by_weight[1], sum_scale = by_scale[0] + by_scale[1];
+  const Four sum_mean = mean[0] + mean[1], sum_theta = by_theta[0] + by_theta[1];
+  return {1 - total(sum_mean), total(sum_theta), theta * total(sum_scale) - total(sum_weight)};
 }
 
 void spread_flop(double rabi, double sigma, const double* t, std::size_t points, const FlopRows& rows) {
@@ -105,12 +98,8 @@ void members_flop(double rabi, const Members& members, const double* t, double s
   const Lanes lanes = lanes_of(rabi, members, scratch);
   if (step > 0) turn_lanes(lanes.frequency, step, lanes.count, lanes.step_cosine, lanes.step_sine);
   for (std::size_t k = 0; k < points; ++k) {
-    if (step > 0 && k % kRestart != 0) {
-      advance_lanes(lanes.cosine, lanes.sine, lanes.step_cosine, lanes.step_sine, lanes.count);
-    } else {
-      turn_lanes(lanes.frequency, t[k], lanes.count, lanes.cosine, lanes.sine);
-    }
-    const FlopSums sums = sum_lanes(lanes, rabi * t[k]);
+    if (step <= 0 || k % kRestart == 0) turn_lanes(lanes.frequency, t[k], lanes.count, lanes.cosine, lanes.sine);
+    const FlopSums sums = sum_and_advance(lanes, rabi * t[k]);
     rows.fall[k] = sums.fall;
     rows.by_theta[k] = sums.by_theta;
     rows.by_parameter[k] = sums.by_parameter;

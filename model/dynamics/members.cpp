@@ -51,7 +51,7 @@ std::size_t gaussian_size(double phase) {
 }
 
 /// Points that keep errors below 2e-11 of cos(phase x) and 1e-10 of its derivative by the exponent: fitted to the least numbers
-/// found for sigma/w = 0.001 to 3 and phases from 0.1 to 300 (members_test checks them against dense sums).
+/// found for sigma/w = 0.001 to 3 and phases from 0.1 to 300 (ensemble_test checks them against dense sums).
 std::size_t cloud_size(double phase, double power_ratio, double width) {
   const double root = std::sqrt(power_ratio), points = 16 + 0.32 * root * width * phase + 6 * (root - 1);
   return static_cast<std::size_t>(8 * std::ceil(std::min(points, 1e6) / 8));  // eights: the rule is kept between calls

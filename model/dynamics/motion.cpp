@@ -6,6 +6,7 @@
 #include <limits>
 #include <numbers>
 
+#include "model/dynamics/four.hpp"
 #include "model/quantity/clones.hpp"
 
 namespace halfturn::dynamics::detail {
@@ -95,21 +96,18 @@ void multiply(const WeightedCouplings& a, const WeightedCouplings& b, WeightedCo
 /// One term of the moments: sums of weights times now, with (before, now) carried on to the next Chebyshev polynomial.
 HALFTURN_CLONES Moments next_moment(const double* u, double* before, double* now, const double* weight, const double* by_weight,
                                     std::size_t count) {
-  double sum[kWidth] = {}, by_sum[kWidth] = {};
+  Four sum[2] = {}, by_sum[2] = {};
   for (std::size_t i = 0; i < count; i += kWidth)
-    for (std::size_t j = 0; j < kWidth; ++j) {
-      const double value = now[i + j], next = 2 * u[i + j] * value - before[i + j];
-      sum[j] += weight[i + j] * value;
-      by_sum[j] += by_weight[i + j] * value;
-      before[i + j] = value;
-      now[i + j] = next;
+    for (std::size_t half = 0; half < 2; ++half) {
+      const std::size_t j = i + 4 * half;
+      const Four value = four(now + j);
+      sum[half] += four(weight + j) * value;
+      by_sum[half] += four(by_weight + j) * value;
+      four(now + j) = 2 * four(u + j) * value - four(before + j);
+      four(before + j) = value;
     }
-  Moments total{0, 0};
-  for (std::size_t j = 0; j < kWidth; ++j) {
-    total.weight += sum[j];
-    total.by_weight += by_sum[j];
-  }
-  return total;
+  const Four both = sum[0] + sum[1], by_both = by_sum[0] + by_sum[1];
+  return {total(both), total(by_both)};
 }
 
 HALFTURN_CLONES void add_moment(const double* u, double* before, double* now, Moments moment, std::size_t count, double* weight,

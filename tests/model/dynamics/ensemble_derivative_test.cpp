@@ -1,4 +1,5 @@
 // SPDX-License-Identifier: Apache-2.0
+#include <algorithm>
 #include <cmath>
 
 #include "tests/model/dynamics/ensemble_support.hpp"
@@ -93,4 +94,54 @@ TEST_CASE("derivatives of mean scans are those of their populations") {
               for (double& value : expected) value = -value;
             compare(found.rows[6], expected, 4e-8);
           }
+}
+
+// Over 40 cycles differences would need small steps. Closed forms, of the spread's mean exp(-(s theta)^2/2) cos theta and, for a
+// cloud's mean C(theta), theta C' = kappa (cos theta - C) by parts, serve instead.
+TEST_CASE("derivatives of mean flops hold over many cycles") {
+  EnsembleWorkspace workspace;
+  std::vector<double> axis;
+  for (int k = 1; k <= 1000; ++k) axis.push_back(0.25 * k);
+  const double longest = axis.back();
+  for (bool damping : {false, true}) {  // with derivatives by a damping, closed forms do not serve
+    for (double s : {0.002, 0.02, 0.1}) {
+      const auto found = tests::mean_scan({1, 0, 0, 0, 0}, {Kind::spread, s, false, {}}, {}, axis, 0, false, damping, workspace);
+      for (std::size_t k = 0; k < axis.size(); k += 7) {
+        const double t = axis[k], size = std::exp(-0.5 * s * s * t * t);
+        const double slope = 0.5 * size * (std::sin(t) + s * s * t * std::cos(t));
+        INFO("spread " << s << " at " << t << " damping " << damping);
+        CHECK(found.rows[6][k] == Approx(slope).margin(1e-9).epsilon(0));
+        CHECK(found.rows[1][k] == Approx(t * slope).margin(1e-9 * longest).epsilon(0));
+        CHECK(found.rows[7][k] == Approx(0.5 * size * s * t * t * std::cos(t)).margin(1e-9 * longest).epsilon(0));
+      }
+    }
+    for (double ratio : {0.05, 0.3, 0.8}) {
+      const double kappa = 0.5 / (ratio * ratio);
+      const auto found = tests::mean_scan({1, 0, 0, 0, 0}, {Kind::cloud, ratio, false, {}}, {}, axis, 0, false, damping, workspace);
+      for (std::size_t k = 0; k < axis.size(); k += 7) {
+        const double t = axis[k], mean = 1 - 2 * found.rows[0][k], slope = -0.5 * kappa * (std::cos(t) - mean) / t;
+        INFO("cloud " << ratio << " at " << t << " damping " << damping);
+        CHECK(found.rows[6][k] == Approx(slope).margin(1e-9 * std::max(1.0, kappa / t)).epsilon(0));
+        CHECK(found.rows[1][k] == Approx(t * slope).margin(1e-9 * std::max(longest, kappa)).epsilon(0));
+      }
+    }
+  }
+}
+
+// Levels one by one on a short scan, merged on a long one.
+TEST_CASE("derivatives of thermal flops are the same by levels and by merged members") {
+  EnsembleWorkspace workspace;
+  std::vector<double> axis;
+  for (int k = 0; k < 2000; ++k) axis.push_back(0.05 * k);
+  const std::vector<double> few = {axis[40], axis[1999], axis[777]};
+  const Mode mode{0.15, 1, 1};
+  const Ensemble ensemble{Kind::thermal, 15.0, false, {&mode, 1}};
+  const auto many = tests::mean_scan({1, 0, 0, 0, 0}, ensemble, {}, axis, 0, false, false, workspace);
+  CHECK(workspace.members.size() < 200);
+  const auto one = tests::mean_scan({1, 0, 0, 0, 0}, ensemble, {}, few, 0, false, false, workspace);
+  CHECK(workspace.members.size() > 400);
+  const std::size_t at[] = {40, 1999, 777};
+  for (int row : {0, 1, 6, 7})
+    for (std::size_t k = 0; k < 3; ++k)
+      CHECK(many.rows[row][at[k]] == Approx(one.rows[row][k]).margin(row == 1 ? 1e-8 : 1e-10).epsilon(0));
 }
