@@ -68,14 +68,14 @@ double span_of(const WeightedCouplings& levels) {
   return *high - *low;
 }
 
-/// Merges `levels` in place where that leaves fewer and costs less than the levels themselves.
+/// Merges `levels` in place where that leaves fewer, and costs less than the levels themselves or these are too many.
 void merge_where_cheaper(double phase, double cost, EnsembleWorkspace& workspace, WeightedCouplings& levels) {
   const double span = span_of(levels);
   const std::size_t points = span > 0 ? merged_size(phase, span) : 1, count = levels.size();
   if (points >= count) return;
   const double own = cost * static_cast<double>(count);
   const double after = static_cast<double>(points) * (static_cast<double>(count + points) + cost);
-  if (after >= own) return;
+  if (!(after < own) && std::isfinite(cost) && count <= kMostMembers) return;
   merge(levels, points, workspace.scratch, workspace.merged);
   levels = workspace.merged;  // copied, so that each keeps its memory
 }
@@ -201,6 +201,11 @@ Status thermal_members(const Ensemble& ensemble, const Demand& demand, EnsembleW
     // In a product each level costs what the other mode has of them.
     merge_where_cheaper(demand.coupling_phase, demand.cost + static_cast<double>(mode.size()), workspace, levels);
     merge_where_cheaper(demand.coupling_phase, demand.cost + static_cast<double>(levels.size()), workspace, mode);
+    if (levels.size() * mode.size() > kMostLevels) {
+      const double any = std::numeric_limits<double>::infinity();
+      merge_where_cheaper(demand.coupling_phase, any, workspace, levels);
+      merge_where_cheaper(demand.coupling_phase, any, workspace, mode);
+    }
     if (levels.size() * mode.size() > kMostLevels) return Status::too_many_members;
     multiply(levels, mode, workspace.product);
     levels = workspace.product;

@@ -28,7 +28,7 @@ double cloud_mean(double kappa, double phase, double angle) {
 
 double thermal_mean(double eta, double mean, double phase, double angle) {
   double sum = 0, weight = 1 / (1 + mean);
-  for (unsigned n = 0; n < 400; ++n, weight *= mean / (1 + mean))
+  for (unsigned n = 0; n < 30 * (mean + 1); ++n, weight *= mean / (1 + mean))
     sum += weight * std::cos(phase * std::exp(-0.5 * eta * eta) * std::laguerre(n, eta * eta) - angle);
   return sum;
 }
@@ -122,6 +122,19 @@ TEST_CASE("best pulses on sidebands begin at the lowest level that couples") {
   CHECK(std::isnan(best_pulse_phase({Kind::thermal, 0.0, false, {&red, 1}}, kPi, workspace).by_parameter));
   const Mode still{0.0, 1, 1};
   CHECK(std::isnan(best_pulse_phase({Kind::thermal, 1.0, false, {&still, 1}}, kPi, workspace).value));
+}
+
+// At nbar = 50 and eta = 0.2 the mean of cos(x phase - pi), computed by its plain sum, rises all the way from 0 to 3 pi.
+TEST_CASE("a best pulse that has ceased to be is not replaced by another") {
+  EnsembleWorkspace workspace;
+  const Mode mode{0.2, 0, 1};
+  CHECK(std::isnan(best_pulse_phase({Kind::thermal, 50.0, false, {&mode, 1}}, kPi, workspace).value));
+  double before = -1;
+  for (int i = 1; i <= 60; ++i) {
+    const double now = thermal_mean(0.2, 50.0, 0.05 * kPi * i, kPi);
+    CHECK(now > before);
+    before = now;
+  }
 }
 
 TEST_CASE("best pulses of no ensemble, of no width and of no angle") {

@@ -198,6 +198,32 @@ TEST_CASE("the red sideband is nbar/(nbar + 1) of the blue one") {
   }
 }
 
+// Few points once left the product of two modes' levels unmerged and then too many: nbar = 8 makes 240 times 240 of them.
+TEST_CASE("two warm modes are averaged over few points as over many") {
+  EnsembleWorkspace workspace;
+  const Mode modes[] = {{0.1, 0, 1}, {0.15, 0, 1}};
+  const Ensemble ensemble{Kind::thermal, 8.0, false, modes};
+  const auto x = carrier_couplings(0.1, 400), y = carrier_couplings(0.15, 400);
+  const auto expected = [&](double t) {
+    double sum = 0, weight = 1.0 / 9;
+    for (double factor : x) {
+      sum += weight * thermal_cosine(y, 8.0, factor * t);
+      weight *= 8.0 / 9;
+    }
+    return 0.5 - 0.5 * sum;
+  };
+  const std::vector<double> few = {3.0, 20.0};
+  const auto many = even_grid(0, 1, 101);
+  for (bool damping : {false, true}) {
+    const auto short_scan = tests::mean_scan({1, 0, 0, 0, 0}, ensemble, {}, few, 0, false, damping, workspace);
+    const auto long_scan = tests::mean_scan({1, 0, 0, 0, 0}, ensemble, {}, many, 0, false, damping, workspace);
+    REQUIRE(short_scan.status == Status::ok);
+    REQUIRE(long_scan.status == Status::ok);
+    for (std::size_t k = 0; k < 2; ++k) CHECK(short_scan.rows[0][k] == Approx(expected(few[k])).margin(2e-10).epsilon(0));
+    for (std::size_t k : {3, 20, 100}) CHECK(long_scan.rows[0][k] == Approx(expected(many[k])).margin(2e-10).epsilon(0));
+  }
+}
+
 TEST_CASE("an ensemble without width is the two-level system") {
   EnsembleWorkspace workspace;
   Workspace plain;
