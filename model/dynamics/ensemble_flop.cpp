@@ -75,14 +75,21 @@ HALFTURN_CLONES FlopSums sum_and_advance(const Lanes& lanes, double theta) {
   for (std::size_t i = 0; i < lanes.count; i += kWidth)
     for (std::size_t half = 0; half < 2; ++half) {
       const std::size_t j = i + 4 * half;
-      const Four cosine = four(lanes.cosine + j), sine = four(lanes.sine + j);
-      mean[half] += four(lanes.weight + j) * cosine;
-      by_weight[half] += four(lanes.by_weight + j) * cosine;
-      by_theta[half] += four(lanes.scaled + j) * sine;
-      by_scale[half] += four(lanes.by_scaled + j) * sine;
-      const Four step_cosine = four(lanes.step_cosine + j), step_sine = four(lanes.step_sine + j);
-      four(lanes.cosine + j) = cosine * step_cosine - sine * step_sine;
-      four(lanes.sine + j) = cosine * step_sine + sine * step_cosine;
+      Four cosine, sine, weight, weight_slope, scaled, scaled_slope, step_cosine, step_sine;
+      load(lanes.cosine + j, cosine);
+      load(lanes.sine + j, sine);
+      load(lanes.weight + j, weight);
+      load(lanes.by_weight + j, weight_slope);
+      load(lanes.scaled + j, scaled);
+      load(lanes.by_scaled + j, scaled_slope);
+      load(lanes.step_cosine + j, step_cosine);
+      load(lanes.step_sine + j, step_sine);
+      mean[half] += weight * cosine;
+      by_weight[half] += weight_slope * cosine;
+      by_theta[half] += scaled * sine;
+      by_scale[half] += scaled_slope * sine;
+      store(cosine * step_cosine - sine * step_sine, lanes.cosine + j);
+      store(cosine * step_sine + sine * step_cosine, lanes.sine + j);
     }
   const Four sum_weight = by_weight[0] + by_weight[1], sum_scale = by_scale[0] + by_scale[1];
   const Four sum_mean = mean[0] + mean[1], sum_theta = by_theta[0] + by_theta[1];

@@ -100,11 +100,16 @@ HALFTURN_CLONES Moments next_moment(const double* u, double* before, double* now
   for (std::size_t i = 0; i < count; i += kWidth)
     for (std::size_t half = 0; half < 2; ++half) {
       const std::size_t j = i + 4 * half;
-      const Four value = four(now + j);
-      sum[half] += four(weight + j) * value;
-      by_sum[half] += four(by_weight + j) * value;
-      four(now + j) = 2 * four(u + j) * value - four(before + j);
-      four(before + j) = value;
+      Four value, argument, last, share, share_slope;
+      load(now + j, value);
+      load(u + j, argument);
+      load(before + j, last);
+      load(weight + j, share);
+      load(by_weight + j, share_slope);
+      sum[half] += share * value;
+      by_sum[half] += share_slope * value;
+      store(2 * argument * value - last, now + j);
+      store(value, before + j);
     }
   const Four both = sum[0] + sum[1], by_both = by_sum[0] + by_sum[1];
   return {total(both), total(by_both)};
