@@ -66,8 +66,9 @@ class Workspace {
 };
 
 /// The outcome of one parameter set: not_finite where any output is not a finite number, which happens for rates or
-/// lengths that are not finite, for negative decay, loss or dephasing (outputs are NaN), and where numbers overflow.
-enum class Status : unsigned char { ok, not_finite };
+/// lengths that are not finite, for negative decay, loss or dephasing (outputs are NaN), and where numbers overflow. too_many_members is an outcome of
+/// ensembles alone (ensemble.hpp).
+enum class Status : unsigned char { ok, not_finite, too_many_members };
 
 /// The population seen after a pulse of each length of a scan, for each parameter set, with derivatives.
 /// Given: `length_s`, the commanded lengths (s, any order), common to the batch; `dead_time_s`, one a set (s, either sign),

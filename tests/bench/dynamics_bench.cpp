@@ -5,6 +5,7 @@
 #include <string>
 #include <vector>
 
+#include "model/dynamics/ensemble.hpp"
 #include "model/dynamics/two_level.hpp"
 
 using namespace halfturn::dynamics;
@@ -79,6 +80,64 @@ void detuning(benchmark::State& state, const Case& c) {
     benchmark::ClobberMemory();
   }
 }
+
+const Mode kCarrier[] = {{0.1, 0, 1}}, kTwoModes[] = {{0.1, 0, 1}, {0.08, 0, 0.5}};
+
+const std::vector<std::pair<std::string, Ensemble>> kEnsembles = {
+    {"spread", {Ensemble::Kind::spread, 0.03, false, {}}},
+    {"doppler", {Ensemble::Kind::doppler, 0.05 * kRabi, false, {}}},
+    {"cloud", {Ensemble::Kind::cloud, 0.3, false, {}}},
+    {"thermal_5", {Ensemble::Kind::thermal, 5, false, kCarrier}},
+    {"thermal_50", {Ensemble::Kind::thermal, 50, false, kCarrier}},
+    {"thermal_two_modes", {Ensemble::Kind::thermal, 5, false, kTwoModes}},
+};
+
+/// Each evaluation has another coupling and parameter, as in a fit.
+template <class Scan>
+void mean(benchmark::State& state, const Case& c, const Ensemble& ensemble, const std::vector<double>& axis, double other,
+          const Scan& scan) {
+  Memory memory(c);
+  std::vector<double> by_parameter(kPoints);
+  EnsembleWorkspace workspace;
+  Rates rates = c.rates;
+  Ensemble now = ensemble;
+  rates.rabi *= 1.01;
+  now.parameter *= 1.01;
+  for (auto _ : state) {
+    rates.rabi = 2 * c.rates.rabi - rates.rabi;
+    now.parameter = 2 * ensemble.parameter - now.parameter;
+    scan(rates, now, {}, axis, other, memory.out, by_parameter, memory.status, workspace);
+    benchmark::DoNotOptimize(memory.values.data());
+    benchmark::ClobberMemory();
+  }
+  if (memory.status != Status::ok) state.SkipWithError("not evaluated");
+}
+
+void best_pulse(benchmark::State& state, const Ensemble& ensemble) {
+  EnsembleWorkspace workspace;
+  for (auto _ : state) benchmark::DoNotOptimize(best_pulse_phase(ensemble, 3.141592653589793, workspace));
+}
+
+const bool kEnsemblesRegistered = [] {
+  const auto even = grid(true, 0, 50e-6), random = grid(false, 0, 50e-6), axis = grid(true, -3 * kRabi, 3 * kRabi);
+  for (const auto& [name, ensemble] : kEnsembles) {
+    const auto add = [&, name = name, ensemble = ensemble](const std::string& kind, const Case& c, const std::vector<double>& x,
+                                                          double other, auto scan) {
+      benchmark::RegisterBenchmark((kind + "/" + name + "/" + c.name).c_str(), [=, &c](benchmark::State& s) {
+        mean(s, c, ensemble, x, other, scan);
+      });
+    };
+    add("mean_duration_even", kCases[0], even, 0.1e-6, ensemble_duration_scan);
+    add("mean_duration_random", kCases[0], random, 0.1e-6, ensemble_duration_scan);
+    add("mean_duration_even", kCases[1], even, 0.1e-6, ensemble_duration_scan);
+    add("mean_duration_even", kCases[2], even, 0.1e-6, ensemble_duration_scan);
+    add("mean_detuning", kCases[0], axis, 5e-6, ensemble_detuning_scan);
+    benchmark::RegisterBenchmark(("best_pulse/" + name).c_str(), [ensemble = ensemble](benchmark::State& s) {
+      best_pulse(s, ensemble);
+    });
+  }
+  return true;
+}();
 
 const bool kRegistered = [] {
   for (const Case& c : kCases) {

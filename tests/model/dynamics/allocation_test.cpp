@@ -3,6 +3,7 @@
 #include <cstdlib>
 #include <new>
 
+#include "tests/model/dynamics/ensemble_support.hpp"
 #include "tests/model/dynamics/reference_table.hpp"
 #include "tests/support/catch.hpp"
 
@@ -44,4 +45,44 @@ TEST_CASE("a warm evaluation takes nothing from the heap") {
   CHECK(during == 0);
   CHECK(before > 0);  // the counter counts
   CHECK(sum > 0);
+}
+
+TEST_CASE("a warm evaluation of an ensemble takes nothing from the heap") {
+  using Kind = Ensemble::Kind;
+  const Mode modes[] = {{0.1, 0, 1}, {0.15, 1, 0.7}};
+  const std::vector<Ensemble> ensembles = {{Kind::spread, 0.1, false, {}},
+                                           {Kind::doppler, 0.2, false, {}},
+                                           {Kind::cloud, 0.3, false, {}},
+                                           {Kind::thermal, 5, false, std::span(modes, 1)},
+                                           {Kind::thermal, 2, false, modes}};
+  const std::vector<Rates> cases = {{2, 0, 0, 0, 0}, {2, 0.7, 0.2, 0.3, 0.1}};
+  std::vector<double> axis, rows[7];
+  for (int k = 0; k < 200; ++k) axis.push_back(0.1 * k);
+  std::vector<double> by_parameter(axis.size());
+  const auto all = tests::spans(rows, axis.size());
+  Derivatives undamped = all;
+  for (int rate : {kByDecay, kByLoss, kByDephasing}) undamped.by_rate[rate] = {};
+  EnsembleWorkspace workspace;
+  const Start start{Prepared::ground, 0.05, LostReads::dark};
+  const auto evaluate = [&] {
+    int good = 0;
+    for (const Ensemble& ensemble : ensembles)
+      for (const Rates& rates : cases) {
+        Status status{};
+        const Derivatives& out = rates.decay == 0 ? undamped : all;
+        ensemble_duration_scan(rates, ensemble, start, axis, 0.1, out, by_parameter, status, workspace);
+        good += status == Status::ok;
+        ensemble_detuning_scan(rates, ensemble, start, axis, 2.0, out, by_parameter, status, workspace);
+        good += status == Status::ok;
+        good += best_pulse_phase(ensemble, 3.0, workspace).value > 0;
+      }
+    return good;
+  };
+  const int first = evaluate();
+  const long before = allocations;
+  const int second = evaluate();
+  const long during = allocations - before;
+  CHECK(first == 30);
+  CHECK(second == 30);
+  CHECK(during == 0);
 }

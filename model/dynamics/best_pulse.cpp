@@ -1,0 +1,119 @@
+// SPDX-License-Identifier: Apache-2.0
+#include <algorithm>
+#include <cmath>
+#include <limits>
+
+#include "model/dynamics/ensemble.hpp"
+#include "model/dynamics/members.hpp"
+#include "model/dynamics/motion.hpp"
+
+namespace halfturn::dynamics {
+namespace {
+
+using namespace detail;
+using Kind = Ensemble::Kind;
+
+constexpr double kNaN = std::numeric_limits<double>::quiet_NaN();
+constexpr OfParameter kNone{kNaN, kNaN};
+
+/// First and second derivative of the mean of cos(x phase - angle) by the phase, and of the first by the parameter.
+struct Slopes {
+  double first, second, first_by_parameter;
+};
+
+Slopes slopes(const Members& members, double phase, double angle) {
+  Slopes sum{0, 0, 0};
+  for (std::size_t i = 0; i < members.size(); ++i) {
+    const double x = members.scale[i], w = members.weight[i], turned = x * phase - angle;
+    const double sine = std::sin(turned), cosine = std::cos(turned);
+    sum.first -= w * x * sine;
+    sum.second -= w * x * x * cosine;
+    sum.first_by_parameter -= members.by_weight[i] * x * sine + w * members.by_scale[i] * (sine + x * phase * cosine);
+  }
+  return sum;
+}
+
+/// exp(-(s phase)^2/2) cos(phase - angle) is largest where tan(phase - angle) = -s^2 phase; phase + atan(s^2 phase) grows
+/// everywhere, so the root is the only one within a quarter turn of the angle.
+OfParameter spread_phase(double s, double angle) {
+  const double s2 = s * s;
+  double phase = angle;
+  for (int step = 0; step < 60; ++step) {
+    const double bend = s2 * phase, change = (phase - angle + std::atan(bend)) / (1 + s2 / (1 + bend * bend));
+    phase = std::max(phase - change, 0.0);
+    if (std::abs(change) <= 1e-15 * angle) break;
+  }
+  const double stretch = 1 + s2 * s2 * phase * phase;
+  return {phase, -2 * s * phase / (stretch + s2)};
+}
+
+/// The maximum near `guess`, by Newton's method; NaN where it leaves the guess by more than a tenth or finds no maximum.
+double climb(const Members& members, double angle, double guess) {
+  double phase = guess;
+  for (int step = 0; step < 30; ++step) {
+    const Slopes at = slopes(members, phase, angle);
+    if (!(at.second < 0)) return kNaN;
+    const double change = -at.first / at.second;
+    phase += change;
+    if (!(std::abs(phase - guess) <= 0.1 * guess)) return kNaN;
+    if (std::abs(change) <= 1e-14 * phase) return phase;
+  }
+  return kNaN;
+}
+
+/// Follows the maximum from a parameter near 0 to the ensemble's, in steps as long as it allows.
+OfParameter follow(const Ensemble& ensemble, double angle, double phase, EnsembleWorkspace& workspace) {
+  Ensemble now = ensemble;
+  now.parameter = std::min(ensemble.parameter, 1e-6);
+  Demand demand;
+  const auto choose = [&](double parameter) {
+    now.parameter = parameter;
+    demand.coupling_phase = 1.5 * phase;
+    return choose_members(now, demand, workspace) == Status::ok;
+  };
+  if (!choose(now.parameter)) return kNone;
+  double reached = now.parameter, step = ensemble.parameter - reached;
+  phase = climb(workspace.members, angle, phase);
+  Slopes at = slopes(workspace.members, phase, angle);
+  while (reached < ensemble.parameter) {
+    const double next = std::min(reached + step, ensemble.parameter), rate = -at.first_by_parameter / at.second;
+    const double guess = phase + rate * (next - reached);
+    if (!choose(next)) return kNone;
+    const double found = guess > 0.7 * phase && guess < 1.3 * phase ? climb(workspace.members, angle, guess) : kNaN;
+    if (std::isfinite(found)) {
+      phase = found;
+      reached = next;
+      step *= 2;
+      at = slopes(workspace.members, phase, angle);
+    } else {
+      step *= 0.5;
+      if (!(step > 1e-6 * reached)) return kNone;
+    }
+  }
+  return {phase, -at.first_by_parameter / at.second};
+}
+
+}  // namespace
+
+OfParameter best_pulse_phase(const Ensemble& ensemble, double angle_rad, EnsembleWorkspace& workspace) {
+  if (!valid(ensemble) || !(angle_rad >= 0) || !std::isfinite(angle_rad)) return kNone;
+  if (ensemble.kind == Kind::none || ensemble.kind == Kind::doppler || angle_rad == 0) return {angle_rad, 0};
+  if (ensemble.kind == Kind::spread) return spread_phase(ensemble.parameter, angle_rad);
+  const double lowest = ensemble.kind == Kind::thermal ? lowest_coupling(ensemble, workspace) : 1;
+  if (!(lowest > 0)) return kNone;
+  const OfParameter found = follow(ensemble, angle_rad, angle_rad / lowest, workspace);
+  return std::isfinite(found.value) && std::isfinite(found.by_parameter) ? found : kNone;
+}
+
+OfParameter mean_coupling(const Ensemble& ensemble, EnsembleWorkspace& workspace) {
+  if (!valid(ensemble)) return kNone;
+  if (ensemble.kind == Kind::cloud) {  // kappa/(kappa + 1)
+    const CloudExponent q = cloud_exponent(ensemble);
+    const double mean = 1 / (1 + q.value);
+    return {mean, -q.by_parameter * mean * mean};
+  }
+  if (ensemble.kind == Kind::thermal) return mean_thermal_coupling(ensemble, workspace);
+  return {1, 0};
+}
+
+}  // namespace halfturn::dynamics
