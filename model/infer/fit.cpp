@@ -4,6 +4,7 @@
 #include <algorithm>
 #include <cmath>
 
+#include "model/infer/monotone.hpp"
 #include "model/infer/solution.hpp"
 
 namespace halfturn::infer {
@@ -145,6 +146,9 @@ void fit_one(const ScanBatch& scan, std::size_t site, const Prior& prior, const 
   }
   fit_under(scan, readout, prior, options, fit, work);
   fit.prior = reconciled(scan, readout, prior, options, fit, work);
+  if (fit.outcome == FitOutcome::fitted) return;
+  const auto monotone = monotone_half_deviance(readout, scan.axis);
+  fit.quality.monotone_gain = 2.0 * (monotone.flat - std::min(monotone.rising, monotone.falling));
 }
 
 }  // namespace

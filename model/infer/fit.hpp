@@ -61,6 +61,7 @@ struct FitQuality {
   double cycles = kUnknown;         // seen within the span, lower end of the interval; duration scans
   double over_flat = kUnknown;      // deviance gained over a flat line, scatter counted
   double over_monotone = kUnknown;  // over the best monotone curve of any shape, scatter counted
+  double monotone_gain = kUnknown;  // deviance that the best monotone curve gains over a flat line; where nothing could be fitted
   double range_low = kUnknown, range_high = kUnknown;  // rad/s: what the sampling and `expect` allow
   double line_width = kUnknown;     // rad/s, full width at half maximum; detuning scans
   int points = 0;                   // measured

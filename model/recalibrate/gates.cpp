@@ -55,6 +55,19 @@ void evidence_gates(const infer::Fit& fit, const Context& context, Reasons& reas
   }
 }
 
+/// From every starting point the fit ran away: there is nothing to be fitted, flat or monotone.
+void nothing_fitted(const infer::Fit& fit, const Context& context, Reasons& reasons) {
+  const bool line = fit.axis == infer::Axis::detuning;
+  const std::string what = line ? "line" : "oscillation";
+  if (fit.quality.monotone_gain >= context.accept.min_evidence)
+    return refuse(reasons, "monotone",
+                  "No " + what + " could be fitted; a curve that only rises or only falls describes the scan. " +
+                      (line ? "Widen the window so that both sides of the line are in it." : "Scan to longer pulses so that a whole cycle is seen."));
+  refuse(reasons, line ? "no_line" : "no_oscillation",
+         "No " + what + " could be fitted: from every starting point the fit ran away. Look whether the light reaches the atoms, whether atoms are "
+         "there, and whether the carrier is on the line; then scan again with more shots.");
+}
+
 void rival_gate(const infer::Fit& fit, const Context& context, Reasons& reasons) {
   const auto& quality = fit.quality;
   if (!quality.rival || quality.rival->deviance_above >= context.accept.rival_margin) return;
@@ -131,10 +144,7 @@ void fit_gates(const infer::Fit& fit, const Context& context, Reasons& reasons) 
     return refuse(reasons, "too_few_points",
                   "Only " + std::to_string(quality.points) + " measured points at " + std::to_string(fit.sampling.distinct) +
                       " different places: at least 7 at 5 are needed. Scan more points.");
-  if (fit.outcome == infer::FitOutcome::not_converged)
-    return refuse(reasons, "no_fit",
-                  "No model could be fitted: from every starting point the fit ran away. The scan holds no oscillation or line that "
-                  "could be told; look at the raw points, then scan again with more shots.");
+  if (fit.outcome == infer::FitOutcome::not_converged) return nothing_fitted(fit, context, reasons);
   evidence_gates(fit, context, reasons);
   if (poor(quality, context.accept))
     refuse(reasons, "poor_fit",

@@ -97,7 +97,7 @@ TEST_CASE("refusals name their reason and leave the pulses alone") {
     bench.prior.contrast.reset();
     const auto decision = bench.flop(0);
     CHECK(decision.verdict == Verdict::refuse);
-    CHECK((says(decision, "no_oscillation") || says(decision, "no_fit")));
+    CHECK(says(decision, "no_oscillation"));
   }
   SECTION("less than a cycle") {
     const auto decision = bench.flop(0, 4e-6, 30);
@@ -105,7 +105,7 @@ TEST_CASE("refusals name their reason and leave the pulses alone") {
     for (const auto& reason : decision.reasons) said += reason.code + ": " + reason.text + "\n";
     INFO(said);
     CHECK(decision.verdict == Verdict::refuse);
-    CHECK((says(decision, "too_few_cycles") || says(decision, "monotone")));
+    CHECK(says(decision, "monotone"));  // half a cycle only rises
   }
   SECTION("outside expect") {
     bench.prior.expect = bench.context.expect = infer::Expected{kTwoPi * 10e3, kTwoPi * 60e3};
