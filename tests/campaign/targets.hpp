@@ -1,0 +1,14 @@
+// SPDX-License-Identifier: Apache-2.0
+#pragma once
+#include <string>
+#include <vector>
+
+#include "tests/campaign/report.hpp"
+
+/// What the campaign must show, each band widened to where chance alone would take it once in a million.
+namespace halfturn::campaign {
+
+/// A sentence for every figure outside its band; empty: all is well.
+std::vector<std::string> failures(const Result& result);
+
+}  // namespace halfturn::campaign
