@@ -66,14 +66,19 @@ std::size_t edit_distance(std::string_view a, std::string_view b) {
   return row.back();
 }
 
-/// The three nearest full names, each in quotes.
+/// The three nearest full names, each in quotes; where some begin as the name does, or with its species, those alone.
 std::string near_names(const std::string& name, std::span<const CatalogueLine> lines) {
+  const std::string species = name.substr(0, name.find(' ')) + " ";
   std::vector<std::pair<std::size_t, std::string>> ranked;
-  for (const auto& known : names(lines)) ranked.emplace_back(edit_distance(name, known), "'" + known + "'");
+  for (const auto& known : names(lines)) {
+    const bool begins_alike = known.starts_with(name) || known.starts_with(species);
+    ranked.emplace_back(edit_distance(name, known) + (begins_alike ? 0 : kLongestName), "'" + known + "'");
+  }
   std::stable_sort(ranked.begin(), ranked.end(), [](const auto& a, const auto& b) { return a.first < b.first; });
   std::vector<std::string> best;
   for (const auto& [distance, known] : ranked) {
-    if (best.size() < 3) best.push_back(known);
+    const bool is_far = distance >= kLongestName && ranked.front().first < kLongestName;
+    if (best.size() < 3 && !is_far) best.push_back(known);
   }
   return best.empty() ? "the catalogue is empty" : "near names are " + joined(best, ", ");
 }

@@ -4,7 +4,12 @@
 #include <CLI/App.hpp>
 #include <CLI/Config.hpp>
 #include <CLI/Formatter.hpp>
+#include <algorithm>
+#include <array>
 #include <memory>
+#include <optional>
+#include <string_view>
+#include <vector>
 
 #include "plugin/cli/check.hpp"
 #include "plugin/cli/drift.hpp"
@@ -14,6 +19,7 @@
 #include "plugin/cli/status.hpp"
 #include "plugin/cli/version.hpp"
 #include "plugin/rehearse/rehearse.hpp"
+#include "plugin/wire/words.hpp"
 
 namespace halfturn::cli {
 
@@ -148,11 +154,27 @@ std::string help_for(const CLI::App& app) {
   return "halfturn --help";
 }
 
+constexpr std::array<std::string_view, 3> kLater = {"refit", "next", "keygen"};
+
+/// What is wrong with the first word, where it is no command.
+std::optional<std::string> no_command(const CLI::App& app, std::string_view word) {
+  if (word.empty() || word.front() == '-') return std::nullopt;
+  std::vector<std::string> names;
+  for (const auto* sub : app.get_subcommands([](const CLI::App*) { return true; })) names.push_back(sub->get_name());
+  if (std::find(names.begin(), names.end(), word) != names.end()) return std::nullopt;
+  if (std::find(kLater.begin(), kLater.end(), word) != kLater.end())
+    return "`" + std::string(word) + "` is not available in this version";
+  const std::vector<std::string_view> known(names.begin(), names.end());
+  return "found " + wire::in_quotes(word) + ", which is no command: the nearest is `" + std::string(wire::nearest(word, known)) + "`";
+}
+
 }  // namespace
 
 std::variant<Command, Notice> read_arguments(int argc, const char* const* argv) {
   auto parser = std::make_shared<Parser>();
   auto& app = parser->app;
+  if (const auto wrong = no_command(app, argc > 1 ? argv[1] : ""))
+    return Notice{"halfturn: " + *wrong + "\nTry `halfturn --help`.\n", kBadInput};
   try {
     app.parse(argc, argv);
   } catch (const CLI::CallForVersion& version) {

@@ -1,8 +1,10 @@
 // SPDX-License-Identifier: Apache-2.0
 #include "plugin/cli/intensity.hpp"
 
+#include <algorithm>
 #include <cmath>
 #include <nlohmann/json.hpp>
+#include <string_view>
 #include <vector>
 
 #include "model/atom/light.hpp"
@@ -80,10 +82,32 @@ void print(const atom::Transition& transition, const atom::LightReport& light, S
   rows.push_back({"Bloch-Siegert", engineering(light.bloch_siegert_hz, "Hz", 3), "shift of the line"});
   streams.out << streams.style.strong(transition.name) << ", " << details(transition) << "\n\n" << table(rows, "  ");
   for (const auto& assumed : transition.assumed) streams.out << wrapped(assumed, "  assumed: ");
-  for (const auto& source : transition.sources) streams.out << wrapped(source, "  source: ");
+  for (const auto& source : sources_once(transition.sources)) streams.out << wrapped(source, "  source: ");
 }
 
 }  // namespace
+
+std::vector<std::string> sources_once(const std::vector<std::string>& given) {
+  std::vector<std::string> sources;
+  for (std::string_view rest : given) {
+    while (!rest.empty()) {
+      const auto end = std::min(rest.find("; "), rest.size());
+      const std::string source(rest.substr(0, end));
+      if (std::find(sources.begin(), sources.end(), source) == sources.end()) sources.push_back(source);
+      rest.remove_prefix(std::min(end + 2, rest.size()));
+    }
+  }
+  const auto tells_more = [](const std::string& source, const std::string& base) { return source.starts_with(base + ", "); };
+  std::vector<std::string> once;
+  for (const auto& base : sources) {
+    if (std::any_of(sources.begin(), sources.end(), [&](const auto& other) { return tells_more(base, other); })) continue;
+    std::string details;
+    for (const auto& source : sources)
+      if (tells_more(source, base)) details += (details.empty() ? ": " : "; ") + source.substr(base.size() + 2);
+    once.push_back(base + details);
+  }
+  return once;
+}
 
 Exit intensity(const IntensityOptions& options, Streams& streams) {
   const auto& catalogue = config::built_in_catalogue();

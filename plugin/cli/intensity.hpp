@@ -1,5 +1,6 @@
 // SPDX-License-Identifier: Apache-2.0
 #pragma once
+#include <vector>
 #include <optional>
 #include <string>
 
@@ -17,5 +18,9 @@ struct IntensityOptions {
 
 /// Rabi frequency, field, intensity and power of a transition, each from one of them.
 Exit intensity(const IntensityOptions& options, Streams& streams);
+
+/// Each source once. A number made of several names all of them (`X; Y`), which are taken apart; a source that only says more
+/// of another (`X, table 2` beside `X`) is told with it, as `X: table 2`.
+std::vector<std::string> sources_once(const std::vector<std::string>& given);
 
 }  // namespace halfturn::cli

@@ -15,7 +15,7 @@ std::size_t width(std::string_view text);
 /// The text with blanks behind it up to `columns`.
 std::string padded(std::string text, std::size_t columns);
 
-/// Breaks a sentence at blanks so that no line is longer than kColumns, a longer word apart. The first line begins with
+/// Breaks a sentence at blanks so that no line is longer than kColumns, a longer word apart; a number keeps its unit. The first line begins with
 /// `first`, the others with as many blanks. Ends in a line feed.
 std::string wrapped(std::string_view text, std::string_view first);
 

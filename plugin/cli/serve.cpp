@@ -6,6 +6,7 @@
 #include <unistd.h>
 
 #include <cstdlib>
+#include <exception>
 #include <memory>
 #include <utility>
 
@@ -54,10 +55,18 @@ Exit serve(const ServeOptions& options, Streams& streams) {
 
   daemon::Daemon daemon(std::move(daemon_options));
   if (const auto started = daemon.start(); !started) return print_fault(streams.err, options.config, started.error()), kFailed;
-  const int status = daemon.run();
-  // A fit that outlasted the time to stop must not hold the exit; the log is as after the last commit.
-  if (daemon.in_flight() > 0) std::_Exit(status);
-  return static_cast<Exit>(status);
+  // A fit that outlasted the time to stop, or a failure, must not hold the exit; the log is as after the last commit.
+  try {
+    const int status = daemon.run();
+    // The stop is done: one more signal must not turn it into a death by signal.
+    for (const int signal : {SIGINT, SIGTERM, SIGHUP}) ::signal(signal, SIG_IGN);
+    if (daemon.in_flight() > 0) std::_Exit(status);
+    return static_cast<Exit>(status);
+  } catch (const std::exception& error) {
+    print_fault(streams.err, "", {"internal", "", std::string("the program failed: ") + error.what()});
+    streams.err << std::flush;
+    std::_Exit(kFailed);
+  }
 }
 
 }  // namespace halfturn::cli

@@ -8,34 +8,45 @@
 
 #include <algorithm>
 #include <map>
+#include <optional>
 #include <set>
 #include <sstream>
+#include <utility>
 
 #include "plugin/wire/words.hpp"
 
 namespace halfturn::config {
 namespace {
 
-struct Stop {};  // ends the parse: a limit is passed, or a second document begins
+struct Stop {};    // ends the parse: a limit is passed
+struct Second {};  // ends it at a second document: the first is complete
+
+using Spot = std::pair<int, int>;  // line and column as the parser counts them, from 0
+
+constexpr std::size_t kUnknownAliases = 20;  // the text is read anew for each
 
 /// Builds the tree from the parser's events.
 class Builder : public YAML::EventHandler {
  public:
-  Builder(Document& document, const std::vector<std::string_view>& lines, const DocumentLimits& limits)
-      : document_(document), lines_(lines), limits_(limits) {}
+  /// `aliases`: where the text had aliases without an anchor.
+  Builder(Document& document, const std::vector<std::string_view>& lines, const DocumentLimits& limits, const std::set<Spot>& aliases)
+      : document_(document), lines_(lines), limits_(limits), aliases_(aliases) {}
 
   void OnDocumentStart(const YAML::Mark& mark) override {
     if (++documents_ == 1) return;
     refuse(mark, "found a second document, or text behind the first, expected one document");
-    throw Stop{};
+    throw Second{};
   }
   void OnDocumentEnd() override {}
 
-  void OnNull(const YAML::Mark& mark, YAML::anchor_t anchor) override { leaf(Node::Kind::nothing, mark, "?", anchor, {}); }
+  void OnNull(const YAML::Mark& mark, YAML::anchor_t anchor) override {
+    if (aliases_.count({mark.line, mark.column}) > 0) return OnAlias(mark, 0);
+    leaf(Node::Kind::nothing, mark, "?", anchor, {});
+  }
 
   void OnAlias(const YAML::Mark& mark, YAML::anchor_t) override {
     refuse(mark, "found an alias (*), expected the value itself");
-    leaf(Node::Kind::nothing, mark, "?", 0, {});
+    leaf(Node::Kind::nothing, mark, "?", 0, "*");
   }
 
   void OnScalar(const YAML::Mark& mark, const std::string& tag, YAML::anchor_t anchor, const std::string& value) override {
@@ -191,6 +202,7 @@ class Builder : public YAML::EventHandler {
   Document& document_;
   const std::vector<std::string_view>& lines_;
   const DocumentLimits& limits_;
+  const std::set<Spot>& aliases_;
   std::vector<Level> open_;
   std::size_t nodes_ = 0;
   int documents_ = 0;
@@ -215,25 +227,54 @@ std::string syntax_message(const std::string& reason, std::string_view line) {
          "), expected YAML; look at brackets, quotes, colons and indentation, also above";
 }
 
-void parse(const std::string& text, const DocumentLimits& limits, Document& document) {
-  const auto lines = split_lines(text);
-  Builder builder(document, lines, limits);
+/// Puts nothing in the place of the alias at this spot, so that what stands behind can be read; false where there is none.
+bool blank_alias(const Spot& spot, const std::vector<std::string_view>& lines, std::string& text) {
+  if (spot.first < 0 || spot.second < 0 || static_cast<std::size_t>(spot.first) >= lines.size()) return false;
+  std::size_t at = static_cast<std::size_t>(spot.second);
+  for (int line = 0; line < spot.first; ++line) at += lines[static_cast<std::size_t>(line)].size() + 1;
+  if (at >= text.size() || text[at] != '*') return false;
+  text[at] = '~';
+  for (++at; at < text.size() && std::string_view(" \t\r\n,[]{}").find(text[at]) == std::string_view::npos; ++at) text[at] = ' ';
+  return true;
+}
+
+/// One reading of the text; the spot of an alias without an anchor, where one ended it.
+std::optional<Spot> parse_once(const std::string& text, const std::vector<std::string_view>& lines, const DocumentLimits& limits,
+                               const std::set<Spot>& aliases, Document& document) {
+  Builder builder(document, lines, limits, aliases);
+  std::optional<Spot> alias;
   std::istringstream stream(text);
   try {
     YAML::Parser parser(stream);
     while (parser.HandleNextDocument(builder)) {
     }
-    if (builder.documents() > 0) return;
+    if (builder.documents() > 0) return std::nullopt;
     document.faults.push_back({1, 1, "", "found nothing, expected a YAML document"});
+  } catch (const Second&) {
+    return std::nullopt;
   } catch (const Stop&) {
   } catch (const YAML::Exception& error) {
     const int line = std::max(error.mark.line, 0);
     const std::string_view there = static_cast<std::size_t>(line) < lines.size() ? lines[line] : std::string_view();
     const int column = position(there, static_cast<std::size_t>(std::max(error.mark.column, 0))).column;
     document.faults.push_back({line + 1, column, "", syntax_message(error.msg, there)});
+    if (error.msg.find("anchor") != std::string::npos) alias = Spot{error.mark.line, error.mark.column};
   }
   document.complete = false;
   builder.close_all();
+  return alias;
+}
+
+void parse(std::string text, const DocumentLimits& limits, Document& document) {
+  const std::string original = text;
+  const auto lines = split_lines(original);
+  std::set<Spot> aliases;
+  for (;;) {
+    document = Document{};
+    const auto alias = parse_once(text, lines, limits, aliases, document);
+    if (!alias || aliases.size() >= kUnknownAliases || !blank_alias(*alias, lines, text)) return;
+    aliases.insert(*alias);
+  }
 }
 
 /// Length of the UTF-8 character at the start of `text`, which is not empty; 0 where it is none, or NUL.

@@ -13,7 +13,7 @@ namespace halfturn::config {
 struct Node {
   enum class Kind { nothing, scalar, list, map };
   Kind kind = Kind::nothing;
-  std::string text;           // of a scalar, as written, never interpreted
+  std::string text;           // of a scalar, as written, never interpreted; of `nothing`, `*` where an alias stood
   bool plain = false;         // a scalar without quotation marks
   bool inline_style = false;  // a list or map in brackets or braces
   int line = 0, column = 0;   // from 1, in characters; of `nothing`, where its key stands
@@ -31,6 +31,8 @@ struct DocumentLimits {
 };
 
 /// What was read. Where the text cannot be followed to its end, the last fault says why, and `root` holds what came before.
+/// `root` is complete beside anchors, tags, duplicate keys (all of them are children), aliases (nothing in their place) and a
+/// second document (left out).
 struct Document {
   Node root;
   std::vector<Diagnosis> faults;

@@ -34,6 +34,7 @@ Place Place::operator[](std::string_view key) const {
 }
 
 void Reader::fault(const Place& at, std::string message) {
+  if (at.node->kind == Node::Kind::nothing && at.node->text == "*") return;  // an alias, which was a fault already
   faults.push_back({at.node->line, at.node->column, at.path, std::move(message)});
 }
 

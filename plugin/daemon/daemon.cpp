@@ -20,6 +20,7 @@ namespace {
 using std::chrono::steady_clock;
 
 constexpr int kMessagesARound = 64;  // of one socket before the others have their turn
+constexpr std::chrono::seconds kCommitAtStop{4};  // with the time to stop and 1 s of linger below the 20 s that systemd grants
 
 }  // namespace
 
@@ -78,7 +79,9 @@ void Daemon::reload() {
   wake_.ring();
 }
 
-bool Daemon::finished() const { return stop_at_ && (in_flight_ == 0 || steady_clock::now() >= *stop_at_); }
+bool Daemon::out_of_time() const { return stop_at_ && steady_clock::now() >= *stop_at_; }
+
+bool Daemon::finished() const { return out_of_time() || (stop_at_ && in_flight_ == 0); }
 
 void Daemon::wait_for_work() {
   std::vector<zmq::pollitem_t> items = {
@@ -112,7 +115,7 @@ void Daemon::take_signals() {
 }
 
 void Daemon::take_requests() {
-  for (int i = 0; i < kMessagesARound; ++i) {
+  for (int i = 0; i < kMessagesARound && !out_of_time(); ++i) {
     auto incoming = sockets_->take_request();
     if (!incoming) return;
     take_request(std::move(*incoming));
@@ -135,6 +138,7 @@ void Daemon::take_subscriptions() {
 void Daemon::send_settled() {
   for (auto& outgoing : outbox_.take_all()) {
     for (const auto& parcel : outgoing.replies) send(parcel.route, parcel.message);
+    for (auto& landing : outgoing.landings) answer_joined(landing.key, std::move(landing.reply));
     for (const auto& publication : outgoing.publications) publisher_->publish(publication);
     for (const auto& scan : outgoing.scans) options_.lines->info("{}", scan_line(scan));
     in_flight_ -= outgoing.jobs;
@@ -156,10 +160,17 @@ void Daemon::publish_health() {
 /// Whoever could not be served in time is told so; what is being committed at this moment is still answered.
 void Daemon::close() {
   const auto left = order_.close();
-  for (const auto& job : left)
-    if (job->route.answers) answer(job->route, stopping_error(job->route.id));
+  for (const auto& job : left) {
+    const auto error = stopping_error(job->route.id);
+    if (job->route.answers) answer(job->route, error);
+    else reject(error);
+    answer_joined(job->key, error);
+  }
   if (!left.empty()) options_.lines->warn("{} accepted requests were not decided in time", left.size());
-  ledger_.reset();
+  if (ledger_->ended_within(kCommitAtStop))
+    ledger_.reset();
+  else
+    options_.lines->error("the log did not take the last decisions in time; whoever waits for them asks again with the same id");
   send_settled();
   sockets_.reset();
   options_.lines->info("stopped");

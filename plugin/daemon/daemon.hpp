@@ -3,6 +3,7 @@
 #include <atomic>
 #include <chrono>
 #include <functional>
+#include <map>
 #include <memory>
 #include <optional>
 #include <string>
@@ -86,7 +87,9 @@ class Daemon {
   void take_request(Incoming incoming);
   void take_from_feed(Incoming incoming);
   void accept(wire::Request request, Route route);
-  void add_job(service::Task task, Route route);
+  void add_job(service::Task task, Route route, std::string key);
+  bool join(const wire::Request& request, const Route& route);
+  void answer_joined(const std::string& key, wire::Reply reply);
   std::optional<wire::Error> turned_away(const wire::Request& request) const;
   double retry_after_s() const;
   void answer(const Route& route, wire::Reply reply);
@@ -96,6 +99,7 @@ class Daemon {
 
   void begin_stopping();
   void drain_feed();
+  bool out_of_time() const;
   void take_new_configuration();
   void report_faults(const std::vector<config::Diagnosis>& faults);
   void report_differences(const config::Configuration& configuration);
@@ -116,6 +120,7 @@ class Daemon {
   std::optional<Ledger> ledger_;
   std::optional<Workers> workers_;  // ends before the ledger, which takes what it has fitted
 
+  std::map<std::string, std::vector<Route>> joined_;  // by the key of a job in flight: those who sent its request again
   std::size_t in_flight_ = 0;
   double seconds_a_job_ = 0.01;  // mean time between settled jobs, for `retry_after_s`
   Instant last_settled_;

@@ -20,8 +20,9 @@ void Daemon::begin_stopping() {
   if (stop_at_) return;
   notify("STOPPING=1\nSTATUS=Answering what was accepted");
   options_.lines->info("stopping: {} requests are still to be answered", in_flight_);
+  const auto stop_at = std::chrono::steady_clock::now() + options_.stop_within;
   drain_feed();
-  stop_at_ = std::chrono::steady_clock::now() + options_.stop_within;
+  stop_at_ = stop_at;
   service_.set_stopping();
   health_at_ = std::chrono::steady_clock::now();  // to be told at once
 }
@@ -29,9 +30,12 @@ void Daemon::begin_stopping() {
 /// What has arrived on the feed was taken from its sender, so it is accepted before the door closes.
 void Daemon::drain_feed() {
   sockets_->close_feed();
+  const auto until = std::chrono::steady_clock::now() + options_.stop_within / 4;
   for (int i = 0; i < kFeedAtStop; ++i) {
     auto incoming = sockets_->take_feed();
     if (!incoming) return;
+    if (std::chrono::steady_clock::now() >= until)
+      return reject({"", {"stopping", "", "the daemon is stopping, and what still lay on the feed was not read: send it again"}, {}});
     take_from_feed(std::move(*incoming));
   }
 }

@@ -24,6 +24,11 @@ wire::Encoding encoding_of(const Incoming& incoming) {
   return incoming.text().substr(0, 1) == "{" ? wire::Encoding::json : wire::Encoding::msgpack;
 }
 
+constexpr std::size_t kRepeats = 16;  // of one request in flight; our clients send a request three times
+
+/// The same for the same request alone.
+std::string key_of(const wire::Request& request) { return request.id + '\n' + request.digest; }
+
 bool belongs_on_feed(wire::Kind kind) {
   switch (kind) {
     case wire::Kind::fit:
@@ -50,6 +55,7 @@ void Daemon::take_request(Incoming incoming) {
   route.encoding = decoded.encoding;
   route.id = decoded.id;
   if (!decoded.request) return answer(route, wire::Error{decoded.id, decoded.request.error(), std::nullopt});
+  if (join(*decoded.request, route)) return;
   if (auto error = turned_away(*decoded.request)) return answer(route, *error);
   accept(std::move(*decoded.request), std::move(route));
 }
@@ -60,21 +66,50 @@ void Daemon::take_from_feed(Incoming incoming) {
   if (!decoded.request) return reject({decoded.id, decoded.request.error(), std::nullopt});
   if (!belongs_on_feed(decoded.request->kind))
     return reject({decoded.id, {"unknown_kind", "kind", "the feed takes fit, begin, points, end and applied; send others to the requests socket"}, {}});
-  accept(std::move(*decoded.request), {false, decoded.id, {}, decoded.encoding});
+  const Route route{false, decoded.id, {}, decoded.encoding};
+  if (!join(*decoded.request, route)) accept(std::move(*decoded.request), route);
+}
+
+/// A request that is being worked on already is not worked on twice: who repeats it gets the reply too. What came by the feed
+/// has no reply to be had.
+bool Daemon::join(const wire::Request& request, const Route& route) {
+  const auto found = joined_.find(key_of(request));
+  if (found == joined_.end()) return false;
+  if (found->second.size() < kRepeats)
+    found->second.push_back(route);
+  else if (route.answers)
+    answer(route, wire::Error{route.id, {"busy", "", "this request came many times and is being worked on: wait for its reply"}, retry_after_s()});
+  return true;
+}
+
+void Daemon::answer_joined(const std::string& key, wire::Reply reply) {
+  const auto joined = joined_.extract(key);
+  if (!joined || joined.mapped().empty()) return;
+  if (auto* fitted = std::get_if<wire::Fitted>(&reply)) fitted->replayed = fitted->stored;
+  if (const auto* noted = std::get_if<wire::Noted>(&reply))
+    reply = wire::Stored{noted->id, wire::encode(*noted, wire::Encoding::msgpack)};
+  for (const auto& route : joined.mapped()) {
+    if (route.answers)
+      answer(route, reply);
+    else if (const auto* error = std::get_if<wire::Error>(&reply))
+      reject(*error);
+  }
 }
 
 void Daemon::accept(wire::Request request, Route route) {
+  std::string key = route.answers ? key_of(request) : std::string();
   auto accepted = service_.accept(std::move(request), route.answers);
-  if (auto* task = std::get_if<service::Task>(&accepted)) return add_job(std::move(*task), std::move(route));
+  if (auto* task = std::get_if<service::Task>(&accepted)) return add_job(std::move(*task), std::move(route), std::move(key));
   auto& reply = std::get<wire::Reply>(accepted);
   if (route.answers) return answer(route, std::move(reply));
   if (const auto* error = std::get_if<wire::Error>(&reply)) reject(*error);
 }
 
-void Daemon::add_job(service::Task task, Route route) {
+void Daemon::add_job(service::Task task, Route route, std::string key) {
   auto job = std::make_shared<Job>();
   job->task = std::move(task);
   job->route = std::move(route);
+  if (!key.empty() && joined_.try_emplace(key).second) job->key = std::move(key);
   if (in_flight_++ == 0) last_settled_ = std::chrono::steady_clock::now();
   const bool needs_fit = job->task.needs_fit();
   order_.add(job, !needs_fit);

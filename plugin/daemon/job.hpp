@@ -21,6 +21,7 @@ struct Route {
 struct Job {
   service::Task task;
   Route route;
+  std::string key;           // under which a repeat of the request joins this job; empty: none may
   std::string failure;       // what broke in the fit, other than a bad scan
   std::uint64_t number = 0;  // order of arrival; given by the Order
   bool ready = false;        // guarded by the Order

@@ -4,17 +4,16 @@
 #include <cmath>
 
 #include "model/quantity/constants.hpp"
+#include "model/quantity/format.hpp"
+#include "model/recalibrate/gates.hpp"
 #include "plugin/service/answer.hpp"
 #include "plugin/service/known.hpp"
-#include "plugin/wire/decode.hpp"
-#include "plugin/wire/encode.hpp"
 #include "plugin/wire/time.hpp"
+#include "plugin/wire/words.hpp"
 
 namespace halfturn::service {
 namespace {
 
-constexpr Time kWeek = 7LL * 24 * 3600 * 1'000'000'000;
-constexpr std::int64_t kHistoryRows = 1000;
 
 wire::Error error_of(std::string id, Fault fault) { return {std::move(id), std::move(fault), std::nullopt}; }
 
@@ -35,61 +34,81 @@ std::string known_drives(const config::Configuration& configuration) {
   return known;
 }
 
+// 5 min: clocks that no time service keeps, of two machines of a laboratory, differ by as much.
+constexpr Time kClocksDiffer = 300LL * 1'000'000'000;
+
+/// A time in the future would stay the newest of its drive until then, and be taken for the state of things.
+Result<void> check_time(const std::optional<Time>& time, Time now, const std::string& where) {
+  if (!time || *time <= now + kClocksDiffer) return {};
+  return fault("bad_value", where,
+               "found " + wire::format_time(*time) + ", expected a time at most 5 min ahead of this computer's clock, which shows " +
+                   wire::format_time(now) + ": set the clocks of both computers, in UTC");
+}
+
+Result<void> check_times(const wire::Request& request, Time now) {
+  for (std::size_t i = 0; i < request.scans.size(); ++i) {
+    const auto place = request.joint ? "scans[" + std::to_string(i) + "]" : std::string("scan");
+    if (auto checked = check_time(request.scans[i].taken_at, now, place + ".taken_at"); !checked) return checked;
+  }
+  return check_time(request.applied_at, now, "applied_at");
+}
+
+constexpr double kSlip = 10.0;  // beyond a limit; a slip of units is a factor of 1000, an adventurous length is not
+
+constexpr double kRounding = 1e-9;  // of a length that was reckoned in other units
+
+const recalibrate::Pulse* find_pulse(const config::Drive& drive, const std::string& name) {
+  for (const auto& pulse : drive.pulses)
+    if (pulse.name == name) return &pulse;
+  return nullptr;
+}
+
+std::string limits_of(const recalibrate::Pulse& pulse) {
+  return engineering(pulse.minimum_s, "s") + " to " + engineering(pulse.maximum_s, "s");
+}
+
+Result<void> check_length(const config::Drive& drive, const std::string& name, double length_s) {
+  const std::string where = "pulses." + name;
+  const auto* pulse = find_pulse(drive, name);
+  if (pulse == nullptr)
+    return fault("bad_value", where, "the drive `" + drive.name + "` has no pulse of that name in the configuration");
+  if (length_s >= pulse->minimum_s / kSlip && length_s <= pulse->maximum_s * kSlip) return {};
+  return fault("bad_value", where,
+               "found " + wire::number_text(length_s) + ", which is far outside the pulse's limits, " + limits_of(*pulse) +
+                   ": expected its length in seconds, such as " + wire::number_text(pulse->length_s) +
+                   "; look for a slip of units (\u00b5s or ns sent as s), or widen the limits");
+}
+
+/// What is wrong with a drive, each with what to do about it.
+std::vector<std::string> troubles_of(const config::Drive& drive, const recalibrate::State& state,
+                                     const std::map<std::string, double>& in_force_s) {
+  std::vector<std::string> troubles;
+  if (state.held)
+    troubles.push_back("held by " + state.held_by + " (" + state.held_why +
+                       "), so every verdict is keep. Send `release` once its pulses may change again.");
+  if (state.proposals_unanswered >= recalibrate::kUnansweredSaid)
+    troubles.push_back(std::to_string(state.proposals_unanswered) +
+                       " proposals went by without an `applied` message. Have the control software load what is proposed, and send "
+                       "`applied` with the lengths that it uses; else `hold` the drive.");
+  for (const auto& pulse : drive.pulses) {
+    const double length_s = in_force_s.at(pulse.name);
+    if (length_s >= pulse.minimum_s * (1.0 - kRounding) && length_s <= pulse.maximum_s * (1.0 + kRounding)) continue;
+    troubles.push_back("the pulse `" + pulse.name + "` in force, " + engineering(length_s, "s") + ", lies outside its limits, " +
+                       limits_of(pulse) + ". Load a length within them and send `applied`, or widen `limits` in the configuration.");
+  }
+  return troubles;
+}
+
 Result<void> check_drive(const wire::Request& request, const config::Configuration& configuration) {
   if (configuration.drives.count(request.drive) == 0)
     return fault("unknown_drive", "drive",
                  "found `" + request.drive + "`, which the configuration does not have; it has " + known_drives(configuration));
-  for (const auto& [name, length] : request.pulses_s) {
-    bool found = false;
-    for (const auto& pulse : configuration.drives.at(request.drive).pulses) found = found || pulse.name == name;
-    if (!found) return fault("bad_value", "pulses." + name, "the drive `" + request.drive + "` has no pulse of that name in the configuration");
-  }
+  for (const auto& [name, length_s] : request.pulses_s)
+    if (auto checked = check_length(configuration.drives.at(request.drive), name, length_s); !checked) return checked;
   return {};
 }
 
-log::Event noted_event(const Task& task) {
-  const auto& request = task.request;
-  log::Event event;
-  event.drive = request.drive;
-  event.kind = request.kind == wire::Kind::applied ? "applied" : request.kind == wire::Kind::hold ? "hold" : "release";
-  event.happened_at = request.applied_at.value_or(task.received_at);
-  event.received_at = task.received_at;
-  event.id = request.id;
-  event.pulses_s = request.pulses_s;
-  if (request.carrier_hz) event.carrier_hz = *request.carrier_hz;
-  event.by = request.by;
-  event.why = request.why;
-  return event;
-}
-
-recalibrate::Decision decide_task(const Task& task, const recalibrate::State& state) {
-  const auto* drive = task.configured();
-  return recalibrate::decide(state, *task.fit, task.prior, context_for(drive, task.scan(), task.prior, task.taken_at));
-}
-
-wire::Drift drift_of(const std::string& drive, const recalibrate::State& state, Time at) {
-  wire::Drift drift;
-  drift.drive = drive;
-  const auto known = state.rabi.predict(at);
-  if (!known) return drift;
-  auto& rabi = drift.rabi_hz;
-  rabi.value = std::exp(known->mean) / constants::kTwoPi;
-  rabi.sigma = rabi.value * known->sigma;
-  rabi.low = rabi.value * std::exp(-1.96 * known->sigma);
-  rabi.high = rabi.value * std::exp(1.96 * known->sigma);
-  return drift;
-}
-
 }  // namespace
-
-/// States as they will be when the group is committed.
-struct Service::Group {
-  std::map<std::string, recalibrate::State> states;
-  recalibrate::State& of(const Service& service, const std::string& drive) {
-    const auto found = states.find(drive);
-    return found != states.end() ? found->second : states.emplace(drive, service.known_of(drive)).first->second;
-  }
-};
 
 const config::Drive* Task::configured() const {
   const auto found = configuration->drives.find(drive);
@@ -115,14 +134,18 @@ Result<void> Service::restore() {
     states_ = std::move(states);
     configuration = configuration_;
   }
+  const Time now = clock_.now();
   if (auto begun = log_.begin(); !begun) return begun;
-  auto kept = log_.keep_configuration(configuration->fingerprint, configuration->text, clock_.now());
-  if (kept) kept = log_.forget_replies(clock_.now() - kWeek);
+  auto kept = log_.keep_configuration(configuration->fingerprint, configuration->text, now);
+  if (kept) kept = log_.forget_replies(now - kRepliesKept);
+  if (kept) kept = log_.commit();
   if (!kept) {
     log_.roll_back();
     return kept;
   }
-  return log_.commit();
+  kept_configurations_ = {configuration->fingerprint};
+  forgot_at_ = now;
+  return {};
 }
 
 std::variant<wire::Reply, Task> Service::accept(wire::Request request, bool answers) {
@@ -142,6 +165,7 @@ std::variant<wire::Reply, Task> Service::accept(wire::Request request, bool answ
   if (auto missing = not_here(request)) return refuse(request, std::move(*missing));
   const bool fits = request.kind == wire::Kind::fit;
   auto checked = fits ? check_scan(request, *task.configuration) : check_drive(request, *task.configuration);
+  if (checked) checked = check_times(request, task.received_at);
   if (!checked) return refuse(request, checked.error());
   task.drive = fits ? request.scans.front().drive : request.drive;
   if (fits) task.taken_at = request.scans.front().taken_at.value_or(task.received_at);
@@ -159,118 +183,6 @@ void Service::fit(Task& task) {
   thread_local infer::FitWorkspace workspace;
   task.fit.emplace();
   infer::fit(scan.batch, {&task.prior, 1}, fit_options(drive, options), {&*task.fit, 1}, workspace);
-}
-
-std::vector<Settled> Service::settle(std::span<Task> tasks) {
-  Group group;
-  std::vector<Settled> settled;
-  settled.reserve(tasks.size());
-  auto written = log_.begin();
-  for (Task& task : tasks) {
-    if (!written) break;
-    auto one = settle_one(task, group);
-    if (one) settled.push_back(std::move(*one));
-    else written = tl::unexpected(one.error());
-  }
-  if (written) written = log_.commit();
-  else log_.roll_back();
-
-  const std::lock_guard lock(mutex_);
-  log_trouble_ = written ? "" : written.error().message;
-  if (written) {
-    for (auto& [drive, state] : group.states) states_[drive] = std::move(state);
-    return settled;
-  }
-  settled.clear();
-  for (const Task& task : tasks) {
-    Settled failed;
-    if (task.answers) failed.reply = error_of(task.request.id, {"log_unavailable", "", written.error().message});
-    else failed.publications.push_back({"rejected/", error_of(task.request.id, {"log_unavailable", "", written.error().message})});
-    settled.push_back(std::move(failed));
-  }
-  return settled;
-}
-
-Result<Settled> Service::settle_one(Task& task, Group& group) {
-  const auto& request = task.request;
-  if (request.kind == wire::Kind::history) return settle_history(task);
-  if (request.options.store) {
-    auto before = log_.find_reply(request.id);
-    if (!before) return tl::unexpected(before.error());
-    if (*before) {
-      Settled again;
-      if ((*before)->digest == request.digest) again.reply = wire::Stored{request.id, (*before)->reply};
-      else again.reply = error_of(request.id, {"id_reused", "id", "this id came before with other content; give every request an id of its own, such as a UUID"});
-      if (!task.answers) again.reply.reset();
-      return again;
-    }
-  }
-  return task.needs_fit() ? settle_fit(task, group) : settle_note(task, group);
-}
-
-Result<Settled> Service::settle_fit(Task& task, Group& group) {
-  const bool store = task.request.options.store;
-  static const recalibrate::State kNothing;
-  const recalibrate::State before = store ? group.of(*this, task.drive) : kNothing;
-  const auto decision = decide_task(task, before);
-  const Answer answer{task.scan(), task.request.options, task.configured(), task.prior, *task.fit, decision, task.assumed, task.taken_at};
-  wire::Fitted fitted = fitted_from(answer);
-  fitted.id = task.request.id;
-  fitted.stored = store;
-
-  Settled settled;
-  if (store) {
-    log::Event event = event_from(answer, fitted);
-    event.received_at = task.received_at;
-    event.id = task.request.id;
-    const std::string reply = wire::encode_stored(fitted);
-    const log::Bulk bulk{wire::encode_scan(task.scan()), task.request.digest, task.configuration->fingerprint, reply, task.scan().ambient};
-    if (auto number = log_.append(event, &bulk); !number) return tl::unexpected(number.error());
-    if (auto kept = log_.keep_reply(task.request.id, {task.request.digest, reply}, task.received_at); !kept) return tl::unexpected(kept.error());
-    auto& state = group.of(*this, task.drive);
-    fold(state, event);
-    settled.publications.push_back({"fitted/" + task.drive + "/", fitted});
-    if (decision.event.effect != recalibrate::Effect::none)
-      settled.publications.push_back({"drift/" + task.drive + "/", drift_of(task.drive, state, task.taken_at)});
-  }
-  if (task.answers) settled.reply = std::move(fitted);
-  return settled;
-}
-
-Result<Settled> Service::settle_note(Task& task, Group& group) {
-  const log::Event event = noted_event(task);
-  Settled settled;
-  wire::Noted noted;
-  noted.id = task.request.id;
-  if (auto number = log_.append(event, nullptr); !number) return tl::unexpected(number.error());
-  const log::StoredReply reply{task.request.digest, wire::encode(noted, wire::Encoding::msgpack)};
-  if (auto kept = log_.keep_reply(task.request.id, reply, task.received_at); !kept) return tl::unexpected(kept.error());
-  fold(group.of(*this, task.drive), event);
-  if (task.answers) settled.reply = std::move(noted);
-  return settled;
-}
-
-Result<Settled> Service::settle_history(const Task& task) {
-  const auto& request = task.request;
-  log::Range range;
-  range.drive = request.drive;
-  range.since = request.since;
-  range.until = request.until;
-  range.limit = request.limit.value_or(kHistoryRows);
-  auto rows = log_.history({range.drive, range.since, range.until, range.limit + 1, 0});
-  if (!rows) return tl::unexpected(rows.error());
-  wire::Rows answer;
-  answer.id = request.id;
-  for (const auto& row : *rows) {
-    if (static_cast<std::int64_t>(answer.rows.size()) == range.limit) {
-      answer.next = wire::format_time(row.event.happened_at);
-      break;
-    }
-    answer.rows.push_back(row.reply);
-  }
-  Settled settled;
-  if (task.answers) settled.reply = std::move(answer);
-  return settled;
 }
 
 void Service::configure(std::shared_ptr<const config::Configuration> configuration) {
@@ -302,9 +214,7 @@ wire::State Service::state() const {
     if (state.rabi.accepted > 0) out.rabi_hz = std::exp(state.rabi.mean) / constants::kTwoPi;
     out.last_verdict = state.last_verdict;
     out.held = state.held;
-    if (state.held) now.troubles.push_back(name + ": held by " + state.held_by + ": " + state.held_why);
-    if (state.proposals_unanswered >= 3)
-      now.troubles.push_back(name + ": " + std::to_string(state.proposals_unanswered) + " proposals without an `applied` message");
+    for (auto& trouble : troubles_of(drive, state, out.pulses_s)) now.troubles.push_back(name + ": " + std::move(trouble));
   }
   return now;
 }

@@ -5,6 +5,7 @@
 #include <memory>
 #include <mutex>
 #include <optional>
+#include <set>
 #include <span>
 #include <string>
 #include <variant>
@@ -59,6 +60,9 @@ struct Settled {
   std::vector<Publication> publications;
 };
 
+/// Replies are kept for so long: the same request finds its reply again within seven days.
+inline constexpr Time kRepliesKept = 7LL * 24 * 3600 * 1'000'000'000;
+
 class Service {
  public:
   /// `log` is used by `restore` and `settle` alone, so by the thread that calls them.
@@ -74,8 +78,10 @@ class Service {
   static void fit(Task& task);
 
   /// Stage three; one thread. Decides each task in turn and commits them together; what it returns, one for each task and in
-  /// their order, may be sent when it returns. Where the log fails, every task of the group is answered `log_unavailable` and
-  /// no state has moved.
+  /// their order, may be sent when it returns. A `history` shows what came before it alone, so the transaction is split there.
+  /// Where the log fails in writing, the tasks of that transaction and those that write behind it are answered
+  /// `log_unavailable` and move no state; `history` and fits that are not stored do not hang on that. Whatever is thrown,
+  /// no transaction stays open.
   std::vector<Settled> settle(std::span<Task> tasks);
 
   /// Takes a new configuration for requests accepted from now on; drives keep their tracked state by name. Thread-safe.
@@ -87,10 +93,14 @@ class Service {
 
  private:
   struct Group;  // of tasks inside one transaction
+  Result<void> settle_writers(std::span<Task> tasks, const std::vector<std::size_t>& chosen, std::vector<Settled>& settled);
   Result<Settled> settle_one(Task& task, Group& group);
   Result<Settled> settle_fit(Task& task, Group& group);
   Result<Settled> settle_history(const Task& task);
   Result<Settled> settle_note(Task& task, Group& group);
+  Result<void> keep_house(Group& group);
+  Result<void> keep_configuration(const config::Configuration& configuration, Group& group);
+  void note_log(std::string trouble);  // empty where all is well
   recalibrate::State known_of(const std::string& drive) const;
 
   mutable std::mutex mutex_;  // guards what follows
@@ -99,6 +109,8 @@ class Service {
   std::string log_trouble_;
   bool stopping_ = false;
 
+  std::set<std::string> kept_configurations_;  // fingerprints; this and the next belong to the thread of `settle`
+  Time forgot_at_ = 0;                         // when old replies were last forgotten
   log::Log& log_;
   const Clock& clock_;
   std::string version_;

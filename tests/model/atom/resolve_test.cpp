@@ -81,6 +81,15 @@ TEST_CASE("a missing part is named with what it can be") {
   says(refused("Rb87 D2 F=2 m=2 -> F'=3"), "the polarisation is missing");
 }
 
+// `Rb87` alone was answered with three names of Sr88, which are shorter and so fewer edits away.
+TEST_CASE("an incomplete name comes with names that begin alike") {
+  const auto message = refused("Rb87").message;
+  CHECK(message.find("near names are 'Rb87 ") != std::string::npos);
+  CHECK(message.find("Sr88") == std::string::npos);
+  says(refused("Rb87 D"), "near names are 'Rb87 D");
+  says(refused("Rb8"), "near names are 'Rb8");
+}
+
 TEST_CASE("an unknown name comes with near ones") {
   says(refused("Rb87 D3 F=2 m=2 -> F'=3 m'=3 sigma+"), "no line D3 of Rb87, but D2 or 5S1/2 -> 5P3/2");
   says(refused("Rb86 D2 F=2 m=2 -> F'=3 m'=3 sigma+"), "near names are 'Rb87 D2 F=2 m=2 -> F'=3 m'=3 sigma+'");

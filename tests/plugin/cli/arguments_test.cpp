@@ -73,3 +73,16 @@ TEST_CASE("a good command line is a command") {
   CHECK(std::holds_alternative<Command>(read({"drift", "--log", "a.db", "--since", "2026-02-03"})));
   CHECK(std::holds_alternative<Command>(read({"rehearse", "--drive", "red", "--hours", "2", "--seed", "7"})));
 }
+
+// An unknown word was answered with "A subcommand is required", as if there were none.
+TEST_CASE("a word that is no command is named, with the nearest command or with what is to come") {
+  CHECK(notice({"ftt"}).text == "halfturn: found \"ftt\", which is no command: the nearest is `fit`\nTry `halfturn --help`.\n");
+  CHECK(notice({"statsu", "--json"}).text.find("`status`") != std::string::npos);
+  for (const char* later : {"refit", "next", "keygen"}) {
+    const auto told = notice({later, "x"});
+    CHECK(told.status == kBadInput);
+    CHECK(told.text.find("`" + std::string(later) + "` is not available in this version") != std::string::npos);
+  }
+  CHECK(notice({}).text.find("subcommand") != std::string::npos);
+  CHECK(notice({"--help"}).status == kDone);
+}

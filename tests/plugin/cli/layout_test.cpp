@@ -36,6 +36,18 @@ TEST_CASE("sentences break at blanks and keep their indent") {
   CHECK(wrapped(std::string(200, 'x'), "- ") == "- " + std::string(200, 'x') + "\n");
 }
 
+// "2.0000" stood at the end of a line and its unit on the next.
+TEST_CASE("a number keeps its unit, wherever the line breaks") {
+  for (const std::string quantity : {"2.0000 \u00b5s", "125.34(12) kHz,", "-0.200 %", "(1.5 MHz)", "12.6 mrad;", "3 sigma.", "1.234(3) kW/m\u00b2", "4 s"}) {
+    for (std::size_t before = 60; before < kColumns; ++before) {
+      const auto text = wrapped(std::string(before, 'x') + " " + quantity + " and more", "");
+      INFO(text);
+      CHECK(text.find(quantity) != std::string::npos);
+    }
+  }
+  CHECK(wrapped(std::string(kColumns - 2, 'x') + " 4 words", "") == std::string(kColumns - 2, 'x') + " 4\nwords\n");
+}
+
 TEST_CASE("columns are as wide as their widest cell") {
   CHECK(table({{"a", "bb", "c"}, {"\u00b5\u00b5\u00b5", "", "d"}, {"e"}}, " ") == " a    bb  c\n \u00b5\u00b5\u00b5      d\n e\n");
 }

@@ -6,6 +6,7 @@
 #include <fstream>
 #include <random>
 #include <sstream>
+#include <utility>
 
 #include "model/quantity/constants.hpp"
 #include "plugin/wire/digest.hpp"
@@ -63,6 +64,26 @@ drives:
 )";
 
 }  // namespace
+
+// An alias, an anchor or a second document hid every other fault.
+TEST_CASE("Faults of the document's form hide no others") {
+  const std::string faulty = "    expct: {rabi: [10 kHz, 1 MHz]}\n    carrier_uncertainty: 2\n";
+  const std::string others[] = {"f:6:5: drives.red.expct: found the unknown key", "f:7:26: drives.red.carrier_uncertainty: found"};
+  const std::string head = "format: 1\ndrives:\n  red:\n    pulses: {flip: {angle: pi, length: 4 us}}\n";
+  for (const auto& [form, fault] : {std::pair<std::string, std::string>{"    accept: *usual", "f:5:13: drives.red.accept: found an alias"},
+                                    {"    transition: &line Sr88", "f:5:17: drives.red.transition: found an anchor"},
+                                    {"    pulses: {flip: {angle: pi, length: 4 us}}", "f:5:5: drives.red.pulses: found the key"}}) {
+    const auto said = faults(head + form + "\n" + faulty);
+    INFO(said);
+    CHECK(said.find(fault) != std::string::npos);
+    for (const auto& other : others) CHECK(said.find(other) != std::string::npos);
+  }
+  const auto said = faults(head + "    impurity: 0.0\n" + faulty + "---\nformat: 1\n");
+  INFO(said);
+  CHECK(said.find("f:8:1: found a second document") != std::string::npos);
+  for (const auto& other : others) CHECK(said.find(other) != std::string::npos);
+  CHECK(faults("format: 1\ndrives: *all\n") == "f:2:9: drives: found an alias (*), expected the value itself\n");
+}
 
 TEST_CASE("The contract's configuration is read to the letter") {
   const auto reading = read(kContract, "/somewhere");

@@ -58,7 +58,7 @@ TEST_CASE("What YAML allows and a configuration must not have is found, all at o
   CHECK(faults("a: &x 1\nb: *x\n") ==
         "f:1:4: a: found an anchor (&), expected the value alone\n"
         "f:2:4: b: found an alias (*), expected the value itself\n");
-  CHECK(faults("b: *x\n") == "f:1:4: found an alias (*), expected the value itself\n");
+  CHECK(faults("b: *x\n") == "f:1:4: b: found an alias (*), expected the value itself\n");
   CHECK(faults("a: !!int 3\n") == "f:1:4: a: found the tag \"tag:yaml.org,2002:int\", expected the value alone\n");
   CHECK(faults("a: !x {b: 1}\n") == "f:1:4: a: found the tag \"!x\", expected the value alone\n");
   CHECK(faults("? [a, b]\n: 1\n") == "f:1:3: found a list or a map as a key, expected a word\n");
@@ -76,6 +76,18 @@ TEST_CASE("What YAML allows and a configuration must not have is found, all at o
   CHECK(faults("a: 'it''s'\nb: \"\\\"\"\n").empty());
   CHECK(faults("ok: 1\nbad: \xff\n") == "f:2:6: found a byte that is not text in UTF-8, expected UTF-8\n");
   CHECK(faults(std::string("a: \0b", 5)) == "f:1:4: found a byte that is not text in UTF-8, expected UTF-8\n");
+}
+
+TEST_CASE("Behind an alias without an anchor the text is still read") {
+  CHECK(faults("a: *x\nb: [*y, 1, *z]\nc: {d: *x}\na: 2\n") ==
+        "f:1:4: a: found an alias (*), expected the value itself\n"
+        "f:2:5: b[0]: found an alias (*), expected the value itself\n"
+        "f:2:12: b[2]: found an alias (*), expected the value itself\n"
+        "f:3:8: c.d: found an alias (*), expected the value itself\n"
+        "f:4:1: a: found the key \"a\" a second time (first in line 1), expected it once\n");
+  std::string many;
+  for (int i = 0; i < 1000; ++i) many += "a" + std::to_string(i) + ": *x\n";
+  CHECK_FALSE(faults(many).empty());
 }
 
 TEST_CASE("A document that passes a limit is refused, however it tries") {

@@ -1,7 +1,10 @@
 // SPDX-License-Identifier: Apache-2.0
 // Requests and replies: peers of both kinds, both encodings, envelopes, and what is too large or no message at all.
+#include <atomic>
+#include <map>
 #include <random>
 
+#include "plugin/service/service.hpp"
 #include "tests/plugin/daemon/running.hpp"
 #include "tests/support/catch.hpp"
 
@@ -64,6 +67,55 @@ TEST_CASE("up to eight frames before the message come back unchanged, a ninth is
 
   peer.send(Frames(500, "x"));
   CHECK(peer.answer().at("code") == "bad_frame");
+}
+
+// A request that was sent again while its fit was at work was fitted again from the start, each time.
+TEST_CASE("a request that comes again while it is worked on is fitted once and answered to all who sent it") {
+  Gate gate;
+  std::atomic<int> fits = 0;
+  Running running([&](auto& options) {
+    options.fit = [&](halfturn::service::Task& task) {
+      ++fits;
+      gate.wait(task.request.scans.front().scan_name);
+      halfturn::service::Service::fit(task);
+    };
+    options.limits.in_flight = 2;
+  });
+  Peer first(zmq::socket_type::dealer, running.endpoints().requests);
+  Peer again(zmq::socket_type::dealer, running.endpoints().requests);
+  first.ask_json(fit_request("a"));
+  gate.wait_for_arrival("a");
+  again.send({packed(fit_request("a"))});
+  again.ask_json(fit_request("a"));
+  {
+    Peer gone(zmq::socket_type::dealer, running.endpoints().requests);
+    gone.ask_json(fit_request("a"));
+    gone.ask_json(status_request("s"));
+    CHECK(gone.answer().at("kind") == "state");
+  }
+  auto other = fit_request("a");
+  other["scan"]["scan_name"] = "b";
+  again.ask_json(other);  // of the same id and of other content
+  again.ask_json(status_request("s"));
+  CHECK(again.answer().at("kind") == "state");  // so the requests before it have been taken
+  gate.open_all();
+
+  const auto reply = first.answer();
+  CHECK(reply.at("kind") == "fitted");
+  CHECK_FALSE(reply.value("replayed", false));
+  std::map<std::string, int> kinds;
+  for (int i = 0; i < 3; ++i) {
+    const auto repeated = again.answer();
+    ++kinds[repeated.at("kind")];
+    CHECK(repeated.at("id") == "a");
+    if (repeated.at("kind") == "error") CHECK(repeated.at("code") == "id_reused");
+    else CHECK(repeated.at("replayed") == true);
+  }
+  CHECK(kinds["fitted"] == 2);
+  CHECK(kinds["error"] == 1);
+  CHECK(fits == 2);
+  CHECK(running.stop() == 0);
+  CHECK(running.daemon().in_flight() == 0);
 }
 
 TEST_CASE("a message above the limit is answered, one far above it costs its peer the connection") {

@@ -32,12 +32,13 @@ bool troubled(const json& state, const std::string& word) {
   return false;
 }
 
-/// A log in memory that counts its commits.
+/// A log in memory that counts its commits; all but the first wait at a gate where one is given.
 class WatchedLog : public Log {
  public:
-  explicit WatchedLog(std::atomic<int>& commits) : commits_(commits) {}
+  explicit WatchedLog(std::atomic<int>& commits, Gate* gate = nullptr) : commits_(commits), gate_(gate) {}
   Result<void> begin() override { return log_.begin(); }
   Result<void> commit() override {
+    if (gate_ != nullptr && commits_ > 0) gate_->wait("commit");
     auto done = log_.commit();
     ++commits_;
     return done;
@@ -58,6 +59,7 @@ class WatchedLog : public Log {
  private:
   MemoryLog log_;
   std::atomic<int>& commits_;
+  Gate* gate_;
 };
 
 }  // namespace
@@ -100,6 +102,44 @@ TEST_CASE("a fit that outlasts the time to stop is answered `stopping`") {
   const auto reply = peer.answer();
   CHECK(reply.at("id") == "a");
   CHECK(reply.at("code") == "stopping");
+  gate.open_all();
+}
+
+// Scans that had come by the feed and were not decided in time vanished without a word.
+TEST_CASE("a scan of the feed that outlasts the time to stop is published as rejected") {
+  Gate gate;
+  Running running([&](auto& options) {
+    hold_fits(options, gate);
+    options.stop_within = std::chrono::milliseconds(50);
+  });
+  Listener all(running.endpoints().results, "");
+  Peer feed(zmq::socket_type::push, running.endpoints().feed);
+  all.next();  // the health of this second: the listener is there
+  feed.send({fit_request("a").dump()});
+  gate.wait_for_arrival("a");
+  CHECK(running.stop() == 0);
+  auto heard = all.next();
+  while (heard.topic != "rejected/") heard = all.next();
+  CHECK(heard.message.at("id") == "a");
+  CHECK(heard.message.at("code") == "stopping");
+  gate.open_all();
+}
+
+// A disk that did not answer held the exit for as long as it liked.
+TEST_CASE("a log that does not finish its commit does not hold the end") {
+  Gate gate;
+  std::atomic<int> commits = 0;
+  Running running([&](auto& options) {
+    options.log = std::make_unique<WatchedLog>(commits, &gate);
+    options.stop_within = std::chrono::milliseconds(50);
+  });
+  Peer peer(zmq::socket_type::dealer, running.endpoints().requests);
+  peer.ask_json(fit_request("a"));
+  gate.wait_for_arrival("commit");
+  const auto begun = std::chrono::steady_clock::now();
+  CHECK(running.stop() == 0);
+  CHECK(std::chrono::steady_clock::now() - begun < std::chrono::seconds(10));  // of the 20 that systemd grants
+  CHECK(running.daemon().in_flight() == 1);
   gate.open_all();
 }
 

@@ -6,6 +6,7 @@
 #include <sstream>
 
 #include "plugin/wire/decode.hpp"
+#include "plugin/wire/time.hpp"
 #include "tests/plugin/rehearse/fake_daemon.hpp"
 #include "tests/support/catch.hpp"
 
@@ -30,10 +31,10 @@ RehearseOptions red(std::uint64_t seed = 1, double hours = 8) {
 }
 
 /// A daemon that knows what RehearsedDrive will take for the truth: 4.00 us is a pi pulse at the start.
-FakeDaemon knowing(const RehearseOptions& options) {
+FakeDaemon knowing(const RehearseOptions& options, wire::Time starts_at = *wire::parse_time(kEvening)) {
   auto settings = options.apparatus;
   settings.rabi_hz = 0.5 / (4.00e-6 - settings.dead_time_s);
-  return FakeDaemon(settings, options.seed, options.hours * 3600, *wire::parse_time(kEvening));
+  return FakeDaemon(settings, options.seed, options.hours * 3600, starts_at);
 }
 
 bool always(const Moment&) { return true; }
@@ -63,6 +64,19 @@ TEST_CASE("Scores are what their definitions say of errors known beforehand") {
   CHECK(s.good_fraction == Approx(199.0 / 200));
   CHECK(s.carrier_rms_hz == Approx(0).margin(1e-9));
   CHECK(std::isnan(score(Strategy("none", 1e-6, 0)).rms_rad));
+}
+
+TEST_CASE("A night that is not given its start ends now, and nothing in it lies in the future") {
+  for (const double hours : {1.0 / 60, 0.1, 3.0}) {
+    auto options = red(1, hours);
+    options.starts_at.clear();
+    auto daemon = knowing(options, wire::now() - static_cast<wire::Time>(hours * 3600e9));
+    rehearsed(options, daemon);
+    const wire::Time now = wire::now();
+    REQUIRE_FALSE(daemon.scans.empty());
+    for (const auto& scan : daemon.scans) CHECK(*wire::parse_time(scan.at("taken_at").get<std::string>()) <= now);
+    for (const auto& applied : daemon.applied) CHECK(*wire::parse_time(applied.at("applied_at").get<std::string>()) <= now);
+  }
 }
 
 TEST_CASE("A night has 96 flops and 12 line scans, each as a laboratory takes them") {

@@ -1,16 +1,20 @@
 // SPDX-License-Identifier: Apache-2.0
 #include "plugin/service/service.hpp"
 
+#include <algorithm>
 #include <cmath>
 #include <cstdio>
 #include <fstream>
 #include <random>
+#include <set>
+#include <stdexcept>
 
 #include "model/atom/catalogue.hpp"
 #include "plugin/config/scan_file.hpp"
 #include "plugin/log/memory_log.hpp"
 #include "plugin/wire/decode.hpp"
 #include "plugin/wire/encode.hpp"
+#include "plugin/wire/time.hpp"
 #include "tests/support/catch.hpp"
 
 using namespace halfturn;
@@ -69,28 +73,99 @@ wire::Request flop(const std::string& id, double rabi_hz, std::mt19937_64& rando
   return request;
 }
 
-struct House {
+/// A log in memory with faults to be switched on, which notes what is asked of it.
+struct FaultyLog final : log::Log {
+  log::MemoryLog under;
+  bool full = false, locked = false, unreadable = false, broken = false;
+  std::vector<std::string> configurations;
+  std::vector<log::Time> forgotten;
+  int fits_before_a_configuration = 0;
+
+  static tl::unexpected<Fault> trouble() { return fault("log_unavailable", "nights.db", "the disk is full; make room, then go on"); }
+  Result<void> begin() override { return locked ? trouble() : under.begin(); }
+  Result<void> commit() override {
+    if (!full) return under.commit();
+    under.roll_back();
+    return trouble();
+  }
+  void roll_back() override { under.roll_back(); }
+  Result<std::int64_t> append(const log::Event& e, const log::Bulk* b) override {
+    if (broken) throw std::runtime_error("broken");
+    if (b != nullptr && std::count(configurations.begin(), configurations.end(), b->configuration) == 0) ++fits_before_a_configuration;
+    return under.append(e, b);
+  }
+  Result<void> keep_reply(const std::string& id, const log::StoredReply& r, log::Time t) override { return under.keep_reply(id, r, t); }
+  Result<std::optional<log::StoredReply>> find_reply(const std::string& id) override { return under.find_reply(id); }
+  Result<void> forget_replies(log::Time t) override {
+    forgotten.push_back(t);
+    return under.forget_replies(t);
+  }
+  Result<void> keep_configuration(const std::string& f, const std::string& t, log::Time n) override {
+    configurations.push_back(f);
+    return under.keep_configuration(f, t, n);
+  }
+  Result<void> replay(const std::function<void(const log::Event&)>& v) override { return under.replay(v); }
+  Result<std::vector<Row>> history(const log::Range& r) override {
+    if (unreadable) return trouble();
+    return under.history(r);
+  }
+  Result<std::vector<log::Event>> events(const log::Range& r) override { return under.events(r); }
+  Result<std::optional<std::string>> scan(std::int64_t n) override { return under.scan(n); }
+};
+
+wire::Request history_of(const std::string& id) {
+  wire::Request history;
+  history.kind = wire::Kind::history;
+  history.id = history.digest = id;
+  history.drive = "red";
+  return history;
+}
+
+wire::Request applied_of(const std::string& id, const std::map<std::string, double>& pulses_s) {
+  wire::Request applied;
+  applied.kind = wire::Kind::applied;
+  applied.id = applied.digest = id;
+  applied.drive = "red";
+  applied.pulses_s = pulses_s;
+  return applied;
+}
+
+template <class Log>
+struct HouseWith {
   StoppedClock clock;
-  log::MemoryLog log;
+  Log log;
   std::shared_ptr<const config::Configuration> configured = configuration();
   std::unique_ptr<service::Service> service;
 
-  House() { restart(); }
+  HouseWith() { restart(); }
   void restart() {
     service = std::make_unique<service::Service>(configured, log, clock, "test");
     REQUIRE(service->restore());
   }
-  wire::Reply ask(wire::Request request) {
-    auto accepted = service->accept(std::move(request), true);
-    if (auto* reply = std::get_if<wire::Reply>(&accepted)) return *reply;
-    auto task = std::get<service::Task>(std::move(accepted));
+  /// Accepted and fitted.
+  service::Task accepted(wire::Request request, bool answers = true) {
+    auto taken = service->accept(std::move(request), answers);
+    REQUIRE(std::holds_alternative<service::Task>(taken));
+    auto task = std::get<service::Task>(std::move(taken));
     if (task.needs_fit()) service::Service::fit(task);
+    return task;
+  }
+  service::Settled settle(service::Task task) {
     auto settled = service->settle({&task, 1});
     REQUIRE(settled.size() == 1);
-    REQUIRE(settled[0].reply);
-    return *settled[0].reply;
+    return std::move(settled[0]);
+  }
+  wire::Reply ask(wire::Request request) {
+    auto taken = service->accept(request, true);
+    if (auto* reply = std::get_if<wire::Reply>(&taken)) return *reply;
+    auto settled = settle(accepted(std::move(request)));
+    REQUIRE(settled.reply);
+    return *settled.reply;
   }
 };
+
+using House = HouseWith<log::MemoryLog>;
+using FaultyHouse = HouseWith<FaultyLog>;
 
 const wire::Estimate& estimate(const wire::Fitted& fitted, const std::string& name) {
   for (const auto& [key, value] : fitted.estimates)
@@ -148,6 +223,24 @@ TEST_CASE("the same id with the same content is answered from the log, with othe
   CHECK(events == 1);
 }
 
+// An id that came on the feed with other content vanished without a word: it is published under `rejected/`.
+TEST_CASE("an id reused on the feed is rejected in public") {
+  House house;
+  std::mt19937_64 random(1);
+  const auto request = flop("a", 118e3, random);
+  house.ask(request);
+  auto other = request;
+  other.digest = "another";
+  auto settled = house.settle(house.accepted(other, false));
+  CHECK_FALSE(settled.reply);
+  REQUIRE(settled.publications.size() == 1);
+  CHECK(settled.publications[0].topic == "rejected/");
+  CHECK(std::get<wire::Error>(settled.publications[0].body).fault.code == "id_reused");
+  settled = house.settle(house.accepted(request, false));
+  CHECK_FALSE(settled.reply);
+  CHECK(settled.publications.empty());
+}
+
 TEST_CASE("the state after a restart is the state before it") {
   House house;
   std::mt19937_64 random(2);
@@ -199,6 +292,7 @@ TEST_CASE("hold keeps, release lets go, history lists") {
   hold.kind = wire::Kind::release;
   hold.id = "r";
   house.ask(hold);
+  house.clock.time += kMinute;
   CHECK(std::get<wire::Fitted>(house.ask(flop("b", 118e3, random))).verdict == "apply");
   wire::Request history;
   history.kind = wire::Kind::history;
@@ -208,6 +302,35 @@ TEST_CASE("hold keeps, release lets go, history lists") {
   const auto rows = std::get<wire::Rows>(house.ask(history));
   CHECK(rows.rows.size() == 1);
   CHECK(rows.next);
+}
+
+// Pages of `history` repeated rows, or never ended, where scans had the same taken_at.
+TEST_CASE("history by pages ends and repeats nothing where times tie") {
+  House house;
+  std::mt19937_64 random(11);
+  const std::vector<int> minutes = {1, 1, 1, 2, 3, 3, 3, 3, 4};
+  for (std::size_t i = 0; i < minutes.size(); ++i) {
+    auto request = flop("s" + std::to_string(i), 118e3, random);
+    request.scans[0].taken_at = house.clock.time - kMinute * (10 - minutes[i]);
+    house.ask(request);
+  }
+  for (const std::int64_t limit : {1, 2, 3, 4, 9}) {
+    std::vector<std::string> seen;
+    wire::Request history;
+    history.kind = wire::Kind::history;
+    history.drive = "red";
+    history.limit = limit;
+    for (std::size_t page = 0;; ++page) {
+      REQUIRE(page < minutes.size());
+      history.id = "page " + std::to_string(page);
+      const auto rows = std::get<wire::Rows>(house.ask(history));
+      seen.insert(seen.end(), rows.rows.begin(), rows.rows.end());
+      if (!rows.next) break;
+      history.since = wire::parse_time(*rows.next);
+    }
+    CHECK(seen.size() == minutes.size());
+    CHECK(std::set<std::string>(seen.begin(), seen.end()).size() == minutes.size());
+  }
 }
 
 TEST_CASE("what cannot be done is said with its code and place") {
@@ -233,26 +356,7 @@ TEST_CASE("what cannot be done is said with its code and place") {
 }
 
 TEST_CASE("a log that fails answers log_unavailable and moves no state") {
-  struct Full final : log::Log {
-    log::MemoryLog under;
-    bool full = false;
-    Result<void> begin() override { return under.begin(); }
-    Result<void> commit() override {
-      if (!full) return under.commit();
-      under.roll_back();
-      return fault("log_unavailable", "nights.db", "the disk is full; make room, then go on");
-    }
-    void roll_back() override { under.roll_back(); }
-    Result<std::int64_t> append(const log::Event& e, const log::Bulk* b) override { return under.append(e, b); }
-    Result<void> keep_reply(const std::string& id, const log::StoredReply& r, log::Time t) override { return under.keep_reply(id, r, t); }
-    Result<std::optional<log::StoredReply>> find_reply(const std::string& id) override { return under.find_reply(id); }
-    Result<void> forget_replies(log::Time t) override { return under.forget_replies(t); }
-    Result<void> keep_configuration(const std::string& f, const std::string& t, log::Time n) override { return under.keep_configuration(f, t, n); }
-    Result<void> replay(const std::function<void(const log::Event&)>& v) override { return under.replay(v); }
-    Result<std::vector<Row>> history(const log::Range& r) override { return under.history(r); }
-    Result<std::vector<log::Event>> events(const log::Range& r) override { return under.events(r); }
-    Result<std::optional<std::string>> scan(std::int64_t n) override { return under.scan(n); }
-  } log;
+  FaultyLog log;
   StoppedClock clock;
   service::Service service(configuration(), log, clock, "test");
   REQUIRE(service.restore());
@@ -269,6 +373,158 @@ TEST_CASE("a log that fails answers log_unavailable and moves no state") {
   settled = service.settle({&task, 1});
   CHECK(std::holds_alternative<wire::Fitted>(*settled[0].reply));
   CHECK(service.state().log == "ok");
+}
+
+// A scan of the year 2199 was believed, and the drive's tracked state stayed there.
+TEST_CASE("a time in the future is refused, a clock that is a little ahead is not") {
+  House house;
+  std::mt19937_64 random(12);
+  auto request = flop("a", 118e3, random);
+  request.scans[0].taken_at = wire::parse_time("2199-01-01T00:00:00Z");
+  auto fault = std::get<wire::Error>(house.ask(request)).fault;
+  CHECK(fault.code == "bad_value");
+  CHECK(fault.where == "scan.taken_at");
+  CHECK(fault.message.find("2199") != std::string::npos);
+  request.scans[0].taken_at = house.clock.time + 5 * kMinute + 1;
+  CHECK(std::holds_alternative<wire::Error>(house.ask(request)));
+  request.scans[0].taken_at = house.clock.time + 5 * kMinute;
+  CHECK(std::holds_alternative<wire::Fitted>(house.ask(request)));
+  auto applied = applied_of("b", {{"flip", 4.16e-6}});
+  applied.applied_at = house.clock.time + 6 * kMinute;
+  CHECK(std::get<wire::Error>(house.ask(applied)).fault.where == "applied_at");
+}
+
+// `applied` with 4.1 for 4.1 us was noted, and every later change was reckoned from it.
+TEST_CASE("a length applied in other units is refused, one outside the limits is noted and said") {
+  House house;  // flip: limits 1 us to 20 us
+  for (const double length_s : {4.1, 4100.0, 1e9, 201e-6, 0.09e-6, 4.1e-15}) {
+    const auto fault = std::get<wire::Error>(house.ask(applied_of("slip", {{"flip", length_s}}))).fault;
+    CHECK(fault.code == "bad_value");
+    CHECK(fault.where == "pulses.flip");
+    CHECK(fault.message.find("seconds") != std::string::npos);
+  }
+  CHECK(house.service->state().troubles.empty());
+  CHECK(std::holds_alternative<wire::Noted>(house.ask(applied_of("a", {{"flip", 25e-6}}))));
+  const auto said = house.service->state();
+  CHECK(said.drives.at("red").pulses_s.at("flip") == 25e-6);
+  REQUIRE(said.troubles.size() == 1);
+  CHECK(said.troubles[0].find("red: the pulse `flip` in force, 25") == 0);
+  CHECK(said.troubles[0].find("widen `limits`") != std::string::npos);
+  CHECK(std::holds_alternative<wire::Noted>(house.ask(applied_of("b", {{"flip", 20e-6}}))));
+  CHECK(house.service->state().troubles.empty());
+}
+
+// Troubles said what was wrong and not what to do.
+TEST_CASE("troubles say what to do") {
+  House house;
+  std::mt19937_64 random(13);
+  for (int i = 0; i < 3; ++i) {
+    CHECK(house.service->state().troubles.empty());
+    house.clock.time += 10 * kMinute;
+    REQUIRE(std::get<wire::Fitted>(house.ask(flop("s" + std::to_string(i), 118e3 * (1 - 0.01 * i), random))).verdict == "apply");
+  }
+  auto troubles = house.service->state().troubles;
+  REQUIRE(troubles.size() == 1);
+  CHECK(troubles[0].find("3 proposals") != std::string::npos);
+  CHECK(troubles[0].find("send `applied`") != std::string::npos);
+  house.ask(applied_of("applied", {{"flip", 4.16e-6}}));
+  CHECK(house.service->state().troubles.empty());
+  wire::Request hold;
+  hold.kind = wire::Kind::hold;
+  hold.id = "h";
+  hold.drive = "red";
+  hold.by = "Ada";
+  hold.why = "realigning";
+  house.ask(hold);
+  troubles = house.service->state().troubles;
+  REQUIRE(troubles.size() == 1);
+  CHECK(troubles[0].find("red: held by Ada (realigning)") == 0);
+  CHECK(troubles[0].find("`release`") != std::string::npos);
+}
+
+// A history that could not be read, or a log that could not be written, failed every task that was settled beside.
+TEST_CASE("what needs no writing is settled apart from what does, in order") {
+  FaultyHouse house;
+  std::mt19937_64 random(7);
+  auto loose = flop("loose", 118e3, random);
+  loose.options.store = false;
+  const auto group = [&](const std::string& name) {
+    std::vector<service::Task> tasks;
+    for (const auto& request : {flop("a" + name, 118e3, random), history_of("h" + name), loose, flop("b" + name, 118e3, random)})
+      tasks.push_back(house.accepted(request));
+    return house.service->settle(tasks);
+  };
+  const auto code = [](const service::Settled& settled) {
+    const auto* error = std::get_if<wire::Error>(&*settled.reply);
+    return error == nullptr ? std::string() : error->fault.code;
+  };
+  auto settled = group("1");
+  REQUIRE(settled.size() == 4);
+  CHECK(std::get<wire::Fitted>(*settled[0].reply).stored);
+  CHECK(std::get<wire::Rows>(*settled[1].reply).rows.size() == 1);
+  CHECK_FALSE(std::get<wire::Fitted>(*settled[2].reply).stored);
+  CHECK(std::get<wire::Fitted>(*settled[3].reply).stored);
+
+  house.log.unreadable = true;
+  settled = group("2");
+  CHECK(code(settled[0]).empty());
+  CHECK(code(settled[1]) == "log_unavailable");
+  CHECK(code(settled[2]).empty());
+  CHECK(code(settled[3]).empty());
+
+  house.log.unreadable = false;
+  house.log.locked = true;
+  settled = group("3");
+  CHECK(code(settled[0]) == "log_unavailable");
+  CHECK(std::get<wire::Rows>(*settled[1].reply).rows.size() == 4);
+  CHECK(code(settled[2]).empty());
+  CHECK(code(settled[3]) == "log_unavailable");
+}
+
+// An exception between begin and commit left the transaction open: every later request failed.
+TEST_CASE("an exception takes back the transaction") {
+  FaultyHouse house;
+  std::mt19937_64 random(8);
+  house.log.broken = true;
+  auto task = house.accepted(flop("a", 118e3, random));
+  CHECK_THROWS(house.service->settle({&task, 1}));
+  house.log.broken = false;
+  CHECK(std::holds_alternative<wire::Fitted>(house.ask(flop("b", 118e3, random))));
+  CHECK(std::get<wire::Rows>(house.ask(history_of("h"))).rows.size() == 1);
+}
+
+// After a reload the log named configurations of which it did not hold the text.
+TEST_CASE("the text of a configuration is in the log before the first fit under it") {
+  FaultyHouse house;
+  std::mt19937_64 random(9);
+  house.ask(flop("a", 118e3, random));
+  auto fresh = *configuration();
+  fresh.fingerprint = "another";
+  house.service->configure(std::make_shared<const config::Configuration>(fresh));
+  house.log.full = true;
+  CHECK(std::holds_alternative<wire::Error>(house.ask(flop("b", 118e3, random))));
+  house.log.full = false;
+  house.log.configurations.pop_back();  // taken back with its group
+  CHECK(std::holds_alternative<wire::Fitted>(house.ask(flop("b", 118e3, random))));
+  house.ask(flop("c", 118e3, random));
+  CHECK(house.log.configurations == std::vector<std::string>{configuration()->fingerprint, "another"});
+  CHECK(house.log.fits_before_a_configuration == 0);
+}
+
+// Replies were forgotten at the start alone: a daemon that ran for months kept them all.
+TEST_CASE("replies of more than seven days ago are forgotten once a day") {
+  FaultyHouse house;
+  std::mt19937_64 random(10);
+  const auto request = flop("a", 118e3, random);
+  house.ask(request);
+  CHECK(house.log.forgotten.size() == 1);
+  for (int day = 1; day <= 9; ++day) {
+    house.clock.time += 24 * 60 * kMinute;
+    for (int i = 0; i < 3; ++i) house.ask(flop("d" + std::to_string(3 * day + i), 118e3, random));
+  }
+  REQUIRE(house.log.forgotten.size() == 10);
+  CHECK(house.log.forgotten.back() == house.clock.time - 7 * 24 * 60 * kMinute);
+  CHECK_FALSE(house.log.find_reply("a").value());
 }
 
 TEST_CASE("a measured flop that no damped cosine describes is refused, and its frequency shown") {
