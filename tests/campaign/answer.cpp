@@ -92,6 +92,8 @@ double held_against(const Case& of, std::size_t pulse, double value) {
   const Refit again = refit(of);
   const auto& fit = again.fit;
   if (fit.outcome != infer::FitOutcome::fitted) return std::nan("");
+  infer::Prior prior = fit.prior;
+  if (of.misstated) prior.dead_time.sigma = std::abs(of.truth.dead_time - prior.dead_time.mean);
   infer::ObjectiveWorkspace work;
   work.reserve(of.scan.axis.size());
   infer::Lead lead;
@@ -102,7 +104,7 @@ double held_against(const Case& of, std::size_t pulse, double value) {
     for (auto start : starts(of, fit.physical)) {
       const auto dynamics = static_cast<infer::Dynamics>(candidate);
       if (dynamics != fit.chosen || !(start.damping > 0)) start.damping = dynamics == infer::Dynamics::undamped ? 0 : 0.2 * start.generalised / 10;
-      const infer::ScanObjective objective(again.scan.batch, readout, fit.prior, dynamics, lead, start.contrast() < 0, work);
+      const infer::ScanObjective objective(again.scan.batch, readout, prior, dynamics, lead, start.contrast() < 0, work);
       auto bounds = objective.bounds();
       auto x = objective.pack(start);
       const auto unbound = infer::minimise(objective, x, bounds);

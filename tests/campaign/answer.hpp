@@ -13,7 +13,8 @@ namespace halfturn::campaign {
 wire::Fitted answer(const Case& of, double level, const std::string& dynamics = {});
 
 /// The least deviance, priors counted and excess scatter divided out, over all candidates with the length of pulse `pulse` (lines:
-/// the line's offset, rad/s) held at `value`, less the least one anywhere: what the data hold against the value.
+/// the line's offset, rad/s) held at `value`, less the least one anywhere: what the data hold against the value. A dead time that the configuration misstates is held as loosely as it is
+/// off: what is configured wrongly is not the data's word.
 double held_against(const Case& of, std::size_t pulse, double value);
 
 /// Deviance that the best single line leaves of a scan whose counts are those expected: how plainly more is seen than one line.

@@ -41,7 +41,8 @@ std::vector<Parameter> parameters_of(const Case& c) {
   std::vector<Parameter> all = {member(&Apparatus::rabi, 1e-5 * t.rabi)};
   if (t.line) all.push_back(member(&Apparatus::detuning, 1e-5 / t.pulse_s));
   else if (c.drive.carrier_uncertainty) all.push_back(member(&Apparatus::detuning, 1e-5 * t.rabi, *c.drive.carrier_uncertainty));
-  all.push_back(member(&Apparatus::dead_time, 1e-5 * period, c.drive.dead_time ? c.drive.dead_time->sigma : 100e-9));
+  const double stated = c.drive.dead_time ? c.drive.dead_time->sigma : 100e-9;
+  all.push_back(member(&Apparatus::dead_time, 1e-5 * period, c.misstated ? std::abs(t.dead_time) : stated));
   for (const auto rate : {&Apparatus::decay, &Apparatus::loss, &Apparatus::dephasing})
     if (t.*rate > 0) all.push_back(member(rate, 1e-3 * t.*rate));
   const auto& e = t.ensemble;

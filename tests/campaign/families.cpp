@@ -112,6 +112,7 @@ void dead_time(Random& r, bool within, Case& c) {
   const double sigma = period * (within ? log_uniform(r, 0.01, 0.1) : log_uniform(r, 0.001, 0.02));
   c.drive.dead_time = infer::Known{0, sigma};
   c.truth.dead_time = sigma * (within ? normal(r) : either_sign(r, uniform(r, 4, 10)));
+  c.misstated = !within;
   c.true_dynamics = "undamped";
   finish_flop(r, plan, c);
 }

@@ -26,6 +26,7 @@ struct Case {
   double overdispersion = 1;        // variance over the binomial's
   std::string true_dynamics;        // name of the candidate that is the truth; empty: none of them, or several
   bool to_be_refused = false;       // no answer would be right
+  bool misstated = false;           // the dead time is far from what is configured
   bool aliased = false;             // another frequency fits alike, and `expect` holds it
 };
 

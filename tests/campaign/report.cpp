@@ -40,15 +40,16 @@ Json number(double value) { return std::isfinite(value) ? Json(value) : Json(nul
 }  // namespace
 
 void print_table(std::ostream& out, const Result& result) {
-  char line[200];
-  std::snprintf(line, sizeof line, "%-21s %7s %8s %7s %6s %6s %6s %6s %7s %7s  %s\n", "family", "scans", "healthy", "used %", "wrong", "conv.",
-                "in 68", "in 95", "rms/CR", "rabi", "refused for");
+  char line[240];
+  std::snprintf(line, sizeof line, "%-21s %7s %8s %7s %6s %6s %6s %6s %6s %6s %7s %7s  %s\n", "family", "scans", "healthy", "used %", "wrong", "conv.",
+                "in 68", "in 95", "u. 68", "u. 95", "rms/CR", "rabi", "refused for");
   out << line;
   for (const auto& row : result.rows) {
-    std::snprintf(line, sizeof line, "%-21s %7lld %8lld %7s %6lld %6lld %6s %6s %7s %7s  ", row.family.c_str(), static_cast<long long>(row.scans),
+    std::snprintf(line, sizeof line, "%-21s %7lld %8lld %7s %6lld %6lld %6s %6s %6s %6s %7s %7s  ", row.family.c_str(), static_cast<long long>(row.scans),
                   static_cast<long long>(row.healthy), figure(100 * share(row.healthy_used, row.healthy), "%.1f").c_str(),
                   static_cast<long long>(row.wrong), static_cast<long long>(row.converged), figure(share(row.in_68, row.converged), "%.3f").c_str(),
                   figure(share(row.in_95, row.converged), "%.3f").c_str(),
+                  figure(share(row.used_in_68, row.used_converged), "%.3f").c_str(), figure(share(row.used_in_95, row.used_converged), "%.3f").c_str(),
                   figure(row.measured > 0 ? row.rms_over_bound : NAN, "%.3f").c_str(),
                   figure(row.rabi_measured > 0 ? row.rabi_rms_over_bound : NAN, "%.3f").c_str());
     out << line << refusals_in_words(row) << '\n';
@@ -79,6 +80,9 @@ void print_json(std::ostream& out, const Result& result) {
     one["converged"] = row.converged;
     one["coverage_68"] = number(share(row.in_68, row.converged));
     one["coverage_95"] = number(share(row.in_95, row.converged));
+    one["used_converged"] = row.used_converged;
+    one["used_coverage_68"] = number(share(row.used_in_68, row.used_converged));
+    one["used_coverage_95"] = number(share(row.used_in_95, row.used_converged));
     one["rms_over_bound"] = number(row.measured > 0 ? row.rms_over_bound : NAN);
     one["rabi_rms_over_bound"] = number(row.rabi_measured > 0 ? row.rabi_rms_over_bound : NAN);
     one["rightly_refused"] = row.rightly_refused;

@@ -17,6 +17,7 @@ constexpr double kOneSigma = 0.6826894921370859;
 constexpr double kOffAngle = 0.050;   // rad
 constexpr double kOffLine = 0.1;      // of the width
 constexpr double kExcluded = 25;      // deviance
+constexpr double kSigmas = 5;         // the square root of that
 constexpr double kSpare = 1.5;
 constexpr double kExpectedGain = 60;
 constexpr double kSeenTwice = 60;     // deviance left by one line where two are plain
@@ -62,22 +63,26 @@ bool healthy(const Case& of, const Family& family, const Bound& bound, double wi
   return rate * span / kTwoPi >= 1 && least >= accept.min_cycles && precise;
 }
 
-/// Off by more than is allowed, and what the data hold against the truth there (the largest over the pulses).
-double off_and_held_against(const Case& of, const wire::Fitted& fitted, double width, bool& off) {
-  double against = std::nan("");
-  off = false;
+/// How a used answer that is off by more than is allowed fares; the worst of its pulses.
+struct Off {
+  double held_against = std::numeric_limits<double>::quiet_NaN();  // by the data against the truth, deviance
+  double in_sigmas = 0;                                            // of the answer's own
+};
+Off how_far_off(const Case& of, const wire::Fitted& fitted, double width) {
+  Off off;
   if (of.truth.line) {
-    off = std::abs(scored_quantity(of, fitted).value - of.truth.detuning) > kOffLine * width;
-    return off ? held_against(of, 0, of.truth.detuning) : against;
+    const bool far = std::abs(scored_quantity(of, fitted).value - of.truth.detuning) > kOffLine * width;
+    if (far) off.held_against = held_against(of, 0, of.truth.detuning);
+    return off;
   }
   for (std::size_t i = 0; i < fitted.pulses.size(); ++i) {
     const auto& pulse = fitted.pulses[i].second;
     const double truth = best_pulse(of.truth, pulse.angle_rad);
     if (pulse.verdict == "refuse" || !(std::abs(pulse.exact_s - truth) * of.truth.generalised() > kOffAngle)) continue;
-    off = true;
-    against = std::fmax(against, held_against(of, i, truth));
+    off.held_against = std::fmax(off.held_against, held_against(of, i, truth));
+    off.in_sigmas = std::max(off.in_sigmas, std::abs(pulse.exact_s - truth) / pulse.sigma_s);
   }
-  return against;
+  return off;
 }
 
 void judge_use(const Case& of, const wire::Fitted& fitted, double width, Scored& scored) {
@@ -85,25 +90,25 @@ void judge_use(const Case& of, const wire::Fitted& fitted, double width, Scored&
     scored.wrong = true;
     return;
   }
-  bool off = false;
-  scored.held_against = off_and_held_against(of, fitted, width, off);
-  scored.wrong = off && (scored.held_against > kExcluded || of.aliased);
+  const Off off = how_far_off(of, fitted, width);
+  scored.held_against = off.held_against;
+  scored.wrong = off.held_against > kExcluded || (of.aliased && off.in_sigmas > kSigmas);
   if (of.truth.line && of.truth.second_weight > 0) scored.wrong = scored.wrong || left_by_one_line(of) >= kSeenTwice;
 }
 
-/// Bare or generalised, by what the contrast's prior allows to tell: sigma below 0.2 (Delta/Omega)^2.
+/// Whether the contrast's prior lets a detuned scan tell the bare from the generalised frequency: sigma below 0.2 (Delta/Omega)^2.
 bool tells_bare(const Case& of) {
   if (of.truth.detuning == 0) return true;
   const double known = of.drive.contrast ? of.drive.contrast->sigma : INFINITY;
   return known < 0.2 * std::pow(of.truth.detuning / of.truth.rabi, 2);
 }
 
+/// Where it does not, no bound on the bare frequency is to be had from the derivatives at one point.
 double rabi_off(const Case& of, const Bound& bound) {
+  if (of.truth.line || !tells_bare(of)) return std::nan("");
   const auto fitted = answer(of, 0.95, of.true_dynamics);
   const auto* rabi = estimate(fitted, "rabi_hz");
-  if (rabi == nullptr || of.truth.line) return std::nan("");
-  const bool bare = tells_bare(of);
-  return (kTwoPi * rabi->value - (bare ? of.truth.rabi : of.truth.generalised())) / (bare ? bound.rabi : bound.generalised);
+  return rabi == nullptr ? std::nan("") : (kTwoPi * rabi->value - of.truth.rabi) / bound.rabi;
 }
 
 }  // namespace
@@ -146,6 +151,9 @@ Row gather(const Family& family, std::span<const Scored> scans) {
     row.converged += scan.converged;
     row.in_68 += scan.in_68;
     row.in_95 += scan.in_95;
+    row.used_converged += scan.used && scan.converged;
+    row.used_in_68 += scan.used && scan.in_68;
+    row.used_in_95 += scan.used && scan.in_95;
     row.rightly_refused += scan.rightly_refused;
     if (!scan.refusal.empty()) ++row.refusals[scan.refusal];
     if (std::isfinite(scan.off)) {

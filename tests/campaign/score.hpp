@@ -26,8 +26,8 @@ struct Scored {
 };
 
 /// Definitions. Truth: of a pulse, its best length on the carrier as it stands; of a line, its centre. Wrong: used, though off
-/// by more than 50 mrad of rotation (a tenth of the line's width) with a deviance above 25 held against the truth; or off where
-/// an alias in `expect` fits as well; or used where nothing is to be found; or two lines used where one leaves a deviance of 60
+/// by more than 50 mrad of rotation (a tenth of the line's width) with a deviance above 25 held against the truth; or off by as
+/// much and by more than five of its own sigmas where an alias in `expect` fits as well; or used where nothing is to be found; or two lines used where one leaves a deviance of 60
 /// or more. Healthy: at least one cycle, bounds that pass the gates of
 /// angle (carrier) error and cycles with 1.5 to spare, an expected gain over a flat line of at least 60; for lines the carrier
 /// step as well.
@@ -37,6 +37,7 @@ Scored score(const Case& of, const Family& family);
 struct Row {
   std::string family;
   std::int64_t scans = 0, healthy = 0, healthy_used = 0, used = 0, wrong = 0, converged = 0, in_68 = 0, in_95 = 0, rightly_refused = 0;
+  std::int64_t used_converged = 0, used_in_68 = 0, used_in_95 = 0;  // of those used
   std::int64_t measured = 0, rabi_measured = 0;  // scans behind the next two
   double rms_over_bound = 0, rabi_rms_over_bound = 0;
   std::map<std::string, std::int64_t> refusals;
