@@ -18,16 +18,7 @@ double log_binomial(std::int64_t k, std::int64_t n, double p) {
   return std::lgamma(b + 1) - std::lgamma(a + 1) - std::lgamma(b - a + 1) + a * std::log(p) + (b - a) * std::log1p(-p);
 }
 
-/// Probability of `k` or more of `n` at `p`, and of `k` or fewer.
-double at_least(std::int64_t k, std::int64_t n, double p) {
-  if (k <= 0) return 1;
-  if (p <= 0) return 0;
-  if (p >= 1) return 1;
-  double sum = 0;
-  for (std::int64_t i = k; i <= n; ++i) sum += std::exp(log_binomial(i, n, p));
-  return sum;
-}
-double at_most(std::int64_t k, std::int64_t n, double p) { return at_least(n - k, n, 1 - p); }
+double at_most(std::int64_t k, std::int64_t n, double p) { return probability_at_least(n - k, n, 1 - p); }
 
 double bound_of(std::string_view family, Figure figure, double wanted) {
   for (const auto& entry : not_yet())
@@ -48,7 +39,7 @@ class Check {
 
   void no_more(const char* what, Figure figure, std::int64_t k, std::int64_t n, double wanted) const {
     const double bound = bound_of(row_.family, figure, wanted);
-    if (n > 0 && at_least(k, n, bound) < kChance) failed_.push_back(told(row_, what, static_cast<double>(k) / static_cast<double>(n), bound));
+    if (n > 0 && probability_at_least(k, n, bound) < kChance) failed_.push_back(told(row_, what, static_cast<double>(k) / static_cast<double>(n), bound));
   }
   void no_less(const char* what, Figure figure, std::int64_t k, std::int64_t n, double wanted) const {
     const double bound = bound_of(row_.family, figure, wanted);
@@ -103,6 +94,15 @@ void check_row(const Row& row, const Family& family, std::vector<std::string>& f
 
 }  // namespace
 
+double probability_at_least(std::int64_t k, std::int64_t n, double p) {
+  if (k <= 0) return 1;
+  if (p <= 0) return 0;
+  if (p >= 1) return 1;
+  double sum = 0;
+  for (std::int64_t i = k; i <= n; ++i) sum += std::exp(log_binomial(i, n, p));
+  return sum;
+}
+
 std::vector<std::string> failures(const Result& result) {
   std::vector<std::string> failed;
   std::int64_t wrong = 0, scans = 0;
@@ -113,7 +113,7 @@ std::vector<std::string> failures(const Result& result) {
     wrong += row.wrong;
     scans += row.scans;
   }
-  if (at_least(wrong, scans, kWrong) < kChance)
+  if (probability_at_least(wrong, scans, kWrong) < kChance)
     failed.push_back(std::to_string(wrong) + " of " + std::to_string(scans) + " scans are wrong, more than 3 in a million");
   return failed;
 }
