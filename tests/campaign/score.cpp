@@ -90,10 +90,14 @@ void judge_use(const Case& of, const wire::Fitted& fitted, double width, Scored&
     scored.wrong = true;
     return;
   }
+  if (of.truth.line && of.truth.second_weight > 0) {
+    scored.held_against = left_by_one_line(of);
+    scored.wrong = scored.held_against >= kSeenTwice;
+    return;
+  }
   const Off off = how_far_off(of, fitted, width);
   scored.held_against = off.held_against;
   scored.wrong = off.held_against > kExcluded || (of.aliased && off.in_sigmas > kSigmas);
-  if (of.truth.line && of.truth.second_weight > 0) scored.wrong = scored.wrong || left_by_one_line(of) >= kSeenTwice;
 }
 
 /// Whether the contrast's prior lets a detuned scan tell the bare from the generalised frequency: sigma below 0.2 (Delta/Omega)^2.

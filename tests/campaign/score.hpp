@@ -25,12 +25,13 @@ struct Scored {
   std::string refusal;      // most serious reason; empty: used
 };
 
-/// Definitions. Truth: of a pulse, its best length on the carrier as it stands; of a line, its centre. Wrong: used, though off
-/// by more than 50 mrad of rotation (a tenth of the line's width) with a deviance above 25 held against the truth; or off by as
-/// much and by more than five of its own sigmas where an alias in `expect` fits as well; or used where nothing is to be found; or two lines used where one leaves a deviance of 60
-/// or more. Healthy: at least one cycle, bounds that pass the gates of
-/// angle (carrier) error and cycles with 1.5 to spare, an expected gain over a flat line of at least 60; for lines the carrier
-/// step as well.
+/// Definitions. Truth: of a pulse, its best length on the carrier as it stands; of a line, its centre.
+/// Wrong: used, though off by more than 50 mrad of rotation (a tenth of the line's width) with a deviance above 25 held against
+/// the truth; or off by as much and by more than five of its own sigmas where an alias in `expect` fits as well; or used where
+/// nothing is to be found; or two lines used where one line leaves a deviance of 60 or more (nobody could tell two lines that
+/// one describes).
+/// Healthy: at least one cycle, bounds that pass the gates of angle (carrier) error and cycles with 1.5 to spare, an expected
+/// gain over a flat line of at least 60; for lines the carrier step as well.
 Scored score(const Case& of, const Family& family);
 
 /// A row of the table.
