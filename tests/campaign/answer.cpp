@@ -103,7 +103,7 @@ double held_against(const Case& of, std::size_t pulse, double value) {
   for (int candidate = 0; candidate < 4; ++candidate) {
     for (auto start : starts(of, fit.physical)) {
       const auto dynamics = static_cast<infer::Dynamics>(candidate);
-      if (dynamics != fit.chosen || !(start.damping > 0)) start.damping = dynamics == infer::Dynamics::undamped ? 0 : 0.2 * start.generalised / 10;
+      if (dynamics != fit.chosen || !(start.damping > 0)) start.damping = dynamics == infer::Dynamics::undamped ? 0 : 0.02 * start.generalised;
       const infer::ScanObjective objective(again.scan.batch, readout, prior, dynamics, lead, start.contrast() < 0, work);
       auto bounds = objective.bounds();
       auto x = objective.pack(start);

@@ -6,6 +6,7 @@
 
 #include "model/quantity/constants.hpp"
 #include "tests/campaign/draws.hpp"
+#include "tests/campaign/line_families.hpp"
 
 namespace halfturn::campaign {
 namespace {
@@ -257,68 +258,6 @@ void saturated(Random& r, Case& c) {
   finish_flop(r, plan, c);
 }
 
-double near_carrier(Random& r) { return uniform(r, -0.33, 0.33); }
-double window(Random& r) { return log_uniform(r, 1, 6); }
-
-void line_clean(Random& r, Case& c) {
-  const Plan plan = begin_line(r, {}, 0.3, 4, c);
-  c.true_dynamics = "undamped";
-  const double offset = near_carrier(r);
-  finish_line(r, plan, offset, -offset, window(r), c);
-}
-void line_far(Random& r, Case& c) {
-  const Plan plan = begin_line(r, {}, 0.3, 4, c);
-  const double half = window(r), offset = uniform(r, -0.8, 0.8) * half;
-  finish_line(r, plan, offset, -offset, half, c);
-}
-void line_power(Random& r, Case& c) {
-  const Plan plan = begin_line(r, {}, 3, 12, c);
-  c.truth.dephasing = uniform(r, 2, 6) / c.truth.pulse_s;
-  const double offset = near_carrier(r);
-  finish_line(r, plan, offset, -offset, log_uniform(r, 1, 4), c);
-}
-void line_doppler(Random& r, Case& c) {
-  const Plan plan = begin_line(r, {}, 0.3, 2, c);
-  c.truth.ensemble.detuning_spread_hz = line_width(c.truth) / kTwoPi * log_uniform(r, 0.2, 2);
-  const double offset = near_carrier(r);
-  finish_line(r, plan, offset, -offset, log_uniform(r, 1, 4), c);
-}
-void line_decay(Random& r, Case& c) {
-  const Plan plan = begin_line(r, {}, 0.3, 3, c);
-  c.truth.decay = log_uniform(r, 0.3, 10) / c.truth.pulse_s;
-  const double offset = near_carrier(r);
-  finish_line(r, plan, offset, -offset, log_uniform(r, 1, 4), c);
-}
-void line_edge(Random& r, Case& c) {
-  const Plan plan = begin_line(r, {}, 0.3, 4, c);
-  const double half = window(r), centre = either_sign(r, half + uniform(r, -0.5, 0.1));
-  finish_line(r, plan, near_carrier(r), centre, half, c);
-}
-void line_beyond(Random& r, Case& c) {
-  const Plan plan = begin_line(r, {}, 0.3, 4, c);
-  const double half = window(r), offset = either_sign(r, half + uniform(r, 0.2, 1.5));
-  finish_line(r, plan, offset, -offset, half, c);
-}
-void line_side_lobe(Random& r, Case& c) {
-  const Plan plan = begin_line(r, {}, 0.7, 4, c);
-  const double half = uniform(r, 0.4, 1.5), offset = either_sign(r, uniform(r, 1.0, 3.5));
-  finish_line(r, plan, offset, -offset, half, c);
-}
-void line_two(Random& r, Case& c) {
-  const Plan plan = begin_line(r, {}, 0.3, 2, c);
-  const double half = log_uniform(r, 2, 6);
-  c.truth.second_weight = uniform(r, 0.3, 1);
-  c.truth.second_detuning = either_sign(r, uniform(r, 1, std::min(half - 0.5, 5.0)));
-  const double offset = near_carrier(r);
-  finish_line(r, plan, offset, -offset, half, c);
-}
-void line_missing(Random& r, Case& c) {
-  const Plan plan = begin_line(r, {}, 0.3, 4, c);
-  finish_line(r, plan, 0, 0, window(r), c);
-  count_given(r, plan, std::vector<double>(plan.points, c.truth.ground), c);
-  c.to_be_refused = true;
-}
-
 std::uint64_t fnv1a(std::string_view text) {
   std::uint64_t hash = 14695981039346656037ULL;
   for (const char letter : text) hash = (hash ^ static_cast<unsigned char>(letter)) * 1099511628211ULL;
@@ -365,16 +304,16 @@ const std::vector<Family>& families() {
       {"flat", K::barren, false, {"no_oscillation"}, flat},
       {"ramp", K::barren, false, {"no_oscillation", "monotone"}, ramp},
       {"saturated", K::competing, false, {}, saturated},
-      {"line_clean", K::single, true, {}, line_clean},
-      {"line_far", K::single, true, {}, line_far},
-      {"line_power", K::single, false, {}, line_power},
-      {"line_doppler", K::competing, false, {}, line_doppler},
-      {"line_decay", K::single, false, {}, line_decay},
-      {"line_edge", K::single, false, {}, line_edge},
-      {"line_beyond", K::competing, false, {}, line_beyond},
-      {"line_side_lobe", K::competing, false, {}, line_side_lobe},
-      {"line_two", K::misfit, false, {}, line_two},
-      {"line_missing", K::barren, false, {"no_line"}, line_missing},
+      {"line_clean", K::single, true, {}, lines::clean},
+      {"line_far", K::single, true, {}, lines::far},
+      {"line_power", K::single, false, {}, lines::power},
+      {"line_doppler", K::competing, false, {}, lines::doppler},
+      {"line_decay", K::single, false, {}, lines::decay},
+      {"line_edge", K::single, false, {}, lines::edge},
+      {"line_beyond", K::competing, false, {}, lines::beyond},
+      {"line_side_lobe", K::competing, false, {}, lines::side_lobe},
+      {"line_two", K::misfit, false, {}, lines::two},
+      {"line_missing", K::barren, false, {"no_line"}, lines::missing},
   };
   return all;
 }
