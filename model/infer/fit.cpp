@@ -29,6 +29,9 @@ Prior felt(const Prior& prior, std::span<const Mode> starts) {
 constexpr double kContradicted = 3.0;
 // ... and is then held this much more loosely, or not at all (readout).
 constexpr double kLoosened = 10.0;
+// The points' part of the information about the dead time that lets them contradict its prior. Below, the prior's wide tail, which
+// takes a hundredth from its curvature, would decide (campaign, "decay").
+constexpr double kPointsHeard = 0.1;
 // Deviance by which a fit without history's frequency must be better to be taken.
 constexpr double kClearlyBetter = 10.0;
 // Deviance gained over a flat line that a fit must show for what it says of the readout to count.
@@ -80,7 +83,9 @@ bool dead_time_contradicted(const ScanBatch& scan, const Prior& prior, const Fit
   if (fit.outcome != FitOutcome::fitted || scan.kind != Axis::duration || !(sigma > 0.0)) return false;
   const double z = (fit.physical.dead_time - prior.dead_time.mean) / sigma;
   const double share = fit.dead_time_s.sigma * fit.dead_time_s.sigma / (fit.quality.scatter * sigma * sigma);
-  return std::abs(z) > kContradicted || (share < 1.0 && z * z > kContradicted * kContradicted * (1.0 - share));
+  // Where the prior holds nine tenths of what is known, the points have no say of their own.
+  const bool told = 1.0 - share > kPointsHeard;
+  return std::abs(z) > kContradicted || (told && z * z > kContradicted * kContradicted * (1.0 - share));
 }
 
 /// Whether a line scan is badly described with the Rabi frequency that history knows: it may have been taken at another power that

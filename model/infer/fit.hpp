@@ -57,7 +57,7 @@ struct FitQuality {
   double deviance = kUnknown, dof = kUnknown;
   double p_value = kUnknown;        // of a deviance as large, moment-matched; before scatter is counted
   double scatter = 1.0;             // variance of the residuals over the readout's own; above 1 where p_value < 0.1, in full where < 0.01
-  double p_after_scatter = kUnknown;  // smallest p-value of runs, autocorrelation and largest residual, with scatter counted
+  double p_after_scatter = kUnknown;  // smallest p-value of runs, autocorrelation, largest residual and left-over oscillation, with scatter counted
   double cycles = kUnknown;         // seen within the span, lower end of the interval; duration scans
   double over_flat = kUnknown;      // deviance gained over a flat line, scatter counted
   double over_monotone = kUnknown;  // over the best monotone curve of any shape, scatter counted

@@ -43,9 +43,30 @@ double effective_parameters(const ScanObjective& objective, const Minimum& minim
   return std::clamp(share.trace(), 0.0, static_cast<double>(minimum.x.size()));
 }
 
-/// Smallest p-value, of three looks at the residuals in the axis's order and in units of their errors with scatter counted:
-/// too few runs of a sign, neighbours alike, the largest one (Bonferroni over both, and over the points).
-double residual_p_value(const Problem& problem, std::span<const double> signal, double scatter, std::vector<double>& order) {
+/// p-value of the strongest oscillation that is left in the residuals, at any frequency that the points can tell: half the deviance
+/// it gains is exponential by chance, with about two independent trials a point. It finds a second component, a harmonic, fringes.
+double left_over_p_value(const Problem& problem, std::span<const double> signal, double scatter, FitWorkspace& work) {
+  const auto n = problem.scan.points();
+  work.search.reserve(n);
+  for (std::size_t i = 0; i < n; ++i) {
+    const bool counts = measured(problem.readout, i);
+    work.search.value[i] = counts ? fraction(problem.readout, i) - signal[i] : 0.0;
+    work.search.weight[i] = counts ? 1.0 / (standard_variance(problem.readout, i, signal[i]) * scatter) : 0.0;
+  }
+  const LinearPoints points{problem.scan.axis, {work.search.value.data(), n}, {work.search.weight.data(), n}, problem.scan.axis[0]};
+  const double span = problem.sampling.span, distinct = problem.sampling.distinct;
+  const TrialGrid grid{constants::kTwoPi * 0.5 / span, constants::kTwoPi * 0.3 / span, static_cast<int>(std::min(2000.0, distinct / 0.6))};
+  const double none = 0.0;
+  search_frequencies(points, grid, {&none, 1}, work.search.frequencies);
+  const auto& gain = work.search.frequencies.gain;
+  const double most = *std::max_element(gain.begin(), gain.end());
+  return std::min(1.0, 2.0 * distinct * std::exp(-0.5 * most));
+}
+
+/// Smallest p-value, of four looks at the residuals in the axis's order and in units of their errors with scatter counted: too few
+/// runs of a sign, neighbours alike, the largest one, an oscillation left in them (Bonferroni over all, and over the points).
+double residual_p_value(const Problem& problem, std::span<const double> signal, double scatter, FitWorkspace& work) {
+  auto& order = work.order;
   const auto& axis = problem.scan.axis;
   std::vector<std::size_t> index;
   for (std::size_t i = 0; i < axis.size(); ++i)
@@ -63,7 +84,9 @@ double residual_p_value(const Problem& problem, std::span<const double> signal, 
   const double neighbours = std::isfinite(z) ? normal_cdf(-z) : 1.0;
   // Counting noise has longer tails than the normal law; a residual is held against a chi-square only where scatter was seen.
   const double outlier = scatter > 1.0 ? std::min(1.0, 2.0 * normal_cdf(-largest) * static_cast<double>(order.size())) : 1.0;
-  return std::min(1.0, 3.0 * std::min({runs, neighbours, outlier}));
+  // The search costs as much as all else here; a fit that is good enough as it is needs none.
+  const double left_over = scatter > 1.0 ? left_over_p_value(problem, signal, scatter, work) : 1.0;
+  return std::min(1.0, 4.0 * std::min({runs, neighbours, outlier, left_over}));
 }
 
 }  // namespace
@@ -86,7 +109,7 @@ FitQuality judge(const Problem& problem, const Solution& solution, FitWorkspace&
     const double counted = std::clamp((kScatterBegins - quality.p_value) / (kScatterBegins - kScatterFull), 0.0, 1.0);
     quality.scatter = 1.0 + counted * std::max(0.0, goodness_of_fit.deviance / goodness_of_fit.expected - 1.0);
   }
-  quality.p_after_scatter = residual_p_value(problem, work.signal, quality.scatter, work.order);
+  quality.p_after_scatter = residual_p_value(problem, work.signal, quality.scatter, work);
 
   const auto monotone = monotone_half_deviance(problem.readout, problem.scan.axis);
   quality.over_flat = 2.0 * (monotone.flat - half_deviance) / quality.scatter;

@@ -96,10 +96,10 @@ void line_gates(const infer::Fit& fit, const Context& context, Reasons& reasons)
     refuse(reasons, "uncertain", "The scan does not bound the line's centre. Widen the window so that both sides of the line are in it.");
     return;
   }
-  if (offset.value - 0.5 * width < fit.lowest || offset.value + 0.5 * width > fit.longest)
+  if (offset.value < fit.lowest || offset.value > fit.longest)
     refuse(reasons, "edge",
-           "The line's centre, " + hertz(offset) + ", is less than half its width, " + hertz(width) + ", from the edge of the window, " +
-               hertz(fit.lowest) + " to " + hertz(fit.longest) + ". Scan around that centre, so that both sides of the line are seen.");
+           "The line's centre, " + hertz(offset) + ", lies outside the window, " + hertz(fit.lowest) + " to " + hertz(fit.longest) +
+               ": it is a guess from one flank. Scan around that centre, so that both sides of the line are seen.");
   if (offset.sigma > context.accept.max_carrier_error * width)
     refuse(reasons, "uncertain",
            "The line's centre, " + hertz(offset) + ", is uncertain by " + percent(offset.sigma / width) + " of its width (allowed: " +
