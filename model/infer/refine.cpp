@@ -10,13 +10,9 @@ namespace {
 
 using constants::kTwoPi;
 
-// `expect` decides between modes whose points differ by less deviance than this; a truth outside is not hidden by it.
-constexpr double kExpectDecides = 4.0;
 // So many modes, the best by their first refinement, are refined under every candidate before they are compared: the first
 // candidate may be the wrong one, and costs hundreds of deviance where there is much data.
 constexpr std::size_t kModesInFull = 6;
-// Within so many resolution elements of half the sampling rate a frequency and its mirror image are one bump: neither is told.
-constexpr double kMirrorZone = 0.5;
 
 /// The rate of a candidate that damps an oscillation on resonance at `envelope`: gamma_phi/2, 3 Gamma/4, Gamma_loss/2.
 double damping_for(Dynamics dynamics, double envelope) {
@@ -112,13 +108,6 @@ Dynamics first_candidate(const Prior& prior, bool damped) {
   return Dynamics::leak;
 }
 
-/// Deviance of the scan's points alone: priors, that of the dead time above all, say nothing of an alias.
-double data_deviance(const Problem& problem, const Solution& solution, FitWorkspace& work) {
-  const ScanObjective objective(problem.scan, problem.readout, problem.prior, solution.dynamics, {}, solution.negative_contrast, work.objective);
-  double half = kUnknown;
-  return objective.data_part(solution.physical, half, {}) ? 2.0 * half : std::numeric_limits<double>::infinity();
-}
-
 }  // namespace
 
 int measured_points(const Readout& readout) {
@@ -152,68 +141,6 @@ std::vector<ModeSolutions> refine_modes(const Problem& problem, std::span<const 
   for (auto& mode : modes) refine_candidates(problem, mode, work);
   std::stable_sort(modes.begin(), modes.end(), [](const ModeSolutions& a, const ModeSolutions& b) { return a.best().aicc < b.best().aicc; });
   return modes;
-}
-
-std::size_t choose_mode(const Problem& problem, std::span<const ModeSolutions> modes, FitQuality& quality, FitWorkspace& work) {
-  const bool line = problem.scan.kind == Axis::detuning;
-  auto inside = [&](const ModeSolutions& mode) {
-    if (line) return true;
-    const double rabi = mode.best().physical.generalised;
-    if (!problem.prior.expect) return rabi <= problem.sampling.limit;
-    return rabi >= problem.prior.expect->low && rabi <= problem.prior.expect->high;
-  };
-  const double margin = problem.options.rival_margin * quality.scatter;
-  // The best mode of all; one that `expect` holds goes before it only where the points hardly prefer the other.
-  std::size_t chosen = 0;
-  for (std::size_t i = 1; i < modes.size() && !inside(modes[0]) && chosen == 0; ++i)
-    if (inside(modes[i]) && data_deviance(problem, modes[i].best(), work) < data_deviance(problem, modes[0].best(), work) + kExpectDecides) chosen = i;
-  quality.outside_expect = !inside(modes[chosen]);
-
-  std::vector<std::size_t> alike;
-  for (std::size_t i = 0; i < modes.size(); ++i)
-    if (i != chosen && (inside(modes[i]) || quality.outside_expect) && modes[i].best().aicc < modes[chosen].best().aicc + margin)
-      alike.push_back(i);
-  if (!alike.empty() && problem.prior.log_rabi && !line) {
-    // History decides where it knows one of them and none of the others.
-    const double sigma = std::max(problem.prior.log_rabi->sigma, 0.01);
-    auto distance = [&](std::size_t i) {
-      return std::abs(std::log(modes[i].best().physical.generalised) - problem.prior.log_rabi->mean) / sigma;
-    };
-    alike.push_back(chosen);
-    int known = 0, open = 0;
-    std::size_t which = chosen;
-    for (const std::size_t i : alike) {
-      if (distance(i) < 4.0) {
-        ++known;
-        which = i;
-      } else if (distance(i) < 8.0) {
-        ++open;
-      }
-    }
-    alike.pop_back();
-    if (known == 1 && open == 0) {
-      chosen = which;
-      quality.by_history = true;
-      return chosen;
-    }
-  }
-  if (!line && problem.sampling.even) {
-    const double found = modes[chosen].best().physical.generalised, mirror = 2.0 * problem.sampling.limit - found;
-    const bool close = std::abs(mirror - found) < 2.0 * kMirrorZone * kTwoPi / problem.sampling.span;
-    const auto& expect = problem.prior.expect;
-    if (close && (!expect || (mirror >= expect->low && mirror <= expect->high))) quality.rival = RivalMode{mirror, 0.0, false};
-  }
-  // The next best is said even where it is no rival.
-  for (std::size_t i = 0; i < modes.size(); ++i) {
-    if (i == chosen || !(inside(modes[i]) || quality.outside_expect)) continue;
-    const auto& other = modes[i].best();
-    RivalMode rival;
-    rival.frequency = line ? other.physical.line_offset : other.physical.generalised;
-    rival.deviance_above = std::max(0.0, (other.aicc - modes[chosen].best().aicc) / quality.scatter);
-    rival.opposite_contrast = other.negative_contrast != modes[chosen].best().negative_contrast;
-    if (!quality.rival || rival.deviance_above < quality.rival->deviance_above) quality.rival = rival;
-  }
-  return chosen;
 }
 
 }  // namespace halfturn::infer
