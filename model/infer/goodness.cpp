@@ -3,6 +3,7 @@
 
 #include <Eigen/Cholesky>
 #include <algorithm>
+#include <array>
 #include <cmath>
 #include <limits>
 #include <vector>
@@ -24,9 +25,17 @@ DevianceMoments exact(double shots, double expected) {
   const double p = counted ? expected / shots : 0.0;
   double probability = counted ? std::exp(shots * std::log1p(-p)) : std::exp(-expected);
   const double last = std::min(shots, std::ceil(expected + 10.0 * std::sqrt(expected) + 20.0));
+  // At most kFew + 10 sqrt(kFew) + 21 outcomes.
+  std::array<double, 96> outcomes, weights, means, deviances;
+  const auto count = static_cast<std::size_t>(std::floor(last)) + 1;
+  for (std::size_t k = 0; k < count; ++k) outcomes[k] = static_cast<double>(k);
+  std::fill_n(weights.begin(), count, counted ? shots : 1.0);
+  std::fill_n(means.begin(), count, counted ? p : expected);
+  const Readout all{counted ? Kind::binomial : Kind::poisson, {outcomes.data(), count}, {weights.data(), count}};
+  half_deviances(all, {means.data(), count}, deviances);
   double d1 = 0.0, d2 = 0.0, dk = 0.0, dkk = 0.0;
-  for (double k = 0.0; k <= last; k += 1.0) {
-    const double d = 2.0 * (counted ? binomial(k, shots, p) : poisson(k, 1.0, expected)).half_deviance;
+  for (std::size_t i = 0; i < count; ++i) {
+    const double k = outcomes[i], d = 2.0 * deviances[i];
     const double weighted = probability * d, away = k - expected;
     d1 += weighted;
     d2 += weighted * d;

@@ -91,9 +91,17 @@ HALFTURN_CLONES void poisson_chunk(Chunk& c) {
   }
 }
 
-bool sum(void (*fill)(Chunk&), const Readout& readout, std::span<const double> mean, double& half_deviance, std::span<double> score,
-         std::span<double> information) {
-  double total = 0.0;
+using Fill = void (*)(Chunk&);
+
+Fill fill_of(Readout::Kind kind) {
+  if (kind == Readout::Kind::gaussian) return gaussian_chunk;
+  return kind == Readout::Kind::poisson ? poisson_chunk : binomial_chunk;
+}
+
+/// Calls `take(chunk, first)` for the points in turn, a chunk at a time.
+template <class Take>
+void each_chunk(const Readout& readout, std::span<const double> mean, Take take) {
+  const Fill fill = fill_of(readout.kind);
   Chunk chunk;
   for (std::size_t first = 0; first < mean.size(); first += kChunk) {
     chunk.observed = readout.observed.data() + first;
@@ -101,13 +109,8 @@ bool sum(void (*fill)(Chunk&), const Readout& readout, std::span<const double> m
     chunk.mean = mean.data() + first;
     chunk.count = std::min(kChunk, mean.size() - first);
     fill(chunk);
-    for (std::size_t i = 0; i < chunk.count; ++i) total += chunk.deviance[i];
-    if (!score.empty()) std::copy_n(chunk.score.begin(), chunk.count, score.begin() + static_cast<std::ptrdiff_t>(first));
-    if (!information.empty())
-      std::copy_n(chunk.information.begin(), chunk.count, information.begin() + static_cast<std::ptrdiff_t>(first));
+    take(chunk, first);
   }
-  half_deviance = std::isnan(total) ? kInfinity : total;
-  return std::isfinite(total);
 }
 
 }  // namespace
@@ -120,12 +123,18 @@ PointLikelihood poisson(double photons, double exposures, double mean) { return 
 
 bool evaluate(const Readout& readout, std::span<const double> mean, double& half_deviance, std::span<double> score,
               std::span<double> information) {
-  switch (readout.kind) {
-    case Readout::Kind::binomial: return sum(binomial_chunk, readout, mean, half_deviance, score, information);
-    case Readout::Kind::gaussian: return sum(gaussian_chunk, readout, mean, half_deviance, score, information);
-    case Readout::Kind::poisson: return sum(poisson_chunk, readout, mean, half_deviance, score, information);
-  }
-  return false;
+  double total = 0.0;
+  each_chunk(readout, mean, [&](const Chunk& chunk, std::size_t first) {
+    for (std::size_t i = 0; i < chunk.count; ++i) total += chunk.deviance[i];
+    if (!score.empty()) std::copy_n(chunk.score.begin(), chunk.count, score.data() + first);
+    if (!information.empty()) std::copy_n(chunk.information.begin(), chunk.count, information.data() + first);
+  });
+  half_deviance = std::isnan(total) ? kInfinity : total;
+  return std::isfinite(total);
+}
+
+void half_deviances(const Readout& readout, std::span<const double> mean, std::span<double> out) {
+  each_chunk(readout, mean, [&](const Chunk& chunk, std::size_t first) { std::copy_n(chunk.deviance.begin(), chunk.count, out.data() + first); });
 }
 
 }  // namespace halfturn::infer

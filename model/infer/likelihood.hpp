@@ -41,4 +41,7 @@ PointLikelihood poisson(double photons, double exposures, double mean);
 bool evaluate(const Readout& readout, std::span<const double> mean, double& half_deviance, std::span<double> score,
               std::span<double> information);
 
+/// The half deviance of every point, +inf where the model rules the reading out. Arrays of one length.
+void half_deviances(const Readout& readout, std::span<const double> mean, std::span<double> out);
+
 }  // namespace halfturn::infer
