@@ -56,7 +56,7 @@ struct Minimum {
 
 /// The local minimum below `start` (moved inside the bounds first). Steps minimise the quadratic model of gradient and
 /// Fisher information within the bounds (primal active set) and within an ellipsoid whose axes are the largest
-/// information seen for each parameter (J. J. More, Lecture Notes in Mathematics 630, 105 (1978), section 6), so the path
+/// information seen for each parameter (J. J. More, Springer LNM 630, 105 (1978), section 6), so the path
 /// does not depend on the parameters' units. Start and bounds have one size, 1 to kMaxParameters. Near the minimum one
 /// secant update corrects the information by the gradient's last change; `information` itself stays as the objective gave
 /// it. Allocates nothing. `value` never exceeds that at the start but for rounding. Sizes that differ, a NaN, or a lower
