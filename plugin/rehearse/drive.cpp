@@ -24,6 +24,16 @@ ApparatusSettings settled(const RehearseOptions& options, const PulseInForce& pu
 
 constexpr double kFirstLineS = 120;  // between the flops
 
+/// A scan taken before the last one that the daemon believed moves nothing there: a night among scans that its log holds already
+/// would rehearse nothing. A daemon that does not tell its history is taken at its word.
+Result<void> check_fresh(const std::string& drive, const std::string& starts_at, const Ask& ask) {
+  const auto history = ask("history", {{"drive", drive}, {"since", starts_at}, {"limit", 1}});
+  if (!history || !history->contains("rows") || history->at("rows").empty()) return {};
+  return fault("bad_value", "start",
+               "the daemon's log holds scans of `" + drive + "` taken after " + starts_at +
+                   ", among which those of the rehearsal would count as late; rehearse against a daemon with a fresh log");
+}
+
 bool is_due(double time_s, double every_s) { return std::fmod(time_s, every_s) < 60; }
 
 }  // namespace
@@ -49,6 +59,7 @@ std::vector<double> line_detunings(double pi_pulse_s, std::int64_t points) {
 Result<RehearsedDrive> RehearsedDrive::begin(const RehearseOptions& options, wire::Time starts_at, const Ask& ask) {
   auto pulses = ask_pulses(options.drive, wire::format_time(starts_at), ask);
   if (!pulses) return tl::make_unexpected(pulses.error());
+  if (auto fresh = check_fresh(options.drive, wire::format_time(starts_at), ask); !fresh) return tl::make_unexpected(fresh.error());
   auto pulse = choose_pulse(*pulses, options.pulse);
   if (!pulse) return tl::make_unexpected(pulse.error());
   if (!options.rabi_hz && pulses->at(*pulse).length_s <= options.apparatus.dead_time_s) {

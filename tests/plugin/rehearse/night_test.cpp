@@ -121,7 +121,7 @@ TEST_CASE("Every message of the rehearsal passes the decoder of the contract") {
     return Result<nlohmann::json>(daemon.answer(kind, body));
   };
   REQUIRE(rehearse_night(options, decoding, always));
-  CHECK(kinds == std::set<std::string>{"applied", "fit", "status"});
+  CHECK(kinds == std::set<std::string>{"applied", "fit", "history", "status"});
 }
 
 TEST_CASE("Successive flops differ in span and in spacing by more than a tenth") {
