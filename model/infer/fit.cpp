@@ -120,13 +120,16 @@ Prior reconciled(const ScanBatch& scan, const Readout& readout, const Prior& pri
     else
       loose.log_rabi = prior.log_rabi;
   }
-  const bool late = dead_time_contradicted(scan, prior, fit);
-  if (late) {
-    const bool readout_released = fit.quality.readout_released;
+  if (dead_time_contradicted(scan, prior, fit)) {
     loose.dead_time.sigma *= kLoosened;
-    fit_under(scan, readout, loose, options, fit, work);
-    fit.quality.readout_released = readout_released;
-    fit.quality.dead_time_released = true;
+    Fit freed = fit;
+    if (fit_under(scan, readout, loose, options, freed, work)) {
+      freed.quality.readout_released = fit.quality.readout_released;
+      freed.quality.dead_time_released = true;
+      fit = std::move(freed);
+    } else {
+      loose.dead_time = prior.dead_time;
+    }
   }
   return loose;
 }

@@ -64,32 +64,19 @@ struct Chunk {
   std::array<double, kChunk> deviance, score, information;
 };
 
-HALFTURN_CLONES void binomial_chunk(Chunk& c) {
+template <PointLikelihood (*point)(double, double, double)>
+HALFTURN_INLINE void fill_chunk(Chunk& c) {
   for (std::size_t i = 0; i < c.count; ++i) {
-    const PointLikelihood at = binomial_point(c.observed[i], c.weight[i], c.mean[i]);
+    const PointLikelihood at = point(c.observed[i], c.weight[i], c.mean[i]);
     c.deviance[i] = at.half_deviance;
     c.score[i] = at.score;
     c.information[i] = at.information;
   }
 }
 
-HALFTURN_CLONES void gaussian_chunk(Chunk& c) {
-  for (std::size_t i = 0; i < c.count; ++i) {
-    const PointLikelihood at = gaussian_point(c.observed[i], c.weight[i], c.mean[i]);
-    c.deviance[i] = at.half_deviance;
-    c.score[i] = at.score;
-    c.information[i] = at.information;
-  }
-}
-
-HALFTURN_CLONES void poisson_chunk(Chunk& c) {
-  for (std::size_t i = 0; i < c.count; ++i) {
-    const PointLikelihood at = poisson_point(c.observed[i], c.weight[i], c.mean[i]);
-    c.deviance[i] = at.half_deviance;
-    c.score[i] = at.score;
-    c.information[i] = at.information;
-  }
-}
+HALFTURN_CLONES void binomial_chunk(Chunk& c) { fill_chunk<binomial_point>(c); }
+HALFTURN_CLONES void gaussian_chunk(Chunk& c) { fill_chunk<gaussian_point>(c); }
+HALFTURN_CLONES void poisson_chunk(Chunk& c) { fill_chunk<poisson_point>(c); }
 
 using Fill = void (*)(Chunk&);
 

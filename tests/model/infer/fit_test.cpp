@@ -89,7 +89,7 @@ TEST_CASE("every phase and frequency on a grid is found") {
       const Fit fit = fit_one(sample, prior);
       INFO("cycles " << cycles << " phase " << phase);
       REQUIRE(fit.outcome == FitOutcome::fitted);
-      // 87 scans, 5 sigma of a fitted error: by chance once in 2e4 runs of this seedless test; the seed is fixed.
+      // 87 scans, 5 sigma of a fitted error: by chance in one of 2e4 seeds; the seed is fixed.
       CHECK(std::abs(fit.rabi.value - truth.rabi) < 5.0 * fit.rabi.sigma);
     }
 }

@@ -134,9 +134,19 @@ TEST_CASE("refusals name their reason and leave the pulses alone") {
     CHECK(decision.verdict == Verdict::refuse);
     CHECK(says(decision, "poor_fit"));
   }
-  for (const auto& pulse : bench.context.pulses) {
-    CHECK(pulse.length_s > 0.0);
-  }
+}
+
+TEST_CASE("a refused scan proposes the lengths in force, those that the experiment reported") {
+  Bench bench;
+  bench.state.in_force_s = {{"flip", 4.4e-6}};
+  bench.truth.contrast = 0.0;
+  bench.prior.contrast.reset();
+  const auto decision = bench.flop(0);
+  REQUIRE(decision.verdict == Verdict::refuse);
+  CHECK(decision.pulses[0].length_s == 4.4e-6);
+  CHECK(decision.pulses[1].length_s == 2.0e-6);
+  CHECK(decision.carrier_shift == 0.0);
+  CHECK_FALSE(decision.event.proposed);
 }
 
 TEST_CASE("a step is refused once and taken when another scan with other points agrees") {
