@@ -93,7 +93,41 @@ OfParameter follow(const Ensemble& ensemble, double angle, double phase, Ensembl
   return {phase, -at.first_by_parameter / at.second};
 }
 
+double envelope_at(const Members& members, double phase) {
+  double real = 0, imaginary = 0;
+  for (std::size_t i = 0; i < members.size(); ++i) {
+    real += members.weight[i] * std::cos(members.scale[i] * phase);
+    imaginary += members.weight[i] * std::sin(members.scale[i] * phase);
+  }
+  return std::hypot(real, imaginary);
+}
+
 }  // namespace
+
+double fading_phase(const Ensemble& ensemble, EnsembleWorkspace& workspace) {
+  if (!valid(ensemble) || ensemble.kind == Kind::none || ensemble.kind == Kind::doppler) return kNaN;
+  constexpr double kMost = 6283.0, kFaded = 0.36787944117144233;
+  if (ensemble.kind == Kind::spread) {  // exp(-(s phase)^2 / 2)
+    const double phase = std::sqrt(2.0) / ensemble.parameter;
+    return phase < kMost ? phase : std::numeric_limits<double>::infinity();
+  }
+  Demand demand;
+  const auto faded = [&](double phase) {
+    demand.coupling_phase = phase;
+    return choose_members(ensemble, demand, workspace) == Status::ok && envelope_at(workspace.members, phase) < kFaded;
+  };
+  double low = 0, high = 1;
+  while (!faded(high)) {
+    low = high;
+    high *= 1.25;  // an envelope that dips and revives between two of these is found at its next fall
+    if (high > kMost) return std::numeric_limits<double>::infinity();
+  }
+  for (int i = 0; i < 30; ++i) {
+    const double middle = 0.5 * (low + high);
+    (faded(middle) ? high : low) = middle;
+  }
+  return 0.5 * (low + high);
+}
 
 OfParameter best_pulse_phase(const Ensemble& ensemble, double angle_rad, EnsembleWorkspace& workspace) {
   if (!valid(ensemble) || !(angle_rad >= 0) || !std::isfinite(angle_rad)) return kNone;

@@ -78,7 +78,7 @@ struct Fit {
   Sampling sampling;
   double lowest = 0.0, longest = 0.0;  // the smallest and the largest value on the axis
   Dynamics chosen = Dynamics::undamped;
-  std::array<CandidateScore, 4> candidates{};
+  std::array<CandidateScore, kDynamicsCount> candidates{};
   int candidate_count = 0;
 
   Physical physical;            // of the chosen candidate
@@ -88,11 +88,15 @@ struct Fit {
   bool negative_contrast = false;
   Prior prior;                  // under which it was fitted: the one given, less what the data contradicted
 
-  Estimate rabi;                // rad/s, bare
-  Estimate generalised;         // rad/s, on the carrier as it stands
+  Estimate rabi;                // rad/s, bare and peak
+  Estimate rabi_mean;           // rad/s, of the ensemble
+  Estimate generalised;         // rad/s, on the carrier as it stands, the mean of the ensemble
   Estimate line_offset;         // rad/s
   Estimate decay_s, dephasing_s, loss_s, envelope_s;
   Estimate contrast, floor, dead_time_s;
+  Estimate breadth;             // of a chosen ensemble its Ensemble::parameter (model/dynamics/ensemble.hpp): relative, rad/s, or phonons
+  Estimate drift;               // relative change of the coupling along the scan, where one was found
+  double mean_factor = 1.0;     // mean coupling over the peak one
   std::vector<Estimate> pulse_length_s;  // as FitOptions::pulses; duration scans
   FitQuality quality;
 };
@@ -101,7 +105,7 @@ struct Fit {
 struct FitWorkspace {
   ObjectiveWorkspace objective;
   SearchWorkspace search;
-  std::vector<double> signal, order;
+  std::vector<double> signal, order, progress;
 };
 
 /// Fits each site of a batch under its own prior (`priors` has one a site). `fits` has one a site.
@@ -111,5 +115,8 @@ void fit(const ScanBatch& scans, std::span<const Prior> priors, const FitOptions
 /// matrix of the chosen candidate). Arrays as long as the axis. False where there is no fit.
 bool overlay(const ScanBatch& scan, const Fit& fit, std::span<const double> axis, double z, std::span<double> signal, std::span<double> low,
              std::span<double> high);
+
+/// The population seen after a pulse of this effective length (s), under the fitted dynamics. NaN where it cannot be computed.
+double population_after(const Fit& fit, const dynamics::Start& start, double length_s);
 
 }  // namespace halfturn::infer

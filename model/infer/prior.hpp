@@ -1,8 +1,9 @@
 // SPDX-License-Identifier: Apache-2.0
 #pragma once
 #include <optional>
+#include <vector>
 
-#include "model/dynamics/two_level.hpp"
+#include "model/dynamics/ensemble.hpp"
 #include "model/infer/candidate.hpp"
 
 namespace halfturn::infer {
@@ -30,7 +31,10 @@ struct Prior {
   double decay = 0.0;                    // known natural decay within the pair
   double loss = 0.0;                     // known natural decay out of the pair
   dynamics::Start start;                 // prepared state, impurity, how lost population reads
-  DynamicsSet candidates;                // those to be compared
+  DynamicsSet candidates;                // those to be compared; `thermal` only with motion
+  std::vector<dynamics::Mode> motion;    // motional modes that the drive sees; none: no `thermal`
+  bool follows_intensity = false;        // the coupling goes with the intensity (two-photon drives), not the field
+  std::optional<Known> drift;            // relative change of the coupling from the scan's begin to its end; without: none
 };
 
 }  // namespace halfturn::infer

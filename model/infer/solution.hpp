@@ -25,6 +25,7 @@ struct Solution {
   bool negative_contrast = false;
   Physical physical;
   Minimum minimum;
+  double apparent = kUnknown;  // rad/s, ScanObjective::apparent_frequency
   double aicc = kUnknown;
   int parameters = 0;
 };
@@ -42,7 +43,13 @@ int measured_points(const Readout& readout);
 /// under every candidate. Best first by AICc.
 std::vector<ModeSolutions> refine_modes(const Problem& problem, std::span<const Mode> starts, FitWorkspace& workspace);
 
-/// Where two solutions count as one mode: equal sign of contrast and a frequency within a third of a resolution element; of a
+/// Where to begin a candidate from a start of the search, whose damping is that of the oscillation.
+Physical first_start(const Problem& problem, Dynamics candidate, const Mode& start, FitWorkspace& workspace);
+
+/// Where to begin a candidate from another one's solution: with the same apparent frequency and about the same envelope.
+Physical start_for(const Problem& problem, Dynamics candidate, const Solution& from, FitWorkspace& workspace);
+
+/// Where two solutions count as one mode: equal sign of contrast and an apparent frequency within a third of a resolution element; of a
 /// line, a centre within a fifth of one over the pulse length.
 bool same_mode(const Problem& problem, const Solution& a, const Solution& b);
 
@@ -61,6 +68,7 @@ void estimate(const Problem& problem, const ModeSolutions& mode, Fit& fit, FitWo
 
 /// Full width at half maximum of the line of these rates after a pulse of this length, rad/s: between the outermost places
 /// where the population change is half of its largest.
-double line_width(const dynamics::Rates& rates, const dynamics::Start& start, double length_s);
+double line_width(const dynamics::Rates& rates, const dynamics::Ensemble& ensemble, const dynamics::Start& start, double length_s,
+                  dynamics::EnsembleWorkspace& workspace);
 
 }  // namespace halfturn::infer

@@ -23,7 +23,7 @@ double population_moved(const infer::Fit& fit, const infer::Prior& prior, double
   dynamics::Start pure = prior.start;
   pure.impurity = 0.0;
   const double before = dynamics::population({}, pure, 0.0);
-  return std::abs(dynamics::population(fit.rates, pure, length_s - dead_time_s) - before);
+  return std::abs(infer::population_after(fit, pure, length_s - dead_time_s) - before);
 }
 
 double in_force(const State& state, const Pulse& pulse) {
@@ -93,7 +93,7 @@ PulseDecision decide_length(const State& state, const Pulse& pulse, const infer:
   const double rate = fit.generalised.value * pulse.area_factor;
   // The tracked frequency moves the length from the fit's own in proportion, dead time aside.
   const double working = pulse.angle_rad / rate;
-  const double target = exact.value + working * (std::log(fit.rabi.value) - tracked.mean);
+  const double target = exact.value + working * (std::log(fit.rabi_mean.value) - tracked.mean);
   const double sigma = working * tracked.sigma;
   const double wanted = on_tick(pulse, target);
   const double least = std::max({sigma, 0.5 * pulse.tick_s, kLeastRotation / rate});
@@ -122,8 +122,9 @@ FitEvent event_of(const State& state, const infer::Fit& fit, const Context& cont
     event.noise_floor = kLineNoise * fit.quality.line_width;
     return event;
   }
-  event.value = std::log(fit.rabi.value);
-  event.sigma = fit.rabi.sigma / fit.rabi.value;
+  // The mean is what lengths go by, and candidates agree on it where their peaks differ.
+  event.value = std::log(fit.rabi_mean.value);
+  event.sigma = fit.rabi_mean.sigma / fit.rabi_mean.value;
   event.noise_floor = kRabiNoise;
   event.dead_time_s = fit.dead_time_s.value;
   event.dead_time_sigma_s = fit.dead_time_s.sigma;

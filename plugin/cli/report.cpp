@@ -15,7 +15,7 @@ namespace halfturn::cli {
 
 namespace {
 
-constexpr std::array<std::pair<std::string_view, std::string_view>, 19> kNames = {{
+constexpr std::array<std::pair<std::string_view, std::string_view>, 20> kNames = {{
     {"rabi_hz", "Rabi frequency"},
     {"rabi_mean_hz", "mean Rabi frequency"},
     {"rabi_per_amplitude_hz", "Rabi frequency per amplitude"},
@@ -27,6 +27,7 @@ constexpr std::array<std::pair<std::string_view, std::string_view>, 19> kNames =
     {"contrast", "contrast"},
     {"floor", "floor"},
     {"rabi_spread", "spread of Rabi frequency"},
+    {"rabi_drift", "change along the scan"},
     {"mean_phonons", "mean phonons"},
     {"cloud_ratio", "cloud over waist"},
     {"detuning_spread_hz", "spread of detuning"},

@@ -78,6 +78,15 @@ std::vector<infer::Physical> starts(const Case& of, const infer::Physical& fitte
   return {fitted, truth, mixed};
 }
 
+/// A damping of the middling sort for a candidate that was not the one chosen.
+void begin_damping(infer::Dynamics dynamics, infer::Physical& start) {
+  using infer::Dynamics;
+  start.damping = dynamics == Dynamics::undamped ? 0 : 0.02 * start.generalised;
+  start.dephasing = start.damping;
+  const double wide = dynamics == Dynamics::spread ? 0.03 : dynamics == Dynamics::doppler ? 0.2 * start.generalised : 0.15;
+  start.breadth = dynamics == Dynamics::thermal ? 3 : wide * wide;
+}
+
 }  // namespace
 
 wire::Fitted answer(const Case& of, double level, const std::string& dynamics) {
@@ -100,10 +109,11 @@ double held_against(const Case& of, std::size_t pulse, double value) {
   if (!of.truth.line) lead = {infer::Lead::Kind::pulse_length, of.drive.pulses[pulse].angle_rad, of.drive.pulses[pulse].area_factor};
   const auto readout = again.scan.batch.site(0);
   double held = INFINITY, free = INFINITY;
-  for (int candidate = 0; candidate < 4; ++candidate) {
+  for (std::size_t candidate = 0; candidate < infer::kDynamicsCount; ++candidate) {
     for (auto start : starts(of, fit.physical)) {
       const auto dynamics = static_cast<infer::Dynamics>(candidate);
-      if (dynamics != fit.chosen || !(start.damping > 0)) start.damping = dynamics == infer::Dynamics::undamped ? 0 : 0.02 * start.generalised;
+      if (dynamics == infer::Dynamics::thermal && prior.motion.empty()) continue;
+      if (dynamics != fit.chosen) begin_damping(dynamics, start);
       const infer::ScanObjective objective(again.scan.batch, readout, prior, dynamics, lead, start.contrast() < 0, work);
       auto bounds = objective.bounds();
       auto x = objective.pack(start);
