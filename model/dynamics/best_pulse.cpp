@@ -111,18 +111,21 @@ double fading_phase(const Ensemble& ensemble, EnsembleWorkspace& workspace) {
     const double phase = std::sqrt(2.0) / ensemble.parameter;
     return phase < kMost ? phase : std::numeric_limits<double>::infinity();
   }
+  // Couplings spread by m about x0 nearly as x0 - m y, y as exp(-y): the envelope is (1 + (m phase)^2)^(-1/2), 1/e at m phase = 2.5.
+  Ensemble narrow = ensemble;
+  narrow.parameter = 0;
+  const double m = std::abs(mean_coupling(narrow, workspace).value - mean_coupling(ensemble, workspace).value);
+  const double most = std::min(kMost, 6 / std::max(m, 1e-12));
   Demand demand;
-  const auto faded = [&](double phase) {
-    demand.coupling_phase = phase;
-    return choose_members(ensemble, demand, workspace) == Status::ok && envelope_at(workspace.members, phase) < kFaded;
-  };
-  double low = 0, high = 1;
-  while (!faded(high)) {
-    low = high;
-    high *= 1.25;  // an envelope that dips and revives between two of these is found at its next fall
-    if (high > kMost) return std::numeric_limits<double>::infinity();
-  }
-  for (int i = 0; i < 30; ++i) {
+  demand.coupling_phase = most;
+  if (choose_members(ensemble, demand, workspace) != Status::ok) return kNaN;
+  const auto faded = [&](double phase) { return envelope_at(workspace.members, phase) < kFaded; };
+  constexpr int kSteps = 60;
+  int step = 1;
+  while (step <= kSteps && !faded(most * step / kSteps)) ++step;
+  if (step > kSteps) return std::numeric_limits<double>::infinity();
+  double low = most * (step - 1) / kSteps, high = most * step / kSteps;
+  for (int i = 0; i < 24; ++i) {
     const double middle = 0.5 * (low + high);
     (faded(middle) ? high : low) = middle;
   }

@@ -39,21 +39,16 @@ void add_damping(const Problem& problem, Dynamics candidate, double envelope, do
       start.damping = 0.5 * envelope / 0.75;
       start.dephasing = envelope;
       return;
+    case Dynamics::leak_dephasing:
+      start.damping = envelope;
+      start.dephasing = envelope;
+      return;
     case Dynamics::spread: start.breadth = spread * spread; return;
-    case Dynamics::cloud: start.breadth = spread / (problem.prior.follows_intensity ? 4.0 : 2.0); return;
-    case Dynamics::thermal: start.breadth = phonons_for(problem.prior.motion, spread); return;
+    // The envelope of couplings distributed as 1 - m y, y as exp(-y), is (1 + (m W t)^2)^(-1/2): a half where m W t = 1.7.
+    case Dynamics::cloud: start.breadth = std::min(0.3, 1.8 * spread / (problem.prior.follows_intensity ? 4.0 : 2.0)); return;
+    case Dynamics::thermal: start.breadth = phonons_for(problem.prior.motion, 1.8 * spread); return;
     // The amplitude of a Doppler flop falls as (1 + (sigma^2 t / Omega)^2)^(-1/4): to 0.56 where sigma^2 t = 3 Omega.
     case Dynamics::doppler: start.breadth = std::min(3.0 * envelope * frequency, 0.5 * frequency * frequency); return;
-  }
-}
-
-double envelope_of(const Solution& solution) {
-  const auto& p = solution.physical;
-  switch (solution.dynamics) {
-    case Dynamics::dephasing: return 0.5 * p.damping;
-    case Dynamics::decay: return 0.75 * p.damping;
-    case Dynamics::leak: return 0.5 * p.damping;
-    default: return 0.0;
   }
 }
 
@@ -66,24 +61,37 @@ Physical begun(const Problem& problem, Dynamics candidate, const Physical& from,
   if (candidate == Dynamics::doppler && problem.scan.kind == Axis::detuning) {
     start.breadth = 4.0 * envelope * envelope;  // about as wide as what dephasing makes of the line
   } else if (candidate == Dynamics::doppler) {
-    start.generalised = std::sqrt(frequency * frequency - start.breadth);
+    const double longest = *std::max_element(problem.scan.axis.begin(), problem.scan.axis.end());
+    start.generalised = frequency - doppler_shift(frequency, start.breadth, longest);
   } else if (is_ensemble(candidate)) {
     start.generalised = frequency;
-    const double ratio = objective.apparent_frequency(start) / frequency;
-    if (ratio > 0.0) start.generalised = frequency / ratio;
+    for (int i = 0; i < 3; ++i) {  // to a hundredth of a resolution element
+      const double ratio = objective.apparent_frequency(start) / frequency;
+      if (ratio > 0.0) start.generalised /= ratio;
+    }
   }
   return start;
 }
 
 }  // namespace
 
+double envelope_of(const Solution& solution) {
+  const auto& p = solution.physical;
+  switch (solution.dynamics) {
+    case Dynamics::dephasing: return 0.5 * p.damping;
+    case Dynamics::decay: return 0.75 * p.damping;
+    case Dynamics::leak: return 0.5 * p.damping;
+    default: return 0.0;
+  }
+}
+
 Physical first_start(const Problem& problem, Dynamics candidate, const Mode& mode, FitWorkspace& work) {
   const double envelope = mode.damped ? mode.start.damping : kUndampedEnvelope / length_scale(problem);
   return begun(problem, candidate, mode.start, mode.start.generalised, envelope, work);
 }
 
-Physical start_for(const Problem& problem, Dynamics candidate, const Solution& from, FitWorkspace& work) {
-  const double envelope = std::max(kLeastEnvelope / length_scale(problem), envelope_of(from));
+Physical start_for(const Problem& problem, Dynamics candidate, const Solution& from, double factor, FitWorkspace& work) {
+  const double envelope = factor * std::max(kLeastEnvelope / length_scale(problem), envelope_of(from));
   return begun(problem, candidate, from.physical, from.apparent, envelope, work);
 }
 

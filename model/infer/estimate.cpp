@@ -251,8 +251,8 @@ void fill_damping(const Problem& problem, const ScanObjective& objective, const 
   if (fit.chosen == Dynamics::dephasing) fit.dephasing_s = time_of(layout.damping, fit.physical.damping);
   if (fit.chosen == Dynamics::decay || fit.chosen == Dynamics::decay_dephasing)
     fit.decay_s = time_of(layout.damping, fit.physical.damping + problem.prior.decay);
-  if (fit.chosen == Dynamics::decay_dephasing) fit.dephasing_s = time_of(layout.dephasing, fit.physical.dephasing);
-  if (fit.chosen == Dynamics::leak) fit.loss_s = time_of(layout.damping, fit.physical.damping + problem.prior.loss);
+  if (has_two_rates(fit.chosen)) fit.dephasing_s = time_of(layout.dephasing, fit.physical.dephasing);
+  if (fit.chosen == Dynamics::leak || fit.chosen == Dynamics::leak_dephasing) fit.loss_s = time_of(layout.damping, fit.physical.damping + problem.prior.loss);
   if (is_ensemble(fit.chosen)) return fill_ensemble_envelope(objective, scale, fit, work);
   const double envelope = envelope_rate(fit.rates);
   if (!(envelope > 0.0)) return;

@@ -69,12 +69,22 @@ void add_mode(const Problem& problem, std::vector<ModeSolutions>& modes, Solutio
 
 bool by_aicc(const Solution& a, const Solution& b) { return a.aicc < b.aicc; }
 
+/// As same_mode, but a fast damping blurs the frequency by as much.
+bool still_the_mode(const Problem& problem, const Solution& from, const Solution& found) {
+  if (same_mode(problem, from, found)) return true;
+  if (problem.scan.kind == Axis::detuning || from.negative_contrast != found.negative_contrast) return false;
+  return std::abs(from.apparent - found.apparent) < envelope_of(from);
+}
+
 /// Adds a candidate to a mode, begun from `from`; one that slid to another frequency is not this mode's.
 void add_candidate(const Problem& problem, ModeSolutions& mode, Dynamics candidate, const Solution& from, FitWorkspace& work) {
-  std::optional<Solution> solution;
-  if (candidate == from.dynamics) solution = from;
-  else solution = refine(problem, candidate, start_for(problem, candidate, from, work), work);
-  if (solution && same_mode(problem, from, *solution)) mode.solutions.push_back(std::move(*solution));
+  if (candidate == from.dynamics) return mode.solutions.push_back(from);
+  // An ensemble's envelope is no exponential: where a start as wide as that leads nowhere, a wider and a narrower one are tried.
+  for (const double factor : {1.0, 2.5, 0.4}) {
+    auto solution = refine(problem, candidate, start_for(problem, candidate, from, factor, work), work);
+    if (solution && still_the_mode(problem, from, *solution)) return mode.solutions.push_back(std::move(*solution));
+    if (is_simple(candidate)) return;
+  }
 }
 
 void refine_simple(const Problem& problem, ModeSolutions& mode, FitWorkspace& work) {

@@ -1,4 +1,5 @@
 // SPDX-License-Identifier: Apache-2.0
+#include <algorithm>
 #include <cmath>
 
 #include "model/infer/scan_objective.hpp"
@@ -28,7 +29,14 @@ constexpr double kLineDeadTime = 1e-3;
 
 double square(double x) { return x * x; }
 
+double longest_of(std::span<const double> axis) { return axis.empty() ? 0.0 : *std::max_element(axis.begin(), axis.end()); }
+
 }  // namespace
+
+double doppler_shift(double rabi, double variance, double longest_s) {
+  if (!(longest_s > 0.0)) return 0.5 * variance / rabi;
+  return 0.5 * std::atan(variance * longest_s / rabi) / longest_s;
+}
 
 double Physical::rabi() const { return std::sqrt(std::max(0.0, generalised * generalised - detuning_square)); }
 
@@ -45,7 +53,7 @@ ScanObjective::ScanObjective(const ScanBatch& scan, const Readout& readout, cons
   take(layout_.ground);
   take(layout_.excited);
   if (candidate != Dynamics::undamped && !is_ensemble(candidate)) take(layout_.damping);
-  if (candidate == Dynamics::decay_dephasing) take(layout_.dephasing);
+  if (has_two_rates(candidate)) take(layout_.dephasing);
   if (is_ensemble(candidate)) take(layout_.breadth);
   if (!line && prior.drift && prior.drift->sigma > 0.0) take(layout_.drift);
 }
@@ -116,9 +124,13 @@ double ScanObjective::mean_factor(const Physical& p) const {
 }
 
 double ScanObjective::apparent_frequency(const Physical& p) const {
-  if (scan_.kind == Axis::detuning) return p.generalised;
-  if (candidate_ == Dynamics::doppler) return std::sqrt(square(p.generalised) + p.breadth);
-  return p.generalised * mean_factor(p);
+  if (scan_.kind == Axis::detuning || !is_ensemble(candidate_)) return p.generalised;
+  const double longest = longest_of(scan_.axis);
+  if (candidate_ == Dynamics::doppler) return p.generalised + doppler_shift(p.generalised, p.breadth, longest);
+  const double mean = mean_factor(p);
+  if (candidate_ == Dynamics::spread || !(longest > 0.0)) return p.generalised * mean;
+  const double unspread = mean_factor(Physical{}), phase = p.generalised * longest;
+  return p.generalised * unspread - std::atan(phase * (unspread - mean)) / longest;
 }
 
 Vector ScanObjective::pack(const Physical& physical) const {
@@ -171,8 +183,8 @@ dynamics::Rates ScanObjective::rates(const Physical& p) const {
   rates.loss = prior_.loss;
   if (candidate_ == Dynamics::dephasing) rates.dephasing = p.damping;
   if (candidate_ == Dynamics::decay || candidate_ == Dynamics::decay_dephasing) rates.decay += p.damping;
-  if (candidate_ == Dynamics::decay_dephasing) rates.dephasing = p.dephasing;
-  if (candidate_ == Dynamics::leak) rates.loss += p.damping;
+  if (has_two_rates(candidate_)) rates.dephasing = p.dephasing;
+  if (candidate_ == Dynamics::leak || candidate_ == Dynamics::leak_dephasing) rates.loss += p.damping;
   if (scan_.kind == Axis::detuning) {
     rates.rabi = p.generalised;
     rates.detuning = p.line_offset;

@@ -67,13 +67,14 @@ bool ScanObjective::populate(const Physical& p, bool derivatives) const {
   const dynamics::Rates rates_now = rates(p);
   auto span = [n](std::vector<double>& v, bool wanted) { return std::span<double>(v.data(), wanted ? n : 0); };
   const bool by_decay = candidate_ == Dynamics::decay || candidate_ == Dynamics::decay_dephasing;
-  const bool by_dephasing = candidate_ == Dynamics::dephasing || candidate_ == Dynamics::decay_dephasing;
+  const bool by_leak = candidate_ == Dynamics::leak || candidate_ == Dynamics::leak_dephasing;
+  const bool by_dephasing = candidate_ == Dynamics::dephasing || has_two_rates(candidate_);
   dynamics::Derivatives out;
   out.population = span(work_.population, true);
   out.by_rate[0] = span(work_.by_rate[0], derivatives);
   out.by_rate[1] = span(work_.by_rate[1], derivatives && (layout_.line_offset >= 0 || layout_.detuning_square >= 0));
   out.by_rate[2] = span(work_.by_rate[2], derivatives && by_decay);
-  out.by_rate[3] = span(work_.by_rate[3], derivatives && candidate_ == Dynamics::leak);
+  out.by_rate[3] = span(work_.by_rate[3], derivatives && by_leak);
   out.by_rate[4] = span(work_.by_rate[4], derivatives && by_dephasing);
   out.by_length = span(work_.by_length, derivatives && (layout_.dead_time >= 0 || layout_.drift >= 0));
   dynamics::Status status = dynamics::Status::ok;
@@ -133,7 +134,7 @@ void ScanObjective::fill_columns(const Physical& p) const {
   scaled(layout_.detuning_square, square_by_rabi, work_.by_rate[0]);
   added(layout_.detuning_square, square_by_detuning, work_.by_rate[1]);
   fill_lengths(p, of_generalised * slopes.by_dead_time);
-  scaled(layout_.damping, contrast, work_.by_rate[candidate_ == Dynamics::leak ? 3 : candidate_ == Dynamics::dephasing ? 4 : 2]);
+  scaled(layout_.damping, contrast, work_.by_rate[damped_rate()]);
   scaled(layout_.dephasing, contrast, work_.by_rate[4]);
   scaled(layout_.breadth, contrast, work_.by_parameter);
   added(layout_.breadth, of_generalised * slopes.by_breadth, work_.by_rate[0]);
@@ -142,6 +143,16 @@ void ScanObjective::fill_columns(const Physical& p) const {
   for (std::size_t i = 0; i < ground.size(); ++i) {
     ground[i] = 1.0 - population[i];
     excited[i] = population[i];
+  }
+}
+
+/// Which of the rates `damping` is.
+std::size_t ScanObjective::damped_rate() const {
+  switch (candidate_) {
+    case Dynamics::leak:
+    case Dynamics::leak_dephasing: return dynamics::kByLoss;
+    case Dynamics::dephasing: return dynamics::kByDephasing;
+    default: return dynamics::kByDecay;
   }
 }
 

@@ -22,8 +22,8 @@ struct Physical {
   double dead_time = 0.0;        // s
   double signal_ground = 0.0;
   double signal_excited = 1.0;
-  double damping = 0.0;          // the candidate's free rate, 1/s; of decay_dephasing the decay
-  double dephasing = 0.0;        // of decay_dephasing, 1/s
+  double damping = 0.0;          // the candidate's free rate, 1/s; of two the decay or the leak
+  double dephasing = 0.0;        // of candidates with two rates, 1/s
   double breadth = 0.0;          // of an ensemble: the square of Ensemble::parameter (spread, doppler, cloud), for the signal is
                                  // linear in that where it is small; thermal: mean phonons
   double drift = 0.0;            // relative change of the coupling along the scan
@@ -47,6 +47,10 @@ struct Layout {
       breadth = -1, drift = -1;
   int count = 0;
 };
+
+/// How much faster than its coupling, rad/s, a flop of this variance of the detuning (rad^2/s^2) seems to oscillate over the longest
+/// length: the mean of exp(i delta^2 t / (2 Omega)) turns by atan(variance t / Omega) / 2, to first order in variance over Omega^2.
+double doppler_shift(double rabi, double variance, double longest_s);
 
 /// Arrays for the evaluations of scans of up to the reserved number of points; the caller keeps it, nothing allocates after
 /// `reserve`.
@@ -78,8 +82,9 @@ class ScanObjective final : public Objective {
   dynamics::Ensemble ensemble(const Physical& physical) const;
   /// The ensemble's mean coupling over the peak one.
   double mean_factor(const Physical& physical) const;
-  /// The oscillation's own frequency, rad/s: that of the ensemble's mean coupling, of a Doppler spread that of its root mean square
-  /// detuning.
+  /// The frequency, rad/s, at which a scan to the longest length seems to oscillate: the phase reached over that length. Of a spread
+  /// the mean coupling; for doppler see doppler_shift; of a cloud or a thermal state, whose couplings are distributed nearly as
+  /// x0 - m y with y as exp(-y), the mean of exp(i x Omega t) has the phase x0 Omega t - atan(m Omega t).
   double apparent_frequency(const Physical& physical) const;
   const Prior& prior() const { return prior_; }
   const ScanBatch& scan() const { return scan_; }
@@ -110,6 +115,7 @@ class ScanObjective final : public Objective {
   };
   LeadSlopes lead_slopes(const Physical& physical) const;
 
+  std::size_t damped_rate() const;
   bool populate(const Physical& physical, bool derivatives) const;
   dynamics::Status populate_ensemble(const Physical& physical, std::span<const double> axis, const dynamics::Derivatives& out,
                                      bool derivatives) const;

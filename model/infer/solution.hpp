@@ -43,11 +43,15 @@ int measured_points(const Readout& readout);
 /// under every candidate. Best first by AICc.
 std::vector<ModeSolutions> refine_modes(const Problem& problem, std::span<const Mode> starts, FitWorkspace& workspace);
 
+/// The rate, 1/s, at which a simple candidate's oscillation fades on resonance; 0 of the others.
+double envelope_of(const Solution& solution);
+
 /// Where to begin a candidate from a start of the search, whose damping is that of the oscillation.
 Physical first_start(const Problem& problem, Dynamics candidate, const Mode& start, FitWorkspace& workspace);
 
-/// Where to begin a candidate from another one's solution: with the same apparent frequency and about the same envelope.
-Physical start_for(const Problem& problem, Dynamics candidate, const Solution& from, FitWorkspace& workspace);
+/// Where to begin a candidate from another one's solution: with the same apparent frequency, and `factor` times about the same
+/// damping of the envelope.
+Physical start_for(const Problem& problem, Dynamics candidate, const Solution& from, double factor, FitWorkspace& workspace);
 
 /// Where two solutions count as one mode: equal sign of contrast and an apparent frequency within a third of a resolution element; of a
 /// line, a centre within a fifth of one over the pulse length.
