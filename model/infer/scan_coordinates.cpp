@@ -29,9 +29,9 @@ constexpr double kLineDeadTime = 1e-3;
 
 double square(double x) { return x * x; }
 
-double longest_of(std::span<const double> axis) { return axis.empty() ? 0.0 : *std::max_element(axis.begin(), axis.end()); }
-
 }  // namespace
+
+double longest_of(std::span<const double> axis) { return axis.empty() ? 0.0 : *std::max_element(axis.begin(), axis.end()); }
 
 double doppler_shift(double rabi, double variance, double longest_s) {
   if (!(longest_s > 0.0)) return 0.5 * variance / rabi;

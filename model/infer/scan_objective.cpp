@@ -10,6 +10,9 @@ namespace {
 constexpr std::size_t kMostFree = 8;  // lead, offset or detuning, dead time, two signals, two of damping and breadth, drift
 // A coupling below this part of the generalised frequency moves less than 1e-3 of the population: no flop to be fitted.
 constexpr double kLeastCoupling = 0.03;
+// An ensemble's flop is followed no further, rad: 250 cycles. A profile of one that is hardly determined runs on for ever else, with
+// thousands of members at each step.
+constexpr double kMostPhase = 1571.0;
 
 /// Sum of products in four lanes, which makes it vector instructions without leave to reorder sums.
 double dot(const double* a, const double* b, std::size_t n) {
@@ -48,6 +51,7 @@ std::span<const double> ScanObjective::played(const Physical& p) const {
 dynamics::Status ScanObjective::populate_ensemble(const Physical& p, std::span<const double> axis, const dynamics::Derivatives& out,
                                                   bool derivatives) const {
   const auto of = ensemble(p);
+  if (scan_.kind == Axis::duration && p.generalised * longest_of(axis) > kMostPhase) return dynamics::Status::too_many_members;
   const std::span<double> by_parameter(work_.by_parameter.data(), derivatives ? axis.size() : 0);
   dynamics::Status status = dynamics::Status::ok;
   if (scan_.kind == Axis::duration)

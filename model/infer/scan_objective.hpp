@@ -48,6 +48,9 @@ struct Layout {
   int count = 0;
 };
 
+/// The largest of some lengths; 0 of none.
+double longest_of(std::span<const double> axis);
+
 /// How much faster than its coupling, rad/s, a flop of this variance of the detuning (rad^2/s^2) seems to oscillate over the longest
 /// length: the mean of exp(i delta^2 t / (2 Omega)) turns by atan(variance t / Omega) / 2, to first order in variance over Omega^2.
 double doppler_shift(double rabi, double variance, double longest_s);
