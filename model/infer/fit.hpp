@@ -30,6 +30,7 @@ struct PulseAngle {
 
 struct FitOptions {
   double level = 0.95;           // of the intervals
+  double second_level = 0.0;     // of Fit::second; 0: none
   double rival_margin = 25.0;    // deviance within which another mode is a rival
   std::vector<PulseAngle> pulses;
 };
@@ -72,6 +73,12 @@ struct FitQuality {
   std::optional<RivalMode> rival;
 };
 
+/// Estimates of the same solution with intervals at another level, where one is asked for.
+struct SecondIntervals {
+  Estimate line_offset;                  // rad/s
+  std::vector<Estimate> pulse_length_s;  // as FitOptions::pulses; duration scans
+};
+
 struct Fit {
   FitOutcome outcome = FitOutcome::not_converged;
   Axis axis = Axis::duration;
@@ -94,6 +101,7 @@ struct Fit {
   Estimate decay_s, dephasing_s, loss_s, envelope_s;
   Estimate contrast, floor, dead_time_s;
   std::vector<Estimate> pulse_length_s;  // as FitOptions::pulses; duration scans
+  SecondIntervals second;
   FitQuality quality;
 };
 
