@@ -1,7 +1,6 @@
 // SPDX-License-Identifier: Apache-2.0
 #include "tests/campaign/compare.hpp"
 
-#include <cmath>
 #include <cstdio>
 #include <map>
 #include <nlohmann/json.hpp>
@@ -116,12 +115,14 @@ Row total(const std::vector<Row>& rows) {
 void print_pair(std::ostream& out, const Row& ours, const Row& theirs) {
   char line[200];
   const auto percent = [](const Row& row) {
-    return row.healthy > 0 ? 100 * static_cast<double>(row.healthy_used) / static_cast<double>(row.healthy) : std::nan("");
+    char text[16] = "-";
+    if (row.healthy > 0) std::snprintf(text, sizeof text, "%.1f", 100 * static_cast<double>(row.healthy_used) / static_cast<double>(row.healthy));
+    return std::string(text);
   };
   const auto n = [](std::int64_t count) { return static_cast<long long>(count); };
-  std::snprintf(line, sizeof line, "%-21s %7lld %7lld | %7lld %7lld %7.1f %6lld | %7lld %7lld %7.1f %6lld\n", ours.family.c_str(), n(ours.scans),
-                n(ours.healthy), n(ours.used), n(ours.scans - ours.used), percent(ours), n(ours.wrong), n(theirs.used),
-                n(theirs.scans - theirs.used), percent(theirs), n(theirs.wrong));
+  std::snprintf(line, sizeof line, "%-21s %7lld %7lld | %7lld %7lld %7s %6lld | %7lld %7lld %7s %6lld\n", ours.family.c_str(), n(ours.scans),
+                n(ours.healthy), n(ours.used), n(ours.scans - ours.used), percent(ours).c_str(), n(ours.wrong), n(theirs.used),
+                n(theirs.scans - theirs.used), percent(theirs).c_str(), n(theirs.wrong));
   out << line;
 }
 
