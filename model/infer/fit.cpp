@@ -37,18 +37,6 @@ constexpr double kClearlyBetter = 10.0;
 // Deviance gained over a flat line that a fit must show for what it says of the readout to count.
 constexpr double kEvidence = 30.0;
 
-/// The intervals at a second level: for who checks that intervals at both hold what they should, without a second search.
-void estimate_second(const Problem& problem, const ModeSolutions& mode, Fit& fit, FitWorkspace& work) {
-  if (!(problem.options.second_level > 0.0)) return;
-  FitOptions options = problem.options;
-  options.level = options.second_level;
-  const Problem again{problem.scan, problem.readout, problem.prior, options, problem.sampling, problem.measured};
-  Fit second = fit;
-  second.pulse_length_s.clear();
-  estimate(again, mode, second, work);
-  fit.second = {second.line_offset, std::move(second.pulse_length_s)};
-}
-
 /// What the scan shows under one prior; false where nothing could be fitted.
 bool fit_under(const ScanBatch& scan, const Readout& readout, const Prior& prior, const FitOptions& options, Fit& fit, FitWorkspace& work) {
   std::array<Mode, kMostModes> starts;
