@@ -34,19 +34,6 @@ Prior felt(const Prior& prior, std::span<const Mode> starts) {
 constexpr double kDriftSuspected = 8.0;
 constexpr double kDriftSigma = 0.05;
 
-/// From -1/2 at the first point to 1/2 at the last, by when they were taken or by their order.
-std::span<const double> progress_of(const ScanBatch& scan, std::vector<double>& progress) {
-  const auto n = scan.points();
-  progress.resize(n);
-  const bool timed = scan.at_s.size() == n;
-  for (std::size_t i = 0; i < n; ++i) progress[i] = timed ? scan.at_s[i] : static_cast<double>(i);
-  const auto [first, last] = std::minmax_element(progress.begin(), progress.end());
-  const double from = *first, whole = *last - from;
-  if (!(whole > 0.0)) return {};
-  for (double& part : progress) part = (part - from) / whole - 0.5;
-  return progress;
-}
-
 /// Twice the gain in the log likelihood that a drift promises at the fit, the other parameters following (C. R. Rao, Proc. Camb. Phil.
 /// Soc. 44, 50 (1948)): chi-square with one degree of freedom where there is none.
 double drift_score(const ScanBatch& scan, const Readout& readout, const Prior& prior, const Fit& fit, FitWorkspace& work) {
@@ -91,6 +78,7 @@ bool fit_under(const ScanBatch& scan, const Readout& readout, const Prior& prior
   const Problem problem{scan, readout, known, options, fit.sampling, points};
   const auto modes = refine_modes(problem, {starts.data(), count}, work);
   fit.pulse_length_s.clear();
+  fit.second = {};
   fit.quality = FitQuality{};
   fit.quality.points = points;
   fit.outcome = FitOutcome::not_converged;
@@ -104,6 +92,7 @@ bool fit_under(const ScanBatch& scan, const Readout& readout, const Prior& prior
   fit.quality.by_history = of_choice.by_history;
   fit.quality.rival = of_choice.rival;
   estimate(problem, modes[chosen], fit, work);
+  estimate_second(problem, modes[chosen], fit, work);
   fit.outcome = FitOutcome::fitted;
   return true;
 }
@@ -196,7 +185,7 @@ void look_for_drift(const ScanBatch& scan, const Readout& readout, const FitOpti
 
 void fit_one(const ScanBatch& given, std::size_t site, const Prior& prior, const FitOptions& options, Fit& fit, FitWorkspace& work) {
   ScanBatch scan = given;
-  if (scan.kind == Axis::duration) scan.progress = progress_of(scan, work.progress);
+  scan.progress = progress_of(scan, work.progress);
   fit = Fit{};
   fit.axis = scan.kind;
   fit.sampling = sampling_of(scan.kind, scan.axis);

@@ -30,6 +30,7 @@ struct PulseAngle {
 
 struct FitOptions {
   double level = 0.95;           // of the intervals
+  double second_level = 0.0;     // of Fit::second; 0: none
   double rival_margin = 25.0;    // deviance within which another mode is a rival
   std::vector<PulseAngle> pulses;
 };
@@ -72,6 +73,12 @@ struct FitQuality {
   std::optional<RivalMode> rival;
 };
 
+/// Estimates of the same solution with intervals at another level, where one is asked for.
+struct SecondIntervals {
+  Estimate line_offset;                  // rad/s
+  std::vector<Estimate> pulse_length_s;  // as FitOptions::pulses; duration scans
+};
+
 struct Fit {
   FitOutcome outcome = FitOutcome::not_converged;
   Axis axis = Axis::duration;
@@ -98,6 +105,7 @@ struct Fit {
   Estimate drift;               // relative change of the coupling along the scan, where one was found
   double mean_factor = 1.0;     // mean coupling over the peak one
   std::vector<Estimate> pulse_length_s;  // as FitOptions::pulses; duration scans
+  SecondIntervals second;
   FitQuality quality;
 };
 

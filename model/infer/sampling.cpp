@@ -95,4 +95,17 @@ Sampling sampling_of(Axis kind, std::span<const double> axis) {
   return sampling;
 }
 
+std::span<const double> progress_of(const ScanBatch& scan, std::vector<double>& progress) {
+  const auto n = scan.points();
+  if (scan.kind == Axis::detuning || n == 0) return {};
+  progress.resize(n);
+  const bool timed = scan.at_s.size() == n;
+  for (std::size_t i = 0; i < n; ++i) progress[i] = timed ? scan.at_s[i] : static_cast<double>(i);
+  const auto [first, last] = std::minmax_element(progress.begin(), progress.end());
+  const double from = *first, whole = *last - from;
+  if (!(whole > 0.0)) return {};
+  for (double& part : progress) part = (part - from) / whole - 0.5;
+  return progress;
+}
+
 }  // namespace halfturn::infer

@@ -70,6 +70,9 @@ TrialGrid trial_grid(const Prior& prior, const Sampling& sampling, std::size_t p
 /// Fills the estimates, averaged over candidates with their Akaike weights, and the pulse lengths.
 void estimate(const Problem& problem, const ModeSolutions& mode, Fit& fit, FitWorkspace& workspace);
 
+/// Fills Fit::second where a second level is asked for; after `estimate`, with the same scatter.
+void estimate_second(const Problem& problem, const ModeSolutions& mode, Fit& fit, FitWorkspace& workspace);
+
 /// Full width at half maximum of the line of these rates after a pulse of this length, rad/s: between the outermost places
 /// where the population change is half of its largest.
 double line_width(const dynamics::Rates& rates, const dynamics::Ensemble& ensemble, const dynamics::Start& start, double length_s,

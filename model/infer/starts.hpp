@@ -29,6 +29,10 @@ struct Sampling {
 };
 Sampling sampling_of(Axis kind, std::span<const double> axis);
 
+/// ScanBatch::progress of a scan, in memory of the caller's: by when points were taken, or by their order. Empty for lines, and where
+/// all were taken at once.
+std::span<const double> progress_of(const ScanBatch& scan, std::vector<double>& progress);
+
 struct SearchWorkspace {
   void reserve(std::size_t points);
   std::vector<double> value, weight;
