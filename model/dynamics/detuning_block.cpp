@@ -158,6 +158,30 @@ HALFTURN_CLONES void undamped_block(const Problem& problem, double t, DetuningBl
   }
 }
 
+/// First order in each damping about the rotation by f t around (rabi, 0, detuning)/f, by variation of constants, written out here.
+/// With c = detuning/f and s = rabi/f, the state has turned by theta when a damping takes some of it, and that turns on by
+/// f t - theta; the products are integrated over theta.
+HALFTURN_CLONES void undamped_by_damping(const Problem& problem, double t, DetuningBlock& block) {
+  const Problem p = problem;
+  const double w0 = p.excited - p.ground, w2 = p.rabi * p.rabi, sign = p.bright ? -1.0 : 1.0;
+  for (int i = 0; i < kBlock; ++i) {
+    const double d = block.detuning[i], f2 = w2 + d * d, f = std::sqrt(f2), phase = f * t;
+    const double s2 = w2 / f2, c2 = d * d / f2;
+    const SineCosine at = sine_cosine(phase);
+    // Integrals of 1 - cos theta, of that by cos(phase - theta), of sin theta by sin(phase - theta), of cos theta by cos(phase - theta).
+    const double straight = phase - at.sine, by_cosine = 0.5 * (at.sine - phase * at.cosine), both = 0.5 * (at.sine + phase * at.cosine);
+    const double of_coherence = w0 * s2 * (c2 * (by_cosine - straight) + by_cosine);
+    // What leaves the excited state: twice its population is even + swing cos theta.
+    const double even = 1 + w0 * c2, swing = w0 * s2;
+    const double left = even * phase + swing * at.sine;
+    const double of_leaving = -(c2 * left + s2 * (even * at.sine + swing * both));
+    const double inverse = 0.5 / f;
+    block.rows[kRateRow + kByDephasing][i] = inverse * of_coherence;
+    block.rows[kRateRow + kByDecay][i] = inverse * (0.5 * of_coherence + of_leaving);
+    block.rows[kRateRow + kByLoss][i] = 0.5 * inverse * (of_coherence + of_leaving - sign * left);
+  }
+}
+
 void damped_block(const Problem& problem, const Wanted& wanted, double t, DetuningBlock& block) {
   double weight[kRowCount] = {};
   weight[kValueRow] = 1 / kValueError;

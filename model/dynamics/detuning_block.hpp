@@ -22,4 +22,7 @@ void damped_block(const Problem& problem, const Wanted& wanted, double t, Detuni
 /// The same without any damping; the derivatives by a damping are not computed.
 void undamped_block(const Problem& problem, double t, DetuningBlock& block);
 
+/// Those derivatives, where there is no damping yet.
+void undamped_by_damping(const Problem& problem, double t, DetuningBlock& block);
+
 }  // namespace halfturn::dynamics::detail
