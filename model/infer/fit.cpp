@@ -4,7 +4,9 @@
 #include <algorithm>
 #include <cmath>
 
+#include "model/infer/line_modes.hpp"
 #include "model/infer/monotone.hpp"
+#include "model/infer/shown.hpp"
 #include "model/infer/solution.hpp"
 
 namespace halfturn::infer {
@@ -60,6 +62,7 @@ bool fit_under(const ScanBatch& scan, const Readout& readout, const Prior& prior
   fit.quality.by_history = of_choice.by_history;
   fit.quality.rival = of_choice.rival;
   estimate(problem, modes[chosen], fit, work);
+  if (scan.kind == Axis::detuning) widen_offset(problem, modes, chosen, fit);
   fit.outcome = FitOutcome::fitted;
   return true;
 }
@@ -154,7 +157,7 @@ void fit_one(const ScanBatch& scan, std::size_t site, const Prior& prior, const 
   }
   fit_under(scan, readout, prior, options, fit, work);
   fit.prior = reconciled(scan, readout, prior, options, fit, work);
-  if (fit.outcome == FitOutcome::fitted) return;
+  if (fit.outcome == FitOutcome::fitted) return withhold_unshown(options, fit);
   const auto monotone = monotone_half_deviance(readout, scan.axis);
   fit.quality.monotone_gain = 2.0 * (monotone.flat - std::min(monotone.rising, monotone.falling));
 }

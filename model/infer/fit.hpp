@@ -31,6 +31,7 @@ struct PulseAngle {
 struct FitOptions {
   double level = 0.95;           // of the intervals
   double rival_margin = 25.0;    // deviance within which another mode is a rival
+  double least_evidence = 30.0;  // deviance to be gained over a flat line, below which no interval is given (shown.hpp)
   std::vector<PulseAngle> pulses;
 };
 

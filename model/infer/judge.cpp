@@ -1,5 +1,6 @@
 // SPDX-License-Identifier: Apache-2.0
 #include <algorithm>
+#include <array>
 #include <cmath>
 #include <numeric>
 
@@ -132,23 +133,27 @@ FitQuality judge(const Problem& problem, const Solution& solution, FitWorkspace&
 
 double line_width(const dynamics::Rates& rates, const dynamics::Start& start, double length_s) {
   dynamics::Rates at = rates;
+  at.detuning = 0.0;
   const double unmoved = dynamics::population({}, start, 0.0);
-  auto moved = [&](double detuning) {
-    at.detuning = detuning;
-    return std::abs(dynamics::population(at, start, length_s) - unmoved);
-  };
   // Beyond this the wings of any of the broadenings are below half.
   const double far = 4.0 * (rates.rabi + rates.decay + rates.loss + rates.dephasing) + 4.0 * constants::kPi / length_s;
-  constexpr int kSteps = 400;
-  double peak = 0.0;
-  for (int i = 0; i <= kSteps; ++i) peak = std::max(peak, moved(far * i / kSteps));
-  if (!(peak > 0.0)) return kUnknown;
-  int outside = kSteps;
-  while (outside > 0 && moved(far * (outside - 1) / kSteps) < 0.5 * peak) --outside;
-  double low = far * std::max(0, outside - 1) / kSteps, high = far * outside / kSteps;
-  for (int i = 0; i < 40; ++i) {
-    const double middle = 0.5 * (low + high);
-    (moved(middle) < 0.5 * peak ? high : low) = middle;
+  constexpr std::size_t kSteps = 400;
+  std::array<double, kSteps + 1> axis, moved;
+  for (std::size_t i = 0; i <= kSteps; ++i) axis[i] = far * static_cast<double>(i) / kSteps;
+  dynamics::Derivatives out;
+  out.population = moved;
+  dynamics::Status status = dynamics::Status::ok;
+  dynamics::Workspace none;
+  dynamics::detuning_scan({&at, 1}, start, axis, {&length_s, 1}, out, {&status, 1}, none);
+  for (double& population : moved) population = std::abs(population - unmoved);
+  const double half = 0.5 * *std::max_element(moved.begin(), moved.end());
+  if (status != dynamics::Status::ok || !(half > 0.0)) return kUnknown;
+  std::size_t outside = kSteps;
+  while (outside > 1 && moved[outside - 1] < half) --outside;
+  double low = axis[outside - 1], high = axis[outside];
+  for (int i = 0; i < 25; ++i) {  // to 1e-10 of the widest
+    at.detuning = 0.5 * (low + high);
+    (std::abs(dynamics::population(at, start, length_s) - unmoved) < half ? high : low) = at.detuning;
   }
   return low + high;
 }

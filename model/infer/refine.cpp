@@ -2,6 +2,7 @@
 #include <algorithm>
 #include <cmath>
 
+#include "model/infer/line_modes.hpp"
 #include "model/infer/solution.hpp"
 #include "model/quantity/constants.hpp"
 
@@ -13,6 +14,12 @@ using constants::kTwoPi;
 // So many modes, the best by their first refinement, are refined under every candidate before they are compared: the first
 // candidate may be the wrong one, and costs hundreds of deviance where there is much data.
 constexpr std::size_t kModesInFull = 6;
+// The first refinement of a line's starts only sorts them: to 0.02 in deviance, or as far as so many evaluations go.
+constexpr SolverOptions kSorting{.decrease_tolerance = 0.01, .max_evaluations = 60};
+// Other modes of a line are compared with the best to 2e-4 in deviance.
+constexpr SolverOptions kComparing{.decrease_tolerance = 1e-4, .max_evaluations = 100};
+// What a refinement may still promise to gain to count as finished.
+constexpr double kFinished = 1e-8;
 
 /// The rate of a candidate that damps an oscillation on resonance at `envelope`: gamma_phi/2, 3 Gamma/4, Gamma_loss/2.
 double damping_for(Dynamics dynamics, double envelope) {
@@ -46,13 +53,14 @@ bool strayed(const Problem& problem, const Physical& start, const Physical& end)
   return std::abs(end.generalised - start.generalised) > kTwoPi * 1.5 / problem.sampling.span;
 }
 
-std::optional<Solution> refine(const Problem& problem, Dynamics candidate, const Physical& start, FitWorkspace& work) {
+std::optional<Solution> refine(const Problem& problem, Dynamics candidate, const Physical& start, FitWorkspace& work,
+                               const SolverOptions& options = {}) {
   const bool negative = start.contrast() < 0.0;
   const ScanObjective objective(problem.scan, problem.readout, problem.prior, candidate, {}, negative, work.objective);
   Solution solution;
   solution.dynamics = candidate;
   solution.negative_contrast = negative;
-  solution.minimum = minimise(objective, objective.pack(start), objective.bounds());
+  solution.minimum = minimise(objective, objective.pack(start), objective.bounds(), options);
   const auto& minimum = solution.minimum;
   const bool settled = minimum.outcome == Outcome::converged || (std::isfinite(minimum.value) && minimum.expected_decrease < 1e-3);
   if (!settled) return std::nullopt;
@@ -77,8 +85,11 @@ void add_mode(const Problem& problem, std::vector<ModeSolutions>& modes, Solutio
   modes.push_back({{std::move(solution)}});
 }
 
-void refine_candidates(const Problem& problem, ModeSolutions& mode, FitWorkspace& work) {
-  const Solution first = mode.best();
+void refine_candidates(const Problem& problem, ModeSolutions& mode, FitWorkspace& work, const SolverOptions& options = {}) {
+  Solution first = mode.best();
+  const double finished_at = std::max(kFinished, options.decrease_tolerance);
+  if (problem.scan.kind == Axis::detuning && !(first.minimum.expected_decrease < finished_at))
+    if (auto finished = refine(problem, first.dynamics, first.physical, work, options)) first = std::move(*finished);
   mode.solutions.clear();
   const double least = 0.2 / length_scale(problem);
   const double envelope = std::max(least, envelope_of(first.dynamics, first.physical.damping));
@@ -90,13 +101,35 @@ void refine_candidates(const Problem& problem, ModeSolutions& mode, FitWorkspace
     } else {
       Physical start = first.physical;
       start.damping = damping_for(candidate, envelope);
-      solution = refine(problem, candidate, start, work);
+      solution = refine(problem, candidate, start, work, options);
     }
     // A start that slid to another frequency is not this mode's.
     if (solution && same_mode(problem, first, *solution)) mode.solutions.push_back(std::move(*solution));
   }
   if (mode.solutions.empty()) mode.solutions.push_back(first);
   std::stable_sort(mode.solutions.begin(), mode.solutions.end(), [](const Solution& a, const Solution& b) { return a.aicc < b.aicc; });
+}
+
+/// The best mode of a line under every candidate, and of the others as much as it takes to compare them with it.
+void refine_lines(const Problem& problem, std::vector<ModeSolutions>& modes, FitWorkspace& work) {
+  if (modes.empty()) return;
+  const double sorted_by = modes.front().best().minimum.value;
+  refine_candidates(problem, modes.front(), work);
+  const Solution best = modes.front().best();
+  const double worth_it = drop_hopeless(problem, modes, sorted_by);
+  for (std::size_t i = 1; i < modes.size(); ++i) {
+    ModeSolutions& mode = modes[i];
+    const Solution first = mode.best();
+    if (best.dynamics != first.dynamics) {
+      Physical start = first.physical;
+      start.damping = best.physical.damping;
+      if (auto alike = refine(problem, best.dynamics, start, work, kComparing); alike && same_mode(problem, first, *alike) && alike->aicc < first.aicc)
+        mode.solutions.front() = std::move(*alike);
+    }
+    if (mode.best().minimum.value < worth_it) refine_candidates(problem, mode, work, kComparing);
+  }
+  const auto least = std::min_element(modes.begin(), modes.end(), [](const auto& a, const auto& b) { return a.best().aicc < b.best().aicc; });
+  if (least != modes.begin()) refine_candidates(problem, *least, work);
 }
 
 Dynamics first_candidate(const Prior& prior, bool damped) {
@@ -128,17 +161,22 @@ bool same_mode(const Problem& problem, const Solution& a, const Solution& b) {
 }
 
 std::vector<ModeSolutions> refine_modes(const Problem& problem, std::span<const Mode> starts, FitWorkspace& work) {
+  const bool line = problem.scan.kind == Axis::detuning;
   std::vector<ModeSolutions> modes;
   for (const auto& start : starts) {
     Physical from = start.start;
     const Dynamics candidate = first_candidate(problem.prior, start.damped);
     from.damping = start.damped ? damping_for(candidate, from.damping) : damping_for(candidate, 0.1 / length_scale(problem));
-    if (auto solution = refine(problem, candidate, from, work)) add_mode(problem, modes, std::move(*solution));
+    if (auto solution = refine(problem, candidate, from, work, line ? kSorting : SolverOptions{})) add_mode(problem, modes, std::move(*solution));
   }
   auto by_deviance = [](const ModeSolutions& a, const ModeSolutions& b) { return a.best().minimum.value < b.best().minimum.value; };
   std::stable_sort(modes.begin(), modes.end(), by_deviance);
-  if (modes.size() > kModesInFull) modes.resize(kModesInFull);
-  for (auto& mode : modes) refine_candidates(problem, mode, work);
+  if (line) {
+    refine_lines(problem, modes, work);
+  } else {
+    if (modes.size() > kModesInFull) modes.resize(kModesInFull);
+    for (auto& mode : modes) refine_candidates(problem, mode, work);
+  }
   std::stable_sort(modes.begin(), modes.end(), [](const ModeSolutions& a, const ModeSolutions& b) { return a.best().aicc < b.best().aicc; });
   return modes;
 }
