@@ -11,6 +11,7 @@ inline constexpr int kBlock = 64;  // detunings; 9 kB of arrays, which stay in t
 /// number of steps, and where the pair of roots is real: those points have to be done one by one.
 struct DetuningBlock {
   alignas(64) double detuning[kBlock];
+  int count = kBlock;  // so many are computed
   double slow[kBlock], second[kBlock], second_x[kBlock];
   double rows[kRowCount][kBlock];
   double doubtful[kBlock];
