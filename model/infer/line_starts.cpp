@@ -23,7 +23,7 @@ constexpr double kTableStep = 0.05, kMargin = 1.5, kMostTable = 600.0;
 constexpr int kOffsetSteps = 3;
 // Damped lines have no fringes to tell neighbouring areas apart, and are broadened by power at large ones.
 constexpr double kDamping = 1.5;  // over the pulse
-constexpr std::array<double, 8> kDampedAreas = {0.4, 0.7, 1.1, 1.7, 2.5, 3.6, 5.2, 7.5};
+constexpr std::array<double, 9> kDampedAreas = {0.4, 0.7, 1.1, 1.7, 2.5, 3.6, 5.2, 7.5, 11.0};
 // A signal nearer to 0 or 1 than this starts no binomial fit.
 constexpr double kLeastSignal = 0.005;
 
