@@ -87,7 +87,7 @@ TEST_CASE("fringes of a power-broadened line are no rivals, and the interval cou
   CHECK(held >= 48);
 }
 
-// Bug: the search went half a width beyond the window, and a line 0.8 of a width beyond it was answered by a side lobe inside.
+// Only then is such a scan refused for its edge, and not answered by a side lobe inside.
 TEST_CASE("a line outside the window is found by what it leaves inside") {
   const double width = 0.8 * kTwoPi / kPulse;
   for (const double away : {0.3, 0.6, 1.0}) {
