@@ -2,6 +2,7 @@
 #include <algorithm>
 #include <cmath>
 
+#include "model/infer/line_modes.hpp"
 #include "model/infer/solution.hpp"
 #include "model/quantity/constants.hpp"
 
@@ -73,7 +74,9 @@ std::optional<RivalMode> mirror_image(const Problem& problem, const Solution& ch
 RivalMode rival_of(const Problem& problem, const Solution& other, const Solution& chosen, double scatter) {
   RivalMode rival;
   rival.frequency = problem.scan.kind == Axis::detuning ? other.physical.line_offset : other.apparent;
-  rival.deviance_above = std::max(0.0, (other.aicc - chosen.aicc) / scatter);
+  rival.deviance_above = (other.aicc - chosen.aicc) / scatter;
+  if (problem.scan.kind == Axis::detuning) rival.deviance_above += held_by_area(problem, other) - held_by_area(problem, chosen);
+  rival.deviance_above = std::max(0.0, rival.deviance_above);
   rival.opposite_contrast = other.negative_contrast != chosen.negative_contrast;
   return rival;
 }
@@ -85,6 +88,7 @@ std::size_t choose_mode(const Problem& problem, std::span<const ModeSolutions> m
   quality.outside_expect = !allowed(problem, modes[chosen]);
   const auto competes = [&](std::size_t i) { return allowed(problem, modes[i]) || quality.outside_expect; };
 
+  const bool line = problem.scan.kind == Axis::detuning;
   const double margin = problem.options.rival_margin * quality.scatter;
   std::vector<std::size_t> alike;
   for (std::size_t i = 0; i < modes.size(); ++i)
@@ -97,6 +101,7 @@ std::size_t choose_mode(const Problem& problem, std::span<const ModeSolutions> m
   quality.rival = mirror_image(problem, modes[chosen].best());
   for (std::size_t i = 0; i < modes.size(); ++i) {
     if (i == chosen || !competes(i)) continue;
+    if (line && one_line(modes[i].best(), modes[chosen].best(), quality.line_width)) continue;
     const RivalMode rival = rival_of(problem, modes[i].best(), modes[chosen].best(), quality.scatter);
     if (!quality.rival || rival.deviance_above < quality.rival->deviance_above) quality.rival = rival;
   }

@@ -6,7 +6,9 @@
 
 #include <Eigen/Cholesky>
 
+#include "model/infer/line_modes.hpp"
 #include "model/infer/monotone.hpp"
+#include "model/infer/shown.hpp"
 #include "model/infer/solution.hpp"
 
 namespace halfturn::infer {
@@ -92,7 +94,8 @@ bool fit_under(const ScanBatch& scan, const Readout& readout, const Prior& prior
   fit.quality.by_history = of_choice.by_history;
   fit.quality.rival = of_choice.rival;
   estimate(problem, modes[chosen], fit, work);
-  estimate_second(problem, modes[chosen], fit, work);
+  if (scan.kind == Axis::detuning) widen_offset(problem, modes, chosen, fit);
+  estimate_second(problem, modes, chosen, fit, work);
   fit.outcome = FitOutcome::fitted;
   return true;
 }
@@ -206,7 +209,7 @@ void fit_one(const ScanBatch& given, std::size_t site, const Prior& prior, const
   fit_under(scan, readout, prior, options, fit, work);
   fit.prior = reconciled(scan, readout, prior, options, fit, work);
   look_for_drift(scan, readout, options, fit, work);
-  if (fit.outcome == FitOutcome::fitted) return;
+  if (fit.outcome == FitOutcome::fitted) return withhold_unshown(options, fit);
   const auto monotone = monotone_half_deviance(readout, scan.axis);
   fit.quality.monotone_gain = 2.0 * (monotone.flat - std::min(monotone.rising, monotone.falling));
 }

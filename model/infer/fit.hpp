@@ -32,6 +32,7 @@ struct FitOptions {
   double level = 0.95;           // of the intervals
   double second_level = 0.0;     // of Fit::second; 0: none
   double rival_margin = 25.0;    // deviance within which another mode is a rival
+  double least_evidence = 30.0;  // deviance to be gained over a flat line, below which no interval is given (shown.hpp)
   std::vector<PulseAngle> pulses;
 };
 

@@ -25,6 +25,7 @@ struct Expected {
 struct Prior {
   std::optional<Expected> expect;        // of the Rabi frequency; without: below the scan's sampling limit
   std::optional<Known> log_rabi;         // history's prediction of ln(Omega / (rad/s)) at the scan's time and drive amplitude
+  std::optional<double> rough_log_rabi;  // of lines, ln(Omega / (rad/s)) by the pulses in force: line_modes.hpp
   std::optional<Known> detuning;         // drive minus transition; without: exactly 0. The fit of a detuning scan does not read it
   std::optional<Known> floor, contrast;  // of the readout
   Known dead_time{0.0, 100e-9};          // s; normal with a wide tail (scan_objective.cpp), for it is a guess at times

@@ -2,6 +2,7 @@
 #include <algorithm>
 #include <cmath>
 
+#include "model/infer/line_modes.hpp"
 #include "model/infer/solution.hpp"
 #include "model/quantity/constants.hpp"
 
@@ -18,6 +19,12 @@ constexpr double kOthersWorthIt = 150.0;
 // So many modes, the best by their first refinement, are refined under every candidate before they are compared: the first
 // candidate may be the wrong one, and costs hundreds of deviance where there is much data.
 constexpr std::size_t kModesInFull = 6;
+// The first refinement of a line's starts only sorts them: to 0.02 in deviance, or as far as so many evaluations go.
+constexpr SolverOptions kSorting{.decrease_tolerance = 0.01, .max_evaluations = 60};
+// Other modes of a line are compared with the best to 2e-4 in deviance.
+constexpr SolverOptions kComparing{.decrease_tolerance = 1e-4, .max_evaluations = 100};
+// What a refinement may still promise to gain to count as finished.
+constexpr double kFinished = 1e-8;
 
 bool only_candidate(const Prior& prior, Dynamics candidate) {
   DynamicsSet without = prior.candidates;
@@ -35,13 +42,14 @@ bool strayed(const Problem& problem, double start, double end) {
   return problem.scan.kind == Axis::duration && std::abs(end - start) > kTwoPi * 1.5 / problem.sampling.span;
 }
 
-std::optional<Solution> refine(const Problem& problem, Dynamics candidate, const Physical& start, FitWorkspace& work) {
+std::optional<Solution> refine(const Problem& problem, Dynamics candidate, const Physical& start, FitWorkspace& work,
+                               const SolverOptions& options = {}) {
   const bool negative = start.contrast() < 0.0;
   const ScanObjective objective(problem.scan, problem.readout, problem.prior, candidate, {}, negative, work.objective);
   Solution solution;
   solution.dynamics = candidate;
   solution.negative_contrast = negative;
-  solution.minimum = minimise(objective, objective.pack(start), objective.bounds());
+  solution.minimum = minimise(objective, objective.pack(start), objective.bounds(), options);
   const auto& minimum = solution.minimum;
   const bool settled = minimum.outcome == Outcome::converged || (std::isfinite(minimum.value) && minimum.expected_decrease < 1e-3);
   if (!settled) return std::nullopt;
@@ -77,21 +85,25 @@ bool still_the_mode(const Problem& problem, const Solution& from, const Solution
 }
 
 /// Adds a candidate to a mode, begun from `from`; one that slid to another frequency is not this mode's.
-void add_candidate(const Problem& problem, ModeSolutions& mode, Dynamics candidate, const Solution& from, FitWorkspace& work) {
+void add_candidate(const Problem& problem, ModeSolutions& mode, Dynamics candidate, const Solution& from, FitWorkspace& work,
+                   const SolverOptions& options = {}) {
   if (candidate == from.dynamics) return mode.solutions.push_back(from);
   // An ensemble's envelope is no exponential: where a start as wide as that leads nowhere, a wider and a narrower one are tried.
   for (const double factor : {1.0, 2.5, 0.4}) {
-    auto solution = refine(problem, candidate, start_for(problem, candidate, from, factor, work), work);
+    auto solution = refine(problem, candidate, start_for(problem, candidate, from, factor, work), work, options);
     if (solution && still_the_mode(problem, from, *solution)) return mode.solutions.push_back(std::move(*solution));
     if (is_simple(candidate)) return;
   }
 }
 
-void refine_simple(const Problem& problem, ModeSolutions& mode, FitWorkspace& work) {
-  const Solution first = mode.best();
+void refine_simple(const Problem& problem, ModeSolutions& mode, FitWorkspace& work, const SolverOptions& options = {}) {
+  Solution first = mode.best();
+  const double finished_at = std::max(kFinished, options.decrease_tolerance);
+  if (problem.scan.kind == Axis::detuning && !(first.minimum.expected_decrease < finished_at))
+    if (auto finished = refine(problem, first.dynamics, first.physical, work, options)) first = std::move(*finished);
   mode.solutions.clear();
   for (const Dynamics candidate : kAllDynamics)
-    if (is_simple(candidate) && problem.prior.candidates.has(candidate)) add_candidate(problem, mode, candidate, first, work);
+    if (is_simple(candidate) && problem.prior.candidates.has(candidate)) add_candidate(problem, mode, candidate, first, work, options);
   if (mode.solutions.empty()) mode.solutions.push_back(first);
   std::stable_sort(mode.solutions.begin(), mode.solutions.end(), by_aicc);
 }
@@ -121,6 +133,28 @@ void refine_others(const Problem& problem, ModeSolutions& mode, FitWorkspace& wo
     add_candidate(problem, mode, candidate, from, work);
   }
   std::stable_sort(mode.solutions.begin(), mode.solutions.end(), by_aicc);
+}
+
+/// The best mode of a line under every simple candidate, and of the others as much as it takes to compare them with it.
+void refine_lines(const Problem& problem, std::vector<ModeSolutions>& modes, FitWorkspace& work) {
+  if (modes.empty()) return;
+  const double sorted_by = modes.front().best().minimum.value;
+  refine_simple(problem, modes.front(), work);
+  const Solution best = modes.front().best();
+  const double worth_it = drop_hopeless(problem, modes, sorted_by);
+  for (std::size_t i = 1; i < modes.size(); ++i) {
+    ModeSolutions& mode = modes[i];
+    const Solution first = mode.best();
+    if (best.dynamics != first.dynamics) {
+      Physical start = first.physical;
+      start.damping = best.physical.damping;
+      if (auto alike = refine(problem, best.dynamics, start, work, kComparing); alike && same_mode(problem, first, *alike) && alike->aicc < first.aicc)
+        mode.solutions.front() = std::move(*alike);
+    }
+    if (mode.best().minimum.value < worth_it) refine_simple(problem, mode, work, kComparing);
+  }
+  const auto least = std::min_element(modes.begin(), modes.end(), [](const auto& a, const auto& b) { return a.best().aicc < b.best().aicc; });
+  if (least != modes.begin()) refine_simple(problem, *least, work);
 }
 
 /// The candidate under which a start is refined first.
@@ -153,16 +187,19 @@ bool same_mode(const Problem& problem, const Solution& a, const Solution& b) {
 }
 
 std::vector<ModeSolutions> refine_modes(const Problem& problem, std::span<const Mode> starts, FitWorkspace& work) {
+  const bool line = problem.scan.kind == Axis::detuning;
   std::vector<ModeSolutions> modes;
   for (const auto& start : starts) {
     const Dynamics candidate = first_candidate(problem.prior, start.damped);
     const Physical from = first_start(problem, candidate, start, work);
-    if (auto solution = refine(problem, candidate, from, work)) add_mode(problem, modes, std::move(*solution));
+    if (auto solution = refine(problem, candidate, from, work, line ? kSorting : SolverOptions{})) add_mode(problem, modes, std::move(*solution));
   }
   auto by_deviance = [](const ModeSolutions& a, const ModeSolutions& b) { return a.best().minimum.value < b.best().minimum.value; };
   std::stable_sort(modes.begin(), modes.end(), by_deviance);
-  if (modes.size() > kModesInFull) modes.resize(kModesInFull);
-  for (auto& mode : modes) refine_simple(problem, mode, work);
+  if (line) refine_lines(problem, modes, work);
+  else if (modes.size() > kModesInFull) modes.resize(kModesInFull);
+  if (!line)
+    for (auto& mode : modes) refine_simple(problem, mode, work);
   const auto better = [](const ModeSolutions& a, const ModeSolutions& b) { return a.best().aicc < b.best().aicc; };
   std::stable_sort(modes.begin(), modes.end(), better);
   if (modes.empty() || !others_asked_for(problem.prior)) return modes;

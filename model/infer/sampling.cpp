@@ -34,8 +34,9 @@ void linear_points(const Readout& readout, std::span<double> value, std::span<do
 }
 
 void SearchWorkspace::reserve(std::size_t points) {
-  for (auto* array : {&value, &weight})
+  for (auto* array : {&value, &weight, &part, &weighted})
     if (array->size() < points) array->resize(points);
+  if (place.size() < points) place.resize(points);
 }
 
 void keep_signals_possible(Readout::Kind kind, Physical& start) {

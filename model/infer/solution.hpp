@@ -71,7 +71,7 @@ TrialGrid trial_grid(const Prior& prior, const Sampling& sampling, std::size_t p
 void estimate(const Problem& problem, const ModeSolutions& mode, Fit& fit, FitWorkspace& workspace);
 
 /// Fills Fit::second where a second level is asked for; after `estimate`, with the same scatter.
-void estimate_second(const Problem& problem, const ModeSolutions& mode, Fit& fit, FitWorkspace& workspace);
+void estimate_second(const Problem& problem, std::span<const ModeSolutions> modes, std::size_t chosen, Fit& fit, FitWorkspace& workspace);
 
 /// Full width at half maximum of the line of these rates after a pulse of this length, rad/s: between the outermost places
 /// where the population change is half of its largest.

@@ -66,6 +66,22 @@ std::optional<infer::Known> history_of(const recalibrate::State& state, const wi
   return infer::Known{known->mean + ratio, std::hypot(known->sigma, kAmplifier * ratio)};
 }
 
+/// For a line: what the pulses in force say of the Rabi frequency, which decides among modes alone. Nothing at another amplitude than
+/// theirs; one that is stated stands against the tracked one, or against 1.
+std::optional<double> rough_log_rabi(const config::Drive& drive, const recalibrate::State& state, const wire::Scan& scan) {
+  if (scan.axis_kind != wire::AxisKind::detuning || drive.pulses.empty()) return std::nullopt;
+  const double tracked = std::isfinite(state.drive_amplitude) ? state.drive_amplitude : 1.0;
+  if (!recalibrate::same_amplitude(tracked, scan.drive_amplitude.value_or(tracked))) return std::nullopt;
+  double sum = 0.0;
+  for (const auto& pulse : drive.pulses) {
+    const auto in_force = state.in_force_s.find(pulse.name);
+    const double length = in_force == state.in_force_s.end() ? pulse.length_s : in_force->second;
+    if (!(length > 0.0)) return std::nullopt;
+    sum += std::log(pulse.angle_rad / (pulse.area_factor * length));
+  }
+  return sum / static_cast<double>(drive.pulses.size());
+}
+
 infer::DynamicsSet candidates_of(const config::Drive* drive, const wire::Options& options) {
   auto set = infer::DynamicsSet::none();
   for (const auto& name : options.dynamics)
@@ -123,6 +139,7 @@ infer::Prior prior_for(const config::Drive* drive, const recalibrate::State& sta
     prior.follows_intensity = drive->transition && drive->transition->multipole == atom::Multipole::two_photon;
     if (drive->transition) add_lifetime(*drive->transition, prior);
     add_readout(*drive, scan, prior, assumed);
+    prior.rough_log_rabi = rough_log_rabi(*drive, state, scan);
   }
   if (drive != nullptr && drive->dead_time) prior.dead_time = *drive->dead_time;
   else assumed.push_back("switching: a dead time of 0 +- 100 ns");
@@ -139,6 +156,7 @@ infer::FitOptions fit_options(const config::Drive* drive, const wire::Options& o
   if (options.level) fit.level = *options.level;
   if (drive == nullptr) return fit;
   fit.rival_margin = drive->accept.rival_margin;
+  fit.least_evidence = drive->accept.min_evidence;
   for (const auto& pulse : drive->pulses) fit.pulses.push_back({pulse.angle_rad, pulse.area_factor});
   return fit;
 }

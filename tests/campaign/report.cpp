@@ -128,7 +128,7 @@ void print_case(std::ostream& out, const Case& of, const Family& family) {
                        {"offset_hz", number(at_best.offset / constants::kTwoPi)}, {"gain", at_best.gain}};
   json["score"] = Json{{"healthy", scored.healthy}, {"used", scored.used}, {"wrong", scored.wrong}, {"in_68", scored.in_68},
                        {"in_95", scored.in_95}, {"off_over_bound", number(scored.off)}, {"held_against", number(scored.held_against)},
-                       {"decidable", decidable(of, gap)}, {"gap_to_rival", number(gap.rival)}, {"gap_to_monotone", number(gap.monotone)},
+                       {"decidable", decidable(of, gap, bound(of).offset)}, {"gap_to_rival", number(gap.rival)}, {"gap_to_monotone", number(gap.monotone)},
                        {"gap_to_flat", number(gap.flat)}};
   json["axis"] = of.scan.axis;
   json["counts"] = of.scan.observed.front();

@@ -5,6 +5,7 @@
 #include <chrono>
 #include <thread>
 
+#include "tests/campaign/bound.hpp"
 #include "tests/campaign/progress.hpp"
 #include "tests/campaign/targets.hpp"
 #include "tests/campaign/undecidable.hpp"
@@ -43,7 +44,7 @@ void examine(const Order& order, const std::vector<const Family*>& wanted, const
     const auto at = place_of(numbers[static_cast<std::size_t>(i)], wanted.size(), order.seeds);
     told[static_cast<std::size_t>(i)] = [&] {
       const Case drawn = draw(*wanted[at.family], at.seed, at.index);
-      return decidable(drawn, gaps(drawn));
+      return decidable(drawn, gaps(drawn), bound(drawn).offset);
     }();
   });
   for (std::size_t i = 0; i < numbers.size(); ++i) {

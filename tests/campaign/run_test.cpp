@@ -139,7 +139,7 @@ TEST_CASE("time left is said in words") {
 
 TEST_CASE("an alias that fits alike is not decidable, a plain flop with many shots is") {
   // On an even grid f and the sampling rate less f fit alike (Nyquist, Trans. AIEE 47, 617 (1928)).
-  const auto told = [](const Case& c) { return decidable(c, gaps(c)); };
+  const auto told = [](const Case& c) { return decidable(c, gaps(c), 0.0); };
   for (std::uint64_t index = 0; index < 8; ++index) CHECK_FALSE(told(draw(*family_named("alias_inside"), 5, index)));
   int plain = 0, asked = 0;
   for (std::uint64_t index = 0; asked < 8; ++index) {

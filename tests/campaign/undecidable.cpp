@@ -1,8 +1,10 @@
 // SPDX-License-Identifier: Apache-2.0
 #include "tests/campaign/undecidable.hpp"
 
+#include <algorithm>
 #include <cmath>
 
+#include "model/quantity/constants.hpp"
 #include "tests/campaign/answer.hpp"
 #include "tests/campaign/held.hpp"
 
@@ -10,6 +12,11 @@ namespace halfturn::campaign {
 namespace {
 
 constexpr double kSpread = 2;  // standard deviations
+
+bool inside(const Case& of, double spare) {
+  const auto [first, last] = std::minmax_element(of.scan.axis.begin(), of.scan.axis.end());
+  return constants::kTwoPi * *first + spare <= of.truth.detuning && of.truth.detuning <= constants::kTwoPi * *last - spare;
+}
 
 }  // namespace
 

@@ -24,8 +24,9 @@ Gaps gaps(const Case& of);
 /// normal about the gap with a standard deviation of 2 sqrt(gap), which is counted twice.
 double gap_for(double threshold);
 
-/// Whether a scan can be decided: its gaps are what the gates of rival and evidence need. Nobody could use one that is not, under
-/// these thresholds, without being told more.
-bool decidable(const Case& of, const Gaps& gaps);
+/// Whether a scan can be decided: its gaps are what the gates of rival and evidence need, and a line's centre lies inside the window
+/// by twice its bound `offset_bound` (rad/s; of flops not read). Nobody could use one that is not, under these thresholds, without
+/// being told more.
+bool decidable(const Case& of, const Gaps& gaps, double offset_bound);
 
 }  // namespace halfturn::campaign
