@@ -6,6 +6,7 @@
 #include <stdexcept>
 
 #include "model/infer/fit.hpp"
+#include "model/infer/outliers.hpp"
 #include "model/infer/scan_objective.hpp"
 #include "plugin/log/memory_log.hpp"
 #include "plugin/service/known.hpp"
@@ -98,7 +99,11 @@ double held_against(const Case& of, std::size_t pulse, double value) {
   work.reserve(of.scan.axis.size());
   infer::Lead lead;
   if (!of.truth.line) lead = {infer::Lead::Kind::pulse_length, of.drive.pulses[pulse].angle_rad, of.drive.pulses[pulse].area_factor};
-  const auto readout = again.scan.batch.site(0);
+  auto readout = again.scan.batch.site(0);
+  std::vector<double> odds(fit.outlier_share > 0 ? of.scan.axis.size() : 0);
+  if (!odds.empty()) infer::outlier_odds(readout, fit.outlier_share, odds);
+  readout.odds = odds;
+  readout.dispersion = fit.dispersion;
   double held = INFINITY, free = INFINITY;
   for (int candidate = 0; candidate < 4; ++candidate) {
     for (auto start : starts(of, fit.physical)) {
@@ -115,7 +120,7 @@ double held_against(const Case& of, std::size_t pulse, double value) {
       if (std::isfinite(bound.value)) held = std::min(held, bound.value);
     }
   }
-  return 2 * (held - free) / fit.quality.scatter;
+  return 2 * (held - free) * fit.dispersion / fit.quality.scatter;
 }
 
 double left_by_one_line(const Case& of) {
