@@ -66,6 +66,7 @@ struct FitQuality {
   double line_width = kUnknown;     // rad/s, full width at half maximum; detuning scans
   int points = 0;                   // measured
   std::vector<int> distrusted;      // indices of the points that are more probably outliers than not; all above is told without them
+  double p_together = 1.0;            // of their standing so close together along the axis, were they strewn at random
   std::vector<double> distrusted_at;  // where on the axis, s or rad/s
   bool outside_expect = false;
   bool by_history = false;          // history decided among modes that fit alike

@@ -119,6 +119,7 @@ FitQuality judge(const Problem& problem, const Solution& solution, FitWorkspace&
                         problem.measured - static_cast<int>(kept.distrusted.size())};
   const auto goodness_of_fit = goodness(trusted.readout, work.signal, static_cast<int>(std::lround(parameters)));
   quality.distrusted = kept.distrusted;
+  quality.p_together = together_p_value(problem.readout, problem.scan.axis, kept.distrusted);
   for (const int i : kept.distrusted) quality.distrusted_at.push_back(problem.scan.axis[static_cast<std::size_t>(i)]);
   quality.points = problem.measured;
   quality.deviance = goodness_of_fit.deviance;

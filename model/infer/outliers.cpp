@@ -6,6 +6,7 @@
 #include <numeric>
 
 #include "model/infer/scatter.hpp"
+#include "model/infer/statistics.hpp"
 
 namespace halfturn::infer {
 namespace {
@@ -152,6 +153,27 @@ Kept set_aside(const Readout& readout, std::span<const double> mean) {
     kept.weight[i] = readout.kind == Kind::gaussian ? std::numeric_limits<double>::infinity() : 0.0;
   }
   return kept;
+}
+
+double together_p_value(const Readout& readout, std::span<const double> axis, std::span<const int> distrusted) {
+  if (distrusted.size() < 2) return 1.0;
+  std::vector<std::size_t> order;
+  for (std::size_t i = 0; i < axis.size(); ++i)
+    if (measured(readout, i)) order.push_back(i);
+  std::stable_sort(order.begin(), order.end(), [&](std::size_t a, std::size_t b) { return axis[a] < axis[b]; });
+  int blocks = 0;
+  bool inside = false;
+  for (const auto i : order) {
+    const bool aside = std::binary_search(distrusted.begin(), distrusted.end(), static_cast<int>(i));
+    if (aside && !inside) ++blocks;
+    inside = aside;
+  }
+  const auto log_choose = [](double n, double k) { return log_factorial(n) - log_factorial(k) - log_factorial(n - k); };
+  const auto some = static_cast<double>(distrusted.size()), others = static_cast<double>(order.size()) - some;
+  double sum = 0.0;
+  for (double b = 1.0; b <= std::min<double>(blocks, others + 1.0); b += 1.0)
+    sum += std::exp(log_choose(some - 1.0, b - 1.0) + log_choose(others + 1.0, b) - log_choose(some + others, some));
+  return std::min(1.0, sum);
 }
 
 MonotoneFit contaminated_monotone(const Readout& readout, std::span<const double> axis, const Kept& kept) {

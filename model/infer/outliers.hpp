@@ -28,6 +28,11 @@ struct Kept {
 };
 Kept set_aside(const Readout& readout, std::span<const double> mean);
 
+/// Probability that distrusted points of a scan fall into as few blocks of neighbours along the axis, or fewer, were they strewn at
+/// random (runs of one kind: A. Wald, J. Wolfowitz, Ann. Math. Stat. 11, 147 (1940)): small where something failed for a while, or where
+/// the model misses a piece of the curve. 1 for fewer than two.
+double together_p_value(const Readout& readout, std::span<const double> axis, std::span<const int> distrusted);
+
 /// The best monotone curves with outliers allowed for, from two starts: none set aside, and those of `kept`. Minima of the
 /// neighbourhood, which lie at most a few points' odds above the lowest.
 MonotoneFit contaminated_monotone(const Readout& readout, std::span<const double> axis, const Kept& kept);

@@ -21,6 +21,8 @@ constexpr double kMostScatter = 9.0;
 constexpr double kHidingScatter = 2.0, kStricter = 100.0, kStrictest = 0.1;
 // So many of the points may be set aside as outliers.
 constexpr double kMostDistrusted = 0.3;
+// They must not stand closer together than this probable by chance: what failed for a while may have failed beside it as well.
+constexpr double kTogether = 1e-3;
 // So many of them are named.
 constexpr std::size_t kNamed = 4;
 // `max_step` sleeps until so many scans were accepted.
@@ -43,6 +45,9 @@ void caution(Reasons& reasons, std::string code, std::string text) { reasons.pus
 bool too_many_outliers(const infer::FitQuality& quality) {
   return static_cast<double>(quality.distrusted.size()) > kMostDistrusted * quality.points;
 }
+
+/// Outliers that are no accidents, one by one.
+bool spoilt(const infer::FitQuality& quality) { return too_many_outliers(quality) || quality.p_together < kTogether; }
 
 /// "3 of 40 points, at 4.2 us, 8.1 us and 9 us,"
 std::string points_set_aside(const infer::Fit& fit) {
@@ -182,10 +187,12 @@ void fit_gates(const infer::Fit& fit, const Context& context, Reasons& reasons) 
                " times what the readout's own noise allows" +
                (quality.p_after_scatter < least_order(quality, context.accept) ? ", and they follow one another or one stands far out" : "") +
                ". Look for a laser that dropped out, atoms lost, a readout that drifted, or more than two levels taking part.");
-  else if (too_many_outliers(quality))
+  else if (spoilt(quality))
     refuse(reasons, "poor_fit",
-           "The model describes the scan only without " + points_set_aside(fit) + " which are far from it: too many to be chance (allowed: " +
-               percent(kMostDistrusted) + "). Look for a laser that drops out, atoms lost, or a readout that fails at times; then scan again.");
+           "The model describes the scan only without " + points_set_aside(fit) + " which are far from it: " +
+               (too_many_outliers(quality) ? "too many to be set aside (allowed: " + percent(kMostDistrusted) + ")"
+                                           : std::string("too close together to be single accidents")) +
+               ". Look for a laser that dropped out, atoms lost, or a readout that failed for a while; then scan again.");
   rival_gate(fit, context, reasons);
   if (quality.outside_expect && !context.expect)
     refuse(reasons, "rival",
@@ -214,7 +221,7 @@ void cautions(const State& state, const infer::Fit& fit, const infer::Prior& pri
     caution(reasons, "scatter",
             "The points scatter with " + plain(quality.scatter, 3) + " times the variance of the readout's own noise; all errors were widened "
             "for it. Something fluctuates from shot to shot or point to point.");
-  if (!quality.distrusted.empty() && !too_many_outliers(quality))
+  if (!quality.distrusted.empty() && !spoilt(quality))
     caution(reasons, "outliers",
             points_set_aside(fit) + " are far from what the others say, and were set aside. An ion or atom lost, a laser that dropped out, or a "
             "readout that failed would do this. If it happens often, find out which before trusting the points that are left.");

@@ -169,6 +169,18 @@ TEST_CASE("three outliers are named, and the pulse is what it is without them") 
   }
 }
 
+// SciPy 1.10.1, hypergeometric counting: sum over b of comb(m-1, b-1) comb(n-m+1, b) / comb(n, m).
+TEST_CASE("distrusted points that stand together are told from strewn ones") {
+  const std::vector<double> axis = even(40.0, 1.0, 40), observed(40, 5.0), weight(40, 20.0);
+  const Readout readout{Kind::binomial, observed, weight};
+  const auto p = [&](const std::vector<int>& distrusted) { return together_p_value(readout, axis, distrusted); };
+  CHECK(p({7, 8, 9}) == Approx(38.0 / 9880.0));
+  CHECK(p({7, 8, 20}) == Approx((38.0 + 2.0 * 703.0) / 9880.0));
+  CHECK(p({7, 15, 20}) == Approx(1.0));
+  CHECK(p({7}) == 1.0);
+  CHECK(p({10, 11, 12, 13, 14, 15, 16}) < 1e-5);
+}
+
 // Coverage 0.95 of 240 scans has a standard deviation of 0.014: fewer than 0.89 happens once in 20,000 seeds. Readings of every kind, one
 // point in ten spoilt to anything.
 TEST_CASE("95 % intervals hold the truth where one point in ten is spoilt") {
