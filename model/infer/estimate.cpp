@@ -156,8 +156,7 @@ void weigh(const ModeSolutions& mode, double scatter, Fit& fit) {
   double total = 0.0;
   fit.candidate_count = 0;
   for (const auto& solution : mode.solutions) {
-    // QAICc: the likelihood part is divided by the scatter (Burnham & Anderson 2002, section 2.5).
-    const double difference = (solution.aicc - mode.best().aicc) / scatter;
+    const double difference = solution.quasi_aicc(scatter) - mode.best().quasi_aicc(scatter);
     auto& score = fit.candidates[static_cast<std::size_t>(fit.candidate_count++)];
     score = {solution.dynamics, solution.aicc, std::exp(-0.5 * difference)};
     total += score.weight;

@@ -59,7 +59,7 @@ struct FitQuality {
   double deviance = kUnknown, dof = kUnknown;
   double p_value = kUnknown;        // of a deviance as large, moment-matched; before scatter is counted
   double scatter = 1.0;             // variance of the residuals over the readout's own; above 1 where p_value < 0.1, in full where < 0.01
-  double p_after_scatter = kUnknown;  // smallest p-value of runs, autocorrelation, largest residual and left-over oscillation, with scatter counted
+  double p_after_scatter = kUnknown;  // smallest p-value of runs, autocorrelation, furthest residual and left-over oscillation, with scatter counted
   double cycles = kUnknown;         // seen within the span, lower end of the interval; duration scans
   double over_flat = kUnknown;      // deviance gained over a flat line, scatter counted
   double over_monotone = kUnknown;  // over the best monotone curve of any shape, scatter counted
@@ -67,6 +67,9 @@ struct FitQuality {
   double range_low = kUnknown, range_high = kUnknown;  // rad/s: what the sampling and `expect` allow
   double line_width = kUnknown;     // rad/s, full width at half maximum; detuning scans
   int points = 0;                   // measured
+  std::vector<int> distrusted;      // indices of the points that are more probably outliers than not; all above is told without them
+  double p_together = 1.0;            // of their standing so close together along the axis, were they strewn at random
+  std::vector<double> distrusted_at;  // where on the axis, s or rad/s
   bool outside_expect = false;
   bool by_history = false;          // history decided among modes that fit alike
   bool dead_time_released = false;  // the data contradicted the dead time's prior, which was set aside
@@ -95,6 +98,8 @@ struct Fit {
   Matrix covariance;            // of x, scatter counted
   bool negative_contrast = false;
   Prior prior;                  // under which it was fitted: the one given, less what the data contradicted
+  double outlier_share = 0.0;   // the share of outliers that the likelihood allowed for (outliers.hpp); 0: none
+  double dispersion = 1.0;      // Readout::dispersion of the likelihood
 
   Estimate rabi;                // rad/s, bare and peak
   Estimate rabi_mean;           // rad/s, of the ensemble

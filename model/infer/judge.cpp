@@ -8,6 +8,8 @@
 
 #include "model/infer/goodness.hpp"
 #include "model/infer/monotone.hpp"
+#include "model/infer/outliers.hpp"
+#include "model/infer/scatter.hpp"
 #include "model/infer/solution.hpp"
 #include "model/infer/statistics.hpp"
 #include "model/quantity/constants.hpp"
@@ -74,20 +76,31 @@ double residual_p_value(const Problem& problem, std::span<const double> signal, 
     if (measured(problem.readout, i)) index.push_back(i);
   std::stable_sort(index.begin(), index.end(), [&](std::size_t a, std::size_t b) { return axis[a] < axis[b]; });
   order.clear();
-  double largest = 0.0;
   for (const auto i : index) {
     const double sigma = std::sqrt(standard_variance(problem.readout, i, signal[i]) * scatter);
     order.push_back((fraction(problem.readout, i) - signal[i]) / sigma);
-    largest = std::max(largest, std::abs(order.back()));
   }
   const double runs = runs_p_value(order);
   const double z = autocorrelation_z(order);
   const double neighbours = std::isfinite(z) ? normal_cdf(-z) : 1.0;
-  // Counting noise has longer tails than the normal law; a residual is held against a chi-square only where scatter was seen.
-  const double outlier = scatter > 1.0 ? std::min(1.0, 2.0 * normal_cdf(-largest) * static_cast<double>(order.size())) : 1.0;
+  // What scatters has longer tails than the normal law, the longer the nearer to an edge. Looked at only where scatter was seen.
+  const double outlier = scatter > 1.0 ? furthest_p_value(problem.readout, signal, scatter) : 1.0;
   // The search costs as much as all else here; a fit that is good enough as it is needs none.
   const double left_over = scatter > 1.0 ? left_over_p_value(problem, signal, scatter, work) : 1.0;
   return std::min(1.0, 4.0 * std::min({runs, neighbours, outlier, left_over}));
+}
+
+/// Deviances gained over a flat line and over the best monotone curve, scatter counted; with outliers allowed for in all of them where the
+/// readout allows for them.
+void gather_evidence(const Problem& problem, const Kept& kept, std::span<const double> signal, FitQuality& quality) {
+  Readout readout = problem.readout;
+  readout.dispersion = quality.scatter;
+  const bool robust = !readout.odds.empty();
+  const auto monotone = robust ? contaminated_monotone(readout, problem.scan.axis, kept) : monotone_half_deviance(readout, problem.scan.axis);
+  double half_deviance = 0.0;
+  evaluate(readout, signal, half_deviance, {}, {});
+  quality.over_flat = 2.0 * (monotone.flat - half_deviance);
+  quality.over_monotone = 2.0 * (std::min(monotone.rising, monotone.falling) - half_deviance);
 }
 
 }  // namespace
@@ -101,20 +114,25 @@ FitQuality judge(const Problem& problem, const Solution& solution, FitWorkspace&
   double half_deviance = kUnknown;
   if (!objective.data_part(solution.physical, half_deviance, work.signal)) return quality;
   const double parameters = effective_parameters(objective, solution.minimum);
-  const auto goodness_of_fit = goodness(problem.readout, work.signal, static_cast<int>(std::lround(parameters)));
+  // What is told of the residuals is told of the points that are trusted, by the readout's own noise.
+  const Kept kept = set_aside(problem.readout, work.signal);
+  const Problem trusted{problem.scan, kept.readout(problem.readout), problem.prior, problem.options, problem.sampling,
+                        problem.measured - static_cast<int>(kept.distrusted.size())};
+  const auto goodness_of_fit = goodness(trusted.readout, work.signal, static_cast<int>(std::lround(parameters)));
+  quality.distrusted = kept.distrusted;
+  quality.p_together = together_p_value(problem.readout, problem.scan.axis, kept.distrusted);
+  for (const int i : kept.distrusted) quality.distrusted_at.push_back(problem.scan.axis[static_cast<std::size_t>(i)]);
   quality.points = problem.measured;
-  quality.deviance = 2.0 * half_deviance;
-  quality.dof = problem.measured - parameters;
+  quality.deviance = goodness_of_fit.deviance;
+  quality.dof = trusted.measured - parameters;
   quality.p_value = goodness_of_fit.p_value;
   if (quality.p_value < kScatterBegins && goodness_of_fit.expected > 0.0) {
     const double counted = std::clamp((kScatterBegins - quality.p_value) / (kScatterBegins - kScatterFull), 0.0, 1.0);
     quality.scatter = 1.0 + counted * std::max(0.0, goodness_of_fit.deviance / goodness_of_fit.expected - 1.0);
   }
-  quality.p_after_scatter = residual_p_value(problem, work.signal, quality.scatter, work);
+  quality.p_after_scatter = residual_p_value(trusted, work.signal, quality.scatter, work);
 
-  const auto monotone = monotone_half_deviance(problem.readout, problem.scan.axis);
-  quality.over_flat = 2.0 * (monotone.flat - half_deviance) / quality.scatter;
-  quality.over_monotone = 2.0 * (std::min(monotone.rising, monotone.falling) - half_deviance) / quality.scatter;
+  gather_evidence(problem, kept, work.signal, quality);
 
   if (problem.scan.kind == Axis::detuning) {
     const double length = problem.scan.pulse_length_s - solution.physical.dead_time;

@@ -85,6 +85,29 @@ Fill fill_of(Readout::Kind kind) {
   return kind == Readout::Kind::poisson ? poisson_chunk : binomial_chunk;
 }
 
+bool mean_possible(Readout::Kind kind, double mean) {
+  if (kind == Readout::Kind::gaussian) return std::abs(mean) < kInfinity;
+  return mean >= 0.0 && (kind == Readout::Kind::binomial ? mean <= 1.0 : mean < kInfinity);
+}
+
+PointLikelihood allowed_for(const Readout& readout, std::size_t i, const PointLikelihood& own) {
+  const double d = readout.dispersion;
+  const PointLikelihood dispersed{own.half_deviance / d, own.score / d, own.information / d};
+  if (!readout.odds.empty()) return contaminated(dispersed, readout.odds[i]);
+  return readout.softness > 0.0 ? softened(dispersed, readout.softness) : dispersed;
+}
+
+/// Allows for scatter and outliers in a chunk of plain points.
+void allow(const Readout& readout, std::size_t first, Chunk& c) {
+  for (std::size_t i = 0; i < c.count; ++i) {
+    if (!mean_possible(readout.kind, c.mean[i])) continue;
+    const PointLikelihood at = allowed_for(readout, first + i, {c.deviance[i], c.score[i], c.information[i]});
+    c.deviance[i] = at.half_deviance;
+    c.score[i] = at.score;
+    c.information[i] = at.information;
+  }
+}
+
 /// Calls `take(chunk, first)` for the points in turn, a chunk at a time.
 template <class Take>
 void each_chunk(const Readout& readout, std::span<const double> mean, Take take) {
@@ -96,6 +119,7 @@ void each_chunk(const Readout& readout, std::span<const double> mean, Take take)
     chunk.mean = mean.data() + first;
     chunk.count = std::min(kChunk, mean.size() - first);
     fill(chunk);
+    if (readout.robust() || readout.dispersion != 1.0) allow(readout, first, chunk);
     take(chunk, first);
   }
 }
@@ -107,6 +131,22 @@ PointLikelihood binomial(double counts, double shots, double mean) { return bino
 PointLikelihood gaussian(double signal, double sigma, double mean) { return gaussian_point(signal, sigma, mean); }
 
 PointLikelihood poisson(double photons, double exposures, double mean) { return poisson_point(photons, exposures, mean); }
+
+PointLikelihood contaminated(const PointLikelihood& plain, double odds) {
+  const double d = plain.half_deviance;
+  // Left out, or ruled out: beyond exp(700) the plain part is nothing.
+  if (plain.information == 0.0 && d == 0.0) return plain;
+  if (!(d < 700.0)) return {std::log1p(odds) - std::log(odds), 0.0, 0.0};
+  const double growth = odds * std::exp(d), kept = 1.0 / (1.0 + growth);
+  const double half = d - std::log1p(growth) + std::log1p(odds);
+  const double share = kept * (plain.information - (1.0 - kept) * plain.score * plain.score);
+  return {std::max(0.0, half), kept * plain.score, std::max(0.0, share)};
+}
+
+PointLikelihood softened(const PointLikelihood& plain, double softness) {
+  const double square = softness * softness, root = std::sqrt(1.0 + 2.0 * plain.half_deviance / square);
+  return {square * (root - 1.0), plain.score / root, plain.information / root};
+}
 
 bool evaluate(const Readout& readout, std::span<const double> mean, double& half_deviance, std::span<double> score,
               std::span<double> information) {

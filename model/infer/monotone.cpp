@@ -59,12 +59,30 @@ std::vector<Block> pooled(const std::vector<Block>& start, double direction) {
   return out;
 }
 
-double half_deviance(const Readout& readout, const std::vector<std::size_t>& order, const std::vector<Block>& blocks) {
+std::vector<std::size_t> order_of(std::span<const double> axis) {
+  std::vector<std::size_t> order(axis.size());
+  std::iota(order.begin(), order.end(), std::size_t{0});
+  std::stable_sort(order.begin(), order.end(), [&](std::size_t a, std::size_t b) { return axis[a] < axis[b]; });
+  return order;
+}
+
+Block whole(const std::vector<Block>& blocks) {
+  Block all{0.0, 0.0, 0};
+  for (const Block& block : blocks) absorb(all, block);
+  return all;
+}
+
+std::vector<double> means(const std::vector<std::size_t>& order, const std::vector<Block>& blocks) {
   std::vector<double> mean(order.size());
   std::size_t k = 0;
   for (const Block& block : blocks) {
     for (std::size_t i = 0; i < block.points; ++i) mean[order[k++]] = block.mean();
   }
+  return mean;
+}
+
+double half_deviance(const Readout& readout, const std::vector<std::size_t>& order, const std::vector<Block>& blocks) {
+  const auto mean = means(order, blocks);
   double total = 0.0;
   evaluate(readout, mean, total, {}, {});
   return total;
@@ -73,15 +91,18 @@ double half_deviance(const Readout& readout, const std::vector<std::size_t>& ord
 }  // namespace
 
 MonotoneFit monotone_half_deviance(const Readout& readout, std::span<const double> axis) {
-  std::vector<std::size_t> order(axis.size());
-  std::iota(order.begin(), order.end(), std::size_t{0});
-  std::stable_sort(order.begin(), order.end(), [&](std::size_t a, std::size_t b) { return axis[a] < axis[b]; });
+  const auto order = order_of(axis);
   const std::vector<Block> start = positions(readout, axis, order);
   if (start.empty() || start.front().weight <= 0.0) return {0.0, 0.0, 0.0};
-  Block all{0.0, 0.0, 0};
-  for (const Block& block : start) absorb(all, block);
   return {half_deviance(readout, order, pooled(start, 1.0)), half_deviance(readout, order, pooled(start, -1.0)),
-          half_deviance(readout, order, {all})};
+          half_deviance(readout, order, {whole(start)})};
+}
+
+std::vector<double> monotone_means(const Readout& readout, std::span<const double> axis, int direction) {
+  const auto order = order_of(axis);
+  const std::vector<Block> start = positions(readout, axis, order);
+  if (start.empty() || start.front().weight <= 0.0) return {};
+  return means(order, direction == 0 ? std::vector<Block>{whole(start)} : pooled(start, direction));
 }
 
 }  // namespace halfturn::infer

@@ -1,6 +1,7 @@
 // SPDX-License-Identifier: Apache-2.0
 #pragma once
 #include <span>
+#include <vector>
 
 #include "model/infer/likelihood.hpp"
 
@@ -18,5 +19,8 @@ struct MonotoneFit {
 /// Bartholomew, J. M. Bremner, H. D. Brunk, Statistical Inference under Order Restrictions (1972), section 2.3). `rising`
 /// and `falling` never exceed `flat`. Points left out of the likelihood are left out here. Time n log n.
 MonotoneFit monotone_half_deviance(const Readout& readout, std::span<const double> axis);
+
+/// Those means, at every point: `direction` 1 rising, -1 falling, 0 flat. Empty where nothing was measured.
+std::vector<double> monotone_means(const Readout& readout, std::span<const double> axis, int direction);
 
 }  // namespace halfturn::infer

@@ -3,6 +3,7 @@
 #include <cmath>
 #include <vector>
 
+#include "model/infer/outliers.hpp"
 #include "model/infer/starts.hpp"
 #include "model/quantity/constants.hpp"
 
@@ -15,6 +16,7 @@ using constants::kPi;
 constexpr double kOffGrid = 0.05;
 
 void linear_points(const Readout& readout, std::span<double> value, std::span<double> weight) {
+  if (readout.robust()) return level_points(readout, value, weight);
   for (std::size_t i = 0; i < value.size(); ++i) {
     const double k = readout.observed[i], n = readout.weight[i];
     value[i] = weight[i] = 0.0;

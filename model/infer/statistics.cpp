@@ -57,14 +57,6 @@ double gamma_fraction(double a, double x) {
 
 bool in_domain(double a, double x) { return a > 0.0 && x >= 0.0 && std::isfinite(a); }
 
-/// log(n!) for real n >= 0: Stirling's series from 16 on. (std::lgamma writes a global variable.)
-double log_factorial(double n) {
-  if (n < 16.0) return std::log(std::tgamma(n + 1.0));
-  const double a = n + 1.0, b = 1.0 / a, b2 = b * b;
-  return (a - 0.5) * std::log(a) - a + 0.5 * std::log(2.0 * std::numbers::pi) +
-         b * (1.0 / 12 - b2 * (1.0 / 360 - b2 * (1.0 / 1260 - b2 / 1680)));
-}
-
 double log_choose(double n, double k) { return log_factorial(n) - log_factorial(k) - log_factorial(n - k); }
 
 /// Exact probability of at most `runs` runs among `plus` and `minus` signs in random order.
@@ -83,6 +75,14 @@ double runs_exact(std::size_t plus, std::size_t minus, std::size_t runs) {
 }
 
 }  // namespace
+
+/// Stirling's series from 16 on. (std::lgamma writes a global variable.)
+double log_factorial(double n) {
+  if (n < 16.0) return std::log(std::tgamma(n + 1.0));
+  const double a = n + 1.0, b = 1.0 / a, b2 = b * b;
+  return (a - 0.5) * std::log(a) - a + 0.5 * std::log(2.0 * std::numbers::pi) +
+         b * (1.0 / 12 - b2 * (1.0 / 360 - b2 * (1.0 / 1260 - b2 / 1680)));
+}
 
 double gamma_p(double a, double x) {
   if (!in_domain(a, x)) return kNan;

@@ -11,6 +11,9 @@ namespace halfturn::infer {
 double gamma_p(double a, double x);
 double gamma_q(double a, double x);
 
+/// log(n!) for real n >= 0, relative error < 1e-13.
+double log_factorial(double n);
+
 /// Probability that a chi-square of `dof` > 0 (any real number) exceeds x, and the value exceeded with probability `tail`
 /// (0 < tail < 1; relative error < 1e-9 for dof <= 1e6).
 double chi_square_tail(double x, double dof);

@@ -12,9 +12,19 @@ namespace {
 
 using constants::kTwoPi;
 
-// Excess scatter up to twice the readout's own sigma is taken as noise of the apparatus where the residuals show no order; above, the
-// model is wrong or the scan was disturbed.
-constexpr double kMostScatter = 4.0;
+// Excess scatter up to three times the readout's own sigma is taken as noise of the apparatus where the residuals show no order;
+// above, the model is wrong or the scan was disturbed.
+constexpr double kMostScatter = 9.0;
+// The more scatter, the more order it could hide: above so much, the residuals' p-value must be so many times min_p_value. Of 108 simulated
+// flops with beta-binomial counts and a scatter of 3.5 to 9 (campaign, "scatter") all stayed above 0.01, of 37 with two components 28 fell
+// below it, 5 of those above 1e-4.
+constexpr double kHidingScatter = 2.0, kStricter = 100.0, kStrictest = 0.1;
+// So many of the points may be set aside as outliers.
+constexpr double kMostDistrusted = 0.3;
+// They must not stand closer together than this probable by chance: what failed for a while may have failed beside it as well.
+constexpr double kTogether = 1e-3;
+// So many of them are named.
+constexpr std::size_t kNamed = 4;
 // `max_step` sleeps until so many scans were accepted.
 constexpr int kStepAwake = 3;
 // Two scans repeat one another where span and spacing agree to this.
@@ -32,9 +42,34 @@ void refuse(Reasons& reasons, std::string code, std::string text) { reasons.push
 
 void caution(Reasons& reasons, std::string code, std::string text) { reasons.push_back({std::move(code), std::move(text), false}); }
 
+bool too_many_outliers(const infer::FitQuality& quality) {
+  return static_cast<double>(quality.distrusted.size()) > kMostDistrusted * quality.points;
+}
+
+/// Outliers that are no accidents, one by one.
+bool spoilt(const infer::FitQuality& quality) { return too_many_outliers(quality) || quality.p_together < kTogether; }
+
+/// "3 of 40 points, at 4.2 us, 8.1 us and 9 us,"
+std::string points_set_aside(const infer::Fit& fit) {
+  const auto& at = fit.quality.distrusted_at;
+  std::string text = std::to_string(at.size()) + " of " + std::to_string(fit.quality.points) + " points, at ";
+  const std::size_t named = at.size() > kNamed + 1 ? kNamed : at.size();
+  for (std::size_t i = 0; i < named; ++i) {
+    if (i > 0) text += i + 1 == at.size() ? " and " : ", ";
+    text += fit.axis == infer::Axis::duration ? engineering(at[i], "s", 4) : engineering(at[i] / kTwoPi, "Hz", 4);
+  }
+  return text + (named < at.size() ? " and " + std::to_string(at.size() - named) + " more places," : ",");
+}
+
+double least_order(const infer::FitQuality& quality, const Accept& accept) {
+  const double stricter = std::max(accept.min_p_value, std::min(kStricter * accept.min_p_value, kStrictest));
+  return quality.scatter > kHidingScatter ? stricter : accept.min_p_value;
+}
+
 bool poor(const infer::FitQuality& quality, const Accept& accept) {
   if (!(quality.p_value < accept.min_p_value)) return false;
-  return quality.scatter > kMostScatter || quality.p_after_scatter < accept.min_p_value;
+  if (quality.scatter > kMostScatter) return true;
+  return quality.p_after_scatter < least_order(quality, accept);
 }
 
 void evidence_gates(const infer::Fit& fit, const Context& context, Reasons& reasons) {
@@ -151,8 +186,14 @@ void fit_gates(const infer::Fit& fit, const Context& context, Reasons& reasons) 
     refuse(reasons, "poor_fit",
            "The model does not describe the scan: the residuals' variance is " + plain(quality.scatter, 3) +
                " times what the readout's own noise allows" +
-               (quality.p_after_scatter < context.accept.min_p_value ? ", and they follow one another or one stands far out" : "") +
+               (quality.p_after_scatter < least_order(quality, context.accept) ? ", and they follow one another or one stands far out" : "") +
                ". Look for a laser that dropped out, atoms lost, a readout that drifted, or more than two levels taking part.");
+  else if (spoilt(quality))
+    refuse(reasons, "poor_fit",
+           "The model describes the scan only without " + points_set_aside(fit) + " which are far from it: " +
+               (too_many_outliers(quality) ? "too many to be set aside (allowed: " + percent(kMostDistrusted) + ")"
+                                           : std::string("too close together to be single accidents")) +
+               ". Look for a laser that dropped out, atoms lost, or a readout that failed for a while; then scan again.");
   rival_gate(fit, context, reasons);
   if (quality.outside_expect && !context.expect)
     refuse(reasons, "rival",
@@ -181,6 +222,10 @@ void cautions(const State& state, const infer::Fit& fit, const infer::Prior& pri
     caution(reasons, "scatter",
             "The points scatter with " + plain(quality.scatter, 3) + " times the variance of the readout's own noise; all errors were widened "
             "for it. Something fluctuates from shot to shot or point to point.");
+  if (!quality.distrusted.empty() && !spoilt(quality))
+    caution(reasons, "outliers",
+            points_set_aside(fit) + " are far from what the others say, and were set aside. An ion or atom lost, a laser that dropped out, or a "
+            "readout that failed would do this. If it happens often, find out which before trusting the points that are left.");
   if (quality.dead_time_released)
     caution(reasons, "dead_time",
             "The dead time found, " + with_uncertainty(fit.dead_time_s.value, fit.dead_time_s.sigma, "s") + ", is far from what is configured, " +

@@ -125,6 +125,7 @@ std::string quality(const wire::Fitted& scan) {
   const auto& q = scan.quality;
   std::string text = "deviance " + plain(q.deviance, 4) + " for " + plain(q.dof, 3) + " degrees of freedom, p = " +
                      plain(q.p_value, 2) + "; " + plain(q.cycles, 3) + " cycles in " + std::to_string(q.points) + " points";
+  if (!q.distrusted.empty()) text += ", " + std::to_string(q.distrusted.size()) + " of them set aside";
   if (q.scatter > 1.0) text += "; the scatter has " + plain(q.scatter, 3) + " times the variance that the shots allow";
   if (q.rival)
     text += "; the next best frequency is " + engineering(q.rival->rabi_hz, "Hz") + ", worse by " +

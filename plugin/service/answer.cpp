@@ -123,6 +123,7 @@ wire::Quality quality(const infer::Fit& fit) {
   out.range_low_hz = q.range_low / kTwoPi;
   out.range_high_hz = q.range_high / kTwoPi;
   out.scatter = q.scatter;
+  out.distrusted.assign(q.distrusted.begin(), q.distrusted.end());
   if (q.rival) out.rival = wire::Rival{q.rival->frequency / kTwoPi, q.rival->deviance_above};
   return out;
 }

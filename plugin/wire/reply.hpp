@@ -55,6 +55,7 @@ struct Quality {
   double range_low_hz = 0, range_high_hz = 0;
   double scatter = 1;  // variance of the residuals over what the shots allow
   std::optional<Rival> rival;
+  std::vector<std::int64_t> distrusted;  // indices of points set aside as outliers; deviance, dof and scatter are without them
 };
 
 struct Overlay {

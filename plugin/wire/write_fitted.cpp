@@ -72,6 +72,10 @@ void write_quality(Writer& to, const Quality& quality) {
   to.field("cycles", quality.cycles);
   to.field("points", quality.points);
   to.field("scatter", quality.scatter);
+  to.key("distrusted");
+  to.open_list();
+  for (const auto index : quality.distrusted) to.integer(index);
+  to.close_list();
   to.field("range_hz", std::vector<double>{quality.range_low_hz, quality.range_high_hz});
   to.key("rival");
   if (quality.rival) {

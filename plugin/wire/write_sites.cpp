@@ -88,6 +88,11 @@ void write_quality_columns(Writer& to, const std::vector<const SiteFit*>& rows) 
   column(to, "cycles", rows, [&](const SiteFit& s) { to.number(s.quality.cycles); });
   column(to, "points", rows, [&](const SiteFit& s) { to.integer(s.quality.points); });
   column(to, "scatter", rows, [&](const SiteFit& s) { to.number(s.quality.scatter); });
+  column(to, "distrusted", rows, [&](const SiteFit& s) {
+    to.open_list();
+    for (const auto index : s.quality.distrusted) to.integer(index);
+    to.close_list();
+  });
   to.close_map();
 }
 

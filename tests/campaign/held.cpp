@@ -4,6 +4,7 @@
 #include <algorithm>
 #include <cmath>
 
+#include "model/infer/outliers.hpp"
 #include "model/infer/scan_objective.hpp"
 #include "plugin/service/known.hpp"
 
@@ -43,9 +44,13 @@ struct Question {
   infer::Readout readout;
   infer::Prior prior;
   infer::ObjectiveWorkspace work;
-  std::vector<double> progress;
+  std::vector<double> progress, odds;
 
-  Question(const Case& of, const infer::Prior& known) : scan(service::model_scan(of.scan)), readout(scan.batch.site(0)), prior(known) {
+  Question(const Case& of, const infer::Fit& fit) : scan(service::model_scan(of.scan)), readout(scan.batch.site(0)), prior(fit.prior) {
+    odds.resize(fit.outlier_share > 0 ? of.scan.axis.size() : 0);
+    if (!odds.empty()) infer::outlier_odds(readout, fit.outlier_share, odds);
+    readout.odds = odds;
+    readout.dispersion = fit.dispersion;
     work.reserve(of.scan.axis.size());
     scan.batch.progress = infer::progress_of(scan.batch, progress);
   }
@@ -58,7 +63,7 @@ struct Question {
 
 double held_against(const Case& of, const infer::Fit& fit, std::size_t pulse, double value) {
   if (fit.outcome != infer::FitOutcome::fitted) return std::nan("");
-  Question question(of, fit.prior);
+  Question question(of, fit);
   if (of.misstated) question.prior.dead_time.sigma = std::abs(of.truth.dead_time - question.prior.dead_time.mean);
   infer::Lead lead;
   if (!of.truth.line) lead = {infer::Lead::Kind::pulse_length, of.drive.pulses[pulse].angle_rad, of.drive.pulses[pulse].area_factor};
@@ -78,13 +83,13 @@ double held_against(const Case& of, const infer::Fit& fit, std::size_t pulse, do
       if (std::isfinite(bound.value)) held = std::min(held, bound.value);
     }
   }
-  return 2 * (held - free) / fit.quality.scatter;
+  return 2 * (held - free) * fit.dispersion / fit.quality.scatter;
 }
 
 double rabi_under_truth(const Case& of, const infer::Fit& fit) {
   const auto dynamics = infer::dynamics_named(of.true_dynamics);
   if (!dynamics || fit.outcome != infer::FitOutcome::fitted) return std::nan("");
-  Question question(of, fit.prior);
+  Question question(of, fit);
   const auto start = starts(of, fit, *dynamics).front();  // that of the answer: its mode is kept
   const auto objective = question.objective(*dynamics, {infer::Lead::Kind::bare}, start.contrast() < 0);
   const auto minimum = infer::minimise(objective, objective.pack(start), objective.bounds());

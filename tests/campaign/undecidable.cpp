@@ -40,8 +40,9 @@ double gap_for(double threshold) {
   return root * root;
 }
 
-bool decidable(const Case& of, const Gaps& gaps) {
+bool decidable(const Case& of, const Gaps& gaps, double offset_bound) {
   const auto& accept = of.drive.accept;
+  if (of.truth.line && !inside(of, kSpread * offset_bound)) return false;
   if (std::isnan(gaps.rival) || gaps.rival < gap_for(accept.rival_margin)) return false;
   if (!of.before.empty()) return true;
   return gaps.monotone >= gap_for(accept.min_evidence) && gaps.flat >= gap_for(accept.min_evidence);
