@@ -254,15 +254,15 @@ TEST_CASE("Faults of a drive say where and what") {
         "f:5:21: drives.red.expect.rabi[0]: found \"0 Hz\", expected a frequency above 0\n"
         "f:5:27: drives.red.expect.rabi[1]: found \"1\", expected a frequency with its unit, such as 1 kHz (or Hz, MHz, "
         "GHz)\n");
-  CHECK(faults(drive("dynamics: [undamped, thermal, dephased, undamped]")) ==
-        "f:5:26: drives.red.dynamics[1]: found \"thermal\", which is not available in this version, expected undamped, "
-        "dephasing, decay or leak\n"
-        "f:5:35: drives.red.dynamics[2]: found \"dephased\", expected undamped, dephasing, decay or leak\n"
-        "f:5:45: drives.red.dynamics[3]: found \"undamped\" a second time, expected it once\n");
+  CHECK(faults(drive("dynamics: [undamped, dephased, undamped]")) ==
+        "f:5:26: drives.red.dynamics[1]: found \"dephased\", expected undamped, dephasing, decay, leak, decay_dephasing, "
+        "leak_dephasing, spread, doppler, cloud or thermal\n"
+        "f:5:36: drives.red.dynamics[2]: found \"undamped\" a second time, expected it once\n");
   CHECK(faults(drive("dynamics: []")) ==
         "f:5:15: drives.red.dynamics: found an empty list, expected a list such as [undamped, dephasing]\n");
-  CHECK(faults(drive("motion: {lamb_dicke: 0.08}")) ==
-        "f:5:5: drives.red.motion: found the key \"motion\", which is not available in this version, expected none\n");
+  CHECK(faults(drive("dynamics: [undamped, thermal]")) ==
+        "f:5:15: drives.red.dynamics: found thermal, which needs the drive's motion, expected it beside, such as motion: "
+        "{lamb_dicke: 0.08}\n");
   CHECK(faults(drive("switching: {dead_time: 0, uncertainty: 0x14 ns}")) ==
         "f:5:28: drives.red.switching.dead_time: found \"0\", expected a time with its unit, such as 0 us (or ns, ms, s)\n"
         "f:5:44: drives.red.switching.uncertainty: found \"0x14 ns\", expected a time with its unit, such as 4 us (or ns, "
@@ -483,4 +483,34 @@ TEST_CASE("Mutilated configurations are read or refused, never worse") {
     refused += reading.configuration ? 0 : 1;
   }
   CHECK(refused > 500);  // most changes hit a comment or a value that stays possible
+}
+
+TEST_CASE("Motional modes are read, one or a list of them") {
+  const auto read_one = read(drive("motion: {lamb_dicke: 0.08}"), "");
+  REQUIRE(read_one.configuration.has_value());
+  const auto& one = read_one.configuration->drives.at("red").motion;
+  REQUIRE(one.size() == 1);
+  CHECK(one[0].lamb_dicke == 0.08);
+  CHECK(one[0].sideband == 0);
+  CHECK(one[0].phonon_ratio == 1.0);
+  const auto read_two =
+      read(drive("motion: [{lamb_dicke: 0.08, sideband: -1}, {lamb_dicke: 0.05, phonon_ratio: 2.5}]\n    dynamics: [thermal]"), "");
+  REQUIRE(read_two.configuration.has_value());
+  const auto& red = read_two.configuration->drives.at("red");
+  REQUIRE(red.motion.size() == 2);
+  CHECK(red.motion[0].sideband == -1);
+  CHECK(red.motion[1].lamb_dicke == 0.05);
+  CHECK(red.motion[1].phonon_ratio == 2.5);
+  CHECK(red.dynamics->has(infer::Dynamics::thermal));
+}
+
+TEST_CASE("Motional modes that cannot be are faults") {
+  CHECK(faults(drive("motion: {sideband: 1}")) ==
+        "f:5:5: drives.red.motion.lamb_dicke: found nothing, expected the Lamb-Dicke parameter of the mode, such as 0.08\n");
+  CHECK(faults(drive("motion: {lamb_dicke: 0, sideband: 2, phonon_ratio: -1}")) ==
+        "f:5:26: drives.red.motion.lamb_dicke: found \"0\", expected a number above 0 and at most 2\n"
+        "f:5:39: drives.red.motion.sideband: found \"2\", expected a whole number from -1 to 1\n"
+        "f:5:56: drives.red.motion.phonon_ratio: found \"-1\", expected a number above 0\n");
+  CHECK(faults(drive("motion: 0.08")) == "f:5:13: drives.red.motion: found \"0.08\", expected a mode such as {lamb_dicke: 0.08}, or a list of them\n");
+  CHECK(faults(drive("motion: []")) == "f:5:13: drives.red.motion: found an empty list, expected a mode such as {lamb_dicke: 0.08}, or a list of them\n");
 }
