@@ -226,6 +226,10 @@ void cautions(const State& state, const infer::Fit& fit, const infer::Prior& pri
     caution(reasons, "outliers",
             points_set_aside(fit) + " are far from what the others say, and were set aside. An ion or atom lost, a laser that dropped out, or a "
             "readout that failed would do this. If it happens often, find out which before trusting the points that are left.");
+  if (std::isfinite(fit.drift.value))
+    caution(reasons, "drifting",
+            "The Rabi frequency changed by " + percent(fit.drift.value) + " (sigma " + percent(fit.drift.sigma) +
+                ") along the scan; lengths hold for its middle. Look for a beam that warms up or moves, and scan in less time or in random order.");
   if (quality.dead_time_released)
     caution(reasons, "dead_time",
             "The dead time found, " + with_uncertainty(fit.dead_time_s.value, fit.dead_time_s.sigma, "s") + ", is far from what is configured, " +
