@@ -121,6 +121,20 @@ std::string dynamics(const wire::Fitted& scan) {
   return "\n" + wrapped(text, "  dynamics: ");
 }
 
+/// Estimates that lean on one another, and those at a bound.
+std::string told_apart(const wire::Quality& q) {
+  constexpr double kHardly = 0.99;
+  std::string text;
+  if (q.correlation && std::abs(q.correlation->value) > kHardly)
+    text += wrapped(label(q.correlation->between[0]).text + " and " + label(q.correlation->between[1]).text + " are hardly told apart (correlation " +
+                        plain(q.correlation->value, 4) + "): what holds the one holds the other. A longer or wider scan tells them apart.",
+                    "  leaning: ");
+  std::string names;
+  for (const auto& name : q.at_bound) names += (names.empty() ? "" : ", ") + label(name).text;
+  if (!names.empty()) text += wrapped(names, "  at its bound: ");
+  return text;
+}
+
 std::string quality(const wire::Fitted& scan) {
   const auto& q = scan.quality;
   std::string text = "deviance " + plain(q.deviance, 4) + " for " + plain(q.dof, 3) + " degrees of freedom, p = " +
@@ -130,7 +144,7 @@ std::string quality(const wire::Fitted& scan) {
   if (q.rival)
     text += "; the next best frequency is " + engineering(q.rival->rabi_hz, "Hz") + ", worse by " +
             plain(q.rival->deviance_above, 4) + " in deviance";
-  return wrapped(text, "  quality: ");
+  return wrapped(text, "  quality: ") + told_apart(q);
 }
 
 }  // namespace
