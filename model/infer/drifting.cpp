@@ -50,6 +50,7 @@ void look_for_drift(const ScanBatch& scan, const Readout& readout, const FitOpti
   if (!(best(drifting) < best(fit) - 2.0 * fit.quality.scatter)) return;
   drifting.quality.readout_released = fit.quality.readout_released;
   drifting.quality.dead_time_released = fit.quality.dead_time_released;
+  drifting.quality.dead_time_doubted = fit.quality.dead_time_doubted;
   drifting.prior = with;
   fit = std::move(drifting);
 }

@@ -4,6 +4,8 @@
 
 #include <Eigen/LU>
 
+#include "model/infer/conditioning.hpp"
+#include "model/infer/dead_time.hpp"
 #include "model/infer/profile.hpp"
 #include "model/infer/solution.hpp"
 #include "model/infer/statistics.hpp"
@@ -19,6 +21,7 @@ constexpr std::string_view kNotInDynamics = "the chosen dynamics have no such ra
 constexpr std::string_view kAtBound = "the best value is at its bound";
 constexpr std::string_view kNotDetermined = "the scan does not determine it";
 constexpr std::string_view kOpenInterval = "the likelihood stays high out to the bound";
+constexpr std::string_view kNoPulse = "the couplings differ so much that no pulse turns the ensemble by this angle better than others";
 constexpr std::string_view kNotThisScan = "a scan of this kind does not hold it";
 
 struct Scale {
@@ -119,6 +122,9 @@ double mixture_quantile(std::span<const Part> parts, double probability, double 
 /// Value and variance averaged over candidates with their weights (K. P. Burnham, D. R. Anderson, Model Selection and Multimodel
 /// Inference, 2nd ed. (2002), section 4.3), the interval from the mixture of their profile intervals.
 Estimate averaged(std::span<Part> parts, const Scale& scale) {
+  // Where a candidate that is heard says that there is no such thing, what the others say of it is no answer.
+  for (const auto& part : parts)
+    if (!std::isfinite(part.estimate.value)) return part.estimate;
   // A candidate whose rate ran where nothing holds it has no error to average: the others speak.
   const auto sure = [](const Part& part) { return std::isfinite(part.estimate.sigma); };
   if (std::any_of(parts.begin(), parts.end(), sure))
@@ -183,6 +189,10 @@ Estimate over_candidates(const Problem& problem, const ModeSolutions& mode, cons
                                   work.objective);
     const Minimum minimum = in_coordinates(objective, solution);
     const int index = slot(objective.layout());
+    if (!std::isfinite(minimum.x[index])) {
+      parts[count++] = {fit.candidates[i].weight, {kUnknown, kUnknown, kUnknown, kUnknown, kNoPulse}};
+      continue;
+    }
     parts[count++] = {fit.candidates[i].weight, i == 0 ? profiled(objective, minimum, index, scale) : normal(minimum, index, scale)};
   }
   return averaged({parts.data(), count}, scale);
@@ -293,10 +303,14 @@ void fill_readout(const ScanObjective& objective, const Scale& scale, Fit& fit) 
                                  variance(layout.ground, layout.ground) + variance(layout.excited, layout.excited) -
                                      2.0 * variance(layout.ground, layout.excited),
                                  scale);
-  if (layout.dead_time >= 0)
-    fit.dead_time_s = from_covariance(fit.physical.dead_time, variance(layout.dead_time, layout.dead_time), scale);
-  else
+  fit.dead_time_points = {kUnknown, kUnknown};
+  if (layout.dead_time >= 0) {
+    const double about = variance(layout.dead_time, layout.dead_time);
+    fit.dead_time_s = from_covariance(fit.physical.dead_time, about, scale);
+    fit.dead_time_points = without_prior(fit.physical.dead_time, about, objective.prior().dead_time, scale.scatter);
+  } else {
     fit.dead_time_s = {fit.physical.dead_time, kUnknown, kUnknown, kUnknown, "held at its configured value"};
+  }
 }
 
 }  // namespace
@@ -312,6 +326,7 @@ void estimate(const Problem& problem, const ModeSolutions& mode, Fit& fit, FitWo
   fit.negative_contrast = best.negative_contrast;
   fit.x = best.minimum.x;
   fit.covariance = covariance_of(best.minimum) * scale.scatter;
+  fit.quality.conditioning = conditioning(objective, best.minimum);
   fill_damping(problem, objective, scale, fit, work);
   fill_others(objective, scale, fit);
   fill_readout(objective, scale, fit);

@@ -67,6 +67,9 @@ void describe(PulseDecision& decision, const Pulse& pulse, const infer::Fit& fit
 /// What refuses a length that a believed fit gives; empty code where nothing does.
 Reason length_gate(const Pulse& pulse, const infer::Fit& fit, const infer::Estimate& exact, bool first, double longest_s, const Accept& accept) {
   const double rate = fit.generalised.value * pulse.area_factor;
+  if (!std::isfinite(exact.value))
+    return {"uncertain",
+            "`" + pulse.name + "` has no length: " + std::string(exact.why) + ". Cool the atoms, or narrow what makes their couplings differ.", true};
   if (!std::isfinite(exact.sigma) || !std::isfinite(exact.low) || !std::isfinite(exact.high))
     return {"uncertain", "The scan does not bound the length of `" + pulse.name + "`. Scan longer pulses with more shots.", true};
   if (rate * exact.sigma > accept.max_angle_error_rad)
@@ -126,8 +129,8 @@ FitEvent event_of(const State& state, const infer::Fit& fit, const Context& cont
   event.value = std::log(fit.rabi_mean.value);
   event.sigma = fit.rabi_mean.sigma / fit.rabi_mean.value;
   event.noise_floor = kRabiNoise;
-  event.dead_time_s = fit.dead_time_s.value;
-  event.dead_time_sigma_s = fit.dead_time_s.sigma;
+  event.dead_time_s = fit.dead_time_points.mean;
+  event.dead_time_sigma_s = fit.dead_time_points.sigma;
   return event;
 }
 
