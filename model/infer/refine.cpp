@@ -130,6 +130,8 @@ void refine_others(const Problem& problem, ModeSolutions& mode, FitWorkspace& wo
     // Of a line a spread of the coupling changes no more than its side lobes, and two dampings no more than one.
     if (line && candidate != Dynamics::doppler && !only_candidate(problem.prior, candidate)) continue;
     if (candidate == Dynamics::thermal && problem.prior.motion.empty()) continue;
+    const auto there = [candidate](const Solution& s) { return s.dynamics == candidate; };
+    if (std::any_of(mode.solutions.begin(), mode.solutions.end(), there)) continue;  // it was the first, for want of a simple one
     add_candidate(problem, mode, candidate, from, work);
   }
   std::stable_sort(mode.solutions.begin(), mode.solutions.end(), by_aicc);
