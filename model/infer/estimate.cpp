@@ -4,6 +4,7 @@
 
 #include <Eigen/LU>
 
+#include "model/infer/amplitude_response.hpp"
 #include "model/infer/profile.hpp"
 #include "model/infer/solution.hpp"
 #include "model/infer/statistics.hpp"
@@ -19,6 +20,7 @@ constexpr std::string_view kNotInDynamics = "the chosen dynamics have no such ra
 constexpr std::string_view kAtBound = "the best value is at its bound";
 constexpr std::string_view kNotDetermined = "the scan does not determine it";
 constexpr std::string_view kOpenInterval = "the likelihood stays high out to the bound";
+constexpr std::string_view kOutOfReach = "the drive saturates below it";
 constexpr std::string_view kNotThisScan = "a scan of this kind does not hold it";
 
 struct Scale {
@@ -159,7 +161,7 @@ void weigh(const ModeSolutions& mode, double scatter, Fit& fit) {
     // QAICc: the likelihood part is divided by the scatter (Burnham & Anderson 2002, section 2.5).
     const double difference = (solution.aicc - mode.best().aicc) / scatter;
     auto& score = fit.candidates[static_cast<std::size_t>(fit.candidate_count++)];
-    score = {solution.dynamics, solution.aicc, std::exp(-0.5 * difference)};
+    score = {solution.dynamics, solution.aicc, std::exp(-0.5 * difference), solution.compressed};
     total += score.weight;
   }
   for (int i = 0; i < fit.candidate_count; ++i) fit.candidates[static_cast<std::size_t>(i)].weight /= total;
@@ -175,15 +177,17 @@ Estimate normal(const Minimum& minimum, int index, const Scale& scale) {
 template <class Slot>
 Estimate over_candidates(const Problem& problem, const ModeSolutions& mode, const Fit& fit, Lead lead, const Scale& scale, Slot slot,
                          FitWorkspace& work) {
-  std::array<Part, 4> parts;
+  std::array<Part, 8> parts;
   std::size_t count = 0;
   for (std::size_t i = 0; i < mode.solutions.size(); ++i) {
     const auto& solution = mode.solutions[i];
     if (i > 0 && fit.candidates[i].weight < kWeightHeard) continue;
-    const ScanObjective objective(problem.scan, problem.readout, problem.prior, solution.dynamics, lead, solution.negative_contrast,
+    const ScanObjective objective(problem.scan, problem.readout, problem.prior, solution.candidate(), lead, solution.negative_contrast,
                                   work.objective);
     const Minimum minimum = in_coordinates(objective, solution);
     const int index = slot(objective.layout());
+    // A drive that saturates below what the pulse needs.
+    if (!std::isfinite(minimum.x[index])) return {kUnknown, kUnknown, kUnknown, kUnknown, kOutOfReach};
     parts[count++] = {fit.candidates[i].weight, i == 0 ? profiled(objective, minimum, index, scale) : normal(minimum, index, scale)};
   }
   return averaged({parts.data(), count}, scale);
@@ -255,14 +259,42 @@ void fill_readout(const ScanObjective& objective, const Scale& scale, Fit& fit) 
     fit.dead_time_s = {fit.physical.dead_time, kUnknown, kUnknown, kUnknown, "held at its configured value"};
 }
 
+/// The part of the coupling lost at the largest amplitude, where the chosen candidate loses any.
+Estimate lost(const ScanObjective& objective, const Minimum& minimum, double largest, const Scale& scale) {
+  const int slot = objective.layout().compression;
+  if (slot < 0) return {kUnknown, kUnknown, kUnknown, kUnknown, "a straight line describes the drive as well"};
+  const Estimate q = profiled(objective, minimum, slot, scale);
+  const auto part = [largest](double compression) { return 1.0 - compressed(largest, compression) / largest; };
+  Estimate e{part(q.value), kUnknown, part(q.low), part(q.high), q.why};
+  e.sigma = q.sigma * std::abs(compressed_by_compression(largest, q.value)) / largest;
+  return e;
+}
+
+void fill_amplitudes(const Problem& problem, const ModeSolutions& mode, const ScanObjective& objective, const Scale& scale, Fit& fit,
+                     FitWorkspace& work) {
+  const auto lead_slot = [](const Layout& layout) { return layout.lead; };
+  const double q = fit.physical.compression;
+  const double seen = compressed(fit.longest, q) - compressed(fit.lowest, q);
+  fit.rabi = {kUnknown, kUnknown, kUnknown, kUnknown, kNotThisScan};
+  fit.quality.cycles = fit.physical.generalised * fit.generalised.low / fit.generalised.value * seen / constants::kTwoPi;
+  fit.compression = lost(objective, mode.best().minimum, fit.longest, scale);
+  fit.rabi_per_amplitude = over_candidates(problem, mode, fit, {Lead::Kind::per_amplitude}, scale, lead_slot, work);
+  for (const auto& pulse : problem.options.pulses) {
+    const Lead lead{Lead::Kind::pulse_amplitude, pulse.angle_rad, pulse.area_factor, pulse.length_s};
+    const bool asked = pulse.length_s > fit.physical.dead_time;
+    fit.pulse_amplitude.push_back(asked ? over_candidates(problem, mode, fit, lead, scale, lead_slot, work) : Estimate{});
+  }
+}
+
 }  // namespace
 
 void estimate(const Problem& problem, const ModeSolutions& mode, Fit& fit, FitWorkspace& work) {
   const Scale scale(fit.quality.scatter, problem.options.level);
   weigh(mode, scale.scatter, fit);
   const auto& best = mode.best();
-  const ScanObjective objective(problem.scan, problem.readout, problem.prior, best.dynamics, {}, best.negative_contrast, work.objective);
+  const ScanObjective objective(problem.scan, problem.readout, problem.prior, best.candidate(), {}, best.negative_contrast, work.objective);
   fit.chosen = best.dynamics;
+  fit.compressed = best.compressed;
   fit.physical = best.physical;
   fit.rates = objective.rates(best.physical);
   fit.negative_contrast = best.negative_contrast;
@@ -281,6 +313,7 @@ void estimate(const Problem& problem, const ModeSolutions& mode, Fit& fit, FitWo
     return;
   }
   fit.line_offset.why = kNotThisScan;
+  if (problem.scan.kind == Axis::amplitude) return fill_amplitudes(problem, mode, objective, scale, fit, work);
   if (objective.layout().detuning_square >= 0)
     fit.rabi = over_candidates(problem, mode, fit, {Lead::Kind::bare}, scale, lead_slot, work);
   for (const auto& pulse : problem.options.pulses)

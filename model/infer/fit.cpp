@@ -15,10 +15,12 @@ constexpr std::size_t kMostModes = 16;
 constexpr double kNegligibleDetuning = 1e-5;
 
 /// The prior without a detuning too small to be felt at the frequencies found.
-Prior felt(const Prior& prior, std::span<const Mode> starts) {
+Prior felt(const ScanBatch& scan, const Prior& prior, std::span<const Mode> starts) {
   Prior reduced = prior;
   if (!prior.detuning) return reduced;
-  const double most = std::abs(prior.detuning->mean) + 3.0 * prior.detuning->sigma;
+  // A scan of amplitudes: what Delta turns in its pulse, against the rotations of its largest amplitudes.
+  const double scale = scan.kind == Axis::amplitude ? scan.pulse_length_s / *std::max_element(scan.axis.begin(), scan.axis.end()) : 1.0;
+  const double most = scale * (std::abs(prior.detuning->mean) + 3.0 * prior.detuning->sigma);
   double slowest = std::numeric_limits<double>::infinity();
   for (const auto& start : starts) slowest = std::min(slowest, start.start.generalised);
   if (0.5 * most * most < kNegligibleDetuning * slowest * slowest) reduced.detuning.reset();
@@ -40,13 +42,14 @@ constexpr double kEvidence = 30.0;
 /// What the scan shows under one prior; false where nothing could be fitted.
 bool fit_under(const ScanBatch& scan, const Readout& readout, const Prior& prior, const FitOptions& options, Fit& fit, FitWorkspace& work) {
   std::array<Mode, kMostModes> starts;
-  const auto find = scan.kind == Axis::duration ? duration_starts : line_starts;
+  const auto find = scan.kind == Axis::duration ? duration_starts : scan.kind == Axis::detuning ? line_starts : amplitude_starts;
   const std::size_t count = find(scan, readout, prior, fit.sampling, starts, work.search);
-  const Prior known = felt(prior, {starts.data(), count});
+  const Prior known = felt(scan, prior, {starts.data(), count});
   const int points = fit.quality.points;
   const Problem problem{scan, readout, known, options, fit.sampling, points};
   const auto modes = refine_modes(problem, {starts.data(), count}, work);
   fit.pulse_length_s.clear();
+  fit.pulse_amplitude.clear();
   fit.quality = FitQuality{};
   fit.quality.points = points;
   fit.outcome = FitOutcome::not_converged;
@@ -91,7 +94,7 @@ bool dead_time_contradicted(const ScanBatch& scan, const Prior& prior, const Fit
 /// Whether a line scan is badly described with the Rabi frequency that history knows: it may have been taken at another power that
 /// nobody stated.
 bool history_contradicted(const ScanBatch& scan, const Prior& prior, const Fit& fit) {
-  if (scan.kind == Axis::duration || !prior.log_rabi) return false;
+  if (scan.kind != Axis::detuning || !prior.log_rabi) return false;
   if (fit.outcome != FitOutcome::fitted || !(fit.quality.over_flat >= kEvidence) || fit.quality.p_value < 0.01) return true;
   return std::abs(std::log(fit.physical.generalised) - prior.log_rabi->mean) > kContradicted * std::max(prior.log_rabi->sigma, 1e-6);
 }
@@ -137,6 +140,7 @@ Prior reconciled(const ScanBatch& scan, const Readout& readout, const Prior& pri
 void fit_one(const ScanBatch& scan, std::size_t site, const Prior& prior, const FitOptions& options, Fit& fit, FitWorkspace& work) {
   fit = Fit{};
   fit.axis = scan.kind;
+  fit.scan_pulse_s = scan.pulse_length_s;
   fit.sampling = sampling_of(scan.kind, scan.axis);
   if (!scan.axis.empty()) {
     const auto [low, high] = std::minmax_element(scan.axis.begin(), scan.axis.end());
@@ -176,8 +180,9 @@ bool overlay(const ScanBatch& scan, const Fit& fit, std::span<const double> axis
   work.reserve(axis.size());
   // Whether Delta was fitted follows from the number of parameters.
   Prior known = fit.prior;
-  if (ScanObjective(drawn, nothing, known, fit.chosen, {}, fit.negative_contrast, work).layout().count != fit.x.size()) known.detuning.reset();
-  const ScanObjective curve(drawn, nothing, known, fit.chosen, {}, fit.negative_contrast, work);
+  const Candidate chosen{fit.chosen, fit.compressed};
+  if (ScanObjective(drawn, nothing, known, chosen, {}, fit.negative_contrast, work).layout().count != fit.x.size()) known.detuning.reset();
+  const ScanObjective curve(drawn, nothing, known, chosen, {}, fit.negative_contrast, work);
   return curve.layout().count == fit.x.size() && curve.draw(fit.x, fit.covariance, z, signal, low, high);
 }
 

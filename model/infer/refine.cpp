@@ -2,6 +2,7 @@
 #include <algorithm>
 #include <cmath>
 
+#include "model/infer/amplitude_response.hpp"
 #include "model/infer/solution.hpp"
 #include "model/quantity/constants.hpp"
 
@@ -43,14 +44,15 @@ double length_scale(const Problem& problem) {
 /// a start of its own (fit_test, "every phase and frequency": a flop of 0.9 cycles ran to twice the sampling limit).
 bool strayed(const Problem& problem, const Physical& start, const Physical& end) {
   if (problem.scan.kind == Axis::detuning) return false;
-  return std::abs(end.generalised - start.generalised) > kTwoPi * 1.5 / problem.sampling.span;
+  return std::abs(apparent(problem, end) - apparent(problem, start)) > kTwoPi * 1.5 / problem.sampling.span;
 }
 
-std::optional<Solution> refine(const Problem& problem, Dynamics candidate, const Physical& start, FitWorkspace& work) {
+std::optional<Solution> refine(const Problem& problem, Candidate candidate, const Physical& start, FitWorkspace& work) {
   const bool negative = start.contrast() < 0.0;
   const ScanObjective objective(problem.scan, problem.readout, problem.prior, candidate, {}, negative, work.objective);
   Solution solution;
-  solution.dynamics = candidate;
+  solution.dynamics = candidate.dynamics;
+  solution.compressed = candidate.compressed;
   solution.negative_contrast = negative;
   solution.minimum = minimise(objective, objective.pack(start), objective.bounds());
   const auto& minimum = solution.minimum;
@@ -77,6 +79,18 @@ void add_mode(const Problem& problem, std::vector<ModeSolutions>& modes, Solutio
   modes.push_back({{std::move(solution)}});
 }
 
+// Part of the coupling lost at the largest amplitude that a fit without saturation goes on from.
+constexpr double kFirstLost = 0.02;
+
+/// The same rotation at the largest amplitude with a compression of 0, or with one above 0.
+Physical with_compression(const Problem& problem, Physical physical, bool compressed_) {
+  if (problem.scan.kind != Axis::amplitude || compressed_ == (physical.compression > 0.0)) return physical;
+  const double seen = apparent(problem, physical), largest = *std::max_element(problem.scan.axis.begin(), problem.scan.axis.end());
+  physical.compression = compressed_ ? 2.0 * kFirstLost / (largest * largest) : 0.0;
+  physical.generalised = seen * largest / compressed(largest, physical.compression);
+  return physical;
+}
+
 void refine_candidates(const Problem& problem, ModeSolutions& mode, FitWorkspace& work) {
   const Solution first = mode.best();
   mode.solutions.clear();
@@ -84,16 +98,19 @@ void refine_candidates(const Problem& problem, ModeSolutions& mode, FitWorkspace
   const double envelope = std::max(least, envelope_of(first.dynamics, first.physical.damping));
   for (const Dynamics candidate : {Dynamics::undamped, Dynamics::dephasing, Dynamics::decay, Dynamics::leak}) {
     if (!problem.prior.candidates.has(candidate)) continue;
-    std::optional<Solution> solution;
-    if (candidate == first.dynamics) {
-      solution = first;
-    } else {
-      Physical start = first.physical;
-      start.damping = damping_for(candidate, envelope);
-      solution = refine(problem, candidate, start, work);
+    for (const bool compressed : {false, true}) {
+      if (compressed && problem.scan.kind != Axis::amplitude) continue;
+      std::optional<Solution> solution;
+      if (candidate == first.dynamics && compressed == first.compressed) {
+        solution = first;
+      } else {
+        Physical start = with_compression(problem, first.physical, compressed);
+        if (candidate != first.dynamics) start.damping = damping_for(candidate, envelope);
+        solution = refine(problem, {candidate, compressed}, start, work);
+      }
+      // A start that slid to another frequency is not this mode's.
+      if (solution && same_mode(problem, first, *solution)) mode.solutions.push_back(std::move(*solution));
     }
-    // A start that slid to another frequency is not this mode's.
-    if (solution && same_mode(problem, first, *solution)) mode.solutions.push_back(std::move(*solution));
   }
   if (mode.solutions.empty()) mode.solutions.push_back(first);
   std::stable_sort(mode.solutions.begin(), mode.solutions.end(), [](const Solution& a, const Solution& b) { return a.aicc < b.aicc; });
@@ -110,6 +127,12 @@ Dynamics first_candidate(const Prior& prior, bool damped) {
 
 }  // namespace
 
+double apparent(const Problem& problem, const Physical& physical) {
+  if (problem.scan.kind != Axis::amplitude) return physical.generalised;
+  const double largest = *std::max_element(problem.scan.axis.begin(), problem.scan.axis.end());
+  return physical.generalised * compressed(largest, physical.compression) / largest;
+}
+
 int measured_points(const Readout& readout) {
   int measured = 0;
   for (std::size_t i = 0; i < readout.weight.size(); ++i)
@@ -123,8 +146,9 @@ bool same_mode(const Problem& problem, const Solution& a, const Solution& b) {
     return std::abs(a.physical.line_offset - b.physical.line_offset) < kTwoPi * 0.2 / problem.scan.pulse_length_s;
   if (a.negative_contrast != b.negative_contrast) return false;
   const double limit = problem.sampling.limit;
-  if ((a.physical.generalised > limit) != (b.physical.generalised > limit)) return false;  // mirror images near the limit
-  return std::abs(a.physical.generalised - b.physical.generalised) < kTwoPi * 0.35 / problem.sampling.span;
+  const double of_a = apparent(problem, a.physical), of_b = apparent(problem, b.physical);
+  if ((of_a > limit) != (of_b > limit)) return false;  // mirror images near the limit
+  return std::abs(of_a - of_b) < kTwoPi * 0.35 / problem.sampling.span;
 }
 
 std::vector<ModeSolutions> refine_modes(const Problem& problem, std::span<const Mode> starts, FitWorkspace& work) {
@@ -133,7 +157,7 @@ std::vector<ModeSolutions> refine_modes(const Problem& problem, std::span<const 
     Physical from = start.start;
     const Dynamics candidate = first_candidate(problem.prior, start.damped);
     from.damping = start.damped ? damping_for(candidate, from.damping) : damping_for(candidate, 0.1 / length_scale(problem));
-    if (auto solution = refine(problem, candidate, from, work)) add_mode(problem, modes, std::move(*solution));
+    if (auto solution = refine(problem, {candidate, from.compression > 0.0}, from, work)) add_mode(problem, modes, std::move(*solution));
   }
   auto by_deviance = [](const ModeSolutions& a, const ModeSolutions& b) { return a.best().minimum.value < b.best().minimum.value; };
   std::stable_sort(modes.begin(), modes.end(), by_deviance);

@@ -20,6 +20,9 @@ constexpr double kPriorReach = 8.0;
 // A dead time uncertain by less than this part of the pulse does not change a line by more than 1e-5 of the population.
 constexpr double kLineDeadTime = 1e-3;
 
+// Of an amplitude scan's pulse, whose length is fixed, at least a tenth must act.
+constexpr double kMostDead = 0.9;
+
 double held_sigma(const Known& known) { return std::max(known.sigma, 1e-6); }
 
 /// Sum of products in four lanes, which makes it vector instructions without leave to reorder sums.
@@ -66,14 +69,17 @@ void ObjectiveWorkspace::reserve(std::size_t points) {
     if (array->size() < points) array->resize(points);
   for (auto& array : by_rate)
     if (array.size() < points) array.resize(points);
+  if (sets.size() < points) sets.resize(points);
+  if (statuses.size() < points) statuses.resize(points);
   // One column a parameter, and one to spare for products.
   if (jacobian.size() < (kMostFree + 1) * points) jacobian.resize((kMostFree + 1) * points);
   dynamics.reserve(points);
 }
 
-ScanObjective::ScanObjective(const ScanBatch& scan, const Readout& readout, const Prior& prior, Dynamics candidate, Lead lead,
+ScanObjective::ScanObjective(const ScanBatch& scan, const Readout& readout, const Prior& prior, Candidate candidate, Lead lead,
                              bool negative_contrast, ObjectiveWorkspace& workspace)
-    : scan_(scan), readout_(readout), prior_(prior), candidate_(candidate), lead_(lead),
+    : scan_(scan), readout_(readout), prior_(prior), candidate_(candidate.dynamics), compressed_(candidate.compressed),
+      lead_(lead),
       negative_contrast_(negative_contrast), work_(workspace) {
   const bool line = scan.kind == Axis::detuning;
   auto take = [this](int& slot) { slot = layout_.count++; };
@@ -83,7 +89,8 @@ ScanObjective::ScanObjective(const ScanBatch& scan, const Readout& readout, cons
   if (prior.dead_time.sigma > (line ? kLineDeadTime * scan.pulse_length_s : 0.0)) take(layout_.dead_time);
   take(layout_.ground);
   take(layout_.excited);
-  if (candidate != Dynamics::undamped) take(layout_.damping);
+  if (candidate_ != Dynamics::undamped) take(layout_.damping);
+  if (compressed_) take(layout_.compression);
 }
 
 Bounds ScanObjective::bounds() const {
@@ -100,7 +107,10 @@ Bounds ScanObjective::bounds() const {
   if (prior_.detuning)
     limit(layout_.detuning_square, 0.0, square(std::abs(prior_.detuning->mean) + kPriorReach * prior_.detuning->sigma));
   limit(layout_.dead_time, dead.mean - kPriorReach * dead.sigma, dead.mean + kPriorReach * dead.sigma);
+  if (scan_.kind == Axis::amplitude && layout_.dead_time >= 0)
+    bounds.upper[layout_.dead_time] = std::min(bounds.upper[layout_.dead_time], kMostDead * scan_.pulse_length_s);
   limit(layout_.damping, 0.0, infinite);
+  limit(layout_.compression, 0.0, infinite);
   for (const int slot : {layout_.ground, layout_.excited}) {
     if (readout_.kind == Readout::Kind::binomial) limit(slot, kSignalMargin, 1.0 - kSignalMargin);
     if (readout_.kind == Readout::Kind::poisson) limit(slot, 1e-12, infinite);
@@ -117,6 +127,7 @@ Vector ScanObjective::pack(const Physical& physical) const {
   if (lead_.kind == Lead::Kind::bare) lead = physical.rabi();
   if (lead_.kind == Lead::Kind::pulse_length)
     lead = physical.dead_time + lead_.angle_rad / (lead_.area_factor * physical.generalised);
+  if (scan_.kind == Axis::amplitude) lead = amplitude_lead(physical);
   put(layout_.lead, lead);
   put(layout_.line_offset, physical.line_offset);
   put(layout_.detuning_square, physical.detuning_square);
@@ -124,6 +135,7 @@ Vector ScanObjective::pack(const Physical& physical) const {
   put(layout_.ground, physical.signal_ground);
   put(layout_.excited, physical.signal_excited);
   put(layout_.damping, physical.damping);
+  put(layout_.compression, physical.compression);
   return x;
 }
 
@@ -141,6 +153,8 @@ Physical ScanObjective::unpack(const Vector& x) const {
   if (lead_.kind == Lead::Kind::bare) p.generalised = std::sqrt(square(x[layout_.lead]) + p.detuning_square);
   if (lead_.kind == Lead::Kind::pulse_length)
     p.generalised = lead_.angle_rad / (lead_.area_factor * (x[layout_.lead] - p.dead_time));
+  p.compression = get(layout_.compression, 0.0);
+  if (scan_.kind == Axis::amplitude) p.generalised = from_amplitude_lead(x[layout_.lead], p);
   return p;
 }
 
@@ -156,6 +170,7 @@ dynamics::Rates ScanObjective::rates(const Physical& p) const {
     rates.detuning = p.line_offset;
     return rates;
   }
+  if (scan_.kind == Axis::amplitude) return rates_at(p, *std::max_element(scan_.axis.begin(), scan_.axis.end()));
   double square_of_detuning = p.detuning_square;
   if (layout_.detuning_square >= 0) square_of_detuning = std::max(square_of_detuning, square(kLeastDetuning * p.generalised));
   rates.detuning = std::sqrt(square_of_detuning);
@@ -167,7 +182,9 @@ bool ScanObjective::populate(const Physical& p, bool derivatives) const {
   if (!(p.generalised > 0.0) || !std::isfinite(p.generalised)) return false;
   if (scan_.kind == Axis::duration && p.detuning_square > (1.0 - square(kLeastCoupling)) * square(p.generalised)) return false;
   const auto n = scan_.points();
-  const dynamics::Rates rates_now = rates(p);
+  const bool by_amplitude = scan_.kind == Axis::amplitude;
+  if (by_amplitude && !(effective_length(p) > 0.0)) return false;
+  const dynamics::Rates rates_now = by_amplitude ? dynamics::Rates{} : rates(p);
   auto span = [n](std::vector<double>& v, bool wanted) { return std::span<double>(v.data(), wanted ? n : 0); };
   dynamics::Derivatives out;
   out.population = span(work_.population, true);
@@ -179,7 +196,9 @@ bool ScanObjective::populate(const Physical& p, bool derivatives) const {
   out.by_length = span(work_.by_length, derivatives && layout_.dead_time >= 0);
   dynamics::Status status = dynamics::Status::ok;
   const std::span<const dynamics::Rates> one(&rates_now, 1);
-  if (scan_.kind == Axis::duration) {
+  if (by_amplitude) {
+    status = populate_amplitudes(p, out);
+  } else if (scan_.kind == Axis::duration) {
     dynamics::duration_scan(one, prior_.start, scan_.axis, std::span<const double>(&p.dead_time, 1), out, {&status, 1}, work_.dynamics);
   } else {
     const double length = scan_.pulse_length_s - p.dead_time;
@@ -204,6 +223,7 @@ std::span<double> ScanObjective::column(int parameter) const {
 
 /// Derivatives of the signal by the free parameters, from those of the population by rates and length.
 void ScanObjective::fill_columns(const Physical& p) const {
+  if (scan_.kind == Axis::amplitude) return fill_amplitude_columns(p);
   const double contrast = p.contrast();
   const double* const population = work_.population.data();
   // d signal / d parameter = a * d P/d Omega + b * d P/d Delta + c * d P/d length, with one (a, b, c) a parameter.

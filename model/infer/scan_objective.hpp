@@ -15,29 +15,35 @@ namespace halfturn::infer {
 
 /// What a scan's signal depends on. The signal is signal_ground + (signal_excited - signal_ground) * population.
 struct Physical {
-  double generalised = 0.0;      // duration scans: sqrt(Omega^2 + Delta^2), rad/s; detuning scans: Omega, rad/s
-  double detuning_square = 0.0;  // duration scans: Delta^2 (a flop sees no more of Delta), rad^2/s^2
+  /// Duration scans: sqrt(Omega^2 + Delta^2), rad/s; detuning scans: Omega, rad/s; amplitude scans: the rotation on resonance per
+  /// amplitude where that is small, rad, so the coupling per amplitude times the effective length.
+  double generalised = 0.0;
+  double detuning_square = 0.0;  // duration and amplitude scans: Delta^2 (they see no more of Delta), rad^2/s^2
   double line_offset = 0.0;      // detuning scans: where the line lies from the carrier, rad/s
   double dead_time = 0.0;        // s
   double signal_ground = 0.0;
   double signal_excited = 1.0;
   double damping = 0.0;          // the candidate's free rate, 1/s
+  double compression = 0.0;      // amplitude scans: q of amplitude_response.hpp
 
-  double rabi() const;           // bare coupling, rad/s
+  double rabi() const;           // bare coupling, rad/s; not of an amplitude scan
   double contrast() const { return signal_excited - signal_ground; }
 };
 
 /// The coordinate in place of `generalised`: itself, the bare coupling, or the length of a pulse of a given angle; any of
 /// them, with the others, says what the scan depends on. One is chosen so that its profile is an interval of that quantity.
+/// Of amplitude scans: itself, the coupling per amplitude where that is small, or the amplitude of a pulse of a given angle.
 struct Lead {
-  enum class Kind : std::uint8_t { generalised, bare, pulse_length } kind = Kind::generalised;
-  double angle_rad = 0.0;    // pulse_length
-  double area_factor = 1.0;  // pulse_length
+  enum class Kind : std::uint8_t { generalised, bare, pulse_length, per_amplitude, pulse_amplitude } kind = Kind::generalised;
+  double angle_rad = 0.0;    // pulse_length, pulse_amplitude
+  double area_factor = 1.0;  // pulse_length, pulse_amplitude
+  double length_s = 0.0;     // pulse_amplitude: the pulse's commanded length
 };
 
 /// Positions of the free parameters in the solver's vector; -1 where one is held.
 struct Layout {
-  int lead = -1, line_offset = -1, detuning_square = -1, dead_time = -1, ground = -1, excited = -1, damping = -1;
+  int lead = -1, line_offset = -1, detuning_square = -1, dead_time = -1, ground = -1, excited = -1, damping = -1,
+      compression = -1;
   int count = 0;
 };
 
@@ -48,6 +54,8 @@ struct ObjectiveWorkspace {
   std::vector<double> population, signal, score, information;
   std::array<std::vector<double>, dynamics::kRateCount> by_rate;
   std::vector<double> by_length;
+  std::vector<dynamics::Rates> sets;        // amplitude scans: those of each point
+  std::vector<dynamics::Status> statuses;
   std::vector<double> jacobian;  // [parameter][point], the signal's derivatives
   dynamics::Workspace dynamics;
 };
@@ -56,7 +64,7 @@ class ScanObjective final : public Objective {
  public:
   /// `scan`, `readout`, `prior` and `workspace` must outlive the objective. `negative_contrast` says which reference is the
   /// ground state's. `held` gives the values of the parameters that are not free.
-  ScanObjective(const ScanBatch& scan, const Readout& readout, const Prior& prior, Dynamics candidate, Lead lead,
+  ScanObjective(const ScanBatch& scan, const Readout& readout, const Prior& prior, Candidate candidate, Lead lead,
                 bool negative_contrast, ObjectiveWorkspace& workspace);
 
   bool evaluate(const Vector& x, double& value, Vector* gradient, Matrix* information) const override;
@@ -65,7 +73,8 @@ class ScanObjective final : public Objective {
   Bounds bounds() const;
   Vector pack(const Physical& physical) const;
   Physical unpack(const Vector& x) const;
-  dynamics::Rates rates(const Physical& physical) const;
+  dynamics::Rates rates(const Physical& physical) const;  // of an amplitude scan at its largest amplitude
+  dynamics::Rates rates_at(const Physical& physical, double amplitude) const;  // amplitude scans
   const Prior& prior() const { return prior_; }
   const ScanBatch& scan() const { return scan_; }
   Dynamics candidate() const { return candidate_; }
@@ -83,6 +92,11 @@ class ScanObjective final : public Objective {
 
  private:
   bool populate(const Physical& physical, bool derivatives) const;
+  dynamics::Status populate_amplitudes(const Physical& physical, const dynamics::Derivatives& out) const;
+  void fill_amplitude_columns(const Physical& physical) const;
+  double effective_length(const Physical& physical) const { return scan_.pulse_length_s - physical.dead_time; }
+  double amplitude_lead(const Physical& physical) const;
+  double from_amplitude_lead(double lead, const Physical& physical) const;
   std::span<double> column(int parameter) const;
   void fill_columns(const Physical& physical) const;
   void accumulate(const Physical& physical, Vector* gradient, Matrix* information) const;
@@ -93,6 +107,7 @@ class ScanObjective final : public Objective {
   const Readout& readout_;
   const Prior& prior_;
   Dynamics candidate_;
+  bool compressed_;
   Lead lead_;
   bool negative_contrast_;
   Layout layout_;

@@ -22,11 +22,14 @@ struct Problem {
 /// A refined mode under one candidate.
 struct Solution {
   Dynamics dynamics = Dynamics::undamped;
+  bool compressed = false;
   bool negative_contrast = false;
   Physical physical;
   Minimum minimum;
   double aicc = kUnknown;
   int parameters = 0;
+
+  Candidate candidate() const { return {dynamics, compressed}; }
 };
 
 /// All candidates of one mode, the best first.
@@ -34,6 +37,10 @@ struct ModeSolutions {
   std::vector<Solution> solutions;
   const Solution& best() const { return solutions.front(); }
 };
+
+/// The frequency along the axis by which modes are told apart: the generalised one, of a scan of amplitudes the rotation at the
+/// largest amplitude over that amplitude.
+double apparent(const Problem& problem, const Physical& physical);
 
 /// How many points were measured.
 int measured_points(const Readout& readout);

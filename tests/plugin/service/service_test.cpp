@@ -121,12 +121,12 @@ wire::Request history_of(const std::string& id) {
   return history;
 }
 
-wire::Request applied_of(const std::string& id, const std::map<std::string, double>& pulses_s) {
+wire::Request applied_of(const std::string& id, const std::map<std::string, double>& pulses) {
   wire::Request applied;
   applied.kind = wire::Kind::applied;
   applied.id = applied.digest = id;
   applied.drive = "red";
-  applied.pulses_s = pulses_s;
+  applied.pulses = pulses;
   return applied;
 }
 
@@ -252,7 +252,7 @@ TEST_CASE("the state after a restart is the state before it") {
   applied.kind = wire::Kind::applied;
   applied.id = "applied";
   applied.drive = "red";
-  applied.pulses_s = {{"flip", 4.16e-6}};
+  applied.pulses = {{"flip", 4.16e-6}};
   CHECK(std::holds_alternative<wire::Noted>(house.ask(applied)));
   const auto probe = flop("probe", 121e3, random);
   const auto before = house.service->state();
