@@ -16,11 +16,27 @@ using constants::kTwoPi;
 
 // Parts of the coupling lost at the largest amplitude that are tried. Between neighbours a fit of ten cycles finds its way
 // (amplitude_test, "every rotation and compression").
-constexpr std::array<double, 5> kLost = {0.0, 0.07, 0.15, 0.25, 0.4};
+constexpr std::array<double, 13> kLost = {0.01, 0.05, 0.1, 0.15, 0.2, 0.25, 0.3, 0.35, 0.4, 0.45, 0.5, 0.55, 0.6};
+// What history knows is tried with a little loss and with much.
+constexpr std::array<double, 2> kLostOfHistory = {0.25, 0.01};
 
-/// Sums for the two signals, floor and contrast, by weighted least squares.
+/// Weighted sums over the points of 1, y, x = cos(rotation), their products: for y ~ middle + swing x by least squares.
 struct Sums {
-  double w = 0.0, p = 0.0, pp = 0.0, y = 0.0, py = 0.0;
+  double w = 0.0, y = 0.0, x = 0.0, xx = 0.0, xy = 0.0;
+
+  bool solvable() const { return w * xx - x * x > 1e-12 * w * xx; }
+  double swing() const { return (w * xy - x * y) / (w * xx - x * x); }
+  double middle() const { return (y - swing() * x) / w; }
+  /// The weighted sum of squares taken off a flat line; 0 where there is no oscillation to solve for.
+  double gain() const { return solvable() ? swing() * (xy - x * y / w) : 0.0; }
+  void add(double weight, double value, double cosine) {
+    const double weighted = weight * cosine;
+    w += weight;
+    y += weight * value;
+    x += weighted;
+    xx += weighted * cosine;
+    xy += weighted * value;
+  }
 };
 
 struct Peak {
@@ -31,7 +47,8 @@ class AmplitudeSearch {
  public:
   AmplitudeSearch(const ScanBatch& scan, const Prior& prior, SearchWorkspace& work)
       : scan_(scan), prior_(prior), work_(work), largest_(*std::max_element(scan.axis.begin(), scan.axis.end())) {
-    work_.table.resize(scan.points());
+    auto& f = work_.frequencies;
+    for (auto* array : {&work_.table, &f.cosine, &f.sine, &f.turn_cosine, &f.turn_sine}) array->resize(scan.points());
   }
 
   double compression(double lost) const { return (1.0 / ((1.0 - lost) * (1.0 - lost)) - 1.0) / (largest_ * largest_); }
@@ -42,18 +59,15 @@ class AmplitudeSearch {
     for (std::size_t i = 0; i < scan_.points(); ++i) work_.table[i] = compressed(scan_.axis[i], compression);
   }
 
-  /// The weighted sum of squares taken off a flat line; 0 where there is no oscillation to solve for.
-  double gain(double rotation) const {
-    const Sums s = sums(rotation);
-    const double determinant = s.w * s.pp - s.p * s.p;
-    if (!(determinant > 1e-12 * s.w * s.pp)) return 0.0;
-    const double along = s.w * s.py - s.p * s.y;
-    return along * along / (determinant * s.w);
-  }
+  double gain(double rotation) const { return sums(rotation).gain(); }
 
-  void add_peaks(const TrialGrid& grid, std::vector<Peak>& peaks) const {
+  /// Local maxima of the gain. Every point's phasor turns by its own step from trial to trial.
+  void add_peaks(const TrialGrid& grid, std::vector<Peak>& peaks) {
+    auto& f = work_.frequencies;
+    turn(grid.bottom, f.cosine, f.sine);
+    turn(grid.step, f.turn_cosine, f.turn_sine);
     std::vector<double> gains(static_cast<std::size_t>(grid.count));
-    for (int k = 0; k < grid.count; ++k) gains[static_cast<std::size_t>(k)] = gain(grid.at(k));
+    for (double& gain : gains) gain = next_sums().gain();
     for (std::size_t k = 0; k < gains.size(); ++k) {
       const bool above_left = k == 0 || gains[k] > gains[k - 1], above_right = k + 1 == gains.size() || gains[k] >= gains[k + 1];
       if (above_left && above_right && gains[k] > 0.0) peaks.push_back({grid.at(static_cast<int>(k)), compression_, gains[k]});
@@ -63,15 +77,15 @@ class AmplitudeSearch {
   bool start(const Peak& peak, Readout::Kind kind, Physical& start) {
     set_compression(peak.compression);
     const Sums s = sums(peak.rotation);
-    const double determinant = s.w * s.pp - s.p * s.p;
-    if (!(determinant > 1e-12 * s.w * s.pp)) return false;
-    const double contrast = (s.w * s.py - s.p * s.y) / determinant;
+    if (!s.solvable()) return false;
+    // From g the signal is middle - (contrast / 2) cos, from e the sign is the other.
+    const double contrast = prior_.start.prepared == dynamics::Prepared::ground ? -2.0 * s.swing() : 2.0 * s.swing();
     if (contrast == 0.0 || !sign_admitted(prior_, contrast)) return false;
     start = Physical{};
     start.generalised = peak.rotation;
     start.compression = peak.compression;
     start.dead_time = std::min(prior_.dead_time.mean, 0.5 * scan_.pulse_length_s);
-    start.signal_ground = (s.y - contrast * s.p) / s.w;
+    start.signal_ground = s.middle() - 0.5 * contrast;
     start.signal_excited = start.signal_ground + contrast;
     keep_signals_possible(kind, start);
     return true;
@@ -81,18 +95,29 @@ class AmplitudeSearch {
   double apparent(const Peak& peak) const { return peak.rotation * compressed(largest_, peak.compression) / largest_; }
 
  private:
+  void turn(double rotation, std::vector<double>& cosine, std::vector<double>& sine) const {
+    for (std::size_t i = 0; i < scan_.points(); ++i) {
+      cosine[i] = std::cos(rotation * work_.table[i]);
+      sine[i] = std::sin(rotation * work_.table[i]);
+    }
+  }
+
+  /// The sums at the phasors as they stand, which then take their step.
+  Sums next_sums() {
+    Sums s;
+    auto& f = work_.frequencies;
+    for (std::size_t i = 0; i < scan_.points(); ++i) {
+      const double c = f.cosine[i], d = f.sine[i];
+      s.add(work_.weight[i], work_.value[i], c);
+      f.cosine[i] = c * f.turn_cosine[i] - d * f.turn_sine[i];
+      f.sine[i] = d * f.turn_cosine[i] + c * f.turn_sine[i];
+    }
+    return s;
+  }
+
   Sums sums(double rotation) const {
     Sums s;
-    const bool ground = prior_.start.prepared == dynamics::Prepared::ground;
-    for (std::size_t i = 0; i < scan_.points(); ++i) {
-      const double flop = 0.5 - 0.5 * std::cos(rotation * work_.table[i]);
-      const double p = ground ? flop : 1.0 - flop, w = work_.weight[i];
-      s.w += w;
-      s.p += w * p;
-      s.pp += w * p * p;
-      s.y += w * work_.value[i];
-      s.py += w * p * work_.value[i];
-    }
+    for (std::size_t i = 0; i < scan_.points(); ++i) s.add(work_.weight[i], work_.value[i], std::cos(rotation * work_.table[i]));
     return s;
   }
 
@@ -102,16 +127,14 @@ class AmplitudeSearch {
   double largest_ = 0.0, compression_ = 0.0;
 };
 
-/// Highest first; of those of one apparent rotation and compression the highest alone.
+/// Highest first; of those of one apparent rotation the highest alone.
 void keep_distinct(const AmplitudeSearch& search, std::vector<Peak>& peaks, double width) {
   std::sort(peaks.begin(), peaks.end(), [](const Peak& a, const Peak& b) { return a.gain > b.gain; });
   const double least = peaks.empty() ? 0.0 : kept_above(peaks.front().gain);
   std::vector<Peak> kept;
   for (const Peak& peak : peaks) {
-    const bool near = std::any_of(kept.begin(), kept.end(), [&](const Peak& other) {
-      const bool both = (other.compression > 0.0) == (peak.compression > 0.0);
-      return both && std::abs(search.apparent(other) - search.apparent(peak)) < width;
-    });
+    const auto like = [&](const Peak& other) { return std::abs(search.apparent(other) - search.apparent(peak)) < width; };
+    const bool near = std::any_of(kept.begin(), kept.end(), like);
     if (!near && peak.gain >= least) kept.push_back(peak);
   }
   peaks = std::move(kept);
@@ -135,7 +158,7 @@ std::size_t amplitude_starts(const ScanBatch& scan, const Readout& readout, cons
   keep_distinct(search, peaks, 0.7 * kTwoPi / sampling.span);
   if (prior.log_rabi)
     // What history knows is always among the modes, however many others fit as well.
-    for (const double lost : {kLost[2], kLost[0]}) {
+    for (const double lost : kLostOfHistory) {
       search.set_compression(search.compression(lost));
       const double rotation = std::exp(prior.log_rabi->mean);
       peaks.insert(peaks.begin(), {rotation, search.compression(lost), search.gain(rotation)});

@@ -21,15 +21,6 @@ constexpr std::optional<Dynamics> dynamics_named(std::string_view text) {
   return std::nullopt;
 }
 
-/// A candidate for a scan. `compressed` (scans of amplitudes): the coupling saturates, with a free compression
-/// (amplitude_response.hpp), instead of following the amplitude.
-struct Candidate {
-  Dynamics dynamics = Dynamics::undamped;
-  bool compressed = false;
-
-  constexpr Candidate(Dynamics dynamics_, bool compressed_ = false) : dynamics(dynamics_), compressed(compressed_) {}
-};
-
 /// A set of candidates.
 struct DynamicsSet {
   std::uint8_t bits = 0b1111;

@@ -20,7 +20,7 @@ constexpr double kMirrorZone = 0.5;
 
 /// Deviance of the scan's points alone: priors, that of the dead time above all, say nothing of an alias.
 double data_deviance(const Problem& problem, const Solution& solution, FitWorkspace& work) {
-  const ScanObjective objective(problem.scan, problem.readout, problem.prior, solution.candidate(), {}, solution.negative_contrast, work.objective);
+  const ScanObjective objective(problem.scan, problem.readout, problem.prior, solution.dynamics, {}, solution.negative_contrast, work.objective);
   double half = kUnknown;
   return objective.data_part(solution.physical, half, {}) ? 2.0 * half : std::numeric_limits<double>::infinity();
 }

@@ -161,7 +161,7 @@ void weigh(const ModeSolutions& mode, double scatter, Fit& fit) {
     // QAICc: the likelihood part is divided by the scatter (Burnham & Anderson 2002, section 2.5).
     const double difference = (solution.aicc - mode.best().aicc) / scatter;
     auto& score = fit.candidates[static_cast<std::size_t>(fit.candidate_count++)];
-    score = {solution.dynamics, solution.aicc, std::exp(-0.5 * difference), solution.compressed};
+    score = {solution.dynamics, solution.aicc, std::exp(-0.5 * difference)};
     total += score.weight;
   }
   for (int i = 0; i < fit.candidate_count; ++i) fit.candidates[static_cast<std::size_t>(i)].weight /= total;
@@ -177,12 +177,12 @@ Estimate normal(const Minimum& minimum, int index, const Scale& scale) {
 template <class Slot>
 Estimate over_candidates(const Problem& problem, const ModeSolutions& mode, const Fit& fit, Lead lead, const Scale& scale, Slot slot,
                          FitWorkspace& work) {
-  std::array<Part, 8> parts;
+  std::array<Part, 4> parts;
   std::size_t count = 0;
   for (std::size_t i = 0; i < mode.solutions.size(); ++i) {
     const auto& solution = mode.solutions[i];
     if (i > 0 && fit.candidates[i].weight < kWeightHeard) continue;
-    const ScanObjective objective(problem.scan, problem.readout, problem.prior, solution.candidate(), lead, solution.negative_contrast,
+    const ScanObjective objective(problem.scan, problem.readout, problem.prior, solution.dynamics, lead, solution.negative_contrast,
                                   work.objective);
     const Minimum minimum = in_coordinates(objective, solution);
     const int index = slot(objective.layout());
@@ -259,14 +259,15 @@ void fill_readout(const ScanObjective& objective, const Scale& scale, Fit& fit) 
     fit.dead_time_s = {fit.physical.dead_time, kUnknown, kUnknown, kUnknown, "held at its configured value"};
 }
 
-/// The part of the coupling lost at the largest amplitude, where the chosen candidate loses any.
+/// The part of the coupling lost at the largest amplitude; at least 0, which is a straight line.
 Estimate lost(const ScanObjective& objective, const Minimum& minimum, double largest, const Scale& scale) {
-  const int slot = objective.layout().compression;
-  if (slot < 0) return {kUnknown, kUnknown, kUnknown, kUnknown, "a straight line describes the drive as well"};
-  const Estimate q = profiled(objective, minimum, slot, scale);
+  const Estimate q = profiled(objective, minimum, objective.layout().compression, scale);
   const auto part = [largest](double compression) { return 1.0 - compressed(largest, compression) / largest; };
-  Estimate e{part(q.value), kUnknown, part(q.low), part(q.high), q.why};
+  const double low = std::isfinite(q.low) ? q.low : 0.0;
+  Estimate e{part(q.value), kUnknown, part(low), part(q.high), q.why};
+  if (std::isfinite(e.high)) e.why = {};
   e.sigma = q.sigma * std::abs(compressed_by_compression(largest, q.value)) / largest;
+  if (!std::isfinite(e.sigma)) e.why = kAtBound;
   return e;
 }
 
@@ -292,9 +293,8 @@ void estimate(const Problem& problem, const ModeSolutions& mode, Fit& fit, FitWo
   const Scale scale(fit.quality.scatter, problem.options.level);
   weigh(mode, scale.scatter, fit);
   const auto& best = mode.best();
-  const ScanObjective objective(problem.scan, problem.readout, problem.prior, best.candidate(), {}, best.negative_contrast, work.objective);
+  const ScanObjective objective(problem.scan, problem.readout, problem.prior, best.dynamics, {}, best.negative_contrast, work.objective);
   fit.chosen = best.dynamics;
-  fit.compressed = best.compressed;
   fit.physical = best.physical;
   fit.rates = objective.rates(best.physical);
   fit.negative_contrast = best.negative_contrast;

@@ -180,9 +180,8 @@ bool overlay(const ScanBatch& scan, const Fit& fit, std::span<const double> axis
   work.reserve(axis.size());
   // Whether Delta was fitted follows from the number of parameters.
   Prior known = fit.prior;
-  const Candidate chosen{fit.chosen, fit.compressed};
-  if (ScanObjective(drawn, nothing, known, chosen, {}, fit.negative_contrast, work).layout().count != fit.x.size()) known.detuning.reset();
-  const ScanObjective curve(drawn, nothing, known, chosen, {}, fit.negative_contrast, work);
+  if (ScanObjective(drawn, nothing, known, fit.chosen, {}, fit.negative_contrast, work).layout().count != fit.x.size()) known.detuning.reset();
+  const ScanObjective curve(drawn, nothing, known, fit.chosen, {}, fit.negative_contrast, work);
   return curve.layout().count == fit.x.size() && curve.draw(fit.x, fit.covariance, z, signal, low, high);
 }
 

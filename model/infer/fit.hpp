@@ -46,7 +46,6 @@ struct CandidateScore {
   Dynamics dynamics = Dynamics::undamped;
   double aicc = kUnknown;
   double weight = 0.0;  // Akaike weight among the candidates of the chosen mode; they sum to 1
-  bool compressed = false;  // scans of amplitudes
 };
 
 /// The next best mode that `expect` and the sampling allow: another frequency (or line), or the same with the contrast's other sign.
@@ -82,8 +81,7 @@ struct Fit {
   double lowest = 0.0, longest = 0.0;  // the smallest and the largest value on the axis
   double scan_pulse_s = 0.0;           // commanded length of the pulses of a detuning or amplitude scan
   Dynamics chosen = Dynamics::undamped;
-  bool compressed = false;             // the coupling saturates under the chosen candidate; scans of amplitudes
-  std::array<CandidateScore, 8> candidates{};
+  std::array<CandidateScore, 4> candidates{};
   int candidate_count = 0;
 
   Physical physical;            // of the chosen candidate

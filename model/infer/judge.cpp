@@ -93,7 +93,7 @@ double residual_p_value(const Problem& problem, std::span<const double> signal, 
 
 FitQuality judge(const Problem& problem, const Solution& solution, FitWorkspace& work) {
   FitQuality quality;
-  const ScanObjective objective(problem.scan, problem.readout, problem.prior, solution.candidate(), {}, solution.negative_contrast,
+  const ScanObjective objective(problem.scan, problem.readout, problem.prior, solution.dynamics, {}, solution.negative_contrast,
                                 work.objective);
   const auto n = problem.scan.points();
   work.signal.resize(n);

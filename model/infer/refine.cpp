@@ -47,12 +47,11 @@ bool strayed(const Problem& problem, const Physical& start, const Physical& end)
   return std::abs(apparent(problem, end) - apparent(problem, start)) > kTwoPi * 1.5 / problem.sampling.span;
 }
 
-std::optional<Solution> refine(const Problem& problem, Candidate candidate, const Physical& start, FitWorkspace& work) {
+std::optional<Solution> refine(const Problem& problem, Dynamics candidate, const Physical& start, FitWorkspace& work) {
   const bool negative = start.contrast() < 0.0;
   const ScanObjective objective(problem.scan, problem.readout, problem.prior, candidate, {}, negative, work.objective);
   Solution solution;
-  solution.dynamics = candidate.dynamics;
-  solution.compressed = candidate.compressed;
+  solution.dynamics = candidate;
   solution.negative_contrast = negative;
   solution.minimum = minimise(objective, objective.pack(start), objective.bounds());
   const auto& minimum = solution.minimum;
@@ -79,18 +78,6 @@ void add_mode(const Problem& problem, std::vector<ModeSolutions>& modes, Solutio
   modes.push_back({{std::move(solution)}});
 }
 
-// Part of the coupling lost at the largest amplitude that a fit without saturation goes on from.
-constexpr double kFirstLost = 0.02;
-
-/// The same rotation at the largest amplitude with a compression of 0, or with one above 0.
-Physical with_compression(const Problem& problem, Physical physical, bool compressed_) {
-  if (problem.scan.kind != Axis::amplitude || compressed_ == (physical.compression > 0.0)) return physical;
-  const double seen = apparent(problem, physical), largest = *std::max_element(problem.scan.axis.begin(), problem.scan.axis.end());
-  physical.compression = compressed_ ? 2.0 * kFirstLost / (largest * largest) : 0.0;
-  physical.generalised = seen * largest / compressed(largest, physical.compression);
-  return physical;
-}
-
 void refine_candidates(const Problem& problem, ModeSolutions& mode, FitWorkspace& work) {
   const Solution first = mode.best();
   mode.solutions.clear();
@@ -98,19 +85,16 @@ void refine_candidates(const Problem& problem, ModeSolutions& mode, FitWorkspace
   const double envelope = std::max(least, envelope_of(first.dynamics, first.physical.damping));
   for (const Dynamics candidate : {Dynamics::undamped, Dynamics::dephasing, Dynamics::decay, Dynamics::leak}) {
     if (!problem.prior.candidates.has(candidate)) continue;
-    for (const bool compressed : {false, true}) {
-      if (compressed && problem.scan.kind != Axis::amplitude) continue;
-      std::optional<Solution> solution;
-      if (candidate == first.dynamics && compressed == first.compressed) {
-        solution = first;
-      } else {
-        Physical start = with_compression(problem, first.physical, compressed);
-        if (candidate != first.dynamics) start.damping = damping_for(candidate, envelope);
-        solution = refine(problem, {candidate, compressed}, start, work);
-      }
-      // A start that slid to another frequency is not this mode's.
-      if (solution && same_mode(problem, first, *solution)) mode.solutions.push_back(std::move(*solution));
+    std::optional<Solution> solution;
+    if (candidate == first.dynamics) {
+      solution = first;
+    } else {
+      Physical start = first.physical;
+      start.damping = damping_for(candidate, envelope);
+      solution = refine(problem, candidate, start, work);
     }
+    // A start that slid to another frequency is not this mode's.
+    if (solution && same_mode(problem, first, *solution)) mode.solutions.push_back(std::move(*solution));
   }
   if (mode.solutions.empty()) mode.solutions.push_back(first);
   std::stable_sort(mode.solutions.begin(), mode.solutions.end(), [](const Solution& a, const Solution& b) { return a.aicc < b.aicc; });
@@ -157,7 +141,7 @@ std::vector<ModeSolutions> refine_modes(const Problem& problem, std::span<const 
     Physical from = start.start;
     const Dynamics candidate = first_candidate(problem.prior, start.damped);
     from.damping = start.damped ? damping_for(candidate, from.damping) : damping_for(candidate, 0.1 / length_scale(problem));
-    if (auto solution = refine(problem, {candidate, from.compression > 0.0}, from, work)) add_mode(problem, modes, std::move(*solution));
+    if (auto solution = refine(problem, candidate, from, work)) add_mode(problem, modes, std::move(*solution));
   }
   auto by_deviance = [](const ModeSolutions& a, const ModeSolutions& b) { return a.best().minimum.value < b.best().minimum.value; };
   std::stable_sort(modes.begin(), modes.end(), by_deviance);

@@ -76,10 +76,9 @@ void ObjectiveWorkspace::reserve(std::size_t points) {
   dynamics.reserve(points);
 }
 
-ScanObjective::ScanObjective(const ScanBatch& scan, const Readout& readout, const Prior& prior, Candidate candidate, Lead lead,
+ScanObjective::ScanObjective(const ScanBatch& scan, const Readout& readout, const Prior& prior, Dynamics candidate, Lead lead,
                              bool negative_contrast, ObjectiveWorkspace& workspace)
-    : scan_(scan), readout_(readout), prior_(prior), candidate_(candidate.dynamics), compressed_(candidate.compressed),
-      lead_(lead),
+    : scan_(scan), readout_(readout), prior_(prior), candidate_(candidate), lead_(lead),
       negative_contrast_(negative_contrast), work_(workspace) {
   const bool line = scan.kind == Axis::detuning;
   auto take = [this](int& slot) { slot = layout_.count++; };
@@ -89,8 +88,8 @@ ScanObjective::ScanObjective(const ScanBatch& scan, const Readout& readout, cons
   if (prior.dead_time.sigma > (line ? kLineDeadTime * scan.pulse_length_s : 0.0)) take(layout_.dead_time);
   take(layout_.ground);
   take(layout_.excited);
-  if (candidate_ != Dynamics::undamped) take(layout_.damping);
-  if (compressed_) take(layout_.compression);
+  if (candidate != Dynamics::undamped) take(layout_.damping);
+  if (scan.kind == Axis::amplitude) take(layout_.compression);
 }
 
 Bounds ScanObjective::bounds() const {

@@ -64,7 +64,7 @@ class ScanObjective final : public Objective {
  public:
   /// `scan`, `readout`, `prior` and `workspace` must outlive the objective. `negative_contrast` says which reference is the
   /// ground state's. `held` gives the values of the parameters that are not free.
-  ScanObjective(const ScanBatch& scan, const Readout& readout, const Prior& prior, Candidate candidate, Lead lead,
+  ScanObjective(const ScanBatch& scan, const Readout& readout, const Prior& prior, Dynamics candidate, Lead lead,
                 bool negative_contrast, ObjectiveWorkspace& workspace);
 
   bool evaluate(const Vector& x, double& value, Vector* gradient, Matrix* information) const override;
@@ -107,7 +107,6 @@ class ScanObjective final : public Objective {
   const Readout& readout_;
   const Prior& prior_;
   Dynamics candidate_;
-  bool compressed_;
   Lead lead_;
   bool negative_contrast_;
   Layout layout_;

@@ -22,14 +22,11 @@ struct Problem {
 /// A refined mode under one candidate.
 struct Solution {
   Dynamics dynamics = Dynamics::undamped;
-  bool compressed = false;
   bool negative_contrast = false;
   Physical physical;
   Minimum minimum;
   double aicc = kUnknown;
   int parameters = 0;
-
-  Candidate candidate() const { return {dynamics, compressed}; }
 };
 
 /// All candidates of one mode, the best first.

@@ -49,8 +49,8 @@ std::size_t duration_starts(const ScanBatch& scan, const Readout& readout, const
 std::size_t line_starts(const ScanBatch& scan, const Readout& readout, const Prior& prior, const Sampling& sampling,
                         std::span<Mode> modes, SearchWorkspace& workspace);
 
-/// Starting points of a scan of amplitudes: rotations per amplitude from a tenth of a cycle in the span to the sampling limit, with
-/// and without saturation. Those that saturate have a compression above 0.
+/// Starting points of a scan of amplitudes: rotations per amplitude from a tenth of a cycle in the span to the sampling limit, from
+/// hardly any saturation to one that loses over half of the coupling.
 std::size_t amplitude_starts(const ScanBatch& scan, const Readout& readout, const Prior& prior, const Sampling& sampling,
                              std::span<Mode> modes, SearchWorkspace& workspace);
 

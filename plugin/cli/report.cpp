@@ -119,7 +119,7 @@ std::string dynamics(const wire::Fitted& scan) {
   std::string text = scan.dynamics;
   const char* separator = "; weights: ";
   for (const auto& candidate : scan.candidates) {
-    text += separator + candidate.name + (candidate.compressed.value_or(false) ? " saturating " : " ") + plain(candidate.weight, 2);
+    text += separator + candidate.name + " " + plain(candidate.weight, 2);
     separator = ", ";
   }
   return "\n" + wrapped(text, "  dynamics: ");
@@ -130,7 +130,7 @@ std::string quality(const wire::Fitted& scan) {
   std::string text = "deviance " + plain(q.deviance, 4) + " for " + plain(q.dof, 3) + " degrees of freedom, p = " +
                      plain(q.p_value, 2) + "; " + plain(q.cycles, 3) + " cycles in " + std::to_string(q.points) + " points";
   if (q.scatter > 1.0) text += "; the scatter has " + plain(q.scatter, 3) + " times the variance that the shots allow";
-  const bool per_amplitude = !scan.candidates.empty() && scan.candidates.front().compressed.has_value();
+  const bool per_amplitude = scan.overlay && scan.overlay->axis_kind == wire::AxisKind::amplitude;
   if (q.rival)
     text += "; the next best frequency is " + engineering(q.rival->rabi_hz, "Hz") + (per_amplitude ? " per amplitude" : "") + ", worse by " +
             plain(q.rival->deviance_above, 4) + " in deviance";

@@ -198,7 +198,6 @@ wire::Fitted fitted_from(const Answer& answer) {
   for (int i = 0; i < answer.fit.candidate_count; ++i) {
     const auto& score = answer.fit.candidates[static_cast<std::size_t>(i)];
     fitted.candidates.push_back({std::string(infer::name(score.dynamics)), score.aicc, score.weight});
-    if (answer.fit.axis == infer::Axis::amplitude) fitted.candidates.back().compressed = score.compressed;
   }
   fitted.quality = quality(answer.fit);
   fitted.overlay = overlay(answer);

@@ -42,7 +42,6 @@ struct Pulse {
 struct Candidate {
   std::string name;
   double aicc = 0, weight = 0;
-  std::optional<bool> compressed{};  // of a scan of amplitudes: whether the drive saturates under it
 };
 
 struct Rival {

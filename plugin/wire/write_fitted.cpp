@@ -57,7 +57,6 @@ void write_dynamics(Writer& to, const Fitted& fitted) {
     to.field("name", candidate.name);
     to.field("aicc", candidate.aicc);
     to.field("weight", candidate.weight);
-    if (candidate.compressed) to.field("compressed", *candidate.compressed);
     to.close_map();
   }
   to.close_list();

@@ -80,13 +80,12 @@ Fitted many_sites() {
   return f;
 }
 
-/// A scan of amplitudes, of which every candidate says whether the drive saturates under it.
+/// A scan of amplitudes.
 Fitted of_amplitudes() {
   Fitted f = a_fit();
   f.estimates = {{"rabi_hz", {kNone, kNone, kNone, kNone, "the amplitude was stepped; see rabi_per_amplitude_hz"}},
                  {"rabi_per_amplitude_hz", {250681, 240.5, 250200, 251160, ""}},
                  {"compression", {0.125, 0.03125, 0.0625, 0.1875, ""}}};
-  f.candidates = {{"undamped", 210.5, 0.75, true}, {"undamped", 212.75, 0.25, false}};
   f.overlay = Overlay{AxisKind::amplitude, {0, 0.5}, {0.02, 0.5}, {0.01, 0.48}, {0.03, 0.52}};
   return f;
 }
