@@ -341,9 +341,6 @@ TEST_CASE("what cannot be done is said with its code and place") {
   stranger.scans[0].drive = "green";
   CHECK(code(stranger).code == "unknown_drive");
   CHECK(code(stranger).where == "scan.drive");
-  auto amplitude = flop("y", 118e3, random);
-  amplitude.scans[0].axis_kind = wire::AxisKind::amplitude;
-  CHECK(code(amplitude).code == "not_available");
   auto dynamics = flop("z", 118e3, random);
   dynamics.options.dynamics = {"undamped", "wobble"};
   CHECK(code(dynamics).where == "options.dynamics[1]");
