@@ -4,10 +4,11 @@
 #include <limits>
 
 /// How the coupling follows the relative drive amplitude a: Omega = k a / sqrt(1 + q a^2), k the coupling per amplitude where
-/// a is small, q = 1/a_s^2 the compression, at least 0, a_s the amplitude towards which the output saturates. With q = 0 a
-/// straight line through zero. Source: the usual form of gain compression in solid-state amplifiers, C. Rapp, Proc. 2nd
-/// European Conference on Satellite Communications, Liege (1991), p. 179, with the smoothness 1 (citation from memory);
-/// its first term in a^3 is that of any odd response that compresses, an acousto-optic modulator's among them.
+/// a is small, q the compression. With q = 1/a_s^2 above 0 the output saturates towards k a_s; with q = 0 it is a straight line
+/// through zero; below 0 the gain rises. Source: the usual form of gain compression in solid-state amplifiers, C. Rapp, Proc. 2nd
+/// European Conference on Satellite Communications, Liege (1991), p. 179, with the smoothness 1 (citation from memory). Its first
+/// term, in a^3, is that of any odd response: of an acousto-optic modulator, and of amplifiers whose gain rises before it falls,
+/// for which q is let below 0 here. A drive with a threshold of 5 % looks nearly like that as well (recalibrate's amplitude_test).
 namespace halfturn::infer {
 
 /// a / sqrt(1 + q a^2): the amplitude that a linear drive would need.

@@ -16,9 +16,9 @@ using constants::kTwoPi;
 
 // Parts of the coupling lost at the largest amplitude that are tried. Between neighbours a fit of ten cycles finds its way
 // (amplitude_test, "every rotation and compression").
-constexpr std::array<double, 13> kLost = {0.01, 0.05, 0.1, 0.15, 0.2, 0.25, 0.3, 0.35, 0.4, 0.45, 0.5, 0.55, 0.6};
+constexpr std::array<double, 16> kLost = {-0.3, -0.2, -0.1, 0.0, 0.05, 0.1, 0.15, 0.2, 0.25, 0.3, 0.35, 0.4, 0.45, 0.5, 0.55, 0.6};
 // What history knows is tried with a little loss and with much.
-constexpr std::array<double, 2> kLostOfHistory = {0.25, 0.01};
+constexpr std::array<double, 2> kLostOfHistory = {0.25, 0.0};
 
 /// Weighted sums over the points of 1, y, x = cos(rotation), their products: for y ~ middle + swing x by least squares.
 struct Sums {

@@ -259,16 +259,11 @@ void fill_readout(const ScanObjective& objective, const Scale& scale, Fit& fit) 
     fit.dead_time_s = {fit.physical.dead_time, kUnknown, kUnknown, kUnknown, "held at its configured value"};
 }
 
-/// The part of the coupling lost at the largest amplitude; at least 0, which is a straight line.
+/// The part of the coupling lost at the largest amplitude; below 0 where the gain rises.
 Estimate lost(const ScanObjective& objective, const Minimum& minimum, double largest, const Scale& scale) {
   const Estimate q = profiled(objective, minimum, objective.layout().compression, scale);
   const auto part = [largest](double compression) { return 1.0 - compressed(largest, compression) / largest; };
-  const double low = std::isfinite(q.low) ? q.low : 0.0;
-  Estimate e{part(q.value), kUnknown, part(low), part(q.high), q.why};
-  if (std::isfinite(e.high)) e.why = {};
-  e.sigma = q.sigma * std::abs(compressed_by_compression(largest, q.value)) / largest;
-  if (!std::isfinite(e.sigma)) e.why = kAtBound;
-  return e;
+  return {part(q.value), q.sigma * std::abs(compressed_by_compression(largest, q.value)) / largest, part(q.low), part(q.high), q.why};
 }
 
 void fill_amplitudes(const Problem& problem, const ModeSolutions& mode, const ScanObjective& objective, const Scale& scale, Fit& fit,

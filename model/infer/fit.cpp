@@ -39,12 +39,23 @@ constexpr double kClearlyBetter = 10.0;
 // Deviance gained over a flat line that a fit must show for what it says of the readout to count.
 constexpr double kEvidence = 30.0;
 
+/// The candidates that a scan may tell apart. At one pulse length a leak is a smaller contrast and nothing else, to six digits.
+DynamicsSet told_apart(const ScanBatch& scan, const DynamicsSet& asked) {
+  if (scan.kind != Axis::amplitude) return asked;
+  DynamicsSet set = DynamicsSet::none();
+  for (const Dynamics dynamics : {Dynamics::undamped, Dynamics::dephasing, Dynamics::decay})
+    if (asked.has(dynamics)) set.add(dynamics);
+  if (set.bits == 0) set.add(Dynamics::undamped);
+  return set;
+}
+
 /// What the scan shows under one prior; false where nothing could be fitted.
 bool fit_under(const ScanBatch& scan, const Readout& readout, const Prior& prior, const FitOptions& options, Fit& fit, FitWorkspace& work) {
   std::array<Mode, kMostModes> starts;
   const auto find = scan.kind == Axis::duration ? duration_starts : scan.kind == Axis::detuning ? line_starts : amplitude_starts;
   const std::size_t count = find(scan, readout, prior, fit.sampling, starts, work.search);
-  const Prior known = felt(scan, prior, {starts.data(), count});
+  Prior known = felt(scan, prior, {starts.data(), count});
+  known.candidates = told_apart(scan, prior.candidates);
   const int points = fit.quality.points;
   const Problem problem{scan, readout, known, options, fit.sampling, points};
   const auto modes = refine_modes(problem, {starts.data(), count}, work);

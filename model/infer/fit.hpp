@@ -94,7 +94,7 @@ struct Fit {
   Estimate rabi;                // rad/s, bare
   Estimate generalised;         // rad/s, on the carrier as it stands; of an amplitude scan rad per amplitude (Physical)
   Estimate rabi_per_amplitude;  // rad/s per amplitude, bare, where the amplitude is small; amplitude scans
-  Estimate compression;         // part of the coupling lost at the largest amplitude of a scan of amplitudes
+  Estimate compression;         // part of the coupling lost at the largest amplitude of a scan of amplitudes; below 0: gained
   Estimate line_offset;         // rad/s
   Estimate decay_s, dephasing_s, loss_s, envelope_s;
   Estimate contrast, floor, dead_time_s;

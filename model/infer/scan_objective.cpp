@@ -23,6 +23,9 @@ constexpr double kLineDeadTime = 1e-3;
 // Of an amplitude scan's pulse, whose length is fixed, at least a tenth must act.
 constexpr double kMostDead = 0.9;
 
+// At this the gain is doubled at the largest amplitude.
+constexpr double kMostExpanded = 0.75;
+
 double held_sigma(const Known& known) { return std::max(known.sigma, 1e-6); }
 
 /// Sum of products in four lanes, which makes it vector instructions without leave to reorder sums.
@@ -109,7 +112,7 @@ Bounds ScanObjective::bounds() const {
   if (scan_.kind == Axis::amplitude && layout_.dead_time >= 0)
     bounds.upper[layout_.dead_time] = std::min(bounds.upper[layout_.dead_time], kMostDead * scan_.pulse_length_s);
   limit(layout_.damping, 0.0, infinite);
-  limit(layout_.compression, 0.0, infinite);
+  if (layout_.compression >= 0) limit(layout_.compression, -kMostExpanded / square(*std::max_element(scan_.axis.begin(), scan_.axis.end())), infinite);
   for (const int slot : {layout_.ground, layout_.excited}) {
     if (readout_.kind == Readout::Kind::binomial) limit(slot, kSignalMargin, 1.0 - kSignalMargin);
     if (readout_.kind == Readout::Kind::poisson) limit(slot, 1e-12, infinite);

@@ -50,7 +50,7 @@ std::size_t line_starts(const ScanBatch& scan, const Readout& readout, const Pri
                         std::span<Mode> modes, SearchWorkspace& workspace);
 
 /// Starting points of a scan of amplitudes: rotations per amplitude from a tenth of a cycle in the span to the sampling limit, from
-/// hardly any saturation to one that loses over half of the coupling.
+/// a gain that rises by a third to a saturation that loses over half of the coupling.
 std::size_t amplitude_starts(const ScanBatch& scan, const Readout& readout, const Prior& prior, const Sampling& sampling,
                              std::span<Mode> modes, SearchWorkspace& workspace);
 

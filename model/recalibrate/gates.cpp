@@ -22,6 +22,10 @@ constexpr double kSameAxis = 0.01;
 // So many flops in a row at another drive amplitude make it the new one.
 constexpr int kAmplitudeTaken = 3;
 
+// A coupling that gains more than this over proportion, at the largest amplitude of a scan, is of another kind than the response
+// that is fitted: couplings that go as the square of the amplitude end at the bound of 1.0 (recalibrate's amplitude_test).
+constexpr double kMostGained = -0.8;
+
 std::string hertz(double angular) { return engineering(angular / kTwoPi, "Hz"); }
 
 std::string hertz(const infer::Estimate& e) { return with_uncertainty(e.value / kTwoPi, e.sigma / kTwoPi, "Hz"); }
@@ -168,7 +172,12 @@ void fit_gates(const infer::Fit& fit, const Context& context, Reasons& reasons) 
                       " different places: at least 7 at 5 are needed. Scan more points.");
   if (fit.outcome == infer::FitOutcome::not_converged) return nothing_fitted(fit, context, reasons);
   evidence_gates(fit, context, reasons);
-  if (poor(quality, context.accept))
+  if (fit.axis == infer::Axis::amplitude && fit.compression.value < kMostGained)
+    refuse(reasons, "poor_fit",
+           "The coupling rises much faster than the drive amplitude, by " + percent(-fit.compression.value) +
+               " more at the largest one than in proportion. That is how two-photon drives look, whose coupling goes as the square, and "
+               "drives with a threshold: give amplitudes in the unit in which the field goes.");
+  else if (poor(quality, context.accept))
     refuse(reasons, "poor_fit",
            "The model does not describe the scan: the residuals' variance is " + plain(quality.scatter, 3) +
                " times what the readout's own noise allows" +

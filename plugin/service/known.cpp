@@ -80,7 +80,7 @@ void assume_of_amplitudes(const config::Drive* drive, const wire::Scan& scan, st
   const double length = scan.pulse_s.value_or(0.0);
   assumed.push_back("sampling: the Rabi frequency per unit of amplitude lies below the scan's sampling limit, " +
                     engineering(limit / (kTwoPi * length), "Hz"));
-  assumed.push_back("response: the coupling is proportional to the amplitude, or saturates with it; amplitude 0 is no light at all");
+  assumed.push_back("response: the coupling follows the amplitude from 0 on, with a gain that bends smoothly; amplitude 0 is no light at all");
   if (drive == nullptr) return;
   for (const auto& pulse : drive->pulses)
     if (pulse.adjust == recalibrate::Adjust::amplitude && pulse.area_factor != 1.0)
