@@ -272,6 +272,7 @@ void fill_amplitudes(const Problem& problem, const ModeSolutions& mode, const Sc
   const double q = fit.physical.compression;
   const double seen = compressed(fit.longest, q) - compressed(fit.lowest, q);
   fit.rabi = {kUnknown, kUnknown, kUnknown, kUnknown, kNotThisScan};
+  fit.dead_time_s = fit.rabi;  // its prior at best
   fit.quality.cycles = fit.physical.generalised * fit.generalised.low / fit.generalised.value * seen / constants::kTwoPi;
   fit.compression = lost(objective, mode.best().minimum, fit.longest, scale);
   fit.rabi_per_amplitude = over_candidates(problem, mode, fit, {Lead::Kind::per_amplitude}, scale, lead_slot, work);

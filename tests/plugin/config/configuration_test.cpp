@@ -87,6 +87,16 @@ TEST_CASE("a pulse may be adjusted in amplitude, its length being fixed") {
   CHECK(one("angle: pi, length: 4 us, adjust: length").adjust == recalibrate::Adjust::length);
 }
 
+TEST_CASE("The example of pulses adjusted in amplitude is sound") {
+  const auto reading = read(text_of("examples/amplitude.yaml"), "");
+  REQUIRE(reading.configuration);
+  for (const auto& pulse : reading.configuration->drives.at("red").pulses) {
+    CHECK(pulse.adjust == recalibrate::Adjust::amplitude);
+    CHECK(pulse.length_s == Approx(4e-6));
+    CHECK(pulse.step == 0.001);
+  }
+}
+
 TEST_CASE("faults of pulses that are adjusted in amplitude") {
   const std::string flip = "angle: pi, length: 4 us, adjust: amplitude, ";
   CHECK(faults(pulse(flip + "step: 0.001")) ==
