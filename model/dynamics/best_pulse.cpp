@@ -93,7 +93,44 @@ OfParameter follow(const Ensemble& ensemble, double angle, double phase, Ensembl
   return {phase, -at.first_by_parameter / at.second};
 }
 
+double envelope_at(const Members& members, double phase) {
+  double real = 0, imaginary = 0;
+  for (std::size_t i = 0; i < members.size(); ++i) {
+    real += members.weight[i] * std::cos(members.scale[i] * phase);
+    imaginary += members.weight[i] * std::sin(members.scale[i] * phase);
+  }
+  return std::hypot(real, imaginary);
+}
+
 }  // namespace
+
+double fading_phase(const Ensemble& ensemble, EnsembleWorkspace& workspace) {
+  if (!valid(ensemble) || ensemble.kind == Kind::none || ensemble.kind == Kind::doppler) return kNaN;
+  constexpr double kMost = 6283.0, kFaded = 0.36787944117144233;
+  if (ensemble.kind == Kind::spread) {  // exp(-(s phase)^2 / 2)
+    const double phase = std::sqrt(2.0) / ensemble.parameter;
+    return phase < kMost ? phase : std::numeric_limits<double>::infinity();
+  }
+  // Couplings spread by m about x0 nearly as x0 - m y, y as exp(-y): the envelope is (1 + (m phase)^2)^(-1/2), 1/e at m phase = 2.5.
+  Ensemble narrow = ensemble;
+  narrow.parameter = 0;
+  const double m = std::abs(mean_coupling(narrow, workspace).value - mean_coupling(ensemble, workspace).value);
+  const double most = std::min(kMost, 6 / std::max(m, 1e-12));
+  Demand demand;
+  demand.coupling_phase = most;
+  if (choose_members(ensemble, demand, workspace) != Status::ok) return kNaN;
+  const auto faded = [&](double phase) { return envelope_at(workspace.members, phase) < kFaded; };
+  constexpr int kSteps = 60;
+  int step = 1;
+  while (step <= kSteps && !faded(most * step / kSteps)) ++step;
+  if (step > kSteps) return std::numeric_limits<double>::infinity();
+  double low = most * (step - 1) / kSteps, high = most * step / kSteps;
+  for (int i = 0; i < 24; ++i) {
+    const double middle = 0.5 * (low + high);
+    (faded(middle) ? high : low) = middle;
+  }
+  return 0.5 * (low + high);
+}
 
 OfParameter best_pulse_phase(const Ensemble& ensemble, double angle_rad, EnsembleWorkspace& workspace) {
   if (!valid(ensemble) || !(angle_rad >= 0) || !std::isfinite(angle_rad)) return kNone;

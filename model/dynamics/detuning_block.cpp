@@ -63,10 +63,11 @@ HALFTURN_INLINE void add(Sums& sums, const Amplitudes<Complex>& mode, double rat
 }  // namespace
 
 HALFTURN_CLONES void slow_roots(const Problem& problem, DetuningBlock& block) {
+  const int count = block.count;
   const Problem p = problem;  // a copy, which stores into the block cannot change
   const double w2 = p.rabi * p.rabi, g = p.coherence, k = p.leaving, half = 0.5 * p.loss;
   const double c0 = w2 * g * half, c3 = 2 * g + k;
-  for (int i = 0; i < kBlock; ++i) {
+  for (int i = 0; i < count; ++i) {
     const double h0 = g * g + block.detuning[i] * block.detuning[i];
     const double c1 = k * h0 + w2 * (g + half), c2 = h0 + 2 * g * k + w2;
     const auto step = [=](double s) HALFTURN_INLINE_LAMBDA {
@@ -81,11 +82,12 @@ HALFTURN_CLONES void slow_roots(const Problem& problem, DetuningBlock& block) {
 
 /// As coherence_root in roots.cpp: a distance y from s = -g, or from s = -k where the root lies nearer to it.
 HALFTURN_CLONES void second_roots(const Problem& problem, DetuningBlock& block) {
+  const int count = block.count;
   const Problem p = problem;
   const double w2 = p.rabi * p.rabi, g = p.coherence, k = p.leaving, half = 0.5 * p.loss;
   const double end = g - k, middle = 0.5 * end;
   const double middle_ratio = (middle - g) * (middle - end) / (middle - g + half);
-  for (int i = 0; i < kBlock; ++i) {
+  for (int i = 0; i < count; ++i) {
     const double d2 = block.detuning[i] * block.detuning[i];
     const double at_middle = (middle * middle + d2) * middle_ratio + w2 * middle;
     const bool beyond = at_middle * end < 0;
@@ -106,13 +108,14 @@ HALFTURN_CLONES void second_roots(const Problem& problem, DetuningBlock& block) 
 
 /// `weights` are 1/(the error allowed) of a wanted row, else 0.
 HALFTURN_CLONES void sum_modes(const Problem& problem, const double* weights, double t, DetuningBlock& block) {
+  const int count = block.count;
   const Problem p = problem;
   double weight[kRowCount];
   for (int row = 0; row < kRowCount; ++row) weight[row] = weights[row];
   const Numerator of = numerator(p);
   const double w2 = p.rabi * p.rabi, g = p.coherence, k = p.leaving, c0 = 0.5 * w2 * g * p.loss;
   const bool lossless = p.loss == 0;
-  for (int i = 0; i < kBlock; ++i) {
+  for (int i = 0; i < count; ++i) {
     const double d = block.detuning[i], r0 = block.slow[i], r1 = block.second[i];
     const double c1 = k * (g * g + d * d) + w2 * g;
     const double product = (lossless ? c1 : c0) / (lossless ? -r1 : r0 * r1);
@@ -142,9 +145,10 @@ HALFTURN_CLONES void sum_modes(const Problem& problem, const double* weights, do
 }
 
 HALFTURN_CLONES void undamped_block(const Problem& problem, double t, DetuningBlock& block) {
+  const int count = block.count;
   const Problem p = problem;
   const double tilt = 1 - 2 * p.excited, w2 = p.rabi * p.rabi;
-  for (int i = 0; i < kBlock; ++i) {
+  for (int i = 0; i < count; ++i) {
     const double d = block.detuning[i], f2 = w2 + d * d, f = std::sqrt(f2);
     const SineCosine half = sine_cosine(0.5 * f * t);
     const double swing = half.sine * half.sine, sine = half.sine * half.cosine;  // (1 - cos)/2 and sin/2 of f t
@@ -158,13 +162,39 @@ HALFTURN_CLONES void undamped_block(const Problem& problem, double t, DetuningBl
   }
 }
 
+/// First order in each damping about the rotation by f t around (rabi, 0, detuning)/f, by variation of constants, written out here.
+/// With c = detuning/f and s = rabi/f, the state has turned by theta when a damping takes some of it, and that turns on by
+/// f t - theta; the products are integrated over theta.
+HALFTURN_CLONES void undamped_by_damping(const Problem& problem, double t, DetuningBlock& block) {
+  const int count = block.count;
+  const Problem p = problem;
+  const double w0 = p.excited - p.ground, w2 = p.rabi * p.rabi, sign = p.bright ? -1.0 : 1.0;
+  for (int i = 0; i < count; ++i) {
+    const double d = block.detuning[i], f2 = w2 + d * d, f = std::sqrt(f2), phase = f * t;
+    const double s2 = w2 / f2, c2 = d * d / f2;
+    const SineCosine at = sine_cosine(phase);
+    // Integrals of 1 - cos theta, of that by cos(phase - theta), of sin theta by sin(phase - theta), of cos theta by cos(phase - theta).
+    const double straight = phase - at.sine, by_cosine = 0.5 * (at.sine - phase * at.cosine), both = 0.5 * (at.sine + phase * at.cosine);
+    const double of_coherence = w0 * s2 * (c2 * (by_cosine - straight) + by_cosine);
+    // What leaves the excited state: twice its population is even + swing cos theta.
+    const double even = 1 + w0 * c2, swing = w0 * s2;
+    const double left = even * phase + swing * at.sine;
+    const double of_leaving = -(c2 * left + s2 * (even * at.sine + swing * both));
+    const double inverse = 0.5 / f;
+    block.rows[kRateRow + kByDephasing][i] = inverse * of_coherence;
+    block.rows[kRateRow + kByDecay][i] = inverse * (0.5 * of_coherence + of_leaving);
+    block.rows[kRateRow + kByLoss][i] = 0.5 * inverse * (of_coherence + of_leaving - sign * left);
+  }
+}
+
 void damped_block(const Problem& problem, const Wanted& wanted, double t, DetuningBlock& block) {
+  const int count = block.count;
   double weight[kRowCount] = {};
   weight[kValueRow] = 1 / kValueError;
   for (int row = kRateRow; row < kLengthRow; ++row)
     if (wanted[row]) weight[row] = 1 / (kRateError * t);
   if (problem.loss == 0) {
-    for (int i = 0; i < kBlock; ++i) block.slow[i] = block.doubtful[i] = 0;
+    for (int i = 0; i < count; ++i) block.slow[i] = block.doubtful[i] = 0;
   } else {
     slow_roots(problem, block);
   }

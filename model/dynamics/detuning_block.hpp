@@ -11,6 +11,7 @@ inline constexpr int kBlock = 64;  // detunings; 9 kB of arrays, which stay in t
 /// number of steps, and where the pair of roots is real: those points have to be done one by one.
 struct DetuningBlock {
   alignas(64) double detuning[kBlock];
+  int count = kBlock;  // so many are computed
   double slow[kBlock], second[kBlock], second_x[kBlock];
   double rows[kRowCount][kBlock];
   double doubtful[kBlock];
@@ -21,5 +22,8 @@ void damped_block(const Problem& problem, const Wanted& wanted, double t, Detuni
 
 /// The same without any damping; the derivatives by a damping are not computed.
 void undamped_block(const Problem& problem, double t, DetuningBlock& block);
+
+/// Those derivatives, where there is no damping yet.
+void undamped_by_damping(const Problem& problem, double t, DetuningBlock& block);
 
 }  // namespace halfturn::dynamics::detail

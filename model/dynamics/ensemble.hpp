@@ -85,6 +85,11 @@ struct OfParameter {
 /// happens in wide ensembles: for pi on a carrier of eta = 0.2 it is gone at nbar = 50.
 OfParameter best_pulse_phase(const Ensemble& ensemble, double angle_rad, EnsembleWorkspace& workspace);
 
+/// The phase Omega t, rad, at which the magnitude of the mean of exp(i x Omega t), which is the oscillation's envelope on resonance, has
+/// fallen to 1/e for the first time; relative error < 1e-6. Infinite where it does not within a thousand cycles; NaN for none and
+/// doppler, whose envelope on resonance is no such mean, and for an ensemble out of range.
+double fading_phase(const Ensemble& ensemble, EnsembleWorkspace& workspace);
+
 /// The mean of |x|, the ensemble's mean coupling over Omega; 1 for spread and doppler. Atoms start in g. |error| < 1e-11.
 OfParameter mean_coupling(const Ensemble& ensemble, EnsembleWorkspace& workspace);
 

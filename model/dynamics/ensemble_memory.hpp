@@ -1,5 +1,6 @@
 // SPDX-License-Identifier: Apache-2.0
 #pragma once
+#include <array>
 #include <cstddef>
 #include <vector>
 
@@ -41,7 +42,7 @@ struct WeightedCouplings {
 /// motional levels). One workspace serves one thread.
 struct EnsembleWorkspace {
   detail::Members members;
-  detail::LegendreRule legendre;
+  std::array<detail::LegendreRule, 67> legendre;  // of 8, 16, ... 528 points, kept; the first holds the last of another size
   std::vector<detail::Couplings> couplings;  // one a mode
   detail::WeightedCouplings levels, product, mode, merged;
   std::vector<double> scratch;  // of one step

@@ -62,17 +62,18 @@ Status cloud(const Ensemble& ensemble, double phase, EnsembleWorkspace& workspac
   const double inverse = std::min(q.value, 1 / kLeastPower), reach = -std::expm1(-kCloudReach * inverse);
   const std::size_t points = cloud_size(phase, std::max(1.0, q.value * kLeastPower), reach);
   if (points > kMostMembers) return Status::too_many_members;
-  legendre_rule(points, workspace.legendre);
+  LegendreRule& rule = workspace.legendre[points % 8 == 0 && points / 8 < workspace.legendre.size() ? points / 8 : 0];
+  legendre_rule(points, rule);
   Members& members = workspace.members;
   members.resize(points);
   const double span = inverse > 0 ? reach / inverse : kCloudReach;
   double sum = 0;
   for (std::size_t i = 0; i < points; ++i) {
-    const double s = span * workspace.legendre.node[i], z = 1 - inverse * s;
+    const double s = span * rule.node[i], z = 1 - inverse * s;
     const double y = inverse > 0 ? -std::log1p(-inverse * s) / inverse : s;
     members.scale[i] = std::exp(-q.value * y);
     members.by_scale[i] = -y * members.scale[i] * q.by_parameter;
-    members.weight[i] = workspace.legendre.weight[i] * std::exp(-y) / z;
+    members.weight[i] = rule.weight[i] * std::exp(-y) / z;
     sum += members.weight[i];
   }
   for (double& weight : members.weight) weight /= sum;

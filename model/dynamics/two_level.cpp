@@ -17,6 +17,7 @@ namespace {
 using namespace detail;
 
 constexpr double kNaN = std::numeric_limits<double>::quiet_NaN();
+constexpr std::size_t kLanes = 8;  // detunings are computed in multiples of so many, whole vectors
 
 /// The rows of one parameter set, null where not wanted.
 using Rows = std::array<double*, kRowCount>;
@@ -148,24 +149,26 @@ void at_one(const Problem& problem, const Wanted& wanted, double t, double* valu
   }
 }
 
-/// Whether vector code serves: not for derivatives by a damping where there is none, nor for phases beyond its sine.
-bool block_serves(const Problem& problem, const Wanted& wanted, const DetuningBlock& block, double t) {
-  if (problem.undamped && (wanted[kRateRow + kByDecay] || wanted[kRateRow + kByLoss] || wanted[kRateRow + kByDephasing]))
-    return false;
+/// Whether vector code serves: not for phases beyond its sine.
+bool block_serves(const Problem& problem, const DetuningBlock& block, double t) {
   double largest = 0;
-  for (double detuning : block.detuning) largest = std::max(largest, std::abs(detuning));
+  for (int i = 0; i < block.count; ++i) largest = std::max(largest, std::abs(block.detuning[i]));
   return t > 0 && (largest + std::abs(problem.rabi)) * t <= elementary::kLargestPhase;  // false for NaN
 }
 
 void line_one(Problem problem, std::span<const double> axis, double length_s, const Rows& rows) {
   const Wanted wanted = wanted_of(rows);
+  const bool by_damping = wanted[kRateRow + kByDecay] || wanted[kRateRow + kByLoss] || wanted[kRateRow + kByDephasing];
   const double t = length_s < 0 ? 0.0 : length_s, offset = problem.detuning;  // a NaN stays
   DetuningBlock block;
   for (std::size_t begin = 0; begin < axis.size(); begin += kBlock) {
     const std::size_t count = std::min<std::size_t>(kBlock, axis.size() - begin);
-    for (std::size_t i = 0; i < kBlock; ++i) block.detuning[i] = axis[begin + std::min(i, count - 1)] - offset;
-    const bool vector = block_serves(problem, wanted, block, t);
+    const std::size_t whole = (count + kLanes - 1) / kLanes * kLanes;
+    block.count = static_cast<int>(whole);
+    for (std::size_t i = 0; i < whole; ++i) block.detuning[i] = axis[begin + std::min(i, count - 1)] - offset;
+    const bool vector = block_serves(problem, block, t);
     if (vector && problem.undamped) undamped_block(problem, t, block);
+    if (vector && problem.undamped && by_damping) undamped_by_damping(problem, t, block);
     if (vector && !problem.undamped) damped_block(problem, wanted, t, block);
     for (std::size_t i = 0; i < count; ++i) {
       if (vector && block.doubtful[i] == 0) continue;

@@ -85,7 +85,7 @@ void duration_scan(std::span<const Rates> batch, const Start& start, std::span<c
 /// so the detuning at point k is detuning[k] - rates.detuning, and by_rate[kByDetuning] is the derivative by that offset
 /// (minus the derivative by detuning); `pulse_length_s`, one a set, the effective length (s; below 0 it counts as 0).
 /// Shapes, status and accuracy as for duration_scan. Points are computed by vector code, and one by one, some ten times
-/// slower, where modes nearly meet (damping*length below about 1e-4 with derivatives by a damping; overdamped lines' centres).
+/// slower, where modes nearly meet (damping*length below about 1e-4, but not 0, with derivatives by a damping; overdamped lines' centres).
 void detuning_scan(std::span<const Rates> batch, const Start& start, std::span<const double> detuning,
                    std::span<const double> pulse_length_s, const Derivatives& out, std::span<Status> status,
                    Workspace& workspace);

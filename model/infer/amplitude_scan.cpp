@@ -16,15 +16,15 @@ constexpr double kLeastDetuning = 1e-4;
 }  // namespace
 
 double ScanObjective::amplitude_lead(const Physical& p) const {
-  if (lead_.kind == Lead::Kind::generalised) return p.generalised;
+  if (lead_.kind != Lead::Kind::per_amplitude && lead_.kind != Lead::Kind::pulse_amplitude) return p.generalised;
   const double coupling = p.generalised / effective_length(p);
   if (lead_.kind == Lead::Kind::per_amplitude) return coupling;
   return expanded(lead_.angle_rad / (lead_.area_factor * (lead_.length_s - p.dead_time) * coupling), p.compression);
 }
 
 double ScanObjective::from_amplitude_lead(double lead, const Physical& p) const {
-  if (lead_.kind == Lead::Kind::generalised) return lead;
   if (lead_.kind == Lead::Kind::per_amplitude) return lead * effective_length(p);
+  if (lead_.kind != Lead::Kind::pulse_amplitude) return lead;
   return lead_.angle_rad * effective_length(p) / (lead_.area_factor * (lead_.length_s - p.dead_time) * compressed(lead, p.compression));
 }
 

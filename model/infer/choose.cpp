@@ -2,6 +2,7 @@
 #include <algorithm>
 #include <cmath>
 
+#include "model/infer/line_modes.hpp"
 #include "model/infer/solution.hpp"
 #include "model/quantity/constants.hpp"
 
@@ -28,7 +29,7 @@ double data_deviance(const Problem& problem, const Solution& solution, FitWorksp
 /// Whether `expect`, or without it the sampling limit, allows a mode. Lines are always allowed.
 bool allowed(const Problem& problem, const ModeSolutions& mode) {
   if (problem.scan.kind == Axis::detuning) return true;
-  const double rabi = mode.best().physical.generalised;
+  const double rabi = mode.best().apparent;
   const auto& expect = problem.prior.expect;
   return expect ? rabi >= expect->low && rabi <= expect->high : rabi <= problem.sampling.limit;
 }
@@ -50,7 +51,7 @@ std::optional<std::size_t> choice_of_history(const Problem& problem, std::span<c
   if (!problem.prior.log_rabi || problem.scan.kind == Axis::detuning || alike.size() < 2) return std::nullopt;
   const double sigma = std::max(problem.prior.log_rabi->sigma, kHistorySigma);
   auto distance = [&](std::size_t i) {
-    return std::abs(std::log(modes[i].best().physical.generalised) - problem.prior.log_rabi->mean) / sigma;
+    return std::abs(std::log(modes[i].best().apparent) - problem.prior.log_rabi->mean) / sigma;
   };
   auto score = [&](std::size_t i) { return modes[i].best().aicc / scatter + distance(i) * distance(i); };
   const std::size_t best = *std::min_element(alike.begin(), alike.end(), [&](std::size_t i, std::size_t j) { return score(i) < score(j); });
@@ -63,7 +64,7 @@ std::optional<std::size_t> choice_of_history(const Problem& problem, std::span<c
 /// The mirror image of a frequency near half the sampling rate, which merges with it and so is no mode of its own.
 std::optional<RivalMode> mirror_image(const Problem& problem, const Solution& chosen) {
   if (problem.scan.kind == Axis::detuning || !problem.sampling.even) return std::nullopt;
-  const double found = chosen.physical.generalised, mirror = 2.0 * problem.sampling.limit - found;
+  const double found = chosen.apparent, mirror = 2.0 * problem.sampling.limit - found;
   const bool close = std::abs(mirror - found) < 2.0 * kMirrorZone * kTwoPi / problem.sampling.span;
   const auto& expect = problem.prior.expect;
   if (!close || (expect && (mirror < expect->low || mirror > expect->high))) return std::nullopt;
@@ -72,8 +73,10 @@ std::optional<RivalMode> mirror_image(const Problem& problem, const Solution& ch
 
 RivalMode rival_of(const Problem& problem, const Solution& other, const Solution& chosen, double scatter) {
   RivalMode rival;
-  rival.frequency = problem.scan.kind == Axis::detuning ? other.physical.line_offset : other.physical.generalised;
-  rival.deviance_above = std::max(0.0, (other.aicc - chosen.aicc) / scatter);
+  rival.frequency = problem.scan.kind == Axis::detuning ? other.physical.line_offset : other.apparent;
+  rival.deviance_above = (other.aicc - chosen.aicc) / scatter;
+  if (problem.scan.kind == Axis::detuning) rival.deviance_above += held_by_area(problem, other) - held_by_area(problem, chosen);
+  rival.deviance_above = std::max(0.0, rival.deviance_above);
   rival.opposite_contrast = other.negative_contrast != chosen.negative_contrast;
   return rival;
 }
@@ -85,6 +88,7 @@ std::size_t choose_mode(const Problem& problem, std::span<const ModeSolutions> m
   quality.outside_expect = !allowed(problem, modes[chosen]);
   const auto competes = [&](std::size_t i) { return allowed(problem, modes[i]) || quality.outside_expect; };
 
+  const bool line = problem.scan.kind == Axis::detuning;
   const double margin = problem.options.rival_margin * quality.scatter;
   std::vector<std::size_t> alike;
   for (std::size_t i = 0; i < modes.size(); ++i)
@@ -97,6 +101,7 @@ std::size_t choose_mode(const Problem& problem, std::span<const ModeSolutions> m
   quality.rival = mirror_image(problem, modes[chosen].best());
   for (std::size_t i = 0; i < modes.size(); ++i) {
     if (i == chosen || !competes(i)) continue;
+    if (line && one_line(modes[i].best(), modes[chosen].best(), quality.line_width)) continue;
     const RivalMode rival = rival_of(problem, modes[i].best(), modes[chosen].best(), quality.scatter);
     if (!quality.rival || rival.deviance_above < quality.rival->deviance_above) quality.rival = rival;
   }

@@ -177,7 +177,7 @@ Estimate normal(const Minimum& minimum, int index, const Scale& scale) {
 template <class Slot>
 Estimate over_candidates(const Problem& problem, const ModeSolutions& mode, const Fit& fit, Lead lead, const Scale& scale, Slot slot,
                          FitWorkspace& work) {
-  std::array<Part, 4> parts;
+  std::array<Part, kDynamicsCount> parts;
   std::size_t count = 0;
   for (std::size_t i = 0; i < mode.solutions.size(); ++i) {
     const auto& solution = mode.solutions[i];
@@ -222,27 +222,72 @@ Estimate inverse_rate(double rate, double variance, const Scale& scale) {
   return e;
 }
 
-void fill_damping(const Problem& problem, const ScanObjective& objective, const Scale& scale, Fit& fit) {
-  for (auto* e : {&fit.decay_s, &fit.dephasing_s, &fit.loss_s, &fit.envelope_s}) e->why = kNotInDynamics;
-  const int slot = objective.layout().damping;
-  if (slot >= 0) {
-    const double known = fit.chosen == Dynamics::decay ? problem.prior.decay : fit.chosen == Dynamics::leak ? problem.prior.loss : 0.0;
-    const Estimate time = inverse_rate(fit.physical.damping + known, fit.covariance(slot, slot) / scale.scatter, scale);
-    if (fit.chosen == Dynamics::dephasing) fit.dephasing_s = time;
-    if (fit.chosen == Dynamics::decay) fit.decay_s = time;
-    if (fit.chosen == Dynamics::leak) fit.loss_s = time;
+Estimate times(Estimate e, double factor) {
+  for (double* part : {&e.value, &e.sigma, &e.low, &e.high}) *part *= factor;
+  return e;
+}
+
+/// 1/e time of an ensemble's oscillation with its error, where it is of a Gaussian law or another that falls for good.
+void fill_ensemble_envelope(const ScanObjective& objective, const Scale& scale, Fit& fit, FitWorkspace& work) {
+  fit.envelope_s = {};
+  if (fit.chosen == Dynamics::doppler) {
+    fit.envelope_s.why = "a Doppler-broadened oscillation falls as a power of time and has no 1/e time";
+    return;
   }
+  const double rabi = fit.rates.rabi, time = dynamics::fading_phase(objective.ensemble(fit.physical), work.objective.ensemble) / rabi;
+  fit.envelope_s.value = time;
+  if (!std::isfinite(time)) {
+    fit.envelope_s = {kUnknown, kUnknown, kUnknown, kUnknown, "the oscillation does not fall to 1/e within a thousand cycles"};
+    return;
+  }
+  // The time goes nearly as a power of the breadth; a step of a hundredth of it tells which.
+  Physical moved = fit.physical;
+  moved.breadth *= 1.01;
+  const double slope = (dynamics::fading_phase(objective.ensemble(moved), work.objective.ensemble) / rabi - time) / (0.01 * fit.physical.breadth);
+  const int slot = objective.layout().breadth;
+  fit.envelope_s = from_covariance(time, slope * slope * fit.covariance(slot, slot) / scale.scatter, scale);
+}
+
+void fill_damping(const Problem& problem, const ScanObjective& objective, const Scale& scale, Fit& fit, FitWorkspace& work) {
+  for (auto* e : {&fit.decay_s, &fit.dephasing_s, &fit.loss_s, &fit.envelope_s}) e->why = kNotInDynamics;
+  const auto& layout = objective.layout();
+  const auto time_of = [&](int slot, double rate) { return inverse_rate(rate, fit.covariance(slot, slot) / scale.scatter, scale); };
+  if (fit.chosen == Dynamics::dephasing) fit.dephasing_s = time_of(layout.damping, fit.physical.damping);
+  if (fit.chosen == Dynamics::decay || fit.chosen == Dynamics::decay_dephasing)
+    fit.decay_s = time_of(layout.damping, fit.physical.damping + problem.prior.decay);
+  if (has_two_rates(fit.chosen)) fit.dephasing_s = time_of(layout.dephasing, fit.physical.dephasing);
+  if (fit.chosen == Dynamics::leak || fit.chosen == Dynamics::leak_dephasing) fit.loss_s = time_of(layout.damping, fit.physical.damping + problem.prior.loss);
+  if (is_ensemble(fit.chosen)) return fill_ensemble_envelope(objective, scale, fit, work);
   const double envelope = envelope_rate(fit.rates);
   if (!(envelope > 0.0)) return;
-  double slope = 0.0;
-  if (fit.chosen == Dynamics::dephasing || fit.chosen == Dynamics::leak) slope = 0.5;
-  if (fit.chosen == Dynamics::decay) slope = 0.75;
-  const double variance = slot >= 0 ? slope * slope * fit.covariance(slot, slot) / scale.scatter : 0.0;
-  fit.envelope_s = inverse_rate(envelope, variance, scale);
-  if (slot < 0) {
+  Vector slope = Vector::Zero(layout.count);  // d envelope / d parameter, to first order in the rates
+  if (layout.damping >= 0)
+    slope[layout.damping] = fit.chosen == Dynamics::decay || fit.chosen == Dynamics::decay_dephasing ? 0.75 : 0.5;
+  if (layout.dephasing >= 0) slope[layout.dephasing] = 0.5;
+  fit.envelope_s = inverse_rate(envelope, slope.dot(fit.covariance * slope) / scale.scatter, scale);
+  if (layout.damping < 0) {
     fit.envelope_s.low = fit.envelope_s.high = fit.envelope_s.sigma = kUnknown;
     fit.envelope_s.why = "from the known lifetime alone, which is not fitted";
   }
+}
+
+/// The parameter of a chosen ensemble, and a drift.
+void fill_others(const ScanObjective& objective, const Scale& scale, Fit& fit) {
+  const auto& layout = objective.layout();
+  fit.breadth.why = kNotInDynamics;
+  fit.drift.why = "no change of the coupling along the scan was found";
+  if (layout.drift >= 0) fit.drift = from_covariance(fit.physical.drift, fit.covariance(layout.drift, layout.drift) / scale.scatter, scale);
+  if (layout.breadth < 0) return;
+  Estimate e = from_covariance(fit.physical.breadth, fit.covariance(layout.breadth, layout.breadth) / scale.scatter, scale);
+  if (fit.chosen != Dynamics::thermal) {  // the fit's coordinate is the square
+    e.value = std::sqrt(std::max(0.0, e.value));
+    e.sigma = e.value > 0.0 ? 0.5 * e.sigma / e.value : kUnknown;
+    e.low = std::sqrt(std::max(0.0, e.low));
+    e.high = std::sqrt(std::max(0.0, e.high));
+  } else {
+    e.low = std::max(0.0, e.low);
+  }
+  fit.breadth = e;
 }
 
 void fill_readout(const ScanObjective& objective, const Scale& scale, Fit& fit) {
@@ -271,7 +316,7 @@ void fill_amplitudes(const Problem& problem, const ModeSolutions& mode, const Sc
   const auto lead_slot = [](const Layout& layout) { return layout.lead; };
   const double q = fit.physical.compression;
   const double seen = compressed(fit.longest, q) - compressed(fit.lowest, q);
-  fit.rabi = {kUnknown, kUnknown, kUnknown, kUnknown, kNotThisScan};
+  fit.rabi = fit.rabi_mean = {kUnknown, kUnknown, kUnknown, kUnknown, kNotThisScan};
   fit.dead_time_s = fit.rabi;  // its prior at best
   fit.quality.cycles = fit.physical.generalised * fit.generalised.low / fit.generalised.value * seen / constants::kTwoPi;
   fit.compression = lost(objective, mode.best().minimum, fit.longest, scale);
@@ -296,13 +341,20 @@ void estimate(const Problem& problem, const ModeSolutions& mode, Fit& fit, FitWo
   fit.negative_contrast = best.negative_contrast;
   fit.x = best.minimum.x;
   fit.covariance = covariance_of(best.minimum) * scale.scatter;
-  fill_damping(problem, objective, scale, fit);
+  fill_damping(problem, objective, scale, fit, work);
+  fill_others(objective, scale, fit);
   fill_readout(objective, scale, fit);
+  fit.mean_factor = objective.mean_factor(best.physical);
 
   auto lead_slot = [](const Layout& layout) { return layout.lead; };
   auto offset_slot = [](const Layout& layout) { return layout.line_offset; };
-  fit.generalised = over_candidates(problem, mode, fit, {}, scale, lead_slot, work);
-  fit.rabi = fit.generalised;
+  const auto ensemble = [](const Solution& solution) { return is_ensemble(solution.dynamics); };
+  const bool ensembles = std::any_of(mode.solutions.begin(), mode.solutions.end(), ensemble);
+  const bool detuned = problem.scan.kind == Axis::duration && objective.layout().detuning_square >= 0;
+  const auto lead = [&](Lead::Kind kind) { return over_candidates(problem, mode, fit, {kind}, scale, lead_slot, work); };
+  fit.generalised = lead(ensembles ? Lead::Kind::mean : Lead::Kind::generalised);
+  fit.rabi = ensembles || detuned ? lead(Lead::Kind::bare) : fit.generalised;
+  fit.rabi_mean = detuned ? times(fit.rabi, fit.mean_factor) : fit.generalised;
   if (problem.scan.kind == Axis::detuning) {
     fit.line_offset = over_candidates(problem, mode, fit, {}, scale, offset_slot, work);
     fit.generalised = {kUnknown, kUnknown, kUnknown, kUnknown, kNotThisScan};
@@ -310,8 +362,6 @@ void estimate(const Problem& problem, const ModeSolutions& mode, Fit& fit, FitWo
   }
   fit.line_offset.why = kNotThisScan;
   if (problem.scan.kind == Axis::amplitude) return fill_amplitudes(problem, mode, objective, scale, fit, work);
-  if (objective.layout().detuning_square >= 0)
-    fit.rabi = over_candidates(problem, mode, fit, {Lead::Kind::bare}, scale, lead_slot, work);
   for (const auto& pulse : problem.options.pulses)
     fit.pulse_length_s.push_back(
         over_candidates(problem, mode, fit, {Lead::Kind::pulse_length, pulse.angle_rad, pulse.area_factor}, scale, lead_slot, work));

@@ -32,7 +32,9 @@ struct PulseAngle {
 
 struct FitOptions {
   double level = 0.95;           // of the intervals
+  double second_level = 0.0;     // of Fit::second; 0: none
   double rival_margin = 25.0;    // deviance within which another mode is a rival
+  double least_evidence = 30.0;  // deviance to be gained over a flat line, below which no interval is given (shown.hpp)
   std::vector<PulseAngle> pulses;
 };
 
@@ -74,6 +76,12 @@ struct FitQuality {
   std::optional<RivalMode> rival;
 };
 
+/// Estimates of the same solution with intervals at another level, where one is asked for.
+struct SecondIntervals {
+  Estimate line_offset;                  // rad/s
+  std::vector<Estimate> pulse_length_s;  // as FitOptions::pulses; duration scans
+};
+
 struct Fit {
   FitOutcome outcome = FitOutcome::not_converged;
   Axis axis = Axis::duration;
@@ -81,7 +89,7 @@ struct Fit {
   double lowest = 0.0, longest = 0.0;  // the smallest and the largest value on the axis
   double scan_pulse_s = 0.0;           // commanded length of the pulses of a detuning or amplitude scan
   Dynamics chosen = Dynamics::undamped;
-  std::array<CandidateScore, 4> candidates{};
+  std::array<CandidateScore, kDynamicsCount> candidates{};
   int candidate_count = 0;
 
   Physical physical;            // of the chosen candidate
@@ -91,15 +99,20 @@ struct Fit {
   bool negative_contrast = false;
   Prior prior;                  // under which it was fitted: the one given, less what the data contradicted
 
-  Estimate rabi;                // rad/s, bare
-  Estimate generalised;         // rad/s, on the carrier as it stands; of an amplitude scan rad per amplitude (Physical)
+  Estimate rabi;                // rad/s, bare and peak
+  Estimate rabi_mean;           // rad/s, of the ensemble
+  Estimate generalised;         // rad/s, on the carrier as it stands, the mean of the ensemble; of an amplitude scan rad per amplitude (Physical)
   Estimate rabi_per_amplitude;  // rad/s per amplitude, bare, where the amplitude is small; amplitude scans
   Estimate compression;         // part of the coupling lost at the largest amplitude of a scan of amplitudes; below 0: gained
   Estimate line_offset;         // rad/s
   Estimate decay_s, dephasing_s, loss_s, envelope_s;
   Estimate contrast, floor, dead_time_s;
+  Estimate breadth;             // of a chosen ensemble its Ensemble::parameter (model/dynamics/ensemble.hpp): relative, rad/s, or phonons
+  Estimate drift;               // relative change of the coupling along the scan, where one was found
+  double mean_factor = 1.0;     // mean coupling over the peak one
   std::vector<Estimate> pulse_length_s;  // as FitOptions::pulses; duration scans
   std::vector<Estimate> pulse_amplitude;  // as FitOptions::pulses; amplitude scans
+  SecondIntervals second;
   FitQuality quality;
 
   /// Of the pulses of a detuning or amplitude scan, s.
@@ -110,7 +123,7 @@ struct Fit {
 struct FitWorkspace {
   ObjectiveWorkspace objective;
   SearchWorkspace search;
-  std::vector<double> signal, order;
+  std::vector<double> signal, order, progress;
 };
 
 /// Fits each site of a batch under its own prior (`priors` has one a site). `fits` has one a site.
@@ -120,5 +133,8 @@ void fit(const ScanBatch& scans, std::span<const Prior> priors, const FitOptions
 /// matrix of the chosen candidate). Arrays as long as the axis. False where there is no fit.
 bool overlay(const ScanBatch& scan, const Fit& fit, std::span<const double> axis, double z, std::span<double> signal, std::span<double> low,
              std::span<double> high);
+
+/// The population seen after a pulse of this effective length (s), under the fitted dynamics. NaN where it cannot be computed.
+double population_after(const Fit& fit, const dynamics::Start& start, double length_s);
 
 }  // namespace halfturn::infer

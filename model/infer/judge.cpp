@@ -1,5 +1,6 @@
 // SPDX-License-Identifier: Apache-2.0
 #include <algorithm>
+#include <array>
 #include <cmath>
 #include <numeric>
 
@@ -117,7 +118,8 @@ FitQuality judge(const Problem& problem, const Solution& solution, FitWorkspace&
 
   if (problem.scan.kind == Axis::detuning) {
     const double length = problem.scan.pulse_length_s - solution.physical.dead_time;
-    quality.line_width = line_width(objective.rates(solution.physical), problem.prior.start, length);
+    quality.line_width = line_width(objective.rates(solution.physical), objective.ensemble(solution.physical), problem.prior.start, length,
+                                    work.objective.ensemble);
     return quality;
   }
   quality.range_low = constants::kTwoPi * 0.1 / problem.sampling.span;
@@ -130,27 +132,31 @@ FitQuality judge(const Problem& problem, const Solution& solution, FitWorkspace&
   return quality;
 }
 
-double line_width(const dynamics::Rates& rates, const dynamics::Start& start, double length_s) {
-  dynamics::Rates at = rates;
+double line_width(const dynamics::Rates& rates, const dynamics::Ensemble& ensemble, const dynamics::Start& start, double length_s,
+                  dynamics::EnsembleWorkspace& work) {
+  dynamics::Rates centred = rates;
+  centred.detuning = 0.0;
   const double unmoved = dynamics::population({}, start, 0.0);
-  auto moved = [&](double detuning) {
-    at.detuning = detuning;
-    return std::abs(dynamics::population(at, start, length_s) - unmoved);
-  };
+  const double breadth = ensemble.kind == dynamics::Ensemble::Kind::doppler ? ensemble.parameter : 0.0;
   // Beyond this the wings of any of the broadenings are below half.
-  const double far = 4.0 * (rates.rabi + rates.decay + rates.loss + rates.dephasing) + 4.0 * constants::kPi / length_s;
+  const double far = 4.0 * (rates.rabi + rates.decay + rates.loss + rates.dephasing + breadth) + 4.0 * constants::kPi / length_s;
   constexpr int kSteps = 400;
-  double peak = 0.0;
-  for (int i = 0; i <= kSteps; ++i) peak = std::max(peak, moved(far * i / kSteps));
-  if (!(peak > 0.0)) return kUnknown;
-  int outside = kSteps;
-  while (outside > 0 && moved(far * (outside - 1) / kSteps) < 0.5 * peak) --outside;
-  double low = far * std::max(0, outside - 1) / kSteps, high = far * outside / kSteps;
-  for (int i = 0; i < 40; ++i) {
-    const double middle = 0.5 * (low + high);
-    (moved(middle) < 0.5 * peak ? high : low) = middle;
-  }
-  return low + high;
+  std::array<double, kSteps + 1> moved, at;
+  for (int i = 0; i <= kSteps; ++i) at[static_cast<std::size_t>(i)] = far * i / kSteps;
+  dynamics::Derivatives out;
+  out.population = moved;
+  dynamics::Status status = dynamics::Status::ok;
+  dynamics::ensemble_detuning_scan(centred, ensemble, start, at, length_s, out, {}, status, work);
+  if (status != dynamics::Status::ok) return kUnknown;
+  for (double& m : moved) m = std::abs(m - unmoved);
+  const double half = 0.5 * *std::max_element(moved.begin(), moved.end());
+  if (!(half > 0.0)) return kUnknown;
+  std::size_t outside = kSteps;
+  while (outside > 0 && moved[outside - 1] < half) --outside;
+  if (outside == 0) return kUnknown;
+  // Between two of 400 steps the flank is straight to a thousandth of the width.
+  const double part = (moved[outside - 1] - half) / std::max(moved[outside - 1] - moved[outside], 1e-300);
+  return 2.0 * (at[outside - 1] + std::clamp(part, 0.0, 1.0) * (at[outside] - at[outside - 1]));
 }
 
 }  // namespace halfturn::infer

@@ -2,7 +2,7 @@
 #include <algorithm>
 #include <cmath>
 
-#include "model/infer/amplitude_response.hpp"
+#include "model/infer/line_modes.hpp"
 #include "model/infer/solution.hpp"
 #include "model/quantity/constants.hpp"
 
@@ -11,55 +11,52 @@ namespace {
 
 using constants::kTwoPi;
 
+// Deviance that a free damping must gain over none for the candidates with other causes of it to be tried. By chance, where there is
+// no damping, a one-sided rate gains more than this in one scan of six.
+constexpr double kDampingSeen = 1.0;
+// Modes this far above the best are not refined under those: no cause of a damping gains as much over all the others as it took.
+constexpr double kOthersWorthIt = 150.0;
 // So many modes, the best by their first refinement, are refined under every candidate before they are compared: the first
 // candidate may be the wrong one, and costs hundreds of deviance where there is much data.
 constexpr std::size_t kModesInFull = 6;
+// The first refinement of a line's starts only sorts them: to 0.02 in deviance, or as far as so many evaluations go.
+constexpr SolverOptions kSorting{.decrease_tolerance = 0.01, .max_evaluations = 60};
+// Other modes of a line are compared with the best to 2e-4 in deviance.
+constexpr SolverOptions kComparing{.decrease_tolerance = 1e-4, .max_evaluations = 100};
+// What a refinement may still promise to gain to count as finished.
+constexpr double kFinished = 1e-8;
 
-/// The rate of a candidate that damps an oscillation on resonance at `envelope`: gamma_phi/2, 3 Gamma/4, Gamma_loss/2.
-double damping_for(Dynamics dynamics, double envelope) {
-  switch (dynamics) {
-    case Dynamics::undamped: return 0.0;
-    case Dynamics::dephasing: return 2.0 * envelope;
-    case Dynamics::decay: return envelope / 0.75;
-    case Dynamics::leak: return 2.0 * envelope;
-  }
-  return 0.0;
+bool only_candidate(const Prior& prior, Dynamics candidate) {
+  DynamicsSet without = prior.candidates;
+  without.remove(candidate);
+  return without.empty();
 }
 
-double envelope_of(Dynamics dynamics, double damping) {
-  switch (dynamics) {
-    case Dynamics::undamped: return 0.0;
-    case Dynamics::dephasing: return 0.5 * damping;
-    case Dynamics::decay: return 0.75 * damping;
-    case Dynamics::leak: return 0.5 * damping;
-  }
-  return 0.0;
-}
-
-double length_scale(const Problem& problem) {
-  return problem.scan.kind == Axis::duration ? problem.sampling.span : problem.scan.pulse_length_s;
+bool others_asked_for(const Prior& prior) {
+  return std::any_of(kAllDynamics.begin(), kAllDynamics.end(), [&prior](Dynamics d) { return !is_simple(d) && prior.candidates.has(d); });
 }
 
 /// A fit that leaves its start by more than this many resolution elements has jumped to a mode that has, or does not deserve,
 /// a start of its own (fit_test, "every phase and frequency": a flop of 0.9 cycles ran to twice the sampling limit).
-bool strayed(const Problem& problem, const Physical& start, const Physical& end) {
-  if (problem.scan.kind == Axis::detuning) return false;
-  return std::abs(apparent(problem, end) - apparent(problem, start)) > kTwoPi * 1.5 / problem.sampling.span;
+bool strayed(const Problem& problem, double start, double end) {
+  return problem.scan.kind != Axis::detuning && std::abs(end - start) > kTwoPi * 1.5 / problem.sampling.span;
 }
 
-std::optional<Solution> refine(const Problem& problem, Dynamics candidate, const Physical& start, FitWorkspace& work) {
+std::optional<Solution> refine(const Problem& problem, Dynamics candidate, const Physical& start, FitWorkspace& work,
+                               const SolverOptions& options = {}) {
   const bool negative = start.contrast() < 0.0;
   const ScanObjective objective(problem.scan, problem.readout, problem.prior, candidate, {}, negative, work.objective);
   Solution solution;
   solution.dynamics = candidate;
   solution.negative_contrast = negative;
-  solution.minimum = minimise(objective, objective.pack(start), objective.bounds());
+  solution.minimum = minimise(objective, objective.pack(start), objective.bounds(), options);
   const auto& minimum = solution.minimum;
   const bool settled = minimum.outcome == Outcome::converged || (std::isfinite(minimum.value) && minimum.expected_decrease < 1e-3);
   if (!settled) return std::nullopt;
   solution.physical = objective.unpack(minimum.x);
   if (solution.physical.contrast() * start.contrast() < 0.0) return std::nullopt;  // crossed no contrast: no oscillation
-  if (strayed(problem, start, solution.physical)) return std::nullopt;
+  solution.apparent = objective.apparent_frequency(solution.physical);
+  if (strayed(problem, objective.apparent_frequency(start), solution.apparent)) return std::nullopt;
   solution.parameters = objective.layout().count;
   const double k = solution.parameters;
   const double n = problem.measured + (problem.scan.references ? 2 : 0);
@@ -78,44 +75,99 @@ void add_mode(const Problem& problem, std::vector<ModeSolutions>& modes, Solutio
   modes.push_back({{std::move(solution)}});
 }
 
-void refine_candidates(const Problem& problem, ModeSolutions& mode, FitWorkspace& work) {
-  const Solution first = mode.best();
-  mode.solutions.clear();
-  const double least = 0.2 / length_scale(problem);
-  const double envelope = std::max(least, envelope_of(first.dynamics, first.physical.damping));
-  for (const Dynamics candidate : {Dynamics::undamped, Dynamics::dephasing, Dynamics::decay, Dynamics::leak}) {
-    if (!problem.prior.candidates.has(candidate)) continue;
-    std::optional<Solution> solution;
-    if (candidate == first.dynamics) {
-      solution = first;
-    } else {
-      Physical start = first.physical;
-      start.damping = damping_for(candidate, envelope);
-      solution = refine(problem, candidate, start, work);
-    }
-    // A start that slid to another frequency is not this mode's.
-    if (solution && same_mode(problem, first, *solution)) mode.solutions.push_back(std::move(*solution));
-  }
-  if (mode.solutions.empty()) mode.solutions.push_back(first);
-  std::stable_sort(mode.solutions.begin(), mode.solutions.end(), [](const Solution& a, const Solution& b) { return a.aicc < b.aicc; });
+bool by_aicc(const Solution& a, const Solution& b) { return a.aicc < b.aicc; }
+
+/// As same_mode, but a fast damping blurs the frequency by as much.
+bool still_the_mode(const Problem& problem, const Solution& from, const Solution& found) {
+  if (same_mode(problem, from, found)) return true;
+  if (problem.scan.kind == Axis::detuning || from.negative_contrast != found.negative_contrast) return false;
+  return std::abs(from.apparent - found.apparent) < envelope_of(from);
 }
 
+/// Adds a candidate to a mode, begun from `from`; one that slid to another frequency is not this mode's.
+void add_candidate(const Problem& problem, ModeSolutions& mode, Dynamics candidate, const Solution& from, FitWorkspace& work,
+                   const SolverOptions& options = {}) {
+  if (candidate == from.dynamics) return mode.solutions.push_back(from);
+  // An ensemble's envelope is no exponential: where a start as wide as that leads nowhere, a wider and a narrower one are tried.
+  for (const double factor : {1.0, 2.5, 0.4}) {
+    auto solution = refine(problem, candidate, start_for(problem, candidate, from, factor, work), work, options);
+    if (solution && still_the_mode(problem, from, *solution)) return mode.solutions.push_back(std::move(*solution));
+    if (is_simple(candidate)) return;
+  }
+}
+
+void refine_simple(const Problem& problem, ModeSolutions& mode, FitWorkspace& work, const SolverOptions& options = {}) {
+  Solution first = mode.best();
+  const double finished_at = std::max(kFinished, options.decrease_tolerance);
+  if (problem.scan.kind == Axis::detuning && !(first.minimum.expected_decrease < finished_at))
+    if (auto finished = refine(problem, first.dynamics, first.physical, work, options)) first = std::move(*finished);
+  mode.solutions.clear();
+  for (const Dynamics candidate : kAllDynamics)
+    if (is_simple(candidate) && problem.prior.candidates.has(candidate)) add_candidate(problem, mode, candidate, first, work, options);
+  if (mode.solutions.empty()) mode.solutions.push_back(first);
+  std::stable_sort(mode.solutions.begin(), mode.solutions.end(), by_aicc);
+}
+
+/// Whether a mode shows enough of a damping that what it comes from matters. Without one the other candidates stand at a breadth of
+/// 0 or near it, where they are `undamped`.
+bool shows_damping(const Problem& problem, const ModeSolutions& mode) {
+  if (!problem.prior.candidates.has(Dynamics::undamped)) return true;
+  double undamped = std::numeric_limits<double>::infinity(), damped = undamped;
+  for (const auto& solution : mode.solutions) {
+    double& least = solution.dynamics == Dynamics::undamped ? undamped : damped;
+    least = std::min(least, solution.minimum.value);
+  }
+  return !(undamped - damped < 0.5 * kDampingSeen) || !std::isfinite(damped);
+}
+
+void refine_others(const Problem& problem, ModeSolutions& mode, FitWorkspace& work) {
+  const bool line = problem.scan.kind == Axis::detuning;
+  // The best of those with one free rate tells how fast the oscillation fades.
+  const auto damped = std::find_if(mode.solutions.begin(), mode.solutions.end(), [](const Solution& s) { return s.dynamics != Dynamics::undamped; });
+  const Solution from = damped == mode.solutions.end() ? mode.best() : *damped;
+  for (const Dynamics candidate : kAllDynamics) {
+    if (is_simple(candidate) || !problem.prior.candidates.has(candidate)) continue;
+    // Of a line a spread of the coupling changes no more than its side lobes, and two dampings no more than one.
+    if (line && candidate != Dynamics::doppler && !only_candidate(problem.prior, candidate)) continue;
+    if (candidate == Dynamics::thermal && problem.prior.motion.empty()) continue;
+    add_candidate(problem, mode, candidate, from, work);
+  }
+  std::stable_sort(mode.solutions.begin(), mode.solutions.end(), by_aicc);
+}
+
+/// The best mode of a line under every simple candidate, and of the others as much as it takes to compare them with it.
+void refine_lines(const Problem& problem, std::vector<ModeSolutions>& modes, FitWorkspace& work) {
+  if (modes.empty()) return;
+  const double sorted_by = modes.front().best().minimum.value;
+  refine_simple(problem, modes.front(), work);
+  const Solution best = modes.front().best();
+  const double worth_it = drop_hopeless(problem, modes, sorted_by);
+  for (std::size_t i = 1; i < modes.size(); ++i) {
+    ModeSolutions& mode = modes[i];
+    const Solution first = mode.best();
+    if (best.dynamics != first.dynamics) {
+      Physical start = first.physical;
+      start.damping = best.physical.damping;
+      if (auto alike = refine(problem, best.dynamics, start, work, kComparing); alike && same_mode(problem, first, *alike) && alike->aicc < first.aicc)
+        mode.solutions.front() = std::move(*alike);
+    }
+    if (mode.best().minimum.value < worth_it) refine_simple(problem, mode, work, kComparing);
+  }
+  const auto least = std::min_element(modes.begin(), modes.end(), [](const auto& a, const auto& b) { return a.best().aicc < b.best().aicc; });
+  if (least != modes.begin()) refine_simple(problem, *least, work);
+}
+
+/// The candidate under which a start is refined first.
 Dynamics first_candidate(const Prior& prior, bool damped) {
   if (damped)
     for (const Dynamics candidate : {Dynamics::dephasing, Dynamics::decay, Dynamics::leak})
       if (prior.candidates.has(candidate)) return candidate;
-  for (const Dynamics candidate : {Dynamics::undamped, Dynamics::dephasing, Dynamics::decay})
+  for (const Dynamics candidate : kAllDynamics)
     if (prior.candidates.has(candidate)) return candidate;
-  return Dynamics::leak;
+  return Dynamics::undamped;
 }
 
 }  // namespace
-
-double apparent(const Problem& problem, const Physical& physical) {
-  if (problem.scan.kind != Axis::amplitude) return physical.generalised;
-  const double largest = *std::max_element(problem.scan.axis.begin(), problem.scan.axis.end());
-  return physical.generalised * compressed(largest, physical.compression) / largest;
-}
 
 int measured_points(const Readout& readout) {
   int measured = 0;
@@ -130,24 +182,31 @@ bool same_mode(const Problem& problem, const Solution& a, const Solution& b) {
     return std::abs(a.physical.line_offset - b.physical.line_offset) < kTwoPi * 0.2 / problem.scan.pulse_length_s;
   if (a.negative_contrast != b.negative_contrast) return false;
   const double limit = problem.sampling.limit;
-  const double of_a = apparent(problem, a.physical), of_b = apparent(problem, b.physical);
-  if ((of_a > limit) != (of_b > limit)) return false;  // mirror images near the limit
-  return std::abs(of_a - of_b) < kTwoPi * 0.35 / problem.sampling.span;
+  if ((a.apparent > limit) != (b.apparent > limit)) return false;  // mirror images near the limit
+  return std::abs(a.apparent - b.apparent) < kTwoPi * 0.35 / problem.sampling.span;
 }
 
 std::vector<ModeSolutions> refine_modes(const Problem& problem, std::span<const Mode> starts, FitWorkspace& work) {
+  const bool line = problem.scan.kind == Axis::detuning;
   std::vector<ModeSolutions> modes;
   for (const auto& start : starts) {
-    Physical from = start.start;
     const Dynamics candidate = first_candidate(problem.prior, start.damped);
-    from.damping = start.damped ? damping_for(candidate, from.damping) : damping_for(candidate, 0.1 / length_scale(problem));
-    if (auto solution = refine(problem, candidate, from, work)) add_mode(problem, modes, std::move(*solution));
+    const Physical from = first_start(problem, candidate, start, work);
+    if (auto solution = refine(problem, candidate, from, work, line ? kSorting : SolverOptions{})) add_mode(problem, modes, std::move(*solution));
   }
   auto by_deviance = [](const ModeSolutions& a, const ModeSolutions& b) { return a.best().minimum.value < b.best().minimum.value; };
   std::stable_sort(modes.begin(), modes.end(), by_deviance);
-  if (modes.size() > kModesInFull) modes.resize(kModesInFull);
-  for (auto& mode : modes) refine_candidates(problem, mode, work);
-  std::stable_sort(modes.begin(), modes.end(), [](const ModeSolutions& a, const ModeSolutions& b) { return a.best().aicc < b.best().aicc; });
+  if (line) refine_lines(problem, modes, work);
+  else if (modes.size() > kModesInFull) modes.resize(kModesInFull);
+  if (!line)
+    for (auto& mode : modes) refine_simple(problem, mode, work);
+  const auto better = [](const ModeSolutions& a, const ModeSolutions& b) { return a.best().aicc < b.best().aicc; };
+  std::stable_sort(modes.begin(), modes.end(), better);
+  if (modes.empty() || !others_asked_for(problem.prior)) return modes;
+  const double worth_it = modes.front().best().aicc + kOthersWorthIt;
+  for (auto& mode : modes)
+    if (mode.best().aicc < worth_it && shows_damping(problem, mode)) refine_others(problem, mode, work);
+  std::stable_sort(modes.begin(), modes.end(), better);
   return modes;
 }
 

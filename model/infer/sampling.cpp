@@ -34,8 +34,9 @@ void linear_points(const Readout& readout, std::span<double> value, std::span<do
 }
 
 void SearchWorkspace::reserve(std::size_t points) {
-  for (auto* array : {&value, &weight})
+  for (auto* array : {&value, &weight, &part, &weighted})
     if (array->size() < points) array->resize(points);
+  if (place.size() < points) place.resize(points);
 }
 
 void keep_signals_possible(Readout::Kind kind, Physical& start) {
@@ -93,6 +94,19 @@ Sampling sampling_of(Axis kind, std::span<const double> axis) {
   const double of_count = kPi * static_cast<double>(sampling.distinct - 1) / sampling.span;
   sampling.limit = sampling.even ? of_gap : std::min(of_gap, 8.0 * of_count);
   return sampling;
+}
+
+std::span<const double> progress_of(const ScanBatch& scan, std::vector<double>& progress) {
+  const auto n = scan.points();
+  if (scan.kind != Axis::duration || n == 0) return {};
+  progress.resize(n);
+  const bool timed = scan.at_s.size() == n;
+  for (std::size_t i = 0; i < n; ++i) progress[i] = timed ? scan.at_s[i] : static_cast<double>(i);
+  const auto [first, last] = std::minmax_element(progress.begin(), progress.end());
+  const double from = *first, whole = *last - from;
+  if (!(whole > 0.0)) return {};
+  for (double& part : progress) part = (part - from) / whole - 0.5;
+  return progress;
 }
 
 }  // namespace halfturn::infer

@@ -28,6 +28,9 @@ struct ScanBatch {
   std::span<const double> weight;
   double pulse_length_s = 0.0;  // of a detuning or amplitude scan
   std::optional<References> references;
+  std::span<const double> at_s;  // when each point was taken; empty: one after another, in their order
+  /// The same from -1/2 at the first to 1/2 at the last; filled by the fit, empty where a drift does not matter.
+  std::span<const double> progress;
 
   std::size_t points() const { return axis.size(); }
   std::size_t sites() const { return axis.empty() ? 0 : observed.size() / axis.size(); }

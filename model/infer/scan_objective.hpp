@@ -4,7 +4,7 @@
 #include <cstdint>
 #include <vector>
 
-#include "model/dynamics/two_level.hpp"
+#include "model/dynamics/ensemble.hpp"
 #include "model/infer/candidate.hpp"
 #include "model/infer/prior.hpp"
 #include "model/infer/scan.hpp"
@@ -15,26 +15,32 @@ namespace halfturn::infer {
 
 /// What a scan's signal depends on. The signal is signal_ground + (signal_excited - signal_ground) * population.
 struct Physical {
-  /// Duration scans: sqrt(Omega^2 + Delta^2), rad/s; detuning scans: Omega, rad/s; amplitude scans: the rotation on resonance per
-  /// amplitude where that is small, rad, so the coupling per amplitude times the effective length.
+  /// Duration scans: sqrt(Omega^2 + Delta^2), rad/s; detuning scans: Omega, rad/s; of an ensemble with its peak (thermal: bare) coupling
+  /// and its mean detuning. Amplitude scans: the rotation on resonance per amplitude where that is small, rad, so the coupling per
+  /// amplitude times the effective length.
   double generalised = 0.0;
   double detuning_square = 0.0;  // duration and amplitude scans: Delta^2 (they see no more of Delta), rad^2/s^2
   double line_offset = 0.0;      // detuning scans: where the line lies from the carrier, rad/s
   double dead_time = 0.0;        // s
   double signal_ground = 0.0;
   double signal_excited = 1.0;
-  double damping = 0.0;          // the candidate's free rate, 1/s
+  double damping = 0.0;          // the candidate's free rate, 1/s; of two the decay or the leak
+  double dephasing = 0.0;        // of candidates with two rates, 1/s
+  double breadth = 0.0;          // of an ensemble: the square of Ensemble::parameter (spread, doppler, cloud), for the signal is
+                                 // linear in that where it is small; thermal: mean phonons
+  double drift = 0.0;            // relative change of the coupling along the scan
   double compression = 0.0;      // amplitude scans: q of amplitude_response.hpp
 
-  double rabi() const;           // bare coupling, rad/s; not of an amplitude scan
+  double rabi() const;           // bare, peak coupling, rad/s; not of an amplitude scan
   double contrast() const { return signal_excited - signal_ground; }
 };
 
-/// The coordinate in place of `generalised`: itself, the bare coupling, or the length of a pulse of a given angle; any of
-/// them, with the others, says what the scan depends on. One is chosen so that its profile is an interval of that quantity.
+/// The coordinate in place of `generalised`: itself, the bare coupling, itself averaged over the ensemble's couplings, or the length of the best pulse
+/// of a given angle (dynamics::best_pulse_phase); any of them, with the others, says what the scan depends on. One is chosen so
+/// that its profile is an interval of that quantity.
 /// Of amplitude scans: itself, the coupling per amplitude where that is small, or the amplitude of a pulse of a given angle.
 struct Lead {
-  enum class Kind : std::uint8_t { generalised, bare, pulse_length, per_amplitude, pulse_amplitude } kind = Kind::generalised;
+  enum class Kind : std::uint8_t { generalised, bare, mean, pulse_length, per_amplitude, pulse_amplitude } kind = Kind::generalised;
   double angle_rad = 0.0;    // pulse_length, pulse_amplitude
   double area_factor = 1.0;  // pulse_length, pulse_amplitude
   double length_s = 0.0;     // pulse_amplitude: the pulse's commanded length
@@ -42,10 +48,17 @@ struct Lead {
 
 /// Positions of the free parameters in the solver's vector; -1 where one is held.
 struct Layout {
-  int lead = -1, line_offset = -1, detuning_square = -1, dead_time = -1, ground = -1, excited = -1, damping = -1,
-      compression = -1;
+  int lead = -1, line_offset = -1, detuning_square = -1, dead_time = -1, ground = -1, excited = -1, damping = -1, dephasing = -1,
+      breadth = -1, drift = -1, compression = -1;
   int count = 0;
 };
+
+/// The largest of some lengths; 0 of none.
+double longest_of(std::span<const double> axis);
+
+/// How much faster than its coupling, rad/s, a flop of this variance of the detuning (rad^2/s^2) seems to oscillate over the longest
+/// length: the mean of exp(i delta^2 t / (2 Omega)) turns by atan(variance t / Omega) / 2, to first order in variance over Omega^2.
+double doppler_shift(double rabi, double variance, double longest_s);
 
 /// Arrays for the evaluations of scans of up to the reserved number of points; the caller keeps it, nothing allocates after
 /// `reserve`.
@@ -53,11 +66,13 @@ struct ObjectiveWorkspace {
   void reserve(std::size_t points);
   std::vector<double> population, signal, score, information;
   std::array<std::vector<double>, dynamics::kRateCount> by_rate;
-  std::vector<double> by_length;
+  std::vector<double> by_length, by_parameter;
+  std::vector<double> played;    // lengths as they act under a drift
   std::vector<dynamics::Rates> sets;        // amplitude scans: those of each point
   std::vector<dynamics::Status> statuses;
   std::vector<double> jacobian;  // [parameter][point], the signal's derivatives
   dynamics::Workspace dynamics;
+  dynamics::EnsembleWorkspace ensemble;
 };
 
 class ScanObjective final : public Objective {
@@ -75,6 +90,14 @@ class ScanObjective final : public Objective {
   Physical unpack(const Vector& x) const;
   dynamics::Rates rates(const Physical& physical) const;  // of an amplitude scan at its largest amplitude
   dynamics::Rates rates_at(const Physical& physical, double amplitude) const;  // amplitude scans
+  dynamics::Ensemble ensemble(const Physical& physical) const;
+  /// The ensemble's mean coupling over the peak one.
+  double mean_factor(const Physical& physical) const;
+  /// The frequency, rad/s, at which a scan to the longest length seems to oscillate: the phase reached over that length. Of a spread
+  /// the mean coupling; for doppler see doppler_shift; of a cloud or a thermal state, whose couplings are distributed nearly as
+  /// x0 - m y with y as exp(-y), the mean of exp(i x Omega t) has the phase x0 Omega t - atan(m Omega t). Of an amplitude scan the
+  /// rotation at its largest amplitude over that amplitude, rad.
+  double apparent_frequency(const Physical& physical) const;
   const Prior& prior() const { return prior_; }
   const ScanBatch& scan() const { return scan_; }
   Dynamics candidate() const { return candidate_; }
@@ -91,14 +114,32 @@ class ScanObjective final : public Objective {
   bool data_information(const Vector& x, Matrix& information) const;
 
  private:
+  /// A factor between the lead coordinate and the coupling, and its derivative by Physical::breadth: the phase of the best pulse, or
+  /// the mean coupling over the peak one. NaN where there is none.
+  struct Factor {
+    double value, by_breadth;
+  };
+  Factor lead_factor(const Physical& physical) const;
+
+  /// Derivatives of the generalised frequency by what it follows from.
+  struct LeadSlopes {
+    double by_lead = 1.0, by_dead_time = 0.0, by_square = 0.0, by_breadth = 0.0;
+  };
+  LeadSlopes lead_slopes(const Physical& physical) const;
+
+  std::size_t damped_rate() const;
   bool populate(const Physical& physical, bool derivatives) const;
   dynamics::Status populate_amplitudes(const Physical& physical, const dynamics::Derivatives& out) const;
   void fill_amplitude_columns(const Physical& physical) const;
   double effective_length(const Physical& physical) const { return scan_.pulse_length_s - physical.dead_time; }
   double amplitude_lead(const Physical& physical) const;
   double from_amplitude_lead(double lead, const Physical& physical) const;
+  dynamics::Status populate_ensemble(const Physical& physical, std::span<const double> axis, const dynamics::Derivatives& out,
+                                     bool derivatives) const;
+  std::span<const double> played(const Physical& physical) const;
   std::span<double> column(int parameter) const;
   void fill_columns(const Physical& physical) const;
+  void fill_lengths(const Physical& physical, double dead_time_by_rabi) const;
   void accumulate(const Physical& physical, Vector* gradient, Matrix* information) const;
   bool add_references(const Physical& physical, double& value, Vector* gradient, Matrix* information) const;
   bool add_priors(const Physical& physical, double& value, Vector* gradient, Matrix* information) const;
@@ -111,6 +152,8 @@ class ScanObjective final : public Objective {
   bool negative_contrast_;
   Layout layout_;
   ObjectiveWorkspace& work_;
+  mutable double factor_at_ = -1.0;  // the breadth at which `factor_` was computed last
+  mutable Factor factor_{1.0, 0.0};
 };
 
 }  // namespace halfturn::infer

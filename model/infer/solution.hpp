@@ -25,6 +25,7 @@ struct Solution {
   bool negative_contrast = false;
   Physical physical;
   Minimum minimum;
+  double apparent = kUnknown;  // rad/s, ScanObjective::apparent_frequency
   double aicc = kUnknown;
   int parameters = 0;
 };
@@ -35,10 +36,6 @@ struct ModeSolutions {
   const Solution& best() const { return solutions.front(); }
 };
 
-/// The frequency along the axis by which modes are told apart: the generalised one, of a scan of amplitudes the rotation at the
-/// largest amplitude over that amplitude.
-double apparent(const Problem& problem, const Physical& physical);
-
 /// How many points were measured.
 int measured_points(const Readout& readout);
 
@@ -46,7 +43,17 @@ int measured_points(const Readout& readout);
 /// under every candidate. Best first by AICc.
 std::vector<ModeSolutions> refine_modes(const Problem& problem, std::span<const Mode> starts, FitWorkspace& workspace);
 
-/// Where two solutions count as one mode: equal sign of contrast and a frequency within a third of a resolution element; of a
+/// The rate, 1/s, at which a simple candidate's oscillation fades on resonance; 0 of the others.
+double envelope_of(const Solution& solution);
+
+/// Where to begin a candidate from a start of the search, whose damping is that of the oscillation.
+Physical first_start(const Problem& problem, Dynamics candidate, const Mode& start, FitWorkspace& workspace);
+
+/// Where to begin a candidate from another one's solution: with the same apparent frequency, and `factor` times about the same
+/// damping of the envelope.
+Physical start_for(const Problem& problem, Dynamics candidate, const Solution& from, double factor, FitWorkspace& workspace);
+
+/// Where two solutions count as one mode: equal sign of contrast and an apparent frequency within a third of a resolution element; of a
 /// line, a centre within a fifth of one over the pulse length.
 bool same_mode(const Problem& problem, const Solution& a, const Solution& b);
 
@@ -63,8 +70,12 @@ TrialGrid trial_grid(const Prior& prior, const Sampling& sampling, std::size_t p
 /// Fills the estimates, averaged over candidates with their Akaike weights, and the pulse lengths.
 void estimate(const Problem& problem, const ModeSolutions& mode, Fit& fit, FitWorkspace& workspace);
 
+/// Fills Fit::second where a second level is asked for; after `estimate`, with the same scatter.
+void estimate_second(const Problem& problem, std::span<const ModeSolutions> modes, std::size_t chosen, Fit& fit, FitWorkspace& workspace);
+
 /// Full width at half maximum of the line of these rates after a pulse of this length, rad/s: between the outermost places
 /// where the population change is half of its largest.
-double line_width(const dynamics::Rates& rates, const dynamics::Start& start, double length_s);
+double line_width(const dynamics::Rates& rates, const dynamics::Ensemble& ensemble, const dynamics::Start& start, double length_s,
+                  dynamics::EnsembleWorkspace& workspace);
 
 }  // namespace halfturn::infer

@@ -29,12 +29,18 @@ struct Sampling {
 };
 Sampling sampling_of(Axis kind, std::span<const double> axis);
 
+/// ScanBatch::progress of a scan, in memory of the caller's: by when points were taken, or by their order. Empty for lines, and where
+/// all were taken at once.
+std::span<const double> progress_of(const ScanBatch& scan, std::vector<double>& progress);
+
 struct SearchWorkspace {
   void reserve(std::size_t points);
   std::vector<double> value, weight;
   FrequencySearch frequencies;
   std::vector<Mode> found;
   std::vector<double> table, table_axis;
+  std::vector<int> place;               // of a point among the table's steps
+  std::vector<double> part, weighted;   // the rest of its place; its weight times its value
   dynamics::Workspace dynamics;
 };
 
@@ -44,8 +50,8 @@ struct SearchWorkspace {
 std::size_t duration_starts(const ScanBatch& scan, const Readout& readout, const Prior& prior, const Sampling& sampling,
                             std::span<Mode> modes, SearchWorkspace& workspace);
 
-/// Starting points of a detuning scan: offsets across the window and half a width beyond it, areas from 0.3 to 4.5 pi or
-/// around the one that history knows, undamped and dephased.
+/// Starting points of a detuning scan: offsets across the window and two widths beyond it, areas from 0.3 to 4.5 pi (damped: to
+/// 11 pi) or around the one that history knows, undamped and dephased; floor and contrast solved for with what is known of them.
 std::size_t line_starts(const ScanBatch& scan, const Readout& readout, const Prior& prior, const Sampling& sampling,
                         std::span<Mode> modes, SearchWorkspace& workspace);
 

@@ -94,7 +94,7 @@ Target target_of(const Pulse& pulse, const infer::Fit& fit, const PulseResponse&
   const auto& exact = response.exact;
   if (pulse.adjust == Adjust::amplitude || !tracked) return {exact.value, exact.sigma};
   const double working = pulse.angle_rad / response.slope;
-  return {exact.value + working * (std::log(fit.rabi.value) - tracked->mean), working * tracked->sigma};
+  return {exact.value + working * (std::log(fit.rabi_mean.value) - tracked->mean), working * tracked->sigma};
 }
 
 PulseDecision decide_value(const State& state, const Pulse& pulse, const infer::Fit& fit, const PulseResponse& response,
@@ -132,7 +132,8 @@ FitEvent event_of(const State& state, const infer::Fit& fit, const Context& cont
     event.noise_floor = kLineNoise * fit.quality.line_width;
     return event;
   }
-  const auto& coupling = event.quantity == Quantity::gain ? fit.rabi_per_amplitude : fit.rabi;
+  // The mean is what lengths go by, and candidates agree on it where their peaks differ.
+  const auto& coupling = event.quantity == Quantity::gain ? fit.rabi_per_amplitude : fit.rabi_mean;
   event.value = std::log(coupling.value);
   event.sigma = coupling.sigma / coupling.value;
   event.noise_floor = kRabiNoise;

@@ -116,6 +116,7 @@ void rival_gate(const infer::Fit& fit, const Context& context, Reasons& reasons)
 }
 
 void line_gates(const infer::Fit& fit, const Context& context, Reasons& reasons) {
+  if (!(fit.quality.over_flat >= context.accept.min_evidence)) return;  // there is no line to have a centre
   const auto& offset = fit.line_offset;
   const double width = fit.quality.line_width;
   if (!std::isfinite(offset.sigma) || !std::isfinite(offset.low) || !std::isfinite(offset.high)) {

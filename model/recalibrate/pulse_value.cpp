@@ -14,14 +14,14 @@ double effective_length(const Pulse& pulse, double length_s, const infer::Fit& f
   return (length_s - fit.physical.dead_time) * pulse.area_factor;
 }
 
-/// From a flop at `drive_amplitude`, in proportion.
-PulseResponse reckoned(const Pulse& pulse, const infer::Fit& fit, double drive_amplitude) {
+/// From a flop at `drive_amplitude`, in proportion: what the length would have to change by, the amplitude changes by.
+PulseResponse reckoned(const Pulse& pulse, const infer::Estimate& length, const infer::Fit& fit, double drive_amplitude) {
   PulseResponse response;
-  const double length = effective_length(pulse, pulse.length_s, fit), rotation = fit.generalised.value * length;
-  if (!(drive_amplitude > 0.0) || !(rotation > 0.0)) return response;
-  const double ratio = pulse.angle_rad / rotation;
-  const double dead = std::isfinite(fit.dead_time_s.sigma) ? fit.dead_time_s.sigma * pulse.area_factor / length : 0.0;
-  const double relative = std::hypot(fit.generalised.sigma / fit.generalised.value, dead, kAmplifier * std::log(ratio));
+  const double wanted = effective_length(pulse, length.value, fit), given = effective_length(pulse, pulse.length_s, fit);
+  if (!(drive_amplitude > 0.0) || !(wanted > 0.0) || !(given > 0.0)) return response;
+  const double ratio = wanted / given;
+  const double dead = std::isfinite(fit.dead_time_s.sigma) ? fit.dead_time_s.sigma * pulse.area_factor / given : 0.0;
+  const double relative = std::hypot(length.sigma * pulse.area_factor / wanted, dead, kAmplifier * std::log(ratio));
   response.exact.value = drive_amplitude * ratio;
   response.exact.sigma = response.exact.value * relative;
   response.slope = pulse.angle_rad / response.exact.value;
@@ -35,7 +35,7 @@ PulseResponse response_of(const Pulse& pulse, std::size_t index, const infer::Fi
   PulseResponse response;
   if (fit.outcome != infer::FitOutcome::fitted || fit.axis == infer::Axis::detuning) return response;
   const bool amplitudes = fit.axis == infer::Axis::amplitude;
-  if (pulse.adjust == Adjust::amplitude && !amplitudes) return reckoned(pulse, fit, drive_amplitude);
+  if (pulse.adjust == Adjust::amplitude && !amplitudes) return reckoned(pulse, fit.pulse_length_s[index], fit, drive_amplitude);
   if (pulse.adjust == Adjust::length && amplitudes) return response;
   response.exact = amplitudes ? fit.pulse_amplitude[index] : fit.pulse_length_s[index];
   if (!response.told()) return response;
@@ -54,14 +54,15 @@ double rotation_beyond(const Pulse& pulse, const PulseResponse& response, double
 double transfer(const Pulse& pulse, double value, const infer::Fit& fit, const infer::Prior& prior, double drive_amplitude) {
   dynamics::Start pure = prior.start;
   pure.impurity = 0.0;
-  dynamics::Rates rates = fit.rates;
   const bool by_amplitude = pulse.adjust == Adjust::amplitude;
+  const double before = dynamics::population({}, pure, 0.0), length = effective_length(pulse, by_amplitude ? pulse.length_s : value, fit);
+  if (!by_amplitude) return std::abs(infer::population_after(fit, pure, length) - before);
+  infer::Fit there = fit;
   if (fit.axis == infer::Axis::amplitude)
-    rates.rabi = fit.physical.generalised / fit.effective_length_s() * infer::compressed(value, fit.physical.compression);
-  else if (by_amplitude)
-    rates.rabi *= value / drive_amplitude;
-  const double length = effective_length(pulse, by_amplitude ? pulse.length_s : value, fit);
-  return std::abs(dynamics::population(rates, pure, length) - dynamics::population({}, pure, 0.0));
+    there.rates.rabi = fit.physical.generalised / fit.effective_length_s() * infer::compressed(value, fit.physical.compression);
+  else
+    there.rates.rabi *= value / drive_amplitude;
+  return std::abs(infer::population_after(there, pure, length) - before);
 }
 
 double in_force(const State& state, const Pulse& pulse) {

@@ -28,6 +28,7 @@ constexpr std::array<std::pair<std::string_view, std::string_view>, 20> kNames =
     {"contrast", "contrast"},
     {"floor", "floor"},
     {"rabi_spread", "spread of Rabi frequency"},
+    {"rabi_drift", "change along the scan"},
     {"mean_phonons", "mean phonons"},
     {"cloud_ratio", "cloud over waist"},
     {"detuning_spread_hz", "spread of detuning"},

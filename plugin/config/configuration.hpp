@@ -32,6 +32,7 @@ struct Drive {
       wire::ReadoutKind::binomial;        // what floor and contrast are of: fractions, signal, photons
   std::optional<infer::Expected> expect;  // rad/s
   std::optional<infer::DynamicsSet> dynamics;
+  std::vector<dynamics::Mode> motion;     // modes that the drive sees; none: no motion
   std::optional<infer::Known> dead_time;  // s
   dynamics::LostReads lost_reads = dynamics::LostReads::dark;
   double impurity = 0.0;

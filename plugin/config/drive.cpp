@@ -15,6 +15,7 @@ using constants::kTwoPi;
 constexpr Range kHalf{0.0, 0.5, false, "between 0 and 0.5"};
 constexpr Range kUpToOne{0.0, 1.0, true, "above 0 and at most 1"};
 constexpr Range kBelowOne{0.0, 1.0 - 0x1p-53, false, "of at least 0 and below 1"};
+constexpr Range kLambDicke{0.0, 2.0, true, "above 0 and at most 2"};
 constexpr Range kUpToPi{0.0, constants::kPi, true, "above 0 and at most pi"};
 
 std::optional<infer::Known> known(Reader& reader, const Place& at, const char* expected) {
@@ -66,13 +67,39 @@ void read_dynamics(Reader& reader, const Place& at, Drive& drive) {
   if (!at || !reader.list(at, "a list such as [undamped, dephasing]")) return;
   infer::DynamicsSet set = infer::DynamicsSet::none();
   for (const Node& child : at.node->children) {
-    const auto one = reader.choice(at.child(child), infer::kDynamicsNames, keys::kDynamicsLater);
+    const auto one = reader.choice(at.child(child), infer::kDynamicsNames);
     if (!one) continue;
     if (set.has(static_cast<infer::Dynamics>(*one)))
       reader.fault(at.child(child), "found " + wire::in_quotes(child.text) + " a second time, expected it once");
     set.add(static_cast<infer::Dynamics>(*one));
   }
   drive.dynamics = set;
+}
+
+dynamics::Mode read_mode(Reader& reader, const Place& at) {
+  dynamics::Mode mode;
+  if (!reader.map(at, {keys::kMotion})) return mode;
+  mode.lamb_dicke = reader.quantity(reader.need(at, "lamb_dicke", "the Lamb-Dicke parameter of the mode, such as 0.08"), Dimension::number,
+                                    kLambDicke).value_or(0.0);
+  mode.sideband = static_cast<int>(reader.integer(at["sideband"], -1, 1).value_or(0));
+  mode.phonon_ratio = reader.quantity(at["phonon_ratio"], Dimension::number, kPositive).value_or(1.0);
+  return mode;
+}
+
+/// One mode, or a list of them.
+void read_motion(Reader& reader, const Place& at, Drive& drive) {
+  if (!at) return;
+  if (at.node->kind == Node::Kind::map) {
+    drive.motion.push_back(read_mode(reader, at));
+    return;
+  }
+  if (!reader.list(at, "a mode such as {lamb_dicke: 0.08}, or a list of them")) return;
+  for (const Node& child : at.node->children) drive.motion.push_back(read_mode(reader, at.child(child)));
+}
+
+void check_motion(Reader& reader, const Place& dynamics, const Drive& drive) {
+  if (!drive.dynamics || !drive.dynamics->has(infer::Dynamics::thermal) || !drive.motion.empty()) return;
+  reader.fault(dynamics, "found thermal, which needs the drive's motion, expected it beside, such as motion: {lamb_dicke: 0.08}");
 }
 
 void read_switching(Reader& reader, const Place& at, Drive& drive) {
@@ -121,6 +148,8 @@ Drive read_drive(Reader& reader, const Place& at) {
   read_readout(reader, at["readout"], drive);
   read_expect(reader, at["expect"], drive);
   read_dynamics(reader, at["dynamics"], drive);
+  read_motion(reader, at["motion"], drive);
+  check_motion(reader, at["dynamics"], drive);
   read_switching(reader, at["switching"], drive);
   if (const auto lost = reader.choice(at["lost_reads"], keys::kLostReads))
     drive.lost_reads = static_cast<dynamics::LostReads>(*lost);

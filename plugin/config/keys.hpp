@@ -13,8 +13,9 @@ inline constexpr string_view kTopLater[] = {"catalogue", "keys", "secret_keys", 
 inline constexpr string_view kSockets[] = {"requests", "feed", "results", "display"};
 inline constexpr string_view kDrive[] = {"transition", "beam",   "carrier_uncertainty", "readout", "expect",
                                          "dynamics",   "pulses", "switching",           "accept",  "lost_reads",
-                                         "impurity"};
-inline constexpr string_view kDriveLater[] = {"motion", "sideband", "cloud", "doppler", "spread", "light_shift"};
+                                         "impurity",     "motion"};
+inline constexpr string_view kDriveLater[] = {"light_shift"};
+inline constexpr string_view kMotion[] = {"lamb_dicke", "sideband", "phonon_ratio"};
 inline constexpr string_view kBeam[] = {"waist"};
 inline constexpr string_view kReadout[] = {"kind", "floor", "contrast"};
 inline constexpr string_view kExpect[] = {"rabi"};
@@ -32,6 +33,5 @@ inline constexpr string_view kShapes[] = {"square", "gaussian", "blackman", "rai
 inline constexpr string_view kReadoutKinds[] = {"counts", "signal", "photons"};  // in the order of wire::ReadoutKind
 inline constexpr string_view kLostReads[] = {"dark", "bright"};                  // in the order of dynamics::LostReads
 inline constexpr string_view kAdjust[] = {"length", "amplitude"};                // in the order of recalibrate::Adjust
-inline constexpr string_view kDynamicsLater[] = {"spread", "doppler", "cloud", "thermal"};
 
 }  // namespace halfturn::config::keys

@@ -34,6 +34,7 @@ struct Event {
   std::string effect;       // how it moved the tracked state: none, first, accepted, pending, confirmed, aside
   std::string reasons;      // codes, most serious first, separated by spaces
   double rabi_hz = kNull, rabi_sigma_hz = kNull, rabi_low_hz = kNull, rabi_high_hz = kNull;
+  double rabi_mean_hz = kNull, rabi_mean_sigma_hz = kNull;  // of the ensemble: what the track follows
   double generalised_hz = kNull, generalised_sigma_hz = kNull;
   double line_offset_hz = kNull, line_offset_sigma_hz = kNull, line_width_hz = kNull;  // width: full, at half maximum
   double carrier_hz = kNull;

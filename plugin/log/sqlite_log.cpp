@@ -28,7 +28,8 @@ constexpr std::array<Column<Time>, 2> kTimes = {{{"happened_at", &Event::happene
 constexpr std::array<Column<std::string>, 10> kTexts = {{{"drive", &Event::drive}, {"kind", &Event::kind}, {"id", &Event::id},
     {"scan_name", &Event::scan_name}, {"axis", &Event::axis}, {"verdict", &Event::verdict}, {"effect", &Event::effect},
     {"reasons", &Event::reasons}, {"by_whom", &Event::by}, {"why", &Event::why}}};
-constexpr std::array<Column<double>, 19> kReals = {{{"rabi_hz", &Event::rabi_hz}, {"rabi_sigma_hz", &Event::rabi_sigma_hz},
+constexpr std::array<Column<double>, 21> kReals = {{{"rabi_hz", &Event::rabi_hz}, {"rabi_sigma_hz", &Event::rabi_sigma_hz},
+    {"rabi_mean_hz", &Event::rabi_mean_hz}, {"rabi_mean_sigma_hz", &Event::rabi_mean_sigma_hz},
     {"rabi_low_hz", &Event::rabi_low_hz}, {"rabi_high_hz", &Event::rabi_high_hz}, {"generalised_hz", &Event::generalised_hz},
     {"generalised_sigma_hz", &Event::generalised_sigma_hz}, {"line_offset_hz", &Event::line_offset_hz},
     {"line_offset_sigma_hz", &Event::line_offset_sigma_hz}, {"line_width_hz", &Event::line_width_hz},

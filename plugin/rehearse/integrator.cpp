@@ -88,6 +88,16 @@ Populations after_square_pulse(const Rates& rates, double duration_s, double sta
   return {end(2), end(3)};
 }
 
+void after_square_pulses(const Rates& rates, double first_s, double step_s, std::span<double> excited) {
+  const Eigen::Matrix4d generator = liouvillian(rates);
+  const Eigen::Matrix4d step = (generator * step_s).exp();
+  Eigen::Vector4d state = (generator * std::max(first_s, 0.0)).exp() * Eigen::Vector4d(0, 0, 0, 1);
+  for (double& fraction : excited) {
+    fraction = state(2);
+    state = step * state;
+  }
+}
+
 Populations after_shaped_pulse(const Rates& rates, const Envelope& envelope, double duration_s, double start_excited,
                                double tolerance) {
   Density rho = Density::Zero();

@@ -1,6 +1,7 @@
 // SPDX-License-Identifier: Apache-2.0
 #pragma once
 #include <functional>
+#include <span>
 
 /// The driven two-level system of the simulated apparatus, integrated from its master equation. It shares nothing with
 /// model/dynamics, which solves the same physics in closed form: each can be wrong without the other.
@@ -25,6 +26,11 @@ struct Populations {
 /// and the rest in g, without coherence. Exponential of the 4x4 Liouvillian (Pade approximation, scaled and squared; Higham,
 /// SIAM J. Matrix Anal. Appl. 26, 1179 (2005)). |error| < 1e-11 where the product of every rate and the duration is below 300.
 Populations after_square_pulse(const Rates& rates, double duration_s, double start_excited = 0);
+
+/// Excited fractions after square pulses on an atom that starts in g, of the durations first_s + k step_s (0 for a negative one),
+/// k = 0, 1, ...: the exponentials of both durations, then one product a pulse, whose roundings add up. step_s >= 0; where first_s
+/// is negative, only one duration may be asked for.
+void after_square_pulses(const Rates& rates, double first_s, double step_s, std::span<double> excited);
 
 /// Relative amplitude of a pulse at the time since its start, in s.
 using Envelope = std::function<double(double)>;

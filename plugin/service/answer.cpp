@@ -60,6 +60,16 @@ void add_light(const config::Drive* drive, const wire::Estimate& rabi_hz, wire::
   for (const char* name : {"intensity_w_m2", "field_v_m", "saturation"}) out.emplace_back(name, none(why));
 }
 
+/// What the chosen dynamics add.
+void add_breadth(const infer::Fit& fit, std::vector<std::pair<std::string, wire::Estimate>>& out) {
+  using infer::Dynamics;
+  if (fit.chosen == Dynamics::spread) out.emplace_back("rabi_spread", estimate(fit.breadth));
+  if (fit.chosen == Dynamics::doppler) out.emplace_back("detuning_spread_hz", estimate(fit.breadth, kTwoPi));
+  if (fit.chosen == Dynamics::cloud) out.emplace_back("cloud_ratio", estimate(fit.breadth));
+  if (fit.chosen == Dynamics::thermal) out.emplace_back("mean_phonons", estimate(fit.breadth));
+  if (std::isfinite(fit.drift.value)) out.emplace_back("rabi_drift", estimate(fit.drift));
+}
+
 void add_estimates(const Answer& answer, wire::Fitted& fitted) {
   const auto& fit = answer.fit;
   auto& out = fitted.estimates;
@@ -72,7 +82,7 @@ void add_estimates(const Answer& answer, wire::Fitted& fitted) {
   const wire::Estimate rabi_hz = fit.axis == infer::Axis::amplitude ? none("the amplitude was stepped; see rabi_per_amplitude_hz")
                                                                     : estimate(fit.rabi, kTwoPi);
   out.emplace_back("rabi_hz", rabi_hz);
-  out.emplace_back("rabi_mean_hz", rabi_hz);  // every shot of the dynamics compared here has the same coupling
+  out.emplace_back("rabi_mean_hz", fit.axis == infer::Axis::amplitude ? rabi_hz : estimate(fit.rabi_mean, kTwoPi));
   if (fit.axis == infer::Axis::amplitude) {
     out.emplace_back("rabi_per_amplitude_hz", estimate(fit.rabi_per_amplitude, kTwoPi));
     out.emplace_back("compression", estimate(fit.compression));
@@ -85,6 +95,7 @@ void add_estimates(const Answer& answer, wire::Fitted& fitted) {
   out.emplace_back("contrast", estimate(fit.contrast));
   out.emplace_back("floor", estimate(fit.floor));
   out.emplace_back("dead_time_s", estimate(fit.dead_time_s));
+  add_breadth(fit, out);
   add_light(answer.drive, rabi_hz, fitted);
 }
 
@@ -171,9 +182,9 @@ recalibrate::FitEvent fit_event(const log::Event& row) {
     const bool gain = row.axis == "amplitude";
     if (gain) event.quantity = recalibrate::Quantity::gain;
     if (gain) event.drive_amplitude = recalibrate::kAbsent;
-    const double rabi_hz = gain ? row.rabi_per_amplitude_hz : row.rabi_hz;
+    const double rabi_hz = gain ? row.rabi_per_amplitude_hz : row.rabi_mean_hz;
     event.value = std::log(kTwoPi * rabi_hz);
-    event.sigma = (gain ? row.rabi_per_amplitude_sigma_hz : row.rabi_sigma_hz) / rabi_hz;
+    event.sigma = (gain ? row.rabi_per_amplitude_sigma_hz : row.rabi_mean_sigma_hz) / rabi_hz;
     event.noise_floor = recalibrate::kRabiNoise;
     event.dead_time_s = row.dead_time_s;
     event.dead_time_sigma_s = row.dead_time_sigma_s;
@@ -233,6 +244,8 @@ log::Event event_from(const Answer& answer, const wire::Fitted& fitted) {
   event.rabi_sigma_hz = fit.rabi.sigma / kTwoPi;
   event.rabi_low_hz = fit.rabi.low / kTwoPi;
   event.rabi_high_hz = fit.rabi.high / kTwoPi;
+  event.rabi_mean_hz = fit.rabi_mean.value / kTwoPi;
+  event.rabi_mean_sigma_hz = fit.rabi_mean.sigma / kTwoPi;
   event.generalised_hz = fit.generalised.value / kTwoPi;
   event.generalised_sigma_hz = fit.generalised.sigma / kTwoPi;
   event.line_offset_hz = fit.line_offset.value / kTwoPi;

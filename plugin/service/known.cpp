@@ -1,6 +1,7 @@
 // SPDX-License-Identifier: Apache-2.0
 #include "plugin/service/known.hpp"
 
+#include <algorithm>
 #include <cmath>
 
 #include "model/quantity/constants.hpp"
@@ -11,6 +12,7 @@ namespace halfturn::service {
 namespace {
 
 using constants::kTwoPi;
+using infer::Dynamics;
 
 infer::Readout::Kind readout_of(wire::ReadoutKind kind) {
   switch (kind) {
@@ -87,12 +89,46 @@ void assume_of_amplitudes(const config::Drive* drive, const wire::Scan& scan, st
       assumed.push_back("shape: the pulses of the scan were square, of the peak amplitude given; `" + pulse.name + "` is shaped");
 }
 
+/// For a line: what the pulses in force say of the Rabi frequency, which decides among modes alone. Nothing at another amplitude than
+/// theirs; one that is stated stands against the tracked one, or against 1.
+std::optional<double> rough_log_rabi(const config::Drive& drive, const recalibrate::State& state, const wire::Scan& scan) {
+  if (scan.axis_kind != wire::AxisKind::detuning || drive.pulses.empty()) return std::nullopt;
+  const double tracked = std::isfinite(state.drive_amplitude) ? state.drive_amplitude : 1.0;
+  if (!recalibrate::same_amplitude(tracked, scan.drive_amplitude.value_or(tracked))) return std::nullopt;
+  double sum = 0.0;
+  int told = 0;
+  for (const auto& pulse : drive.pulses) {
+    if (pulse.adjust == recalibrate::Adjust::amplitude) continue;  // right at its own amplitude, not at the scan's
+    ++told;
+    const auto in_force = state.in_force_s.find(pulse.name);
+    const double length = in_force == state.in_force_s.end() ? pulse.length_s : in_force->second;
+    if (!(length > 0.0)) return std::nullopt;
+    sum += std::log(pulse.angle_rad / (pulse.area_factor * length));
+  }
+  return told > 0 ? std::optional(sum / told) : std::nullopt;
+}
+
 infer::DynamicsSet candidates_of(const config::Drive* drive, const wire::Options& options) {
-  if (options.dynamics.empty()) return drive != nullptr && drive->dynamics ? *drive->dynamics : infer::DynamicsSet{};
   auto set = infer::DynamicsSet::none();
   for (const auto& name : options.dynamics)
     if (const auto dynamics = infer::dynamics_named(name)) set.add(*dynamics);
+  if (!set.empty()) return set;
+  if (drive != nullptr && drive->dynamics) return *drive->dynamics;
+  set = infer::DynamicsSet{};
+  if (drive == nullptr || drive->motion.empty()) set.remove(Dynamics::thermal);
+  // On a sideband every coupling depends on the motion: only a thermal state says what the bare one is.
+  const auto sideband = [](const dynamics::Mode& mode) { return mode.sideband != 0; };
+  if (drive != nullptr && std::any_of(drive->motion.begin(), drive->motion.end(), sideband)) {
+    set = infer::DynamicsSet::none();
+    set.add(Dynamics::thermal);
+  }
   return set;
+}
+
+std::string all_dynamics() {
+  std::string all;
+  for (const auto name : infer::kDynamicsNames) all += (all.empty() ? "" : ", ") + std::string(name);
+  return all;
 }
 
 }  // namespace
@@ -107,6 +143,7 @@ ModelScan model_scan(const wire::Scan& scan) {
   model.batch.readout = readout_of(scan.readout_kind);
   model.batch.observed = scan.observed.front();
   model.batch.weight = scan.weight.front();
+  if (!scan.at_s.empty()) model.batch.at_s = scan.at_s;
   model.batch.pulse_length_s = scan.pulse_s.value_or(0.0);
   if (scan.references)
     model.batch.references =
@@ -125,8 +162,11 @@ infer::Prior prior_for(const config::Drive* drive, const recalibrate::State& sta
     if (!of_amplitudes) prior.expect = drive->expect;
     prior.start.impurity = drive->impurity;
     prior.start.lost_reads = drive->lost_reads;
+    prior.motion = drive->motion;
+    prior.follows_intensity = drive->transition && drive->transition->multipole == atom::Multipole::two_photon;
     if (drive->transition) add_lifetime(*drive->transition, prior);
     add_readout(*drive, scan, prior, assumed);
+    prior.rough_log_rabi = rough_log_rabi(*drive, state, scan);
   }
   if (drive != nullptr && drive->dead_time) prior.dead_time = *drive->dead_time;
   else assumed.push_back("switching: a dead time of 0 +- 100 ns");
@@ -147,6 +187,7 @@ infer::FitOptions fit_options(const config::Drive* drive, const wire::Options& o
   if (options.level) fit.level = *options.level;
   if (drive == nullptr) return fit;
   fit.rival_margin = drive->accept.rival_margin;
+  fit.least_evidence = drive->accept.min_evidence;
   for (const auto& pulse : drive->pulses)
     fit.pulses.push_back({pulse.angle_rad, pulse.area_factor, pulse.adjust == recalibrate::Adjust::amplitude ? pulse.length_s : 0.0});
   return fit;
@@ -173,9 +214,12 @@ Result<void> check_scan(const wire::Request& request, const config::Configuratio
     return fault("not_available", "scan.sites", "scans of many sites are not available in this version; send one scan a site");
   for (std::size_t i = 0; i < request.options.dynamics.size(); ++i) {
     const auto& name = request.options.dynamics[i];
-    if (infer::dynamics_named(name)) continue;
-    return fault("bad_value", "options.dynamics[" + std::to_string(i) + "]",
-                 "found `" + name + "`, expected one of undamped, dephasing, decay, leak");
+    const std::string where = "options.dynamics[" + std::to_string(i) + "]";
+    const auto dynamics = infer::dynamics_named(name);
+    if (!dynamics) return fault("bad_value", where, "found `" + name + "`, expected one of " + all_dynamics());
+    const auto drive = configuration.drives.find(scan.drive);
+    if (*dynamics == Dynamics::thermal && (drive == configuration.drives.end() || drive->second.motion.empty()))
+      return fault("bad_value", where, "found `thermal`, which needs the drive's `motion` in the configuration, such as {lamb_dicke: 0.08}");
   }
   if (request.options.store && configuration.drives.count(scan.drive) == 0) {
     std::string known;

@@ -69,4 +69,22 @@ void full_answer(benchmark::State& state) {
 }
 BENCHMARK(full_answer)->Arg(0)->Arg(1)->Unit(benchmark::kMicrosecond);
 
+/// A 41-point line of a pi pulse, 100 shots a point, in a window of two and a half widths to either side.
+void full_line(benchmark::State& state) {
+  std::mt19937_64 random(1);
+  Truth truth;
+  truth.rabi = kTwoPi * 50e3;
+  Sample sample;
+  take_line(sample, truth, kTwoPi * 10e3, 10e-6, even(-kTwoPi * 200e3, kTwoPi * 200e3, 41), 100, random);
+  Prior prior;
+  prior.dead_time = {0.0, 20e-9};
+  FitWorkspace work;
+  Fit fit;
+  for (auto _ : state) {
+    infer::fit(sample.batch, {&prior, 1}, {}, {&fit, 1}, work);
+    benchmark::DoNotOptimize(fit.line_offset.value);
+  }
+}
+BENCHMARK(full_line)->Unit(benchmark::kMicrosecond);
+
 }  // namespace

@@ -1,12 +1,8 @@
 // SPDX-License-Identifier: Apache-2.0
 #include "tests/campaign/answer.hpp"
 
-#include <algorithm>
-#include <cmath>
 #include <stdexcept>
 
-#include "model/infer/fit.hpp"
-#include "model/infer/scan_objective.hpp"
 #include "plugin/log/memory_log.hpp"
 #include "plugin/service/known.hpp"
 #include "plugin/service/service.hpp"
@@ -14,115 +10,61 @@
 namespace halfturn::campaign {
 namespace {
 
+constexpr double kOneSigma = 0.6826894921370859;
+
 struct StandingClock final : service::Clock {
   wire::Time time = 0;
   wire::Time now() const override { return time; }
 };
 
-wire::Fitted through_service(const Case& of, const wire::Options& options) {
+/// What Service::fit does, with intervals at a second level besides: one search serves both.
+void fit_at_both_levels(service::Task& task) {
+  const auto* drive = task.configured();
+  task.assumed.clear();
+  task.prior = service::prior_for(drive, task.known, task.scan(), task.request.options, task.taken_at, task.assumed);
+  const service::ModelScan scan = service::model_scan(task.scan());
+  auto options = service::fit_options(drive, task.request.options);
+  options.second_level = kOneSigma;
+  thread_local infer::FitWorkspace workspace;
+  task.fit.emplace();
+  infer::fit(scan.batch, {&task.prior, 1}, options, {&*task.fit, 1}, workspace);
+}
+
+wire::Request request_for(const wire::Scan& scan, std::size_t number, bool store) {
+  wire::Request request;
+  request.kind = wire::Kind::fit;
+  request.id = request.digest = std::to_string(number);
+  request.scans = {scan};
+  request.options.store = store;
+  request.options.overlay_points = 0;
+  return request;
+}
+
+}  // namespace
+
+Answered answer(const Case& of) {
   auto configuration = std::make_shared<config::Configuration>();
   configuration->drives[of.drive.name] = of.drive;
   log::MemoryLog log;
   StandingClock clock;
   service::Service service(configuration, log, clock, "campaign");
-  std::vector<wire::Scan> scans = of.before;
-  scans.push_back(of.scan);
-  wire::Fitted last;
-  for (std::size_t i = 0; i < scans.size(); ++i) {
-    wire::Request request;
-    request.kind = wire::Kind::fit;
-    request.id = request.digest = std::to_string(i);
-    request.scans = {scans[i]};
-    request.options = options;
-    clock.time = scans[i].taken_at.value_or(0);
-    auto accepted = service.accept(std::move(request), true);
+  const bool stored = !of.before.empty();
+  Answered last;
+  for (std::size_t i = 0; i <= of.before.size(); ++i) {
+    const bool asked = i == of.before.size();
+    const auto& scan = asked ? of.scan : of.before[i];
+    clock.time = scan.taken_at.value_or(0);
+    auto accepted = service.accept(request_for(scan, i, stored), true);
     auto* task = std::get_if<service::Task>(&accepted);
     if (task == nullptr) throw std::logic_error("campaign: the service did not accept a simulated scan");
-    service::Service::fit(*task);
+    if (asked) fit_at_both_levels(*task);
+    else service::Service::fit(*task);
     const auto settled = service.settle({task, 1});
     const auto* fitted = settled.front().reply ? std::get_if<wire::Fitted>(&*settled.front().reply) : nullptr;
     if (fitted == nullptr) throw std::logic_error("campaign: the service did not answer a simulated scan");
-    last = *fitted;
+    if (asked) last = {*fitted, std::move(*task->fit)};
   }
   return last;
-}
-
-struct Refit {
-  service::ModelScan scan;
-  infer::Fit fit;
-};
-
-/// The fit of the case's scan; a reply does not carry all of it.
-Refit refit(const Case& of) {
-  Refit again;
-  std::vector<std::string> assumed;
-  const auto prior = service::prior_for(&of.drive, {}, of.scan, {}, 0, assumed);
-  again.scan = service::model_scan(of.scan);
-  infer::FitWorkspace workspace;
-  infer::fit(again.scan.batch, {&prior, 1}, service::fit_options(&of.drive, {}), {&again.fit, 1}, workspace);
-  return again;
-}
-
-/// Starting points near which the least deviance with a quantity held is looked for.
-std::vector<infer::Physical> starts(const Case& of, const infer::Physical& fitted) {
-  const auto& t = of.truth;
-  infer::Physical truth = fitted;
-  truth.generalised = t.line ? t.rabi : t.generalised();
-  truth.line_offset = t.line ? t.detuning : 0;
-  truth.detuning_square = t.line ? 0 : t.detuning * t.detuning;
-  truth.dead_time = t.dead_time;
-  truth.signal_ground = std::clamp(t.ground, 0.005, 0.995);
-  truth.signal_excited = std::clamp(t.excited, 0.005, 0.995);
-  infer::Physical mixed = fitted;
-  mixed.dead_time = t.dead_time;
-  return {fitted, truth, mixed};
-}
-
-}  // namespace
-
-wire::Fitted answer(const Case& of, double level, const std::string& dynamics) {
-  wire::Options options;
-  options.level = level;
-  options.overlay_points = 0;
-  if (!dynamics.empty()) options.dynamics = {dynamics};
-  return of.before.empty() ? service::fit_alone(of.scan, &of.drive, options) : through_service(of, options);
-}
-
-double held_against(const Case& of, std::size_t pulse, double value) {
-  const Refit again = refit(of);
-  const auto& fit = again.fit;
-  if (fit.outcome != infer::FitOutcome::fitted) return std::nan("");
-  infer::Prior prior = fit.prior;
-  if (of.misstated) prior.dead_time.sigma = std::abs(of.truth.dead_time - prior.dead_time.mean);
-  infer::ObjectiveWorkspace work;
-  work.reserve(of.scan.axis.size());
-  infer::Lead lead;
-  if (!of.truth.line) lead = {infer::Lead::Kind::pulse_length, of.drive.pulses[pulse].angle_rad, of.drive.pulses[pulse].area_factor};
-  const auto readout = again.scan.batch.site(0);
-  double held = INFINITY, free = INFINITY;
-  for (int candidate = 0; candidate < 4; ++candidate) {
-    for (auto start : starts(of, fit.physical)) {
-      const auto dynamics = static_cast<infer::Dynamics>(candidate);
-      if (dynamics != fit.chosen || !(start.damping > 0)) start.damping = dynamics == infer::Dynamics::undamped ? 0 : 0.02 * start.generalised;
-      const infer::ScanObjective objective(again.scan.batch, readout, prior, dynamics, lead, start.contrast() < 0, work);
-      auto bounds = objective.bounds();
-      auto x = objective.pack(start);
-      const auto unbound = infer::minimise(objective, x, bounds);
-      if (std::isfinite(unbound.value)) free = std::min(free, unbound.value);
-      const int slot = of.truth.line ? objective.layout().line_offset : objective.layout().lead;
-      x[slot] = bounds.lower[slot] = bounds.upper[slot] = value;
-      const auto bound = infer::minimise(objective, x, bounds);
-      if (std::isfinite(bound.value)) held = std::min(held, bound.value);
-    }
-  }
-  return 2 * (held - free) / fit.quality.scatter;
-}
-
-double left_by_one_line(const Case& of) {
-  Case noiseless = of;
-  for (std::size_t i = 0; i < of.expected.size(); ++i) noiseless.scan.observed[0][i] = of.expected[i] * of.scan.weight[0][i];
-  const auto fit = refit(noiseless).fit;
-  return fit.outcome == infer::FitOutcome::fitted ? fit.quality.deviance : INFINITY;
 }
 
 }  // namespace halfturn::campaign

@@ -15,8 +15,6 @@ namespace {
 using Eigen::MatrixXd;
 using Eigen::VectorXd;
 
-constexpr int kSlices = 32;  // of an ensemble: derivatives to a percent
-
 /// A parameter of the true model that the data have to tell.
 struct Parameter {
   std::function<double&(Apparatus&)> of;
@@ -69,9 +67,9 @@ MatrixXd signal_derivatives(const Case& c, std::span<const double> axis, const s
     const auto& parameter = parameters[static_cast<std::size_t>(k)];
     Apparatus moved = c.truth;
     parameter.of(moved) += parameter.step;
-    mean_population(moved, axis, kSlices, above);
+    mean_population(moved, axis, above);
     parameter.of(moved) -= 2 * parameter.step;
-    mean_population(moved, axis, kSlices, below);
+    mean_population(moved, axis, below);
     for (Eigen::Index i = 0; i < points; ++i)
       by(i, k) = contrast * (above[static_cast<std::size_t>(i)] - below[static_cast<std::size_t>(i)]) / (2 * parameter.step);
   }

@@ -12,7 +12,6 @@ namespace {
 using constants::kPi;
 using constants::kTwoPi;
 
-constexpr int kSlices = 64;           // of an ensemble, for what is expected
 constexpr double kDefaultDeadTime = 100e-9;  // the sigma that a configuration without `switching` allows for
 
 bool decided(Random& random, Stated stated) {
@@ -80,18 +79,6 @@ double drawn_counts(Random& random, double shots, double bright, double overdisp
     p = a + b > 0 ? a / (a + b) : p;
   }
   return static_cast<double>(std::binomial_distribution<int>(static_cast<int>(shots), p)(random));
-}
-
-/// Shot by shot, each with a member of its own.
-double drawn_from_ensemble(Random& random, const Apparatus& apparatus, double at, double shots) {
-  std::uniform_real_distribution<double> unit;
-  double bright = 0;
-  for (int shot = 0; shot < static_cast<int>(shots); ++shot) {
-    const auto member = rehearse::draw_member(apparatus.ensemble, random);
-    const double p = apparatus.ground + (apparatus.excited - apparatus.ground) * population(apparatus, member, at);
-    if (unit(random) < p) bright += 1;
-  }
-  return bright;
 }
 
 /// What a spoilt point reads: anything, or no light.
@@ -188,6 +175,7 @@ void finish_line(Random& random, const Plan& plan, double offset, double centre,
   std::swap(on_line, into.truth);
   add_pulses(random, into);
   std::swap(on_line, into.truth);
+  into.width = width;
   std::vector<double> axis(plan.points);
   for (std::size_t i = 0; i < plan.points; ++i) {
     const double place = 2 * static_cast<double>(i) / static_cast<double>(plan.points - 1) - 1;
@@ -205,7 +193,7 @@ void count(Random& random, const Plan& plan, Case& into) {
   std::vector<double> at = axis;
   if (into.truth.line)
     for (double& detuning : at) detuning *= kTwoPi;
-  mean_population(into.truth, at, kSlices, into.expected);
+  mean_population(into.truth, at, into.expected);
   for (double& p : into.expected) p = into.truth.ground + (into.truth.excited - into.truth.ground) * p;
   const bool dark = chance(random, 0.5);
   for (std::size_t i = 0; i < points; ++i) {
@@ -216,8 +204,8 @@ void count(Random& random, const Plan& plan, Case& into) {
       bright = then.ground + (then.excited - then.ground) * population(then, {}, at[i]);
     }
     if (plan.outliers > 0 && chance(random, plan.outliers)) bright = outlier(random, into.truth, dark);
-    into.scan.observed[0][i] = into.truth.ensemble.none() ? drawn_counts(random, plan.shots, bright, plan.overdispersion)
-                                                          : drawn_from_ensemble(random, into.truth, at[i], plan.shots);
+    // Each shot has a member of its own, so the counts of an ensemble are binomial about its mean as well.
+    into.scan.observed[0][i] = drawn_counts(random, plan.shots, bright, plan.overdispersion);
   }
 }
 

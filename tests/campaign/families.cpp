@@ -88,6 +88,7 @@ void thermal(Random& r, Case& c) {
   e.mean_phonons = log_uniform(r, 0.3, 30);
   // eta^2 (2 n + 1) below a half: the resolved regime.
   e.lamb_dicke = std::min(log_uniform(r, 0.03, 0.2), std::sqrt(0.5 / (2 * e.mean_phonons + 1)));
+  c.drive.motion = {{e.lamb_dicke, 0, 1.0}};
   finish_flop(r, plan, c);
 }
 

@@ -21,6 +21,7 @@ struct Case {
   config::Drive drive;
   std::vector<wire::Scan> before;   // scans of the drive's history, oldest first; none: fitted alone
   Apparatus truth;                  // of a drifting scan: at its middle
+  double width = 0;                 // lines: full width at half maximum, rad/s
   std::vector<double> expected;     // probability of a bright shot at each point, before outliers and scatter
   double outlier_share = 0;         // points that are none of the signal
   double overdispersion = 1;        // variance over the binomial's

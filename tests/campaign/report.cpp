@@ -10,6 +10,7 @@
 #include "plugin/wire/encode.hpp"
 #include "tests/campaign/answer.hpp"
 #include "tests/campaign/bound.hpp"
+#include "tests/campaign/undecidable.hpp"
 
 namespace halfturn::campaign {
 namespace {
@@ -40,22 +41,24 @@ Json number(double value) { return std::isfinite(value) ? Json(value) : Json(nul
 }  // namespace
 
 void print_table(std::ostream& out, const Result& result) {
-  char line[240];
-  std::snprintf(line, sizeof line, "%-21s %7s %8s %7s %6s %6s %6s %6s %6s %6s %7s %7s  %s\n", "family", "scans", "healthy", "used %", "wrong", "conv.",
+  char line[260];
+  std::snprintf(line, sizeof line, "%-21s %7s %8s %7s %6s %6s %6s %6s %6s %6s %6s %6s %7s %7s  %s\n", "family", "scans", "healthy", "used %", "decid%", "used %", "wrong", "conv.",
                 "in 68", "in 95", "u. 68", "u. 95", "rms/CR", "rabi", "refused for");
   out << line;
   for (const auto& row : result.rows) {
-    std::snprintf(line, sizeof line, "%-21s %7lld %8lld %7s %6lld %6lld %6s %6s %6s %6s %7s %7s  ", row.family.c_str(), static_cast<long long>(row.scans),
+    std::snprintf(line, sizeof line, "%-21s %7lld %8lld %7s %6s %6s %6lld %6lld %6s %6s %6s %6s %7s %7s  ", row.family.c_str(), static_cast<long long>(row.scans),
                   static_cast<long long>(row.healthy), figure(100 * share(row.healthy_used, row.healthy), "%.1f").c_str(),
-                  static_cast<long long>(row.wrong), static_cast<long long>(row.converged), figure(share(row.in_68, row.converged), "%.3f").c_str(),
+                  figure(100 * share(row.decidable, row.examined), "%.1f").c_str(),
+                  figure(100 * share(row.decidable_used, row.decidable), "%.1f").c_str(), static_cast<long long>(row.wrong), static_cast<long long>(row.converged), figure(share(row.in_68, row.converged), "%.3f").c_str(),
                   figure(share(row.in_95, row.converged), "%.3f").c_str(),
                   figure(share(row.used_in_68, row.used_converged), "%.3f").c_str(), figure(share(row.used_in_95, row.used_converged), "%.3f").c_str(),
                   figure(row.measured > 0 ? row.rms_over_bound : NAN, "%.3f").c_str(),
                   figure(row.rabi_measured > 0 ? row.rabi_rms_over_bound : NAN, "%.3f").c_str());
     out << line << refusals_in_words(row) << '\n';
   }
-  out << result.scans << " scans, " << result.wrong << " wrong, " << figure(result.seconds, "%.1f") << " s on " << result.threads << " threads, seed "
-      << result.seed << '\n';
+  out << result.scans << " scans, " << result.wrong << " wrong, " << figure(result.seconds, "%.1f") << " s on " << result.threads << " threads, seed";
+  for (const auto seed : result.seeds) out << ' ' << seed;
+  out << '\n';
   for (const auto& wrong : result.wrong_scans)
     out << "wrong: --seed " << wrong.seed << " --family " << wrong.family << " --index " << wrong.index << "  (deviance against the truth "
         << figure(wrong.held_against, "%.1f") << ")\n";
@@ -65,7 +68,7 @@ void print_json(std::ostream& out, const Result& result) {
   Json json;
   json["scans"] = result.scans;
   json["wrong"] = result.wrong;
-  json["seed"] = result.seed;
+  json["seeds"] = result.seeds;
   json["seconds"] = result.seconds;
   json["threads"] = result.threads;
   json["families"] = Json::array();
@@ -76,6 +79,9 @@ void print_json(std::ostream& out, const Result& result) {
     one["healthy"] = row.healthy;
     one["used"] = row.used;
     one["healthy_used"] = row.healthy_used;
+    one["examined"] = row.examined;
+    one["decidable"] = row.decidable;
+    one["decidable_used"] = row.decidable_used;
     one["wrong"] = row.wrong;
     one["converged"] = row.converged;
     one["coverage_68"] = number(share(row.in_68, row.converged));
@@ -92,12 +98,14 @@ void print_json(std::ostream& out, const Result& result) {
   json["wrong_scans"] = Json::array();
   for (const auto& wrong : result.wrong_scans)
     json["wrong_scans"].push_back(Json{{"seed", wrong.seed}, {"family", wrong.family}, {"index", wrong.index}, {"held_against", number(wrong.held_against)}});
-  out << json.dump() << '\n';
+  out << json.dump() << std::endl;
 }
 
 void print_case(std::ostream& out, const Case& of, const Family& family) {
-  const auto scored = score(of, family);
+  const auto answered = answer(of);
+  const auto scored = score(of, family, answered);
   const auto at_best = bound(of);
+  const auto gap = gaps(of);
   const auto& t = of.truth;
   Json json;
   json["family"] = of.family;
@@ -109,7 +117,7 @@ void print_case(std::ostream& out, const Case& of, const Family& family) {
                        {"second_detuning_hz", t.second_detuning / constants::kTwoPi}, {"rabi_spread", t.ensemble.rabi_spread},
                        {"detuning_spread_hz", t.ensemble.detuning_spread_hz}, {"cloud_ratio", t.ensemble.cloud_ratio},
                        {"mean_phonons", t.ensemble.mean_phonons}, {"lamb_dicke", t.ensemble.lamb_dicke}};
-  if (t.line) json["truth"]["width_hz"] = line_width(t) / constants::kTwoPi;
+  if (t.line) json["truth"]["width_hz"] = of.width / constants::kTwoPi;
   else
     for (const auto& pulse : of.drive.pulses) json["truth"][pulse.name + "_s"] = best_pulse(t, pulse.angle_rad);
   if (of.drive.expect) json["expect_hz"] = {of.drive.expect->low / constants::kTwoPi, of.drive.expect->high / constants::kTwoPi};
@@ -119,12 +127,14 @@ void print_case(std::ostream& out, const Case& of, const Family& family) {
   json["bound"] = Json{{"pulse_s", at_best.pulse_s}, {"rabi_hz", number(at_best.rabi / constants::kTwoPi)},
                        {"offset_hz", number(at_best.offset / constants::kTwoPi)}, {"gain", at_best.gain}};
   json["score"] = Json{{"healthy", scored.healthy}, {"used", scored.used}, {"wrong", scored.wrong}, {"in_68", scored.in_68},
-                       {"in_95", scored.in_95}, {"off_over_bound", number(scored.off)}, {"held_against", number(scored.held_against)}};
+                       {"in_95", scored.in_95}, {"off_over_bound", number(scored.off)}, {"held_against", number(scored.held_against)},
+                       {"decidable", decidable(of, gap, bound(of).offset)}, {"gap_to_rival", number(gap.rival)}, {"gap_to_monotone", number(gap.monotone)},
+                       {"gap_to_flat", number(gap.flat)}};
   json["axis"] = of.scan.axis;
   json["counts"] = of.scan.observed.front();
   json["shots"] = of.scan.weight.front().front();
   if (of.scan.pulse_s) json["pulse_s"] = *of.scan.pulse_s;
-  json["reply"] = Json::parse(wire::encode(wire::Reply(answer(of, 0.95)), wire::Encoding::json));
+  json["reply"] = Json::parse(wire::encode(wire::Reply(answered.fitted), wire::Encoding::json));
   out << json.dump(1) << '\n';
 }
 

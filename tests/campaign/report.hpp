@@ -17,7 +17,7 @@ struct WrongScan {
 };
 
 struct Result {
-  std::uint64_t seed = 0;
+  std::vector<std::uint64_t> seeds;
   std::int64_t scans = 0, wrong = 0;
   double seconds = 0;
   int threads = 1;

@@ -7,13 +7,13 @@
 #include "model/quantity/constants.hpp"
 #include "tests/campaign/answer.hpp"
 #include "tests/campaign/bound.hpp"
+#include "tests/campaign/held.hpp"
 
 namespace halfturn::campaign {
 namespace {
 
 using constants::kTwoPi;
 
-constexpr double kOneSigma = 0.6826894921370859;
 constexpr double kOffAngle = 0.050;   // rad
 constexpr double kOffLine = 0.1;      // of the width
 constexpr double kExcluded = 25;      // deviance
@@ -48,9 +48,20 @@ Span scored_quantity(const Case& of, const wire::Fitted& fitted) {
   return {pi.exact_s, pi.low_s, pi.high_s};
 }
 
-bool healthy(const Case& of, const Family& family, const Bound& bound, double width) {
+/// The same at one sigma.
+Span narrow_quantity(const Case& of, const infer::Fit& fit) {
+  const infer::Estimate none;
+  const auto& e = of.truth.line ? fit.second.line_offset : fit.second.pulse_length_s.empty() ? none : fit.second.pulse_length_s.front();
+  return {e.value, e.low, e.high};
+}
+
+/// Whether a scan may be healthy at all; what is left to ask is how precise it can be.
+bool may_be_healthy(const Case& of, const Family& family) {
   if (of.to_be_refused || family.kind == Kind::barren || of.truth.second_weight > 0) return false;
-  if (of.aliased && of.before.empty()) return false;
+  return !of.aliased || !of.before.empty();
+}
+
+bool is_healthy(const Case& of, const Bound& bound, double width) {
   if (!(bound.gain >= kExpectedGain)) return false;
   const auto& accept = of.drive.accept;
   if (of.truth.line)
@@ -63,29 +74,40 @@ bool healthy(const Case& of, const Family& family, const Bound& bound, double wi
   return rate * span / kTwoPi >= 1 && least >= accept.min_cycles && precise;
 }
 
+/// Whose answer it is. The daemon's stands at the likelihood's maximum; of another pipeline's it is asked as well what the data hold
+/// against the answer.
+enum class Whose { ours, theirs };
+
+/// By how much the data tell an answer from the truth, deviance.
+double apart(const Case& of, const infer::Fit& fit, std::size_t pulse, double answer, double truth, Whose whose) {
+  const double against_truth = held_against(of, fit, pulse, truth);
+  return whose == Whose::ours ? against_truth : std::fmax(against_truth, held_against(of, fit, pulse, answer));
+}
+
 /// How a used answer that is off by more than is allowed fares; the worst of its pulses.
 struct Off {
-  double held_against = std::numeric_limits<double>::quiet_NaN();  // by the data against the truth, deviance
+  double held_against = std::numeric_limits<double>::quiet_NaN();  // by the data, deviance
   double in_sigmas = 0;                                            // of the answer's own
 };
-Off how_far_off(const Case& of, const wire::Fitted& fitted, double width) {
+Off how_far_off(const Case& of, const wire::Fitted& fitted, const infer::Fit& fit, Whose whose) {
   Off off;
   if (of.truth.line) {
-    const bool far = std::abs(scored_quantity(of, fitted).value - of.truth.detuning) > kOffLine * width;
-    if (far) off.held_against = held_against(of, 0, of.truth.detuning);
+    const double offset = scored_quantity(of, fitted).value;
+    const bool far = std::abs(offset - of.truth.detuning) > kOffLine * of.width;
+    if (far) off.held_against = apart(of, fit, 0, offset, of.truth.detuning, whose);
     return off;
   }
   for (std::size_t i = 0; i < fitted.pulses.size(); ++i) {
     const auto& pulse = fitted.pulses[i].second;
     const double truth = best_pulse(of.truth, pulse.angle_rad);
     if (pulse.verdict == "refuse" || !(std::abs(pulse.exact_s - truth) * of.truth.generalised() > kOffAngle)) continue;
-    off.held_against = std::fmax(off.held_against, held_against(of, i, truth));
+    off.held_against = std::fmax(off.held_against, apart(of, fit, i, pulse.exact_s, truth, whose));
     off.in_sigmas = std::max(off.in_sigmas, std::abs(pulse.exact_s - truth) / pulse.sigma_s);
   }
   return off;
 }
 
-void judge_use(const Case& of, const wire::Fitted& fitted, double width, Scored& scored) {
+void judge_use(const Case& of, const wire::Fitted& fitted, const infer::Fit& fit, Whose whose, Scored& scored) {
   if (of.to_be_refused) {
     scored.wrong = true;
     return;
@@ -95,7 +117,7 @@ void judge_use(const Case& of, const wire::Fitted& fitted, double width, Scored&
     scored.wrong = scored.held_against >= kSeenTwice;
     return;
   }
-  const Off off = how_far_off(of, fitted, width);
+  const Off off = how_far_off(of, fitted, fit, whose);
   scored.held_against = off.held_against;
   scored.wrong = off.held_against > kExcluded || (of.aliased && off.in_sigmas > kSigmas);
 }
@@ -108,37 +130,49 @@ bool tells_bare(const Case& of) {
 }
 
 /// Where it does not, no bound on the bare frequency is to be had from the derivatives at one point.
-double rabi_off(const Case& of, const Bound& bound) {
-  if (of.truth.line || !tells_bare(of)) return std::nan("");
-  const auto fitted = answer(of, 0.95, of.true_dynamics);
-  const auto* rabi = estimate(fitted, "rabi_hz");
-  return rabi == nullptr ? std::nan("") : (kTwoPi * rabi->value - of.truth.rabi) / bound.rabi;
+double rabi_off(const Case& of, const infer::Fit& fit, const Bound& bound) {
+  if (of.truth.line || of.true_dynamics.empty() || !tells_bare(of)) return std::nan("");
+  return (rabi_under_truth(of, fit) - of.truth.rabi) / bound.rabi;
 }
 
-}  // namespace
-
-Scored score(const Case& of, const Family& family) {
-  const double width = of.truth.line ? line_width(of.truth) : 0;
-  const Bound at_best = bound(of);
-  const auto fitted = answer(of, 0.95);
+/// Use, refusal and what is wrong of a reply. `fit` is the daemon's of the same scan.
+Scored score_use(const Case& of, const Family& family, const wire::Fitted& fitted, const infer::Fit& fit, Whose whose) {
   Scored scored;
-  scored.healthy = healthy(of, family, at_best, width);
   scored.used = fitted.verdict != "refuse";
-  if (scored.used) judge_use(of, fitted, width, scored);
+  if (scored.used) judge_use(of, fitted, fit, whose, scored);
   else if (!fitted.reasons.empty()) scored.refusal = fitted.reasons.front().code;
   for (const auto& reason : fitted.reasons)
     scored.rightly_refused = scored.rightly_refused ||
                              (!scored.used && std::find(family.refusals.begin(), family.refusals.end(), reason.code) != family.refusals.end());
+  return scored;
+}
+
+}  // namespace
+
+Scored score(const Case& of, const Family& family, const Answered& answered) {
+  const auto& [fitted, fit] = answered;
+  Scored scored = score_use(of, family, fitted, fit, Whose::ours);
+  Bound at_best;
+  if (may_be_healthy(of, family)) {
+    at_best = bound(of);
+    scored.healthy = is_healthy(of, at_best, of.width);
+  }
   if (family.kind == Kind::barren) return scored;
 
-  const auto wide = scored_quantity(of, fitted), narrow = scored_quantity(of, answer(of, kOneSigma));
+  const auto wide = scored_quantity(of, fitted), narrow = narrow_quantity(of, fit);
   const double truth = of.truth.line ? of.truth.detuning : best_pulse(of.truth, constants::kPi);
   scored.converged = wide.exists() && narrow.exists();
   scored.in_95 = scored.converged && wide.holds(truth);
   scored.in_68 = scored.converged && narrow.holds(truth);
   if (!scored.healthy || !scored.used) return scored;
   scored.off = (wide.value - truth) / (of.truth.line ? at_best.offset : at_best.pulse_s.front());
-  if (!of.true_dynamics.empty()) scored.rabi_off = rabi_off(of, at_best);
+  scored.rabi_off = rabi_off(of, fit, at_best);
+  return scored;
+}
+
+Scored score_other(const Case& of, const Family& family, const wire::Fitted& theirs, const infer::Fit& ours) {
+  Scored scored = score_use(of, family, theirs, ours, Whose::theirs);
+  scored.healthy = may_be_healthy(of, family) && is_healthy(of, bound(of), of.width);
   return scored;
 }
 

@@ -6,7 +6,7 @@
 #include <string>
 #include <vector>
 
-#include "tests/campaign/families.hpp"
+#include "tests/campaign/answer.hpp"
 
 /// A case against its answer, and a family's cases together.
 namespace halfturn::campaign {
@@ -32,7 +32,13 @@ struct Scored {
 /// one describes).
 /// Healthy: at least one cycle, bounds that pass the gates of angle (carrier) error and cycles with 1.5 to spare, an expected
 /// gain over a flat line of at least 60; for lines the carrier step as well.
-Scored score(const Case& of, const Family& family);
+Scored score(const Case& of, const Family& family, const Answered& answered);
+
+/// The same of another's reply to the case, of which verdict, reasons, and the first pulses or `line_offset_hz` are read; its
+/// intervals are not scored. `ours` is the daemon's fit of the same scan, by which deviances are counted. An answer that is off by
+/// as much is wrong as well where the data hold more than 25 against the answer instead of the truth: the daemon's stands at the
+/// likelihood's maximum, another's need not.
+Scored score_other(const Case& of, const Family& family, const wire::Fitted& theirs, const infer::Fit& ours);
 
 /// A row of the table.
 struct Row {
@@ -41,6 +47,7 @@ struct Row {
   std::int64_t used_converged = 0, used_in_68 = 0, used_in_95 = 0;  // of those used
   std::int64_t measured = 0, rabi_measured = 0;  // scans behind the next two
   double rms_over_bound = 0, rabi_rms_over_bound = 0;
+  std::int64_t examined = 0, decidable = 0, decidable_used = 0;  // healthy scans asked whether they are decidable; see run.hpp
   std::map<std::string, std::int64_t> refusals;
 };
 Row gather(const Family& family, std::span<const Scored> scans);

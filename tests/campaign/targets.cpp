@@ -11,7 +11,7 @@ namespace halfturn::campaign {
 namespace {
 
 constexpr double kChance = 1e-6;
-constexpr double kWrong = 3e-6, kUsed = 0.98, kRefused = 0.999, kEfficiency = 1.05, kMisfitCoverage = 0.85;
+constexpr double kWrong = 3e-6, kRefused = 0.999, kEfficiency = 1.05, kMisfitCoverage = 0.85;
 
 double log_binomial(std::int64_t k, std::int64_t n, double p) {
   const auto a = static_cast<double>(k), b = static_cast<double>(n);
@@ -77,7 +77,9 @@ void check_row(const Row& row, const Family& family, std::vector<std::string>& f
     check.no_less("the share refused with the right reason", Figure::refused, row.rightly_refused, row.scans, kRefused);
     return;
   }
-  check.no_less("the share of healthy scans used", Figure::used, row.healthy_used, row.healthy, kUsed);
+  // Where fewer are used, those count whose data can decide.
+  if (row.examined == 0) check.no_less("the share of healthy scans used", Figure::used, row.healthy_used, row.healthy, kUsed);
+  else check.no_less("the share of decidable healthy scans used", Figure::used, row.decidable_used, row.decidable, kUsed);
   if (family.kind == Kind::misfit) {
     check.no_less("the coverage of 95 % intervals of used scans", Figure::low_95, row.used_in_95, row.used_converged, kMisfitCoverage);
     return;

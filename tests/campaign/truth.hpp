@@ -32,9 +32,8 @@ struct Apparatus {
 /// Excited fraction of one member at a place on the axis (s, or rad/s from the carrier).
 double population(const Apparatus& apparatus, const rehearse::Member& member, double at);
 
-/// Excited fraction averaged over the ensemble's members, which are taken at the middle of equally probable slices (thermal
-/// states: every phonon number to 1 - 1e-6 of the weight). `slices` of each spread.
-void mean_population(const Apparatus& apparatus, std::span<const double> axis, int slices, std::vector<double>& population);
+/// Excited fraction averaged over the ensemble, to 1e-6 (members.hpp).
+void mean_population(const Apparatus& apparatus, std::span<const double> axis, std::vector<double>& population);
 
 /// The commanded length of the pulse that turns by `angle_rad` best: the maximiser of the ensemble mean of
 /// cos(x W (t - dead time) - angle), W the generalised frequency of a member with x = 1, x its coupling over the peak one.

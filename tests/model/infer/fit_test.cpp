@@ -314,9 +314,9 @@ TEST_CASE("gradients of the objective agree with differences, all dynamics by al
   workspace.reserve(24);
   for (const auto kind : {Readout::Kind::binomial, Readout::Kind::gaussian, Readout::Kind::poisson})
     for (const auto axis : {Axis::duration, Axis::detuning})
-      for (const auto dynamics : {Dynamics::undamped, Dynamics::dephasing, Dynamics::decay, Dynamics::leak})
-        for (const auto lead : {Lead::Kind::generalised, Lead::Kind::bare, Lead::Kind::pulse_length}) {
-          if (axis == Axis::detuning && lead != Lead::Kind::generalised) continue;
+      for (const auto dynamics : kAllDynamics)
+        for (const auto lead : {Lead::Kind::generalised, Lead::Kind::bare, Lead::Kind::mean, Lead::Kind::pulse_length}) {
+          if (axis == Axis::detuning && lead != Lead::Kind::generalised && lead != Lead::Kind::mean) continue;
           std::vector<double> observed, weight;
           for (int i = 0; i < 24; ++i) {
             observed.push_back(kind == Readout::Kind::gaussian ? 0.3 + 0.01 * i : 20.0 + 2.0 * i);
@@ -337,6 +337,10 @@ TEST_CASE("gradients of the objective agree with differences, all dynamics by al
           prior.floor = Known{0.1, 0.05};
           prior.log_rabi = Known{std::log(kTwoPi * 120e3), 0.1};
           prior.decay = 2e4;
+          prior.motion = {{0.2, 0, 1.0}};
+          prior.drift = Known{0.0, 0.05};
+          const std::vector<double> progress = even(-0.5, 0.5, 24);
+          scan.progress = progress;
           const Readout readout = scan.site(0);
           const ScanObjective objective(scan, readout, prior, dynamics, {lead, kPi, 1.0}, false, workspace);
           Physical at;
@@ -347,6 +351,9 @@ TEST_CASE("gradients of the objective agree with differences, all dynamics by al
           at.signal_ground = 0.12;
           at.signal_excited = 0.91;
           at.damping = 3e4;
+          at.dephasing = 2e4;
+          at.drift = 0.02;
+          at.breadth = dynamics == Dynamics::thermal ? 3.0 : std::pow(dynamics == Dynamics::doppler ? kTwoPi * 25e3 : 0.15, 2);
           const Vector x = objective.pack(at);
           double value = 0.0;
           Vector gradient;

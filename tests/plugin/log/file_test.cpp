@@ -55,7 +55,7 @@ TEST_CASE("an empty file becomes a log of the newest version, in WAL mode, whole
   SECTION("an empty file") { std::ofstream(path).flush(); }
   log::open(path, Access::read_write).value();
   CHECK(raw(path, "PRAGMA application_id") == std::to_string(0x48666c6e));
-  CHECK(raw(path, "PRAGMA user_version") == "2");
+  CHECK(raw(path, "PRAGMA user_version") == "3");
   CHECK(raw(path, "PRAGMA journal_mode") == "wal");
   CHECK(raw(path, "PRAGMA integrity_check") == "ok");
   CHECK(raw(path, "PRAGMA foreign_key_check") == "");
@@ -101,7 +101,7 @@ TEST_CASE("a log of version 1 is brought up to date and keeps its rows") {
                    "INSERT INTO pulse VALUES (2, 'flip', 4e-6)");
   CHECK_THAT(refusal(path, Access::read_only), Contains("older version 1"));
   auto file = log::open(path, Access::read_write).value();
-  CHECK(raw(path, "PRAGMA user_version") == "2");
+  CHECK(raw(path, "PRAGMA user_version") == "3");
   Event later;
   later.drive = "red";
   later.kind = "applied";
@@ -116,6 +116,7 @@ TEST_CASE("a log of version 1 is brought up to date and keeps its rows") {
   CHECK(events[0].rabi_hz == 125340.0);
   CHECK(std::isnan(events[0].rabi_per_amplitude_hz));
   CHECK(events[0].drive_amplitude == 0.5);
+  CHECK(events[0].rabi_mean_hz == 125340.0);
   CHECK(events[1].pulses_s == std::map<std::string, double>{{"flip", 4e-6}});
   CHECK(events[1].amplitudes.empty());
   CHECK(events[2].pulses_s.empty());

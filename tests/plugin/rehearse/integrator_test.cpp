@@ -4,6 +4,7 @@
 #include <algorithm>
 #include <array>
 #include <cmath>
+#include <vector>
 #include <complex>
 
 #include "model/quantity/constants.hpp"
@@ -85,6 +86,16 @@ TEST_CASE("Without a drive, populations only decay, into g and out of the pair b
   const Populations impure = after_square_pulse({0, 0, 0, 0, 0}, 2, 0.03);
   CHECK(impure.excited == Approx(0.03).margin(1e-15));
   CHECK(after_square_pulse({3, 1, 1, 1, 1}, -1).ground == 1.0);
+}
+
+TEST_CASE("Pulses in even steps end where single ones do") {
+  const Rates rates{4.1, -1.7, 0.6, 0.4, 0.25};
+  std::vector<double> excited(200), one(1);
+  after_square_pulses(rates, 0.07, 0.03, excited);
+  for (std::size_t i = 0; i < excited.size(); ++i)
+    CHECK(excited[i] == Approx(stepped(rates, 0.07 + 0.03 * static_cast<double>(i))).margin(1e-9));
+  after_square_pulses(rates, -0.5, 0, one);
+  CHECK(one[0] == 0.0);
 }
 
 TEST_CASE("The two ways of integrating agree with every rate at work, from either level") {

@@ -1,0 +1,31 @@
+// SPDX-License-Identifier: Apache-2.0
+#include "model/infer/shown.hpp"
+
+#include <cmath>
+
+namespace halfturn::infer {
+namespace {
+
+constexpr std::string_view kNoLine = "the scan does not show a line, so this value follows the noise";
+constexpr std::string_view kNoOscillation = "the scan does not show an oscillation, so this value follows the noise";
+
+void withhold(Estimate& estimate, std::string_view why) {
+  if (!std::isfinite(estimate.value)) return;
+  estimate.sigma = estimate.low = estimate.high = kUnknown;
+  estimate.why = why;
+}
+
+}  // namespace
+
+void withhold_unshown(const FitOptions& options, Fit& fit) {
+  if (fit.quality.over_flat >= options.least_evidence) return;
+  const std::string_view why = fit.axis == Axis::detuning ? kNoLine : kNoOscillation;
+  for (Estimate* estimate : {&fit.rabi, &fit.rabi_mean, &fit.generalised, &fit.line_offset, &fit.contrast, &fit.breadth, &fit.drift, &fit.second.line_offset}) withhold(*estimate, why);
+  for (Estimate* estimate : {&fit.decay_s, &fit.dephasing_s, &fit.loss_s, &fit.envelope_s}) withhold(*estimate, why);
+  for (Estimate* estimate : {&fit.rabi_per_amplitude, &fit.compression}) withhold(*estimate, why);
+  for (Estimate& length : fit.pulse_length_s) withhold(length, why);
+  for (Estimate& amplitude : fit.pulse_amplitude) withhold(amplitude, why);
+  for (Estimate& length : fit.second.pulse_length_s) withhold(length, why);
+}
+
+}  // namespace halfturn::infer

@@ -1,0 +1,50 @@
+// SPDX-License-Identifier: Apache-2.0
+#include "tests/campaign/undecidable.hpp"
+
+#include <algorithm>
+#include <cmath>
+
+#include "model/quantity/constants.hpp"
+#include "tests/campaign/answer.hpp"
+#include "tests/campaign/held.hpp"
+
+namespace halfturn::campaign {
+namespace {
+
+constexpr double kSpread = 2;  // standard deviations
+
+bool inside(const Case& of, double spare) {
+  const auto [first, last] = std::minmax_element(of.scan.axis.begin(), of.scan.axis.end());
+  return constants::kTwoPi * *first + spare <= of.truth.detuning && of.truth.detuning <= constants::kTwoPi * *last - spare;
+}
+
+}  // namespace
+
+Gaps gaps(const Case& of) {
+  const Case clean = noiseless(of);
+  const double share = (1 - of.outlier_share) / of.overdispersion;
+  if (!of.before.empty()) {
+    const auto fitted = answer(clean).fitted;
+    const auto& rival = fitted.quality.rival;
+    return {rival ? share * rival->deviance_above : std::numeric_limits<double>::infinity(), std::nan(""), std::nan("")};
+  }
+  const auto fit = fit_of(clean);
+  if (fit.outcome != infer::FitOutcome::fitted) return {std::nan(""), std::nan(""), std::nan("")};
+  const auto& quality = fit.quality;
+  const double rival = quality.rival ? quality.rival->deviance_above : std::numeric_limits<double>::infinity();
+  return {share * rival * quality.scatter, share * quality.over_monotone * quality.scatter, share * quality.over_flat * quality.scatter};
+}
+
+double gap_for(double threshold) {
+  const double root = kSpread + std::sqrt(kSpread * kSpread + threshold);  // of g - 2 kSpread sqrt(g) = threshold
+  return root * root;
+}
+
+bool decidable(const Case& of, const Gaps& gaps) {
+  const auto& accept = of.drive.accept;
+  if (std::isnan(gaps.rival) || gaps.rival < gap_for(accept.rival_margin)) return false;
+  if (!of.before.empty()) return true;
+  return gaps.monotone >= gap_for(accept.min_evidence) && gaps.flat >= gap_for(accept.min_evidence);
+}
+
+}  // namespace halfturn::campaign
