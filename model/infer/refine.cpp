@@ -39,7 +39,7 @@ bool others_asked_for(const Prior& prior) {
 /// A fit that leaves its start by more than this many resolution elements has jumped to a mode that has, or does not deserve,
 /// a start of its own (fit_test, "every phase and frequency": a flop of 0.9 cycles ran to twice the sampling limit).
 bool strayed(const Problem& problem, double start, double end) {
-  return problem.scan.kind == Axis::duration && std::abs(end - start) > kTwoPi * 1.5 / problem.sampling.span;
+  return problem.scan.kind != Axis::detuning && std::abs(end - start) > kTwoPi * 1.5 / problem.sampling.span;
 }
 
 std::optional<Solution> refine(const Problem& problem, Dynamics candidate, const Physical& start, FitWorkspace& work,
