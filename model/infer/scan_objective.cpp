@@ -13,6 +13,8 @@ constexpr double kLeastCoupling = 0.03;
 // An ensemble's flop is followed no further, rad: 250 cycles. A profile of one that is hardly determined runs on for ever else, with
 // thousands of members at each step.
 constexpr double kMostPhase = 1571.0;
+// Nor a spread of the detuning beyond this many couplings, where no oscillation is left.
+constexpr double kMostDoppler = 3.0;
 
 /// Sum of products in four lanes, which makes it vector instructions without leave to reorder sums.
 double dot(const double* a, const double* b, std::size_t n) {
@@ -54,6 +56,8 @@ dynamics::Status ScanObjective::populate_ensemble(const Physical& p, std::span<c
                                                   bool derivatives) const {
   const auto of = ensemble(p);
   if (scan_.kind == Axis::duration && p.generalised * longest_of(axis) > kMostPhase) return dynamics::Status::too_many_members;
+  if (scan_.kind == Axis::duration && of.kind == dynamics::Ensemble::Kind::doppler && of.parameter > kMostDoppler * p.generalised)
+    return dynamics::Status::too_many_members;
   const std::span<double> by_parameter(work_.by_parameter.data(), derivatives ? axis.size() : 0);
   dynamics::Status status = dynamics::Status::ok;
   if (scan_.kind == Axis::duration)
