@@ -176,6 +176,8 @@ Estimate normal(const Minimum& minimum, int index, const Scale& scale) {
 template <class Slot>
 Estimate over_candidates(const Problem& problem, const ModeSolutions& mode, const Fit& fit, Lead lead, const Scale& scale, Slot slot,
                          FitWorkspace& work) {
+  // What a scan that shows nothing says is withheld in the end (shown.hpp), and not worth a profile.
+  const bool shown = fit.quality.over_flat >= problem.options.least_evidence;
   std::array<Part, kDynamicsCount> parts;
   std::size_t count = 0;
   for (std::size_t i = 0; i < mode.solutions.size(); ++i) {
@@ -187,7 +189,7 @@ Estimate over_candidates(const Problem& problem, const ModeSolutions& mode, cons
     const int index = slot(objective.layout());
     // A drive that saturates below what the pulse needs.
     if (!std::isfinite(minimum.x[index])) return {kUnknown, kUnknown, kUnknown, kUnknown, kOutOfReach};
-    parts[count++] = {fit.candidates[i].weight, i == 0 ? profiled(objective, minimum, index, scale) : normal(minimum, index, scale)};
+    parts[count++] = {fit.candidates[i].weight, shown && i == 0 ? profiled(objective, minimum, index, scale) : normal(minimum, index, scale)};
   }
   return averaged({parts.data(), count}, scale);
 }

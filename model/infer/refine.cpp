@@ -98,7 +98,7 @@ void add_candidate(const Problem& problem, ModeSolutions& mode, Dynamics candida
   for (const double factor : {1.0, 2.5, 0.4}) {
     auto solution = refine(problem, candidate, start_for(problem, candidate, from, factor, work), work, options);
     if (solution && still_the_mode(problem, from, *solution)) return mode.solutions.push_back(std::move(*solution));
-    if (is_simple(candidate)) return;
+    if (is_simple(candidate) || problem.scan.kind == Axis::detuning) return;
   }
 }
 
@@ -186,6 +186,7 @@ void refine_others(const Problem& problem, std::vector<ModeSolutions>& modes, Fi
     if (refined == kModesOfOthers || !(mode.best().aicc < worth_it)) return;
     if (!shows_damping(problem, mode)) continue;
     refine_others(problem, mode, work, refined == 0 ? SolverOptions{} : kComparing);
+    if (problem.scan.kind == Axis::detuning && mode.best().aicc > modes.front().best().aicc + problem.options.rival_margin) return;
     ++refined;
   }
 }
