@@ -15,6 +15,8 @@ namespace {
 
 // A candidate with less Akaike weight than this moves no estimate by more than a fiftieth of what it is off by.
 constexpr double kWeightHeard = 0.02;
+// Nor does one whose error is this many times that of the best say anything of its own.
+constexpr double kSpeaks = 8.0;
 
 constexpr std::string_view kNotInDynamics = "the chosen dynamics have no such rate";
 constexpr std::string_view kAtBound = "the best value is at its bound";
@@ -142,8 +144,10 @@ double mixture_quantile(std::span<const Part> parts, double probability, double 
 /// Value and variance averaged over candidates with their weights (K. P. Burnham, D. R. Anderson, Model Selection and Multimodel
 /// Inference, 2nd ed. (2002), section 4.3), the interval from the mixture of their profile intervals.
 Estimate averaged(std::span<Part> parts, const Scale& scale) {
-  // A candidate whose rate ran where nothing holds it has no error to average: the others speak.
-  const auto sure = [](const Part& part) { return std::isfinite(part.estimate.sigma); };
+  // A candidate whose rate or breadth ran where nothing holds it has no error to average, or one far beyond that of the best (parts[0]),
+  // from a slope at 0 that does not last: the others speak. A spread that the scan does not show took a sigma of 22 mrad to 54 rad so.
+  const double most = std::isfinite(parts[0].estimate.sigma) ? kSpeaks * parts[0].estimate.sigma : std::numeric_limits<double>::max();
+  const auto sure = [most](const Part& part) { return part.estimate.sigma <= most; };
   if (std::any_of(parts.begin(), parts.end(), sure))
     parts = parts.first(static_cast<std::size_t>(std::stable_partition(parts.begin(), parts.end(), sure) - parts.begin()));
   double total = 0.0;
