@@ -41,6 +41,8 @@ double drift_score(const ScanBatch& scan, const Readout& readout, const Prior& p
 
 void look_for_drift(const ScanBatch& scan, const Readout& readout, const FitOptions& options, Fit& fit, FitWorkspace& work) {
   if (fit.outcome != FitOutcome::fitted || scan.progress.empty() || !(fit.quality.over_flat >= kEvidence)) return;
+  // Among frequencies that fit alike a drift would only favour the higher ones, whose phases it bends most.
+  if (fit.quality.rival && fit.quality.rival->deviance_above < options.rival_margin) return;
   if (!(drift_score(scan, readout, fit.prior, fit, work) > kDriftSuspected)) return;
   Prior with = fit.prior;
   with.drift = Known{0.0, kDriftSigma};
