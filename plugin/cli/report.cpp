@@ -119,10 +119,17 @@ std::string dynamics(const wire::Fitted& scan) {
   if (scan.dynamics.empty()) return {};
   std::string text = scan.dynamics;
   const char* separator = "; weights: ";
+  constexpr double kShown = 0.005;
+  std::string ruled_out;
   for (const auto& candidate : scan.candidates) {
+    if (candidate.weight < kShown) {
+      ruled_out += (ruled_out.empty() ? "" : ", ") + candidate.name;
+      continue;
+    }
     text += separator + candidate.name + " " + plain(candidate.weight, 2);
     separator = ", ";
   }
+  if (!ruled_out.empty()) text += "; below 0.005: " + ruled_out;
   return "\n" + wrapped(text, "  dynamics: ");
 }
 
