@@ -5,6 +5,7 @@
 #include <cmath>
 
 #include <Eigen/Eigenvalues>
+#include <Eigen/LU>
 
 namespace halfturn::infer {
 namespace {
@@ -38,7 +39,8 @@ Names names_of(const Layout& layout, Dynamics candidate) {
   const auto put = [&names](int slot, std::string_view name) {
     if (slot >= 0) names[static_cast<std::size_t>(slot)] = name;
   };
-  put(layout.lead, "rabi_hz");
+  put(layout.lead, layout.compression >= 0 ? "rabi_per_amplitude_hz" : "rabi_hz");
+  put(layout.compression, "compression");
   put(layout.line_offset, "line_offset_hz");
   put(layout.detuning_square, "detuning_hz");
   put(layout.dead_time, "dead_time_s");
@@ -79,6 +81,31 @@ Matrix scaled_information(const Minimum& minimum, const Layout& layout, const st
 }
 
 }  // namespace
+
+Matrix covariance_of(const Minimum& minimum) {
+  const auto k = minimum.x.size();
+  Matrix information = minimum.information;
+  auto held = [&minimum](Eigen::Index i) { return minimum.at_bound[static_cast<std::size_t>(i)] != 0 || !(minimum.information(i, i) > 0.0); };
+  for (Eigen::Index i = 0; i < k; ++i) {
+    if (!held(i)) continue;
+    information.row(i).setZero();
+    information.col(i).setZero();
+    information(i, i) = 1.0;
+  }
+  // Scaled to a unit diagonal first: rates and probabilities differ by ten orders of magnitude.
+  Vector scale(k);
+  for (Eigen::Index i = 0; i < k; ++i) scale[i] = 1.0 / std::sqrt(std::max(information(i, i), 1e-300));
+  const Matrix scaled = scale.asDiagonal() * information * scale.asDiagonal();
+  const Eigen::FullPivLU<Matrix> factors(scaled);
+  Matrix covariance = Matrix::Constant(k, k, std::numeric_limits<double>::quiet_NaN());
+  if (factors.isInvertible()) covariance = scale.asDiagonal() * factors.inverse() * scale.asDiagonal();
+  for (Eigen::Index i = 0; i < k; ++i)
+    if (held(i)) {
+      covariance.row(i).setZero();
+      covariance.col(i).setZero();
+    }
+  return covariance;
+}
 
 Conditioning conditioning(const ScanObjective& objective, const Minimum& minimum) {
   const Layout& layout = objective.layout();

@@ -13,7 +13,7 @@ namespace {
 // A drift of the coupling along the scan is looked for where its score test exceeds this (a scan without one does in 0.5 % of cases),
 // held loosely by this sigma, and kept where it lowers the AICc by more than its own cost.
 constexpr double kDriftSuspected = 8.0;
-constexpr double kDriftSigma = 0.05;
+constexpr double kDriftSigma = 0.025;
 
 /// Twice the gain in the log likelihood that a drift promises at the fit, the other parameters following (C. R. Rao, Proc. Camb. Phil.
 /// Soc. 44, 50 (1948)): chi-square with one degree of freedom where there is none.
@@ -41,6 +41,8 @@ double drift_score(const ScanBatch& scan, const Readout& readout, const Prior& p
 
 void look_for_drift(const ScanBatch& scan, const Readout& readout, const FitOptions& options, Fit& fit, FitWorkspace& work) {
   if (fit.outcome != FitOutcome::fitted || scan.progress.empty() || !(fit.quality.over_flat >= kEvidence)) return;
+  // Among frequencies that fit alike a drift would only favour the higher ones, whose phases it bends most.
+  if (fit.quality.rival && fit.quality.rival->deviance_above < options.rival_margin) return;
   if (!(drift_score(scan, readout, fit.prior, fit, work) > kDriftSuspected)) return;
   Prior with = fit.prior;
   with.drift = Known{0.0, kDriftSigma};

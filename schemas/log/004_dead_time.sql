@@ -3,4 +3,4 @@
 -- it is not known, for their dead times hold the prior they were fitted under.
 ALTER TABLE event ADD COLUMN dead_time_points_s REAL;
 ALTER TABLE event ADD COLUMN dead_time_points_sigma_s REAL;
-PRAGMA user_version = 3;
+PRAGMA user_version = 4;
