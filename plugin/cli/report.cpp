@@ -142,7 +142,9 @@ std::string told_apart(const wire::Quality& q) {
                         plain(q.correlation->value, 4) + "): what holds the one holds the other. A longer or wider scan tells them apart.",
                     "  leaning: ");
   std::string names;
-  for (const auto& name : q.at_bound) names += (names.empty() ? "" : ", ") + label(name).text;
+  // A detuning of 0 is where a carrier on the line is found one time in two.
+  for (const auto& name : q.at_bound)
+    if (name != "detuning_hz") names += (names.empty() ? "" : ", ") + label(name).text;
   if (!names.empty()) text += wrapped(names, "  at its bound: ");
   return text;
 }
