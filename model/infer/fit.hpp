@@ -55,6 +55,13 @@ struct RivalMode {
   bool opposite_contrast = false;
 };
 
+/// A second component that puts the answer in doubt (second_component.hpp).
+struct SecondComponent {
+  double first = 0.0, second = 0.0;  // rad/s: the two Rabi frequencies (as `generalised`), or the offsets of the two lines
+  double share = 0.0;                // flops: the second one's part of the atoms; lines: its depth over the first one's
+  double gain = 0.0;                 // deviance gained over the one that was fitted, scatter left by two divided out
+};
+
 struct FitQuality {
   double deviance = kUnknown, dof = kUnknown;
   double p_value = kUnknown;        // of a deviance as large, moment-matched; before scatter is counted
@@ -75,6 +82,7 @@ struct FitQuality {
   bool dead_time_released = false;  // the data contradicted the dead time's prior, which was set aside
   bool readout_released = false;    // the same of floor and contrast
   std::optional<RivalMode> rival;
+  std::optional<SecondComponent> second;
 };
 
 /// Estimates of the same solution with intervals at another level, where one is asked for.
