@@ -4,6 +4,7 @@
 #include <algorithm>
 
 #include "model/infer/monotone.hpp"
+#include "model/infer/second_component.hpp"
 #include "model/infer/shown.hpp"
 #include "model/infer/under_prior.hpp"
 
@@ -37,6 +38,7 @@ void fit_one(const ScanBatch& given, std::size_t site, const Prior& prior, const
   known.drift = fit.prior.drift;
   allow_for_outliers(scan, readout, known, options, fit, work);
   if (fit.outlier_share == 0.0) count_scatter(scan, readout, known, options, fit, work);
+  look_for_second(scan, readout, options, fit, work);
   if (fit.outcome == FitOutcome::fitted) return withhold_unshown(options, fit);
   const auto monotone = monotone_half_deviance(readout, scan.axis);
   fit.quality.monotone_gain = 2.0 * (monotone.flat - std::min(monotone.rising, monotone.falling));

@@ -58,6 +58,13 @@ struct RivalMode {
   bool opposite_contrast = false;
 };
 
+/// A second component that puts the answer in doubt (second_component.hpp).
+struct SecondComponent {
+  double first = 0.0, second = 0.0;  // rad/s: the two Rabi frequencies (as `generalised`), or the offsets of the two lines
+  double share = 0.0;                // flops: the second one's part of the atoms; lines: its depth over the first one's
+  double gain = 0.0;                 // deviance gained over the one that was fitted, scatter left by two divided out
+};
+
 struct FitQuality {
   double deviance = kUnknown, dof = kUnknown;
   double p_value = kUnknown;        // of a deviance as large, moment-matched; before scatter is counted
@@ -80,6 +87,7 @@ struct FitQuality {
   bool dead_time_doubted = false;   // the data contradicted the dead time of the scans before: Prior::dead_time_otherwise was taken
   std::optional<RivalMode> rival;
   Conditioning conditioning;        // of the chosen candidate
+  std::optional<SecondComponent> second;
 };
 
 /// Estimates of the same solution with intervals at another level, where one is asked for.

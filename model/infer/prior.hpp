@@ -38,6 +38,7 @@ struct Prior {
   std::vector<dynamics::Mode> motion;    // motional modes that the drive sees; none: no `thermal`
   bool follows_intensity = false;        // the coupling goes with the intensity (two-photon drives), not the field
   std::optional<Known> drift;            // relative change of the coupling from the scan's begin to its end; without: none
+  bool second = false;                   // a second component is fitted beside the first (second_component.hpp)
 };
 
 }  // namespace halfturn::infer

@@ -23,6 +23,9 @@ constexpr double kLeastSpread = 5e-5, kLeastDoppler = 5e-5, kLeastCloud = 2e-3;
 constexpr double kMostSpread = 0.5, kMostCloud = 1.0, kMostPhonons = 500.0;
 // A drift beyond this is no slow change.
 constexpr double kMostDrift = 0.5;
+// Of two components the second is the smaller one, but for what noise makes of equal ones; couplings further apart than this are two
+// transitions.
+constexpr double kMostShare = 0.6, kMostRatio = 4.0;
 // Priors are normal; beyond this many sigmas a parameter is held back.
 constexpr double kPriorReach = 8.0;
 // A dead time uncertain by less than this part of the pulse does not change a line by more than 1e-5 of the population.
@@ -63,6 +66,8 @@ ScanObjective::ScanObjective(const ScanBatch& scan, const Readout& readout, cons
   if (is_ensemble(candidate)) take(layout_.breadth);
   if (scan.kind == Axis::amplitude) take(layout_.compression);
   if (scan.kind == Axis::duration && prior.drift && prior.drift->sigma > 0.0) take(layout_.drift);
+  if (prior.second && scan.kind != Axis::amplitude) take(layout_.second_share);
+  if (prior.second && scan.kind != Axis::amplitude) take(layout_.second_place);
 }
 
 Bounds ScanObjective::bounds() const {
@@ -90,6 +95,8 @@ Bounds ScanObjective::bounds() const {
   if (candidate_ == Dynamics::thermal) broadest = kMostPhonons;
   limit(layout_.breadth, 0.0, broadest);
   limit(layout_.drift, -kMostDrift, kMostDrift);
+  limit(layout_.second_share, 0.0, scan_.kind == Axis::detuning ? 1.0 : kMostShare);
+  if (scan_.kind == Axis::duration) limit(layout_.second_place, 1.0 / kMostRatio, kMostRatio);
   for (const int slot : {layout_.ground, layout_.excited}) {
     if (readout_.kind == Readout::Kind::binomial) limit(slot, kSignalMargin, 1.0 - kSignalMargin);
     if (readout_.kind == Readout::Kind::poisson) limit(slot, 1e-12, infinite);
@@ -166,6 +173,8 @@ Vector ScanObjective::pack(const Physical& physical) const {
   put(layout_.breadth, physical.breadth);
   put(layout_.drift, physical.drift);
   put(layout_.compression, physical.compression);
+  put(layout_.second_share, physical.second_share);
+  put(layout_.second_place, physical.second_place);
   return x;
 }
 
@@ -182,6 +191,8 @@ Physical ScanObjective::unpack(const Vector& x) const {
   p.dephasing = get(layout_.dephasing, 0.0);
   p.breadth = get(layout_.breadth, 0.0);
   p.drift = get(layout_.drift, 0.0);
+  p.second_share = get(layout_.second_share, 0.0);
+  p.second_place = get(layout_.second_place, 0.0);
   const double lead = x[layout_.lead];
   p.generalised = lead;
   if (lead_.kind == Lead::Kind::bare) p.generalised = std::sqrt(square(lead) + p.detuning_square);

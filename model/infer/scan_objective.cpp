@@ -7,7 +7,7 @@
 namespace halfturn::infer {
 namespace {
 
-constexpr std::size_t kMostFree = 8;  // lead, offset or detuning, dead time, two signals, two of damping and breadth, drift
+constexpr std::size_t kMostFree = 10;  // lead, offset or detuning, dead time, two signals, two of damping and breadth, drift, two of a second
 // A coupling below this part of the generalised frequency moves less than 1e-3 of the population: no flop to be fitted.
 constexpr double kLeastCoupling = 0.03;
 // An ensemble's flop is followed no further, rad: 250 cycles. A profile of one that is hardly determined runs on for ever else, with
@@ -32,7 +32,7 @@ double square(double x) { return x * x; }
 }  // namespace
 
 void ObjectiveWorkspace::reserve(std::size_t points) {
-  for (auto* array : {&population, &signal, &score, &information, &by_length, &by_parameter, &played})
+  for (auto* array : {&population, &signal, &score, &information, &by_length, &by_parameter, &played, &second_over_first, &second_by_place})
     if (array->size() < points) array->resize(points);
   for (auto& array : by_rate)
     if (array.size() < points) array.resize(points);
@@ -52,8 +52,8 @@ std::span<const double> ScanObjective::played(const Physical& p) const {
   return {work_.played.data(), n};
 }
 
-dynamics::Status ScanObjective::populate_ensemble(const Physical& p, std::span<const double> axis, const dynamics::Derivatives& out,
-                                                  bool derivatives) const {
+dynamics::Status ScanObjective::populate_ensemble(const Physical& p, const dynamics::Rates& rates, std::span<const double> axis,
+                                                  const dynamics::Derivatives& out, bool derivatives) const {
   const auto of = ensemble(p);
   if (scan_.kind == Axis::duration && p.generalised * longest_of(axis) > kMostPhase) return dynamics::Status::too_many_members;
   if (scan_.kind == Axis::duration && of.kind == dynamics::Ensemble::Kind::doppler && of.parameter > kMostDoppler * p.generalised)
@@ -61,12 +61,70 @@ dynamics::Status ScanObjective::populate_ensemble(const Physical& p, std::span<c
   const std::span<double> by_parameter(work_.by_parameter.data(), derivatives ? axis.size() : 0);
   dynamics::Status status = dynamics::Status::ok;
   if (scan_.kind == Axis::duration)
-    dynamics::ensemble_duration_scan(rates(p), of, prior_.start, axis, p.dead_time, out, by_parameter, status, work_.ensemble);
+    dynamics::ensemble_duration_scan(rates, of, prior_.start, axis, p.dead_time, out, by_parameter, status, work_.ensemble);
   else
-    dynamics::ensemble_detuning_scan(rates(p), of, prior_.start, axis, scan_.pulse_length_s - p.dead_time, out, by_parameter, status,
+    dynamics::ensemble_detuning_scan(rates, of, prior_.start, axis, scan_.pulse_length_s - p.dead_time, out, by_parameter, status,
                                      work_.ensemble);
   const double by_breadth = candidate_ == Dynamics::thermal ? 1.0 : 0.5 / of.parameter;
   for (double& value : by_parameter) value *= by_breadth;
+  return status;
+}
+
+dynamics::Status ScanObjective::populate_one(const Physical& p, const dynamics::Rates& rates, const dynamics::Derivatives& out,
+                                             bool derivatives) const {
+  const auto axis = played(p);
+  if (is_ensemble(candidate_)) return populate_ensemble(p, rates, axis, out, derivatives);
+  dynamics::Status status = dynamics::Status::ok;
+  const std::span<const dynamics::Rates> one(&rates, 1);
+  if (scan_.kind == Axis::duration) {
+    dynamics::duration_scan(one, prior_.start, axis, std::span<const double>(&p.dead_time, 1), out, {&status, 1}, work_.dynamics);
+  } else {
+    const double length = scan_.pulse_length_s - p.dead_time;
+    dynamics::detuning_scan(one, prior_.start, axis, std::span<const double>(&length, 1), out, {&status, 1}, work_.dynamics);
+  }
+  return status;
+}
+
+/// Adds a second component to `out`, which holds the first: of a flop (1 - share) P1 + share P2; of a line P1 + share (1 - P1) P2, the same
+/// atoms seen by another transition.
+dynamics::Status ScanObjective::add_second(const Physical& p, const dynamics::Derivatives& out, bool derivatives) const {
+  const auto n = scan_.points();
+  const bool line = scan_.kind == Axis::detuning;
+  dynamics::Rates other = rates(p);
+  (line ? other.detuning : other.rabi) = line ? other.detuning + p.second_place : other.rabi * p.second_place;
+  if (work_.second.size() < (dynamics::kRateCount + 3) * n) work_.second.resize((dynamics::kRateCount + 3) * n);
+  double* at = work_.second.data();
+  const auto like = [&at, n](std::span<double> of) {
+    double* const begin = at;
+    at += n;
+    return std::span<double>(begin, of.empty() ? 0 : n);
+  };
+  const auto by_breadth = like({work_.by_parameter.data(), derivatives ? n : 0});
+  std::copy_n(work_.by_parameter.begin(), by_breadth.size(), by_breadth.begin());
+  dynamics::Derivatives second;
+  second.population = like(out.population);
+  for (std::size_t r = 0; r < out.by_rate.size(); ++r) second.by_rate[r] = like(out.by_rate[r]);
+  second.by_length = like(out.by_length);
+  const auto status = populate_one(p, other, second, derivatives);
+  if (status != dynamics::Status::ok) return status;
+  const auto mix = [&](std::span<double> first, std::span<const double> with, double factor) {
+    for (std::size_t i = 0; i < first.size(); ++i) {
+      const double kept = line ? 1.0 - p.second_share * second.population[i] : 1.0 - p.second_share;
+      const double added = p.second_share * (line ? 1.0 - out.population[i] : 1.0);
+      first[i] = kept * first[i] + added * factor * with[i];
+    }
+  };
+  for (std::size_t r = 0; r < out.by_rate.size(); ++r) mix(out.by_rate[r], second.by_rate[r], r == 0 && !line ? p.second_place : 1.0);
+  mix(out.by_length, second.by_length, 1.0);
+  mix(by_breadth, work_.by_parameter, 1.0);
+  std::copy_n(by_breadth.begin(), by_breadth.size(), work_.by_parameter.begin());
+  const auto& by_place = second.by_rate[line ? 1 : 0];
+  for (std::size_t i = 0; i < n; ++i) {
+    const double first = out.population[i], with = second.population[i];
+    work_.second_over_first[i] = line ? (1.0 - first) * with : with - first;
+    if (derivatives) work_.second_by_place[i] = p.second_share * by_place[i] * (line ? 1.0 - first : other.rabi / p.second_place);
+    out.population[i] = first + p.second_share * work_.second_over_first[i];
+  }
   return status;
 }
 
@@ -76,7 +134,6 @@ bool ScanObjective::populate(const Physical& p, bool derivatives) const {
   const auto n = scan_.points();
   const bool by_amplitude = scan_.kind == Axis::amplitude;
   if (by_amplitude && !(effective_length(p) > 0.0)) return false;
-  const dynamics::Rates rates_now = by_amplitude ? dynamics::Rates{} : rates(p);
   auto span = [n](std::vector<double>& v, bool wanted) { return std::span<double>(v.data(), wanted ? n : 0); };
   const bool by_decay = candidate_ == Dynamics::decay || candidate_ == Dynamics::decay_dephasing;
   const bool by_leak = candidate_ == Dynamics::leak || candidate_ == Dynamics::leak_dephasing;
@@ -89,19 +146,8 @@ bool ScanObjective::populate(const Physical& p, bool derivatives) const {
   out.by_rate[3] = span(work_.by_rate[3], derivatives && by_leak);
   out.by_rate[4] = span(work_.by_rate[4], derivatives && by_dephasing);
   out.by_length = span(work_.by_length, derivatives && (layout_.dead_time >= 0 || layout_.drift >= 0));
-  dynamics::Status status = dynamics::Status::ok;
-  const auto axis = played(p);
-  const std::span<const dynamics::Rates> one(&rates_now, 1);
-  if (by_amplitude) {
-    status = populate_amplitudes(p, out);
-  } else if (is_ensemble(candidate_)) {
-    status = populate_ensemble(p, axis, out, derivatives);
-  } else if (scan_.kind == Axis::duration) {
-    dynamics::duration_scan(one, prior_.start, axis, std::span<const double>(&p.dead_time, 1), out, {&status, 1}, work_.dynamics);
-  } else {
-    const double length = scan_.pulse_length_s - p.dead_time;
-    dynamics::detuning_scan(one, prior_.start, axis, std::span<const double>(&length, 1), out, {&status, 1}, work_.dynamics);
-  }
+  dynamics::Status status = by_amplitude ? populate_amplitudes(p, out) : populate_one(p, rates(p), out, derivatives);
+  if (status == dynamics::Status::ok && layout_.second_share >= 0) status = add_second(p, out, derivatives);
   if (status != dynamics::Status::ok) return false;
   for (std::size_t i = 0; i < n; ++i)
     work_.signal[i] = p.signal_ground + p.contrast() * work_.population[i];
@@ -153,6 +199,8 @@ void ScanObjective::fill_columns(const Physical& p) const {
   scaled(layout_.dephasing, contrast, work_.by_rate[4]);
   scaled(layout_.breadth, contrast, work_.by_parameter);
   added(layout_.breadth, of_generalised * slopes.by_breadth, work_.by_rate[0]);
+  scaled(layout_.second_share, contrast, work_.second_over_first);
+  scaled(layout_.second_place, contrast, work_.second_by_place);
   const double* const population = work_.population.data();
   const auto ground = column(layout_.ground), excited = column(layout_.excited);
   for (std::size_t i = 0; i < ground.size(); ++i) {

@@ -30,6 +30,8 @@ struct Physical {
                                  // linear in that where it is small; thermal: mean phonons
   double drift = 0.0;            // relative change of the coupling along the scan
   double compression = 0.0;      // amplitude scans: q of amplitude_response.hpp
+  double second_share = 0.0;     // of a second component (Prior::second): its part of the population, (1 - share) first + share second
+  double second_place = 0.0;     // its coupling over the first one's (duration scans), or how far above the first its line lies, rad/s
 
   double rabi() const;           // bare, peak coupling, rad/s; not of an amplitude scan
   double contrast() const { return signal_excited - signal_ground; }
@@ -49,7 +51,7 @@ struct Lead {
 /// Positions of the free parameters in the solver's vector; -1 where one is held.
 struct Layout {
   int lead = -1, line_offset = -1, detuning_square = -1, dead_time = -1, ground = -1, excited = -1, damping = -1, dephasing = -1,
-      breadth = -1, drift = -1, compression = -1;
+      breadth = -1, drift = -1, compression = -1, second_share = -1, second_place = -1;
   int count = 0;
 };
 
@@ -67,6 +69,7 @@ struct ObjectiveWorkspace {
   std::vector<double> population, signal, score, information;
   std::array<std::vector<double>, dynamics::kRateCount> by_rate;
   std::vector<double> by_length, by_parameter;
+  std::vector<double> second, second_over_first, second_by_place;  // of a second component: its population less the first's; its derivative
   std::vector<double> played;    // lengths as they act under a drift
   std::vector<dynamics::Rates> sets;        // amplitude scans: those of each point
   std::vector<dynamics::Status> statuses;
@@ -134,8 +137,10 @@ class ScanObjective final : public Objective {
   double effective_length(const Physical& physical) const { return scan_.pulse_length_s - physical.dead_time; }
   double amplitude_lead(const Physical& physical) const;
   double from_amplitude_lead(double lead, const Physical& physical) const;
-  dynamics::Status populate_ensemble(const Physical& physical, std::span<const double> axis, const dynamics::Derivatives& out,
-                                     bool derivatives) const;
+  dynamics::Status populate_one(const Physical& physical, const dynamics::Rates& rates, const dynamics::Derivatives& out, bool derivatives) const;
+  dynamics::Status add_second(const Physical& physical, const dynamics::Derivatives& out, bool derivatives) const;
+  dynamics::Status populate_ensemble(const Physical& physical, const dynamics::Rates& rates, std::span<const double> axis,
+                                     const dynamics::Derivatives& out, bool derivatives) const;
   std::span<const double> played(const Physical& physical) const;
   std::span<double> column(int parameter) const;
   void fill_columns(const Physical& physical) const;

@@ -156,6 +156,21 @@ void rival_gate(const infer::Fit& fit, const Context& context, Reasons& reasons)
   }
 }
 
+void second_gate(const infer::Fit& fit, Reasons& reasons) {
+  if (!fit.quality.second) return;
+  const auto& seen = *fit.quality.second;
+  const std::string better = ", describe the scan better than one (deviance gained " + plain(seen.gain, 3) + "). ";
+  if (fit.axis == infer::Axis::detuning)
+    return refuse(reasons, "second_line",
+                  "Two lines, at " + hertz(seen.first) + " and, " + percent(seen.share) + " as deep, at " + hertz(seen.second) + better +
+                      "That may be another Zeeman component, isotope or motional sideband beside the one that is meant. Scan a window that "
+                      "holds one of them alone, or split them by the field or a longer, weaker pulse.");
+  refuse(reasons, "second_component",
+         "Two oscillations, at " + hertz(seen.first) + " and, with " + percent(seen.share) + " of the atoms, at " + hertz(seen.second) + better +
+             "Two Zeeman states, two isotopes, or two sites lit unequally would do this, and no one length is right for both. Prepare one "
+             "state, address one site, or centre the beam; then scan again.");
+}
+
 void line_gates(const infer::Fit& fit, const Context& context, Reasons& reasons) {
   if (!(fit.quality.over_flat >= context.accept.min_evidence)) return;  // there is no line to have a centre
   const auto& offset = fit.line_offset;
@@ -250,6 +265,7 @@ void fit_gates(const infer::Fit& fit, const Context& context, Reasons& reasons) 
                (too_many_outliers(quality) ? "too many to be set aside (allowed: " + percent(kMostDistrusted) + ")"
                                            : std::string("too close together to be single accidents")) +
                ". Look for a laser that dropped out, atoms lost, or a readout that failed for a while; then scan again.");
+  second_gate(fit, reasons);
   rival_gate(fit, context, reasons);
   if (quality.outside_expect && !context.expect)
     refuse(reasons, "rival",
