@@ -1,36 +1,26 @@
 // SPDX-License-Identifier: Apache-2.0
+#include "model/infer/estimate.hpp"
+
 #include <algorithm>
 #include <cmath>
 
 #include <Eigen/LU>
 
-#include "model/infer/profile.hpp"
-#include "model/infer/solution.hpp"
 #include "model/infer/statistics.hpp"
 #include "model/quantity/constants.hpp"
 
 namespace halfturn::infer {
 namespace {
 
-// A candidate with less Akaike weight than this moves no estimate by more than a fiftieth of what it is off by.
-constexpr double kWeightHeard = 0.02;
-
 constexpr std::string_view kNotInDynamics = "the chosen dynamics have no such rate";
 constexpr std::string_view kAtBound = "the best value is at its bound";
 constexpr std::string_view kNotDetermined = "the scan does not determine it";
 constexpr std::string_view kOpenInterval = "the likelihood stays high out to the bound";
-constexpr std::string_view kNotThisScan = "a scan of this kind does not hold it";
 
-struct Scale {
-  double scatter = 1.0;
-  double level = 0.95;
-  double z = 0.0;  // of the level, two-sided; its square is the deviance's quantile
-  double quantile() const { return z * z; }
+}  // namespace
 
-  Scale(double scatter_, double level_) : scatter(scatter_), level(level_), z(normal_quantile(0.5 + 0.5 * level_)) {}
-};
+Scale::Scale(double scatter_, double level_) : scatter(scatter_), level(level_), z(normal_quantile(0.5 + 0.5 * level_)) {}
 
-/// Inverse of the information over the parameters that are not at a bound; rows and columns of those that are stay 0.
 Matrix covariance_of(const Minimum& minimum) {
   const auto k = minimum.x.size();
   Matrix information = minimum.information;
@@ -70,10 +60,9 @@ Estimate from_covariance(double value, double variance, const Scale& scale) {
   return e;
 }
 
-/// Estimate of one coordinate with its profile interval.
-Estimate profiled(const ScanObjective& objective, const Minimum& minimum, int index, const Scale& scale) {
+Estimate profiled(const Objective& objective, const Bounds& bounds, const Minimum& minimum, int index, const Scale& scale) {
   Estimate e = from_covariance(minimum.x[index], covariance_of(minimum)(index, index), scale);
-  const auto interval = profile_interval(objective, minimum, index, scale.quantile() * scale.scatter, objective.bounds());
+  const auto interval = profile_interval(objective, minimum, index, scale.quantile() * scale.scatter, bounds);
   auto end = [](const ProfileEnd& at) { return at.kind == ProfileEnd::Kind::reached ? at.at : kUnknown; };
   e.low = end(interval.low);
   e.high = end(interval.high);
@@ -82,6 +71,12 @@ Estimate profiled(const ScanObjective& objective, const Minimum& minimum, int in
   return e;
 }
 
+Estimate normal(const Minimum& minimum, int index, const Scale& scale) {
+  return from_covariance(minimum.x[index], covariance_of(minimum)(index, index), scale);
+}
+
+namespace {
+
 /// The same solution in the coordinates of another lead.
 Minimum in_coordinates(const ScanObjective& objective, const Solution& solution) {
   Minimum minimum = solution.minimum;
@@ -89,11 +84,6 @@ Minimum in_coordinates(const ScanObjective& objective, const Solution& solution)
   objective.evaluate(minimum.x, minimum.value, &minimum.gradient, &minimum.information);
   return minimum;
 }
-
-struct Part {
-  double weight;
-  Estimate estimate;
-};
 
 /// Probability below x under a normal law whose sides are as wide as the interval's.
 double below(const Estimate& e, double x, double z) {
@@ -116,8 +106,8 @@ double mixture_quantile(std::span<const Part> parts, double probability, double 
   return 0.5 * (low + high);
 }
 
-/// Value and variance averaged over candidates with their weights (K. P. Burnham, D. R. Anderson, Model Selection and Multimodel
-/// Inference, 2nd ed. (2002), section 4.3), the interval from the mixture of their profile intervals.
+}  // namespace
+
 Estimate averaged(std::span<Part> parts, const Scale& scale) {
   // A candidate whose rate ran where nothing holds it has no error to average: the others speak.
   const auto sure = [](const Part& part) { return std::isfinite(part.estimate.sigma); };
@@ -152,6 +142,13 @@ Estimate averaged(std::span<Part> parts, const Scale& scale) {
   return mean;
 }
 
+Estimate times(Estimate e, double factor) {
+  for (double* part : {&e.value, &e.sigma, &e.low, &e.high}) *part *= factor;
+  return e;
+}
+
+namespace {
+
 void weigh(const ModeSolutions& mode, double scatter, Fit& fit) {
   double total = 0.0;
   fit.candidate_count = 0;
@@ -162,11 +159,6 @@ void weigh(const ModeSolutions& mode, double scatter, Fit& fit) {
     total += score.weight;
   }
   for (int i = 0; i < fit.candidate_count; ++i) fit.candidates[static_cast<std::size_t>(i)].weight /= total;
-}
-
-/// Estimate of one coordinate with the interval of its standard error.
-Estimate normal(const Minimum& minimum, int index, const Scale& scale) {
-  return from_covariance(minimum.x[index], covariance_of(minimum)(index, index), scale);
 }
 
 /// The average over candidates of a lead coordinate (or of the coordinate that `slot` picks). The best has its profile interval; the
@@ -183,7 +175,7 @@ Estimate over_candidates(const Problem& problem, const ModeSolutions& mode, cons
                                   work.objective);
     const Minimum minimum = in_coordinates(objective, solution);
     const int index = slot(objective.layout());
-    parts[count++] = {fit.candidates[i].weight, i == 0 ? profiled(objective, minimum, index, scale) : normal(minimum, index, scale)};
+    parts[count++] = {fit.candidates[i].weight, i == 0 ? profiled(objective, objective.bounds(), minimum, index, scale) : normal(minimum, index, scale)};
   }
   return averaged({parts.data(), count}, scale);
 }
@@ -214,11 +206,6 @@ Estimate inverse_rate(double rate, double variance, const Scale& scale) {
   e.low = 1.0 / of_rate.high;
   if (of_rate.low > 0.0) e.high = 1.0 / of_rate.low;
   else if (e.why.empty()) e.why = "longer than the scan can tell";
-  return e;
-}
-
-Estimate times(Estimate e, double factor) {
-  for (double* part : {&e.value, &e.sigma, &e.low, &e.high}) *part *= factor;
   return e;
 }
 
@@ -301,6 +288,12 @@ void fill_readout(const ScanObjective& objective, const Scale& scale, Fit& fit) 
 
 }  // namespace
 
+void fill_from_covariance(const Problem& problem, const ScanObjective& objective, const Scale& scale, Fit& fit, FitWorkspace& work) {
+  fill_damping(problem, objective, scale, fit, work);
+  fill_others(objective, scale, fit);
+  fill_readout(objective, scale, fit);
+}
+
 void estimate(const Problem& problem, const ModeSolutions& mode, Fit& fit, FitWorkspace& work) {
   const Scale scale(fit.quality.scatter, problem.options.level);
   weigh(mode, scale.scatter, fit);
@@ -312,9 +305,7 @@ void estimate(const Problem& problem, const ModeSolutions& mode, Fit& fit, FitWo
   fit.negative_contrast = best.negative_contrast;
   fit.x = best.minimum.x;
   fit.covariance = covariance_of(best.minimum) * scale.scatter;
-  fill_damping(problem, objective, scale, fit, work);
-  fill_others(objective, scale, fit);
-  fill_readout(objective, scale, fit);
+  fill_from_covariance(problem, objective, scale, fit, work);
   fit.mean_factor = objective.mean_factor(best.physical);
 
   auto lead_slot = [](const Layout& layout) { return layout.lead; };

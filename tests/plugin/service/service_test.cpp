@@ -566,3 +566,121 @@ TEST_CASE("a measured flop that no damped cosine describes is refused, and its f
     CHECK(estimate(with, "contrast").value == Approx((references.dark - references.bright) / references.bright_of).epsilon(0.02));
   }
 }
+
+namespace {
+
+/// A line of Rabi's formula (Phys. Rev. 51, 652 (1937)) beside the flop's carrier.
+wire::Scan line_scan(double rabi_hz, double offset_hz, std::mt19937_64& random) {
+  wire::Scan scan;
+  scan.drive = "red";
+  scan.scan_name = "line";
+  scan.axis_kind = wire::AxisKind::detuning;
+  scan.pulse_s = 0.5 / rabi_hz;
+  scan.observed.resize(1);
+  scan.weight.resize(1);
+  for (int i = 0; i < 41; ++i) {
+    const double detuning = -250e3 + 12.5e3 * i, whole = std::hypot(rabi_hz, detuning - offset_hz);
+    const double s = rabi_hz / whole * std::sin(kTwoPi / 2 * whole * *scan.pulse_s);
+    scan.axis.push_back(detuning);
+    scan.observed[0].push_back(std::binomial_distribution<int>(200, 0.02 + 0.93 * s * s)(random));
+    scan.weight[0].push_back(200);
+  }
+  return scan;
+}
+
+wire::Request joint_of(const std::string& id, std::vector<wire::Scan> scans) {
+  wire::Request request;
+  request.kind = wire::Kind::fit;
+  request.id = request.digest = id;
+  request.joint = true;
+  request.scans = std::move(scans);
+  return request;
+}
+
+}  // namespace
+
+TEST_CASE("a joint fit of a flop and a line is one reply, moves both tracks, and is read back from the log") {
+  House house;
+  std::mt19937_64 random(41);
+  auto a = flop("flop", 125e3, random).scans[0];
+  auto b = line_scan(125e3, 9e3, random);
+  a.taken_at = house.clock.time - 2 * kMinute;
+  b.taken_at = house.clock.time - kMinute;
+  a.carrier_hz = b.carrier_hz = 80e6;
+  a.ambient["bench_c"] = 21.5;
+  const auto reply = house.ask(joint_of("together", {a, b}));
+  REQUIRE(std::holds_alternative<wire::Fitted>(reply));
+  const auto& fitted = std::get<wire::Fitted>(reply);
+  for (const auto& reason : fitted.reasons) UNSCOPED_INFO(reason.code << ": " << reason.text);
+  CHECK(fitted.verdict == "apply");
+  CHECK(fitted.scan_name == "flop + line");
+  CHECK(fitted.taken_at == b.taken_at);
+  // The flop has the 3P1 level's decay on resonance, so its formula holds beside the line to the width of the noise alone.
+  CHECK(fitted.carrier_shift_hz == Approx(9e3).margin(2.5e3));
+  REQUIRE(fitted.scans.size() == 2);
+  CHECK(fitted.scans[0].scan_name == "flop");
+  CHECK(fitted.scans[1].axis_kind == wire::AxisKind::detuning);
+  CHECK(fitted.scans[0].points + fitted.scans[1].points == fitted.quality.points);
+  CHECK(fitted.scans[0].deviance + fitted.scans[1].deviance == Approx(fitted.quality.deviance));
+
+  const auto events = house.log.events({"red", {}, {}, 0, 0});
+  REQUIRE(events);
+  REQUIRE(events->size() == 2);
+  CHECK((*events)[0].axis == "duration");
+  CHECK((*events)[0].effect == "first");
+  CHECK((*events)[1].axis == "detuning");
+  CHECK((*events)[1].effect == "first");
+  CHECK((*events)[1].line_offset_hz == Approx(estimate(fitted, "line_offset_hz").value));
+  const auto stored = house.log.scan((*events)[0].number);
+  REQUIRE(stored);
+  REQUIRE(*stored);
+  const auto again = wire::decode_scans(**stored);
+  REQUIRE(again);
+  REQUIRE(again->size() == 2);
+  CHECK(wire::encode_scan((*again)[0]) == wire::encode_scan(a));
+  CHECK(wire::encode_scan((*again)[1]) == wire::encode_scan(b));
+
+  const auto rows = house.ask(history_of("rows"));
+  REQUIRE(std::holds_alternative<wire::Rows>(rows));
+  CHECK(std::get<wire::Rows>(rows).rows.size() == 1);
+
+  // What follows rests on the log alone: a flop is fitted with the line known.
+  house.restart();
+  house.clock.time += kMinute;
+  auto later = flop("later", 125e3, random);
+  later.scans[0].carrier_hz = 80.009e6;
+  const auto task = house.accepted(later);
+  CHECK(task.known.rabi.accepted == 1);
+  CHECK(task.known.line.accepted == 1);
+  REQUIRE(task.prior.detuning);
+  CHECK(std::abs(task.prior.detuning->mean) < kTwoPi * 3e3);
+  // The same request finds its reply again.
+  CHECK(std::holds_alternative<wire::Stored>(house.ask(joint_of("together", {a, b}))));
+}
+
+TEST_CASE("scans that disagree are refused together, and what cannot be fitted together is a fault") {
+  House house;
+  std::mt19937_64 random(43);
+  const auto a = flop("a", 125e3, random).scans[0], b = flop("b", 131e3, random, 25e-6).scans[0];
+  const auto reply = house.ask(joint_of("apart", {a, b}));
+  REQUIRE(std::holds_alternative<wire::Fitted>(reply));
+  const auto& fitted = std::get<wire::Fitted>(reply);
+  CHECK(fitted.verdict == "refuse");
+  const auto said = std::find_if(fitted.reasons.begin(), fitted.reasons.end(), [](const auto& r) { return r.code == "scans_disagree"; });
+  REQUIRE(said != fitted.reasons.end());
+  CHECK((said->text.find("`a`") != std::string::npos || said->text.find("`b`") != std::string::npos));
+  const auto refused = [&house](const std::string& id, std::vector<wire::Scan> scans) {
+    const auto answer = house.ask(joint_of(id, std::move(scans)));
+    REQUIRE(std::holds_alternative<wire::Error>(answer));
+    return std::get<wire::Error>(answer).fault;
+  };
+  CHECK(refused("one", {a}).code == "bad_shape");
+  CHECK(refused("five", {a, a, a, a, a}).message.find("at most 4") != std::string::npos);
+  auto brighter = b, other = b, nameless = b;
+  other.drive_amplitude = 1.0;
+  brighter.drive_amplitude = 0.5;
+  CHECK(refused("amplitude", {other, brighter}).where == "scans[1].drive_amplitude");
+  CHECK(refused("unsaid", {other, a}).code == "missing_field");
+  nameless.carrier_hz = 80e6;
+  CHECK(refused("carrier", {nameless, a}).where == "scans[1].carrier_hz");
+}
