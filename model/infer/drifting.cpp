@@ -13,7 +13,7 @@ namespace {
 // A drift of the coupling along the scan is looked for where its score test exceeds this (a scan without one does in 0.5 % of cases),
 // held loosely by this sigma, and kept where it lowers the AICc by more than its own cost.
 constexpr double kDriftSuspected = 8.0;
-constexpr double kDriftSigma = 0.05;
+constexpr double kDriftSigma = 0.025;
 
 /// Twice the gain in the log likelihood that a drift promises at the fit, the other parameters following (C. R. Rao, Proc. Camb. Phil.
 /// Soc. 44, 50 (1948)): chi-square with one degree of freedom where there is none.

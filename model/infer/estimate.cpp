@@ -6,6 +6,7 @@
 
 #include <Eigen/LU>
 
+#include "model/infer/amplitude_response.hpp"
 #include "model/infer/statistics.hpp"
 #include "model/quantity/constants.hpp"
 
@@ -16,6 +17,7 @@ constexpr std::string_view kNotInDynamics = "the chosen dynamics have no such ra
 constexpr std::string_view kAtBound = "the best value is at its bound";
 constexpr std::string_view kNotDetermined = "the scan does not determine it";
 constexpr std::string_view kOpenInterval = "the likelihood stays high out to the bound";
+constexpr std::string_view kOutOfReach = "the drive saturates below it";
 
 }  // namespace
 
@@ -166,6 +168,8 @@ void weigh(const ModeSolutions& mode, double scatter, Fit& fit) {
 template <class Slot>
 Estimate over_candidates(const Problem& problem, const ModeSolutions& mode, const Fit& fit, Lead lead, const Scale& scale, Slot slot,
                          FitWorkspace& work) {
+  // What a scan that shows nothing says is withheld in the end (shown.hpp), and not worth a profile.
+  const bool shown = fit.quality.over_flat >= problem.options.least_evidence;
   std::array<Part, kDynamicsCount> parts;
   std::size_t count = 0;
   for (std::size_t i = 0; i < mode.solutions.size(); ++i) {
@@ -175,7 +179,9 @@ Estimate over_candidates(const Problem& problem, const ModeSolutions& mode, cons
                                   work.objective);
     const Minimum minimum = in_coordinates(objective, solution);
     const int index = slot(objective.layout());
-    parts[count++] = {fit.candidates[i].weight, i == 0 ? profiled(objective, objective.bounds(), minimum, index, scale) : normal(minimum, index, scale)};
+    // A drive that saturates below what the pulse needs.
+    if (!std::isfinite(minimum.x[index])) return {kUnknown, kUnknown, kUnknown, kUnknown, kOutOfReach};
+    parts[count++] = {fit.candidates[i].weight, shown && i == 0 ? profiled(objective, objective.bounds(), minimum, index, scale) : normal(minimum, index, scale)};
   }
   return averaged({parts.data(), count}, scale);
 }
@@ -286,6 +292,30 @@ void fill_readout(const ScanObjective& objective, const Scale& scale, Fit& fit) 
     fit.dead_time_s = {fit.physical.dead_time, kUnknown, kUnknown, kUnknown, "held at its configured value"};
 }
 
+/// The part of the coupling lost at the largest amplitude; below 0 where the gain rises.
+Estimate lost(const ScanObjective& objective, const Minimum& minimum, double largest, const Scale& scale) {
+  const Estimate q = profiled(objective, objective.bounds(), minimum, objective.layout().compression, scale);
+  const auto part = [largest](double compression) { return 1.0 - compressed(largest, compression) / largest; };
+  return {part(q.value), q.sigma * std::abs(compressed_by_compression(largest, q.value)) / largest, part(q.low), part(q.high), q.why};
+}
+
+void fill_amplitudes(const Problem& problem, const ModeSolutions& mode, const ScanObjective& objective, const Scale& scale, Fit& fit,
+                     FitWorkspace& work) {
+  const auto lead_slot = [](const Layout& layout) { return layout.lead; };
+  const double q = fit.physical.compression;
+  const double seen = compressed(fit.longest, q) - compressed(fit.lowest, q);
+  fit.rabi = fit.rabi_mean = {kUnknown, kUnknown, kUnknown, kUnknown, kNotThisScan};
+  fit.dead_time_s = fit.rabi;  // its prior at best
+  fit.quality.cycles = fit.physical.generalised * fit.generalised.low / fit.generalised.value * seen / constants::kTwoPi;
+  fit.compression = lost(objective, mode.best().minimum, fit.longest, scale);
+  fit.rabi_per_amplitude = over_candidates(problem, mode, fit, {Lead::Kind::per_amplitude}, scale, lead_slot, work);
+  for (const auto& pulse : problem.options.pulses) {
+    const Lead lead{Lead::Kind::pulse_amplitude, pulse.angle_rad, pulse.area_factor, pulse.length_s};
+    const bool asked = pulse.length_s > fit.physical.dead_time;
+    fit.pulse_amplitude.push_back(asked ? over_candidates(problem, mode, fit, lead, scale, lead_slot, work) : Estimate{});
+  }
+}
+
 }  // namespace
 
 void fill_from_covariance(const Problem& problem, const ScanObjective& objective, const Scale& scale, Fit& fit, FitWorkspace& work) {
@@ -312,7 +342,7 @@ void estimate(const Problem& problem, const ModeSolutions& mode, Fit& fit, FitWo
   auto offset_slot = [](const Layout& layout) { return layout.line_offset; };
   const auto ensemble = [](const Solution& solution) { return is_ensemble(solution.dynamics); };
   const bool ensembles = std::any_of(mode.solutions.begin(), mode.solutions.end(), ensemble);
-  const bool detuned = objective.layout().detuning_square >= 0;
+  const bool detuned = problem.scan.kind == Axis::duration && objective.layout().detuning_square >= 0;
   const auto lead = [&](Lead::Kind kind) { return over_candidates(problem, mode, fit, {kind}, scale, lead_slot, work); };
   fit.generalised = lead(ensembles ? Lead::Kind::mean : Lead::Kind::generalised);
   fit.rabi = ensembles || detuned ? lead(Lead::Kind::bare) : fit.generalised;
@@ -323,6 +353,7 @@ void estimate(const Problem& problem, const ModeSolutions& mode, Fit& fit, FitWo
     return;
   }
   fit.line_offset.why = kNotThisScan;
+  if (problem.scan.kind == Axis::amplitude) return fill_amplitudes(problem, mode, objective, scale, fit, work);
   for (const auto& pulse : problem.options.pulses)
     fit.pulse_length_s.push_back(
         over_candidates(problem, mode, fit, {Lead::Kind::pulse_length, pulse.angle_rad, pulse.area_factor}, scale, lead_slot, work));

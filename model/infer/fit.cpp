@@ -15,6 +15,7 @@ void fit_one(const ScanBatch& given, std::size_t site, const Prior& prior, const
   scan.progress = progress_of(scan, work.progress);
   fit = Fit{};
   fit.axis = scan.kind;
+  fit.scan_pulse_s = scan.pulse_length_s;
   fit.sampling = sampling_of(scan.kind, scan.axis);
   if (!scan.axis.empty()) {
     const auto [low, high] = std::minmax_element(scan.axis.begin(), scan.axis.end());

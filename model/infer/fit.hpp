@@ -22,10 +22,12 @@ struct Estimate {
   std::string_view why = {};
 };
 
-/// A pulse whose length is wanted: its angle, and its shape's area over peak times length.
+/// A pulse whose length is wanted, or of a scan of amplitudes its amplitude: its angle, its shape's area over peak times length,
+/// and the commanded length that it has where its amplitude is wanted (0: it is not).
 struct PulseAngle {
   double angle_rad = 0.0;
   double area_factor = 1.0;
+  double length_s = 0.0;
 };
 
 struct FitOptions {
@@ -50,7 +52,7 @@ struct CandidateScore {
 
 /// The next best mode that `expect` and the sampling allow: another frequency (or line), or the same with the contrast's other sign.
 struct RivalMode {
-  double frequency = 0.0;    // rad/s: generalised Rabi frequency, or line offset
+  double frequency = 0.0;    // rad/s: generalised Rabi frequency, or line offset; rad per amplitude
   double deviance_above = 0.0;
   bool opposite_contrast = false;
 };
@@ -68,11 +70,11 @@ struct FitQuality {
   double p_value = kUnknown;        // of a deviance as large, moment-matched; before scatter is counted
   double scatter = 1.0;             // variance of the residuals over the readout's own; above 1 where p_value < 0.1, in full where < 0.01
   double p_after_scatter = kUnknown;  // smallest p-value of runs, autocorrelation, furthest residual and left-over oscillation, with scatter counted
-  double cycles = kUnknown;         // seen within the span, lower end of the interval; duration scans
+  double cycles = kUnknown;         // seen within the span, lower end of the interval; duration and amplitude scans
   double over_flat = kUnknown;      // deviance gained over a flat line, scatter counted
   double over_monotone = kUnknown;  // over the best monotone curve of any shape, scatter counted
   double monotone_gain = kUnknown;  // deviance that the best monotone curve gains over a flat line; where nothing could be fitted
-  double range_low = kUnknown, range_high = kUnknown;  // rad/s: what the sampling and `expect` allow
+  double range_low = kUnknown, range_high = kUnknown;  // rad/s (rad per amplitude): what the sampling and `expect` allow
   double line_width = kUnknown;     // rad/s, full width at half maximum; detuning scans
   int points = 0;                   // measured
   std::vector<int> distrusted;      // indices of the points that are more probably outliers than not; all above is told without them
@@ -101,12 +103,13 @@ struct Fit {
   Axis axis = Axis::duration;
   Sampling sampling;
   double lowest = 0.0, longest = 0.0;  // the smallest and the largest value on the axis
+  double scan_pulse_s = 0.0;           // commanded length of the pulses of a detuning or amplitude scan
   Dynamics chosen = Dynamics::undamped;
   std::array<CandidateScore, kDynamicsCount> candidates{};
   int candidate_count = 0;
 
   Physical physical;            // of the chosen candidate
-  dynamics::Rates rates;        // of the chosen candidate
+  dynamics::Rates rates;        // of the chosen candidate; of an amplitude scan at its largest amplitude
   Vector x;                     // its free parameters, generalised lead
   Matrix covariance;            // of x, scatter counted
   bool negative_contrast = false;
@@ -116,7 +119,9 @@ struct Fit {
 
   Estimate rabi;                // rad/s, bare and peak
   Estimate rabi_mean;           // rad/s, of the ensemble
-  Estimate generalised;         // rad/s, on the carrier as it stands, the mean of the ensemble
+  Estimate generalised;         // rad/s, on the carrier as it stands, the mean of the ensemble; of an amplitude scan rad per amplitude (Physical)
+  Estimate rabi_per_amplitude;  // rad/s per amplitude, bare, where the amplitude is small; amplitude scans
+  Estimate compression;         // part of the coupling lost at the largest amplitude of a scan of amplitudes; below 0: gained
   Estimate line_offset;         // rad/s
   Estimate decay_s, dephasing_s, loss_s, envelope_s;
   Estimate contrast, floor, dead_time_s;
@@ -124,8 +129,12 @@ struct Fit {
   Estimate drift;               // relative change of the coupling along the scan, where one was found
   double mean_factor = 1.0;     // mean coupling over the peak one
   std::vector<Estimate> pulse_length_s;  // as FitOptions::pulses; duration scans
+  std::vector<Estimate> pulse_amplitude;  // as FitOptions::pulses; amplitude scans
   SecondIntervals second;
   FitQuality quality;
+
+  /// Of the pulses of a detuning or amplitude scan, s.
+  double effective_length_s() const { return scan_pulse_s - physical.dead_time; }
 };
 
 /// Working memory of the inference; one a thread.

@@ -23,8 +23,9 @@ struct Expected {
 /// What is known before a scan is looked at: from the configuration, and from the drive's history where it has one. Angular
 /// rates in rad/s, decay rates in 1/s.
 struct Prior {
-  std::optional<Expected> expect;        // of the Rabi frequency; without: below the scan's sampling limit
-  std::optional<Known> log_rabi;         // history's prediction of ln(Omega / (rad/s)) at the scan's time and drive amplitude
+  std::optional<Expected> expect;        // of the Rabi frequency; without: below the scan's sampling limit; none for scans of amplitudes
+  std::optional<Known> log_rabi;         // history's prediction of ln(Omega / (rad/s)) at the scan's time and drive amplitude; for
+                                         // a scan of amplitudes of ln(rotation per amplitude / rad)
   std::optional<double> rough_log_rabi;  // of lines, ln(Omega / (rad/s)) by the pulses in force: line_modes.hpp
   std::optional<Known> detuning;         // drive minus transition; without: exactly 0. The fit of a detuning scan does not read it
   std::optional<Known> floor, contrast;  // of the readout

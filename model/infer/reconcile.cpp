@@ -44,7 +44,7 @@ bool dead_time_contradicted(const ScanBatch& scan, const Prior& prior, const Fit
 /// Whether a line scan is badly described with the Rabi frequency that history knows: it may have been taken at another power that
 /// nobody stated.
 bool history_contradicted(const ScanBatch& scan, const Prior& prior, const Fit& fit) {
-  if (scan.kind == Axis::duration || !prior.log_rabi) return false;
+  if (scan.kind != Axis::detuning || !prior.log_rabi) return false;
   if (fit.outcome != FitOutcome::fitted || !(fit.quality.over_flat >= kEvidence) || fit.quality.p_value < 0.01) return true;
   return std::abs(std::log(fit.rabi_mean.value) - prior.log_rabi->mean) > kContradicted * std::max(prior.log_rabi->sigma, 1e-6);
 }

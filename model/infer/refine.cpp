@@ -3,6 +3,7 @@
 #include <cmath>
 
 #include "model/infer/line_modes.hpp"
+#include "model/infer/monotone.hpp"
 #include "model/infer/solution.hpp"
 #include "model/quantity/constants.hpp"
 
@@ -14,12 +15,17 @@ using constants::kTwoPi;
 // Deviance that a free damping must gain over none for the candidates with other causes of it to be tried. By chance, where there is
 // no damping, a one-sided rate gains more than this in one scan of six.
 constexpr double kDampingSeen = 1.0;
-// Modes this far above the best are not refined under those: no cause of a damping gains as much over all the others as it took.
-constexpr double kOthersWorthIt = 150.0;
+// Modes further above the best than the first, plus this part of what the best gains over a flat line, are not refined under those, and
+// no more than so many: the cause of a damping that nothing describes at all moves a mode by as much, and not the others.
+constexpr double kOthersWorthIt = 60.0, kOthersShare = 0.1;
+constexpr int kModesOfOthers = 3;
+// Nor is a scan that no simple candidate shows to oscillate, by less deviance than this over a flat line or a monotone curve: it will be
+// refused, and an ensemble that is free to be as broad as it likes takes long to say nothing.
+constexpr double kShown = 15.0;
 // So many modes, the best by their first refinement, are refined under every candidate before they are compared: the first
 // candidate may be the wrong one, and costs hundreds of deviance where there is much data.
 constexpr std::size_t kModesInFull = 6;
-// The first refinement of a line's starts only sorts them: to 0.02 in deviance, or as far as so many evaluations go.
+// The first refinement of starts only sorts them: to 0.02 in deviance, or as far as so many evaluations go.
 constexpr SolverOptions kSorting{.decrease_tolerance = 0.01, .max_evaluations = 60};
 // Other modes of a line are compared with the best to 2e-4 in deviance.
 constexpr SolverOptions kComparing{.decrease_tolerance = 1e-4, .max_evaluations = 100};
@@ -39,7 +45,7 @@ bool others_asked_for(const Prior& prior) {
 /// A fit that leaves its start by more than this many resolution elements has jumped to a mode that has, or does not deserve,
 /// a start of its own (fit_test, "every phase and frequency": a flop of 0.9 cycles ran to twice the sampling limit).
 bool strayed(const Problem& problem, double start, double end) {
-  return problem.scan.kind == Axis::duration && std::abs(end - start) > kTwoPi * 1.5 / problem.sampling.span;
+  return problem.scan.kind != Axis::detuning && std::abs(end - start) > kTwoPi * 1.5 / problem.sampling.span;
 }
 
 std::optional<Solution> refine(const Problem& problem, Dynamics candidate, const Physical& start, FitWorkspace& work,
@@ -92,14 +98,14 @@ void add_candidate(const Problem& problem, ModeSolutions& mode, Dynamics candida
   for (const double factor : {1.0, 2.5, 0.4}) {
     auto solution = refine(problem, candidate, start_for(problem, candidate, from, factor, work), work, options);
     if (solution && still_the_mode(problem, from, *solution)) return mode.solutions.push_back(std::move(*solution));
-    if (is_simple(candidate)) return;
+    if (is_simple(candidate) || problem.scan.kind == Axis::detuning) return;
   }
 }
 
 void refine_simple(const Problem& problem, ModeSolutions& mode, FitWorkspace& work, const SolverOptions& options = {}) {
   Solution first = mode.best();
   const double finished_at = std::max(kFinished, options.decrease_tolerance);
-  if (problem.scan.kind == Axis::detuning && !(first.minimum.expected_decrease < finished_at))
+  if (!(first.minimum.expected_decrease < finished_at))
     if (auto finished = refine(problem, first.dynamics, first.physical, work, options)) first = std::move(*finished);
   mode.solutions.clear();
   for (const Dynamics candidate : kAllDynamics)
@@ -120,7 +126,7 @@ bool shows_damping(const Problem& problem, const ModeSolutions& mode) {
   return !(undamped - damped < 0.5 * kDampingSeen) || !std::isfinite(damped);
 }
 
-void refine_others(const Problem& problem, ModeSolutions& mode, FitWorkspace& work) {
+void refine_others(const Problem& problem, ModeSolutions& mode, FitWorkspace& work, const SolverOptions& options) {
   const bool line = problem.scan.kind == Axis::detuning;
   // The best of those with one free rate tells how fast the oscillation fades.
   const auto damped = std::find_if(mode.solutions.begin(), mode.solutions.end(), [](const Solution& s) { return s.dynamics != Dynamics::undamped; });
@@ -130,7 +136,7 @@ void refine_others(const Problem& problem, ModeSolutions& mode, FitWorkspace& wo
     // Of a line a spread of the coupling changes no more than its side lobes, and two dampings no more than one.
     if (line && candidate != Dynamics::doppler && !only_candidate(problem.prior, candidate)) continue;
     if (candidate == Dynamics::thermal && problem.prior.motion.empty()) continue;
-    add_candidate(problem, mode, candidate, from, work);
+    add_candidate(problem, mode, candidate, from, work, options);
   }
   std::stable_sort(mode.solutions.begin(), mode.solutions.end(), by_aicc);
 }
@@ -155,6 +161,34 @@ void refine_lines(const Problem& problem, std::vector<ModeSolutions>& modes, Fit
   }
   const auto least = std::min_element(modes.begin(), modes.end(), [](const auto& a, const auto& b) { return a.best().aicc < b.best().aicc; });
   if (least != modes.begin()) refine_simple(problem, *least, work);
+}
+
+/// The best modes of a flop (or of a scan of amplitudes) under every simple candidate.
+void refine_flops(const Problem& problem, std::vector<ModeSolutions>& modes, FitWorkspace& work) {
+  if (modes.empty()) return;
+  const double gained = 2.0 * (monotone_half_deviance(problem.readout, problem.scan.axis).flat - modes.front().best().minimum.value);
+  // Of a scan that shows nothing, one mode says so and the next is its rival.
+  const std::size_t most = gained / problem.readout.dispersion >= kShown ? kModesInFull : 2;
+  if (modes.size() > most) modes.resize(most);
+  for (auto& mode : modes) refine_simple(problem, mode, work);
+}
+
+/// Refines the best modes under the candidates that are not simple, where the scan shows an oscillation (or a line) that asks for them.
+void refine_others(const Problem& problem, std::vector<ModeSolutions>& modes, FitWorkspace& work) {
+  if (modes.empty() || !others_asked_for(problem.prior)) return;
+  const double best = modes.front().best().minimum.value, dispersion = problem.readout.dispersion;
+  const auto plain = monotone_half_deviance(problem.readout, problem.scan.axis);
+  const double over_flat = 2.0 * (plain.flat - best), over_monotone = 2.0 * (std::min(plain.rising, plain.falling) - best);
+  if (!(std::min(over_flat, over_monotone) / dispersion >= kShown)) return;
+  const double worth_it = modes.front().best().aicc + kOthersWorthIt + kOthersShare * over_flat;
+  int refined = 0;
+  for (auto& mode : modes) {
+    if (refined == kModesOfOthers || !(mode.best().aicc < worth_it)) return;
+    if (!shows_damping(problem, mode)) continue;
+    refine_others(problem, mode, work, refined == 0 ? SolverOptions{} : kComparing);
+    if (problem.scan.kind == Axis::detuning && mode.best().aicc > modes.front().best().aicc + problem.options.rival_margin) return;
+    ++refined;
+  }
 }
 
 /// The candidate under which a start is refined first.
@@ -187,25 +221,19 @@ bool same_mode(const Problem& problem, const Solution& a, const Solution& b) {
 }
 
 std::vector<ModeSolutions> refine_modes(const Problem& problem, std::span<const Mode> starts, FitWorkspace& work) {
-  const bool line = problem.scan.kind == Axis::detuning;
   std::vector<ModeSolutions> modes;
   for (const auto& start : starts) {
     const Dynamics candidate = first_candidate(problem.prior, start.damped);
     const Physical from = first_start(problem, candidate, start, work);
-    if (auto solution = refine(problem, candidate, from, work, line ? kSorting : SolverOptions{})) add_mode(problem, modes, std::move(*solution));
+    if (auto solution = refine(problem, candidate, from, work, kSorting)) add_mode(problem, modes, std::move(*solution));
   }
   auto by_deviance = [](const ModeSolutions& a, const ModeSolutions& b) { return a.best().minimum.value < b.best().minimum.value; };
   std::stable_sort(modes.begin(), modes.end(), by_deviance);
-  if (line) refine_lines(problem, modes, work);
-  else if (modes.size() > kModesInFull) modes.resize(kModesInFull);
-  if (!line)
-    for (auto& mode : modes) refine_simple(problem, mode, work);
+  if (problem.scan.kind == Axis::detuning) refine_lines(problem, modes, work);
+  else refine_flops(problem, modes, work);
   const auto better = [](const ModeSolutions& a, const ModeSolutions& b) { return a.best().aicc < b.best().aicc; };
   std::stable_sort(modes.begin(), modes.end(), better);
-  if (modes.empty() || !others_asked_for(problem.prior)) return modes;
-  const double worth_it = modes.front().best().aicc + kOthersWorthIt;
-  for (auto& mode : modes)
-    if (mode.best().aicc < worth_it && shows_damping(problem, mode)) refine_others(problem, mode, work);
+  refine_others(problem, modes, work);
   std::stable_sort(modes.begin(), modes.end(), better);
   return modes;
 }

@@ -100,7 +100,7 @@ Sampling sampling_of(Axis kind, std::span<const double> axis) {
 
 std::span<const double> progress_of(const ScanBatch& scan, std::vector<double>& progress) {
   const auto n = scan.points();
-  if (scan.kind == Axis::detuning || n == 0) return {};
+  if (scan.kind != Axis::duration || n == 0) return {};
   progress.resize(n);
   const bool timed = scan.at_s.size() == n;
   for (std::size_t i = 0; i < n; ++i) progress[i] = timed ? scan.at_s[i] : static_cast<double>(i);

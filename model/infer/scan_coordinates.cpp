@@ -2,6 +2,7 @@
 #include <algorithm>
 #include <cmath>
 
+#include "model/infer/amplitude_response.hpp"
 #include "model/infer/scan_objective.hpp"
 
 /// Between the solver's vector and what a scan depends on.
@@ -26,6 +27,11 @@ constexpr double kMostDrift = 0.5;
 constexpr double kPriorReach = 8.0;
 // A dead time uncertain by less than this part of the pulse does not change a line by more than 1e-5 of the population.
 constexpr double kLineDeadTime = 1e-3;
+
+// Of an amplitude scan's pulse, whose length is fixed, at least a tenth must act.
+constexpr double kMostDead = 0.9;
+// At this the gain is doubled at the largest amplitude.
+constexpr double kMostExpanded = 0.75;
 
 double square(double x) { return x * x; }
 
@@ -55,7 +61,8 @@ ScanObjective::ScanObjective(const ScanBatch& scan, const Readout& readout, cons
   if (candidate != Dynamics::undamped && !is_ensemble(candidate)) take(layout_.damping);
   if (has_two_rates(candidate)) take(layout_.dephasing);
   if (is_ensemble(candidate)) take(layout_.breadth);
-  if (!line && prior.drift && prior.drift->sigma > 0.0) take(layout_.drift);
+  if (scan.kind == Axis::amplitude) take(layout_.compression);
+  if (scan.kind == Axis::duration && prior.drift && prior.drift->sigma > 0.0) take(layout_.drift);
 }
 
 Bounds ScanObjective::bounds() const {
@@ -72,6 +79,9 @@ Bounds ScanObjective::bounds() const {
   if (prior_.detuning)
     limit(layout_.detuning_square, 0.0, square(std::abs(prior_.detuning->mean) + kPriorReach * prior_.detuning->sigma));
   limit(layout_.dead_time, dead.mean - kPriorReach * dead.sigma, dead.mean + kPriorReach * dead.sigma);
+  if (scan_.kind == Axis::amplitude && layout_.dead_time >= 0)
+    bounds.upper[layout_.dead_time] = std::min(bounds.upper[layout_.dead_time], kMostDead * scan_.pulse_length_s);
+  if (scan_.kind == Axis::amplitude) limit(layout_.compression, -kMostExpanded / square(longest_of(scan_.axis)), infinite);
   limit(layout_.damping, 0.0, infinite);
   limit(layout_.dephasing, 0.0, infinite);
   double broadest = infinite;
@@ -124,6 +134,7 @@ double ScanObjective::mean_factor(const Physical& p) const {
 }
 
 double ScanObjective::apparent_frequency(const Physical& p) const {
+  if (scan_.kind == Axis::amplitude) return p.generalised * compressed(longest_of(scan_.axis), p.compression) / longest_of(scan_.axis);
   if (scan_.kind == Axis::detuning || !is_ensemble(candidate_)) return p.generalised;
   const double longest = longest_of(scan_.axis);
   if (candidate_ == Dynamics::doppler) return p.generalised + doppler_shift(p.generalised, p.breadth, longest);
@@ -143,6 +154,7 @@ Vector ScanObjective::pack(const Physical& physical) const {
   if (lead_.kind == Lead::Kind::mean) lead = physical.generalised * lead_factor(physical).value;
   if (lead_.kind == Lead::Kind::pulse_length)
     lead = physical.dead_time + lead_factor(physical).value / (lead_.area_factor * physical.generalised);
+  if (scan_.kind == Axis::amplitude) lead = amplitude_lead(physical);
   put(layout_.lead, lead);
   put(layout_.line_offset, physical.line_offset);
   put(layout_.detuning_square, physical.detuning_square);
@@ -153,6 +165,7 @@ Vector ScanObjective::pack(const Physical& physical) const {
   put(layout_.dephasing, physical.dephasing);
   put(layout_.breadth, physical.breadth);
   put(layout_.drift, physical.drift);
+  put(layout_.compression, physical.compression);
   return x;
 }
 
@@ -174,6 +187,8 @@ Physical ScanObjective::unpack(const Vector& x) const {
   if (lead_.kind == Lead::Kind::bare) p.generalised = std::sqrt(square(lead) + p.detuning_square);
   if (lead_.kind == Lead::Kind::mean) p.generalised = lead / lead_factor(p).value;
   if (lead_.kind == Lead::Kind::pulse_length) p.generalised = lead_factor(p).value / (lead_.area_factor * (lead - p.dead_time));
+  p.compression = get(layout_.compression, 0.0);
+  if (scan_.kind == Axis::amplitude) p.generalised = from_amplitude_lead(lead, p);
   return p;
 }
 
@@ -190,6 +205,7 @@ dynamics::Rates ScanObjective::rates(const Physical& p) const {
     rates.detuning = p.line_offset;
     return rates;
   }
+  if (scan_.kind == Axis::amplitude) return rates_at(p, longest_of(scan_.axis));
   double square_of_detuning = p.detuning_square;
   if (layout_.detuning_square >= 0) square_of_detuning = std::max(square_of_detuning, square(kLeastDetuning * p.generalised));
   rates.detuning = std::sqrt(square_of_detuning);

@@ -13,6 +13,8 @@ constexpr double kLeastCoupling = 0.03;
 // An ensemble's flop is followed no further, rad: 250 cycles. A profile of one that is hardly determined runs on for ever else, with
 // thousands of members at each step.
 constexpr double kMostPhase = 1571.0;
+// Nor a spread of the detuning beyond this many couplings, where no oscillation is left.
+constexpr double kMostDoppler = 3.0;
 
 /// Sum of products in four lanes, which makes it vector instructions without leave to reorder sums.
 double dot(const double* a, const double* b, std::size_t n) {
@@ -34,6 +36,8 @@ void ObjectiveWorkspace::reserve(std::size_t points) {
     if (array->size() < points) array->resize(points);
   for (auto& array : by_rate)
     if (array.size() < points) array.resize(points);
+  if (sets.size() < points) sets.resize(points);
+  if (statuses.size() < points) statuses.resize(points);
   // One column a parameter, and one to spare for products.
   if (jacobian.size() < (kMostFree + 1) * points) jacobian.resize((kMostFree + 1) * points);
   dynamics.reserve(points);
@@ -52,6 +56,8 @@ dynamics::Status ScanObjective::populate_ensemble(const Physical& p, std::span<c
                                                   bool derivatives) const {
   const auto of = ensemble(p);
   if (scan_.kind == Axis::duration && p.generalised * longest_of(axis) > kMostPhase) return dynamics::Status::too_many_members;
+  if (scan_.kind == Axis::duration && of.kind == dynamics::Ensemble::Kind::doppler && of.parameter > kMostDoppler * p.generalised)
+    return dynamics::Status::too_many_members;
   const std::span<double> by_parameter(work_.by_parameter.data(), derivatives ? axis.size() : 0);
   dynamics::Status status = dynamics::Status::ok;
   if (scan_.kind == Axis::duration)
@@ -68,7 +74,9 @@ bool ScanObjective::populate(const Physical& p, bool derivatives) const {
   if (!(p.generalised > 0.0) || !std::isfinite(p.generalised)) return false;
   if (scan_.kind == Axis::duration && p.detuning_square > (1.0 - square(kLeastCoupling)) * square(p.generalised)) return false;
   const auto n = scan_.points();
-  const dynamics::Rates rates_now = rates(p);
+  const bool by_amplitude = scan_.kind == Axis::amplitude;
+  if (by_amplitude && !(effective_length(p) > 0.0)) return false;
+  const dynamics::Rates rates_now = by_amplitude ? dynamics::Rates{} : rates(p);
   auto span = [n](std::vector<double>& v, bool wanted) { return std::span<double>(v.data(), wanted ? n : 0); };
   const bool by_decay = candidate_ == Dynamics::decay || candidate_ == Dynamics::decay_dephasing;
   const bool by_leak = candidate_ == Dynamics::leak || candidate_ == Dynamics::leak_dephasing;
@@ -84,7 +92,9 @@ bool ScanObjective::populate(const Physical& p, bool derivatives) const {
   dynamics::Status status = dynamics::Status::ok;
   const auto axis = played(p);
   const std::span<const dynamics::Rates> one(&rates_now, 1);
-  if (is_ensemble(candidate_)) {
+  if (by_amplitude) {
+    status = populate_amplitudes(p, out);
+  } else if (is_ensemble(candidate_)) {
     status = populate_ensemble(p, axis, out, derivatives);
   } else if (scan_.kind == Axis::duration) {
     dynamics::duration_scan(one, prior_.start, axis, std::span<const double>(&p.dead_time, 1), out, {&status, 1}, work_.dynamics);
@@ -111,6 +121,7 @@ std::span<double> ScanObjective::column(int parameter) const {
 
 /// Derivatives of the signal by the free parameters, from those of the population by rates, length and the ensemble's parameter.
 void ScanObjective::fill_columns(const Physical& p) const {
+  if (scan_.kind == Axis::amplitude) return fill_amplitude_columns(p);
   const double contrast = p.contrast();
   const auto slopes = lead_slopes(p);
   double of_generalised = contrast;  // d signal/d generalised, at fixed Delta^2, is this times d P/d Omega

@@ -15,9 +15,11 @@ namespace halfturn::infer {
 
 /// What a scan's signal depends on. The signal is signal_ground + (signal_excited - signal_ground) * population.
 struct Physical {
-  double generalised = 0.0;      // duration scans: sqrt(Omega^2 + Delta^2), rad/s; detuning scans: Omega, rad/s; of an ensemble
-                                 // with its peak (thermal: bare) coupling and its mean detuning
-  double detuning_square = 0.0;  // duration scans: Delta^2 (a flop sees no more of Delta), rad^2/s^2
+  /// Duration scans: sqrt(Omega^2 + Delta^2), rad/s; detuning scans: Omega, rad/s; of an ensemble with its peak (thermal: bare) coupling
+  /// and its mean detuning. Amplitude scans: the rotation on resonance per amplitude where that is small, rad, so the coupling per
+  /// amplitude times the effective length.
+  double generalised = 0.0;
+  double detuning_square = 0.0;  // duration and amplitude scans: Delta^2 (they see no more of Delta), rad^2/s^2
   double line_offset = 0.0;      // detuning scans: where the line lies from the carrier, rad/s
   double dead_time = 0.0;        // s
   double signal_ground = 0.0;
@@ -27,24 +29,27 @@ struct Physical {
   double breadth = 0.0;          // of an ensemble: the square of Ensemble::parameter (spread, doppler, cloud), for the signal is
                                  // linear in that where it is small; thermal: mean phonons
   double drift = 0.0;            // relative change of the coupling along the scan
+  double compression = 0.0;      // amplitude scans: q of amplitude_response.hpp
 
-  double rabi() const;           // bare, peak coupling, rad/s
+  double rabi() const;           // bare, peak coupling, rad/s; not of an amplitude scan
   double contrast() const { return signal_excited - signal_ground; }
 };
 
 /// The coordinate in place of `generalised`: itself, the bare coupling, itself averaged over the ensemble's couplings, or the length of the best pulse
 /// of a given angle (dynamics::best_pulse_phase); any of them, with the others, says what the scan depends on. One is chosen so
 /// that its profile is an interval of that quantity.
+/// Of amplitude scans: itself, the coupling per amplitude where that is small, or the amplitude of a pulse of a given angle.
 struct Lead {
-  enum class Kind : std::uint8_t { generalised, bare, mean, pulse_length } kind = Kind::generalised;
-  double angle_rad = 0.0;    // pulse_length
-  double area_factor = 1.0;  // pulse_length
+  enum class Kind : std::uint8_t { generalised, bare, mean, pulse_length, per_amplitude, pulse_amplitude } kind = Kind::generalised;
+  double angle_rad = 0.0;    // pulse_length, pulse_amplitude
+  double area_factor = 1.0;  // pulse_length, pulse_amplitude
+  double length_s = 0.0;     // pulse_amplitude: the pulse's commanded length
 };
 
 /// Positions of the free parameters in the solver's vector; -1 where one is held.
 struct Layout {
   int lead = -1, line_offset = -1, detuning_square = -1, dead_time = -1, ground = -1, excited = -1, damping = -1, dephasing = -1,
-      breadth = -1, drift = -1;
+      breadth = -1, drift = -1, compression = -1;
   int count = 0;
 };
 
@@ -63,6 +68,8 @@ struct ObjectiveWorkspace {
   std::array<std::vector<double>, dynamics::kRateCount> by_rate;
   std::vector<double> by_length, by_parameter;
   std::vector<double> played;    // lengths as they act under a drift
+  std::vector<dynamics::Rates> sets;        // amplitude scans: those of each point
+  std::vector<dynamics::Status> statuses;
   std::vector<double> jacobian;  // [parameter][point], the signal's derivatives
   dynamics::Workspace dynamics;
   dynamics::EnsembleWorkspace ensemble;
@@ -81,13 +88,15 @@ class ScanObjective final : public Objective {
   Bounds bounds() const;
   Vector pack(const Physical& physical) const;
   Physical unpack(const Vector& x) const;
-  dynamics::Rates rates(const Physical& physical) const;
+  dynamics::Rates rates(const Physical& physical) const;  // of an amplitude scan at its largest amplitude
+  dynamics::Rates rates_at(const Physical& physical, double amplitude) const;  // amplitude scans
   dynamics::Ensemble ensemble(const Physical& physical) const;
   /// The ensemble's mean coupling over the peak one.
   double mean_factor(const Physical& physical) const;
   /// The frequency, rad/s, at which a scan to the longest length seems to oscillate: the phase reached over that length. Of a spread
   /// the mean coupling; for doppler see doppler_shift; of a cloud or a thermal state, whose couplings are distributed nearly as
-  /// x0 - m y with y as exp(-y), the mean of exp(i x Omega t) has the phase x0 Omega t - atan(m Omega t).
+  /// x0 - m y with y as exp(-y), the mean of exp(i x Omega t) has the phase x0 Omega t - atan(m Omega t). Of an amplitude scan the
+  /// rotation at its largest amplitude over that amplitude, rad.
   double apparent_frequency(const Physical& physical) const;
   const Prior& prior() const { return prior_; }
   const ScanBatch& scan() const { return scan_; }
@@ -120,6 +129,11 @@ class ScanObjective final : public Objective {
 
   std::size_t damped_rate() const;
   bool populate(const Physical& physical, bool derivatives) const;
+  dynamics::Status populate_amplitudes(const Physical& physical, const dynamics::Derivatives& out) const;
+  void fill_amplitude_columns(const Physical& physical) const;
+  double effective_length(const Physical& physical) const { return scan_.pulse_length_s - physical.dead_time; }
+  double amplitude_lead(const Physical& physical) const;
+  double from_amplitude_lead(double lead, const Physical& physical) const;
   dynamics::Status populate_ensemble(const Physical& physical, std::span<const double> axis, const dynamics::Derivatives& out,
                                      bool derivatives) const;
   std::span<const double> played(const Physical& physical) const;

@@ -22,7 +22,9 @@ void withhold_unshown(const FitOptions& options, Fit& fit) {
   const std::string_view why = fit.axis == Axis::detuning ? kNoLine : kNoOscillation;
   for (Estimate* estimate : {&fit.rabi, &fit.rabi_mean, &fit.generalised, &fit.line_offset, &fit.contrast, &fit.breadth, &fit.drift, &fit.second.line_offset}) withhold(*estimate, why);
   for (Estimate* estimate : {&fit.decay_s, &fit.dephasing_s, &fit.loss_s, &fit.envelope_s}) withhold(*estimate, why);
+  for (Estimate* estimate : {&fit.rabi_per_amplitude, &fit.compression}) withhold(*estimate, why);
   for (Estimate& length : fit.pulse_length_s) withhold(length, why);
+  for (Estimate& amplitude : fit.pulse_amplitude) withhold(amplitude, why);
   for (Estimate& length : fit.second.pulse_length_s) withhold(length, why);
 }
 

@@ -45,7 +45,8 @@ bool outliers_suspected(const Readout& readout, const Fit& fit, FitWorkspace& wo
 }  // namespace
 
 void count_scatter(const ScanBatch& scan, Readout readout, const Prior& prior, const FitOptions& options, Fit& fit, FitWorkspace& work) {
-  if (fit.outcome != FitOutcome::fitted || !(fit.quality.scatter > kScatterCounts)) return;
+  // A scan that shows nothing with its scatter shows nothing when the scatter speaks louder.
+  if (fit.outcome != FitOutcome::fitted || !(fit.quality.scatter > kScatterCounts) || !(fit.quality.over_flat >= kEvidence)) return;
   readout.dispersion = fit.quality.scatter;
   Fit anew = fit;
   if (fit_with(scan, readout, prior, options, anew, work)) fit = std::move(anew);

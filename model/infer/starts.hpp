@@ -19,11 +19,11 @@ struct Mode {
 
 /// What the sampling of a duration scan can tell apart. `limit` is half the sampling rate of an even grid (or of the even grid
 /// of which a gapped one is part); of an uneven grid half of one over its smallest gap, at most 8 times that of an even grid
-/// of as many points over the same span. Angular, rad/s.
+/// of as many points over the same span. Angular, rad/s (scans of amplitudes: rad per amplitude).
 struct Sampling {
-  double span = 0.0;       // s or rad/s, between the extremes of the axis
+  double span = 0.0;       // in the axis's unit, between the extremes of the axis
   double spacing = 0.0;    // smallest gap
-  double limit = 0.0;      // rad/s, duration scans
+  double limit = 0.0;      // duration and amplitude scans
   bool even = false;       // all gaps are multiples of the smallest, to 1e-3 of it
   int distinct = 0;        // different values on the axis
 };
@@ -54,6 +54,11 @@ std::size_t duration_starts(const ScanBatch& scan, const Readout& readout, const
 /// 11 pi) or around the one that history knows, undamped and dephased; floor and contrast solved for with what is known of them.
 std::size_t line_starts(const ScanBatch& scan, const Readout& readout, const Prior& prior, const Sampling& sampling,
                         std::span<Mode> modes, SearchWorkspace& workspace);
+
+/// Starting points of a scan of amplitudes: rotations per amplitude from a tenth of a cycle in the span to the sampling limit, from
+/// a gain that rises by a third to a saturation that loses over half of the coupling.
+std::size_t amplitude_starts(const ScanBatch& scan, const Readout& readout, const Prior& prior, const Sampling& sampling,
+                             std::span<Mode> modes, SearchWorkspace& workspace);
 
 /// Moves signals that a linear solve put where no signal can be: probabilities between 0.005 and 0.995 and apart, rates above 0.
 void keep_signals_possible(Readout::Kind kind, Physical& start);

@@ -15,10 +15,12 @@ constexpr std::size_t kMostModes = 16;
 constexpr double kNegligibleDetuning = 1e-5;
 
 /// The prior without a detuning too small to be felt at the frequencies found.
-Prior felt(const Prior& prior, std::span<const Mode> starts) {
+Prior felt(const ScanBatch& scan, const Prior& prior, std::span<const Mode> starts) {
   Prior reduced = prior;
   if (!prior.detuning) return reduced;
-  const double most = std::abs(prior.detuning->mean) + 3.0 * prior.detuning->sigma;
+  // A scan of amplitudes: what Delta turns in its pulse, against the rotations of its largest amplitudes.
+  const double scale = scan.kind == Axis::amplitude ? scan.pulse_length_s / *std::max_element(scan.axis.begin(), scan.axis.end()) : 1.0;
+  const double most = scale * (std::abs(prior.detuning->mean) + 3.0 * prior.detuning->sigma);
   double slowest = std::numeric_limits<double>::infinity();
   for (const auto& start : starts) slowest = std::min(slowest, start.start.generalised);
   if (0.5 * most * most < kNegligibleDetuning * slowest * slowest) reduced.detuning.reset();
@@ -57,18 +59,31 @@ bool rank_with_scatter(ModeSolutions& mode, double scatter) {
 /// (1908)), 1 where the readout's own noise is all there is.
 double by_few_points(double scatter, double dof) { return scatter > 1.0 ? std::max(dof, 4.0) / (std::max(dof, 4.0) - 2.0) : 1.0; }
 
+/// The candidates that a scan may tell apart. At one pulse length a leak is a smaller contrast and nothing else, to six digits, and
+/// two rates are one. Ensembles are not averaged over at other amplitudes here.
+DynamicsSet told_apart(const ScanBatch& scan, const DynamicsSet& asked) {
+  if (scan.kind != Axis::amplitude) return asked;
+  DynamicsSet set = DynamicsSet::none();
+  for (const Dynamics dynamics : {Dynamics::undamped, Dynamics::dephasing, Dynamics::decay})
+    if (asked.has(dynamics)) set.add(dynamics);
+  if (set.empty()) set.add(Dynamics::undamped);
+  return set;
+}
+
 }  // namespace
 
 bool fit_under(const ScanBatch& scan, const Readout& readout, const Prior& prior, const FitOptions& options, Fit& fit, FitWorkspace& work) {
   std::array<Mode, kMostModes> starts;
-  const auto find = scan.kind == Axis::duration ? duration_starts : line_starts;
+  const auto find = scan.kind == Axis::duration ? duration_starts : scan.kind == Axis::detuning ? line_starts : amplitude_starts;
   std::size_t count = find(scan, readout, prior, fit.sampling, starts, work.search);
-  const Prior known = felt(prior, {starts.data(), count});
+  Prior known = felt(scan, prior, {starts.data(), count});
+  known.candidates = told_apart(scan, prior.candidates);
   const int points = fit.quality.points;
   const Problem problem{scan, readout, known, options, fit.sampling, points};
   if (!readout.odds.empty()) count = settled(problem, starts, count, work);
   auto modes = refine_modes(problem, {starts.data(), count}, work);
   fit.pulse_length_s.clear();
+  fit.pulse_amplitude.clear();
   fit.second = {};
   fit.quality = FitQuality{};
   fit.quality.points = points;

@@ -4,10 +4,10 @@
 #include <algorithm>
 #include <cmath>
 
-#include "model/dynamics/two_level.hpp"
 #include "model/quantity/constants.hpp"
 #include "model/quantity/format.hpp"
 #include "model/recalibrate/gates.hpp"
+#include "model/recalibrate/pulse_value.hpp"
 
 namespace halfturn::recalibrate {
 namespace {
@@ -19,91 +19,97 @@ constexpr double kLeastRotation = 5e-3;
 // A line is moved to when it is this part of its width away, and its sigma as well.
 constexpr double kLeastCarrierStep = 5e-3;
 
-double population_moved(const infer::Fit& fit, const infer::Prior& prior, double length_s, double dead_time_s) {
-  dynamics::Start pure = prior.start;
-  pure.impurity = 0.0;
-  const double before = dynamics::population({}, pure, 0.0);
-  return std::abs(infer::population_after(fit, pure, length_s - dead_time_s) - before);
-}
-
-double in_force(const State& state, const Pulse& pulse) {
-  const auto found = state.in_force_s.find(pulse.name);
-  return found == state.in_force_s.end() ? pulse.length_s : found->second;
-}
-
-/// The tick nearest to `length`, inside the limits. Rotation is linear in length, so the nearest rotates best.
-double on_tick(const Pulse& pulse, double length) {
-  if (!(pulse.tick_s > 0.0)) return std::clamp(length, pulse.minimum_s, pulse.maximum_s);
-  double ticks = std::round(length / pulse.tick_s);
-  // 1e-9 of a tick is rounding of the limits themselves.
-  if (ticks * pulse.tick_s < pulse.minimum_s) ticks = std::ceil(pulse.minimum_s / pulse.tick_s - 1e-9);
-  if (ticks * pulse.tick_s > pulse.maximum_s) ticks = std::floor(pulse.maximum_s / pulse.tick_s + 1e-9);
-  return ticks * pulse.tick_s;
-}
-
-/// A length that keeps what is in force, with what the fit says of it.
+/// What keeps the value in force.
 PulseDecision kept(const State& state, const Pulse& pulse, Verdict verdict) {
   PulseDecision decision;
   decision.name = pulse.name;
+  decision.adjust = pulse.adjust;
   decision.verdict = verdict;
   decision.angle_rad = pulse.angle_rad;
-  decision.previous_s = decision.length_s = in_force(state, pulse);
-  if (pulse.tick_s > 0.0) decision.ticks = std::llround(decision.length_s / pulse.tick_s);
+  decision.previous = decision.value = in_force(state, pulse);
+  decision.steps = steps_of(pulse, decision.value);
   return decision;
 }
 
-void describe(PulseDecision& decision, const Pulse& pulse, const infer::Fit& fit, const infer::Estimate& exact, const infer::Prior& prior) {
-  const double rate = fit.generalised.value * pulse.area_factor;  // rotation per length
-  decision.exact_s = exact.value;
-  decision.sigma_s = exact.sigma;
-  decision.low_s = exact.low;
-  decision.high_s = exact.high;
-  decision.rotation_error_rad = rate * (decision.previous_s - exact.value);
-  decision.tick_error_rad = rate * std::abs(on_tick(pulse, exact.value) - exact.value);
-  const double effective = (decision.length_s - fit.physical.dead_time) * pulse.area_factor;
-  decision.transfer = population_moved(fit, prior, effective, 0.0);
+void describe(PulseDecision& decision, const Pulse& pulse, const infer::Fit& fit, const PulseResponse& response, const infer::Prior& prior,
+              const Context& context) {
+  if (!response.told()) return;
+  const auto& exact = response.exact;
+  decision.exact = exact.value;
+  decision.sigma = exact.sigma;
+  decision.low = exact.low;
+  decision.high = exact.high;
+  decision.rotation_error_rad = rotation_beyond(pulse, response, decision.previous);
+  decision.step_error_rad = std::abs(rotation_beyond(pulse, response, on_step(pulse, exact.value)));
+  decision.transfer = transfer(pulse, decision.value, fit, prior, context.drive_amplitude);
 }
 
-/// What refuses a length that a believed fit gives; empty code where nothing does.
-Reason length_gate(const Pulse& pulse, const infer::Fit& fit, const infer::Estimate& exact, bool first, double longest_s, const Accept& accept) {
-  const double rate = fit.generalised.value * pulse.area_factor;
-  if (!std::isfinite(exact.sigma) || !std::isfinite(exact.low) || !std::isfinite(exact.high))
-    return {"uncertain", "The scan does not bound the length of `" + pulse.name + "`. Scan longer pulses with more shots.", true};
-  if (rate * exact.sigma > accept.max_angle_error_rad)
-    return {"uncertain",
-            "`" + pulse.name + "`, " + with_uncertainty(exact.value, exact.sigma, "s") + ", is uncertain by " + plain(1e3 * rate * exact.sigma, 3) +
-                " mrad of rotation (allowed: " + plain(1e3 * accept.max_angle_error_rad, 3) + " mrad). Take more shots, or more cycles.",
-            true};
-  if (exact.value < pulse.minimum_s || exact.value > pulse.maximum_s)
-    return {"outside_limits",
-            "`" + pulse.name + "` would need " + engineering(exact.value, "s") + ", outside its limits, " + engineering(pulse.minimum_s, "s") + " to " +
-                engineering(pulse.maximum_s, "s") + ". Restore the power or the alignment, or widen the limits.",
-            true};
-  if (first && exact.value > longest_s)
+/// What refuses a value beyond anything scanned: the first scan's lengths, and any scan's amplitudes, beyond which an amplifier
+/// may saturate. Empty code where nothing does.
+Reason reach_gate(const Pulse& pulse, const infer::Fit& fit, double exact, bool first) {
+  if (fit.axis == infer::Axis::amplitude && exact > fit.longest)
     return {"beyond_scan",
-            "`" + pulse.name + "`, " + engineering(exact.value, "s") + ", is longer than any pulse of this first scan (" +
-                engineering(longest_s, "s") + "). Scan past it once.",
+            "`" + pulse.name + "` would need the amplitude " + plain(exact) + ", more than any of this scan (up to " + plain(fit.longest) +
+                "), where the drive may saturate. Scan past it.",
+            true};
+  if (fit.axis == infer::Axis::duration && pulse.adjust == Adjust::length && first && exact > fit.longest)
+    return {"beyond_scan",
+            "`" + pulse.name + "`, " + engineering(exact, "s") + ", is longer than any pulse of this first scan (" +
+                engineering(fit.longest, "s") + "). Scan past it once.",
             true};
   return {};
 }
 
-PulseDecision decide_length(const State& state, const Pulse& pulse, const infer::Fit& fit, const infer::Estimate& exact,
-                            const infer::Known& tracked, const infer::Prior& prior) {
+/// What refuses a value that a believed fit gives; empty code where nothing does.
+Reason value_gate(const Pulse& pulse, const infer::Fit& fit, const PulseResponse& response, bool first, const Accept& accept) {
+  const auto& exact = response.exact;
+  const std::string what = value_name(pulse);
+  const bool bounded = response.reckoned || (std::isfinite(exact.low) && std::isfinite(exact.high));
+  if (!std::isfinite(exact.sigma) || !bounded)
+    return {"uncertain",
+            "The scan does not bound the " + what + " of `" + pulse.name + "`. Scan " +
+                (fit.axis == infer::Axis::amplitude ? "larger amplitudes" : "longer pulses") + " with more shots.",
+            true};
+  if (response.slope * exact.sigma > accept.max_angle_error_rad)
+    return {"uncertain",
+            "`" + pulse.name + "`, " + value_text(pulse, exact) + ", is uncertain by " + plain(1e3 * response.slope * exact.sigma, 3) +
+                " mrad of rotation (allowed: " + plain(1e3 * accept.max_angle_error_rad, 3) + " mrad). Take more shots, or more cycles.",
+            true};
+  if (exact.value < pulse.minimum || exact.value > pulse.maximum)
+    return {"outside_limits",
+            "`" + pulse.name + "` would need " + value_text(pulse, exact.value) + ", outside its limits, " + value_text(pulse, pulse.minimum) +
+                " to " + value_text(pulse, pulse.maximum) + ". Restore the power or the alignment, or widen the limits.",
+            true};
+  return reach_gate(pulse, fit, exact.value, first);
+}
+
+/// Where a value is wanted, and how surely.
+struct Target {
+  double value, sigma;
+};
+
+/// A length follows the tracked frequency: it moves from the fit's own in proportion, dead time aside. An amplitude is the scan's
+/// own: the tracked gain belongs to small amplitudes, and its error and that of the compression cancel in the amplitude.
+Target target_of(const Pulse& pulse, const infer::Fit& fit, const PulseResponse& response, const std::optional<infer::Known>& tracked) {
+  const auto& exact = response.exact;
+  if (pulse.adjust == Adjust::amplitude || !tracked) return {exact.value, exact.sigma};
+  const double working = pulse.angle_rad / response.slope;
+  return {exact.value + working * (std::log(fit.rabi_mean.value) - tracked->mean), working * tracked->sigma};
+}
+
+PulseDecision decide_value(const State& state, const Pulse& pulse, const infer::Fit& fit, const PulseResponse& response,
+                           const std::optional<infer::Known>& tracked, const infer::Prior& prior, const Context& context) {
   PulseDecision decision = kept(state, pulse, Verdict::keep);
-  const double rate = fit.generalised.value * pulse.area_factor;
-  // The tracked frequency moves the length from the fit's own in proportion, dead time aside.
-  const double working = pulse.angle_rad / rate;
-  const double target = exact.value + working * (std::log(fit.rabi_mean.value) - tracked.mean);
-  const double sigma = working * tracked.sigma;
-  const double wanted = on_tick(pulse, target);
-  const double least = std::max({sigma, 0.5 * pulse.tick_s, kLeastRotation / rate});
-  if (std::abs(target - decision.previous_s) > least && wanted != decision.previous_s) {
+  const Target target = target_of(pulse, fit, response, tracked);
+  const double wanted = on_step(pulse, target.value);
+  const double least = std::max({target.sigma, 0.5 * pulse.step, kLeastRotation / response.slope});
+  if (std::abs(target.value - decision.previous) > least && wanted != decision.previous) {
     decision.verdict = Verdict::apply;
-    decision.length_s = wanted;
-    decision.change = wanted / decision.previous_s - 1.0;
-    if (pulse.tick_s > 0.0) decision.ticks = std::llround(wanted / pulse.tick_s);
+    decision.value = wanted;
+    decision.change = wanted / decision.previous - 1.0;
+    decision.steps = steps_of(pulse, wanted);
   }
-  describe(decision, pulse, fit, exact, prior);
+  describe(decision, pulse, fit, response, prior, context);
   return decision;
 }
 
@@ -113,6 +119,10 @@ FitEvent event_of(const State& state, const infer::Fit& fit, const Context& cont
   event.span = fit.sampling.span;
   event.spacing = fit.sampling.spacing;
   event.drive_amplitude = context.drive_amplitude;
+  if (fit.axis == infer::Axis::amplitude) {
+    event.quantity = Quantity::gain;
+    event.drive_amplitude = kAbsent;  // it was stepped
+  }
   if (fit.outcome != infer::FitOutcome::fitted) return event;
   if (fit.axis == infer::Axis::detuning) {
     event.quantity = Quantity::line;
@@ -123,44 +133,56 @@ FitEvent event_of(const State& state, const infer::Fit& fit, const Context& cont
     return event;
   }
   // The mean is what lengths go by, and candidates agree on it where their peaks differ.
-  event.value = std::log(fit.rabi_mean.value);
-  event.sigma = fit.rabi_mean.sigma / fit.rabi_mean.value;
+  const auto& coupling = event.quantity == Quantity::gain ? fit.rabi_per_amplitude : fit.rabi_mean;
+  event.value = std::log(coupling.value);
+  event.sigma = coupling.sigma / coupling.value;
   event.noise_floor = kRabiNoise;
   event.dead_time_s = fit.dead_time_s.value;
   event.dead_time_sigma_s = fit.dead_time_s.sigma;
   return event;
 }
 
-/// The Rabi frequency as it will be tracked when this fit has been taken.
-infer::Known tracked_after(const State& state, const FitEvent& event) {
+/// The Rabi frequency as it will be tracked when this fit has been taken; none from a scan of amplitudes.
+std::optional<infer::Known> tracked_after(const State& state, const FitEvent& event) {
+  if (event.quantity != Quantity::rabi) return std::nullopt;
   State after = state;
   advance(after, event);
-  return *after.rabi.predict(event.at);
+  return after.rabi.predict(event.at);
+}
+
+/// Whether a scan of this kind adjusts the pulse, or says something of it all the same.
+bool speaks_of(const Pulse& pulse, const infer::Fit& fit, const PulseResponse& response) {
+  const Adjust adjusted = fit.axis == infer::Axis::amplitude ? Adjust::amplitude : Adjust::length;
+  return pulse.adjust == adjusted || response.told();
+}
+
+/// What this scan says of a pulse decides it; where it says nothing, or not enough from another amplitude, the pulse rests.
+PulseDecision decide_pulse(const State& state, const infer::Fit& fit, const infer::Prior& prior, const Context& context, std::size_t index,
+                           const std::optional<infer::Known>& tracked, Decision& decision) {
+  const Pulse& pulse = context.pulses[index];
+  const PulseResponse response = response_of(pulse, index, fit, context.drive_amplitude);
+  PulseDecision one = kept(state, pulse, Verdict::keep);
+  describe(one, pulse, fit, response, prior, context);
+  if (!speaks_of(pulse, fit, response)) return one;
+  Reason reason = value_gate(pulse, fit, response, decision.event.effect == Effect::first, context.accept);
+  if (!reason.refuses) return decide_value(state, pulse, fit, response, tracked, prior, context);
+  if (response.reckoned) return one;
+  one.verdict = Verdict::refuse;
+  decision.reasons.push_back(std::move(reason));
+  return one;
 }
 
 void decide_pulses(const State& state, const infer::Fit& fit, const infer::Prior& prior, const Context& context, Decision& decision) {
-  const bool first = decision.event.effect == Effect::first;
-  const infer::Known tracked = tracked_after(state, decision.event);
-  for (std::size_t i = 0; i < context.pulses.size(); ++i) {
-    const Pulse& pulse = context.pulses[i];
-    const auto& exact = fit.pulse_length_s[i];
-    Reason reason = length_gate(pulse, fit, exact, first, fit.longest, context.accept);
-    if (reason.refuses) {
-      decision.pulses.push_back(kept(state, pulse, Verdict::refuse));
-      describe(decision.pulses.back(), pulse, fit, exact, prior);
-      decision.reasons.push_back(std::move(reason));
-    } else {
-      decision.pulses.push_back(decide_length(state, pulse, fit, exact, tracked, prior));
-    }
-  }
+  const auto tracked = tracked_after(state, decision.event);
+  for (std::size_t i = 0; i < context.pulses.size(); ++i)
+    decision.pulses.push_back(decide_pulse(state, fit, prior, context, i, tracked, decision));
 }
 
 void keep_all(const State& state, const infer::Fit& fit, const infer::Prior& prior, const Context& context, Verdict verdict,
               Decision& decision) {
-  const bool lengths = fit.outcome == infer::FitOutcome::fitted && fit.axis == infer::Axis::duration;
   for (std::size_t i = 0; i < context.pulses.size(); ++i) {
     decision.pulses.push_back(kept(state, context.pulses[i], verdict));
-    if (lengths) describe(decision.pulses.back(), context.pulses[i], fit, fit.pulse_length_s[i], prior);
+    describe(decision.pulses.back(), context.pulses[i], fit, response_of(context.pulses[i], i, fit, context.drive_amplitude), prior, context);
   }
 }
 
@@ -186,10 +208,16 @@ void decide_carrier(const infer::Fit& fit, const infer::Prior& prior, Decision& 
   decision.carrier_shift = offset.mean;
 }
 
-Verdict most_cautious(const std::vector<PulseDecision>& pulses) {
+/// Over the pulses that a scan of this kind adjusts; the others rest, which is no verdict on the scan.
+Verdict most_cautious(const std::vector<PulseDecision>& pulses, Adjust adjusted) {
   Verdict verdict = Verdict::apply;
-  for (const auto& pulse : pulses) verdict = std::max(verdict, pulse.verdict);
-  return pulses.empty() ? Verdict::keep : verdict;
+  bool any = false;
+  for (const auto& pulse : pulses) {
+    if (pulse.adjust != adjusted && pulse.verdict == Verdict::keep) continue;
+    verdict = std::max(verdict, pulse.verdict);
+    any = true;
+  }
+  return any ? verdict : Verdict::keep;
 }
 
 void say_held(const State& state, Decision& decision) {
@@ -229,9 +257,9 @@ Decision decide(const State& state, const infer::Fit& fit, const infer::Prior& p
     keep_all(state, fit, prior, context, Verdict::keep, decision);
   } else {
     decide_pulses(state, fit, prior, context, decision);
-    decision.verdict = most_cautious(decision.pulses);
+    decision.verdict = most_cautious(decision.pulses, fit.axis == infer::Axis::amplitude ? Adjust::amplitude : Adjust::length);
   }
-  const bool placed = fit.axis == infer::Axis::duration || std::isfinite(decision.event.carrier);
+  const bool placed = fit.axis != infer::Axis::detuning || std::isfinite(decision.event.carrier);
   const bool tracks = decision.event.effect == Effect::first || decision.event.effect == Effect::accepted;
   if (!std::isfinite(decision.event.value) || !(decision.event.sigma > 0.0) || (tracks && !placed)) decision.event.effect = Effect::none;
   cautions(state, fit, prior, context, decision.reasons);

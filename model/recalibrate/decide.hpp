@@ -16,19 +16,21 @@ namespace halfturn::recalibrate {
 enum class Verdict : std::uint8_t { apply, keep, refuse };
 std::string_view name(Verdict verdict);
 
-/// What is decided for one pulse; lengths in s, angles in rad. NaN where the fit gives no length.
+/// What is decided for one pulse; values are lengths in s or relative drive amplitudes, as `adjust` says, angles in rad. NaN where
+/// the fit gives no value.
 struct PulseDecision {
   std::string name;
+  Adjust adjust = Adjust::length;
   Verdict verdict = Verdict::keep;
   double angle_rad = 0.0;
-  double length_s = 0.0;    // what to load: the one in force unless the verdict is `apply`
-  double exact_s = kAbsent, sigma_s = kAbsent, low_s = kAbsent, high_s = kAbsent;
-  std::int64_t ticks = 0;   // of length_s; 0 without a tick
-  double previous_s = 0.0;
-  double change = 0.0;      // length_s / previous_s - 1
-  double rotation_error_rad = kAbsent;  // previous_s rotates this much too far (negative: not far enough)
-  double tick_error_rad = kAbsent;      // what rounding to the tick costs, magnitude
-  double transfer = kAbsent;            // population moved by length_s under the fitted dynamics, from a pure start
+  double value = 0.0;       // what to load: the one in force unless the verdict is `apply`
+  double exact = kAbsent, sigma = kAbsent, low = kAbsent, high = kAbsent;
+  std::int64_t steps = 0;   // of value; 0 without a step
+  double previous = 0.0;
+  double change = 0.0;      // value / previous - 1
+  double rotation_error_rad = kAbsent;  // previous rotates this much too far (negative: not far enough)
+  double step_error_rad = kAbsent;      // what rounding to the step costs, magnitude
+  double transfer = kAbsent;            // population moved by value under the fitted dynamics, from a pure start
 };
 
 /// What the decision rests on besides the fit.

@@ -32,9 +32,32 @@ constexpr double kSameAxis = 0.01;
 // So many flops in a row at another drive amplitude make it the new one.
 constexpr int kAmplitudeTaken = 3;
 
+// A coupling that gains more than this over proportion, at the largest amplitude of a scan, is of another kind than the response
+// that is fitted: couplings that go as the square of the amplitude end at the bound of 1.0 (recalibrate's amplitude_test).
+constexpr double kMostGained = -0.8;
+
 std::string hertz(double angular) { return engineering(angular / kTwoPi, "Hz"); }
 
 std::string hertz(const infer::Estimate& e) { return with_uncertainty(e.value / kTwoPi, e.sigma / kTwoPi, "Hz"); }
+
+/// What a flop is stepped in, and how its frequencies read: of a scan of amplitudes per unit of amplitude.
+struct Stepped {
+  const char* what;    // of what finer or uneven steps are asked for
+  const char* further;
+};
+
+Stepped stepped(const infer::Fit& fit) {
+  if (fit.axis == infer::Axis::amplitude) return {"amplitude", "larger amplitudes"};
+  return {"pulse length", "longer pulses"};
+}
+
+std::string frequency(const infer::Fit& fit, double found) {
+  return fit.axis == infer::Axis::amplitude ? hertz(found / fit.effective_length_s()) + " per unit of amplitude" : hertz(found);
+}
+
+std::string frequency(const infer::Fit& fit) {
+  return fit.axis == infer::Axis::amplitude ? hertz(fit.rabi_per_amplitude) + " per unit of amplitude" : hertz(fit.generalised);
+}
 
 std::string percent(double ratio) { return plain(100.0 * ratio, 2) + " %"; }
 
@@ -102,7 +125,8 @@ void evidence_gates(const infer::Fit& fit, const Context& context, Reasons& reas
     refuse(reasons, "monotone",
            std::string("A curve that only rises or only falls describes the scan nearly as well as ") + (line ? "a line" : "an oscillation") +
                " (deviance gained " + plain(quality.over_monotone, 3) + ", asked for " + plain(least, 3) + "). " +
-               (line ? "Widen the window so that both sides of the line are in it." : "Scan to longer pulses so that a whole cycle is seen."));
+               (line ? std::string("Widen the window so that both sides of the line are in it.")
+                     : std::string("Scan to ") + stepped(fit).further + " so that a whole cycle is seen."));
   }
 }
 
@@ -113,7 +137,8 @@ void nothing_fitted(const infer::Fit& fit, const Context& context, Reasons& reas
   if (fit.quality.monotone_gain >= context.accept.min_evidence)
     return refuse(reasons, "monotone",
                   "No " + what + " could be fitted; a curve that only rises or only falls describes the scan. " +
-                      (line ? "Widen the window so that both sides of the line are in it." : "Scan to longer pulses so that a whole cycle is seen."));
+                      (line ? std::string("Widen the window so that both sides of the line are in it.")
+                            : std::string("Scan to ") + stepped(fit).further + " so that a whole cycle is seen."));
   refuse(reasons, line ? "no_line" : "no_oscillation",
          "No " + what + " could be fitted: from every starting point the fit ran away. Look whether the light reaches the atoms, whether atoms are "
          "there, and whether the carrier is on the line; then scan again with more shots.");
@@ -131,12 +156,13 @@ void rival_gate(const infer::Fit& fit, const Context& context, Reasons& reasons)
                "There may be two lines, or a side lobe was caught: scan a wider window with a shorter, weaker pulse.");
   } else if (rival.opposite_contrast) {
     refuse(reasons, "rival",
-           "Contrast of the opposite sign, at " + hertz(rival.frequency) + ", with a dead time half a cycle away," + margin +
+           "Contrast of the opposite sign, at " + frequency(fit, rival.frequency) + ", with a dead time half a cycle away," + margin +
                "State readout.contrast (its sign is enough) or a tighter switching.uncertainty in the configuration.");
   } else {
     refuse(reasons, "rival",
-           "The scan cannot tell " + hertz(fit.generalised.value) + " from " + hertz(rival.frequency) + ": the latter" + margin +
-               "Step the pulse length unevenly or more finely, or narrow expect.rabi if you know which it is.");
+           "The scan cannot tell " + frequency(fit, fit.generalised.value) + " from " + frequency(fit, rival.frequency) + ": the latter" +
+               margin + "Step the " + stepped(fit).what + " unevenly or more finely" +
+               (fit.axis == infer::Axis::duration ? ", or narrow expect.rabi if you know which it is." : "."));
   }
 }
 
@@ -209,7 +235,12 @@ void fit_gates(const infer::Fit& fit, const Context& context, Reasons& reasons) 
                       " different places: at least 7 at 5 are needed. Scan more points.");
   if (fit.outcome == infer::FitOutcome::not_converged) return nothing_fitted(fit, context, reasons);
   evidence_gates(fit, context, reasons);
-  if (poor(quality, context.accept))
+  if (fit.axis == infer::Axis::amplitude && fit.compression.value < kMostGained)
+    refuse(reasons, "poor_fit",
+           "The coupling rises much faster than the drive amplitude, by " + percent(-fit.compression.value) +
+               " more at the largest one than in proportion. That is how two-photon drives look, whose coupling goes as the square, and "
+               "drives with a threshold: give amplitudes in the unit in which the field goes.");
+  else if (poor(quality, context.accept))
     refuse(reasons, "poor_fit",
            "The model does not describe the scan" + which(quality.of_scan, context) + ": the residuals' variance is " + plain(quality.scatter, 3) +
                " times what the readout's own noise allows" +
@@ -225,8 +256,8 @@ void fit_gates(const infer::Fit& fit, const Context& context, Reasons& reasons) 
   rival_gate(fit, context, reasons);
   if (quality.outside_expect && !context.expect)
     refuse(reasons, "rival",
-           "The only frequency that fits, " + hertz(fit.generalised) + ", lies above the scan's sampling limit, " + hertz(quality.range_high) +
-               ". Step the pulse length more finely, or state expect.rabi.");
+           "The only frequency that fits, " + frequency(fit) + ", lies above the scan's sampling limit, " + frequency(fit, quality.range_high) +
+               ". Step the " + stepped(fit).what + " more finely" + (fit.axis == infer::Axis::duration ? ", or state expect.rabi." : "."));
   else if (quality.outside_expect)
     refuse(reasons, "outside_expect",
            "The best fit, " + hertz(fit.generalised) + ", lies outside expect.rabi, " + hertz(quality.range_low) + " to " +
@@ -236,7 +267,7 @@ void fit_gates(const infer::Fit& fit, const Context& context, Reasons& reasons) 
   if (!(quality.cycles >= context.accept.min_cycles))
     refuse(reasons, "too_few_cycles",
            "The scan holds " + (std::isfinite(quality.cycles) ? "as few as " + plain(std::max(0.0, quality.cycles), 2) : std::string("an unknown number of")) +
-               " cycles (lower end of the interval; asked for " + plain(context.accept.min_cycles, 2) + "). Scan to longer pulses.");
+               " cycles (lower end of the interval; asked for " + plain(context.accept.min_cycles, 2) + "). Scan to " + stepped(fit).further + ".");
 }
 
 void cautions(const State& state, const infer::Fit& fit, const infer::Prior& prior, const Context& context, Reasons& reasons) {
@@ -244,8 +275,8 @@ void cautions(const State& state, const infer::Fit& fit, const infer::Prior& pri
   if (fit.outcome != infer::FitOutcome::fitted) return;
   if (quality.by_history)
     caution(reasons, "by_history",
-            "The scan alone cannot tell this frequency from another; the drive's history decided. Step the pulse length unevenly to have "
-            "the scan tell it.");
+            "The scan alone cannot tell this frequency from another; the drive's history decided. Step the " + std::string(stepped(fit).what) +
+                " unevenly to have the scan tell it.");
   if (quality.scatter > 1.0 && !poor(quality, context.accept))
     caution(reasons, "scatter",
             "The points scatter with " + plain(quality.scatter, 3) + " times the variance of the readout's own noise; all errors were widened "
@@ -254,6 +285,10 @@ void cautions(const State& state, const infer::Fit& fit, const infer::Prior& pri
     caution(reasons, "outliers",
             points_set_aside(fit, context) + " are far from what the others say, and were set aside. An ion or atom lost, a laser that dropped out, or a "
             "readout that failed would do this. If it happens often, find out which before trusting the points that are left.");
+  if (std::isfinite(fit.drift.value))
+    caution(reasons, "drifting",
+            "The Rabi frequency changed by " + percent(fit.drift.value) + " (sigma " + percent(fit.drift.sigma) +
+                ") along the scan; lengths hold for its middle. Look for a beam that warms up or moves, and scan in less time or in random order.");
   if (quality.dead_time_released)
     caution(reasons, "dead_time",
             "The dead time found, " + with_uncertainty(fit.dead_time_s.value, fit.dead_time_s.sigma, "s") + ", is far from what is configured, " +
@@ -272,7 +307,7 @@ void cautions(const State& state, const infer::Fit& fit, const infer::Prior& pri
               "The carrier is known to " + hertz(prior.detuning->sigma) + ", which leaves the bare Rabi frequency less certain than the "
               "oscillation itself, " + hertz(fit.generalised) + ". Pulse lengths rest on the oscillation; for the intensity, scan the line.");
   }
-  if (std::isfinite(context.transition_frequency) && fit.rabi.value > 0.0) {
+  if (fit.axis != infer::Axis::amplitude && std::isfinite(context.transition_frequency) && fit.rabi.value > 0.0) {
     const double shift = fit.rabi.value * fit.rabi.value / (4.0 * context.transition_frequency);
     const double sigma = fit.axis == infer::Axis::detuning ? fit.line_offset.sigma : fit.rabi.sigma;
     if (shift > sigma)
@@ -289,12 +324,13 @@ void cautions(const State& state, const infer::Fit& fit, const infer::Prior& pri
 Effect history_gate(const State& state, const FitEvent& event, const infer::Fit& fit, const Context& context, Reasons& reasons) {
   const bool line = event.quantity == Quantity::line;
   if (const auto effect = amplitude_gate(state, event, reasons)) return *effect;
-  const Track& track = line ? state.line : state.rabi;
+  const bool gain = event.quantity == Quantity::gain;
+  const Track& track = line ? state.line : gain ? state.gain : state.rabi;
   if (track.accepted > 0 && event.at < track.at) {
     caution(reasons, "late", "Taken before the last scan that was believed: it is logged and moves nothing.");
     return Effect::none;
   }
-  const auto& step = line ? state.line_step : state.rabi_step;
+  const auto& step = line ? state.line_step : gain ? state.gain_step : state.rabi_step;
   const auto predicted = track.predict(event.at);
   const double width = fit.quality.line_width;
   // A carrier step is measured from the carrier as it stands: that is what the experiment relies on.
@@ -305,14 +341,15 @@ Effect history_gate(const State& state, const FitEvent& event, const infer::Fit&
   if (!awake || off <= allowed) {
     if (track.accepted > 0) return Effect::accepted;
     if (!line || std::isfinite(event.carrier))
-      caution(reasons, "first", std::string("First ") + (line ? "line" : "flop") + " of this drive that was believed: there is no history to hold it against.");
+      caution(reasons, "first", std::string("First ") + (line ? "line" : gain ? "scan of amplitudes" : "flop") + " of this drive that was believed: there is no history to hold it against.");
     return Effect::first;
   }
   const std::string seen =
       line ? "The line lies " + hertz(fit.line_offset) + " from the carrier, " + percent(off) + " of its width (allowed at once: " +
                  percent(allowed) + ")"
-           : "The Rabi frequency, " + hertz(fit.rabi) + ", is " + percent(off) + " from the " + hertz(std::exp(predicted->mean)) +
-                 " that history predicts (allowed at once: " + percent(allowed) + ")";
+           : "The Rabi frequency" + std::string(gain ? " per unit of amplitude, " + hertz(fit.rabi_per_amplitude) : ", " + hertz(fit.rabi)) +
+                 ", is " + percent(off) + " from the " + hertz(std::exp(predicted->mean)) + " that history predicts (allowed at once: " +
+                 percent(allowed) + ")";
   if (step) {
     // The drive went on drifting in between.
     const double drifted = track.hourly() * std::max(0.0, static_cast<double>(event.at - step->at)) / 3.6e12;

@@ -1,18 +1,26 @@
 // SPDX-License-Identifier: Apache-2.0
 #pragma once
+#include <cstdint>
 #include <string>
 
 namespace halfturn::recalibrate {
 
-/// A calibrated pulse of a drive, as configured.
+/// What of a pulse is proposed anew: its length, in s, or the relative drive amplitude, its length being fixed.
+enum class Adjust : std::uint8_t { length, amplitude };
+
+/// A calibrated pulse of a drive, as configured. Its value is what is adjusted, in s or as a relative drive amplitude.
 struct Pulse {
   std::string name;
   double angle_rad = 0.0;
-  double length_s = 0.0;     // in force until the experiment reports another
-  double tick_s = 0.0;       // lengths are multiples of it; 0: any length
-  double minimum_s = 0.0;
-  double maximum_s = 0.0;    // limits of what may be proposed
+  double length_s = 0.0;     // in force until the experiment reports another; fixed where the amplitude is adjusted
+  double step = 0.0;         // values are multiples of it; 0: any value
+  double minimum = 0.0;
+  double maximum = 0.0;      // limits of what may be proposed
   double area_factor = 1.0;  // pulse area over peak times length, of its shape
+  Adjust adjust = Adjust::length;
+  double amplitude = 0.0;    // in force until the experiment reports another, where it is adjusted
+
+  double configured() const { return adjust == Adjust::amplitude ? amplitude : length_s; }
 };
 
 /// When a fit is believed. Defaults are those of the contract.

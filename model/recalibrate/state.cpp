@@ -58,6 +58,18 @@ void confirm(Track& track, const Pending& pending, const FitEvent& event) {
   restart(track, (a * pending.value + b * event.value) / (a + b), 1.0 / (a + b), event);
 }
 
+/// What of the state a quantity moves.
+struct Followed {
+  Track& track;
+  std::optional<Pending>& step;
+};
+
+Followed followed(State& state, Quantity quantity) {
+  if (quantity == Quantity::line) return {state.line, state.line_step};
+  if (quantity == Quantity::gain) return {state.gain, state.gain_step};
+  return {state.rabi, state.rabi_step};
+}
+
 }  // namespace
 
 double Track::hourly() const { return std::max(floor, noise); }
@@ -68,11 +80,10 @@ std::optional<infer::Known> Track::predict(Time when) const {
 }
 
 void advance(State& state, const FitEvent& event) {
-  Track& track = event.quantity == Quantity::rabi ? state.rabi : state.line;
-  auto& step = event.quantity == Quantity::rabi ? state.rabi_step : state.line_step;
+  auto [track, step] = followed(state, event.quantity);
   if (event.proposed) ++state.proposals_unanswered;
   if (event.effect == Effect::aside) {
-    if (event.quantity == Quantity::line) return;
+    if (event.quantity != Quantity::rabi) return;
     state.at_other_amplitude = event.drive_amplitude == state.other_amplitude ? state.at_other_amplitude + 1 : 1;
     state.other_amplitude = event.drive_amplitude;
     return;
@@ -92,7 +103,7 @@ void advance(State& state, const FitEvent& event) {
     case Effect::accepted: update(track, event); break;
     case Effect::confirmed:
       // A line without the experiment's own carrier number has no place to be tracked at.
-      if (step && (event.quantity == Quantity::rabi || std::isfinite(event.carrier))) confirm(track, *step, event);
+      if (step && (event.quantity != Quantity::line || std::isfinite(event.carrier))) confirm(track, *step, event);
       break;
   }
   step.reset();
@@ -104,6 +115,10 @@ void advance(State& state, const AppliedEvent& event) {
     if (!fresh && event.at < since->second) continue;  // a newer report is known already
     since->second = event.at;
     state.in_force_s[name] = length;
+  }
+  for (const auto& [name, amplitude] : event.amplitudes) {
+    const auto [known, fresh] = state.amplitudes_in_force.try_emplace(name, InForce{amplitude, event.at});
+    if (!fresh && event.at >= known->second.since) known->second = {amplitude, event.at};
   }
   if (std::isfinite(event.carrier) && event.at >= state.carrier_at) {
     state.carrier = event.carrier;

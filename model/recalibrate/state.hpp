@@ -16,7 +16,8 @@ using Time = std::int64_t;
 
 inline constexpr double kAbsent = std::numeric_limits<double>::quiet_NaN();
 
-/// Floors of the random walks, per square root of an hour: of the log Rabi frequency, and of the line in parts of its width.
+/// Floors of the random walks, per square root of an hour: of the log Rabi frequency (and the gain), and of the line in parts of
+/// its width.
 inline constexpr double kRabiNoise = 1e-3;
 inline constexpr double kLineNoise = 2e-3;
 
@@ -24,7 +25,8 @@ inline constexpr double kLineNoise = 2e-3;
 /// scan to confirm a step; `confirmed` restarts it at the step; `aside` was taken at another drive amplitude.
 enum class Effect : std::uint8_t { none, first, accepted, pending, confirmed, aside };
 
-enum class Quantity : std::uint8_t { rabi, line };  // what a scan of durations, or of detunings, tells
+/// What a scan of durations, of detunings, or of amplitudes tells.
+enum class Quantity : std::uint8_t { rabi, line, gain };
 
 /// A fit's contribution to the state.
 struct FitEvent {
@@ -32,7 +34,9 @@ struct FitEvent {
   Quantity quantity = Quantity::rabi;
   Effect effect = Effect::none;
   bool proposed = false;           // the verdict was `apply`
-  double value = kAbsent;          // ln(Omega / (rad/s)), or the line's place in the experiment's own carrier numbers, rad/s
+  /// ln(Omega / (rad/s)); the line's place in the experiment's own carrier numbers, rad/s; or, of the gain, ln of the coupling per
+  /// relative drive amplitude, rad/s, at small amplitudes.
+  double value = kAbsent;
   double carrier = kAbsent;        // rad/s, the experiment's own number; absent: a line's place is its offset alone
   double sigma = kAbsent;
   double noise_floor = 0.0;        // of the random walk, in the units of value per square root of an hour
@@ -46,6 +50,13 @@ struct AppliedEvent {
   Time at = 0;
   std::map<std::string, double> pulses_s;
   double carrier = kAbsent;        // rad/s, the experiment's own number
+  std::map<std::string, double> amplitudes{};  // of pulses whose amplitude is adjusted
+};
+
+/// A value in use, and since when.
+struct InForce {
+  double value = 0.0;
+  Time since = 0;
 };
 
 /// A random walk tracked by a scalar Kalman filter (R. E. Kalman, J. Basic Eng. 82, 35 (1960)); its noise is estimated from the
@@ -72,10 +83,11 @@ struct Pending {
 };
 
 struct State {
-  Track rabi, line;
-  std::optional<Pending> rabi_step, line_step;
+  Track rabi, line, gain;
+  std::optional<Pending> rabi_step, line_step, gain_step;
   std::map<std::string, double> in_force_s;  // as last reported, by the time of application
   std::map<std::string, Time> in_force_at;
+  std::map<std::string, InForce> amplitudes_in_force;  // the same of pulses whose amplitude is adjusted
   double carrier = kAbsent;                  // as last reported, rad/s
   Time carrier_at = 0;
   int proposals_unanswered = 0;              // `apply` since the experiment last reported what it uses

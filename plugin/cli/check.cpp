@@ -14,6 +14,7 @@ std::string summary(const config::Drive& drive) {
   const char* separator = drive.pulses.size() == 1 ? "pulse " : "pulses ";
   for (const auto& pulse : drive.pulses) {
     text += separator + pulse.name + " " + plain(pulse.angle_rad) + " rad in " + engineering(pulse.length_s, "s");
+    if (pulse.adjust == recalibrate::Adjust::amplitude) text += " at amplitude " + plain(pulse.amplitude);
     separator = ", ";
   }
   return text;

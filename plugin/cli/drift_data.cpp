@@ -19,13 +19,14 @@ using Real = std::pair<const char*, double log::Event::*>;
 /// The columns behind `taken_at`, in order; one list for both forms.
 const std::array<Text, 6> kTexts = {{{"drive", &log::Event::drive}, {"scan_name", &log::Event::scan_name},
     {"axis", &log::Event::axis}, {"verdict", &log::Event::verdict}, {"effect", &log::Event::effect}, {"reasons", &log::Event::reasons}}};
-const std::array<Real, 13> kReals = {{{"rabi_hz", &log::Event::rabi_hz}, {"rabi_sigma_hz", &log::Event::rabi_sigma_hz},
+const std::array<Real, 16> kReals = {{{"rabi_hz", &log::Event::rabi_hz}, {"rabi_sigma_hz", &log::Event::rabi_sigma_hz},
     {"rabi_low_hz", &log::Event::rabi_low_hz}, {"rabi_high_hz", &log::Event::rabi_high_hz},
     {"generalised_hz", &log::Event::generalised_hz}, {"generalised_sigma_hz", &log::Event::generalised_sigma_hz},
     {"line_offset_hz", &log::Event::line_offset_hz}, {"line_offset_sigma_hz", &log::Event::line_offset_sigma_hz},
     {"carrier_hz", &log::Event::carrier_hz}, {"dead_time_s", &log::Event::dead_time_s},
     {"dead_time_sigma_s", &log::Event::dead_time_sigma_s}, {"intensity_w_m2", &log::Event::intensity_w_m2},
-    {"drive_amplitude", &log::Event::drive_amplitude}}};
+    {"drive_amplitude", &log::Event::drive_amplitude}, {"rabi_per_amplitude_hz", &log::Event::rabi_per_amplitude_hz},
+    {"rabi_per_amplitude_sigma_hz", &log::Event::rabi_per_amplitude_sigma_hz}, {"compression", &log::Event::compression}}};
 
 /// RFC 4180, 2.5 to 2.7: quoted where it holds a comma, a quote or a line's end; quotes doubled.
 std::string field(const std::string& text) {
@@ -73,6 +74,8 @@ Json fit_json(const log::Event& fit) {
   for (const auto& [name, member] : kReals) json[name] = number(fit.*member);
   json["pulses_s"] = Json::object();
   for (const auto& [name, length] : fit.pulses_s) json["pulses_s"][name] = number(length);
+  json["pulses_amplitude"] = Json::object();
+  for (const auto& [name, amplitude] : fit.amplitudes) json["pulses_amplitude"][name] = number(amplitude);
   return json;
 }
 

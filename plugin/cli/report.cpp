@@ -15,10 +15,11 @@ namespace halfturn::cli {
 
 namespace {
 
-constexpr std::array<std::pair<std::string_view, std::string_view>, 20> kNames = {{
+constexpr std::array<std::pair<std::string_view, std::string_view>, 21> kNames = {{
     {"rabi_hz", "Rabi frequency"},
     {"rabi_mean_hz", "mean Rabi frequency"},
     {"rabi_per_amplitude_hz", "Rabi frequency per amplitude"},
+    {"compression", "lost at largest amplitude"},
     {"line_offset_hz", "line offset"},
     {"decay_s", "decay time"},
     {"dephasing_s", "dephasing time"},
@@ -86,13 +87,17 @@ std::string estimates(const wire::Fitted& scan) {
   return table(rows, "  ");
 }
 
+/// A pulse's value: a length, or a relative amplitude.
+std::string value(const wire::Pulse& pulse, double value) { return pulse.in_amplitude ? plain(value) : engineering(value, "s"); }
+
 std::string pulses(const wire::Fitted& scan, const Style& style) {
   if (scan.pulses.empty()) return {};
   std::vector<std::vector<std::string>> rows = {
       {"pulse", "verdict", "angle", "in force", "proposed", "exact", "change", "rotation error"}};
   for (const auto& [name, pulse] : scan.pulses)
-    rows.push_back({name, style.verdict(pulse.verdict), plain(pulse.angle_rad) + " rad", engineering(pulse.previous_s, "s"),
-                    engineering(pulse.length_s, "s"), with_uncertainty(pulse.exact_s, pulse.sigma_s, "s"), percent(pulse.change),
+    rows.push_back({name, style.verdict(pulse.verdict), plain(pulse.angle_rad) + " rad", value(pulse, pulse.previous_s),
+                    value(pulse, pulse.length_s), with_uncertainty(pulse.exact_s, pulse.sigma_s, pulse.in_amplitude ? "" : "s"),
+                    percent(pulse.change),
                     engineering(pulse.rotation_error_rad, "rad", 3)});
   return "\n" + table(rows, "  ");
 }
@@ -136,8 +141,9 @@ std::string quality(const wire::Fitted& scan) {
                      plain(q.p_value, 2) + "; " + plain(q.cycles, 3) + " cycles in " + std::to_string(q.points) + " points";
   if (!q.distrusted.empty()) text += ", " + std::to_string(q.distrusted.size()) + " of them set aside";
   if (q.scatter > 1.0) text += "; the scatter has " + plain(q.scatter, 3) + " times the variance that the shots allow";
+  const bool per_amplitude = scan.overlay && scan.overlay->axis_kind == wire::AxisKind::amplitude;
   if (q.rival)
-    text += "; the next best frequency is " + engineering(q.rival->rabi_hz, "Hz") + ", worse by " +
+    text += "; the next best frequency is " + engineering(q.rival->rabi_hz, "Hz") + (per_amplitude ? " per amplitude" : "") + ", worse by " +
             plain(q.rival->deviance_above, 4) + " in deviance";
   return wrapped(text, "  quality: ");
 }

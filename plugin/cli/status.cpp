@@ -43,10 +43,10 @@ std::string uptime(double seconds) {
 
 std::string drive_line(const json& drive) {
   std::string text;
-  if (const double rabi_hz = number_of(drive, "rabi_hz"); std::isfinite(rabi_hz))
-    text += "Rabi frequency " + engineering(rabi_hz, "Hz") + "; ";
-  else
-    text += "no scan accepted yet; ";
+  const double rabi_hz = number_of(drive, "rabi_hz"), per_amplitude_hz = number_of(drive, "rabi_per_amplitude_hz");
+  if (std::isfinite(rabi_hz)) text += "Rabi frequency " + engineering(rabi_hz, "Hz") + "; ";
+  if (std::isfinite(per_amplitude_hz)) text += "Rabi frequency per amplitude " + engineering(per_amplitude_hz, "Hz") + "; ";
+  if (text.empty()) text += "no scan accepted yet; ";
   if (const auto verdict = text_of(drive, "last_verdict"); !verdict.empty()) text += "last verdict " + verdict + "; ";
   if (const auto due = text_of(drive, "due_at"); !due.empty()) text += "next scan due at " + due + "; ";
   if (drive.value("held", false)) text += "on hold, so every verdict is keep; ";
@@ -55,6 +55,11 @@ std::string drive_line(const json& drive) {
   for (const auto& [name, length_s] : part_of(drive, "pulses").items()) {
     if (!length_s.is_number()) continue;
     text += separator + name + " " + engineering(length_s.get<double>(), "s");
+    separator = ", ";
+  }
+  for (const auto& [name, amplitude] : part_of(drive, "amplitudes").items()) {
+    if (!amplitude.is_number()) continue;
+    text += separator + name + " amplitude " + plain(amplitude.get<double>());
     separator = ", ";
   }
   return text;

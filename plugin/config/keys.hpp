@@ -22,8 +22,7 @@ inline constexpr string_view kExpect[] = {"rabi"};
 inline constexpr string_view kSwitching[] = {"dead_time", "uncertainty"};
 inline constexpr string_view kAccept[] = {"max_step",         "min_cycles",        "max_angle_error", "min_evidence",
                                           "max_carrier_step", "max_carrier_error", "rival_margin",    "min_p_value"};
-inline constexpr string_view kPulse[] = {"angle", "length", "tick", "limits", "shape", "adjust"};
-inline constexpr string_view kPulseLater[] = {"amplitude", "step"};
+inline constexpr string_view kPulse[] = {"angle", "length", "tick", "limits", "shape", "adjust", "amplitude", "step"};
 inline constexpr string_view kShape[] = {"kind", "edge", "width"};
 inline constexpr string_view kTransition[] = {"name",     "kind",      "wavelength",     "frequency",   "linewidth",
                                               "lifetime", "branching", "angular_factor", "moment",      "magnetic_moment",
@@ -33,7 +32,6 @@ inline constexpr string_view kLevel[] = {"term", "J", "F", "m", "parity", "S"};
 inline constexpr string_view kShapes[] = {"square", "gaussian", "blackman", "raised_cosine"};
 inline constexpr string_view kReadoutKinds[] = {"counts", "signal", "photons"};  // in the order of wire::ReadoutKind
 inline constexpr string_view kLostReads[] = {"dark", "bright"};                  // in the order of dynamics::LostReads
-inline constexpr string_view kAdjust[] = {"length"};
-inline constexpr string_view kAdjustLater[] = {"amplitude"};
+inline constexpr string_view kAdjust[] = {"length", "amplitude"};                // in the order of recalibrate::Adjust
 
 }  // namespace halfturn::config::keys

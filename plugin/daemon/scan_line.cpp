@@ -10,12 +10,13 @@ namespace halfturn::daemon {
 
 namespace {
 
-/// Line scans are about the offset, all others about the coupling.
+/// Line scans are about the offset, all others about the coupling, or the coupling per amplitude.
 std::string frequency(const wire::Fitted& scan) {
-  for (const std::string_view wanted : {"line_offset_hz", "rabi_hz"})
+  for (const std::string_view wanted : {"line_offset_hz", "rabi_hz", "rabi_per_amplitude_hz"})
     for (const auto& [name, estimate] : scan.estimates) {
       if (name != wanted || !std::isfinite(estimate.value)) continue;
       const auto text = with_uncertainty(estimate.value, estimate.sigma, "Hz");
+      if (wanted == "rabi_per_amplitude_hz") return text + " per unit of amplitude";
       return wanted == "rabi_hz" ? text : "line offset " + text;
     }
   return {};

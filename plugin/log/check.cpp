@@ -12,6 +12,9 @@ Result<void> check(const Event& event, const Bulk* bulk) {
   if (bulk != nullptr && !fit) {
     return fault("bad_value", "event.kind", "found `" + event.kind + "` with a scan, expected that of a fit alone");
   }
+  for (const auto& [name, amplitude] : event.amplitudes)
+    if (event.pulses_s.count(name) > 0)
+      return fault("bad_value", "event.amplitudes." + name, "found the pulse with a length as well, expected one of the two");
   return {};
 }
 

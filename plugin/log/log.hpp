@@ -29,7 +29,7 @@ struct Event {
   Time received_at = 0;
   std::string id;           // of the request
   std::string scan_name;
-  std::string axis;         // duration, detuning; empty unless a fit
+  std::string axis;         // duration, detuning, amplitude; empty unless a fit
   std::string verdict;      // apply, keep, refuse
   std::string effect;       // how it moved the tracked state: none, first, accepted, pending, confirmed, aside
   std::string reasons;      // codes, most serious first, separated by spaces
@@ -41,9 +41,12 @@ struct Event {
   double dead_time_s = kNull, dead_time_sigma_s = kNull;
   double intensity_w_m2 = kNull;
   double drive_amplitude = kNull;
-  double span = kNull, spacing = kNull;  // of the scan's axis, s or Hz
+  double span = kNull, spacing = kNull;  // of the scan's axis, s or Hz, or relative amplitude
+  double rabi_per_amplitude_hz = kNull, rabi_per_amplitude_sigma_hz = kNull;
+  double compression = kNull;            // part of the coupling lost at the largest amplitude of a scan of amplitudes
   std::string by, why;           // hold, release
-  std::map<std::string, double> pulses_s;  // fit: lengths proposed; applied: lengths reported
+  std::map<std::string, double> pulses_s;    // fit: lengths proposed; applied: lengths reported
+  std::map<std::string, double> amplitudes;  // the same of pulses whose amplitude is adjusted; no name stands in both
 };
 
 /// A fit's bulk beside its event: what came, what was answered, under which configuration.

@@ -28,14 +28,16 @@ constexpr std::array<Column<Time>, 2> kTimes = {{{"happened_at", &Event::happene
 constexpr std::array<Column<std::string>, 10> kTexts = {{{"drive", &Event::drive}, {"kind", &Event::kind}, {"id", &Event::id},
     {"scan_name", &Event::scan_name}, {"axis", &Event::axis}, {"verdict", &Event::verdict}, {"effect", &Event::effect},
     {"reasons", &Event::reasons}, {"by_whom", &Event::by}, {"why", &Event::why}}};
-constexpr std::array<Column<double>, 18> kReals = {{{"rabi_hz", &Event::rabi_hz}, {"rabi_sigma_hz", &Event::rabi_sigma_hz},
+constexpr std::array<Column<double>, 21> kReals = {{{"rabi_hz", &Event::rabi_hz}, {"rabi_sigma_hz", &Event::rabi_sigma_hz},
     {"rabi_mean_hz", &Event::rabi_mean_hz}, {"rabi_mean_sigma_hz", &Event::rabi_mean_sigma_hz},
     {"rabi_low_hz", &Event::rabi_low_hz}, {"rabi_high_hz", &Event::rabi_high_hz}, {"generalised_hz", &Event::generalised_hz},
     {"generalised_sigma_hz", &Event::generalised_sigma_hz}, {"line_offset_hz", &Event::line_offset_hz},
     {"line_offset_sigma_hz", &Event::line_offset_sigma_hz}, {"line_width_hz", &Event::line_width_hz},
     {"carrier_hz", &Event::carrier_hz}, {"dead_time_s", &Event::dead_time_s},
     {"dead_time_sigma_s", &Event::dead_time_sigma_s}, {"intensity_w_m2", &Event::intensity_w_m2},
-    {"drive_amplitude", &Event::drive_amplitude}, {"span", &Event::span}, {"spacing", &Event::spacing}}};
+    {"drive_amplitude", &Event::drive_amplitude}, {"span", &Event::span}, {"spacing", &Event::spacing},
+    {"rabi_per_amplitude_hz", &Event::rabi_per_amplitude_hz},
+    {"rabi_per_amplitude_sigma_hz", &Event::rabi_per_amplitude_sigma_hz}, {"compression", &Event::compression}}};
 
 /// `happened_at, received_at, drive, ...`
 std::string column_list() {
@@ -92,6 +94,7 @@ class SqliteLog final : public Log {
     if (auto done = or_roll_back(insert(event)); !done) return tl::unexpected<Fault>(done.error());
     const auto number = database_->last_row();
     auto done = insert_map("INSERT INTO pulse (event, name, length_s) VALUES (?, ?, ?)", number, event.pulses_s);
+    if (done) done = insert_map("INSERT INTO pulse (event, name, amplitude) VALUES (?, ?, ?)", number, event.amplitudes);
     if (done && bulk != nullptr) done = insert(number, *bulk);
     if (auto kept = or_roll_back(std::move(done)); !kept) return tl::unexpected<Fault>(kept.error());
     return number;
@@ -229,14 +232,16 @@ class SqliteLog final : public Log {
   }
 
   Result<void> read_pulses(Event& event) {
-    Query query(*database_, "SELECT name, length_s FROM pulse WHERE event = ?", "reading pulse lengths");
+    Query query(*database_, "SELECT name, length_s, amplitude, amplitude IS NOT NULL FROM pulse WHERE event = ?", "reading pulses");
     query.put(event.number);
     for (;;) {
       auto row = query.step();
       if (!row) return tl::unexpected<Fault>(row.error());
       if (!*row) return {};
       const std::string name = query.text();
-      event.pulses_s[name] = query.real();
+      const double length_s = query.real(), amplitude = query.real();
+      if (query.integer() != 0) event.amplitudes[name] = amplitude;
+      else event.pulses_s[name] = length_s;
     }
   }
 

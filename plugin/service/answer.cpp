@@ -79,9 +79,14 @@ void add_estimates(const Answer& answer, wire::Fitted& fitted) {
       out.emplace_back(name, none("the scan was not fitted"));
     return;
   }
-  const wire::Estimate rabi_hz = estimate(fit.rabi, kTwoPi);
+  const wire::Estimate rabi_hz = fit.axis == infer::Axis::amplitude ? none("the amplitude was stepped; see rabi_per_amplitude_hz")
+                                                                    : estimate(fit.rabi, kTwoPi);
   out.emplace_back("rabi_hz", rabi_hz);
-  out.emplace_back("rabi_mean_hz", estimate(fit.rabi_mean, kTwoPi));
+  out.emplace_back("rabi_mean_hz", fit.axis == infer::Axis::amplitude ? rabi_hz : estimate(fit.rabi_mean, kTwoPi));
+  if (fit.axis == infer::Axis::amplitude) {
+    out.emplace_back("rabi_per_amplitude_hz", estimate(fit.rabi_per_amplitude, kTwoPi));
+    out.emplace_back("compression", estimate(fit.compression));
+  }
   out.emplace_back("line_offset_hz", estimate(fit.line_offset, kTwoPi));
   out.emplace_back("decay_s", estimate(fit.decay_s));
   out.emplace_back("dephasing_s", estimate(fit.dephasing_s));
@@ -98,16 +103,17 @@ wire::Pulse pulse(const recalibrate::PulseDecision& decision) {
   wire::Pulse p;
   p.verdict = std::string(name(decision.verdict));
   p.angle_rad = decision.angle_rad;
-  p.length_s = decision.length_s;
-  p.exact_s = decision.exact_s;
-  p.sigma_s = decision.sigma_s;
-  p.low_s = decision.low_s;
-  p.high_s = decision.high_s;
-  p.ticks = decision.ticks;
-  p.previous_s = decision.previous_s;
+  p.in_amplitude = decision.adjust == recalibrate::Adjust::amplitude;
+  p.length_s = decision.value;
+  p.exact_s = decision.exact;
+  p.sigma_s = decision.sigma;
+  p.low_s = decision.low;
+  p.high_s = decision.high;
+  p.ticks = decision.steps;
+  p.previous_s = decision.previous;
   p.change = decision.change;
   p.rotation_error_rad = decision.rotation_error_rad;
-  p.tick_error_rad = decision.tick_error_rad;
+  p.tick_error_rad = decision.step_error_rad;
   p.transfer = decision.transfer;
   return p;
 }
@@ -120,11 +126,12 @@ wire::Quality quality(const infer::Fit& fit) {
   out.p_value = q.p_value;
   out.cycles = q.cycles;
   out.points = q.points;
-  out.range_low_hz = q.range_low / kTwoPi;
-  out.range_high_hz = q.range_high / kTwoPi;
+  const double unit = fit.axis == infer::Axis::amplitude ? kTwoPi * fit.effective_length_s() : kTwoPi;
+  out.range_low_hz = q.range_low / unit;
+  out.range_high_hz = q.range_high / unit;
   out.scatter = q.scatter;
   out.distrusted.assign(q.distrusted.begin(), q.distrusted.end());
-  if (q.rival) out.rival = wire::Rival{q.rival->frequency / kTwoPi, q.rival->deviance_above};
+  if (q.rival) out.rival = wire::Rival{q.rival->frequency / unit, q.rival->deviance_above};
   return out;
 }
 
@@ -161,7 +168,7 @@ recalibrate::FitEvent fit_event(const log::Event& row) {
   recalibrate::FitEvent event;
   event.at = row.happened_at;
   event.effect = effect_named(row.effect);
-  event.proposed = !row.pulses_s.empty() || (row.axis == "detuning" && row.verdict == "apply");
+  event.proposed = !row.pulses_s.empty() || !row.amplitudes.empty() || (row.axis == "detuning" && row.verdict == "apply");
   const double unit = row.axis == "detuning" ? kTwoPi : 1.0;
   event.span = row.span * unit;
   event.spacing = row.spacing * unit;
@@ -173,8 +180,12 @@ recalibrate::FitEvent fit_event(const log::Event& row) {
     event.sigma = kTwoPi * row.line_offset_sigma_hz;
     event.noise_floor = recalibrate::kLineNoise * kTwoPi * row.line_width_hz;
   } else {
-    event.value = std::log(kTwoPi * row.rabi_mean_hz);
-    event.sigma = row.rabi_mean_sigma_hz / row.rabi_mean_hz;
+    const bool gain = row.axis == "amplitude";
+    if (gain) event.quantity = recalibrate::Quantity::gain;
+    if (gain) event.drive_amplitude = recalibrate::kAbsent;
+    const double rabi_hz = gain ? row.rabi_per_amplitude_hz : row.rabi_mean_hz;
+    event.value = std::log(kTwoPi * rabi_hz);
+    event.sigma = (gain ? row.rabi_per_amplitude_sigma_hz : row.rabi_mean_sigma_hz) / rabi_hz;
     event.noise_floor = recalibrate::kRabiNoise;
     event.dead_time_s = row.dead_time_s;
     event.dead_time_sigma_s = row.dead_time_sigma_s;
@@ -212,7 +223,8 @@ log::Event event_from(const Answer& answer, const wire::Fitted& fitted) {
   event.kind = "fit";
   event.happened_at = answer.taken_at;
   event.scan_name = fitted.scan_name;
-  event.axis = answer.scan.axis_kind == wire::AxisKind::detuning ? "detuning" : "duration";
+  constexpr std::array<std::string_view, 3> kAxes = {"duration", "detuning", "amplitude"};
+  event.axis = kAxes[static_cast<std::size_t>(answer.scan.axis_kind)];
   event.verdict = fitted.verdict;
   event.effect = std::string(effect_name(answer.decision.event.effect));
   for (const auto& reason : fitted.reasons) event.reasons += (event.reasons.empty() ? "" : " ") + reason.code;
@@ -223,8 +235,12 @@ log::Event event_from(const Answer& answer, const wire::Fitted& fitted) {
   if (answer.scan.carrier_hz) event.carrier_hz = *answer.scan.carrier_hz;
   if (answer.scan.drive_amplitude) event.drive_amplitude = *answer.scan.drive_amplitude;
   for (const auto& decision : answer.decision.pulses)
-    if (decision.verdict == recalibrate::Verdict::apply) event.pulses_s[decision.name] = decision.length_s;
+    if (decision.verdict == recalibrate::Verdict::apply)
+      (decision.adjust == recalibrate::Adjust::amplitude ? event.amplitudes : event.pulses_s)[decision.name] = decision.value;
   if (fit.outcome != infer::FitOutcome::fitted) return event;
+  event.rabi_per_amplitude_hz = fit.rabi_per_amplitude.value / kTwoPi;
+  event.rabi_per_amplitude_sigma_hz = fit.rabi_per_amplitude.sigma / kTwoPi;
+  event.compression = fit.compression.value;
   event.rabi_hz = fit.rabi.value / kTwoPi;
   event.rabi_sigma_hz = fit.rabi.sigma / kTwoPi;
   event.rabi_low_hz = fit.rabi.low / kTwoPi;
@@ -248,7 +264,7 @@ void fold(recalibrate::State& state, const log::Event& event) {
     recalibrate::advance(state, fit_event(event));
     state.last_verdict = event.verdict;
   } else if (event.kind == "applied") {
-    recalibrate::advance(state, recalibrate::AppliedEvent{event.happened_at, event.pulses_s, kTwoPi * event.carrier_hz});
+    recalibrate::advance(state, recalibrate::AppliedEvent{event.happened_at, event.pulses_s, kTwoPi * event.carrier_hz, event.amplitudes});
   } else if (event.kind == "hold" || event.kind == "release") {
     state.held = event.kind == "hold";
     state.held_by = event.by;

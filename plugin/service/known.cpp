@@ -6,6 +6,7 @@
 
 #include "model/quantity/constants.hpp"
 #include "model/quantity/format.hpp"
+#include "model/recalibrate/pulse_value.hpp"
 
 namespace halfturn::service {
 namespace {
@@ -49,7 +50,7 @@ void add_detuning(const config::Drive* drive, const recalibrate::State& state, c
     prior.detuning = infer::Known{carrier - line->mean, line->sigma};
   } else if (drive != nullptr && drive->carrier_uncertainty) {
     prior.detuning = infer::Known{0.0, *drive->carrier_uncertainty};
-  } else if (scan.axis_kind == wire::AxisKind::duration) {
+  } else if (scan.axis_kind != wire::AxisKind::detuning) {
     assumed.push_back("carrier_uncertainty: the carrier sits on the line");
   }
 }
@@ -57,13 +58,35 @@ void add_detuning(const config::Drive* drive, const recalibrate::State& state, c
 /// History's Rabi frequency holds at the amplitude it was tracked at. For a line at another it is scaled, and held as loosely as
 /// an amplifier may be off its straight line; a flop at another tells for itself.
 std::optional<infer::Known> history_of(const recalibrate::State& state, const wire::Scan& scan, recalibrate::Time taken_at) {
-  constexpr double kAmplifier = 0.3;  // of the logarithm of the amplitudes' ratio
+  using recalibrate::kAmplifier;
   auto known = state.rabi.predict(taken_at);
   const double taken = scan.drive_amplitude.value_or(recalibrate::kAbsent);
   if (!known || recalibrate::same_amplitude(state.drive_amplitude, taken)) return known;
   if (scan.axis_kind == wire::AxisKind::duration) return std::nullopt;
   const double ratio = std::log(taken / state.drive_amplitude);
   return infer::Known{known->mean + ratio, std::hypot(known->sigma, kAmplifier * ratio)};
+}
+
+/// The tracked coupling per amplitude as rotation per amplitude of this scan's pulse.
+std::optional<infer::Known> rotation_of(const recalibrate::State& state, const wire::Scan& scan, const infer::Known& dead_time,
+                                        recalibrate::Time taken_at) {
+  const auto known = state.gain.predict(taken_at);
+  const double length = scan.pulse_s.value_or(0.0) - dead_time.mean;
+  if (!known || !(length > 0.0)) return std::nullopt;
+  return infer::Known{known->mean + std::log(length), std::hypot(known->sigma, dead_time.sigma / length)};
+}
+
+/// What a scan of amplitudes takes for granted beside the others.
+void assume_of_amplitudes(const config::Drive* drive, const wire::Scan& scan, std::vector<std::string>& assumed) {
+  const auto limit = infer::sampling_of(infer::Axis::amplitude, scan.axis).limit;
+  const double length = scan.pulse_s.value_or(0.0);
+  assumed.push_back("sampling: the Rabi frequency per unit of amplitude lies below the scan's sampling limit, " +
+                    engineering(limit / (kTwoPi * length), "Hz"));
+  assumed.push_back("response: the coupling follows the amplitude from 0 on, with a gain that bends smoothly; amplitude 0 is no light at all");
+  if (drive == nullptr) return;
+  for (const auto& pulse : drive->pulses)
+    if (pulse.adjust == recalibrate::Adjust::amplitude && pulse.area_factor != 1.0)
+      assumed.push_back("shape: the pulses of the scan were square, of the peak amplitude given; `" + pulse.name + "` is shaped");
 }
 
 /// For a line: what the pulses in force say of the Rabi frequency, which decides among modes alone. Nothing at another amplitude than
@@ -73,13 +96,16 @@ std::optional<double> rough_log_rabi(const config::Drive& drive, const recalibra
   const double tracked = std::isfinite(state.drive_amplitude) ? state.drive_amplitude : 1.0;
   if (!recalibrate::same_amplitude(tracked, scan.drive_amplitude.value_or(tracked))) return std::nullopt;
   double sum = 0.0;
+  int told = 0;
   for (const auto& pulse : drive.pulses) {
+    if (pulse.adjust == recalibrate::Adjust::amplitude) continue;  // right at its own amplitude, not at the scan's
+    ++told;
     const auto in_force = state.in_force_s.find(pulse.name);
     const double length = in_force == state.in_force_s.end() ? pulse.length_s : in_force->second;
     if (!(length > 0.0)) return std::nullopt;
     sum += std::log(pulse.angle_rad / (pulse.area_factor * length));
   }
-  return sum / static_cast<double>(drive.pulses.size());
+  return told > 0 ? std::optional(sum / told) : std::nullopt;
 }
 
 infer::DynamicsSet candidates_of(const config::Drive* drive, const wire::Options& options) {
@@ -109,10 +135,10 @@ std::string all_dynamics() {
 
 ModelScan model_scan(const wire::Scan& scan) {
   ModelScan model{scan.axis, {}};
-  const bool line = scan.axis_kind == wire::AxisKind::detuning;
-  if (line)
+  constexpr infer::Axis kAxes[] = {infer::Axis::duration, infer::Axis::detuning, infer::Axis::amplitude};  // as wire::AxisKind
+  if (scan.axis_kind == wire::AxisKind::detuning)
     for (double& detuning : model.axis) detuning *= kTwoPi;
-  model.batch.kind = line ? infer::Axis::detuning : infer::Axis::duration;
+  model.batch.kind = kAxes[static_cast<std::size_t>(scan.axis_kind)];
   model.batch.axis = model.axis;
   model.batch.readout = readout_of(scan.readout_kind);
   model.batch.observed = scan.observed.front();
@@ -130,9 +156,10 @@ infer::Prior prior_for(const config::Drive* drive, const recalibrate::State& sta
   infer::Prior prior;
   prior.start.prepared = scan.prepared_excited ? dynamics::Prepared::excited : dynamics::Prepared::ground;
   prior.candidates = candidates_of(drive, options);
-  prior.log_rabi = history_of(state, scan, taken_at);
+  const bool of_amplitudes = scan.axis_kind == wire::AxisKind::amplitude;
+  if (!of_amplitudes) prior.log_rabi = history_of(state, scan, taken_at);
   if (drive != nullptr) {
-    prior.expect = drive->expect;
+    if (!of_amplitudes) prior.expect = drive->expect;
     prior.start.impurity = drive->impurity;
     prior.start.lost_reads = drive->lost_reads;
     prior.motion = drive->motion;
@@ -144,6 +171,10 @@ infer::Prior prior_for(const config::Drive* drive, const recalibrate::State& sta
   if (drive != nullptr && drive->dead_time) prior.dead_time = *drive->dead_time;
   else assumed.push_back("switching: a dead time of 0 +- 100 ns");
   add_detuning(drive, state, scan, taken_at, prior, assumed);
+  if (of_amplitudes) {
+    prior.log_rabi = rotation_of(state, scan, prior.dead_time, taken_at);
+    assume_of_amplitudes(drive, scan, assumed);
+  }
   if (!prior.expect && scan.axis_kind == wire::AxisKind::duration) {
     const auto limit = infer::sampling_of(infer::Axis::duration, scan.axis).limit;
     assumed.push_back("expect: the Rabi frequency lies below the scan's sampling limit, " + engineering(limit / kTwoPi, "Hz"));
@@ -157,7 +188,8 @@ infer::FitOptions fit_options(const config::Drive* drive, const wire::Options& o
   if (drive == nullptr) return fit;
   fit.rival_margin = drive->accept.rival_margin;
   fit.least_evidence = drive->accept.min_evidence;
-  for (const auto& pulse : drive->pulses) fit.pulses.push_back({pulse.angle_rad, pulse.area_factor});
+  for (const auto& pulse : drive->pulses)
+    fit.pulses.push_back({pulse.angle_rad, pulse.area_factor, pulse.adjust == recalibrate::Adjust::amplitude ? pulse.length_s : 0.0});
   return fit;
 }
 
@@ -179,8 +211,8 @@ Result<void> check_scan(const wire::Request& request, const config::Configuratio
   for (std::size_t i = 0; i < request.scans.size(); ++i) {
     const auto& each = request.scans[i];
     const std::string place = request.joint ? "scans[" + std::to_string(i) + "]" : std::string("scan");
-    if (each.axis_kind == wire::AxisKind::amplitude)
-      return fault("not_available", place + ".amplitude", "amplitude scans are not available in this version; send duration_s or detuning_hz");
+    if (request.joint && each.axis_kind == wire::AxisKind::amplitude)
+      return fault("not_available", place + ".amplitude", "amplitude scans have no part in a joint fit in this version; send them as `scan`");
     if (!each.sites.empty() || each.observed.size() != 1)
       return fault("not_available", place + ".sites", "scans of many sites are not available in this version; send one scan a site");
   }

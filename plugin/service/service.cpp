@@ -6,6 +6,7 @@
 #include "model/quantity/constants.hpp"
 #include "model/quantity/format.hpp"
 #include "model/recalibrate/gates.hpp"
+#include "model/recalibrate/pulse_value.hpp"
 #include "plugin/service/answer.hpp"
 #include "plugin/service/known.hpp"
 #include "plugin/service/together.hpp"
@@ -65,24 +66,29 @@ const recalibrate::Pulse* find_pulse(const config::Drive& drive, const std::stri
 }
 
 std::string limits_of(const recalibrate::Pulse& pulse) {
-  return engineering(pulse.minimum_s, "s") + " to " + engineering(pulse.maximum_s, "s");
+  return recalibrate::value_text(pulse, pulse.minimum) + " to " + recalibrate::value_text(pulse, pulse.maximum);
 }
 
-Result<void> check_length(const config::Drive& drive, const std::string& name, double length_s) {
+std::string expected_of(const recalibrate::Pulse& pulse) {
+  const std::string such = wire::number_text(pulse.configured());
+  if (pulse.adjust == recalibrate::Adjust::amplitude)
+    return "its relative drive amplitude, such as " + such + "; look for a length or a voltage sent in its place, or widen the limits";
+  return "its length in seconds, such as " + such + "; look for a slip of units (\u00b5s or ns sent as s), or widen the limits";
+}
+
+Result<void> check_value(const config::Drive& drive, const std::string& name, double value) {
   const std::string where = "pulses." + name;
   const auto* pulse = find_pulse(drive, name);
   if (pulse == nullptr)
     return fault("bad_value", where, "the drive `" + drive.name + "` has no pulse of that name in the configuration");
-  if (length_s >= pulse->minimum_s / kSlip && length_s <= pulse->maximum_s * kSlip) return {};
+  if (value >= pulse->minimum / kSlip && value <= pulse->maximum * kSlip) return {};
   return fault("bad_value", where,
-               "found " + wire::number_text(length_s) + ", which is far outside the pulse's limits, " + limits_of(*pulse) +
-                   ": expected its length in seconds, such as " + wire::number_text(pulse->length_s) +
-                   "; look for a slip of units (\u00b5s or ns sent as s), or widen the limits");
+               "found " + wire::number_text(value) + ", which is far outside the pulse's limits, " + limits_of(*pulse) + ": expected " +
+                   expected_of(*pulse));
 }
 
 /// What is wrong with a drive, each with what to do about it.
-std::vector<std::string> troubles_of(const config::Drive& drive, const recalibrate::State& state,
-                                     const std::map<std::string, double>& in_force_s) {
+std::vector<std::string> troubles_of(const config::Drive& drive, const recalibrate::State& state) {
   std::vector<std::string> troubles;
   if (state.held)
     troubles.push_back("held by " + state.held_by + " (" + state.held_why +
@@ -90,12 +96,13 @@ std::vector<std::string> troubles_of(const config::Drive& drive, const recalibra
   if (state.proposals_unanswered >= recalibrate::kUnansweredSaid)
     troubles.push_back(std::to_string(state.proposals_unanswered) +
                        " proposals went by without an `applied` message. Have the control software load what is proposed, and send "
-                       "`applied` with the lengths that it uses; else `hold` the drive.");
+                       "`applied` with the values that it uses; else `hold` the drive.");
   for (const auto& pulse : drive.pulses) {
-    const double length_s = in_force_s.at(pulse.name);
-    if (length_s >= pulse.minimum_s * (1.0 - kRounding) && length_s <= pulse.maximum_s * (1.0 + kRounding)) continue;
-    troubles.push_back("the pulse `" + pulse.name + "` in force, " + engineering(length_s, "s") + ", lies outside its limits, " +
-                       limits_of(pulse) + ". Load a length within them and send `applied`, or widen `limits` in the configuration.");
+    const double value = recalibrate::in_force(state, pulse);
+    if (value >= pulse.minimum * (1.0 - kRounding) && value <= pulse.maximum * (1.0 + kRounding)) continue;
+    const std::string what = recalibrate::value_name(pulse);
+    troubles.push_back("the pulse `" + pulse.name + "` in force, " + recalibrate::value_text(pulse, value) + ", lies outside its limits, " +
+                       limits_of(pulse) + ". Load " + (what == "length" ? "a " : "an ") + what + " within them and send `applied`, or widen `limits` in the configuration.");
   }
   return troubles;
 }
@@ -104,8 +111,8 @@ Result<void> check_drive(const wire::Request& request, const config::Configurati
   if (configuration.drives.count(request.drive) == 0)
     return fault("unknown_drive", "drive",
                  "found `" + request.drive + "`, which the configuration does not have; it has " + known_drives(configuration));
-  for (const auto& [name, length_s] : request.pulses_s)
-    if (auto checked = check_length(configuration.drives.at(request.drive), name, length_s); !checked) return checked;
+  for (const auto& [name, value] : request.pulses)
+    if (auto checked = check_value(configuration.drives.at(request.drive), name, value); !checked) return checked;
   return {};
 }
 
@@ -214,16 +221,16 @@ wire::State Service::state() const {
   if (!log_trouble_.empty()) now.troubles.push_back("log: " + log_trouble_);
   for (const auto& [name, drive] : configuration_->drives) {
     wire::DriveState& out = now.drives[name];
-    for (const auto& pulse : drive.pulses) out.pulses_s[pulse.name] = pulse.length_s;
     const auto found = states_.find(name);
+    const recalibrate::State state = found == states_.end() ? recalibrate::State{} : found->second;
+    for (const auto& pulse : drive.pulses)
+      (pulse.adjust == recalibrate::Adjust::amplitude ? out.amplitudes : out.pulses_s)[pulse.name] = recalibrate::in_force(state, pulse);
     if (found == states_.end()) continue;
-    const auto& state = found->second;
-    for (const auto& [pulse, length] : state.in_force_s)
-      if (out.pulses_s.count(pulse) > 0) out.pulses_s[pulse] = length;
     if (state.rabi.accepted > 0) out.rabi_hz = std::exp(state.rabi.mean) / constants::kTwoPi;
+    if (state.gain.accepted > 0) out.rabi_per_amplitude_hz = std::exp(state.gain.mean) / constants::kTwoPi;
     out.last_verdict = state.last_verdict;
     out.held = state.held;
-    for (auto& trouble : troubles_of(drive, state, out.pulses_s)) now.troubles.push_back(name + ": " + std::move(trouble));
+    for (auto& trouble : troubles_of(drive, state)) now.troubles.push_back(name + ": " + std::move(trouble));
   }
   return now;
 }

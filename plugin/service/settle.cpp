@@ -39,6 +39,17 @@ Settled unanswered(const Task& task, Fault fault) {
   return settled;
 }
 
+/// Lengths and amplitudes of what the experiment reports, each as the configuration adjusts the pulse.
+void sort_pulses(const config::Drive* drive, const std::map<std::string, double>& reported, log::Event& event) {
+  for (const auto& [name, value] : reported) {
+    const auto named = [&name = name](const recalibrate::Pulse& pulse) { return pulse.name == name; };
+    const bool by_amplitude = drive != nullptr && std::any_of(drive->pulses.begin(), drive->pulses.end(), [&](const auto& pulse) {
+                                return named(pulse) && pulse.adjust == recalibrate::Adjust::amplitude;
+                              });
+    (by_amplitude ? event.amplitudes : event.pulses_s)[name] = value;
+  }
+}
+
 log::Event noted_event(const Task& task) {
   const auto& request = task.request;
   log::Event event;
@@ -47,7 +58,7 @@ log::Event noted_event(const Task& task) {
   event.happened_at = request.applied_at.value_or(task.received_at);
   event.received_at = task.received_at;
   event.id = request.id;
-  event.pulses_s = request.pulses_s;
+  sort_pulses(task.configured(), request.pulses, event);
   if (request.carrier_hz) event.carrier_hz = *request.carrier_hz;
   event.by = request.by;
   event.why = request.why;
@@ -70,17 +81,17 @@ Judged judge_task(const Task& task, const recalibrate::State& state) {
           standing_for(scans, task.joint->reference, task.received_at), task.joint->fit};
 }
 
+/// A tracked logarithm of rad/s, in Hz, with its interval of 95 %.
+wire::Estimate tracked_hz(const infer::Known& known) {
+  const double value = std::exp(known.mean) / constants::kTwoPi, reach = infer::normal_quantile(0.975) * known.sigma;
+  return {value, value * known.sigma, value * std::exp(-reach), value * std::exp(reach), ""};
+}
+
 wire::Drift drift_of(const std::string& drive, const recalibrate::State& state, Time at) {
   wire::Drift drift;
   drift.drive = drive;
-  const auto known = state.rabi.predict(at);
-  if (!known) return drift;
-  auto& rabi = drift.rabi_hz;
-  rabi.value = std::exp(known->mean) / constants::kTwoPi;
-  rabi.sigma = rabi.value * known->sigma;
-  const double reach = infer::normal_quantile(0.975) * known->sigma;  // of the interval of 95 %
-  rabi.low = rabi.value * std::exp(-reach);
-  rabi.high = rabi.value * std::exp(reach);
+  if (const auto known = state.rabi.predict(at)) drift.rabi_hz = tracked_hz(*known);
+  if (const auto known = state.gain.predict(at)) drift.rabi_per_amplitude_hz = tracked_hz(*known);
   return drift;
 }
 

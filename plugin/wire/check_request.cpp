@@ -109,7 +109,7 @@ void take_pulses(Checker& in, Request& request) {
               "found the pulse " + in_quotes(pulse) + ", expected a name of 1 to 48 of A-Z a-z 0-9 _ -");
     if (!(length > 0))
       in.fail("bad_value", "pulses." + pulse, "found " + number_text(length) + ", expected a number above 0");
-    request.pulses_s.emplace(pulse, length);
+    request.pulses.emplace(pulse, length);
   }
 }
 

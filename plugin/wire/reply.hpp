@@ -131,6 +131,8 @@ struct DriveState {
   std::string last_verdict;
   std::optional<Time> due_at;
   bool held = false;
+  std::map<std::string, double> amplitudes{};  // of pulses whose amplitude is adjusted; empty: left out
+  std::optional<double> rabi_per_amplitude_hz{};
 };
 
 struct Limits {
@@ -176,6 +178,7 @@ struct Drift {
   Estimate rabi_hz;
   double rate_per_hour = std::numeric_limits<double>::quiet_NaN();  // relative change an hour
   std::optional<Time> due_at;
+  std::optional<Estimate> rabi_per_amplitude_hz{};  // of a drive whose amplitude was scanned
 };
 
 /// Published as `health/`.

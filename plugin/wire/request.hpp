@@ -66,7 +66,7 @@ struct Request {
   Options options;
   std::string drive;        // applied, history, next, hold, release
   std::optional<Time> applied_at;
-  std::map<std::string, double> pulses_s;
+  std::map<std::string, double> pulses;
   std::optional<double> carrier_hz;
   std::optional<Time> since, until;
   std::optional<std::int64_t> limit;

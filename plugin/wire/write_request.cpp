@@ -144,7 +144,7 @@ void write_fields(Writer& to, const Request& request) {
   scans(to, request);
   text(to, Field::drive, request.drive);
   time(to, Field::applied_at, request.applied_at);
-  numbers_by_name(to, Field::pulses, request.pulses_s);
+  numbers_by_name(to, Field::pulses, request.pulses);
   compact(to, Field::carrier_hz, request.carrier_hz);
   time(to, Field::since, request.since);
   time(to, Field::until, request.until);

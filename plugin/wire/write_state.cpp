@@ -17,7 +17,14 @@ void write_drive(Writer& to, const DriveState& drive) {
   to.open_map();
   for (const auto& [pulse, length_s] : drive.pulses_s) to.field(pulse, length_s);
   to.close_map();
+  if (!drive.amplitudes.empty()) {
+    to.key("amplitudes");
+    to.open_map();
+    for (const auto& [pulse, amplitude] : drive.amplitudes) to.field(pulse, amplitude);
+    to.close_map();
+  }
   if (drive.rabi_hz) to.field("rabi_hz", *drive.rabi_hz);
+  if (drive.rabi_per_amplitude_hz) to.field("rabi_per_amplitude_hz", *drive.rabi_per_amplitude_hz);
   if (!drive.last_verdict.empty()) to.field("last_verdict", drive.last_verdict);
   write_time(to, "due_at", drive.due_at);
   to.field("held", drive.held);
@@ -65,6 +72,10 @@ void write_fields(Writer& to, const Drift& drift) {
   to.field("drive", drift.drive);
   to.key("rabi_hz");
   write_estimate(to, drift.rabi_hz);
+  if (drift.rabi_per_amplitude_hz) {
+    to.key("rabi_per_amplitude_hz");
+    write_estimate(to, *drift.rabi_per_amplitude_hz);
+  }
   to.field("rate_per_hour", drift.rate_per_hour);
   write_time(to, "due_at", drift.due_at);
 }

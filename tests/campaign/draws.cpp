@@ -52,8 +52,8 @@ void add_pulses(Random& random, Case& into) {
     pulse.name = name;
     pulse.angle_rad = angle;
     pulse.length_s = std::abs(best_pulse(into.truth, angle)) * uniform(random, 0.8, 1.2);
-    pulse.minimum_s = 0.01 * pulse.length_s;
-    pulse.maximum_s = 100 * pulse.length_s;
+    pulse.minimum = 0.01 * pulse.length_s;
+    pulse.maximum = 100 * pulse.length_s;
     into.drive.pulses.push_back(pulse);
   };
   add("pi", kPi);

@@ -42,7 +42,7 @@ enum class Kind {
 struct Family {
   std::string_view name;
   Kind kind = Kind::single;
-  bool clean = false;               // its error is held to the bound
+  bool clean = false;               // undamped: the length's error is held to the bound, which knows what the dynamics are
   std::vector<std::string_view> refusals;  // reasons that are right, where it is to be refused
   void (*draw)(Random& random, Case& into) = nullptr;
 };

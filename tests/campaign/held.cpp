@@ -34,7 +34,11 @@ std::vector<infer::Physical> starts(const Case& of, const infer::Fit& fit, infer
   mixed.dead_time = t.dead_time;
   std::vector<infer::Physical> all = {fit.physical, truth, mixed};
   for (auto& start : all)
-    if (dynamics != fit.chosen) begin_damping(dynamics, start);
+    if (dynamics != fit.chosen) {
+      // The peak coupling of an ensemble is not what another candidate's oscillation begins with.
+      if (!t.line && start.generalised == fit.physical.generalised) start.generalised = fit.generalised.value;
+      begin_damping(dynamics, start);
+    }
   return all;
 }
 

@@ -67,6 +67,7 @@ class Requests(unittest.TestCase):
         self.assertEqual(fit.length_s("flip"), 3.992e-6)
         self.assertEqual(fit.amplitude("level"), 0.7)
         self.assertEqual(fit.lengths_s(), {"flip": 3.992e-6})
+        self.assertEqual(fit.amplitudes(), {"level": 0.7})
         self.assertEqual(fit.verdict, "apply")
         self.assertEqual(fit.value("rabi_hz"), 125e3)
         self.assertEqual(fit.why, "the first")

@@ -15,11 +15,43 @@ import unittest
 import msgpack
 import zmq
 
-from apparatus import PROGRAM, RABI_HZ, DEAD_TIME_S, PATIENCE_S, InFolder, Peer, flop, program
+from apparatus import PROGRAM, ROOT, RABI_HZ, DEAD_TIME_S, PATIENCE_S, InFolder, Peer, flop, program
 
 
 def moment(minutes):
     return time.strftime("%Y-%m-%dT%H:%M:%SZ", time.gmtime(1_770_091_200 + 60 * minutes))
+
+
+class Amplitudes(InFolder):
+    def test_a_scan_of_amplitudes_goes_in_an_amplitude_comes_out_and_is_remembered(self):
+        # The scan of examples/amplitude.csv says above its points what is true: 310 kHz a / sqrt(1 + (a/1.6)^2), 10 ns late.
+        rows = [line.split(",") for line in (ROOT / "examples/amplitude.csv").read_text().splitlines() if line[0].isdigit()]
+        scan = {"scan_name": "steps", "drive": "red", "taken_at": moment(0), "pulse_s": 4e-6, "shots": 200,
+                "amplitude": [float(row[0]) for row in rows], "counts": [int(row[1]) for row in rows]}
+        sockets = ", ".join(f'{name}: "tcp://127.0.0.1:0"' for name in ("requests", "feed", "results"))
+        self.write("lab.yaml", (ROOT / "examples/amplitude.yaml").read_text() + f'sockets: {{{sockets}, display: "127.0.0.1:0"}}\n')
+        daemon = self.daemon()
+        peer = self.peer(daemon)
+        reply = peer.ask("fit", {"scan": scan})
+        self.assertEqual((reply["kind"], reply["verdict"]), ("fitted", "apply"), reply)
+        self.assertIsNone(reply["rabi_hz"]["value"])
+        flip = reply["pulses"]["flip"]
+        needed = 0.5 / (4e-6 - 10e-9) / 310e3
+        truth = needed / (1 - (needed / 1.6) ** 2) ** 0.5
+        self.assertLess(abs(flip["exact_amplitude"] - truth), 4 * flip["sigma_amplitude"])
+        self.assertAlmostEqual(flip["length_amplitude"] / 0.001, flip["ticks"], places=6)
+        self.assertEqual(flip["previous_amplitude"], 0.45)
+        self.assertNotIn("length_s", flip)
+        self.assertIn("per unit of amplitude", daemon.line_with("red steps: apply"))
+        loaded = {name: pulse["length_amplitude"] for name, pulse in reply["pulses"].items()}
+        self.assertEqual(peer.ask("applied", {"drive": "red", "pulses": loaded})["kind"], "noted")
+        daemon.stop()
+        daemon.start()
+        state = self.peer(daemon).ask("status")["drives"]["red"]
+        self.assertEqual((state["pulses"], state["amplitudes"]), ({}, loaded))
+        self.assertAlmostEqual(state["rabi_per_amplitude_hz"], reply["rabi_per_amplitude_hz"]["value"], delta=1)
+        status = program("status", "--endpoint", daemon.requests)
+        self.assertIn(f"flip amplitude {loaded['flip']:.5f}", " ".join(status.stdout.split()))
 
 
 class Answers(InFolder):

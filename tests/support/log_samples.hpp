@@ -48,7 +48,8 @@ class LogSamples {
     event.id = "id-" + std::to_string(whole(0, 1 << 30));
     event.scan_name = "flop \u00b5 '\"; " + std::to_string(whole(0, 99));
     if (event.kind == "fit") {
-      event.axis = whole(0, 1) == 0 ? "duration" : "detuning";
+      static const char* const kAxes[] = {"duration", "detuning", "amplitude"};
+      event.axis = kAxes[whole(0, 2)];
       event.verdict = whole(0, 1) == 0 ? "apply" : "refuse";
       event.effect = "accepted";
       event.reasons = "step first";
@@ -59,10 +60,11 @@ class LogSamples {
     for (auto* value : {&event.rabi_hz, &event.rabi_sigma_hz, &event.rabi_low_hz, &event.rabi_high_hz, &event.generalised_hz,
                         &event.generalised_sigma_hz, &event.line_offset_hz, &event.line_offset_sigma_hz, &event.carrier_hz,
                         &event.dead_time_s, &event.dead_time_sigma_s, &event.intensity_w_m2, &event.drive_amplitude, &event.span,
-                        &event.spacing}) {
+                        &event.spacing, &event.rabi_per_amplitude_hz, &event.rabi_per_amplitude_sigma_hz, &event.compression}) {
       *value = real();
     }
     for (auto left = whole(0, 3); left > 0; --left) event.pulses_s["pulse" + std::to_string(left)] = real();
+    for (auto left = whole(0, 2); left > 0; --left) event.amplitudes["level" + std::to_string(left)] = static_cast<double>(whole(1, 1000)) / 1000.0;
     return event;
   }
 
@@ -84,7 +86,8 @@ inline bool same(const log::Event& a, const log::Event& b) {
   for (auto at = a.pulses_s.begin(), bt = b.pulses_s.begin(); at != a.pulses_s.end(); ++at, ++bt) {
     if (at->first != bt->first || !same(at->second, bt->second)) return false;
   }
-  return a.number == b.number && a.drive == b.drive && a.kind == b.kind && a.happened_at == b.happened_at &&
+  return a.amplitudes == b.amplitudes && same(a.rabi_per_amplitude_hz, b.rabi_per_amplitude_hz) &&
+         same(a.rabi_per_amplitude_sigma_hz, b.rabi_per_amplitude_sigma_hz) && same(a.compression, b.compression) && a.number == b.number && a.drive == b.drive && a.kind == b.kind && a.happened_at == b.happened_at &&
          a.received_at == b.received_at && a.id == b.id && a.scan_name == b.scan_name && a.axis == b.axis && a.verdict == b.verdict &&
          a.effect == b.effect && a.reasons == b.reasons && a.by == b.by && a.why == b.why && same(a.rabi_hz, b.rabi_hz) &&
          same(a.rabi_sigma_hz, b.rabi_sigma_hz) && same(a.rabi_low_hz, b.rabi_low_hz) && same(a.rabi_high_hz, b.rabi_high_hz) &&

@@ -150,7 +150,8 @@ TEST_CASE("a scan that shows nothing gets no interval, and says why") {
       options.least_evidence = -1e9;
       const Fit asked_for_all = fit_one(sample, usual(), options);
       CHECK(asked_for_all.rabi.value == fit.rabi.value);
-      if (kind == Axis::duration && std::isfinite(asked_for_all.quality.cycles)) CHECK(fit.quality.cycles == asked_for_all.quality.cycles);
+      // The gate of cycles still has a number, from the standard error instead of a profile.
+      if (kind == Axis::duration && std::isfinite(asked_for_all.rabi.sigma)) CHECK(std::isfinite(fit.quality.cycles));
     }
     CHECK(fitted >= 10);
   }

@@ -69,12 +69,12 @@ TEST_CASE("a first good scan is applied, with the caution that it is the first")
   CHECK(decision.event.effect == Effect::first);
   REQUIRE(decision.pulses.size() == 2);
   const auto& flip = decision.pulses[0];
-  CHECK(flip.exact_s == Approx(0.5 / 118e3).epsilon(0.02));
-  CHECK(std::abs(flip.length_s / 8e-9 - std::round(flip.length_s / 8e-9)) < 1e-6);
-  CHECK(flip.ticks == std::llround(flip.length_s / 8e-9));
-  CHECK(std::abs(flip.length_s - flip.exact_s) <= 4.001e-9);
-  CHECK(flip.previous_s == 4.0e-6);
-  CHECK(flip.change == Approx(flip.length_s / 4.0e-6 - 1.0));
+  CHECK(flip.exact == Approx(0.5 / 118e3).epsilon(0.02));
+  CHECK(std::abs(flip.value / 8e-9 - std::round(flip.value / 8e-9)) < 1e-6);
+  CHECK(flip.steps == std::llround(flip.value / 8e-9));
+  CHECK(std::abs(flip.value - flip.exact) <= 4.001e-9);
+  CHECK(flip.previous == 4.0e-6);
+  CHECK(flip.change == Approx(flip.value / 4.0e-6 - 1.0));
   // The old pulse falls short by about 0.056 pi.
   CHECK(flip.rotation_error_rad == Approx(kPi * (4.0e-6 * 2.0 * 118e3 - 1.0)).margin(0.05));
   CHECK(flip.transfer > 0.99);
@@ -87,7 +87,7 @@ TEST_CASE("a pulse that is right is kept") {
   bench.flop(0, 20e-6, 81, 1000);
   const auto decision = bench.flop(5 * kMinute, 20e-6, 81, 1000);
   // Either within the filter's own sigma or within 5 mrad: 4 us is exact here. Keep, or a change below a tick and a half.
-  for (const auto& pulse : decision.pulses) CHECK(std::abs(pulse.length_s - pulse.previous_s) <= 16e-9);
+  for (const auto& pulse : decision.pulses) CHECK(std::abs(pulse.value - pulse.previous) <= 16e-9);
 }
 
 TEST_CASE("refusals name their reason and leave the pulses alone") {
@@ -113,7 +113,7 @@ TEST_CASE("refusals name their reason and leave the pulses alone") {
     CHECK(says(decision, "outside_expect"));
   }
   SECTION("outside the limits, pulse by pulse") {
-    bench.context.pulses[0].minimum_s = 4.5e-6;
+    bench.context.pulses[0].minimum = 4.5e-6;
     const auto decision = bench.flop(0);
     CHECK(says(decision, "outside_limits"));
     CHECK(decision.pulses[0].verdict == Verdict::refuse);
@@ -143,8 +143,8 @@ TEST_CASE("a refused scan proposes the lengths in force, those that the experime
   bench.prior.contrast.reset();
   const auto decision = bench.flop(0);
   REQUIRE(decision.verdict == Verdict::refuse);
-  CHECK(decision.pulses[0].length_s == 4.4e-6);
-  CHECK(decision.pulses[1].length_s == 2.0e-6);
+  CHECK(decision.pulses[0].value == 4.4e-6);
+  CHECK(decision.pulses[1].value == 2.0e-6);
   CHECK(decision.carrier_shift == 0.0);
   CHECK_FALSE(decision.event.proposed);
 }
@@ -156,7 +156,7 @@ TEST_CASE("a step is refused once and taken when another scan with other points 
   const auto refused = bench.flop(25 * kMinute);
   CHECK(refused.verdict == Verdict::refuse);
   CHECK(says(refused, "step"));
-  CHECK(refused.pulses[0].length_s == refused.pulses[0].previous_s);
+  CHECK(refused.pulses[0].value == refused.pulses[0].previous);
   SECTION("the same points do not confirm, other points then do") {
     const auto again = bench.flop(30 * kMinute);
     CHECK(again.verdict == Verdict::refuse);
@@ -164,7 +164,7 @@ TEST_CASE("a step is refused once and taken when another scan with other points 
     const auto other = bench.flop(35 * kMinute, 24e-6, 45);
     CHECK(other.verdict == Verdict::apply);
     CHECK(says(other, "step_confirmed"));
-    CHECK(other.pulses[0].length_s == Approx(0.5 / 90e3).epsilon(0.02));
+    CHECK(other.pulses[0].value == Approx(0.5 / 90e3).epsilon(0.02));
   }
   SECTION("a flat scan in between neither confirms nor cancels") {
     const double contrast = bench.truth.contrast;
@@ -189,10 +189,10 @@ TEST_CASE("a held drive keeps everything") {
   CHECK(decision.verdict == Verdict::keep);
   CHECK(says(decision, "held"));
   for (const auto& pulse : decision.pulses) {
-    CHECK(pulse.length_s == pulse.previous_s);
-    CHECK(pulse.ticks == std::llround(pulse.previous_s / 8e-9));
+    CHECK(pulse.value == pulse.previous);
+    CHECK(pulse.steps == std::llround(pulse.previous / 8e-9));
     // Bug: the transfer was that of the proposal that had been dropped.
-    const double angle = bench.truth.rabi * pulse.length_s;
+    const double angle = bench.truth.rabi * pulse.value;
     CHECK(pulse.transfer == Approx(0.5 - 0.5 * std::cos(angle)).margin(0.03));
   }
 }
@@ -222,7 +222,7 @@ TEST_CASE("a late scan moves nothing") {
   CHECK(late.verdict == Verdict::keep);
   CHECK(says(late, "late"));
   CHECK(bench.state.rabi.mean == mean);
-  for (const auto& pulse : late.pulses) CHECK(pulse.length_s == pulse.previous_s);
+  for (const auto& pulse : late.pulses) CHECK(pulse.value == pulse.previous);
 }
 
 TEST_CASE("an older report of what is applied does not replace a newer one") {
@@ -242,7 +242,7 @@ TEST_CASE("a dead time far from its prior does not pull the pulse") {
   const auto decision = bench.flop(0);
   CHECK(says(decision, "dead_time"));
   const double best = 0.9e-6 + 0.5 / 125e3;
-  CHECK(std::abs(decision.pulses[0].exact_s - best) < 4.0 * decision.pulses[0].sigma_s);
+  CHECK(std::abs(decision.pulses[0].exact - best) < 4.0 * decision.pulses[0].sigma);
 }
 
 TEST_CASE("a readout far from its prior is set aside, of either sign") {

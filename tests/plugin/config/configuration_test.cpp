@@ -66,6 +66,58 @@ drives:
 }  // namespace
 
 // An alias, an anchor or a second document hid every other fault.
+TEST_CASE("a pulse may be adjusted in amplitude, its length being fixed") {
+  const auto one = [](const std::string& keys) { return read(pulse(keys), "").configuration.value().drives.at("red").pulses.at(0); };
+  const auto flip = one("angle: pi, length: 4 us, adjust: amplitude, amplitude: 0.5, step: 0.001, limits: [0.1, 0.9], shape: {kind: square, edge: 3 us}");
+  CHECK(flip.adjust == recalibrate::Adjust::amplitude);
+  CHECK(flip.length_s == Approx(4e-6));
+  CHECK(flip.amplitude == 0.5);
+  CHECK(flip.configured() == 0.5);
+  CHECK(flip.step == 0.001);
+  CHECK(flip.minimum == 0.1);
+  CHECK(flip.maximum == 0.9);
+  CHECK(flip.area_factor == 1.0);
+  // Without limits: a quarter to four times, but no more than 1 where the amplitude is a part of 1.
+  const auto half = one("angle: pi, length: 4 us, adjust: amplitude, amplitude: 0.5");
+  CHECK(half.minimum == 0.125);
+  CHECK(half.maximum == 1.0);
+  const auto volts = one("angle: pi, length: 4 us, adjust: amplitude, amplitude: 2.5");
+  CHECK(volts.maximum == 10.0);
+  CHECK(volts.step == 0.0);
+  CHECK(one("angle: pi, length: 4 us, adjust: length").adjust == recalibrate::Adjust::length);
+}
+
+TEST_CASE("The example of pulses adjusted in amplitude is sound") {
+  const auto reading = read(text_of("examples/amplitude.yaml"), "");
+  REQUIRE(reading.configuration);
+  for (const auto& pulse : reading.configuration->drives.at("red").pulses) {
+    CHECK(pulse.adjust == recalibrate::Adjust::amplitude);
+    CHECK(pulse.length_s == Approx(4e-6));
+    CHECK(pulse.step == 0.001);
+  }
+}
+
+TEST_CASE("faults of pulses that are adjusted in amplitude") {
+  const std::string flip = "angle: pi, length: 4 us, adjust: amplitude, ";
+  CHECK(faults(pulse(flip + "step: 0.001")) ==
+        "f:4:14: drives.red.pulses.flip.amplitude: found nothing, expected the relative drive amplitude in force, such as 0.5\n");
+  CHECK(faults(pulse(flip + "amplitude: 0.5, tick: 8 ns")) ==
+        "f:4:87: drives.red.pulses.flip.tick: found a tick, expected none: the length of a pulse with adjust: amplitude is fixed; `step` "
+        "is that of its amplitude\n");
+  CHECK(faults(pulse(flip + "amplitude: 0.5, limits: [0.6, 0.9]")) ==
+        "f:4:89: drives.red.pulses.flip.limits: found limits that do not hold the amplitude of 0.50000, expected limits around it\n");
+  CHECK(faults(pulse(flip + "amplitude: 0.5, limits: [1 us, 20 us]")).find("found \"1 us\"") != std::string::npos);
+  CHECK(faults(pulse(flip + "amplitude: 0.5, step: 0.4, limits: [0.45, 0.55]")) ==
+        "f:4:87: drives.red.pulses.flip.step: found \"0.4\", of which no multiple lies within the limits, expected a smaller step\n");
+  CHECK(faults(pulse(flip + "amplitude: -1")) == "f:4:76: drives.red.pulses.flip.amplitude: found \"-1\", expected a number above 0\n");
+  CHECK(faults(pulse("angle: pi, length: 4 us, amplitude: 0.5, step: 0.01")) ==
+        "f:4:57: drives.red.pulses.flip.amplitude: found \"amplitude\" in a pulse whose length is adjusted, expected adjust: amplitude "
+        "beside it\n"
+        "f:4:68: drives.red.pulses.flip.step: found \"step\" in a pulse whose length is adjusted, expected adjust: amplitude beside it\n");
+  CHECK(faults(pulse("angle: pi, length: 4 us, adjust: phase")) ==
+        "f:4:54: drives.red.pulses.flip.adjust: found \"phase\", expected length or amplitude\n");
+}
+
 TEST_CASE("Faults of the document's form hide no others") {
   const std::string faulty = "    expct: {rabi: [10 kHz, 1 MHz]}\n    carrier_uncertainty: 2\n";
   const std::string others[] = {"f:6:5: drives.red.expct: found the unknown key", "f:7:26: drives.red.carrier_uncertainty: found"};
@@ -119,13 +171,13 @@ TEST_CASE("The contract's configuration is read to the letter") {
   CHECK(red.pulses[0].name == "flip");
   CHECK(red.pulses[0].angle_rad == Approx(constants::kPi));
   CHECK(red.pulses[0].length_s == Approx(4e-6));
-  CHECK(red.pulses[0].tick_s == Approx(8e-9));
-  CHECK(red.pulses[0].minimum_s == Approx(1e-6));
-  CHECK(red.pulses[0].maximum_s == Approx(20e-6));
+  CHECK(red.pulses[0].step == Approx(8e-9));
+  CHECK(red.pulses[0].minimum == Approx(1e-6));
+  CHECK(red.pulses[0].maximum == Approx(20e-6));
   CHECK(red.pulses[0].area_factor == 1.0);
   CHECK(red.pulses[1].name == "split");
   CHECK(red.pulses[1].angle_rad == Approx(constants::kPi / 2.0));
-  CHECK(red.pulses[1].minimum_s == Approx(0.5e-6));
+  CHECK(red.pulses[1].minimum == Approx(0.5e-6));
   CHECK(red.dead_time->mean == 0.0);
   CHECK(red.dead_time->sigma == Approx(20e-9));
   CHECK(red.accept.max_step == Approx(0.20));
@@ -147,9 +199,9 @@ TEST_CASE("What is left out has the defaults of the contract") {
   CHECK_FALSE(red.dead_time.has_value());
   CHECK(red.lost_reads == dynamics::LostReads::dark);
   CHECK(red.impurity == 0.0);
-  CHECK(red.pulses[0].tick_s == 0.0);
-  CHECK(red.pulses[0].minimum_s == Approx(1e-6));
-  CHECK(red.pulses[0].maximum_s == Approx(16e-6));
+  CHECK(red.pulses[0].step == 0.0);
+  CHECK(red.pulses[0].minimum == Approx(1e-6));
+  CHECK(red.pulses[0].maximum == Approx(16e-6));
   CHECK(red.accept.max_step == 0.20);
   CHECK(red.accept.max_angle_error_rad == 0.100);
   CHECK(red.accept.min_evidence == 30.0);
@@ -254,15 +306,15 @@ TEST_CASE("Faults of a drive say where and what") {
         "f:5:21: drives.red.expect.rabi[0]: found \"0 Hz\", expected a frequency above 0\n"
         "f:5:27: drives.red.expect.rabi[1]: found \"1\", expected a frequency with its unit, such as 1 kHz (or Hz, MHz, "
         "GHz)\n");
-  CHECK(faults(drive("dynamics: [undamped, thermal, dephased, undamped]")) ==
-        "f:5:26: drives.red.dynamics[1]: found \"thermal\", which is not available in this version, expected undamped, "
-        "dephasing, decay or leak\n"
-        "f:5:35: drives.red.dynamics[2]: found \"dephased\", expected undamped, dephasing, decay or leak\n"
-        "f:5:45: drives.red.dynamics[3]: found \"undamped\" a second time, expected it once\n");
+  CHECK(faults(drive("dynamics: [undamped, dephased, undamped]")) ==
+        "f:5:26: drives.red.dynamics[1]: found \"dephased\", expected undamped, dephasing, decay, leak, decay_dephasing, "
+        "leak_dephasing, spread, doppler, cloud or thermal\n"
+        "f:5:36: drives.red.dynamics[2]: found \"undamped\" a second time, expected it once\n");
   CHECK(faults(drive("dynamics: []")) ==
         "f:5:15: drives.red.dynamics: found an empty list, expected a list such as [undamped, dephasing]\n");
-  CHECK(faults(drive("motion: {lamb_dicke: 0.08}")) ==
-        "f:5:5: drives.red.motion: found the key \"motion\", which is not available in this version, expected none\n");
+  CHECK(faults(drive("dynamics: [undamped, thermal]")) ==
+        "f:5:15: drives.red.dynamics: found thermal, which needs the drive's motion, expected it beside, such as motion: "
+        "{lamb_dicke: 0.08}\n");
   CHECK(faults(drive("switching: {dead_time: 0, uncertainty: 0x14 ns}")) ==
         "f:5:28: drives.red.switching.dead_time: found \"0\", expected a time with its unit, such as 0 us (or ns, ms, s)\n"
         "f:5:44: drives.red.switching.uncertainty: found \"0x14 ns\", expected a time with its unit, such as 4 us (or ns, "
@@ -352,11 +404,6 @@ TEST_CASE("Faults of a pulse say where and what") {
         "over its length at half amplitude, such as 3\n");
   CHECK(faults(pulse("angle: pi, length: 4 us, shape: {kind: blackman, width: 3}")) ==
         "f:4:77: drives.red.pulses.flip.shape.width: found a width, expected none: only a Gaussian is cut\n");
-  CHECK(
-      faults(pulse("angle: pi, length: 4 us, adjust: amplitude, step: 0.001")) ==
-      "f:4:54: drives.red.pulses.flip.adjust: found \"amplitude\", which is not available in this version, expected length\n"
-      "f:4:65: drives.red.pulses.flip.step: found the key \"step\", which is not available in this version, expected "
-      "none\n");
   CHECK(faults(pulse("angle: pi, length:4 us")) ==
         "f:4:14: drives.red.pulses.flip.length: found nothing, expected the length in force, such as 4 us\n"
         "f:4:32: drives.red.pulses.flip.length:4 us: found the unknown key \"length:4 us\", expected a known key: the "
@@ -483,4 +530,34 @@ TEST_CASE("Mutilated configurations are read or refused, never worse") {
     refused += reading.configuration ? 0 : 1;
   }
   CHECK(refused > 500);  // most changes hit a comment or a value that stays possible
+}
+
+TEST_CASE("Motional modes are read, one or a list of them") {
+  const auto read_one = read(drive("motion: {lamb_dicke: 0.08}"), "");
+  REQUIRE(read_one.configuration.has_value());
+  const auto& one = read_one.configuration->drives.at("red").motion;
+  REQUIRE(one.size() == 1);
+  CHECK(one[0].lamb_dicke == 0.08);
+  CHECK(one[0].sideband == 0);
+  CHECK(one[0].phonon_ratio == 1.0);
+  const auto read_two =
+      read(drive("motion: [{lamb_dicke: 0.08, sideband: -1}, {lamb_dicke: 0.05, phonon_ratio: 2.5}]\n    dynamics: [thermal]"), "");
+  REQUIRE(read_two.configuration.has_value());
+  const auto& red = read_two.configuration->drives.at("red");
+  REQUIRE(red.motion.size() == 2);
+  CHECK(red.motion[0].sideband == -1);
+  CHECK(red.motion[1].lamb_dicke == 0.05);
+  CHECK(red.motion[1].phonon_ratio == 2.5);
+  CHECK(red.dynamics->has(infer::Dynamics::thermal));
+}
+
+TEST_CASE("Motional modes that cannot be are faults") {
+  CHECK(faults(drive("motion: {sideband: 1}")) ==
+        "f:5:5: drives.red.motion.lamb_dicke: found nothing, expected the Lamb-Dicke parameter of the mode, such as 0.08\n");
+  CHECK(faults(drive("motion: {lamb_dicke: 0, sideband: 2, phonon_ratio: -1}")) ==
+        "f:5:26: drives.red.motion.lamb_dicke: found \"0\", expected a number above 0 and at most 2\n"
+        "f:5:39: drives.red.motion.sideband: found \"2\", expected a whole number from -1 to 1\n"
+        "f:5:56: drives.red.motion.phonon_ratio: found \"-1\", expected a number above 0\n");
+  CHECK(faults(drive("motion: 0.08")) == "f:5:13: drives.red.motion: found \"0.08\", expected a mode such as {lamb_dicke: 0.08}, or a list of them\n");
+  CHECK(faults(drive("motion: []")) == "f:5:13: drives.red.motion: found an empty list, expected a mode such as {lamb_dicke: 0.08}, or a list of them\n");
 }

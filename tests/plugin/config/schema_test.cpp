@@ -48,6 +48,7 @@ TEST_CASE("The schema has the keys that are read, and no others") {
   const json pulse = drive["pulses"]["additionalProperties"]["properties"];
   same(keys::kPulse, pulse);
   same(keys::kShape, pulse["shape"]["properties"]);
+  same_words(keys::kAdjust, pulse["adjust"]["enum"]);
   same_words(keys::kShapes, pulse["shape"]["properties"]["kind"]["enum"]);
   same_words(keys::kReadoutKinds, drive["readout"]["properties"]["kind"]["enum"]);
   same_words(keys::kLostReads, drive["lost_reads"]["enum"]);

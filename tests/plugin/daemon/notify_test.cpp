@@ -53,6 +53,8 @@ TEST_CASE("a scan is one line: drive, name, verdict, frequency, codes of the rea
   CHECK(daemon::scan_line(scan) == "red night-41: apply, 125.34(12) kHz; first readout");
   scan.estimates = {{"rabi_hz", {}}, {"line_offset_hz", {-310.0, 25.0, -360.0, -260.0, ""}}};
   CHECK(daemon::scan_line(scan) == "red night-41: apply, line offset -310(25) Hz; first readout");
+  scan.estimates = {{"rabi_per_amplitude_hz", {310e3, 4e3, 302e3, 318e3, ""}}};
+  CHECK(daemon::scan_line(scan) == "red night-41: apply, 310(4) kHz per unit of amplitude; first readout");
 }
 
 TEST_CASE("a pipe that nobody empties costs lines and never makes the program wait") {

@@ -55,7 +55,7 @@ TEST_CASE("an empty file becomes a log of the newest version, in WAL mode, whole
   SECTION("an empty file") { std::ofstream(path).flush(); }
   log::open(path, Access::read_write).value();
   CHECK(raw(path, "PRAGMA application_id") == std::to_string(0x48666c6e));
-  CHECK(raw(path, "PRAGMA user_version") == "1");
+  CHECK(raw(path, "PRAGMA user_version") == "3");
   CHECK(raw(path, "PRAGMA journal_mode") == "wal");
   CHECK(raw(path, "PRAGMA integrity_check") == "ok");
   CHECK(raw(path, "PRAGMA foreign_key_check") == "");
@@ -89,6 +89,41 @@ TEST_CASE("values stand in columns and lists in rows, with NULL for what there i
   CHECK(raw(path, "SELECT text FROM configuration") == "format: 1\n");
 }
 
+TEST_CASE("a log of version 1 is brought up to date and keeps its rows") {
+  tests::Folder folder;
+  const auto path = folder / "nights.db";
+  std::ifstream first(std::string(HALFTURN_SOURCE_DIR) + "/schemas/log/001_first.sql");
+  const std::string text{std::istreambuf_iterator<char>(first), {}};
+  raw(path, text + "INSERT INTO event VALUES (1, 'red', 'fit', 5, 6, 'a', 'flop', 'duration', 'apply', 'first', '', 125340.0, 120.0, NULL, NULL, "
+                   "NULL, NULL, NULL, NULL, NULL, NULL, NULL, NULL, NULL, 0.5, 2e-5, 5e-7, '', '');"
+                   "INSERT INTO event VALUES (2, 'red', 'applied', 7, 8, 'b', '', '', '', '', '', NULL, NULL, NULL, NULL, NULL, NULL, NULL, NULL, "
+                   "NULL, NULL, NULL, NULL, NULL, NULL, NULL, NULL, '', '');"
+                   "INSERT INTO pulse VALUES (2, 'flip', 4e-6)");
+  CHECK_THAT(refusal(path, Access::read_only), Contains("older version 1"));
+  auto file = log::open(path, Access::read_write).value();
+  CHECK(raw(path, "PRAGMA user_version") == "3");
+  Event later;
+  later.drive = "red";
+  later.kind = "applied";
+  later.id = "c";
+  later.amplitudes = {{"level", 0.5}};
+  REQUIRE(file->begin());
+  REQUIRE(file->append(later, nullptr));
+  REQUIRE(file->commit());
+  std::vector<Event> events;
+  REQUIRE(file->replay([&](const Event& event) { events.push_back(event); }));
+  REQUIRE(events.size() == 3);
+  CHECK(events[0].rabi_hz == 125340.0);
+  CHECK(std::isnan(events[0].rabi_per_amplitude_hz));
+  CHECK(events[0].drive_amplitude == 0.5);
+  CHECK(events[0].rabi_mean_hz == 125340.0);
+  CHECK(events[1].pulses_s == std::map<std::string, double>{{"flip", 4e-6}});
+  CHECK(events[1].amplitudes.empty());
+  CHECK(events[2].pulses_s.empty());
+  CHECK(events[2].amplitudes == std::map<std::string, double>{{"level", 0.5}});
+  CHECK(raw(path, "SELECT length_s IS NULL, amplitude FROM pulse WHERE name = 'level'") == "1|0.5");
+}
+
 TEST_CASE("a value of the wrong type cannot come in, nor a row that belongs to nothing") {
   tests::Folder folder;
   const auto path = folder / "nights.db";
@@ -96,7 +131,7 @@ TEST_CASE("a value of the wrong type cannot come in, nor a row that belongs to n
   CHECK_THAT(raw(path, "UPDATE event SET rabi_hz = 'fast'"), Contains("cannot store TEXT value in REAL column"));
   CHECK_THAT(raw(path, "UPDATE fit SET reply = 'text'"), Contains("cannot store TEXT value in BLOB column"));
   CHECK_THAT(raw(path, "UPDATE event SET kind = 'guess'"), Contains("CHECK constraint failed"));
-  CHECK_THAT(raw(path, "INSERT INTO pulse VALUES (99, 'flip', 1e-6)"), Contains("FOREIGN KEY constraint failed"));
+  CHECK_THAT(raw(path, "INSERT INTO pulse (event, name, length_s) VALUES (99, 'flip', 1e-6)"), Contains("FOREIGN KEY constraint failed"));
 }
 
 TEST_CASE("histories and events are read along an index, without sorting") {

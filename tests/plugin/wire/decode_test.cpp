@@ -88,7 +88,7 @@ TEST_CASE("the other kinds") {
   CHECK(points.scans[0].at_s == std::vector<double>{0.5});
   CHECK(request_of(R"({"proto":1,"kind":"end","id":"3","scan_name":"s"})").scan_name == "s");
   const Request applied = request_of(R"({"proto":1,"kind":"applied","id":"4","drive":"red","applied_at":"2026-02-03T04:05:06+01:00","pulses":{"flip":4e-6},"carrier_hz":8e7})");
-  CHECK(applied.pulses_s == std::map<std::string, double>{{"flip", 4e-6}});
+  CHECK(applied.pulses == std::map<std::string, double>{{"flip", 4e-6}});
   CHECK(applied.applied_at == parse_time("2026-02-03T03:05:06Z"));
   CHECK(applied.carrier_hz == 8e7);
   const Request history = request_of(R"({"proto":1,"kind":"history","id":"5","drive":"red","since":"2026-02-03T04:05:06Z","until":"2026-02-04T04:05:06Z","limit":10})");

@@ -80,6 +80,16 @@ Fitted many_sites() {
   return f;
 }
 
+/// A scan of amplitudes.
+Fitted of_amplitudes() {
+  Fitted f = a_fit();
+  f.estimates = {{"rabi_hz", {kNone, kNone, kNone, kNone, "the amplitude was stepped; see rabi_per_amplitude_hz"}},
+                 {"rabi_per_amplitude_hz", {250681, 240.5, 250200, 251160, ""}},
+                 {"compression", {0.125, 0.03125, 0.0625, 0.1875, ""}}};
+  f.overlay = Overlay{AxisKind::amplitude, {0, 0.5}, {0.02, 0.5}, {0.01, 0.48}, {0.03, 0.52}};
+  return f;
+}
+
 State a_state() {
   State s;
   s.id = "s1";
@@ -88,6 +98,8 @@ State a_state() {
   s.log = "ok";
   s.drives["red"] = {{{"flip", 4e-6}}, 125340.5, "apply", parse_time("2026-02-03T06:00:00Z"), true};
   s.drives["blue"] = {};
+  s.drives["blue"].amplitudes = {{"flip", 0.5}};
+  s.drives["blue"].rabi_per_amplitude_hz = 250681;
   s.troubles = {"drive blue: no scan for 12 h; run one"};
   return s;
 }
@@ -99,6 +111,7 @@ const Published kPublished{"0f3a", 17, 1'770'091'506'000'000'001};
 TEST_CASE("golden replies") {
   hold_both("replies/fitted", [](Encoding e) { return encode(a_fit(), e); });
   hold_both("replies/fitted_sites", [](Encoding e) { return encode(many_sites(), e); });
+  hold_both("replies/fitted_amplitude", [](Encoding e) { return encode(of_amplitudes(), e); });
   hold_both("replies/noted", [](Encoding e) { return encode(Noted{"n1"}, e); });
   hold_both("replies/rows", [](Encoding e) { return encode(Rows{"r1", {encode_stored(a_fit())}, "2026-02-03T04:05:06.250000001Z"}, e); });
   hold_both("replies/state", [](Encoding e) { return encode(a_state(), e); });
@@ -115,6 +128,9 @@ TEST_CASE("golden published messages") {
   hold_both("published/live", [](Encoding e) { return encode_published(kPublished, Live{"red", "flop 12", 20, *a_fit().overlay}, e); });
   hold_both("published/drift", [](Encoding e) {
     return encode_published(kPublished, Drift{"red", a_fit().estimates[0].second, -0.0005, parse_time("2026-02-03T06:00:00Z")}, e);
+  });
+  hold_both("published/drift_amplitude", [](Encoding e) {
+    return encode_published(kPublished, Drift{"red", a_fit().estimates[0].second, -0.0005, {}, of_amplitudes().estimates[1].second}, e);
   });
   hold_both("published/health", [](Encoding e) { return encode_published(kPublished, Health{a_state()}, e); });
   hold_both("published/error", [](Encoding e) { return encode_published(kPublished, Error{"", {"bad_value", "scan.counts[3]", "found -1"}, {}}, e); });

@@ -74,7 +74,8 @@ class Client(_Socket):
         return Fitted(self.request("fit", id=id, **without_none({"scans": [b["scan"] for b in bodies], "options": options or None})))
 
     def applied(self, drive, pulses=None, carrier_hz=None, applied_at=None, id=None):
-        """Tells the daemon what the experiment now uses: `pulses` as {name: s}, its carrier in Hz, or both."""
+        """Tells the daemon what the experiment now uses: `pulses` as {name: s} (of a pulse adjusted in amplitude that amplitude), its
+        carrier in Hz, or both."""
         return self.request("applied", id=id, **_applied_body(drive, pulses, carrier_hz, applied_at))
 
     def history(self, drive, since=None, until=None, limit=None):

@@ -46,6 +46,11 @@ class Fitted(dict):
         """The lengths to load for all pulses, {name: s}: what `Client.applied` takes as `pulses`."""
         return {name: pulse["length_s"] for name, pulse in self.get("pulses", {}).items() if "length_s" in pulse}
 
+    def amplitudes(self):
+        """The relative amplitudes to load for all pulses that say `adjust: amplitude`, {name: amplitude}. `Client.applied` takes them
+        as `pulses`, alone or together with lengths."""
+        return {name: pulse["length_amplitude"] for name, pulse in self.get("pulses", {}).items() if "length_amplitude" in pulse}
+
     def value(self, name):
         """The value of an estimate such as "rabi_hz"; None where there is none."""
         return self.get(name, {}).get("value")
