@@ -8,7 +8,6 @@
 namespace halfturn::infer {
 namespace {
 
-constexpr double kInfinite = std::numeric_limits<double>::infinity();
 // Sigmas of priors that say nothing: 1 s of dead time, 1e12 rad/s of detuning.
 constexpr double kAnyDeadTime = 1.0, kAnyDetuning = 1e12;
 // A prior of the line is normal; beyond this many sigmas the line is held back, as in scan_coordinates.cpp.

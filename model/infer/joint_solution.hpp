@@ -14,13 +14,13 @@ using Signs = std::array<bool, kMostJointScans>;  // negative contrast, by scan
 
 /// The scans with what stays the same in all their joint fits.
 struct JointProblem {
-  std::vector<JointScan> scans;   // under the priors that each fitted alone left standing
-  std::vector<Prior> priors;      // counted_once of these
-  std::vector<Readout> readouts;  // with the scatter and the outliers that each shows alone
-  std::vector<std::vector<double>> odds;
-  std::vector<Sampling> sampling;
-  std::vector<int> measured;
-  std::vector<Fit> alone;
+  std::vector<JointScan> scans = {};   // under the priors that each fitted alone left standing
+  std::vector<Prior> priors = {};      // counted_once of these
+  std::vector<Readout> readouts = {};  // with the scatter and the outliers that each shows alone
+  std::vector<std::vector<double>> odds = {};
+  std::vector<Sampling> sampling = {};
+  std::vector<int> measured = {};
+  std::vector<Fit> alone = {};
   const FitOptions& options;
   std::size_t reference = 0;  // the first duration scan, or scan 0
   double longest = 0.0;       // the longest span of the duration scans, s; of the pulses where there is none
@@ -35,8 +35,8 @@ struct JointProblem {
 struct JointSolution {
   Dynamics dynamics = Dynamics::undamped;
   Signs negative{};
-  JointPhysical physical;
-  Minimum minimum;             // lead: the bare coupling
+  JointPhysical physical = {};
+  Minimum minimum = {};        // lead: the bare coupling
   double apparent = kUnknown;  // rad/s, of the reference scan; without duration scans the coupling
   double aicc = kUnknown;
 };
