@@ -18,8 +18,10 @@ constexpr double kFrequencyStep = 0.2;
 // Most products of a frequency and a point: half a second.
 constexpr double kMostWork = 4e7;
 constexpr double kMostFrequencies = 2e6;
-// Free dampings tried, times the span: none, mild, one that leaves a cycle or two.
+// Free dampings tried, times the span: none, mild, one that leaves a cycle or two; and how many steps of the grid are taken at a
+// time, without damping and with one. A damped peak is broader, and what starts on its flank climbs it (fit_test, "every phase and frequency").
 constexpr std::array<double, 3> kDampings = {0.0, 1.2, 4.0};
+constexpr std::array<int, 2> kCoarser = {1, 2};
 // Below so many cycles phase and amplitude cannot be told apart by a linear solve, and starts with the phase held are added.
 constexpr double kSlowCycles = 2.0;
 
@@ -39,26 +41,41 @@ void keep_distinct(std::vector<Peak>& peaks, double width) {
   peaks.resize(kept);
 }
 
-/// Local maxima of the gain over frequency, for each damping, that are worth a fit.
-std::vector<Peak> find_peaks(const LinearPoints& points, const TrialGrid& grid, double known_damping, double span, FrequencySearch& search) {
+/// The local maxima of the gain over frequency at some dampings, `coarser` steps of the grid at a time, appended to `peaks`.
+void add_peaks(const LinearPoints& points, TrialGrid grid, int coarser, double known_damping, double span, std::span<const double> free_dampings,
+               FrequencySearch& search, std::vector<Peak>& peaks) {
+  grid.step *= coarser;
+  grid.count = (grid.count + coarser - 1) / coarser;
   std::array<double, kDampings.size()> dampings;
-  for (std::size_t d = 0; d < dampings.size(); ++d) dampings[d] = known_damping + kDampings[d] / span;
-  search_frequencies(points, grid, dampings, search);
-  const double least = kept_above(*std::max_element(search.gain.begin(), search.gain.end()));
-  std::vector<Peak> peaks;
+  for (std::size_t d = 0; d < free_dampings.size(); ++d) dampings[d] = known_damping + free_dampings[d] / span;
+  search_frequencies(points, grid, {dampings.data(), free_dampings.size()}, search);
   const auto count = static_cast<std::size_t>(grid.count);
-  for (std::size_t d = 0; d < dampings.size(); ++d) {
+  const auto last = search.gain.begin() + static_cast<std::ptrdiff_t>(count * free_dampings.size());
+  const double least = kept_above(*std::max_element(search.gain.begin(), last));
+  for (std::size_t d = 0; d < free_dampings.size(); ++d) {
     const double* const gain = search.gain.data() + d * count;
     for (std::size_t k = 0; k < count; ++k) {
       const bool above_left = k == 0 || gain[k] > gain[k - 1], above_right = k + 1 == count || gain[k] >= gain[k + 1];
       if (!above_left || !above_right || gain[k] < least) continue;
       const double frequency = grid.at(static_cast<int>(k));
-      peaks.push_back({frequency, kDampings[d] / span, solve_linear(points, frequency, dampings[d])});
+      peaks.push_back({frequency, free_dampings[d] / span, solve_linear(points, frequency, dampings[d])});
       // What decays in the coefficients refers to the first point; a pulse's own decay begins at length 0.
       const double rescale = std::exp(dampings[d] * points.origin);
       for (const std::size_t j : {1, 2, 3}) peaks.back().fit.coefficients[j] *= rescale;
     }
   }
+}
+
+/// All that are worth a fit.
+std::vector<Peak> find_peaks(const LinearPoints& points, const TrialGrid& grid, double known_damping, double span, FrequencySearch& search) {
+  std::vector<Peak> peaks;
+  const std::span<const double> dampings(kDampings);
+  add_peaks(points, grid, kCoarser[0], known_damping, span, dampings.first(1), search, peaks);
+  add_peaks(points, grid, kCoarser[1], known_damping, span, dampings.subspan(1), search, peaks);
+  double most = 0.0;
+  for (const Peak& peak : peaks) most = std::max(most, peak.fit.gain);
+  const double least = kept_above(most);
+  peaks.erase(std::remove_if(peaks.begin(), peaks.end(), [least](const Peak& peak) { return peak.fit.gain < least; }), peaks.end());
   keep_distinct(peaks, 0.7 * kTwoPi / span);
   return peaks;
 }
