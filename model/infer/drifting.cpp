@@ -41,6 +41,8 @@ double drift_score(const ScanBatch& scan, const Readout& readout, const Prior& p
 
 void look_for_drift(const ScanBatch& scan, const Readout& readout, const FitOptions& options, Fit& fit, FitWorkspace& work) {
   if (fit.outcome != FitOutcome::fitted || scan.progress.empty() || !(fit.quality.over_flat >= kEvidence)) return;
+  // Among frequencies that fit alike a drift would only favour the higher ones, whose phases it bends most.
+  if (fit.quality.rival && fit.quality.rival->deviance_above < options.rival_margin) return;
   if (!(drift_score(scan, readout, fit.prior, fit, work) > kDriftSuspected)) return;
   Prior with = fit.prior;
   with.drift = Known{0.0, kDriftSigma};
@@ -50,6 +52,7 @@ void look_for_drift(const ScanBatch& scan, const Readout& readout, const FitOpti
   if (!(best(drifting) < best(fit) - 2.0 * fit.quality.scatter)) return;
   drifting.quality.readout_released = fit.quality.readout_released;
   drifting.quality.dead_time_released = fit.quality.dead_time_released;
+  drifting.quality.dead_time_doubted = fit.quality.dead_time_doubted;
   drifting.prior = with;
   fit = std::move(drifting);
 }

@@ -4,9 +4,9 @@
 #include <algorithm>
 #include <cmath>
 
-#include <Eigen/LU>
-
 #include "model/infer/amplitude_response.hpp"
+#include "model/infer/conditioning.hpp"
+#include "model/infer/dead_time.hpp"
 #include "model/infer/statistics.hpp"
 #include "model/quantity/constants.hpp"
 
@@ -20,36 +20,12 @@ constexpr std::string_view kNotInDynamics = "the chosen dynamics have no such ra
 constexpr std::string_view kAtBound = "the best value is at its bound";
 constexpr std::string_view kNotDetermined = "the scan does not determine it";
 constexpr std::string_view kOpenInterval = "the likelihood stays high out to the bound";
+constexpr std::string_view kNoPulse = "the couplings differ so much that no pulse turns the ensemble by this angle better than others";
 constexpr std::string_view kOutOfReach = "the drive saturates below it";
 
 }  // namespace
 
 Scale::Scale(double scatter_, double level_) : scatter(scatter_), level(level_), z(normal_quantile(0.5 + 0.5 * level_)) {}
-
-Matrix covariance_of(const Minimum& minimum) {
-  const auto k = minimum.x.size();
-  Matrix information = minimum.information;
-  auto held = [&minimum](Eigen::Index i) { return minimum.at_bound[static_cast<std::size_t>(i)] != 0 || !(minimum.information(i, i) > 0.0); };
-  for (Eigen::Index i = 0; i < k; ++i) {
-    if (!held(i)) continue;
-    information.row(i).setZero();
-    information.col(i).setZero();
-    information(i, i) = 1.0;
-  }
-  // Scaled to a unit diagonal first: rates and probabilities differ by ten orders of magnitude.
-  Vector scale(k);
-  for (Eigen::Index i = 0; i < k; ++i) scale[i] = 1.0 / std::sqrt(std::max(information(i, i), 1e-300));
-  const Matrix scaled = scale.asDiagonal() * information * scale.asDiagonal();
-  const Eigen::FullPivLU<Matrix> factors(scaled);
-  Matrix covariance = Matrix::Constant(k, k, kUnknown);
-  if (factors.isInvertible()) covariance = scale.asDiagonal() * factors.inverse() * scale.asDiagonal();
-  for (Eigen::Index i = 0; i < k; ++i)
-    if (held(i)) {
-      covariance.row(i).setZero();
-      covariance.col(i).setZero();
-    }
-  return covariance;
-}
 
 Estimate from_covariance(double value, double variance, const Scale& scale) {
   Estimate e;
@@ -205,8 +181,9 @@ Estimate over_candidates(const Problem& problem, const ModeSolutions& mode, cons
                                   work.objective);
     const Minimum minimum = in_coordinates(objective, solution);
     const int index = slot(objective.layout());
-    // A drive that saturates below what the pulse needs.
-    if (!std::isfinite(minimum.x[index])) return {kUnknown, kUnknown, kUnknown, kUnknown, kOutOfReach};
+    // A drive that saturates below what the pulse needs, or couplings that no pulse turns together. What lesser candidates say is no answer.
+    if (!std::isfinite(minimum.x[index]))
+      return {kUnknown, kUnknown, kUnknown, kUnknown, lead.kind == Lead::Kind::pulse_amplitude ? kOutOfReach : kNoPulse};
     parts[count++] = {fit.candidates[i].weight, shown && i == 0 ? profiled(objective, objective.bounds(), minimum, index, scale) : normal(minimum, index, scale)};
   }
   return averaged({parts.data(), count}, scale);
@@ -312,10 +289,14 @@ void fill_readout(const ScanObjective& objective, const Scale& scale, Fit& fit) 
                                  variance(layout.ground, layout.ground) + variance(layout.excited, layout.excited) -
                                      2.0 * variance(layout.ground, layout.excited),
                                  scale);
-  if (layout.dead_time >= 0)
-    fit.dead_time_s = from_covariance(fit.physical.dead_time, variance(layout.dead_time, layout.dead_time), scale);
-  else
+  fit.dead_time_points = {kUnknown, kUnknown};
+  if (layout.dead_time >= 0) {
+    const double about = variance(layout.dead_time, layout.dead_time);
+    fit.dead_time_s = from_covariance(fit.physical.dead_time, about, scale);
+    fit.dead_time_points = without_prior(fit.physical.dead_time, about, objective.prior().dead_time, scale.scatter);
+  } else {
     fit.dead_time_s = {fit.physical.dead_time, kUnknown, kUnknown, kUnknown, "held at its configured value"};
+  }
 }
 
 /// The part of the coupling lost at the largest amplitude; below 0 where the gain rises.
@@ -361,6 +342,7 @@ void estimate(const Problem& problem, const ModeSolutions& mode, Fit& fit, FitWo
   fit.negative_contrast = best.negative_contrast;
   fit.x = best.minimum.x;
   fit.covariance = covariance_of(best.minimum) * scale.scatter;
+  fit.quality.conditioning = conditioning(objective, best.minimum);
   fill_from_covariance(problem, objective, scale, fit, work);
   fit.mean_factor = objective.mean_factor(best.physical);
 

@@ -2,6 +2,7 @@
 #pragma once
 #include <span>
 
+#include "model/infer/conditioning.hpp"
 #include "model/infer/profile.hpp"
 #include "model/infer/solution.hpp"
 
@@ -21,9 +22,6 @@ struct Scale {
 
   Scale(double scatter_, double level_);
 };
-
-/// Inverse of the information over the parameters that are not at a bound; rows and columns of those that are stay 0.
-Matrix covariance_of(const Minimum& minimum);
 
 /// The estimate of a standard error, with its reason where there is none.
 Estimate from_covariance(double value, double variance, const Scale& scale);

@@ -8,6 +8,7 @@
 #include <string_view>
 #include <vector>
 
+#include "model/infer/conditioning.hpp"
 #include "model/infer/scan_objective.hpp"
 #include "model/infer/starts.hpp"
 
@@ -84,7 +85,9 @@ struct FitQuality {
   bool by_history = false;          // history decided among modes that fit alike
   bool dead_time_released = false;  // the data contradicted the dead time's prior, which was set aside
   bool readout_released = false;    // the same of floor and contrast
+  bool dead_time_doubted = false;   // the data contradicted the dead time of the scans before: Prior::dead_time_otherwise was taken
   std::optional<RivalMode> rival;
+  Conditioning conditioning;        // of the chosen candidate
   // Of joint fits: how the scans agree, the scan of which scatter and residuals are told, and that of the distrusted points.
   std::optional<Disagreement> disagreement;
   std::optional<std::size_t> of_scan, distrusted_of;
@@ -125,6 +128,7 @@ struct Fit {
   Estimate line_offset;         // rad/s
   Estimate decay_s, dephasing_s, loss_s, envelope_s;
   Estimate contrast, floor, dead_time_s;
+  Known dead_time_points{kUnknown, kUnknown};  // s, what the points alone say of it, without its prior; NaN where they say little
   Estimate breadth;             // of a chosen ensemble its Ensemble::parameter (model/dynamics/ensemble.hpp): relative, rad/s, or phonons
   Estimate drift;               // relative change of the coupling along the scan, where one was found
   double mean_factor = 1.0;     // mean coupling over the peak one

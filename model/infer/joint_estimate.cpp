@@ -56,6 +56,7 @@ void fill_reference(const JointProblem& problem, const JointSolution& best, cons
   fit.dispersion = one.readout.dispersion;
   fit.x = own.pack(fit.physical);
   fit.covariance = covariance_of_part(own, joint, problem.reference, best) * scale.scatter;
+  fit.quality.conditioning = conditioning(own, part_minimum(own, joint, problem.reference, best));
   fill_from_covariance(one, own, scale, fit, work);
   fit.mean_factor = own.mean_factor(fit.physical);
   if (!problem.lines || !problem.flops) return;

@@ -38,21 +38,6 @@ double strain(const JointProblem& problem, std::size_t i, Dynamics dynamics, boo
   return std::max(0.0, gained > problem.options.rival_margin ? std::max(local, gained) : local);
 }
 
-/// The part of the joint minimum that is scan i's own, in its coordinates: its information is what of the joint one is left for it, the
-/// other scans' parameters following.
-Minimum part_minimum(const ScanObjective& own, const JointObjective& joint, std::size_t i, const JointSolution& solution) {
-  const Physical p = joint.of_scan(i, solution.physical);
-  Minimum minimum;
-  minimum.x = own.pack(p);
-  minimum.information = covariance_of_part(own, joint, i, solution);
-  minimum.information = covariance_of(minimum);
-  if (!minimum.information.allFinite()) {
-    double value = 0.0;
-    own.evaluate(minimum.x, value, nullptr, &minimum.information);
-  }
-  return minimum;
-}
-
 }  // namespace
 
 Matrix covariance_of_part(const ScanObjective& own, const JointObjective& joint, std::size_t i, const JointSolution& solution) {
@@ -63,6 +48,22 @@ Matrix covariance_of_part(const ScanObjective& own, const JointObjective& joint,
   by.row(at.lead) *= p.rabi() / p.generalised;
   if (at.detuning_square >= 0) by.row(at.lead) += 0.5 / p.generalised * by.row(at.detuning_square);
   return by * covariance_of(solution.minimum) * by.transpose();
+}
+
+Minimum part_minimum(const ScanObjective& own, const JointObjective& joint, std::size_t i, const JointSolution& solution) {
+  const Physical p = joint.of_scan(i, solution.physical);
+  Minimum minimum;
+  minimum.x = own.pack(p);
+  minimum.information = covariance_of_part(own, joint, i, solution);
+  minimum.information = covariance_of(minimum);
+  if (!minimum.information.allFinite()) {
+    double value = 0.0;
+    own.evaluate(minimum.x, value, nullptr, &minimum.information);
+  }
+  // What the joint fit holds at a bound has no variance, and so no information here.
+  for (Eigen::Index k = 0; k < minimum.x.size(); ++k)
+    if (!(minimum.information(k, k) > 0.0)) minimum.at_bound[static_cast<std::size_t>(k)] = -1;
+  return minimum;
 }
 
 std::vector<FitQuality> judge_parts(const JointProblem& problem, const JointSolution& solution, JointFit& fit, FitWorkspace& work) {

@@ -34,19 +34,22 @@ void count_detuning(std::span<const JointScan> scans, bool first, Prior& prior) 
 
 std::vector<Prior> counted_once(std::span<const JointScan> scans) {
   const bool flops = !std::all_of(scans.begin(), scans.end(), is_line);
-  bool first_flop = true, first_dead_time = true, first_history = !flops;
+  bool first_flop = true, first_history = !flops;
   std::vector<Prior> priors;
-  for (const auto& scan : scans) {
-    Prior prior = scan.prior;
+  std::vector<std::size_t> of_dead_time;  // the scans that know of it, the first flop before all lines
+  for (std::size_t i = 0; i < scans.size(); ++i) {
+    Prior prior = scans[i].prior;
     prior.drift.reset();
-    if (!is_line(scan)) count_detuning(scans, std::exchange(first_flop, false), prior);
-    if (is_line(scan) && !std::exchange(first_history, false)) prior.log_rabi.reset();
+    if (!is_line(scans[i])) count_detuning(scans, std::exchange(first_flop, false), prior);
+    if (is_line(scans[i]) && !std::exchange(first_history, false)) prior.log_rabi.reset();
     ObjectiveWorkspace none;
-    const Readout nothing{scan.batch.readout, {}, {}};
-    if (ScanObjective(scan.batch, nothing, prior, Dynamics::undamped, {}, false, none).layout().dead_time >= 0 && !std::exchange(first_dead_time, false))
-      prior.dead_time.sigma = kAnyDeadTime;
+    const Readout nothing{scans[i].batch.readout, {}, {}};
+    const bool knows = ScanObjective(scans[i].batch, nothing, prior, Dynamics::undamped, {}, false, none).layout().dead_time >= 0;
+    const bool before = !of_dead_time.empty() && is_line(scans[of_dead_time.front()]) && !is_line(scans[i]);
+    if (knows) of_dead_time.insert(before ? of_dead_time.begin() : of_dead_time.end(), i);
     priors.push_back(std::move(prior));
   }
+  for (std::size_t k = 1; k < of_dead_time.size(); ++k) priors[of_dead_time[k]].dead_time.sigma = kAnyDeadTime;
   return priors;
 }
 

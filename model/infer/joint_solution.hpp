@@ -80,6 +80,10 @@ JointChoice choose_joint(const JointProblem& problem, std::span<const JointMode>
 /// Covariance of scan i's own coordinates (lead: the generalised frequency) in the joint fit.
 Matrix covariance_of_part(const ScanObjective& own, const JointObjective& joint, std::size_t i, const JointSolution& solution);
 
+/// The part of the joint minimum that is scan i's own, in its coordinates: its information is what of the joint one is left for it, the
+/// other scans' parameters following.
+Minimum part_minimum(const ScanObjective& own, const JointObjective& joint, std::size_t i, const JointSolution& solution);
+
 /// Fills the parts and what scans say of one another: FitQuality of each at the joint solution, and the strain.
 std::vector<FitQuality> judge_parts(const JointProblem& problem, const JointSolution& solution, JointFit& fit, FitWorkspace& workspace);
 

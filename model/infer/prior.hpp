@@ -29,7 +29,8 @@ struct Prior {
   std::optional<double> rough_log_rabi;  // of lines, ln(Omega / (rad/s)) by the pulses in force: line_modes.hpp
   std::optional<Known> detuning;         // drive minus transition; without: exactly 0. The fit of a detuning scan does not read it
   std::optional<Known> floor, contrast;  // of the readout
-  Known dead_time{0.0, 100e-9};          // s; normal with a wide tail (scan_objective.cpp), for it is a guess at times
+  Known dead_time{0.0, 100e-9};          // s; normal with a wide tail (dead_time.hpp), for it is a guess at times
+  std::optional<Known> dead_time_otherwise;  // what is believed where the scan contradicts `dead_time`, which is history's then
   double decay = 0.0;                    // known natural decay within the pair
   double loss = 0.0;                     // known natural decay out of the pair
   dynamics::Start start;                 // prepared state, impurity, how lost population reads

@@ -17,6 +17,9 @@ constexpr double kLoosened = 10.0;
 constexpr double kPointsHeard = 0.1;
 // Deviance by which a fit without history's frequency must be better to be taken.
 constexpr double kClearlyBetter = 10.0;
+// History's dead time is believed less than that: setting it aside costs little, and what changed since has no other say.
+constexpr double kHistoryDoubted = 2.5;
+
 bool contradicts(const std::optional<Known>& known, const Estimate& found) {
   return known && std::abs(found.value - known->mean) > kContradicted * std::max(known->sigma, 1e-6);
 }
@@ -39,6 +42,15 @@ bool dead_time_contradicted(const ScanBatch& scan, const Prior& prior, const Fit
   // Where the prior holds nine tenths of what is known, the points have no say of their own.
   const bool told = 1.0 - share > kPointsHeard;
   return std::abs(z) > kContradicted || (told && z * z > kContradicted * kContradicted * (1.0 - share));
+}
+
+/// Whether the dead time that the points alone ask for lies far from the one of the scans before.
+bool dead_time_doubted(const ScanBatch& scan, const Prior& prior, const Fit& fit) {
+  if (!prior.dead_time_otherwise || fit.outcome != FitOutcome::fitted || scan.kind != Axis::duration) return false;
+  const Known& points = fit.dead_time_points;
+  // Held so far from what history says, even at a bound, the estimate comes from the points.
+  if (std::abs(fit.physical.dead_time - prior.dead_time.mean) > kContradicted * prior.dead_time.sigma) return true;
+  return std::abs(points.mean - prior.dead_time.mean) > kHistoryDoubted * std::hypot(points.sigma, prior.dead_time.sigma);
 }
 
 /// Whether a line scan is badly described with the Rabi frequency that history knows: it may have been taken at another power that
@@ -73,15 +85,30 @@ Prior reconciled(const ScanBatch& scan, const Readout& readout, const Prior& pri
     else
       loose.log_rabi = prior.log_rabi;
   }
-  if (dead_time_contradicted(scan, prior, fit)) {
+  if (dead_time_doubted(scan, prior, fit)) {
+    loose.dead_time = *prior.dead_time_otherwise;
+    loose.dead_time_otherwise.reset();
+    Fit freed = fit;
+    if (fit_under(scan, readout, loose, options, freed, work)) {
+      freed.quality.readout_released = fit.quality.readout_released;
+      freed.quality.dead_time_doubted = true;
+      fit = std::move(freed);
+    } else {
+      loose.dead_time = prior.dead_time;
+      loose.dead_time_otherwise = prior.dead_time_otherwise;
+    }
+  }
+  if (!loose.dead_time_otherwise && dead_time_contradicted(scan, loose, fit)) {
+    const Known before = loose.dead_time;
     loose.dead_time.sigma *= kLoosened;
     Fit freed = fit;
     if (fit_under(scan, readout, loose, options, freed, work)) {
       freed.quality.readout_released = fit.quality.readout_released;
       freed.quality.dead_time_released = true;
+      freed.quality.dead_time_doubted = fit.quality.dead_time_doubted;
       fit = std::move(freed);
     } else {
-      loose.dead_time = prior.dead_time;
+      loose.dead_time = before;
     }
   }
   return loose;

@@ -30,7 +30,7 @@ constexpr SolverOptions kSorting{.decrease_tolerance = 0.01, .max_evaluations = 
 // Other modes of a line are compared with the best to 2e-4 in deviance.
 constexpr SolverOptions kComparing{.decrease_tolerance = 1e-4, .max_evaluations = 100};
 // What a refinement may still promise to gain to count as finished.
-constexpr double kFinished = 1e-8;
+constexpr double kFinished = 1e-12;  // 1e-6 of a sigma
 
 bool only_candidate(const Prior& prior, Dynamics candidate) {
   DynamicsSet without = prior.candidates;
@@ -104,9 +104,11 @@ void add_candidate(const Problem& problem, ModeSolutions& mode, Dynamics candida
 
 void refine_simple(const Problem& problem, ModeSolutions& mode, FitWorkspace& work, const SolverOptions& options = {}) {
   Solution first = mode.best();
-  const double finished_at = std::max(kFinished, options.decrease_tolerance);
-  if (!(first.minimum.expected_decrease < finished_at))
-    if (auto finished = refine(problem, first.dynamics, first.physical, work, options)) first = std::move(*finished);
+  // To the default tolerance the others are compared; one mode that was only sorted so far is finished to more than that.
+  SolverOptions finishing = options;
+  if (options.decrease_tolerance <= SolverOptions{}.decrease_tolerance) finishing.decrease_tolerance = kFinished;
+  if (!(first.minimum.expected_decrease < finishing.decrease_tolerance))
+    if (auto finished = refine(problem, first.dynamics, first.physical, work, finishing)) first = std::move(*finished);
   mode.solutions.clear();
   for (const Dynamics candidate : kAllDynamics)
     if (is_simple(candidate) && problem.prior.candidates.has(candidate)) add_candidate(problem, mode, candidate, first, work, options);
@@ -136,6 +138,8 @@ void refine_others(const Problem& problem, ModeSolutions& mode, FitWorkspace& wo
     // Of a line a spread of the coupling changes no more than its side lobes, and two dampings no more than one.
     if (line && candidate != Dynamics::doppler && !only_candidate(problem.prior, candidate)) continue;
     if (candidate == Dynamics::thermal && problem.prior.motion.empty()) continue;
+    const auto there = [candidate](const Solution& s) { return s.dynamics == candidate; };
+    if (std::any_of(mode.solutions.begin(), mode.solutions.end(), there)) continue;  // it was the first, for want of a simple one
     add_candidate(problem, mode, candidate, from, work, options);
   }
   std::stable_sort(mode.solutions.begin(), mode.solutions.end(), by_aicc);

@@ -2,6 +2,7 @@
 #include <algorithm>
 #include <cmath>
 
+#include "model/infer/dead_time.hpp"
 #include "model/infer/scan_objective.hpp"
 
 /// What is known beside the scan's points: references and priors.
@@ -16,22 +17,6 @@ double square(double x) { return x * x; }
 double log_cosh(double x) {
   const double a = std::abs(x);
   return a + std::log1p(std::exp(-2.0 * a)) - std::log(2.0);
-}
-
-struct Penalty {
-  double value, slope, curvature;  // of -log density by z; the curvature at least that of the wide part
-};
-
-/// A normal prior that may be wrong: -log of 0.95 N(0, 1) + 0.05 N(0, 5^2), 0 at z = 0 (contaminated normal, J. W. Tukey 1960). As
-/// the normal within 2.5 sigma; a value 5 sigma out costs a deviance of 10 instead of 25.
-Penalty contaminated(double z) {
-  constexpr double kWide = 5.0, kShare = 0.05 / 0.95 / kWide;
-  const double narrow = -0.5 * z * z, wide = -0.5 * z * z / (kWide * kWide);
-  // Ratio of the wide part to the narrow one; beyond exp(60) the narrow one is nothing.
-  const double ratio = kShare * std::exp(std::min(60.0, wide - narrow));
-  const double share = ratio / (1.0 + ratio), slope_per_z = (1.0 - share) + share / (kWide * kWide);
-  const double value = -narrow - std::log1p(ratio) + std::log1p(kShare);
-  return {ratio > 1e20 ? -wide - std::log(kShare) + std::log1p(kShare) : value, z * slope_per_z, slope_per_z};
 }
 
 }  // namespace

@@ -65,6 +65,8 @@ Reason value_gate(const Pulse& pulse, const infer::Fit& fit, const PulseResponse
   const auto& exact = response.exact;
   const std::string what = value_name(pulse);
   const bool bounded = response.reckoned || (std::isfinite(exact.low) && std::isfinite(exact.high));
+  if (!std::isfinite(exact.value) && !exact.why.empty())
+    return {"uncertain", "`" + pulse.name + "` has no " + what + ": " + std::string(exact.why) + ".", true};
   if (!std::isfinite(exact.sigma) || !bounded)
     return {"uncertain",
             "The scan does not bound the " + what + " of `" + pulse.name + "`. Scan " +
@@ -137,8 +139,8 @@ FitEvent event_of(const State& state, const infer::Fit& fit, const Context& cont
   event.value = std::log(coupling.value);
   event.sigma = coupling.sigma / coupling.value;
   event.noise_floor = kRabiNoise;
-  event.dead_time_s = fit.dead_time_s.value;
-  event.dead_time_sigma_s = fit.dead_time_s.sigma;
+  event.dead_time_s = fit.dead_time_points.mean;
+  event.dead_time_sigma_s = fit.dead_time_points.sigma;
   return event;
 }
 

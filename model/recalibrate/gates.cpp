@@ -29,6 +29,8 @@ constexpr std::size_t kNamed = 4;
 constexpr int kStepAwake = 3;
 // Two scans repeat one another where span and spacing agree to this.
 constexpr double kSameAxis = 0.01;
+// What is known of one quantity from two sides disagrees where it is so many sigmas apart.
+constexpr double kFarApart = 3.0;
 // So many flops in a row at another drive amplitude make it the new one.
 constexpr int kAmplitudeTaken = 3;
 
@@ -109,6 +111,10 @@ bool poor(const infer::FitQuality& quality, const Accept& accept) {
   if (!(quality.p_value < accept.min_p_value)) return false;
   if (quality.scatter > kMostScatter) return true;
   return quality.p_after_scatter < least_order(quality, accept);
+}
+
+bool far_apart(const infer::Known& a, const infer::Known& b) {
+  return std::abs(a.mean - b.mean) > kFarApart * std::hypot(a.sigma, b.sigma);
 }
 
 void evidence_gates(const infer::Fit& fit, const Context& context, Reasons& reasons) {
@@ -193,6 +199,25 @@ void agreement_gate(const infer::Fit& fit, const Context& context, Reasons& reas
              std::to_string(found->dof) + " expected), most of all the scan" + which(found->scan, context) + ", by " + plain(found->of_scan, 3) +
              ". Power, carrier or alignment may have changed between them, or they were not taken with the same pulse. Fit each alone to see "
              "which moved, and take them again close together.");
+}
+
+/// Where dead times disagree: the scan's with the configured one, with that of the scans before, or theirs with the configured one.
+void dead_time_caution(const infer::Fit& fit, const infer::Prior& prior, Reasons& reasons) {
+  const auto told = [](const infer::Known& known) { return with_uncertainty(known.mean, known.sigma, "s"); };
+  const infer::Known configured = prior.dead_time_otherwise.value_or(prior.dead_time);
+  const std::string found = with_uncertainty(fit.dead_time_s.value, fit.dead_time_s.sigma, "s");
+  if (fit.quality.dead_time_released)
+    return caution(reasons, "dead_time",
+                   "The dead time found, " + found + ", is far from what is configured, " + told(configured) +
+                       ", so the latter was set aside. If the former is right, state it under switching.");
+  if (fit.quality.dead_time_doubted)
+    return caution(reasons, "dead_time",
+                   "The dead time found, " + found + ", is far from that of the scans before, " + told(prior.dead_time) +
+                       ", so theirs was set aside. If the switch, its driver or the delays were changed, the next scans will follow.");
+  if (!prior.dead_time_otherwise || !far_apart(prior.dead_time, configured)) return;
+  caution(reasons, "dead_time",
+          "The scans of this drive show a dead time of " + told(prior.dead_time) + ", far from what is configured, " + told(configured) +
+              ", so the latter was set aside. If the former is right, state it under switching.");
 }
 
 /// A scan at another drive amplitude than the tracked one moves nothing; several flops in a row make it the new one.
@@ -289,11 +314,7 @@ void cautions(const State& state, const infer::Fit& fit, const infer::Prior& pri
     caution(reasons, "drifting",
             "The Rabi frequency changed by " + percent(fit.drift.value) + " (sigma " + percent(fit.drift.sigma) +
                 ") along the scan; lengths hold for its middle. Look for a beam that warms up or moves, and scan in less time or in random order.");
-  if (quality.dead_time_released)
-    caution(reasons, "dead_time",
-            "The dead time found, " + with_uncertainty(fit.dead_time_s.value, fit.dead_time_s.sigma, "s") + ", is far from what is configured, " +
-                with_uncertainty(prior.dead_time.mean, prior.dead_time.sigma, "s") + ", so the latter was set aside. If the former is right, state it "
-                "under switching.");
+  dead_time_caution(fit, prior, reasons);
   if (quality.readout_released)
     caution(reasons, "readout",
             "Floor " + with_uncertainty(fit.floor.value, fit.floor.sigma, "") + " and contrast " +

@@ -92,6 +92,8 @@ void advance(State& state, const FitEvent& event) {
     state.at_other_amplitude = 0;
     if (event.effect != Effect::pending && std::isfinite(event.drive_amplitude)) state.drive_amplitude = event.drive_amplitude;
   }
+  if (event.quantity == Quantity::rabi && (event.effect == Effect::first || event.effect == Effect::accepted || event.effect == Effect::confirmed))
+    state.dead_time.add(event.at, event.dead_time_s, event.dead_time_sigma_s);
   switch (event.effect) {
     case Effect::none:
     case Effect::aside: return;

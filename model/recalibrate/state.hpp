@@ -7,6 +7,7 @@
 #include <string>
 
 #include "model/infer/prior.hpp"
+#include "model/recalibrate/dead_time_track.hpp"
 
 /// What is known of a drive from its history: a fold over events, the same for the running program and for a log read again.
 namespace halfturn::recalibrate {
@@ -40,7 +41,7 @@ struct FitEvent {
   double carrier = kAbsent;        // rad/s, the experiment's own number; absent: a line's place is its offset alone
   double sigma = kAbsent;
   double noise_floor = 0.0;        // of the random walk, in the units of value per square root of an hour
-  double dead_time_s = kAbsent, dead_time_sigma_s = kAbsent;
+  double dead_time_s = kAbsent, dead_time_sigma_s = kAbsent;  // as the points alone tell it
   double span = 0.0, spacing = 0.0;  // of the scan's axis
   double drive_amplitude = kAbsent;  // relative; absent where the scan did not say
 };
@@ -85,6 +86,7 @@ struct Pending {
 struct State {
   Track rabi, line, gain;
   std::optional<Pending> rabi_step, line_step, gain_step;
+  DeadTimeTrack dead_time;
   std::map<std::string, double> in_force_s;  // as last reported, by the time of application
   std::map<std::string, Time> in_force_at;
   std::map<std::string, InForce> amplitudes_in_force;  // the same of pulses whose amplitude is adjusted

@@ -128,11 +128,34 @@ std::string dynamics(const wire::Fitted& scan) {
   if (scan.dynamics.empty()) return {};
   std::string text = scan.dynamics;
   const char* separator = "; weights: ";
+  constexpr double kShown = 0.005;
+  std::string ruled_out;
   for (const auto& candidate : scan.candidates) {
+    if (candidate.weight < kShown) {
+      ruled_out += (ruled_out.empty() ? "" : ", ") + candidate.name;
+      continue;
+    }
     text += separator + candidate.name + " " + plain(candidate.weight, 2);
     separator = ", ";
   }
+  if (!ruled_out.empty()) text += "; below 0.005: " + ruled_out;
   return "\n" + wrapped(text, "  dynamics: ");
+}
+
+/// Estimates that lean on one another, and those at a bound.
+std::string told_apart(const wire::Quality& q) {
+  constexpr double kHardly = 0.99;
+  std::string text;
+  if (q.correlation && std::abs(q.correlation->value) > kHardly)
+    text += wrapped(label(q.correlation->between[0]).text + " and " + label(q.correlation->between[1]).text + " are hardly told apart (correlation " +
+                        plain(q.correlation->value, 4) + "): what holds the one holds the other. A longer or wider scan tells them apart.",
+                    "  leaning: ");
+  std::string names;
+  // A detuning of 0 is where a carrier on the line is found one time in two.
+  for (const auto& name : q.at_bound)
+    if (name != "detuning_hz") names += (names.empty() ? "" : ", ") + label(name).text;
+  if (!names.empty()) text += wrapped(names, "  at its bound: ");
+  return text;
 }
 
 std::string quality(const wire::Fitted& scan) {
@@ -145,7 +168,7 @@ std::string quality(const wire::Fitted& scan) {
   if (q.rival)
     text += "; the next best frequency is " + engineering(q.rival->rabi_hz, "Hz") + (per_amplitude ? " per amplitude" : "") + ", worse by " +
             plain(q.rival->deviance_above, 4) + " in deviance";
-  return wrapped(text, "  quality: ");
+  return wrapped(text, "  quality: ") + told_apart(q);
 }
 
 }  // namespace

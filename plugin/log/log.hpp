@@ -39,6 +39,7 @@ struct Event {
   double line_offset_hz = kNull, line_offset_sigma_hz = kNull, line_width_hz = kNull;  // width: full, at half maximum
   double carrier_hz = kNull;
   double dead_time_s = kNull, dead_time_sigma_s = kNull;
+  double dead_time_points_s = kNull, dead_time_points_sigma_s = kNull;  // as the points alone tell it: what history adds up
   double intensity_w_m2 = kNull;
   double drive_amplitude = kNull;
   double span = kNull, spacing = kNull;  // of the scan's axis, s or Hz, or relative amplitude

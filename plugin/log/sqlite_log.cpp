@@ -28,13 +28,14 @@ constexpr std::array<Column<Time>, 2> kTimes = {{{"happened_at", &Event::happene
 constexpr std::array<Column<std::string>, 10> kTexts = {{{"drive", &Event::drive}, {"kind", &Event::kind}, {"id", &Event::id},
     {"scan_name", &Event::scan_name}, {"axis", &Event::axis}, {"verdict", &Event::verdict}, {"effect", &Event::effect},
     {"reasons", &Event::reasons}, {"by_whom", &Event::by}, {"why", &Event::why}}};
-constexpr std::array<Column<double>, 21> kReals = {{{"rabi_hz", &Event::rabi_hz}, {"rabi_sigma_hz", &Event::rabi_sigma_hz},
+constexpr std::array<Column<double>, 23> kReals = {{{"rabi_hz", &Event::rabi_hz}, {"rabi_sigma_hz", &Event::rabi_sigma_hz},
     {"rabi_mean_hz", &Event::rabi_mean_hz}, {"rabi_mean_sigma_hz", &Event::rabi_mean_sigma_hz},
     {"rabi_low_hz", &Event::rabi_low_hz}, {"rabi_high_hz", &Event::rabi_high_hz}, {"generalised_hz", &Event::generalised_hz},
     {"generalised_sigma_hz", &Event::generalised_sigma_hz}, {"line_offset_hz", &Event::line_offset_hz},
     {"line_offset_sigma_hz", &Event::line_offset_sigma_hz}, {"line_width_hz", &Event::line_width_hz},
     {"carrier_hz", &Event::carrier_hz}, {"dead_time_s", &Event::dead_time_s},
-    {"dead_time_sigma_s", &Event::dead_time_sigma_s}, {"intensity_w_m2", &Event::intensity_w_m2},
+    {"dead_time_sigma_s", &Event::dead_time_sigma_s}, {"dead_time_points_s", &Event::dead_time_points_s},
+    {"dead_time_points_sigma_s", &Event::dead_time_points_sigma_s}, {"intensity_w_m2", &Event::intensity_w_m2},
     {"drive_amplitude", &Event::drive_amplitude}, {"span", &Event::span}, {"spacing", &Event::spacing},
     {"rabi_per_amplitude_hz", &Event::rabi_per_amplitude_hz},
     {"rabi_per_amplitude_sigma_hz", &Event::rabi_per_amplitude_sigma_hz}, {"compression", &Event::compression}}};

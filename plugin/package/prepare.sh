@@ -12,7 +12,7 @@ run_packages=(
 )
 test_packages=(
   catch2 clang-14 libclang-rt-14-dev libbenchmark-dev libgsl-dev libceres-dev sqlite3
-  python3-scipy python3-sympy python3-qutip python3-jsonschema python3-yaml
+  python3-scipy python3-lmfit python3-mpmath python3-sympy python3-qutip python3-jsonschema python3-yaml
 )
 
 wanted=("${run_packages[@]}")

@@ -131,6 +131,10 @@ wire::Quality quality(const infer::Fit& fit) {
   out.range_high_hz = q.range_high / unit;
   out.scatter = q.scatter;
   out.distrusted.assign(q.distrusted.begin(), q.distrusted.end());
+  out.condition = q.conditioning.condition;
+  if (std::isfinite(q.conditioning.correlation))
+    out.correlation = wire::Correlation{{std::string(q.conditioning.one), std::string(q.conditioning.other)}, q.conditioning.correlation};
+  out.at_bound.assign(q.conditioning.at_bound.begin(), q.conditioning.at_bound.end());
   if (q.rival) out.rival = wire::Rival{q.rival->frequency / unit, q.rival->deviance_above};
   return out;
 }
@@ -187,8 +191,8 @@ recalibrate::FitEvent fit_event(const log::Event& row) {
     event.value = std::log(kTwoPi * rabi_hz);
     event.sigma = (gain ? row.rabi_per_amplitude_sigma_hz : row.rabi_mean_sigma_hz) / rabi_hz;
     event.noise_floor = recalibrate::kRabiNoise;
-    event.dead_time_s = row.dead_time_s;
-    event.dead_time_sigma_s = row.dead_time_sigma_s;
+    event.dead_time_s = row.dead_time_points_s;
+    event.dead_time_sigma_s = row.dead_time_points_sigma_s;
   }
   return event;
 }
@@ -254,6 +258,8 @@ log::Event event_from(const Answer& answer, const wire::Fitted& fitted) {
   event.line_width_hz = fit.quality.line_width / kTwoPi;
   event.dead_time_s = fit.dead_time_s.value;
   event.dead_time_sigma_s = fit.dead_time_s.sigma;
+  event.dead_time_points_s = fit.dead_time_points.mean;
+  event.dead_time_points_sigma_s = fit.dead_time_points.sigma;
   for (const auto& [name, estimate] : fitted.estimates)
     if (name == "intensity_w_m2") event.intensity_w_m2 = estimate.value;
   return event;

@@ -108,6 +108,30 @@ std::optional<double> rough_log_rabi(const config::Drive& drive, const recalibra
   return told > 0 ? std::optional(sum / told) : std::nullopt;
 }
 
+/// The dead time as configured and as the drive's scans so far tell it, which have no prior in them: both together, or the scans alone
+/// where they lie far from the configuration. Never narrower than half a nanosecond, or a fiftieth of what is configured; and wider
+/// with the root of the hours since the last scan, for nobody says what was done to the switch.
+void add_dead_time(const config::Drive* drive, const recalibrate::State& state, recalibrate::Time taken_at, infer::Prior& prior,
+                   std::vector<std::string>& assumed) {
+  constexpr double kLeast = 0.5e-9, kPart = 0.02, kFarApart = 3.0;
+  const bool stated = drive != nullptr && drive->dead_time;
+  const infer::Known configured = stated ? *drive->dead_time : infer::Prior{}.dead_time;
+  prior.dead_time = configured;
+  if (const auto scans = state.dead_time.known(); scans && configured.sigma > 0.0) {
+    const double hours = std::max(0.0, static_cast<double>(taken_at - state.dead_time.at()) / 3.6e12);
+    const infer::Known seen{scans->mean, std::hypot(scans->sigma, std::max(kLeast, kPart * configured.sigma) * std::sqrt(1.0 + hours))};
+    const double a = 1.0 / (seen.sigma * seen.sigma), b = 1.0 / (configured.sigma * configured.sigma);
+    const bool apart = std::abs(seen.mean - configured.mean) > kFarApart * std::hypot(seen.sigma, configured.sigma);
+    const infer::Known both{(a * seen.mean + b * configured.mean) / (a + b), 1.0 / std::sqrt(a + b)};
+    prior.dead_time = apart ? seen : both;
+    prior.dead_time_otherwise = configured;
+  }
+  if (stated) return;
+  assumed.push_back(prior.dead_time_otherwise ? "switching: the dead time that the scans so far show, " +
+                                                    with_uncertainty(prior.dead_time.mean, prior.dead_time.sigma, "s")
+                                              : "switching: a dead time of 0 +- 100 ns");
+}
+
 infer::DynamicsSet candidates_of(const config::Drive* drive, const wire::Options& options) {
   auto set = infer::DynamicsSet::none();
   for (const auto& name : options.dynamics)
@@ -168,8 +192,7 @@ infer::Prior prior_for(const config::Drive* drive, const recalibrate::State& sta
     add_readout(*drive, scan, prior, assumed);
     prior.rough_log_rabi = rough_log_rabi(*drive, state, scan);
   }
-  if (drive != nullptr && drive->dead_time) prior.dead_time = *drive->dead_time;
-  else assumed.push_back("switching: a dead time of 0 +- 100 ns");
+  add_dead_time(drive, state, taken_at, prior, assumed);
   add_detuning(drive, state, scan, taken_at, prior, assumed);
   if (of_amplitudes) {
     prior.log_rabi = rotation_of(state, scan, prior.dead_time, taken_at);

@@ -1,5 +1,6 @@
 // SPDX-License-Identifier: Apache-2.0
 #pragma once
+#include <array>
 #include <cstdint>
 #include <limits>
 #include <map>
@@ -49,6 +50,12 @@ struct Rival {
   double deviance_above = 0;  // how much worse it fits than the best
 };
 
+/// Two estimates, by name, and how their errors go together, -1 to 1.
+struct Correlation {
+  std::array<std::string, 2> between;
+  double value = 0;
+};
+
 struct Quality {
   double deviance = 0, dof = 0, p_value = 0, cycles = 0;
   std::int64_t points = 0;
@@ -56,6 +63,9 @@ struct Quality {
   double scatter = 1;  // variance of the residuals over what the shots allow
   std::optional<Rival> rival;
   std::vector<std::int64_t> distrusted;  // indices of points set aside as outliers; deviance, dof and scatter are without them
+  double condition = std::numeric_limits<double>::quiet_NaN();  // of the information scaled to a unit diagonal
+  std::optional<Correlation> correlation;                        // the strongest
+  std::vector<std::string> at_bound;                             // estimates whose parameter lies at its bound
 };
 
 struct Overlay {

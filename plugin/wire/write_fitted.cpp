@@ -93,6 +93,23 @@ void write_joint(Writer& to, const std::vector<JointScan>& scans) {
   to.close_list();
 }
 
+void write_conditioning(Writer& to, const Quality& quality) {
+  to.field("condition", quality.condition);
+  to.key("correlation");
+  if (quality.correlation) {
+    to.open_map();
+    to.key("between");
+    to.open_list();
+    for (const auto& name : quality.correlation->between) to.text(name);
+    to.close_list();
+    to.field("value", quality.correlation->value);
+    to.close_map();
+  } else {
+    to.null();
+  }
+  to.field("at_bound", quality.at_bound);
+}
+
 void write_quality(Writer& to, const Quality& quality) {
   to.key("quality");
   to.open_map();
@@ -113,6 +130,7 @@ void write_quality(Writer& to, const Quality& quality) {
   } else {
     to.null();
   }
+  write_conditioning(to, quality);
   to.close_map();
 }
 

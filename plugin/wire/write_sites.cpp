@@ -93,6 +93,12 @@ void write_quality_columns(Writer& to, const std::vector<const SiteFit*>& rows) 
     for (const auto index : s.quality.distrusted) to.integer(index);
     to.close_list();
   });
+  column(to, "condition", rows, [&](const SiteFit& s) { to.number(s.quality.condition); });
+  column(to, "at_bound", rows, [&](const SiteFit& s) {
+    to.open_list();
+    for (const auto& name : s.quality.at_bound) to.text(name);
+    to.close_list();
+  });
   to.close_map();
 }
 

@@ -58,7 +58,7 @@ class LogSamples {
       event.why = "realigning";
     }
     for (auto* value : {&event.rabi_hz, &event.rabi_sigma_hz, &event.rabi_low_hz, &event.rabi_high_hz, &event.generalised_hz,
-                        &event.generalised_sigma_hz, &event.line_offset_hz, &event.line_offset_sigma_hz, &event.carrier_hz,
+                        &event.rabi_mean_hz, &event.rabi_mean_sigma_hz, &event.dead_time_points_s, &event.dead_time_points_sigma_s, &event.generalised_sigma_hz, &event.line_offset_hz, &event.line_offset_sigma_hz, &event.carrier_hz,
                         &event.dead_time_s, &event.dead_time_sigma_s, &event.intensity_w_m2, &event.drive_amplitude, &event.span,
                         &event.spacing, &event.rabi_per_amplitude_hz, &event.rabi_per_amplitude_sigma_hz, &event.compression}) {
       *value = real();
@@ -95,7 +95,8 @@ inline bool same(const log::Event& a, const log::Event& b) {
          same(a.line_offset_hz, b.line_offset_hz) && same(a.line_offset_sigma_hz, b.line_offset_sigma_hz) &&
          same(a.carrier_hz, b.carrier_hz) && same(a.dead_time_s, b.dead_time_s) && same(a.dead_time_sigma_s, b.dead_time_sigma_s) &&
          same(a.intensity_w_m2, b.intensity_w_m2) && same(a.drive_amplitude, b.drive_amplitude) && same(a.span, b.span) &&
-         same(a.spacing, b.spacing);
+         same(a.spacing, b.spacing) && same(a.rabi_mean_hz, b.rabi_mean_hz) && same(a.rabi_mean_sigma_hz, b.rabi_mean_sigma_hz) &&
+         same(a.dead_time_points_s, b.dead_time_points_s) && same(a.dead_time_points_sigma_s, b.dead_time_points_sigma_s);
 }
 
 }  // namespace halfturn::tests

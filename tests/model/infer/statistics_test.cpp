@@ -79,6 +79,20 @@ TEST_CASE("Wilson intervals") {
   }
 }
 
+// SciPy 1.10.1: scipy.stats.binomtest(k, n).proportion_ci(level, method="wilson"), to its digits.
+TEST_CASE("Wilson intervals at other levels, and at the ends") {
+  const double table[][5] = {{7, 20, .6827, 0.2528128788254427, 0.4614734263041853}, {7, 20, .99, 0.1463934413769389, 0.6283381789526872}, {99, 100, .9, 0.9564182264659439, 0.9977659071665451}, {3, 3, .95, 0.4385029682449546, 1}};
+  for (const auto& row : table) {
+    const Interval found = wilson_interval(row[0], row[1], row[2]);
+    CHECK(found.low == Approx(row[3]).epsilon(1e-12));
+    CHECK(found.high == Approx(row[4]).epsilon(1e-12));
+    // The same successes counted as failures turn the interval over.
+    const Interval turned = wilson_interval(row[1] - row[0], row[1], row[2]);
+    CHECK(turned.low == Approx(1.0 - found.high).margin(1e-15));
+    CHECK(turned.high == Approx(1.0 - found.low).margin(1e-15));
+  }
+}
+
 TEST_CASE("Wilson intervals of the file of published intervals") {
   NEEDS_REFERENCE_DATA(folder);
   std::ifstream file(*folder + "/intervals95.csv");

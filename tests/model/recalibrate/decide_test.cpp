@@ -346,3 +346,37 @@ TEST_CASE("a line scan that shows nothing is refused for that alone: no centre i
   // The best chance line reaches a deviance of 17 to 25 once in a thousand scans (design figures): 30 in 10 scans hardly ever.
   CHECK(refused_for_it == 10);
 }
+
+// The pi pulse of a carrier of eta = 0.2 is gone at 50 phonons (model/dynamics/ensemble.hpp); couplings exp(-eta^2/2) L_n(eta^2) by the
+// standard library's Laguerre polynomials, D. Leibfried et al., Rev. Mod. Phys. 75, 281 (2003), eq. 70.
+TEST_CASE("motion so hot that no pulse is a pi pulse is refused, and says why") {
+  constexpr double kPhonons = 60.0, kSquare = 0.04;
+  Bench bench;
+  bench.prior.motion = {{0.2, 0, 1.0}};
+  bench.prior.candidates = infer::DynamicsSet::none();
+  bench.prior.candidates.add(infer::Dynamics::thermal);
+  bench.context.pulses.resize(1);
+  Sample sample;
+  sample.axis = even(0.5e-6, 24e-6, 60);
+  for (const double t : sample.axis) {
+    double population = 0.0, weight = 1.0 / (1.0 + kPhonons);
+    for (unsigned n = 0; n < 900; ++n, weight *= kPhonons / (1.0 + kPhonons))
+      population += weight * std::pow(std::sin(0.5 * bench.truth.rabi * std::exp(-0.5 * kSquare) * std::laguerre(n, kSquare) * t), 2);
+    sample.observed.push_back(std::binomial_distribution<int>(400, 0.05 + 0.9 * population)(bench.random));
+  }
+  sample.weight.assign(sample.axis.size(), 400);
+  sample.view();
+  const auto decision = bench.decide_on(sample, kMinute);
+  REQUIRE(bench.fit.outcome == infer::FitOutcome::fitted);
+  REQUIRE(bench.fit.breadth.value > 50.0);
+  REQUIRE(decision.pulses.size() == 1);
+  CHECK(decision.verdict == Verdict::refuse);
+  CHECK(decision.pulses[0].value == 4.0e-6);
+  CHECK(std::isnan(decision.pulses[0].exact));
+  bool said = false;
+  for (const auto& reason : decision.reasons) {
+    INFO(reason.code << ": " << reason.text);
+    said = said || (reason.code == "uncertain" && reason.text.find("has no length") != std::string::npos);
+  }
+  CHECK(said);
+}

@@ -104,6 +104,19 @@ TEST_CASE("the report says the verdict first, then reasons, estimates, pulses an
   CHECK(text.find('\033') == std::string::npos);
 }
 
+TEST_CASE("the report says what is hardly told apart, and what lies at a bound") {
+  wire::Fitted scan;
+  scan.quality.points = 40;
+  scan.quality.correlation = wire::Correlation{{"rabi_hz", "dead_time_s"}, 0.97};
+  CHECK(report(scan, Style(false)).find("told apart") == std::string::npos);
+  CHECK(report(scan, Style(false)).find("at its bound") == std::string::npos);
+  scan.quality.correlation->value = -0.9931;
+  scan.quality.at_bound = {"dephasing_s", "floor"};
+  const auto text = report(scan, Style(false));
+  CHECK(text.find("Rabi frequency and dead time are hardly told apart (correlation -0.9931)") != std::string::npos);
+  CHECK(text.find("at its bound: dephasing time, floor") != std::string::npos);
+}
+
 TEST_CASE("fields have names for people, and units from their endings") {
   CHECK(label("rabi_hz").text == "Rabi frequency");
   CHECK(label("rabi_hz").unit == "Hz");

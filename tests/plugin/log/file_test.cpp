@@ -4,10 +4,12 @@
 #include <sys/stat.h>
 #include <unistd.h>
 
+#include <cmath>
 #include <filesystem>
 #include <fstream>
 #include <iterator>
 
+#include "plugin/embedded.hpp"
 #include "plugin/log/sqlite_log.hpp"
 #include "tests/support/catch.hpp"
 #include "tests/support/folder.hpp"
@@ -55,7 +57,7 @@ TEST_CASE("an empty file becomes a log of the newest version, in WAL mode, whole
   SECTION("an empty file") { std::ofstream(path).flush(); }
   log::open(path, Access::read_write).value();
   CHECK(raw(path, "PRAGMA application_id") == std::to_string(0x48666c6e));
-  CHECK(raw(path, "PRAGMA user_version") == "3");
+  CHECK(raw(path, "PRAGMA user_version") == "4");
   CHECK(raw(path, "PRAGMA journal_mode") == "wal");
   CHECK(raw(path, "PRAGMA integrity_check") == "ok");
   CHECK(raw(path, "PRAGMA foreign_key_check") == "");
@@ -63,6 +65,27 @@ TEST_CASE("an empty file becomes a log of the newest version, in WAL mode, whole
   const std::string ours = "FROM pragma_table_list WHERE schema = 'main' AND type = 'table' AND name NOT LIKE 'sqlite_%'";
   CHECK(raw(path, "SELECT count(*) " + ours) == "6");
   CHECK(raw(path, "SELECT count(*) " + ours + " AND strict = 0") == "0");
+}
+
+TEST_CASE("a log of the first version opens with its rows, which say what they did") {
+  tests::Folder folder;
+  const auto path = folder / "nights.db";
+  CHECK(raw(path, std::string(embedded::file("log/001_first.sql"))) == "");
+  CHECK(raw(path, "INSERT INTO event (number, drive, kind, happened_at, received_at, id, scan_name, axis, verdict, effect, reasons, rabi_hz, "
+                  "rabi_sigma_hz, dead_time_s, dead_time_sigma_s, by_whom, why) VALUES (1, 'red', 'fit', 7, 8, 'a', 'first', 'duration', 'apply', "
+                  "'first', 'first', 125340.0, 120.0, 2e-9, 5e-9, '', '')") == "");
+  const auto opened = log::open(path, Access::read_write);
+  REQUIRE(opened);
+  CHECK(raw(path, "PRAGMA user_version") == "4");
+  std::vector<Event> events;
+  REQUIRE((*opened)->replay([&events](const Event& event) { events.push_back(event); }));
+  REQUIRE(events.size() == 1);
+  CHECK(events[0].rabi_hz == 125340.0);
+  CHECK(events[0].rabi_mean_hz == 125340.0);
+  CHECK(events[0].rabi_mean_sigma_hz == 120.0);
+  CHECK(events[0].dead_time_s == 2e-9);
+  CHECK(std::isnan(events[0].dead_time_points_s));
+  CHECK(std::isnan(events[0].dead_time_points_sigma_s));
 }
 
 TEST_CASE("values stand in columns and lists in rows, with NULL for what there is not") {
@@ -101,7 +124,7 @@ TEST_CASE("a log of version 1 is brought up to date and keeps its rows") {
                    "INSERT INTO pulse VALUES (2, 'flip', 4e-6)");
   CHECK_THAT(refusal(path, Access::read_only), Contains("older version 1"));
   auto file = log::open(path, Access::read_write).value();
-  CHECK(raw(path, "PRAGMA user_version") == "3");
+  CHECK(raw(path, "PRAGMA user_version") == "4");
   Event later;
   later.drive = "red";
   later.kind = "applied";

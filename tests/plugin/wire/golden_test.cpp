@@ -60,7 +60,8 @@ Fitted a_fit() {
   f.carrier_shift_hz = 0;
   f.dynamics = "undamped";
   f.candidates = {{"undamped", 210.5, 0.75}, {"dephasing", 212.75, 0.25}};
-  f.quality = {38.5, 36, 0.36, 3.5, 40, 10000, 1e6, 1.0625, Rival{374659.5, 41.5}, {3, 17}};
+  f.quality = {38.5, 36, 0.36, 3.5, 40, 10000, 1e6, 1.0625, Rival{374659.5, 41.5}, {3, 17},
+               28.5, Correlation{{"rabi_hz", "dead_time_s"}, 0.9375}, {"dephasing_s"}};
   f.overlay = Overlay{AxisKind::duration, {0, 1e-6}, {0.02, 0.5}, {0.01, 0.48}, {0.03, 0.52}};
   f.stored = true;
   return f;
