@@ -1,21 +1,19 @@
 // SPDX-License-Identifier: Apache-2.0
+#include "model/infer/estimate.hpp"
+
 #include <algorithm>
 #include <cmath>
 
 #include "model/infer/amplitude_response.hpp"
 #include "model/infer/conditioning.hpp"
 #include "model/infer/dead_time.hpp"
-#include "model/infer/profile.hpp"
-#include "model/infer/solution.hpp"
 #include "model/infer/statistics.hpp"
 #include "model/quantity/constants.hpp"
 
 namespace halfturn::infer {
 namespace {
 
-// A candidate with less Akaike weight than this moves no estimate by more than a fiftieth of what it is off by.
-constexpr double kWeightHeard = 0.02;
-// Nor does one whose error is this many times that of the best say anything of its own.
+// A candidate says nothing of its own whose error is this many times that of the best.
 constexpr double kSpeaks = 8.0;
 
 constexpr std::string_view kNotInDynamics = "the chosen dynamics have no such rate";
@@ -24,16 +22,10 @@ constexpr std::string_view kNotDetermined = "the scan does not determine it";
 constexpr std::string_view kOpenInterval = "the likelihood stays high out to the bound";
 constexpr std::string_view kNoPulse = "the couplings differ so much that no pulse turns the ensemble by this angle better than others";
 constexpr std::string_view kOutOfReach = "the drive saturates below it";
-constexpr std::string_view kNotThisScan = "a scan of this kind does not hold it";
 
-struct Scale {
-  double scatter = 1.0;
-  double level = 0.95;
-  double z = 0.0;  // of the level, two-sided; its square is the deviance's quantile
-  double quantile() const { return z * z; }
+}  // namespace
 
-  Scale(double scatter_, double level_) : scatter(scatter_), level(level_), z(normal_quantile(0.5 + 0.5 * level_)) {}
-};
+Scale::Scale(double scatter_, double level_) : scatter(scatter_), level(level_), z(normal_quantile(0.5 + 0.5 * level_)) {}
 
 Estimate from_covariance(double value, double variance, const Scale& scale) {
   Estimate e;
@@ -49,10 +41,9 @@ Estimate from_covariance(double value, double variance, const Scale& scale) {
   return e;
 }
 
-/// Estimate of one coordinate with its profile interval.
-Estimate profiled(const ScanObjective& objective, const Minimum& minimum, int index, const Scale& scale) {
+Estimate profiled(const Objective& objective, const Bounds& bounds, const Minimum& minimum, int index, const Scale& scale) {
   Estimate e = from_covariance(minimum.x[index], covariance_of(minimum)(index, index), scale);
-  const auto interval = profile_interval(objective, minimum, index, scale.quantile() * scale.scatter, objective.bounds());
+  const auto interval = profile_interval(objective, minimum, index, scale.quantile() * scale.scatter, bounds);
   auto end = [](const ProfileEnd& at) { return at.kind == ProfileEnd::Kind::reached ? at.at : kUnknown; };
   e.low = end(interval.low);
   e.high = end(interval.high);
@@ -61,6 +52,12 @@ Estimate profiled(const ScanObjective& objective, const Minimum& minimum, int in
   return e;
 }
 
+Estimate normal(const Minimum& minimum, int index, const Scale& scale) {
+  return from_covariance(minimum.x[index], covariance_of(minimum)(index, index), scale);
+}
+
+namespace {
+
 /// The same solution in the coordinates of another lead.
 Minimum in_coordinates(const ScanObjective& objective, const Solution& solution) {
   Minimum minimum = solution.minimum;
@@ -68,11 +65,6 @@ Minimum in_coordinates(const ScanObjective& objective, const Solution& solution)
   objective.evaluate(minimum.x, minimum.value, &minimum.gradient, &minimum.information);
   return minimum;
 }
-
-struct Part {
-  double weight;
-  Estimate estimate;
-};
 
 /// Probability below x under a normal law whose sides are as wide as the interval's.
 double below(const Estimate& e, double x, double z) {
@@ -116,8 +108,8 @@ double mixture_quantile(std::span<const Part> parts, double probability, double 
   return found;
 }
 
-/// Value and variance averaged over candidates with their weights (K. P. Burnham, D. R. Anderson, Model Selection and Multimodel
-/// Inference, 2nd ed. (2002), section 4.3), the interval from the mixture of their profile intervals.
+}  // namespace
+
 Estimate averaged(std::span<Part> parts, const Scale& scale) {
   // A candidate whose rate or breadth ran where nothing holds it has no error to average, or one far beyond that of the best (parts[0]),
   // from a slope at 0 that does not last: the others speak. A spread that the scan does not show took a sigma of 22 mrad to 54 rad so.
@@ -154,6 +146,13 @@ Estimate averaged(std::span<Part> parts, const Scale& scale) {
   return mean;
 }
 
+Estimate times(Estimate e, double factor) {
+  for (double* part : {&e.value, &e.sigma, &e.low, &e.high}) *part *= factor;
+  return e;
+}
+
+namespace {
+
 void weigh(const ModeSolutions& mode, double scatter, Fit& fit) {
   double total = 0.0;
   fit.candidate_count = 0;
@@ -164,11 +163,6 @@ void weigh(const ModeSolutions& mode, double scatter, Fit& fit) {
     total += score.weight;
   }
   for (int i = 0; i < fit.candidate_count; ++i) fit.candidates[static_cast<std::size_t>(i)].weight /= total;
-}
-
-/// Estimate of one coordinate with the interval of its standard error.
-Estimate normal(const Minimum& minimum, int index, const Scale& scale) {
-  return from_covariance(minimum.x[index], covariance_of(minimum)(index, index), scale);
 }
 
 /// The average over candidates of a lead coordinate (or of the coordinate that `slot` picks). The best has its profile interval; the
@@ -190,7 +184,7 @@ Estimate over_candidates(const Problem& problem, const ModeSolutions& mode, cons
     // A drive that saturates below what the pulse needs, or couplings that no pulse turns together. What lesser candidates say is no answer.
     if (!std::isfinite(minimum.x[index]))
       return {kUnknown, kUnknown, kUnknown, kUnknown, lead.kind == Lead::Kind::pulse_amplitude ? kOutOfReach : kNoPulse};
-    parts[count++] = {fit.candidates[i].weight, shown && i == 0 ? profiled(objective, minimum, index, scale) : normal(minimum, index, scale)};
+    parts[count++] = {fit.candidates[i].weight, shown && i == 0 ? profiled(objective, objective.bounds(), minimum, index, scale) : normal(minimum, index, scale)};
   }
   return averaged({parts.data(), count}, scale);
 }
@@ -221,11 +215,6 @@ Estimate inverse_rate(double rate, double variance, const Scale& scale) {
   e.low = 1.0 / of_rate.high;
   if (of_rate.low > 0.0) e.high = 1.0 / of_rate.low;
   else if (e.why.empty()) e.why = "longer than the scan can tell";
-  return e;
-}
-
-Estimate times(Estimate e, double factor) {
-  for (double* part : {&e.value, &e.sigma, &e.low, &e.high}) *part *= factor;
   return e;
 }
 
@@ -312,7 +301,7 @@ void fill_readout(const ScanObjective& objective, const Scale& scale, Fit& fit) 
 
 /// The part of the coupling lost at the largest amplitude; below 0 where the gain rises.
 Estimate lost(const ScanObjective& objective, const Minimum& minimum, double largest, const Scale& scale) {
-  const Estimate q = profiled(objective, minimum, objective.layout().compression, scale);
+  const Estimate q = profiled(objective, objective.bounds(), minimum, objective.layout().compression, scale);
   const auto part = [largest](double compression) { return 1.0 - compressed(largest, compression) / largest; };
   return {part(q.value), q.sigma * std::abs(compressed_by_compression(largest, q.value)) / largest, part(q.low), part(q.high), q.why};
 }
@@ -336,6 +325,12 @@ void fill_amplitudes(const Problem& problem, const ModeSolutions& mode, const Sc
 
 }  // namespace
 
+void fill_from_covariance(const Problem& problem, const ScanObjective& objective, const Scale& scale, Fit& fit, FitWorkspace& work) {
+  fill_damping(problem, objective, scale, fit, work);
+  fill_others(objective, scale, fit);
+  fill_readout(objective, scale, fit);
+}
+
 void estimate(const Problem& problem, const ModeSolutions& mode, Fit& fit, FitWorkspace& work) {
   const Scale scale(fit.quality.scatter, problem.options.level);
   weigh(mode, scale.scatter, fit);
@@ -348,9 +343,7 @@ void estimate(const Problem& problem, const ModeSolutions& mode, Fit& fit, FitWo
   fit.x = best.minimum.x;
   fit.covariance = covariance_of(best.minimum) * scale.scatter;
   fit.quality.conditioning = conditioning(objective, best.minimum);
-  fill_damping(problem, objective, scale, fit, work);
-  fill_others(objective, scale, fit);
-  fill_readout(objective, scale, fit);
+  fill_from_covariance(problem, objective, scale, fit, work);
   fit.mean_factor = objective.mean_factor(best.physical);
 
   auto lead_slot = [](const Layout& layout) { return layout.lead; };

@@ -65,6 +65,14 @@ struct SecondComponent {
   double gain = 0.0;                 // deviance gained over the one that was fitted, scatter left by two divided out
 };
 
+/// Scans of a joint fit that say different things: what leaving the shared values would gain them all, and which gains most.
+struct Disagreement {
+  double deviance = 0.0, p_value = 1.0;  // together; chi-square with `dof` by chance
+  int dof = 0;
+  std::size_t scan = 0;  // the one that gains most, and how much
+  double of_scan = 0.0;
+};
+
 struct FitQuality {
   double deviance = kUnknown, dof = kUnknown;
   double p_value = kUnknown;        // of a deviance as large, moment-matched; before scatter is counted
@@ -88,6 +96,11 @@ struct FitQuality {
   std::optional<RivalMode> rival;
   Conditioning conditioning;        // of the chosen candidate
   std::optional<SecondComponent> second;
+  // Of joint fits: how the scans agree, the scan of which scatter and residuals are told, and that of the distrusted points.
+  std::optional<Disagreement> disagreement;
+  std::optional<std::size_t> of_scan, distrusted_of;
+  Axis distrusted_axis = Axis::duration;  // of which distrusted_at is told
+  int distrusted_points = 0;              // measured in that scan
 };
 
 /// Estimates of the same solution with intervals at another level, where one is asked for.

@@ -243,6 +243,7 @@ std::string_view name(Verdict verdict) {
 Decision decide(const State& state, const infer::Fit& fit, const infer::Prior& prior, const Context& context) {
   Decision decision;
   decision.event = event_of(state, fit, context);
+  decision.reasons = context.given;
   fit_gates(fit, context, decision.reasons);
   if (!refused(decision.reasons)) decision.event.effect = history_gate(state, decision.event, fit, context, decision.reasons);
 

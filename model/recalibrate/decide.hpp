@@ -42,6 +42,8 @@ struct Context {
   double carrier = kAbsent;            // the experiment's own number for its carrier, rad/s
   double transition_frequency = kAbsent;  // rad/s, of the transition; for the rotating-wave check
   double drive_amplitude = kAbsent;    // relative; absent where the scan does not say
+  std::vector<std::string> scan_names; // of a joint fit, in its order
+  Reasons given;                       // refusals found before: by the other half of a joint fit
 };
 
 struct Decision {

@@ -68,20 +68,36 @@ void refuse(Reasons& reasons, std::string code, std::string text) { reasons.push
 void caution(Reasons& reasons, std::string code, std::string text) { reasons.push_back({std::move(code), std::move(text), false}); }
 
 bool too_many_outliers(const infer::FitQuality& quality) {
-  return static_cast<double>(quality.distrusted.size()) > kMostDistrusted * quality.points;
+  const int points = quality.distrusted_of ? quality.distrusted_points : quality.points;
+  return static_cast<double>(quality.distrusted.size()) > kMostDistrusted * points;
 }
 
 /// Outliers that are no accidents, one by one.
 bool spoilt(const infer::FitQuality& quality) { return too_many_outliers(quality) || quality.p_together < kTogether; }
 
-/// "3 of 40 points, at 4.2 us, 8.1 us and 9 us,"
-std::string points_set_aside(const infer::Fit& fit) {
+/// Of a joint fit, which of its scans: " `flop-17`"; else nothing.
+std::string which(std::optional<std::size_t> scan, const Context& context) {
+  if (!scan) return {};
+  const bool named = *scan < context.scan_names.size() && !context.scan_names[*scan].empty();
+  return named ? " `" + context.scan_names[*scan] + "`" : " number " + std::to_string(*scan + 1) + " of those fitted together";
+}
+
+/// " of the scan `flop-17`" of a joint fit that failed on one scan alone.
+std::string of_joint(const infer::Fit& fit, const Context& context) {
+  return fit.quality.of_scan ? " of the scan" + which(fit.quality.of_scan, context) : std::string();
+}
+
+/// "3 of 40 points, at 4.2 us, 8.1 us and 9 us," and of a joint fit the scan that they stand in.
+std::string points_set_aside(const infer::Fit& fit, const Context& context) {
   const auto& at = fit.quality.distrusted_at;
-  std::string text = std::to_string(at.size()) + " of " + std::to_string(fit.quality.points) + " points, at ";
+  const bool joint = fit.quality.distrusted_of.has_value();
+  const auto axis = joint ? fit.quality.distrusted_axis : fit.axis;
+  std::string text = std::to_string(at.size()) + " of " + std::to_string(joint ? fit.quality.distrusted_points : fit.quality.points) + " points" +
+                     (joint ? " of the scan" + which(fit.quality.distrusted_of, context) : std::string()) + ", at ";
   const std::size_t named = at.size() > kNamed + 1 ? kNamed : at.size();
   for (std::size_t i = 0; i < named; ++i) {
     if (i > 0) text += i + 1 == at.size() ? " and " : ", ";
-    text += fit.axis == infer::Axis::duration ? engineering(at[i], "s", 4) : engineering(at[i] / kTwoPi, "Hz", 4);
+    text += axis == infer::Axis::duration ? engineering(at[i], "s", 4) : engineering(at[i] / kTwoPi, "Hz", 4);
   }
   return text + (named < at.size() ? " and " + std::to_string(at.size() - named) + " more places," : ",");
 }
@@ -123,7 +139,7 @@ void evidence_gates(const infer::Fit& fit, const Context& context, Reasons& reas
 /// From every starting point the fit ran away: there is nothing to be fitted, flat or monotone.
 void nothing_fitted(const infer::Fit& fit, const Context& context, Reasons& reasons) {
   const bool line = fit.axis == infer::Axis::detuning;
-  const std::string what = line ? "line" : "oscillation";
+  const std::string what = (line ? "line" : "oscillation") + of_joint(fit, context);
   if (fit.quality.monotone_gain >= context.accept.min_evidence)
     return refuse(reasons, "monotone",
                   "No " + what + " could be fitted; a curve that only rises or only falls describes the scan. " +
@@ -189,6 +205,17 @@ void line_gates(const infer::Fit& fit, const Context& context, Reasons& reasons)
                percent(context.accept.max_carrier_error) + "). Take more shots, or points on the line's flanks.");
 }
 
+/// Scans of a joint fit that cannot be had with one set of shared values.
+void agreement_gate(const infer::Fit& fit, const Context& context, Reasons& reasons) {
+  const auto& found = fit.quality.disagreement;
+  if (!found || !(found->p_value < context.accept.min_p_value)) return;
+  refuse(reasons, "scans_disagree",
+         "The scans fitted together do not agree: with values of their own they would fit better by a deviance of " + plain(found->deviance, 3) + " (" +
+             std::to_string(found->dof) + " expected), most of all the scan" + which(found->scan, context) + ", by " + plain(found->of_scan, 3) +
+             ". Power, carrier or alignment may have changed between them, or they were not taken with the same pulse. Fit each alone to see "
+             "which moved, and take them again close together.");
+}
+
 /// Where dead times disagree: the scan's with the configured one, with that of the scans before, or theirs with the configured one.
 void dead_time_caution(const infer::Fit& fit, const infer::Prior& prior, Reasons& reasons) {
   const auto told = [](const infer::Known& known) { return with_uncertainty(known.mean, known.sigma, "s"); };
@@ -244,7 +271,7 @@ void fit_gates(const infer::Fit& fit, const Context& context, Reasons& reasons) 
   const auto& quality = fit.quality;
   if (fit.outcome == infer::FitOutcome::too_few_points)
     return refuse(reasons, "too_few_points",
-                  "Only " + std::to_string(quality.points) + " measured points at " + std::to_string(fit.sampling.distinct) +
+                  "Only " + std::to_string(quality.points) + " measured points" + of_joint(fit, context) + " at " + std::to_string(fit.sampling.distinct) +
                       " different places: at least 7 at 5 are needed. Scan more points.");
   if (fit.outcome == infer::FitOutcome::not_converged) return nothing_fitted(fit, context, reasons);
   evidence_gates(fit, context, reasons);
@@ -255,17 +282,18 @@ void fit_gates(const infer::Fit& fit, const Context& context, Reasons& reasons) 
                "drives with a threshold: give amplitudes in the unit in which the field goes.");
   else if (poor(quality, context.accept))
     refuse(reasons, "poor_fit",
-           "The model does not describe the scan: the residuals' variance is " + plain(quality.scatter, 3) +
+           "The model does not describe the scan" + which(quality.of_scan, context) + ": the residuals' variance is " + plain(quality.scatter, 3) +
                " times what the readout's own noise allows" +
                (quality.p_after_scatter < least_order(quality, context.accept) ? ", and they follow one another or one stands far out" : "") +
                ". Look for a laser that dropped out, atoms lost, a readout that drifted, or more than two levels taking part.");
   else if (spoilt(quality))
     refuse(reasons, "poor_fit",
-           "The model describes the scan only without " + points_set_aside(fit) + " which are far from it: " +
+           "The model describes the scan only without " + points_set_aside(fit, context) + " which are far from it: " +
                (too_many_outliers(quality) ? "too many to be set aside (allowed: " + percent(kMostDistrusted) + ")"
                                            : std::string("too close together to be single accidents")) +
                ". Look for a laser that dropped out, atoms lost, or a readout that failed for a while; then scan again.");
   second_gate(fit, reasons);
+  agreement_gate(fit, context, reasons);
   rival_gate(fit, context, reasons);
   if (quality.outside_expect && !context.expect)
     refuse(reasons, "rival",
@@ -296,7 +324,7 @@ void cautions(const State& state, const infer::Fit& fit, const infer::Prior& pri
             "for it. Something fluctuates from shot to shot or point to point.");
   if (!quality.distrusted.empty() && !spoilt(quality))
     caution(reasons, "outliers",
-            points_set_aside(fit) + " are far from what the others say, and were set aside. An ion or atom lost, a laser that dropped out, or a "
+            points_set_aside(fit, context) + " are far from what the others say, and were set aside. An ion or atom lost, a laser that dropped out, or a "
             "readout that failed would do this. If it happens often, find out which before trusting the points that are left.");
   if (std::isfinite(fit.drift.value))
     caution(reasons, "drifting",

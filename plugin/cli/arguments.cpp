@@ -89,6 +89,7 @@ void Parser::add_fit() {
   sub->add_option("--config", fit.config, "The configuration that describes the drive; without it nothing is known beforehand")
       ->type_name("FILE");
   sub->add_option("--drive", fit.drive, "The drive; without it what the file says")->type_name("NAME");
+  sub->add_flag("--together", fit.together, "Fit the files jointly: two to four scans of one drive, at one drive amplitude");
   sub->add_flag("--json", fit.json, "Print one JSON object a line, as the sockets carry it");
 }
 

@@ -115,6 +115,15 @@ std::string sites(const wire::Fitted& scan, const Style& style) {
   return "\n" + table(rows, "  ");
 }
 
+std::string joint(const wire::Fitted& scan) {
+  if (scan.scans.empty()) return {};
+  std::vector<std::vector<std::string>> rows = {{"fitted together", "points", "deviance", "dof", "p", "would gain alone"}};
+  for (const auto& each : scan.scans)
+    rows.push_back({each.scan_name.empty() ? "scan" : each.scan_name, std::to_string(each.points), plain(each.deviance, 4), plain(each.dof, 3),
+                    plain(each.p_value, 2), plain(each.strain, 3)});
+  return "\n" + table(rows, "  ");
+}
+
 std::string dynamics(const wire::Fitted& scan) {
   if (scan.dynamics.empty()) return {};
   std::string text = scan.dynamics;
@@ -179,7 +188,7 @@ Label label(std::string_view field) {
 std::string report(const wire::Fitted& scan, const Style& style) {
   std::string text = head(scan, style);
   if (const auto found = estimates(scan); !found.empty()) text += "\n" + found;
-  text += pulses(scan, style) + sites(scan, style) + dynamics(scan);
+  text += pulses(scan, style) + sites(scan, style) + joint(scan) + dynamics(scan);
   if (scan.quality.points > 0) text += quality(scan);
   text += absent(scan);
   return text;

@@ -27,7 +27,7 @@ _halfturn() {
   esac
   case $command in
     serve) words="--config --threads --quiet --verbose --help" ;;
-    fit) words="--config --drive --json --help" ;;
+    fit) words="--config --drive --together --json --help" ;;
     intensity) words="--transition --rabi-hz --intensity-w-m2 --power-w --waist-m --json --list --help" ;;
     drift) words="--log --drive --since --until --csv --json --help" ;;
     rehearse)

@@ -231,10 +231,15 @@ recalibrate::Context context_for(const config::Drive* drive, const wire::Scan& s
 }
 
 Result<void> check_scan(const wire::Request& request, const config::Configuration& configuration) {
-  if (request.joint) return fault("not_available", "scans", "joint fits of several scans are not available in this version; send each as `scan`");
+  for (std::size_t i = 0; i < request.scans.size(); ++i) {
+    const auto& each = request.scans[i];
+    const std::string place = request.joint ? "scans[" + std::to_string(i) + "]" : std::string("scan");
+    if (request.joint && each.axis_kind == wire::AxisKind::amplitude)
+      return fault("not_available", place + ".amplitude", "amplitude scans have no part in a joint fit in this version; send them as `scan`");
+    if (!each.sites.empty() || each.observed.size() != 1)
+      return fault("not_available", place + ".sites", "scans of many sites are not available in this version; send one scan a site");
+  }
   const auto& scan = request.scans.front();
-  if (!scan.sites.empty() || scan.observed.size() != 1)
-    return fault("not_available", "scan.sites", "scans of many sites are not available in this version; send one scan a site");
   for (std::size_t i = 0; i < request.options.dynamics.size(); ++i) {
     const auto& name = request.options.dynamics[i];
     const std::string where = "options.dynamics[" + std::to_string(i) + "]";

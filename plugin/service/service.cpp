@@ -9,6 +9,7 @@
 #include "model/recalibrate/pulse_value.hpp"
 #include "plugin/service/answer.hpp"
 #include "plugin/service/known.hpp"
+#include "plugin/service/together.hpp"
 #include "plugin/wire/time.hpp"
 #include "plugin/wire/words.hpp"
 
@@ -173,9 +174,10 @@ std::variant<wire::Reply, Task> Service::accept(wire::Request request, bool answ
   const bool fits = request.kind == wire::Kind::fit;
   auto checked = fits ? check_scan(request, *task.configuration) : check_drive(request, *task.configuration);
   if (checked) checked = check_times(request, task.received_at);
-  if (!checked) return refuse(request, checked.error());
   task.drive = fits ? request.scans.front().drive : request.drive;
-  if (fits) task.taken_at = request.scans.front().taken_at.value_or(task.received_at);
+  if (checked && request.joint) checked = check_together(request.scans, task.configured(), request.options);
+  if (!checked) return refuse(request, checked.error());
+  if (fits) task.taken_at = latest_taken(request.scans, task.received_at);
   if (!fits || request.options.store) task.known = known_of(task.drive);
   task.request = std::move(request);
   return task;
@@ -185,9 +187,16 @@ void Service::fit(Task& task) {
   const auto* drive = task.configured();
   const auto& options = task.request.options;
   task.assumed.clear();
+  thread_local infer::FitWorkspace workspace;
+  if (task.request.joint) {
+    auto together = fit_together(task.request.scans, drive, task.known, options, task.received_at, workspace);
+    task.joint = std::move(together.fit);
+    task.prior = std::move(together.prior);
+    task.assumed = std::move(together.assumed);
+    return;
+  }
   task.prior = prior_for(drive, task.known, task.scan(), options, task.taken_at, task.assumed);
   const ModelScan scan = model_scan(task.scan());
-  thread_local infer::FitWorkspace workspace;
   task.fit.emplace();
   infer::fit(scan.batch, {&task.prior, 1}, fit_options(drive, options), {&*task.fit, 1}, workspace);
 }
@@ -238,6 +247,20 @@ wire::Fitted fit_alone(const wire::Scan& scan, const config::Drive* drive, const
   const auto decision = recalibrate::decide(nothing, fit, prior, context_for(drive, scan, prior, taken_at));
   wire::Fitted fitted = fitted_from({scan, options, drive, prior, fit, decision, assumed, taken_at});
   fitted.taken_at = scan.taken_at;
+  return fitted;
+}
+
+Result<wire::Fitted> fit_together_alone(const std::vector<wire::Scan>& scans, const config::Drive* drive, const wire::Options& options) {
+  if (auto checked = check_together(scans, drive, options); !checked) return tl::unexpected(checked.error());
+  const recalibrate::State nothing;
+  infer::FitWorkspace workspace;
+  const auto together = fit_together(scans, drive, nothing, options, 0, workspace);
+  const auto decision = decide_together(nothing, together.fit, together.prior, scans, drive, 0);
+  const wire::Scan all = standing_for(scans, together.fit.reference, 0);
+  const Time taken_at = latest_taken(scans, 0);
+  wire::Fitted fitted = fitted_from({all, options, drive, together.prior, together.fit.fit, decision.whole, together.assumed, taken_at});
+  add_scans(scans, together.fit, fitted);
+  if (taken_at == 0) fitted.taken_at.reset();
   return fitted;
 }
 

@@ -13,6 +13,7 @@
 
 #include "model/infer/fit.hpp"
 #include "model/recalibrate/decide.hpp"
+#include "model/recalibrate/joint.hpp"
 #include "plugin/config/configuration.hpp"
 #include "plugin/log/log.hpp"
 #include "plugin/wire/reply.hpp"
@@ -41,8 +42,9 @@ struct Task {
   recalibrate::State known;                                  // snapshot of the drive's state
   Time taken_at = 0;                                         // of the scan; when it arrived where it does not say
   std::vector<std::string> assumed;                          // filled by `fit`, with what follows
-  infer::Prior prior;
+  infer::Prior prior;                                        // of a joint fit, that of its reference scan
   std::optional<infer::Fit> fit;
+  std::optional<infer::JointFit> joint;                      // of several scans, in place of `fit`
 
   bool needs_fit() const { return request.kind == wire::Kind::fit; }
   const wire::Scan& scan() const { return request.scans.front(); }
@@ -120,5 +122,8 @@ class Service {
 /// Fits one scan on its own, as `halfturn fit` and `store: false` do: no history read or written. `drive` may be null: then
 /// nothing is known beforehand and no pulses are proposed.
 wire::Fitted fit_alone(const wire::Scan& scan, const config::Drive* drive, const wire::Options& options);
+
+/// The same of several scans of one drive jointly. A Fault where these scans cannot be fitted together, placed as in a request.
+Result<wire::Fitted> fit_together_alone(const std::vector<wire::Scan>& scans, const config::Drive* drive, const wire::Options& options);
 
 }  // namespace halfturn::service

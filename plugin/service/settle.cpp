@@ -9,6 +9,7 @@
 #include "plugin/service/answer.hpp"
 #include "plugin/service/known.hpp"
 #include "plugin/service/service.hpp"
+#include "plugin/service/together.hpp"
 #include "plugin/wire/decode.hpp"
 #include "plugin/wire/encode.hpp"
 #include "plugin/wire/time.hpp"
@@ -64,9 +65,20 @@ log::Event noted_event(const Task& task) {
   return event;
 }
 
-recalibrate::Decision decide_task(const Task& task, const recalibrate::State& state) {
+/// What is decided on a task, and how the rows of a joint fit differ from one scan's.
+struct Judged {
+  recalibrate::JointDecision decision;  // of one scan its `whole` alone
+  wire::Scan all;                       // of a joint fit what stands for its scans
+  const infer::Fit& fit;
+};
+
+Judged judge_task(const Task& task, const recalibrate::State& state) {
   const auto* drive = task.configured();
-  return recalibrate::decide(state, *task.fit, task.prior, context_for(drive, task.scan(), task.prior, task.taken_at));
+  if (!task.joint)
+    return {{recalibrate::decide(state, *task.fit, task.prior, context_for(drive, task.scan(), task.prior, task.taken_at)), std::nullopt}, {}, *task.fit};
+  const auto& scans = task.request.scans;
+  return {decide_together(state, *task.joint, task.prior, scans, drive, task.received_at),
+          standing_for(scans, task.joint->reference, task.received_at), task.joint->fit};
 }
 
 /// A tracked logarithm of rad/s, in Hz, with its interval of 95 %.
@@ -185,9 +197,12 @@ Result<Settled> Service::settle_fit(Task& task, Group& group) {
   const bool store = task.request.options.store;
   static const recalibrate::State kNothing;
   const recalibrate::State before = store ? group.of(*this, task.drive) : kNothing;
-  const auto decision = decide_task(task, before);
-  const Answer answer{task.scan(), task.request.options, task.configured(), task.prior, *task.fit, decision, task.assumed, task.taken_at};
+  const Judged judged = judge_task(task, before);
+  const auto& decision = judged.decision.whole;
+  const Answer answer{task.joint ? judged.all : task.scan(), task.request.options, task.configured(), task.prior, judged.fit, decision, task.assumed,
+                      task.taken_at};
   wire::Fitted fitted = fitted_from(answer);
+  if (task.joint) add_scans(task.request.scans, *task.joint, fitted);
   fitted.id = task.request.id;
   fitted.stored = store;
 
@@ -198,11 +213,19 @@ Result<Settled> Service::settle_fit(Task& task, Group& group) {
     event.id = task.request.id;
     const std::string reply = wire::encode_stored(fitted);
     if (auto kept = keep_configuration(*task.configuration, group); !kept) return tl::unexpected(kept.error());
-    const log::Bulk bulk{wire::encode_scan(task.scan()), task.request.digest, task.configuration->fingerprint, reply, task.scan().ambient};
+    const log::Bulk bulk{wire::encode_scans(task.request.scans), task.request.digest, task.configuration->fingerprint, reply, answer.scan.ambient};
     if (auto number = log_.append(event, &bulk); !number) return tl::unexpected(number.error());
     if (auto kept = log_.keep_reply(task.request.id, {task.request.digest, reply}, task.received_at); !kept) return tl::unexpected(kept.error());
     auto& state = group.of(*this, task.drive);
     fold(state, event);
+    if (judged.decision.line) {
+      // The same fit moves the line's track: a row of its own, without the bulk.
+      log::Event line = line_event_from(answer, *task.joint->line, *judged.decision.line, fitted);
+      line.received_at = task.received_at;
+      line.id = task.request.id;
+      if (auto number = log_.append(line, nullptr); !number) return tl::unexpected(number.error());
+      fold(state, line);
+    }
     settled.publications.push_back({"fitted/" + task.drive + "/", fitted});
     if (decision.event.effect != recalibrate::Effect::none)
       settled.publications.push_back({"drift/" + task.drive + "/", drift_of(task.drive, state, task.taken_at)});
@@ -241,7 +264,8 @@ Result<Settled> Service::settle_history(const Task& task) {
     if (!following) return tl::unexpected(following.error());
     if (!following->empty()) answer.next = wire::format_time(following->front().event.happened_at);
   }
-  for (auto& row : *rows) answer.rows.push_back(std::move(row.reply));
+  for (auto& row : *rows)
+    if (!row.reply.empty()) answer.rows.push_back(std::move(row.reply));  // the line's row of a joint fit has none of its own
   Settled settled;
   if (task.answers) settled.reply = std::move(answer);
   return settled;

@@ -82,6 +82,38 @@ std::string encode_scan(const Scan& scan) {
   return writer->take();
 }
 
+std::string encode_scans(const std::vector<Scan>& scans) {
+  if (scans.size() == 1) return encode_scan(scans.front());
+  const auto writer = make_writer(Encoding::msgpack);
+  writer->open_map();
+  writer->key(name(Field::scans));
+  writer->open_list();
+  for (const Scan& scan : scans) write_scan(*writer, scan);
+  writer->close_list();
+  writer->close_map();
+  return writer->take();
+}
+
+Result<std::vector<Scan>> decode_scans(std::string_view bytes, const DecodeLimits& limits) {
+  if (auto problem = size_problem(bytes, limits)) return tl::unexpected<Fault>(std::move(*problem));
+  Sink sink(limits, Map::request);
+  if (auto problem = read(bytes, encoding_of(bytes), sink)) return tl::unexpected<Fault>(std::move(*problem));
+  Value* const list = sink.values().find(Field::scans);
+  if (list == nullptr) {
+    auto one = decode_scan(bytes, limits);
+    if (!one) return tl::unexpected<Fault>(one.error());
+    return std::vector<Scan>{std::move(*one)};
+  }
+  std::optional<Fault> fault = sink.fault();
+  std::vector<Scan> scans(list->maps.size());
+  for (std::size_t i = 0; i < scans.size() && !fault; ++i) {
+    Checker in(list->maps[i], "scans[" + std::to_string(i) + "]", fault);
+    check_scan(in, ScanPart::whole, scans[i]);
+  }
+  if (fault) return tl::unexpected<Fault>(std::move(*fault));
+  return scans;
+}
+
 Result<Scan> decode_scan(std::string_view bytes, const DecodeLimits& limits) {
   if (auto problem = size_problem(bytes, limits)) return tl::unexpected<Fault>(std::move(*problem));
   Sink sink(limits, Map::scan);

@@ -38,6 +38,12 @@ Decoded decode_request(std::string_view bytes, const DecodeLimits& limits);
 /// whole numbers as the shortest integer, others as 64-bit floats, a weight that is the same everywhere as one number.
 std::string encode_scan(const Scan& scan);
 
+/// The same of the scans of a joint fit: a map with the one key `scans`; of one scan what encode_scan writes.
+std::string encode_scans(const std::vector<Scan>& scans);
+
+/// Reads what encode_scan or encode_scans wrote, and so what the log holds of any fit.
+Result<std::vector<Scan>> decode_scans(std::string_view bytes, const DecodeLimits& limits = {});
+
 /// Reads what encode_scan wrote (and any scan object of a `fit`): decode_scan(encode_scan(s)) equals s.
 Result<Scan> decode_scan(std::string_view bytes, const DecodeLimits& limits = {});
 

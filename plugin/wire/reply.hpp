@@ -84,6 +84,17 @@ struct SiteFit {
   Quality quality;
 };
 
+/// One scan of a joint fit.
+struct JointScan {
+  std::string scan_name;
+  AxisKind axis_kind = AxisKind::duration;
+  std::optional<Time> taken_at;
+  std::int64_t points = 0;
+  double deviance = 0, dof = 0, p_value = 0, scatter = 1;  // under the shared values
+  double strain = 0;  // deviance that values of its own would gain it
+  std::vector<std::int64_t> distrusted;
+};
+
 struct Fitted {
   std::string id;  // of the request; empty: left out
   std::string scan_name, drive;
@@ -98,6 +109,7 @@ struct Fitted {
   std::vector<Candidate> candidates;
   Quality quality;
   std::optional<Overlay> overlay;
+  std::vector<JointScan> scans;  // of a joint fit
   std::vector<SiteFit> sites;
   bool stored = false;
   bool replayed = false;

@@ -63,6 +63,36 @@ void write_dynamics(Writer& to, const Fitted& fitted) {
   to.close_map();
 }
 
+void write_indices(Writer& to, const std::vector<std::int64_t>& indices) {
+  to.key("distrusted");
+  to.open_list();
+  for (const auto index : indices) to.integer(index);
+  to.close_list();
+}
+
+void write_joint(Writer& to, const std::vector<JointScan>& scans) {
+  to.key("scans");
+  to.open_list();
+  for (const JointScan& scan : scans) {
+    to.open_map();
+    if (!scan.scan_name.empty()) to.field("scan_name", scan.scan_name);
+    to.field("axis", axis_name(scan.axis_kind));
+    if (scan.taken_at) {
+      to.key("taken_at");
+      to.time(*scan.taken_at);
+    }
+    to.field("points", scan.points);
+    to.field("deviance", scan.deviance);
+    to.field("dof", scan.dof);
+    to.field("p_value", scan.p_value);
+    to.field("scatter", scan.scatter);
+    to.field("strain", scan.strain);
+    write_indices(to, scan.distrusted);
+    to.close_map();
+  }
+  to.close_list();
+}
+
 void write_conditioning(Writer& to, const Quality& quality) {
   to.field("condition", quality.condition);
   to.key("correlation");
@@ -89,10 +119,7 @@ void write_quality(Writer& to, const Quality& quality) {
   to.field("cycles", quality.cycles);
   to.field("points", quality.points);
   to.field("scatter", quality.scatter);
-  to.key("distrusted");
-  to.open_list();
-  for (const auto index : quality.distrusted) to.integer(index);
-  to.close_list();
+  write_indices(to, quality.distrusted);
   to.field("range_hz", std::vector<double>{quality.range_low_hz, quality.range_high_hz});
   to.key("rival");
   if (quality.rival) {
@@ -153,6 +180,7 @@ void write_fields(Writer& to, const Fitted& fitted) {
     to.key("overlay");
     write_overlay(to, *fitted.overlay);
   }
+  if (!fitted.scans.empty()) write_joint(to, fitted.scans);
   if (!fitted.sites.empty()) {
     to.key("sites");
     write_sites(to, fitted.sites);

@@ -48,6 +48,32 @@ class Fit(InFolder):
         self.assertFalse(reply.get("pulses"))
         self.assertLess(abs(reply["rabi_hz"]["value"] - RABI_HZ), 5 * reply["rabi_hz"]["sigma"])
 
+    def test_files_are_fitted_together(self):
+        longer = self.write("longer.csv", csv_of(flop(seed=3, span_s=23e-6)))
+        run = program("fit", "--together", self.good, longer, "--config", CONFIG, "--json")
+        self.assertEqual(run.returncode, 0, run.stderr)
+        reply, alone = json.loads(run.stdout), json.loads(program("fit", self.good, "--config", CONFIG, "--json").stdout)
+        self.assertEqual([scan["scan_name"] for scan in reply["scans"]], ["good", "longer"])
+        self.assertEqual(reply["scan_name"], "good + longer")
+        self.assertLess(abs(reply["rabi_hz"]["value"] - RABI_HZ), 5 * reply["rabi_hz"]["sigma"])
+        self.assertLess(reply["rabi_hz"]["sigma"], 0.8 * alone["rabi_hz"]["sigma"])
+        text = program("fit", "--together", self.good, longer, "--config", CONFIG)
+        self.assertRegex(text.stdout, r"fitted together +points(.*\n)+ +good +41 .*\n +longer +41 ")
+        for line in text.stdout.splitlines():
+            self.assertLessEqual(len(line), 130)
+
+    def test_what_cannot_be_fitted_together_is_said(self):
+        moved = self.write("moved.csv", csv_of(flop(seed=4, rabi_hz=1.06 * RABI_HZ, span_s=23e-6)))
+        run = program("fit", "--together", self.good, moved, "--config", CONFIG)
+        self.assertEqual(run.returncode, 1, run.stderr)
+        self.assertIn("scans_disagree", run.stdout)
+        alone = program("fit", "--together", self.good, "--config", CONFIG)
+        self.assertEqual((alone.returncode, alone.stdout), (2, ""))
+        self.assertIn("at least two", alone.stderr)
+        broken = program("fit", "--together", self.good, self.broken, "--config", CONFIG)
+        self.assertEqual((broken.returncode, broken.stdout), (2, ""))
+        self.assertIn("broken.csv:2:", broken.stderr)
+
     def test_exit_status_and_the_worst_of_several(self):
         self.assertEqual(program("fit", self.flat, "--config", CONFIG).returncode, 1)
         broken = program("fit", self.broken)

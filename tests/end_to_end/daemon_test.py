@@ -91,6 +91,18 @@ class Answers(InFolder):
         self.assertIs(reply["stored"], True)
         self.assertRegex(daemon.line_with(scan["scan_name"]), r"red flop-11: (apply|keep), 123\.\d+\(\d+\) kHz")
 
+    def test_a_joint_fit_is_one_reply_and_one_row_of_history(self):
+        peer = self.peer(self.daemon())
+        scans = [flop(taken_at=moment(0), seed=16), flop(taken_at=moment(1), seed=17, span_s=23e-6)]
+        reply = peer.ask("fit", {"scans": scans})
+        self.assertEqual(reply["kind"], "fitted", reply)
+        self.assertNotEqual(reply["verdict"], "refuse", reply["reasons"])
+        self.assertEqual([scan["scan_name"] for scan in reply["scans"]], ["flop-16", "flop-17"])
+        self.assertEqual(reply["quality"]["points"], 82)
+        self.assertLess(abs(reply["rabi_hz"]["value"] - RABI_HZ), 5 * reply["rabi_hz"]["sigma"])
+        rows = peer.ask("history", {"drive": "red"})["rows"]
+        self.assertEqual([row["scan_name"] for row in rows], ["flop-16 + flop-17"])
+
     def test_flat_scan_is_refused_with_reasons_and_proposes_nothing_new(self):
         peer = self.peer(self.daemon())
         reply = peer.ask("fit", {"scan": flop(flat=True, seed=12)})

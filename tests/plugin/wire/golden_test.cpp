@@ -91,6 +91,15 @@ Fitted of_amplitudes() {
   return f;
 }
 
+Fitted of_two_scans() {
+  Fitted f = a_fit();
+  f.scan_name = "flop-17 + line-3";
+  f.carrier_shift_hz = 3521.5;
+  f.scans = {{"flop-17", AxisKind::duration, parse_time("2026-02-03T04:05:00Z"), 41, 38.25, 37.5, 0.44, 1, 0.75, {7}},
+             {"line-3", AxisKind::detuning, {}, 61, 57.5, 57.75, 0.49, 1, 0.125, {}}};
+  return f;
+}
+
 State a_state() {
   State s;
   s.id = "s1";
@@ -113,6 +122,7 @@ TEST_CASE("golden replies") {
   hold_both("replies/fitted", [](Encoding e) { return encode(a_fit(), e); });
   hold_both("replies/fitted_sites", [](Encoding e) { return encode(many_sites(), e); });
   hold_both("replies/fitted_amplitude", [](Encoding e) { return encode(of_amplitudes(), e); });
+  hold_both("replies/fitted_joint", [](Encoding e) { return encode(of_two_scans(), e); });
   hold_both("replies/noted", [](Encoding e) { return encode(Noted{"n1"}, e); });
   hold_both("replies/rows", [](Encoding e) { return encode(Rows{"r1", {encode_stored(a_fit())}, "2026-02-03T04:05:06.250000001Z"}, e); });
   hold_both("replies/state", [](Encoding e) { return encode(a_state(), e); });

@@ -126,6 +126,10 @@ TEST_CASE("random fits come back from both encodings") {
     const auto stored = decode_scan(encode_scan(sent.scans[0]));
     REQUIRE(stored);
     check_equal(*stored, sent.scans[0]);
+    const auto all = decode_scans(encode_scans(sent.scans));
+    REQUIRE(all);
+    REQUIRE(all->size() == sent.scans.size());
+    for (std::size_t s = 0; s < all->size(); ++s) check_equal((*all)[s], sent.scans[s]);
   }
 }
 
