@@ -82,7 +82,6 @@ class Limits(InFolder):
         axis = {"duration_s": [1e-6 * i for i in range(1, 9)], "shots": 100}
         scan = {"scan_name": "a", "drive": "red", "counts": [10] * 8, **axis}
         for kind, body in (("next", {"drive": "red", "shots": 100}), ("begin", {"scan": {"scan_name": "a", "drive": "red"}}),
-                           ("fit", {"scans": [scan, {**scan, "scan_name": "b"}]}),
                            ("fit", {"scan": {**scan, "counts": [[10] * 8] * 2, "sites": ["l", "r"]}})):
             with self.subTest(kind=kind, fields=sorted(body)):
                 reply = peer.ask(kind, body)
@@ -90,8 +89,7 @@ class Limits(InFolder):
 
     def test_commands_and_options_of_later_versions_are_bad_usage(self):
         flop = ROOT / "examples/flop.csv"
-        for words in (["refit", "--log", "x.db"], ["next"], ["keygen", self.folder], ["fit", flop, "--plot", "x.svg"],
-                      ["fit", flop, flop, "--together"]):
+        for words in (["refit", "--log", "x.db"], ["next"], ["keygen", self.folder], ["fit", flop, "--plot", "x.svg"]):
             with self.subTest(words):
                 self.assertEqual(program(*words).returncode, 2)
 

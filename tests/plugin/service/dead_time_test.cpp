@@ -161,7 +161,7 @@ TEST_CASE("a dead time that jumps is followed within a few flops, and no answer 
       INFO("jump " << jump << " seed " << seed);
       for (int i = 0; i < 12; ++i) {
         const auto fitted = night.flop(now);
-        INFO("flop " << i);
+        INFO("flop " << i << (fitted.reasons.empty() ? std::string() : " " + fitted.reasons.front().text));
         REQUIRE(fitted.verdict != "refuse");
         for (const auto& [name, pulse] : fitted.pulses) {
           const double off = std::abs(pulse.exact_s - now - pulse.angle_rad / kRabi);
