@@ -20,25 +20,6 @@ constexpr std::array<double, 16> kLost = {-0.3, -0.2, -0.1, 0.0, 0.05, 0.1, 0.15
 // What history knows is tried with a little loss and with much.
 constexpr std::array<double, 2> kLostOfHistory = {0.25, 0.0};
 
-/// Weighted sums over the points of 1, y, x = cos(rotation), their products: for y ~ middle + swing x by least squares.
-struct Sums {
-  double w = 0.0, y = 0.0, x = 0.0, xx = 0.0, xy = 0.0;
-
-  bool solvable() const { return w * xx - x * x > 1e-12 * w * xx; }
-  double swing() const { return (w * xy - x * y) / (w * xx - x * x); }
-  double middle() const { return (y - swing() * x) / w; }
-  /// The weighted sum of squares taken off a flat line; 0 where there is no oscillation to solve for.
-  double gain() const { return solvable() ? swing() * (xy - x * y / w) : 0.0; }
-  void add(double weight, double value, double cosine) {
-    const double weighted = weight * cosine;
-    w += weight;
-    y += weight * value;
-    x += weighted;
-    xx += weighted * cosine;
-    xy += weighted * value;
-  }
-};
-
 struct Peak {
   double rotation = 0.0, compression = 0.0, gain = 0.0;
 };
@@ -76,16 +57,16 @@ class AmplitudeSearch {
 
   bool start(const Peak& peak, Readout::Kind kind, Physical& start) {
     set_compression(peak.compression);
-    const Sums s = sums(peak.rotation);
+    const StraightLine s = sums(peak.rotation);
     if (!s.solvable()) return false;
     // From g the signal is middle - (contrast / 2) cos, from e the sign is the other.
-    const double contrast = prior_.start.prepared == dynamics::Prepared::ground ? -2.0 * s.swing() : 2.0 * s.swing();
+    const double contrast = prior_.start.prepared == dynamics::Prepared::ground ? -2.0 * s.slope() : 2.0 * s.slope();
     if (contrast == 0.0 || !sign_admitted(prior_, contrast)) return false;
     start = Physical{};
     start.generalised = peak.rotation;
     start.compression = peak.compression;
     start.dead_time = std::min(prior_.dead_time.mean, 0.5 * scan_.pulse_length_s);
-    start.signal_ground = s.middle() - 0.5 * contrast;
+    start.signal_ground = s.intercept() - 0.5 * contrast;
     start.signal_excited = start.signal_ground + contrast;
     keep_signals_possible(kind, start);
     return true;
@@ -103,8 +84,8 @@ class AmplitudeSearch {
   }
 
   /// The sums at the phasors as they stand, which then take their step.
-  Sums next_sums() {
-    Sums s;
+  StraightLine next_sums() {
+    StraightLine s;
     auto& f = work_.frequencies;
     for (std::size_t i = 0; i < scan_.points(); ++i) {
       const double c = f.cosine[i], d = f.sine[i];
@@ -115,8 +96,8 @@ class AmplitudeSearch {
     return s;
   }
 
-  Sums sums(double rotation) const {
-    Sums s;
+  StraightLine sums(double rotation) const {
+    StraightLine s;
     for (std::size_t i = 0; i < scan_.points(); ++i) s.add(work_.weight[i], work_.value[i], std::cos(rotation * work_.table[i]));
     return s;
   }
@@ -145,10 +126,7 @@ void keep_distinct(const AmplitudeSearch& search, std::vector<Peak>& peaks, doub
 std::size_t amplitude_starts(const ScanBatch& scan, const Readout& readout, const Prior& prior, const Sampling& sampling,
                              std::span<Mode> modes, SearchWorkspace& work) {
   const auto n = scan.points();
-  if (sampling.distinct < 4 || modes.empty()) return 0;
-  work.reserve(n);
-  linear_points(readout, {work.value.data(), n}, {work.weight.data(), n});
-  if (std::all_of(work.weight.begin(), work.weight.begin() + static_cast<std::ptrdiff_t>(n), [](double w) { return w == 0.0; })) return 0;
+  if (modes.empty() || !take_points(readout, sampling, work)) return 0;
   AmplitudeSearch search(scan, prior, work);
   std::vector<Peak> peaks;
   for (const double lost : kLost) {

@@ -17,14 +17,9 @@ constexpr double kDriftSigma = 0.025;
 
 /// Twice the gain in the log likelihood that a drift promises at the fit, the other parameters following (C. R. Rao, Proc. Camb. Phil.
 /// Soc. 44, 50 (1948)): chi-square with one degree of freedom where there is none.
-double drift_score(const ScanBatch& scan, const Readout& readout, const Prior& prior, const Fit& fit, FitWorkspace& work) {
-  Prior with = prior;
+double drift_score(const ScanBatch& scan, const Readout& readout, const Fit& fit, FitWorkspace& work) {
+  Prior with = felt_prior(fit);
   with.drift = Known{0.0, kDriftSigma};
-  ScanObjective objective(scan, readout, with, fit.chosen, {}, fit.negative_contrast, work.objective);
-  if (objective.layout().count != fit.x.size() + 1) {  // Delta was too small to be felt
-    with.detuning.reset();
-    if (ScanObjective(scan, readout, with, fit.chosen, {}, fit.negative_contrast, work.objective).layout().count != fit.x.size() + 1) return 0.0;
-  }
   const ScanObjective drifting(scan, readout, with, fit.chosen, {}, fit.negative_contrast, work.objective);
   double value = 0.0;
   Vector gradient;
@@ -43,16 +38,13 @@ void look_for_drift(const ScanBatch& scan, const Readout& readout, const FitOpti
   if (fit.outcome != FitOutcome::fitted || scan.progress.empty() || !(fit.quality.over_flat >= kEvidence)) return;
   // Among frequencies that fit alike a drift would only favour the higher ones, whose phases it bends most.
   if (fit.quality.rival && fit.quality.rival->deviance_above < options.rival_margin) return;
-  if (!(drift_score(scan, readout, fit.prior, fit, work) > kDriftSuspected)) return;
+  if (!(drift_score(scan, readout, fit, work) > kDriftSuspected)) return;
   Prior with = fit.prior;
   with.drift = Known{0.0, kDriftSigma};
   Fit drifting = fit;
   if (!fit_under(scan, readout, with, options, drifting, work)) return;
   const auto best = [](const Fit& f) { return f.candidates[0].aicc; };
   if (!(best(drifting) < best(fit) - 2.0 * fit.quality.scatter)) return;
-  drifting.quality.readout_released = fit.quality.readout_released;
-  drifting.quality.dead_time_released = fit.quality.dead_time_released;
-  drifting.quality.dead_time_doubted = fit.quality.dead_time_doubted;
   drifting.prior = with;
   fit = std::move(drifting);
 }

@@ -7,6 +7,7 @@
 #include "model/infer/amplitude_response.hpp"
 #include "model/infer/conditioning.hpp"
 #include "model/infer/dead_time.hpp"
+#include "model/infer/rules.hpp"
 #include "model/infer/statistics.hpp"
 #include "model/quantity/constants.hpp"
 
@@ -152,18 +153,6 @@ Estimate times(Estimate e, double factor) {
 }
 
 namespace {
-
-void weigh(const ModeSolutions& mode, double scatter, Fit& fit) {
-  double total = 0.0;
-  fit.candidate_count = 0;
-  for (const auto& solution : mode.solutions) {
-    const double difference = solution.quasi_aicc(scatter) - mode.best().quasi_aicc(scatter);
-    auto& score = fit.candidates[static_cast<std::size_t>(fit.candidate_count++)];
-    score = {solution.dynamics, solution.aicc, std::exp(-0.5 * difference)};
-    total += score.weight;
-  }
-  for (int i = 0; i < fit.candidate_count; ++i) fit.candidates[static_cast<std::size_t>(i)].weight /= total;
-}
 
 /// The average over candidates of a lead coordinate (or of the coordinate that `slot` picks). The best has its profile interval; the
 /// others, which fit worse and weigh less, that of their standard error.
@@ -333,7 +322,7 @@ void fill_from_covariance(const Problem& problem, const ScanObjective& objective
 
 void estimate(const Problem& problem, const ModeSolutions& mode, Fit& fit, FitWorkspace& work) {
   const Scale scale(fit.quality.scatter, problem.options.level);
-  weigh(mode, scale.scatter, fit);
+  weigh(mode.solutions, scale.scatter, fit);
   const auto& best = mode.best();
   const ScanObjective objective(problem.scan, problem.readout, problem.prior, best.dynamics, {}, best.negative_contrast, work.objective);
   fit.chosen = best.dynamics;

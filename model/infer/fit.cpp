@@ -60,9 +60,7 @@ bool overlay(const ScanBatch& scan, const Fit& fit, std::span<const double> axis
   const Readout nothing{scan.readout, {}, {}};
   ObjectiveWorkspace work;
   work.reserve(axis.size());
-  // Whether Delta was fitted follows from the number of parameters.
-  Prior known = fit.prior;
-  if (ScanObjective(drawn, nothing, known, fit.chosen, {}, fit.negative_contrast, work).layout().count != fit.x.size()) known.detuning.reset();
+  const Prior known = felt_prior(fit);
   const ScanObjective curve(drawn, nothing, known, fit.chosen, {}, fit.negative_contrast, work);
   return curve.layout().count == fit.x.size() && curve.draw(fit.x, fit.covariance, z, signal, low, high);
 }

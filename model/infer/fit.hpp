@@ -125,6 +125,7 @@ struct Fit {
   Matrix covariance;            // of x, scatter counted
   bool negative_contrast = false;
   Prior prior;                  // under which it was fitted: the one given, less what the data contradicted
+  bool detuning_felt = true;    // whether its detuning was large enough to be a parameter
   double outlier_share = 0.0;   // the share of outliers that the likelihood allowed for (outliers.hpp); 0: none
   double dispersion = 1.0;      // Readout::dispersion of the likelihood
 

@@ -119,21 +119,15 @@ bool slow_start(const LinearPoints& points, const Prior& prior, Readout::Kind ki
   start.generalised = frequency;
   start.dead_time = prior.dead_time.mean;
   const bool ground = prior.start.prepared == dynamics::Prepared::ground;
-  double w1 = 0, p1 = 0, pp = 0, wy = 0, py = 0;
+  StraightLine signals;  // of the population
   for (std::size_t i = 0; i < points.time.size(); ++i) {
     const double flop = 0.5 - 0.5 * std::cos(frequency * std::max(0.0, points.time[i] - start.dead_time));
-    const double p = ground ? flop : 1.0 - flop, w = points.weight[i];
-    w1 += w;
-    p1 += w * p;
-    pp += w * p * p;
-    wy += w * points.value[i];
-    py += w * p * points.value[i];
+    signals.add(points.weight[i], points.value[i], ground ? flop : 1.0 - flop);
   }
-  const double determinant = w1 * pp - p1 * p1;
-  if (!(determinant > 1e-12 * w1 * pp)) return false;
-  const double contrast = (w1 * py - p1 * wy) / determinant;
+  if (!signals.solvable()) return false;
+  const double contrast = signals.slope();
   if (contrast == 0.0 || !sign_admitted(prior, contrast)) return false;
-  start.signal_ground = (wy - contrast * p1) / w1;
+  start.signal_ground = signals.intercept();
   start.signal_excited = start.signal_ground + contrast;
   keep_signals_possible(kind, start);
   return true;
@@ -153,10 +147,7 @@ TrialGrid trial_grid(const Prior& prior, const Sampling& sampling, std::size_t p
 std::size_t duration_starts(const ScanBatch& scan, const Readout& readout, const Prior& prior, const Sampling& sampling,
                             std::span<Mode> modes, SearchWorkspace& work) {
   const auto n = scan.points();
-  if (sampling.distinct < 4 || modes.empty()) return 0;
-  work.reserve(n);
-  linear_points(readout, {work.value.data(), n}, {work.weight.data(), n});
-  if (std::all_of(work.weight.begin(), work.weight.begin() + static_cast<std::ptrdiff_t>(n), [](double w) { return w == 0.0; })) return 0;
+  if (modes.empty() || !take_points(readout, sampling, work)) return 0;
   const LinearPoints points{scan.axis, {work.value.data(), n}, {work.weight.data(), n}, *std::min_element(scan.axis.begin(), scan.axis.end())};
   // A known decay damps the oscillation at 3/4 of its rate (Torrey 1949, resonance), a loss at half.
   const double known_damping = 0.75 * prior.decay + 0.5 * prior.loss;

@@ -4,6 +4,7 @@
 
 #include "model/infer/joint_solution.hpp"
 #include "model/infer/line_modes.hpp"
+#include "model/infer/rules.hpp"
 #include "model/quantity/constants.hpp"
 
 /// The choice among modes of a joint fit, by the rules of choose.cpp.
@@ -11,10 +12,6 @@ namespace halfturn::infer {
 namespace {
 
 using constants::kTwoPi;
-
-// As in choose.cpp: how tightly history is held and how near it must lie, the deviance below which `expect` decides, the zone of mirror
-// images in resolution elements.
-constexpr double kHistorySigma = 0.01, kHistoryKnows = 4.0, kExpectDecides = 4.0, kMirrorZone = 0.5;
 
 double data_deviance(const JointProblem& problem, const JointSolution& solution, FitWorkspace& work) {
   const JointObjective objective = objective_of(problem, solution, {Lead::Kind::bare}, work);
@@ -42,28 +39,13 @@ std::size_t first_choice(const JointProblem& problem, std::span<const JointMode>
   return 0;
 }
 
-std::optional<std::size_t> choice_of_history(const JointProblem& problem, std::span<const JointMode> modes, std::span<const std::size_t> alike,
-                                             double scatter) {
-  const auto& history = problem.of_reference().prior.log_rabi;
-  if (!history || !problem.flops || alike.size() < 2) return std::nullopt;
-  const auto distance = [&](std::size_t i) { return std::abs(std::log(modes[i].best().apparent) - history->mean) / std::max(history->sigma, kHistorySigma); };
-  const auto score = [&](std::size_t i) { return modes[i].best().aicc / scatter + distance(i) * distance(i); };
-  const std::size_t best = *std::min_element(alike.begin(), alike.end(), [&](std::size_t i, std::size_t j) { return score(i) < score(j); });
-  const bool decided = std::all_of(alike.begin(), alike.end(), [&](std::size_t i) { return i == best || score(i) - score(best) >= problem.options.rival_margin; });
-  return decided && distance(best) < kHistoryKnows ? std::optional(best) : std::nullopt;
-}
-
-/// Near half the sampling rate of scans that all have one even grid.
-std::optional<RivalMode> mirror_image(const JointProblem& problem, const JointSolution& chosen) {
+/// Whether the duration scans all have one even grid.
+bool on_one_grid(const JointProblem& problem) {
   for (std::size_t i = 0; i < problem.scans.size(); ++i)
     if (problem.scans[i].batch.kind == Axis::duration &&
         (!problem.sampling[i].even || std::abs(problem.sampling[i].limit / problem.limit - 1.0) > 1e-3))
-      return std::nullopt;
-  const double mirror = 2.0 * problem.limit - chosen.apparent;
-  const auto& expect = problem.of_reference().prior.expect;
-  const bool close = problem.flops && std::abs(mirror - chosen.apparent) < 2.0 * kMirrorZone * kTwoPi / problem.longest;
-  if (!close || (expect && (mirror < expect->low || mirror > expect->high))) return std::nullopt;
-  return RivalMode{mirror, 0.0, false};
+      return false;
+  return true;
 }
 
 void take_nearest(std::optional<RivalMode>& rival, const RivalMode& other) {
@@ -99,13 +81,15 @@ JointChoice choose_joint(const JointProblem& problem, std::span<const JointMode>
   std::vector<std::size_t> alike;
   for (std::size_t i = 0; i < modes.size(); ++i)
     if (i == choice.chosen || (competes(i) && modes[i].best().aicc < within)) alike.push_back(i);
-  if (const auto known = choice_of_history(problem, modes, alike, scatter)) {
-    choice.chosen = *known;
-    choice.by_history = true;
-    return choice;
-  }
+  const Prior& prior = problem.of_reference().prior;
+  if (prior.log_rabi && problem.flops)
+    if (const auto known = choice_of_history(*prior.log_rabi, modes, alike, scatter, problem.options.rival_margin)) {
+      choice.chosen = *known;
+      choice.by_history = true;
+      return choice;
+    }
   const JointSolution& chosen = modes[choice.chosen].best();
-  choice.rival = mirror_image(problem, chosen);
+  if (problem.flops && on_one_grid(problem)) choice.rival = mirror_image(chosen.apparent, problem.limit, problem.longest, prior.expect);
   for (std::size_t i = 0; i < modes.size(); ++i)
     if (i != choice.chosen && competes(i)) weigh_rival(problem, chosen, modes[i].best(), scatter, line_width, choice);
   return choice;

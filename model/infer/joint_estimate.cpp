@@ -4,24 +4,13 @@
 
 #include "model/infer/estimate.hpp"
 #include "model/infer/joint_solution.hpp"
+#include "model/infer/rules.hpp"
 #include "model/infer/statistics.hpp"
 #include "model/quantity/constants.hpp"
 
 /// From a mode of a joint fit to estimates, as estimate.cpp does it for one scan.
 namespace halfturn::infer {
 namespace {
-
-void weigh(const JointMode& mode, double scatter, Fit& fit) {
-  const auto quasi = [scatter](const JointSolution& s) { return s.aicc - 2.0 * s.minimum.value * (1.0 - 1.0 / scatter); };
-  double total = 0.0;
-  fit.candidate_count = 0;
-  for (const auto& solution : mode.solutions) {
-    auto& score = fit.candidates[static_cast<std::size_t>(fit.candidate_count++)];
-    score = {solution.dynamics, solution.aicc, std::exp(-0.5 * (quasi(solution) - quasi(mode.best())))};
-    total += score.weight;
-  }
-  for (int i = 0; i < fit.candidate_count; ++i) fit.candidates[static_cast<std::size_t>(i)].weight /= total;
-}
 
 /// The average over candidates of the coordinate that `slot` picks, the best with its profile interval.
 template <class Slot>
@@ -90,7 +79,7 @@ void fill_axis(const JointProblem& problem, Axis kind, Fit& fit) {
 void estimate_joint(const JointProblem& problem, const JointMode& mode, double scatter, JointFit& out, FitWorkspace& work) {
   const Scale scale(scatter, problem.options.level);
   Fit& fit = out.fit;
-  weigh(mode, scatter, fit);
+  weigh(mode.solutions, scatter, fit);
   fill_axis(problem, problem.flops ? Axis::duration : Axis::detuning, fit);
   fill_reference(problem, mode.best(), scale, fit, work);
   const auto lead_slot = [](const JointLayout& layout) { return layout.lead; };

@@ -3,6 +3,8 @@
 #include <cmath>
 
 #include "model/infer/joint_solution.hpp"
+#include "model/infer/monotone.hpp"
+#include "model/infer/rules.hpp"
 #include "model/quantity/constants.hpp"
 
 /// From starts of a joint fit to its modes under every candidate, as refine.cpp does it for one scan.
@@ -10,12 +12,6 @@ namespace halfturn::infer {
 namespace {
 
 using constants::kTwoPi;
-
-// As in refine.cpp: deviance of a damping that is worth a cause, modes so far above the best that none is asked for, modes refined in full.
-constexpr double kDampingSeen = 1.0, kOthersWorthIt = 150.0;
-constexpr std::size_t kModesInFull = 6;
-// A likelihood with outliers is begun with one that pulls at every point, as in under_prior.cpp.
-constexpr double kSoftness = 1.5;
 
 /// What the reference scan makes of a joint solution.
 Solution reference_solution(const JointProblem& problem, const JointSolution& joint, FitWorkspace& work) {
@@ -118,15 +114,24 @@ void add_candidates(const JointProblem& problem, JointMode& mode, bool simple, F
   sort_candidates(mode);
 }
 
-/// Whether a mode shows enough of a damping that what it comes from matters.
-bool shows_damping(const JointProblem& problem, const JointMode& mode) {
-  if (!problem.of_reference().prior.candidates.has(Dynamics::undamped)) return true;
-  double undamped = std::numeric_limits<double>::infinity(), damped = undamped;
-  for (const auto& solution : mode.solutions) {
-    double& least = solution.dynamics == Dynamics::undamped ? undamped : damped;
-    least = std::min(least, solution.minimum.value);
+/// The candidates that are not simple, by the rule of refine.cpp: of the best modes that show a damping.
+void add_others(const JointProblem& problem, std::vector<JointMode>& modes, FitWorkspace& work) {
+  double flat = 0.0, monotone = 0.0;
+  for (std::size_t i = 0; i < problem.scans.size(); ++i) {
+    const auto plain = monotone_half_deviance(problem.readouts[i], problem.scans[i].batch.axis);
+    flat += plain.flat;
+    monotone += std::min(plain.rising, plain.falling);
   }
-  return !(undamped - damped < 0.5 * kDampingSeen) || !std::isfinite(damped);
+  const double best = modes.front().best().minimum.value;
+  if (!(2.0 * (std::min(flat, monotone) - best) >= kShown)) return;
+  const double worth_it = modes.front().best().aicc + kOthersWorthIt + kOthersShare * 2.0 * (flat - best);
+  int refined = 0;
+  for (auto& mode : modes) {
+    if (refined == kModesOfOthers || !(mode.best().aicc < worth_it)) return;
+    if (!shows_damping(problem.of_reference().prior.candidates, mode.solutions)) continue;
+    add_candidates(problem, mode, false, work);
+    ++refined;
+  }
 }
 
 }  // namespace
@@ -165,9 +170,7 @@ std::vector<JointMode> refine_joint(const JointProblem& problem, std::span<const
   const auto better = [](const JointMode& a, const JointMode& b) { return a.best().aicc < b.best().aicc; };
   std::stable_sort(modes.begin(), modes.end(), better);
   if (modes.empty()) return modes;
-  const double worth_it = modes.front().best().aicc + kOthersWorthIt;
-  for (auto& mode : modes)
-    if (mode.best().aicc < worth_it && shows_damping(problem, mode)) add_candidates(problem, mode, false, work);
+  add_others(problem, modes, work);
   std::stable_sort(modes.begin(), modes.end(), better);
   return modes;
 }

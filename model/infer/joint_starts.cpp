@@ -53,24 +53,25 @@ double solve_signals(const JointProblem& problem, const JointObjective& objectiv
   objective.scan(i).data_part(objective.of_scan(i, probe), unused, work.signal);
   work.search.reserve(n);
   linear_points(problem.readouts[i], {work.search.value.data(), n}, {work.search.weight.data(), n});
-  double w1 = 0, p1 = 0, pp = 0, wy = 0, py = 0, yy = 0;
+  StraightLine signals;  // of the population
+  double squares = 0.0;
   for (std::size_t k = 0; k < n; ++k) {
     const double p = 2.0 * (work.signal[k] - 0.25), w = work.search.weight[k] / problem.readouts[i].dispersion, y = work.search.value[k];
     if (!(w > 0.0)) continue;
-    w1 += w, p1 += w * p, pp += w * p * p, wy += w * y, py += w * p * y, yy += w * y * y;
+    signals.add(w, y, p);
+    squares += w * y * y;
   }
-  const double determinant = w1 * pp - p1 * p1;
-  if (!(determinant > 1e-12 * w1 * pp)) return std::numeric_limits<double>::infinity();
-  const double contrast = (w1 * py - p1 * wy) / determinant, ground = (wy - contrast * p1) / w1;
+  if (!signals.solvable()) return std::numeric_limits<double>::infinity();
+  const double contrast = signals.slope(), ground = signals.intercept();
   if (contrast == 0.0 || !sign_admitted(problem.scans[i].prior, contrast)) return std::numeric_limits<double>::infinity();
-  Physical signals;
-  signals.signal_ground = ground;
-  signals.signal_excited = ground + contrast;
-  keep_signals_possible(problem.readouts[i].kind, signals);
-  start.physical.ground[i] = signals.signal_ground;
-  start.physical.excited[i] = signals.signal_excited;
+  Physical possible;
+  possible.signal_ground = ground;
+  possible.signal_excited = ground + contrast;
+  keep_signals_possible(problem.readouts[i].kind, possible);
+  start.physical.ground[i] = possible.signal_ground;
+  start.physical.excited[i] = possible.signal_excited;
   start.negative[i] = contrast < 0.0;
-  return yy - ground * wy - contrast * py;
+  return squares - ground * signals.y - contrast * signals.xy;
 }
 
 std::optional<JointStart> start_from(const JointProblem& problem, const JointObjective& objective, const Idea& idea, double offset, FitWorkspace& work) {

@@ -28,14 +28,6 @@ double standard_variance(const Readout& readout, std::size_t i, double mean) {
   return std::max(mean * (1.0 - mean), 1e-12) / n;
 }
 
-double fraction(const Readout& readout, std::size_t i) {
-  return readout.kind == Readout::Kind::gaussian ? readout.observed[i] : readout.observed[i] / readout.weight[i];
-}
-
-bool measured(const Readout& readout, std::size_t i) {
-  return std::isfinite(readout.observed[i]) && std::isfinite(readout.weight[i]) && readout.weight[i] > 0.0;
-}
-
 /// How many of the parameters the scan's points determine, the rest being held by priors and references.
 double effective_parameters(const ScanObjective& objective, const Minimum& minimum) {
   Matrix data;
@@ -53,7 +45,7 @@ double left_over_p_value(const Problem& problem, std::span<const double> signal,
   work.search.reserve(n);
   for (std::size_t i = 0; i < n; ++i) {
     const bool counts = measured(problem.readout, i);
-    work.search.value[i] = counts ? fraction(problem.readout, i) - signal[i] : 0.0;
+    work.search.value[i] = counts ? reading(problem.readout, i) - signal[i] : 0.0;
     work.search.weight[i] = counts ? 1.0 / (standard_variance(problem.readout, i, signal[i]) * scatter) : 0.0;
   }
   const LinearPoints points{problem.scan.axis, {work.search.value.data(), n}, {work.search.weight.data(), n}, problem.scan.axis[0]};
@@ -78,7 +70,7 @@ double residual_p_value(const Problem& problem, std::span<const double> signal, 
   order.clear();
   for (const auto i : index) {
     const double sigma = std::sqrt(standard_variance(problem.readout, i, signal[i]) * scatter);
-    order.push_back((fraction(problem.readout, i) - signal[i]) / sigma);
+    order.push_back((reading(problem.readout, i) - signal[i]) / sigma);
   }
   const double runs = runs_p_value(order);
   const double z = autocorrelation_z(order);

@@ -1,5 +1,7 @@
 // SPDX-License-Identifier: Apache-2.0
 #pragma once
+#include <cmath>
+#include <cstddef>
 #include <span>
 
 /// Likelihoods of what a detector read, as functions of the mean signal that a model predicts for each point.
@@ -32,6 +34,16 @@ struct Readout {
 
   bool robust() const { return !odds.empty() || softness > 0.0; }
 };
+
+/// Whether a point counts at all.
+inline bool measured(const Readout& readout, std::size_t i) {
+  return std::isfinite(readout.observed[i]) && std::isfinite(readout.weight[i]) && readout.weight[i] > 0.0;
+}
+
+/// A measured point's reading in the units of its mean: a fraction, a signal, photons in one exposure.
+inline double reading(const Readout& readout, std::size_t i) {
+  return readout.kind == Readout::Kind::gaussian ? readout.observed[i] : readout.observed[i] / readout.weight[i];
+}
 
 /// Half the deviance of one point, 0 where mu equals the observed mean (P. McCullagh, J. A. Nelder, Generalized Linear
 /// Models, 2nd ed. (1989), section 2.3), its derivative by mu, and the Fisher information about mu.

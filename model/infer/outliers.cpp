@@ -18,14 +18,6 @@ constexpr int kRounds = 30;
 // of a sine lie 1.0 of its own such from it, those of a flop that is mostly at rest further: 4 leaves both in.
 constexpr double kFarFromMost = 4.0, kMedianToSigma = 1.4826;
 
-bool measured(const Readout& readout, std::size_t i) {
-  return std::isfinite(readout.observed[i]) && std::isfinite(readout.weight[i]) && readout.weight[i] > 0.0;
-}
-
-double reading(const Readout& readout, std::size_t i) {
-  return readout.kind == Kind::gaussian ? readout.observed[i] : readout.observed[i] / readout.weight[i];
-}
-
 struct Range {
   double low = 0.0, high = 0.0;
 };

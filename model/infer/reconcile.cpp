@@ -90,7 +90,6 @@ Prior reconciled(const ScanBatch& scan, const Readout& readout, const Prior& pri
     loose.dead_time_otherwise.reset();
     Fit freed = fit;
     if (fit_under(scan, readout, loose, options, freed, work)) {
-      freed.quality.readout_released = fit.quality.readout_released;
       freed.quality.dead_time_doubted = true;
       fit = std::move(freed);
     } else {
@@ -103,9 +102,7 @@ Prior reconciled(const ScanBatch& scan, const Readout& readout, const Prior& pri
     loose.dead_time.sigma *= kLoosened;
     Fit freed = fit;
     if (fit_under(scan, readout, loose, options, freed, work)) {
-      freed.quality.readout_released = fit.quality.readout_released;
       freed.quality.dead_time_released = true;
-      freed.quality.dead_time_doubted = fit.quality.dead_time_doubted;
       fit = std::move(freed);
     } else {
       loose.dead_time = before;
@@ -117,6 +114,7 @@ Prior reconciled(const ScanBatch& scan, const Readout& readout, const Prior& pri
 }  // namespace
 
 bool fit_with(const ScanBatch& scan, const Readout& readout, const Prior& prior, const FitOptions& options, Fit& fit, FitWorkspace& work) {
+  fit.quality.readout_released = fit.quality.dead_time_released = fit.quality.dead_time_doubted = false;
   fit_under(scan, readout, prior, options, fit, work);
   fit.prior = reconciled(scan, readout, prior, options, fit, work);
   return fit.outcome == FitOutcome::fitted;

@@ -4,6 +4,7 @@
 
 #include "model/infer/line_modes.hpp"
 #include "model/infer/monotone.hpp"
+#include "model/infer/rules.hpp"
 #include "model/infer/solution.hpp"
 #include "model/quantity/constants.hpp"
 
@@ -12,19 +13,6 @@ namespace {
 
 using constants::kTwoPi;
 
-// Deviance that a free damping must gain over none for the candidates with other causes of it to be tried. By chance, where there is
-// no damping, a one-sided rate gains more than this in one scan of six.
-constexpr double kDampingSeen = 1.0;
-// Modes further above the best than the first, plus this part of what the best gains over a flat line, are not refined under those, and
-// no more than so many: the cause of a damping that nothing describes at all moves a mode by as much, and not the others.
-constexpr double kOthersWorthIt = 60.0, kOthersShare = 0.1;
-constexpr int kModesOfOthers = 3;
-// Nor is a scan that no simple candidate shows to oscillate, by less deviance than this over a flat line or a monotone curve: it will be
-// refused, and an ensemble that is free to be as broad as it likes takes long to say nothing.
-constexpr double kShown = 15.0;
-// So many modes, the best by their first refinement, are refined under every candidate before they are compared: the first
-// candidate may be the wrong one, and costs hundreds of deviance where there is much data.
-constexpr std::size_t kModesInFull = 6;
 // The first refinement of starts only sorts them: to 0.02 in deviance, or as far as so many evaluations go.
 constexpr SolverOptions kSorting{.decrease_tolerance = 0.01, .max_evaluations = 60};
 // Other modes of a line are compared with the best to 2e-4 in deviance.
@@ -116,18 +104,6 @@ void refine_simple(const Problem& problem, ModeSolutions& mode, FitWorkspace& wo
   std::stable_sort(mode.solutions.begin(), mode.solutions.end(), by_aicc);
 }
 
-/// Whether a mode shows enough of a damping that what it comes from matters. Without one the other candidates stand at a breadth of
-/// 0 or near it, where they are `undamped`.
-bool shows_damping(const Problem& problem, const ModeSolutions& mode) {
-  if (!problem.prior.candidates.has(Dynamics::undamped)) return true;
-  double undamped = std::numeric_limits<double>::infinity(), damped = undamped;
-  for (const auto& solution : mode.solutions) {
-    double& least = solution.dynamics == Dynamics::undamped ? undamped : damped;
-    least = std::min(least, solution.minimum.value);
-  }
-  return !(undamped - damped < 0.5 * kDampingSeen) || !std::isfinite(damped);
-}
-
 void refine_others(const Problem& problem, ModeSolutions& mode, FitWorkspace& work, const SolverOptions& options) {
   const bool line = problem.scan.kind == Axis::detuning;
   // The best of those with one free rate tells how fast the oscillation fades.
@@ -172,7 +148,7 @@ void refine_flops(const Problem& problem, std::vector<ModeSolutions>& modes, Fit
   if (modes.empty()) return;
   const double gained = 2.0 * (monotone_half_deviance(problem.readout, problem.scan.axis).flat - modes.front().best().minimum.value);
   // Of a scan that shows nothing, one mode says so and the next is its rival.
-  const std::size_t most = gained / problem.readout.dispersion >= kShown ? kModesInFull : 2;
+  const std::size_t most = gained >= kShown ? kModesInFull : 2;
   if (modes.size() > most) modes.resize(most);
   for (auto& mode : modes) refine_simple(problem, mode, work);
 }
@@ -180,15 +156,15 @@ void refine_flops(const Problem& problem, std::vector<ModeSolutions>& modes, Fit
 /// Refines the best modes under the candidates that are not simple, where the scan shows an oscillation (or a line) that asks for them.
 void refine_others(const Problem& problem, std::vector<ModeSolutions>& modes, FitWorkspace& work) {
   if (modes.empty() || !others_asked_for(problem.prior)) return;
-  const double best = modes.front().best().minimum.value, dispersion = problem.readout.dispersion;
+  const double best = modes.front().best().minimum.value;
   const auto plain = monotone_half_deviance(problem.readout, problem.scan.axis);
   const double over_flat = 2.0 * (plain.flat - best), over_monotone = 2.0 * (std::min(plain.rising, plain.falling) - best);
-  if (!(std::min(over_flat, over_monotone) / dispersion >= kShown)) return;
+  if (!(std::min(over_flat, over_monotone) >= kShown)) return;
   const double worth_it = modes.front().best().aicc + kOthersWorthIt + kOthersShare * over_flat;
   int refined = 0;
   for (auto& mode : modes) {
     if (refined == kModesOfOthers || !(mode.best().aicc < worth_it)) return;
-    if (!shows_damping(problem, mode)) continue;
+    if (!shows_damping(problem.prior.candidates, mode.solutions)) continue;
     refine_others(problem, mode, work, refined == 0 ? SolverOptions{} : kComparing);
     if (problem.scan.kind == Axis::detuning && mode.best().aicc > modes.front().best().aicc + problem.options.rival_margin) return;
     ++refined;
@@ -208,10 +184,10 @@ Dynamics first_candidate(const Prior& prior, bool damped) {
 }  // namespace
 
 int measured_points(const Readout& readout) {
-  int measured = 0;
+  int count = 0;
   for (std::size_t i = 0; i < readout.weight.size(); ++i)
-    if (std::isfinite(readout.observed[i]) && std::isfinite(readout.weight[i]) && readout.weight[i] > 0.0) ++measured;
-  return measured;
+    if (measured(readout, i)) ++count;
+  return count;
 }
 
 bool same_mode(const Problem& problem, const Solution& a, const Solution& b) {

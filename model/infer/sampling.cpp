@@ -35,6 +35,14 @@ void linear_points(const Readout& readout, std::span<double> value, std::span<do
   }
 }
 
+bool take_points(const Readout& readout, const Sampling& sampling, SearchWorkspace& work) {
+  const auto n = readout.observed.size();
+  if (sampling.distinct < 4) return false;
+  work.reserve(n);
+  linear_points(readout, {work.value.data(), n}, {work.weight.data(), n});
+  return std::any_of(work.weight.begin(), work.weight.begin() + static_cast<std::ptrdiff_t>(n), [](double w) { return w > 0.0; });
+}
+
 void SearchWorkspace::reserve(std::size_t points) {
   for (auto* array : {&value, &weight, &part, &weighted})
     if (array->size() < points) array->resize(points);

@@ -18,10 +18,6 @@ constexpr double kMostTerms = 1e5;
 // Tails of points nearer than so many sigmas are not looked at: they decide nothing.
 constexpr double kFarOut = 2.5;
 
-bool measured(const Readout& readout, std::size_t i) {
-  return std::isfinite(readout.observed[i]) && std::isfinite(readout.weight[i]) && readout.weight[i] > 0.0;
-}
-
 double log_choose(double n, double k) { return log_factorial(n) - log_factorial(k) - log_factorial(n - k); }
 double log_gamma(double x) { return log_factorial(x) - std::log(x); }
 double xlogy(double x, double y) { return x > 0.0 ? x * std::log(y) : 0.0; }

@@ -219,9 +219,7 @@ void look_for_second(const ScanBatch& scan, const Readout& readout, const FitOpt
   if (!suspected(fit)) return;
   Readout plain = readout;
   plain.dispersion = fit.dispersion;
-  Prior known = fit.prior;
-  if (ScanObjective(scan, plain, known, fit.chosen, {}, fit.negative_contrast, work.objective).layout().count != fit.x.size())
-    known.detuning.reset();  // too small to be felt
+  const Prior known = felt_prior(fit);
   const ScanObjective one(scan, plain, known, fit.chosen, {}, fit.negative_contrast, work.objective);
   const double left_by_one = left_by_single(one, readout, fit, work);
   if (!std::isfinite(left_by_one)) return;

@@ -28,10 +28,6 @@ struct Solution {
   double apparent = kUnknown;  // rad/s, ScanObjective::apparent_frequency
   double aicc = kUnknown;
   int parameters = 0;
-
-  /// QAICc times no constant: the likelihood part divided by the scatter, the price of the parameters as it is (K. P. Burnham,
-  /// D. R. Anderson, Model Selection and Multimodel Inference, 2nd ed. (2002), section 2.5).
-  double quasi_aicc(double scatter) const { return aicc - 2.0 * minimum.value * (1.0 - 1.0 / scatter); }
 };
 
 /// All candidates of one mode, the best first.

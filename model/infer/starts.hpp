@@ -69,6 +69,28 @@ bool sign_admitted(const Prior& prior, double contrast);
 /// Modes are kept down to this below the best: the linear solve is not the likelihood.
 double kept_above(double best_gain);
 
+/// Weighted sums over points for y ~ intercept + slope x by least squares.
+struct StraightLine {
+  double w = 0.0, y = 0.0, x = 0.0, xx = 0.0, xy = 0.0;
+
+  void add(double weight, double value, double at) {
+    const double weighted = weight * at;
+    w += weight;
+    y += weight * value;
+    x += weighted;
+    xx += weighted * at;
+    xy += weighted * value;
+  }
+  bool solvable() const { return w * xx - x * x > 1e-12 * w * xx; }
+  double slope() const { return (w * xy - x * y) / (w * xx - x * x); }
+  double intercept() const { return (y - slope() * x) / w; }
+  /// The weighted sum of squares taken off a flat line; 0 where there is no slope to solve for.
+  double gain() const { return solvable() ? slope() * (xy - x * y / w) : 0.0; }
+};
+
+/// Fills the workspace's `value` and `weight` by linear_points; false where a scan has too few places or no shots to begin from.
+bool take_points(const Readout& readout, const Sampling& sampling, SearchWorkspace& workspace);
+
 /// The scan's points as value and weight for a linear solve: fraction and n/(p(1-p)) with p = (k+2)/(n+4) (binomial), signal
 /// and 1/sigma^2 (Gaussian), rate and N^2/(k+1) (Poisson); weight 0 where nothing was measured.
 void linear_points(const Readout& readout, std::span<double> value, std::span<double> weight);

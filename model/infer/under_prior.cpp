@@ -5,6 +5,7 @@
 #include <cmath>
 
 #include "model/infer/line_modes.hpp"
+#include "model/infer/rules.hpp"
 
 /// One scan under one prior: starts, modes, the choice among them, its judgement and estimates.
 namespace halfturn::infer {
@@ -27,8 +28,6 @@ Prior felt(const ScanBatch& scan, const Prior& prior, std::span<const Mode> star
   return reduced;
 }
 
-// Where a residual of so many sigmas lies, a softened likelihood (Readout::softness) begins to pull less.
-constexpr double kSoftness = 1.5;
 /// Starts from which a likelihood with outliers finds its way: of itself it leaves alone what is further off than its odds, so that
 /// a start a few sigmas beside the curve would stay where it is. The softened one pulls every point.
 std::size_t settled(const Problem& problem, std::span<Mode> starts, std::size_t count, FitWorkspace& work) {
@@ -51,7 +50,7 @@ std::size_t settled(const Problem& problem, std::span<Mode> starts, std::size_t 
 bool rank_with_scatter(ModeSolutions& mode, double scatter) {
   const Dynamics before = mode.best().dynamics;
   std::stable_sort(mode.solutions.begin(), mode.solutions.end(),
-                   [scatter](const Solution& a, const Solution& b) { return a.quasi_aicc(scatter) < b.quasi_aicc(scatter); });
+                   [scatter](const Solution& a, const Solution& b) { return quasi_aicc(a, scatter) < quasi_aicc(b, scatter); });
   return mode.best().dynamics != before;
 }
 
@@ -72,21 +71,31 @@ DynamicsSet told_apart(const ScanBatch& scan, const DynamicsSet& asked) {
 
 }  // namespace
 
+Prior felt_prior(const Fit& fit) {
+  Prior prior = fit.prior;
+  if (!fit.detuning_felt) prior.detuning.reset();
+  return prior;
+}
+
 bool fit_under(const ScanBatch& scan, const Readout& readout, const Prior& prior, const FitOptions& options, Fit& fit, FitWorkspace& work) {
   std::array<Mode, kMostModes> starts;
   const auto find = scan.kind == Axis::duration ? duration_starts : scan.kind == Axis::detuning ? line_starts : amplitude_starts;
   std::size_t count = find(scan, readout, prior, fit.sampling, starts, work.search);
   Prior known = felt(scan, prior, {starts.data(), count});
   known.candidates = told_apart(scan, prior.candidates);
-  const int points = fit.quality.points;
-  const Problem problem{scan, readout, known, options, fit.sampling, points};
+  FitQuality before;
+  before.points = fit.quality.points;
+  before.readout_released = fit.quality.readout_released;
+  before.dead_time_released = fit.quality.dead_time_released;
+  before.dead_time_doubted = fit.quality.dead_time_doubted;
+  fit.detuning_felt = known.detuning.has_value();
+  const Problem problem{scan, readout, known, options, fit.sampling, before.points};
   if (!readout.odds.empty()) count = settled(problem, starts, count, work);
   auto modes = refine_modes(problem, {starts.data(), count}, work);
   fit.pulse_length_s.clear();
   fit.pulse_amplitude.clear();
   fit.second = {};
-  fit.quality = FitQuality{};
-  fit.quality.points = points;
+  fit.quality = before;
   fit.outcome = FitOutcome::not_converged;
   if (modes.empty()) return false;
 
@@ -98,6 +107,9 @@ bool fit_under(const ScanBatch& scan, const Readout& readout, const Prior& prior
   const std::size_t chosen = choose_mode(problem, modes, of_choice, work);
   fit.quality = chosen == 0 ? of_best : judge(problem, modes[chosen].best(), work);
   if (rank_with_scatter(modes[chosen], uncounted(fit.quality.scatter))) fit.quality = judge(problem, modes[chosen].best(), work);
+  fit.quality.readout_released = before.readout_released;
+  fit.quality.dead_time_released = before.dead_time_released;
+  fit.quality.dead_time_doubted = before.dead_time_doubted;
   fit.quality.outside_expect = of_choice.outside_expect;
   fit.quality.by_history = of_choice.by_history;
   fit.quality.rival = of_choice.rival;

@@ -8,10 +8,13 @@ namespace halfturn::infer {
 // Deviance gained over a flat line that a fit must show for what it says of its priors to count.
 inline constexpr double kEvidence = 30.0;
 
-/// What the scan shows under one prior; false where nothing could be fitted.
+/// What the scan shows under one prior; false where nothing could be fitted. What Fit::quality says was set aside before stays said.
 bool fit_under(const ScanBatch& scan, const Readout& readout, const Prior& prior, const FitOptions& options, Fit& fit, FitWorkspace& work);
 
-/// The same, with what the scan contradicts of the prior set aside: Fit::prior is the prior that is left.
+/// The prior with the parameters that the fit has.
+Prior felt_prior(const Fit& fit);
+
+/// As fit_under, with what the scan contradicts of the prior set aside: Fit::prior is the prior that is left.
 bool fit_with(const ScanBatch& scan, const Readout& readout, const Prior& prior, const FitOptions& options, Fit& fit, FitWorkspace& work);
 
 /// Fits again with a drift of the coupling along the scan where the scan asks for one, which Fit::prior then has.

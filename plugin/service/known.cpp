@@ -100,8 +100,7 @@ std::optional<double> rough_log_rabi(const config::Drive& drive, const recalibra
   for (const auto& pulse : drive.pulses) {
     if (pulse.adjust == recalibrate::Adjust::amplitude) continue;  // right at its own amplitude, not at the scan's
     ++told;
-    const auto in_force = state.in_force_s.find(pulse.name);
-    const double length = in_force == state.in_force_s.end() ? pulse.length_s : in_force->second;
+    const double length = recalibrate::in_force(state, pulse);
     if (!(length > 0.0)) return std::nullopt;
     sum += std::log(pulse.angle_rad / (pulse.area_factor * length));
   }
@@ -191,6 +190,8 @@ infer::Prior prior_for(const config::Drive* drive, const recalibrate::State& sta
     if (drive->transition) add_lifetime(*drive->transition, prior);
     add_readout(*drive, scan, prior, assumed);
     prior.rough_log_rabi = rough_log_rabi(*drive, state, scan);
+    if (prior.rough_log_rabi && !prior.log_rabi)
+      assumed.push_back("pulses: a line whose pulse area is far from what the pulses in force say is less likely");
   }
   add_dead_time(drive, state, taken_at, prior, assumed);
   add_detuning(drive, state, scan, taken_at, prior, assumed);
