@@ -73,6 +73,8 @@ double below(const Estimate& e, double x, double z) {
   return normal_cdf((x - e.value) / std::max(side, 1e-300));
 }
 
+}  // namespace
+
 double mixture_quantile(std::span<const Part> parts, double probability, double z) {
   double low = parts[0].estimate.low, high = parts[0].estimate.high;
   for (const auto& part : parts) {
@@ -108,8 +110,6 @@ double mixture_quantile(std::span<const Part> parts, double probability, double 
   }
   return found;
 }
-
-}  // namespace
 
 Estimate averaged(std::span<Part> parts, const Scale& scale) {
   // A candidate whose rate or breadth ran where nothing holds it has no error to average, or one far beyond that of the best (parts[0]),

@@ -38,6 +38,10 @@ struct Part {
   Estimate estimate;
 };
 
+/// Quantile of the mixture of the parts' laws, each normal with sides as wide as its interval, which is at `z` standard errors. The
+/// weights sum to 1.
+double mixture_quantile(std::span<const Part> parts, double probability, double z);
+
 /// Value and variance averaged over candidates with their weights (K. P. Burnham, D. R. Anderson, Model Selection and Multimodel
 /// Inference, 2nd ed. (2002), section 4.3), the interval from the mixture of their profile intervals. `parts` is put in order.
 Estimate averaged(std::span<Part> parts, const Scale& scale);
