@@ -22,8 +22,8 @@ using constants::kTwoPi;
 constexpr double kTableStep = 0.05, kMargin = 1.5, kMostTable = 600.0;
 constexpr int kOffsetSteps = 3;
 // Damped lines have no fringes to tell neighbouring areas apart, and are broadened by power at large ones.
-constexpr double kDamping = 1.5;  // over the pulse
-constexpr std::array<double, 9> kDampedAreas = {0.4, 0.7, 1.1, 1.7, 2.5, 3.6, 5.2, 7.5, 11.0};
+constexpr std::array<double, 3> kDampings = {0.0, 1.5, 4.0};  // over the pulse
+constexpr double kDampedAreaStep = 0.5, kDampedAreaRatio = 1.25, kMostDampedArea = 13.0;
 // A signal nearer to 0 or 1 than this starts no binomial fit.
 constexpr double kLeastSignal = 0.005;
 
@@ -69,7 +69,7 @@ std::vector<double> trial_areas(const Prior& prior, double length, bool damped) 
   if (prior.log_rabi && prior.log_rabi->sigma < 0.3) {
     for (const double z : {-2.0, 0.0, 2.0}) areas.push_back(std::exp(prior.log_rabi->mean + z * prior.log_rabi->sigma) * length);
   } else if (damped) {
-    for (const double area : kDampedAreas) areas.push_back(area * kPi);
+    for (double area = 0.4; area < kMostDampedArea; area = std::min(kDampedAreaRatio * area, area + kDampedAreaStep)) areas.push_back(area * kPi);
   } else {
     for (double area = 0.3; area < 4.6; area += 0.2) areas.push_back(area * kPi);
   }
@@ -168,7 +168,7 @@ void search_offsets(const Places& places, const Profile& profile, const LinearPa
 /// Whether two starts lead to one mode: neighbours on the grid of trials.
 bool neighbours(const Mode& a, const Mode& b, double length) {
   const double rabi = std::abs(a.start.generalised - b.start.generalised);
-  const double alike = a.damped ? 0.4 * std::max(a.start.generalised, b.start.generalised) : 0.25 * kPi / length;
+  const double alike = a.damped ? 0.3 * std::max(a.start.generalised, b.start.generalised) : 0.25 * kPi / length;
   return a.damped == b.damped && rabi < alike && std::abs(a.start.line_offset - b.start.line_offset) < kTwoPi * 0.3 / length;
 }
 
@@ -245,8 +245,9 @@ std::size_t line_starts(const ScanBatch& scan, const Readout& readout, const Pri
   const LinePoints points(scan, readout, sampling, kTwoPi / length, work);
   const LinearPart linear(prior, readout.kind, points.weight(), points.weighted(), points.flat());
   work.found.clear();
-  for (const double damping : {0.0, kDamping / length})
-    for (const double area : trial_areas(prior, length, damping > 0.0)) {
+  for (const double over_pulse : kDampings)
+    for (const double area : trial_areas(prior, length, over_pulse > 0.0)) {
+      const double damping = over_pulse / length;
       Mode what;
       what.damped = damping > 0.0;
       what.start.generalised = area / length;
