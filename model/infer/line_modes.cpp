@@ -9,7 +9,7 @@
 namespace halfturn::infer {
 namespace {
 
-constexpr double kOneLine = 0.1;       // of the width; half of it is the error that a carrier may have
+constexpr double kOneLine = 0.25;      // of the width
 constexpr double kAreaSigma = 0.3, kAreaMost = 10.0;
 constexpr double kHopeless = 20.0;     // deviance above the rival margin
 constexpr double kOtherCandidate = 0.1;  // of the best mode's gain, which another candidate may take off another mode
