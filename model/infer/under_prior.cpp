@@ -11,7 +11,7 @@
 namespace halfturn::infer {
 namespace {
 
-constexpr std::size_t kMostModes = 16;
+constexpr std::size_t kMostModes = 24, kMostFlopModes = 16;  // of a line, whose power makes fringes; of others
 // Delta is left out of a flop where even 3 sigma of it would change the frequency by less than this part.
 constexpr double kNegligibleDetuning = 1e-5;
 
@@ -80,7 +80,8 @@ Prior felt_prior(const Fit& fit) {
 bool fit_under(const ScanBatch& scan, const Readout& readout, const Prior& prior, const FitOptions& options, Fit& fit, FitWorkspace& work) {
   std::array<Mode, kMostModes> starts;
   const auto find = scan.kind == Axis::duration ? duration_starts : scan.kind == Axis::detuning ? line_starts : amplitude_starts;
-  std::size_t count = find(scan, readout, prior, fit.sampling, starts, work.search);
+  const std::span<Mode> room{starts.data(), scan.kind == Axis::detuning ? kMostModes : kMostFlopModes};
+  std::size_t count = find(scan, readout, prior, fit.sampling, room, work.search);
   Prior known = felt(scan, prior, {starts.data(), count});
   known.candidates = told_apart(scan, prior.candidates);
   FitQuality before;
