@@ -7,6 +7,7 @@ namespace halfturn::infer {
 namespace {
 
 constexpr std::string_view kNoLine = "the scan does not show a line, so this value follows the noise";
+constexpr std::string_view kOutside = "the centre lies outside the window, and what is seen of a line's wings would do for others";
 constexpr std::string_view kNoOscillation = "the scan does not show an oscillation, so this value follows the noise";
 
 void withhold(Estimate& estimate, std::string_view why) {
@@ -15,10 +16,19 @@ void withhold(Estimate& estimate, std::string_view why) {
   estimate.why = why;
 }
 
+/// A centre outside the window is a guess: a side lobe, or one flank, of one line is that of another further off.
+void withhold_outside(Fit& fit) {
+  if (fit.axis != Axis::detuning || !(fit.line_offset.value < fit.lowest || fit.line_offset.value > fit.longest)) return;
+  for (Estimate* estimate : {&fit.line_offset, &fit.second.line_offset}) {
+    estimate->low = estimate->high = kUnknown;
+    estimate->why = kOutside;
+  }
+}
+
 }  // namespace
 
 void withhold_unshown(const FitOptions& options, Fit& fit) {
-  if (fit.quality.over_flat >= options.least_evidence) return;
+  if (fit.quality.over_flat >= options.least_evidence) return withhold_outside(fit);
   const std::string_view why = fit.axis == Axis::detuning ? kNoLine : kNoOscillation;
   for (Estimate* estimate : {&fit.rabi, &fit.rabi_mean, &fit.generalised, &fit.line_offset, &fit.contrast, &fit.breadth, &fit.drift, &fit.second.line_offset}) withhold(*estimate, why);
   for (Estimate* estimate : {&fit.decay_s, &fit.dephasing_s, &fit.loss_s, &fit.envelope_s}) withhold(*estimate, why);

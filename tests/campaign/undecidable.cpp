@@ -12,6 +12,7 @@ namespace halfturn::campaign {
 namespace {
 
 constexpr double kSpread = 2;  // standard deviations
+constexpr double kOfLine = 1.0 / 3;  // of the evidence over a monotone curve, asked of a line inside the window
 
 bool inside(const Case& of, double spare) {
   const auto [first, last] = std::minmax_element(of.scan.axis.begin(), of.scan.axis.end());
@@ -45,7 +46,7 @@ bool decidable(const Case& of, const Gaps& gaps, double offset_bound) {
   if (of.truth.line && !inside(of, kSpread * offset_bound)) return false;
   if (std::isnan(gaps.rival) || gaps.rival < gap_for(accept.rival_margin)) return false;
   if (!of.before.empty()) return true;
-  return gaps.monotone >= gap_for(accept.min_evidence) && gaps.flat >= gap_for(accept.min_evidence);
+  return gaps.monotone >= gap_for(of.truth.line ? kOfLine * accept.min_evidence : accept.min_evidence) && gaps.flat >= gap_for(accept.min_evidence);
 }
 
 }  // namespace halfturn::campaign
