@@ -60,6 +60,7 @@ class AllModes {
     work_.reserve(problem.scan.points());
     parts_.push_back({0.0, fit.line_offset});
     same_.push_back(true);
+    for (const Solution& solution : modes[chosen].solutions) counted_.push_back(&solution);
     for (const Solution& solution : modes[chosen].solutions)
       if (const auto place = place_of(problem_, solution, work_)) parts_[0].weight += weight(solution, *place);
     for (std::size_t i = 0; i < modes.size(); ++i)
@@ -91,12 +92,24 @@ class AllModes {
   }
   double weight(const Solution& solution, const Place& place) const { return place.volume * std::exp(-0.5 * above(solution)); }
 
+  /// Whether another start led to the same minimum, which counts once.
+  bool counted(const Solution& solution, double close) {
+    const auto alike = [&](const Solution* other) {
+      return other->dynamics == solution.dynamics && std::abs(other->minimum.value - solution.minimum.value) < 0.01 &&
+             std::abs(other->physical.line_offset - solution.physical.line_offset) < close;
+    };
+    if (std::any_of(counted_.begin(), counted_.end(), alike)) return true;
+    counted_.push_back(&solution);
+    return false;
+  }
+
   void add(const ModeSolutions& mode, double width) {
     for (const Solution& solution : mode.solutions) {
       if (!(above(solution) < kWeighed)) continue;
       const auto place = place_of(problem_, solution, work_);
       if (!place) continue;
       const double at = solution.physical.line_offset, sigma = place->sigma * std::sqrt(scatter_);
+      if (counted(solution, 0.1 * sigma)) continue;
       parts_.push_back({weight(solution, *place), {at, sigma, at - z_ * sigma, at + z_ * sigma}});
       same_.push_back(one_line(solution, best_, width));
     }
@@ -107,6 +120,7 @@ class AllModes {
   const Solution& best_;
   std::vector<Part> parts_;
   std::vector<bool> same_;
+  std::vector<const Solution*> counted_;
   ObjectiveWorkspace work_;
 };
 

@@ -21,9 +21,14 @@ using constants::kTwoPi;
 // than 30 such units, whose points seldom tell the fringes apart, the steps grow with the window.
 constexpr double kTableStep = 0.05, kMargin = 1.5, kMostTable = 600.0;
 constexpr int kOffsetSteps = 3;
-// Damped lines have no fringes to tell neighbouring areas apart, and are broadened by power at large ones.
-constexpr std::array<double, 3> kDampings = {0.0, 1.5, 4.0};  // over the pulse
-constexpr double kDampedAreaStep = 0.5, kDampedAreaRatio = 1.25, kMostDampedArea = 13.0;
+// Lines damped by this much over the pulse still have fringes, which move by one where the area changes by a turn: areas lie so far apart,
+// over pi, and by no more than the ratio. More damping leaves none to tell neighbouring areas apart. Areas twice as far apart missed the
+// mode of the truth in one of four power-broadened lines.
+struct Damping {
+  double over_pulse, area_ratio, area_step;
+};
+constexpr std::array<Damping, 3> kDampings = {{{0.0, 0.0, 0.0}, {1.5, 1.35, 0.7}, {4.0, 1.5, 4.0}}};
+constexpr double kLeastDampedArea = 0.4, kMostDampedArea = 13.0;
 // A signal nearer to 0 or 1 than this starts no binomial fit.
 constexpr double kLeastSignal = 0.005;
 
@@ -64,12 +69,13 @@ HALFTURN_CLONES Sums sums_at(const Places& places, const Profile& profile, int s
   return {p[0] + p[1] + p[2] + p[3], pp[0] + pp[1] + pp[2] + pp[3], py[0] + py[1] + py[2] + py[3]};
 }
 
-std::vector<double> trial_areas(const Prior& prior, double length, bool damped) {
+std::vector<double> trial_areas(const Prior& prior, double length, const Damping& damping) {
   std::vector<double> areas;
   if (prior.log_rabi && prior.log_rabi->sigma < 0.3) {
     for (const double z : {-2.0, 0.0, 2.0}) areas.push_back(std::exp(prior.log_rabi->mean + z * prior.log_rabi->sigma) * length);
-  } else if (damped) {
-    for (double area = 0.4; area < kMostDampedArea; area = std::min(kDampedAreaRatio * area, area + kDampedAreaStep)) areas.push_back(area * kPi);
+  } else if (damping.over_pulse > 0.0) {
+    for (double area = kLeastDampedArea; area < kMostDampedArea; area = std::min(damping.area_ratio * area, area + damping.area_step))
+      areas.push_back(area * kPi);
   } else {
     for (double area = 0.3; area < 4.6; area += 0.2) areas.push_back(area * kPi);
   }
@@ -245,9 +251,9 @@ std::size_t line_starts(const ScanBatch& scan, const Readout& readout, const Pri
   const LinePoints points(scan, readout, sampling, kTwoPi / length, work);
   const LinearPart linear(prior, readout.kind, points.weight(), points.weighted(), points.flat());
   work.found.clear();
-  for (const double over_pulse : kDampings)
-    for (const double area : trial_areas(prior, length, over_pulse > 0.0)) {
-      const double damping = over_pulse / length;
+  for (const Damping& trial : kDampings)
+    for (const double area : trial_areas(prior, length, trial)) {
+      const double damping = trial.over_pulse / length;
       Mode what;
       what.damped = damping > 0.0;
       what.start.generalised = area / length;

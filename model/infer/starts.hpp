@@ -51,7 +51,7 @@ std::size_t duration_starts(const ScanBatch& scan, const Readout& readout, const
                             std::span<Mode> modes, SearchWorkspace& workspace);
 
 /// Starting points of a detuning scan: offsets across the window and two widths beyond it, areas from 0.3 to 4.5 pi (damped: to
-/// 11 pi) or around the one that history knows, undamped and dephased; floor and contrast solved for with what is known of them.
+/// 13 pi) or around the one that history knows, undamped and dephased at two rates; floor and contrast solved for with what is known of them.
 std::size_t line_starts(const ScanBatch& scan, const Readout& readout, const Prior& prior, const Sampling& sampling,
                         std::span<Mode> modes, SearchWorkspace& workspace);
 

@@ -80,11 +80,89 @@ TEST_CASE("fringes of a power-broadened line are no rivals, and the interval cou
     sample.batch.pulse_length_s = kPulse;
     const Fit fit = fit_one(sample, usual());
     REQUIRE(fit.outcome == FitOutcome::fitted);
-    if (fit.quality.rival) CHECK(std::abs(fit.quality.rival->frequency - fit.physical.line_offset) >= 0.1 * fit.quality.line_width);
+    if (fit.quality.rival) CHECK(std::abs(fit.quality.rival->frequency - fit.physical.line_offset) >= 0.25 * fit.quality.line_width);
     held += fit.line_offset.low < offset && offset < fit.line_offset.high;
   }
   // Binomial with p = 0.95: fewer than 48 of 60 by chance about once in 5e5 (scipy.stats.binom).
   CHECK(held >= 48);
+}
+
+// Bug: of fringes that fit alike one was answered, with the hull of those nearly as good: narrow ones that chance made spoke for all. With
+// weights of exp(-deviance/2) times the fringe's own widths, which is Laplace's approximation to
+// the integral over offset and area (L. Tierney, J. B. Kadane, J. Am. Stat. Assoc. 81, 82 (1986), section 2), both hold more.
+TEST_CASE("intervals of a line with fringes are over all of them, at either level") {
+  std::mt19937_64 random(44);
+  std::uniform_real_distribution<double> uniform(-1.0, 1.0);
+  constexpr int kScans = 150;
+  int held = 0, held_narrow = 0, fringes = 0;
+  for (int i = 0; i < kScans; ++i) {
+    const double rabi = (8.0 + 2.0 * uniform(random)) * kPi / kPulse, dephasing = (3.5 + uniform(random)) / kPulse;
+    const double offset = 0.3 * rabi * uniform(random);
+    Sample sample;
+    sample.axis = even(-4.0 * rabi, 4.0 * rabi, 41);
+    for (const double at : sample.axis)
+      sample.observed.push_back(std::binomial_distribution<int>(120, 0.1 + 0.6 * dephased(rabi, dephasing, at - offset))(random));
+    sample.weight.assign(sample.axis.size(), 120.0);
+    sample.view(Axis::detuning);
+    sample.batch.pulse_length_s = kPulse;
+    FitOptions options;
+    options.second_level = 0.6826894921370859;
+    const Fit fit = fit_one(sample, usual(), options);
+    REQUIRE(fit.outcome == FitOutcome::fitted);
+    const auto holds = [offset](const Estimate& e) { return e.low < offset && offset < e.high; };
+    held += holds(fit.line_offset);
+    held_narrow += holds(fit.second.line_offset);
+    fringes += fit.line_offset.value != fit.physical.line_offset;
+    CHECK(fit.line_offset.low <= fit.line_offset.value);
+    CHECK(fit.line_offset.value <= fit.line_offset.high);
+  }
+  CAPTURE(held, held_narrow, fringes);
+  CHECK(fringes > kScans / 2);
+  // scipy.stats.binom(150, p): fewer than 129 with p = 0.95 or 77 with p = 0.6827 by chance less than once in 1e5. The hull held 125 and
+  // 73; of lines as rich in fringes as these the mixture still holds too little, 134 and 81.
+  CHECK(held >= 129);
+  CHECK(held_narrow >= 77);
+}
+
+// So that a line of which one flank and the top are seen may ask less than what tells an oscillation from a ramp.
+TEST_CASE("a curve that only rises is no line with its centre inside the window") {
+  std::mt19937_64 random(12);
+  std::uniform_real_distribution<double> uniform(0.0, 1.0);
+  int taken = 0;
+  for (int i = 0; i < 600; ++i) {
+    const double low = 0.1 + 0.3 * uniform(random), high = low + 0.05 + 0.5 * uniform(random), at = 2.0 * uniform(random) - 1.0;
+    const double steep = std::pow(10.0, 2.0 * uniform(random)), shots = std::round(50.0 * std::pow(10.0, uniform(random)));
+    Sample sample;
+    sample.axis = even(-kTwoPi * 200e3, kTwoPi * 200e3, 20 + i % 60);
+    for (const double x : sample.axis) {  // from a ramp to a step
+      const double rise = 1.0 / (1.0 + std::exp(-steep * (x / (kTwoPi * 200e3) - at)));
+      sample.observed.push_back(std::binomial_distribution<int>(static_cast<int>(shots), low + (high - low) * rise)(random));
+    }
+    sample.weight.assign(sample.axis.size(), shots);
+    sample.view(Axis::detuning);
+    sample.batch.pulse_length_s = kPulse;
+    const Fit fit = fit_one(sample, usual());
+    const bool inside = fit.line_offset.low > fit.lowest && fit.line_offset.high < fit.longest;
+    taken += fit.outcome == FitOutcome::fitted && fit.quality.over_flat >= 30.0 && fit.quality.over_monotone >= 10.0 && inside;
+  }
+  CHECK(taken == 0);
+}
+
+TEST_CASE("a centre outside the window has no interval, and says why") {
+  const double width = 0.8 * kTwoPi / kPulse;
+  Sample sample;
+  expect_line(sample, 1.12 * kPi, -1.9 * width, even(-1.3 * width, 1.3 * width, 105), 600.0, 0.05, 0.6);
+  FitOptions options;
+  options.second_level = 0.6826894921370859;
+  const Fit fit = fit_one(sample, usual(), options);
+  REQUIRE(fit.outcome == FitOutcome::fitted);
+  REQUIRE(fit.line_offset.value < fit.lowest);
+  CHECK(std::isfinite(fit.line_offset.sigma));
+  for (const Estimate& e : {fit.line_offset, fit.second.line_offset}) {
+    CHECK(std::isnan(e.low));
+    CHECK(std::isnan(e.high));
+    CHECK(!e.why.empty());
+  }
 }
 
 // Only then is such a scan refused for its edge, and not answered by a side lobe inside.
