@@ -1,0 +1,59 @@
+// SPDX-License-Identifier: Apache-2.0
+#pragma once
+#include <map>
+#include <ostream>
+#include <string>
+#include <vector>
+
+#include "tests/campaign/not_yet.hpp"
+#include "tests/campaign/run.hpp"
+
+/// Figures that no procedure whatever could reach, from what the expected counts tell (two_point.hpp, imposter.hpp).
+///
+/// What is asked of a procedure, beside the figure that is bounded:
+/// 1. Of every kind of healthy scan that the data can decide (score.hpp, undecidable.hpp) it uses at least 98 %, and at most three in a
+///    million are wrong. The campaign asks it of a family's mean; here it is asked of each imposter, for who may choose which scans to
+///    refuse has to know beforehand which are drawn.
+/// 2. Of every kind of scan that a family draws, intervals cover within the band of that family, and are no longer than the symmetric ones
+///    about an efficient estimate that cover at the band's upper edge. They may be put off the centre as far as the band's lower edge lets
+///    them (reach). The campaign does not measure lengths; without this an interval from nought to infinity would be a good one.
+/// 3. Of a drive whose dead time is misstated, what is configured is believed as far as two of its sigmas, as of a drive where it is right.
+/// A bound from one imposter holds alone; of several the tightest is taken. Log likelihood ratios and estimates are taken as normal.
+namespace halfturn::campaign {
+
+/// One scan: what no procedure can do better, and what was done.
+struct ScanLimit {
+  std::uint64_t seed = 0, index = 0;
+  double covered_68 = 1, covered_95 = 1;             // most; 1: no imposter speaks
+  double missed = 0;                                 // least probability of use with an interval (95 %) that does not hold the truth
+  double wrong_any = 0, wrong_maximum = 0;           // least, by whose answers
+  std::string by;                                    // candidate of the imposter behind covered_95
+  Scored scored;
+  double half_widths = 0;  // the truth's distance from the answer over that of the nearer end of its 95 % interval; converged scans
+};
+ScanLimit limit_of(const Case& of, const Family& family);
+
+/// A figure of a family.
+struct Limit {
+  std::string family;
+  Figure figure = Figure::wrong;
+  std::int64_t scans = 0;      // behind the measured figure
+  double target = 0;
+  double nobody = 0;           // wrong: least of any procedure; coverages: most of any within the bands
+  double reachable = 0;        // wrong: least of one whose answers of single scans are efficient; coverages: with nominal ones where no imposter speaks;
+                               // of used scans: with the uses of Halfturn that held the truth, and no misses but those forced
+  double measured = 0;         // Halfturn, on the same scans
+  std::map<std::string, std::int64_t> imposters;  // scans whose most is below the nominal level, by candidate
+  std::vector<ScanLimit> losses;  // scans lost though nothing in the data forces it: wrong, or missed by more than two half widths
+};
+
+/// Families with a figure out of band that is of this kind: wrong scans or coverage.
+bool has_limits(const Family& family);
+
+/// Wrong scans and coverage of families, scans drawn as run() draws them.
+std::vector<Limit> limits(const Order& order, const std::vector<const Family*>& wanted);
+
+void print_limits(std::ostream& out, const std::vector<Limit>& limits);
+void print_limits_json(std::ostream& out, const std::vector<Limit>& limits);
+
+}  // namespace halfturn::campaign
