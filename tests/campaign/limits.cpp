@@ -16,6 +16,7 @@ namespace {
 constexpr double kNominal68 = 0.6826894921370859, kNominal95 = 0.95;
 constexpr double kRefused = 1 - kUsed + kWrong;  // of scans that must be used and right
 constexpr double kForced = 0.1;                  // below this probability nothing forces a wrong scan or a miss
+constexpr double kSigmas95 = 1.959964;
 constexpr double kFar = 2;                       // half widths: four sigma
 
 /// What the family's intervals are of: the first pulse's length (s), or the line's offset (rad/s).
@@ -29,16 +30,24 @@ bool must_be_used(const Imposter& imposter) {
   return is_healthy(as, imposter.bound, as.width) && decidable(as, gaps(as), imposter.bound.offset);
 }
 
-void bound_coverage(const Case& of, const Imposter& imposter, ScanLimit& limit) {
-  const double away = std::abs(answer_of(imposter.as) - answer_of(of)) / imposter.sigma;
-  const auto band = bands_of(imposter.dynamics);
-  const double reach_68 = reach(band.low_68, band.high_68), reach_95 = reach(band.low_95, band.high_95);
-  // Of a dead time held at a place, the estimate is drawn on towards what is configured, so farther from the truth: where it is beyond reach.
-  if (!of.misstated || away > reach_68) limit.covered_68 = std::min(limit.covered_68, most_covered(imposter.apart, away, reach_68));
-  if (of.misstated && away <= reach_95) return;
-  const double covered = most_covered(imposter.apart, away, reach_95);
-  if (covered < limit.covered_95) limit.by = infer::name(imposter.dynamics);
-  limit.covered_95 = std::min(limit.covered_95, covered);
+/// The length of Halfturn's 95 % interval of the imposter's expected counts over an efficient one's.
+double taken_by(const Imposter& imposter) {
+  const auto fit = fit_of(imposter.as);
+  const auto& e = fit.axis == infer::Axis::detuning ? fit.line_offset : fit.pulse_length_s.front();
+  return (e.high - e.low) / (2 * kSigmas95 * imposter.sigma);
+}
+
+void enter_contests(const Case& of, const std::vector<Imposter>& imposters, ScanLimit& limit) {
+  std::vector<const Imposter*> healthy;
+  for (const auto& one : imposters) {
+    if (!is_healthy(one.as, one.bound, one.as.width)) continue;
+    healthy.push_back(&one);
+    limit.contests.push_back({one.dynamics, one.apart, std::abs(answer_of(one.as) - answer_of(of)) / one.sigma});
+  }
+  const auto covered = most_covered(limit, Level::wide, 1);
+  if (covered.by == nullptr || covered.most >= kNominal95) return;
+  const auto at = static_cast<std::size_t>(covered.by - limit.contests.data());
+  limit.contests[at].taken = taken_by(*healthy[at]);
 }
 
 /// Alike in all but a dead time's sign are, on an even grid from nought or one step, all frequencies k f_s +- f (H. Nyquist, Trans. AIEE 47,
@@ -112,6 +121,7 @@ double sum(const std::vector<ScanLimit>& scans, const F& of) {
 Limit wrong_limit(const std::vector<ScanLimit>& scans) {
   Limit limit;
   limit.figure = Figure::wrong;
+  limit.stretch = std::nan("");
   limit.scans = static_cast<std::int64_t>(scans.size());
   limit.target = kWrong;
   limit.nobody = share(sum(scans, [](const auto& s) { return s.wrong_any; }), limit.scans);
@@ -122,23 +132,59 @@ Limit wrong_limit(const std::vector<ScanLimit>& scans) {
   return limit;
 }
 
-Limit coverage_limit(const std::vector<ScanLimit>& scans, Figure figure, const Bands& band) {
-  const bool wide = figure == Figure::low_95;
-  const double nominal = wide ? kNominal95 : kNominal68, highest = wide ? band.high_95 : band.high_68;
-  Limit limit;
-  limit.figure = figure;
-  limit.target = wide ? band.low_95 : band.low_68;
+/// The mean over converged scans of the most that is covered, each at most `cap`.
+double mean_covered(const std::vector<ScanLimit>& scans, Level level, double stretch, double cap) {
+  std::int64_t count = 0;
+  double total = 0;
   for (const auto& scan : scans) {
     if (!scan.scored.converged) continue;
-    const double most = wide ? scan.covered_95 : scan.covered_68;
-    ++limit.scans;
-    limit.nobody += std::min(most, highest);
-    limit.reachable += std::min(most, nominal);
-    limit.measured += wide ? scan.scored.in_95 : scan.scored.in_68;
-    if (wide && most < nominal) ++limit.imposters[scan.by];
-    if (wide && most >= 1 - kForced && scan.half_widths > kFar) limit.losses.push_back(scan);
+    ++count;
+    total += std::min(cap, most_covered(scan, level, stretch).most);
   }
-  for (double* figure_of : {&limit.nobody, &limit.reachable, &limit.measured}) *figure_of = share(*figure_of, limit.scans);
+  return share(total, count);
+}
+
+/// How long intervals must be for `target`.
+double stretch_for(const std::vector<ScanLimit>& scans, Level level, double target, double cap) {
+  const auto enough = [&](double stretch) { return mean_covered(scans, level, stretch, cap) >= target; };
+  double low = 1, high = 100;
+  if (enough(low)) return low;
+  if (!enough(high)) return std::nan("");
+  while (high - low > 0.01) {
+    const double middle = (low + high) / 2;
+    (enough(middle) ? high : low) = middle;
+  }
+  return high;
+}
+
+void tell_imposters(const std::vector<ScanLimit>& scans, Limit& limit) {
+  double squares = 0;
+  std::int64_t count = 0;
+  for (const auto& scan : scans) {
+    if (!scan.scored.converged) continue;
+    const auto covered = most_covered(scan, Level::wide, 1);
+    if (covered.most >= 1 - kForced && scan.half_widths > kFar) limit.losses.push_back(scan);
+    if (covered.most >= kNominal95) continue;
+    ++limit.imposters[scan.alike > 1 ? "alias" : std::string(infer::name(covered.by->dynamics))];
+    if (covered.by == nullptr || !std::isfinite(covered.by->taken)) continue;
+    squares += covered.by->taken * covered.by->taken;
+    ++count;
+  }
+  limit.taken = std::sqrt(share(squares, count));
+}
+
+Limit coverage_limit(const std::vector<ScanLimit>& scans, Level level, const Bands& band) {
+  const bool wide = level == Level::wide;
+  const double highest = wide ? band.high_95 : band.high_68;
+  Limit limit;
+  limit.figure = wide ? Figure::low_95 : Figure::low_68;
+  limit.target = wide ? band.low_95 : band.low_68;
+  for (const auto& scan : scans) limit.scans += scan.scored.converged;
+  limit.nobody = mean_covered(scans, level, 1, highest);
+  limit.reachable = mean_covered(scans, level, 1, wide ? kNominal95 : kNominal68);
+  limit.stretch = stretch_for(scans, level, limit.target, highest);
+  limit.measured = share(sum(scans, [&](const auto& s) { return s.scored.converged && (wide ? s.scored.in_95 : s.scored.in_68); }), limit.scans);
+  if (wide) tell_imposters(scans, limit);
   return limit;
 }
 
@@ -147,6 +193,7 @@ Limit used_limit(const std::vector<ScanLimit>& scans) {
   Limit limit;
   limit.figure = Figure::low_95;
   limit.target = kMisfitCoverage;
+  limit.stretch = std::nan("");
   double held = 0, forced = 0, all = 0;
   for (const auto& scan : scans) {
     all += scan.scored.converged;
@@ -171,17 +218,27 @@ ScanLimit limit_of(const Case& of, const Family& family) {
   const auto answered = answer(of);
   limit.scored = score(of, family, answered);
   if (limit.scored.converged) limit.half_widths = half_widths(of, answered);
-  const auto count = alike(of);
-  if (count > 1) {
-    limit.covered_68 = kNominal68 / static_cast<double>(count);
-    limit.covered_95 = kNominal95 / static_cast<double>(count);
-    limit.by = "alias";
-    return limit;
-  }
+  limit.misstated = of.misstated;
+  limit.alike = alike(of);
+  if (limit.alike > 1) return limit;
   const auto imposters = imposters_of(of);
-  for (const auto& one : imposters) bound_coverage(of, one, limit);
+  enter_contests(of, imposters, limit);
   if (family.kind == Kind::misfit) bound_use(of, imposters, limit);
   return limit;
+}
+
+Covered most_covered(const ScanLimit& scan, Level level, double stretch) {
+  Covered covered;
+  if (scan.alike > 1) covered.most = (level == Level::wide ? kNominal95 : kNominal68) / static_cast<double>(scan.alike);
+  for (const auto& contest : scan.contests) {
+    const auto band = bands_of(contest.dynamics);
+    const double far = level == Level::wide ? reach(band.low_95, band.high_95, stretch) : reach(band.low_68, band.high_68, stretch);
+    // Of a dead time held at a place, the estimate is drawn on towards what is configured, so farther from the truth: where it is beyond reach.
+    if (scan.misstated && contest.away <= far) continue;
+    const double most = most_covered(contest.apart, contest.away, far);
+    if (most < covered.most) covered = {most, &contest};
+  }
+  return covered;
 }
 
 bool has_limits(const Family& family) {
@@ -207,7 +264,7 @@ std::vector<Limit> limits(const Order& order, const std::vector<const Family*>& 
       add(wrong_limit(scans[f]));
       add(used_limit(scans[f]));
     } else if (wanted[f]->kind != Kind::barren) {
-      for (const auto figure : {Figure::low_68, Figure::low_95}) add(coverage_limit(scans[f], figure, bands(wanted[f]->kind)));
+      for (const auto level : {Level::narrow, Level::wide}) add(coverage_limit(scans[f], level, bands(wanted[f]->kind)));
     }
   }
   return all;

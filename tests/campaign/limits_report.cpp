@@ -20,6 +20,13 @@ std::string figure_name(const Limit& limit) {
   return limit.figure == Figure::low_68 ? "in 68" : "in 95";
 }
 
+std::string figure(double value) {
+  if (!std::isfinite(value)) return "-";
+  char text[32];
+  std::snprintf(text, sizeof text, "%.2f", value);
+  return text;
+}
+
 Json number(double value) { return std::isfinite(value) ? Json(value) : Json(nullptr); }
 
 std::string imposters_in_words(const Limit& limit) {
@@ -40,11 +47,13 @@ void print_losses(std::ostream& out, const Limit& limit) {
 
 void print_limits(std::ostream& out, const std::vector<Limit>& limits) {
   char line[200];
-  std::snprintf(line, sizeof line, "%-21s %-10s %7s %9s %9s %9s %9s  %s\n", "family", "figure", "scans", "target", "nobody", "reachable", "Halfturn", "imposters");
+  std::snprintf(line, sizeof line, "%-21s %-10s %7s %9s %9s %9s %9s %7s %7s  %s\n", "family", "figure", "scans", "target", "nobody", "reachable",
+                "Halfturn", "length", "taken", "imposters");
   out << line;
   for (const auto& limit : limits) {
-    std::snprintf(line, sizeof line, "%-21s %-10s %7lld %9.3g %9.3g %9.3g %9.3g  ", limit.family.c_str(), figure_name(limit).c_str(),
-                  static_cast<long long>(limit.scans), limit.target, limit.nobody, limit.reachable, limit.measured);
+    std::snprintf(line, sizeof line, "%-21s %-10s %7lld %9.3g %9.3g %9.3g %9.3g %7s %7s  ", limit.family.c_str(), figure_name(limit).c_str(),
+                  static_cast<long long>(limit.scans), limit.target, limit.nobody, limit.reachable, limit.measured,
+                  figure(limit.stretch).c_str(), figure(limit.taken).c_str());
     out << line << imposters_in_words(limit) << '\n';
   }
   for (const auto& limit : limits) print_losses(out, limit);
@@ -55,6 +64,8 @@ void print_limits_json(std::ostream& out, const std::vector<Limit>& limits) {
   for (const auto& limit : limits) {
     Json one{{"family", limit.family}, {"figure", figure_name(limit)}, {"scans", limit.scans}, {"target", limit.target},
              {"nobody", number(limit.nobody)}, {"reachable", number(limit.reachable)}, {"measured", number(limit.measured)}};
+    one["length"] = number(limit.stretch);
+    one["taken"] = number(limit.taken);
     one["imposters"] = limit.imposters;
     one["losses"] = Json::array();
     for (const auto& loss : limit.losses) one["losses"].push_back(Json{{"seed", loss.seed}, {"index", loss.index}});

@@ -54,9 +54,9 @@ double power(const Apart& apart, double size) {
   return infer::normal_cdf((apart.mean_true - threshold) / std::sqrt(apart.variance_true));
 }
 
-double reach(double low, double high) {
-  const double half = infer::normal_quantile((1 + high) / 2);
-  double near = half, far = 2 * half;  // the coverage falls from `high` as the interval is shifted
+double reach(double low, double high, double stretch) {
+  const double half = stretch * infer::normal_quantile((1 + high) / 2);
+  double near = half, far = 2 * half;  // the coverage falls as the interval is shifted
   for (int i = 0; i < 60; ++i) {
     const double middle = (near + far) / 2;
     const bool covers = infer::normal_cdf(middle) - infer::normal_cdf(middle - 2 * half) >= low;

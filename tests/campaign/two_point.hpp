@@ -26,9 +26,9 @@ struct Apart {
 /// nothing tells the two apart.
 double power(const Apart& apart, double size);
 
-/// How far an interval may reach beyond an efficient estimate, in its standard deviations: of intervals no longer than the symmetric one of
-/// coverage `high`, wherever about the estimate it is put, the farthest that still covers with `low` <= `high` < 1.
-double reach(double low, double high);
+/// How far an interval may reach beyond an efficient estimate, in its standard deviations: of intervals at most `stretch` >= 1 times as long as the
+/// symmetric one of coverage `high`, wherever about the estimate they are put, the farthest that still covers with `low` <= `high` < 1.
+double reach(double low, double high, double stretch = 1);
 
 /// The most that an interval covers T's answer, which lies `away` standard deviations from I's, where on scans of I it reaches by at most
 /// `reach` of them from an efficient (normal, unbiased) estimate.
