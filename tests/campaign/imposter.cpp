@@ -16,6 +16,7 @@ using constants::kTwoPi;
 using infer::Dynamics;
 
 constexpr double kUnstated = 100e-9;  // s, the sigma of a dead time that no configuration states
+constexpr double kPlain = 150;        // deviance beyond which an imposter says nothing: power(1e-7) is then 1 - 1e-11
 constexpr double kTypical = 2;        // sigmas from what is configured within which a dead time is nothing unusual
 
 double contrast_of(const Apparatus& a) { return a.excited - a.ground; }
@@ -95,6 +96,7 @@ std::optional<Imposter> imposter(const Case& of, const Case& asked, Dynamics dyn
   found.dynamics = dynamics;
   found.as = made_by(of, a);
   found.apart = apart(of, found.as);
+  if (found.apart.deviance() > kPlain) return std::nullopt;
   found.bound = bound(found.as);
   found.sigma = a.line ? found.bound.offset : found.bound.pulse_s.front();
   return std::isfinite(found.sigma) && found.sigma > 0 ? std::optional(found) : std::nullopt;
@@ -149,7 +151,8 @@ std::vector<Imposter> imposters_of(const Case& of) {
     asked.drive.dynamics->add(dynamics);
     if (auto one = imposter(of, asked, dynamics)) found.push_back(std::move(*one));
   };
-  const Case quiet = at_expectation(of);
+  Case quiet = at_expectation(of);
+  quiet.drive.pulses.clear();  // their intervals would be searched for
   for (const Dynamics dynamics : infer::kAllDynamics) {
     if (dynamics == Dynamics::thermal) continue;
     if (!of.misstated) ask(quiet, dynamics);

@@ -32,7 +32,7 @@ Apart apart(const Case& truth, const Case& imposter);
 
 /// The best descriptions of the case's expected counts by every candidate alone; of a misstated dead time by the simple candidates with the dead
 /// time at 0, 1 and 2 of the configured sigma. Only those that some family of the campaign draws, within its ranges of damping, breadth,
-/// area, cycles and signal; with a finite sigma.
+/// area, cycles and signal; with a finite sigma, and within a deviance of 150, beyond which all is told apart.
 std::vector<Imposter> imposters_of(const Case& of);
 
 }  // namespace halfturn::campaign

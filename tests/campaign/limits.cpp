@@ -25,6 +25,12 @@ double answer_of(const Case& of) { return of.truth.line ? of.truth.detuning : be
 /// Bands of a family that draws scans of the imposter's kind.
 Bands bands_of(infer::Dynamics dynamics) { return bands(infer::is_simple(dynamics) ? Kind::single : Kind::competing); }
 
+Intervals intervals_of(infer::Dynamics dynamics, Level level, double stretch) {
+  const auto band = bands_of(dynamics);
+  if (level == Level::wide) return {reach(band.low_95, band.high_95, stretch), band.low_95};
+  return {reach(band.low_68, band.high_68, stretch), band.low_68};
+}
+
 bool must_be_used(const Imposter& imposter) {
   const auto& as = imposter.as;
   return is_healthy(as, imposter.bound, as.width) && decidable(as, gaps(as), imposter.bound.offset);
@@ -93,9 +99,8 @@ void bound_use(const Case& of, const std::vector<Imposter>& imposters, ScanLimit
   const double left = of.truth.line ? left_by_one_line(of) : 0;
   for (const auto& one : imposters) {
     if (!worth(one) || !must_be_used(one)) continue;
-    const auto band = bands_of(one.dynamics);
     const double away = std::abs(answer_of(one.as) - answer_of(of)) / one.sigma;
-    limit.missed = std::max(limit.missed, least_missed(one.apart, away, reach(band.low_95, band.high_95), kRefused));
+    limit.missed = std::max(limit.missed, least_missed(one.apart, away, intervals_of(one.dynamics, Level::wide, 1), kRefused));
     if (left >= 60) limit.wrong_any = limit.wrong_maximum = std::max(limit.wrong_any, 1 - power(one.apart, kRefused));
     bound_wrong(of, held, one, limit);
   }
@@ -231,11 +236,10 @@ Covered most_covered(const ScanLimit& scan, Level level, double stretch) {
   Covered covered;
   if (scan.alike > 1) covered.most = (level == Level::wide ? kNominal95 : kNominal68) / static_cast<double>(scan.alike);
   for (const auto& contest : scan.contests) {
-    const auto band = bands_of(contest.dynamics);
-    const double far = level == Level::wide ? reach(band.low_95, band.high_95, stretch) : reach(band.low_68, band.high_68, stretch);
+    const auto intervals = intervals_of(contest.dynamics, level, stretch);
     // Of a dead time held at a place, the estimate is drawn on towards what is configured, so farther from the truth: where it is beyond reach.
-    if (scan.misstated && contest.away <= far) continue;
-    const double most = most_covered(contest.apart, contest.away, far);
+    if (scan.misstated && contest.away <= intervals.reach) continue;
+    const double most = most_covered(contest.apart, contest.away, intervals);
     if (most < covered.most) covered = {most, &contest};
   }
   return covered;

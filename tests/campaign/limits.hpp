@@ -18,7 +18,7 @@
 ///    refuse has to know beforehand which are drawn.
 /// 2. Of every kind of healthy scan that another family draws, intervals cover within the band of that family, and are no longer than the
 ///    symmetric ones about an efficient estimate that cover at the band's upper edge. They may be put off the centre as far as the band's lower edge
-///    lets them (reach). The campaign does not measure lengths, and one who takes longer intervals covers more: Limit::stretch says how much
+///    lets them (reach), and go astray as seldom as its coverage and 1.05 of the Cramer-Rao bound say (astray). The campaign does not measure lengths, and one who takes longer intervals covers more: Limit::stretch says how much
 ///    longer it takes for the target.
 /// 3. Of a drive whose dead time is misstated, what is configured is believed as far as two of its sigmas, as of a drive where it is right.
 /// A bound from one imposter holds alone; of several the tightest is taken. Log likelihood ratios and estimates are taken as normal.

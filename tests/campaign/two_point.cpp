@@ -12,6 +12,7 @@ namespace {
 constexpr double kEdge = 1e-12;
 constexpr double kOff = 0.050;  // rad, as in score.cpp
 constexpr double kSigmas = 5;   // the square root of the deviance there
+constexpr double kEfficient = 1.05;  // root mean square error over the Cramer-Rao bound, as in targets.cpp
 
 double logit(double p) { return std::log(p) - std::log1p(-p); }
 
@@ -25,6 +26,12 @@ double stays(double off, double held, Answers answers) {
   const double root = std::sqrt(held), beyond = root * (1 - kOff / off);
   if (answers == Answers::maximum) return infer::normal_cdf(std::min(root - kSigmas, beyond));
   return off > 2 * kOff ? infer::normal_cdf(beyond - kSigmas) : 0;
+}
+
+/// The most that an interval of I's scans holds T's answer.
+double holds_other(double away, const Intervals& intervals) {
+  const double beyond = away - intervals.reach;
+  return std::min(1.0, infer::normal_cdf(-beyond) + astray(beyond, intervals.low));
 }
 
 }  // namespace
@@ -65,10 +72,15 @@ double reach(double low, double high, double stretch) {
   return far;
 }
 
-double most_covered(const Apart& apart, double away, double reach) { return power(apart, infer::normal_cdf(reach - away)); }
+double astray(double beyond, double low) {
+  const double most = 1 - low;
+  return beyond > 0 ? std::min(most, (kEfficient * kEfficient - 1) / (beyond * beyond)) : most;
+}
 
-double least_missed(const Apart& apart, double away, double reach, double refused) {
-  return 1 - power(apart, std::min(1.0, refused + infer::normal_cdf(reach - away)));
+double most_covered(const Apart& apart, double away, const Intervals& intervals) { return power(apart, holds_other(away, intervals)); }
+
+double least_missed(const Apart& apart, double away, const Intervals& intervals, double refused) {
+  return 1 - power(apart, std::min(1.0, refused + holds_other(away, intervals)));
 }
 
 double least_wrong(const Apart& apart, double off, double held, double refused, Answers answers) {

@@ -30,13 +30,24 @@ double power(const Apart& apart, double size);
 /// symmetric one of coverage `high`, wherever about the estimate they are put, the farthest that still covers with `low` <= `high` < 1.
 double reach(double low, double high, double stretch = 1);
 
-/// The most that an interval covers T's answer, which lies `away` standard deviations from I's, where on scans of I it reaches by at most
-/// `reach` of them from an efficient (normal, unbiased) estimate.
-double most_covered(const Apart& apart, double away, double reach);
+/// The share of scans of I whose answer may lie `beyond` > 0 or more standard deviations from where it belongs, the rest being efficient: as many as a
+/// coverage of `low` lets go astray, and a root mean square of 1.05 times the Cramer-Rao bound, (1.05^2 - 1) / beyond^2 (P. L. Chebyshev).
+/// Without it an answer could not be told at all from T's by a normal law, however far off that is; but a procedure may choose between the
+/// two by a test, and every test errs.
+double astray(double beyond, double low);
+
+/// How intervals fare on scans of I: they reach by `reach` standard deviations from an efficient (normal, unbiased) estimate, and cover with `low`.
+struct Intervals {
+  double reach = 0, low = 0;
+};
+
+/// The most that an interval covers T's answer, which lies `away` standard deviations from I's: the power at Phi(reach - away) and what
+/// goes astray.
+double most_covered(const Apart& apart, double away, const Intervals& intervals);
 
 /// The least probability of a scan of T being used with an interval that does not hold its answer, where scans of I are refused with at most
 /// `refused`: the event "refused, or the interval holds T's answer" has at most `refused` plus the above's under I.
-double least_missed(const Apart& apart, double away, double reach, double refused);
+double least_missed(const Apart& apart, double away, const Intervals& intervals, double refused);
 
 /// Whose answers are bounded.
 enum class Answers {
