@@ -220,13 +220,13 @@ TEST_CASE("longer intervals are the price of a coverage") {
   ScanLimit scan;
   scan.contests = {{infer::Dynamics::undamped, normal_shift(0.3), 6}};
   double last = 0;
-  for (const double stretch : {1.0, 1.5, 2.0, 3.0}) {
+  for (const double stretch : {1.0, 1.3, 1.6}) {
     const auto covered = most_covered(scan, Level::wide, stretch);
     CHECK(covered.most > last);
     CHECK(covered.by == &scan.contests.front());
     last = covered.most;
   }
-  CHECK(last > 0.999);
+  CHECK(most_covered(scan, Level::wide, 3).most == 1);
 }
 
 TEST_CASE("of frequencies that fit alike an interval holds one") {
