@@ -19,6 +19,9 @@ constexpr double kNoise = 16.0 * kEpsilon;
 // Steps that promise less than this, in log likelihood, are short enough for gradients to tell of curvature: it halves the
 // calls on ENSO and MGH09 (second start), while learning on all steps lost the four Lanczos starts (solver_test).
 constexpr double kNear = 0.5;
+// No search is given up before so many evaluations, nor while so many times the promised decrease would do.
+constexpr int kFewSteps = 3;
+constexpr double kHoped = 3.0;
 // A trust radius of 1e-8 conditional sigmas moves no parameter that anybody could tell: the search has stalled.
 constexpr double kSmallestRadius = 1e-8;
 
@@ -143,12 +146,19 @@ class Search {
       best_.outcome = Outcome::stalled;
       return true;
     }
-    if (fresh) model_.about(best_, step_, change_, bounds_);
-    damped_step(model_, 0.0, box_);
-    best_.expected_decrease = model_.decrease(box_.step);
+    if (fresh) {
+      model_.about(best_, step_, change_, bounds_);
+      damped_step(model_, 0.0, free_);
+      best_.expected_decrease = model_.decrease(free_.step);
+    }
+    box_ = free_;
     if (best_.expected_decrease < std::max(options_.decrease_tolerance, kEpsilon * std::abs(best_.value))) {
       best_.outcome = Outcome::converged;
       snap();
+      return true;
+    }
+    if (fresh && best_.evaluations > kFewSteps && best_.value - kHoped * best_.expected_decrease > options_.give_up_above) {
+      best_.outcome = Outcome::given_up;
       return true;
     }
     return best_.evaluations >= options_.max_evaluations;
@@ -203,7 +213,7 @@ class Search {
   const SolverOptions& options_;
   Minimum best_, trial_;
   Model model_;
-  BoxStep box_;
+  BoxStep free_, box_;  // the model's own step, and that within the radius
   Vector step_, change_;  // the last step and the gradient's change along it, 0 where they teach nothing
   double radius_;
 };
