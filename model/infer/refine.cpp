@@ -218,7 +218,8 @@ std::vector<ModeSolutions> refine_modes(const Problem& problem, std::span<const 
     const Dynamics candidate = first_candidate(problem.prior, start.damped);
     const Physical from = first_start(problem, candidate, start, work);
     SolverOptions sorting = kSorting;
-    if (std::isfinite(best)) sorting.give_up_above = best + 0.5 * kOthersWorthIt + kStartsShare * std::max(0.0, flat - best);
+    // The next best is found in any case, to be said.
+    if (modes.size() > 1) sorting.give_up_above = best + 0.5 * kOthersWorthIt + kStartsShare * std::max(0.0, flat - best);
     auto solution = refine(problem, candidate, from, work, sorting);
     if (!solution) continue;
     best = std::min(best, solution->minimum.value);
