@@ -164,10 +164,9 @@ void refine_flops(const Problem& problem, double flat, std::vector<ModeSolutions
 }
 
 /// Refines the best modes under the candidates that are not simple, where the scan shows an oscillation (or a line) that asks for them.
-void refine_others(const Problem& problem, std::vector<ModeSolutions>& modes, FitWorkspace& work) {
+void refine_others(const Problem& problem, const MonotoneFit& plain, std::vector<ModeSolutions>& modes, FitWorkspace& work) {
   if (modes.empty() || !others_asked_for(problem.prior)) return;
   const double best = modes.front().best().minimum.value;
-  const auto plain = monotone_half_deviance(problem.readout, problem.scan.axis);
   const double over_flat = 2.0 * (plain.flat - best), over_monotone = 2.0 * (std::min(plain.rising, plain.falling) - best);
   if (!(std::min(over_flat, over_monotone) >= kShown)) return;
   const double worth_it = modes.front().best().aicc + kOthersWorthIt + kOthersShare * over_flat;
@@ -212,14 +211,14 @@ bool same_mode(const Problem& problem, const Solution& a, const Solution& b) {
 
 std::vector<ModeSolutions> refine_modes(const Problem& problem, std::span<const Mode> starts, FitWorkspace& work) {
   std::vector<ModeSolutions> modes;
-  const double flat = monotone_half_deviance(problem.readout, problem.scan.axis).flat;
+  const MonotoneFit plain = monotone_half_deviance(problem.readout, problem.scan.axis);
   double best = std::numeric_limits<double>::infinity();
   for (const auto& start : starts) {
     const Dynamics candidate = first_candidate(problem.prior, start.damped);
     const Physical from = first_start(problem, candidate, start, work);
     SolverOptions sorting = kSorting;
     // The next best is found in any case, to be said.
-    if (modes.size() > 1) sorting.give_up_above = best + 0.5 * kOthersWorthIt + kStartsShare * std::max(0.0, flat - best);
+    if (modes.size() > 1) sorting.give_up_above = best + 0.5 * kOthersWorthIt + kStartsShare * std::max(0.0, plain.flat - best);
     auto solution = refine(problem, candidate, from, work, sorting);
     if (!solution) continue;
     best = std::min(best, solution->minimum.value);
@@ -228,10 +227,10 @@ std::vector<ModeSolutions> refine_modes(const Problem& problem, std::span<const 
   auto by_deviance = [](const ModeSolutions& a, const ModeSolutions& b) { return a.best().minimum.value < b.best().minimum.value; };
   std::stable_sort(modes.begin(), modes.end(), by_deviance);
   if (problem.scan.kind == Axis::detuning) refine_lines(problem, modes, work);
-  else refine_flops(problem, flat, modes, work);
+  else refine_flops(problem, plain.flat, modes, work);
   const auto better = [](const ModeSolutions& a, const ModeSolutions& b) { return a.best().aicc < b.best().aicc; };
   std::stable_sort(modes.begin(), modes.end(), better);
-  refine_others(problem, modes, work);
+  refine_others(problem, plain, modes, work);
   std::stable_sort(modes.begin(), modes.end(), better);
   return modes;
 }
