@@ -20,7 +20,9 @@ constexpr double kSigmas95 = 1.959964;
 constexpr double kFar = 2;                       // half widths: four sigma
 
 /// What the family's intervals are of: the first pulse's length (s), or the line's offset (rad/s).
-double answer_of(const Case& of) { return of.truth.line ? of.truth.detuning : best_pulse(of.truth, of.drive.pulses.front().angle_rad); }
+double answer_of(const Case& of) {
+  return of.truth.line ? of.truth.detuning : best_pulse(of.truth, of.drive.pulses.front().angle_rad);
+}
 
 /// Bands of a family that draws scans of the imposter's kind.
 Bands bands_of(infer::Dynamics dynamics) { return bands(infer::is_simple(dynamics) ? Kind::single : Kind::competing); }
@@ -56,9 +58,10 @@ void enter_contests(const Case& of, const std::vector<Imposter>& imposters, Scan
   limit.contests[at].taken = taken_by(*healthy[at]);
 }
 
-/// Alike in all but a dead time's sign are, on an even grid from nought or one step, all frequencies k f_s +- f (H. Nyquist, Trans. AIEE 47,
-/// 617 (1928)). An interval holds one of them, so over m of them the coverages sum to one interval's, and the mean (and the least) is at most
-/// an m-th of it. One who knew how often each is drawn could do better on the mean.
+/// Alike in all but a dead time's sign are, on an even grid from nought or one step, all frequencies k f_s +- f (H.
+/// Nyquist, Trans. AIEE 47, 617 (1928)). An interval holds one of them, so over m of them the coverages sum to one
+/// interval's, and the mean (and the least) is at most an m-th of it. One who knew how often each is drawn could do better
+/// on the mean.
 std::int64_t alike(const Case& of) {
   if (!of.aliased || !of.before.empty() || !of.drive.expect) return 1;
   const double rate = constants::kTwoPi / (of.scan.axis[1] - of.scan.axis[0]), f = of.truth.rabi;
@@ -91,7 +94,8 @@ void bound_wrong(const Case& of, const std::vector<double>& held, const Imposter
   }
 }
 
-/// Of scans of two components or lines. Two lines are wrong where one leaves a deviance of 60, which an imposter's own deviance then is at least.
+/// Of scans of two components or lines. Two lines are wrong where one leaves a deviance of 60, which an imposter's own
+/// deviance then is at least.
 void bound_use(const Case& of, const std::vector<Imposter>& imposters, ScanLimit& limit) {
   const auto worth = [](const Imposter& one) { return power(one.apart, kRefused) < 0.9999; };
   if (std::none_of(imposters.begin(), imposters.end(), worth)) return;
@@ -109,7 +113,7 @@ void bound_use(const Case& of, const std::vector<Imposter>& imposters, ScanLimit
 /// How many half widths the truth lies from the answer, by the half on its side.
 double half_widths(const Case& of, const Answered& answered) {
   const auto& fit = answered.fit;
-  const auto& e = of.truth.line || fit.pulse_length_s.empty() ? fit.line_offset : fit.pulse_length_s.front();
+  const auto& e = of.truth.line ? fit.line_offset : fit.pulse_length_s.front();
   const double truth = answer_of(of);
   return std::abs(truth - e.value) / (truth > e.value ? e.high - e.value : e.value - e.low);
 }
@@ -126,7 +130,6 @@ double sum(const std::vector<ScanLimit>& scans, const F& of) {
 Limit wrong_limit(const std::vector<ScanLimit>& scans) {
   Limit limit;
   limit.figure = Figure::wrong;
-  limit.stretch = std::nan("");
   limit.scans = static_cast<std::int64_t>(scans.size());
   limit.target = kWrong;
   limit.nobody = share(sum(scans, [](const auto& s) { return s.wrong_any; }), limit.scans);
@@ -188,7 +191,8 @@ Limit coverage_limit(const std::vector<ScanLimit>& scans, Level level, const Ban
   limit.nobody = mean_covered(scans, level, 1, highest);
   limit.reachable = mean_covered(scans, level, 1, wide ? kNominal95 : kNominal68);
   limit.stretch = stretch_for(scans, level, limit.target, highest);
-  limit.measured = share(sum(scans, [&](const auto& s) { return s.scored.converged && (wide ? s.scored.in_95 : s.scored.in_68); }), limit.scans);
+  const auto held = [wide](const ScanLimit& s) { return s.scored.converged && (wide ? s.scored.in_95 : s.scored.in_68); };
+  limit.measured = share(sum(scans, held), limit.scans);
   if (wide) tell_imposters(scans, limit);
   return limit;
 }
@@ -198,7 +202,6 @@ Limit used_limit(const std::vector<ScanLimit>& scans) {
   Limit limit;
   limit.figure = Figure::low_95;
   limit.target = kMisfitCoverage;
-  limit.stretch = std::nan("");
   double held = 0, forced = 0, all = 0;
   for (const auto& scan : scans) {
     all += scan.scored.converged;
@@ -237,7 +240,8 @@ Covered most_covered(const ScanLimit& scan, Level level, double stretch) {
   if (scan.alike > 1) covered.most = (level == Level::wide ? kNominal95 : kNominal68) / static_cast<double>(scan.alike);
   for (const auto& contest : scan.contests) {
     const auto intervals = intervals_of(contest.dynamics, level, stretch);
-    // Of a dead time held at a place, the estimate is drawn on towards what is configured, so farther from the truth: where it is beyond reach.
+    // Of a dead time held at a place, the estimate is drawn on towards what is configured, so farther from the truth: where
+    // it is beyond reach.
     if (scan.misstated && contest.away <= intervals.reach) continue;
     const double most = most_covered(contest.apart, contest.away, intervals);
     if (most < covered.most) covered = {most, &contest};
@@ -247,7 +251,8 @@ Covered most_covered(const ScanLimit& scan, Level level, double stretch) {
 
 bool has_limits(const Family& family) {
   return std::any_of(not_yet().begin(), not_yet().end(), [&](const NotYet& entry) {
-    return entry.family == family.name && (entry.figure == Figure::wrong || entry.figure == Figure::low_68 || entry.figure == Figure::low_95);
+    const bool bounded = entry.figure == Figure::wrong || entry.figure == Figure::low_68 || entry.figure == Figure::low_95;
+    return entry.family == family.name && bounded;
   });
 }
 
