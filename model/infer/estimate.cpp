@@ -61,6 +61,7 @@ namespace {
 
 /// The same solution in the coordinates of another lead.
 Minimum in_coordinates(const ScanObjective& objective, const Solution& solution) {
+  if (objective.scan().kind != Axis::amplitude) return objective.in_coordinates(solution.minimum, solution.physical);
   Minimum minimum = solution.minimum;
   minimum.x = objective.pack(solution.physical);
   objective.evaluate(minimum.x, minimum.value, &minimum.gradient, &minimum.information);

@@ -10,12 +10,20 @@ constexpr std::string_view kAlike = "two frequencies fit alike, so that an inter
 constexpr std::string_view kSecondComponent = "a second component passes for scatter";
 constexpr std::string_view kOverdamped = "more damping than oscillation: only the product of squared coupling and time is seen";
 constexpr std::string_view kFringes = "fringes of a line broadened by power and dephasing lie as close as its noise lets them";
-constexpr std::string_view kOutside = "the line lies outside the window, where nothing tells its centre, and noise is fitted";
 constexpr std::string_view kSecondLine = "a second line passes for scatter or for the breadth of the first";
 
 }  // namespace
 
-// Reached over 20,000 scans of seed 2; figures within three sigma of their target stand by the target.
+// Reached over 20,000 scans of seed 2; figures within three sigma of their target stand by the target. `halfturn-campaign
+// --limits` tells how much of that the data force (limits.hpp; 444 scans of seed 2):
+// - doppler: 95 % intervals hold 0.84 at most, 0.82 with nominal ones where nothing hides the shift; 0.91 takes intervals
+//   1.5 times as long on scans that are only damped. What is reached is what can be. Of the 68 % ones 0.63 and 0.58.
+// - dead_time_beyond: 0.81 and 0.80 (68 %: 0.62 and 0.57), 0.75 where a right dead time is set aside no oftener than three
+//   sigma say. There is room: the dead time is let go later than the best test would.
+// - alias_inside: half of the nominal level, 0.475 and 0.34, whichever frequency is drawn. Below that lies who always takes
+//   the same side: the higher frequency needs the smaller dead time, and the family draws the lower one more often.
+// - two_component: 0.0007 wrong whoever answers, 0.0022 by answers at the likelihood's maximum; used intervals 0.92 where
+//   only forced ones miss. Most of the wrong ones could be told from a single component.
 const std::vector<NotYet>& not_yet() {
   static const std::vector<NotYet> table = {
       {"doppler", Figure::low_68, 0.519, kNotSeen},
@@ -27,10 +35,9 @@ const std::vector<NotYet>& not_yet() {
       {"two_component", Figure::wrong, 0.036, kSecondComponent},
       {"two_component", Figure::low_95, 0.725, kSecondComponent},
       {"saturated", Figure::low_95, 0.804, kOverdamped},
-      {"line_power", Figure::used, 0.827, kFringes},
-      {"line_power", Figure::low_68, 0.481, kFringes},
-      {"line_power", Figure::low_95, 0.821, kFringes},
-      {"line_side_lobe", Figure::low_95, 0.804, kOutside},
+      {"line_power", Figure::used, 0.937, kFringes},
+      {"line_power", Figure::low_68, 0.622, kFringes},
+      {"line_power", Figure::low_95, 0.915, kFringes},
       {"line_two", Figure::wrong, 0.0293, kSecondLine},
       {"line_two", Figure::low_95, 0.258, kSecondLine},
   };
