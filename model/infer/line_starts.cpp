@@ -22,8 +22,8 @@ using constants::kTwoPi;
 constexpr double kTableStep = 0.05, kMargin = 1.5, kMostTable = 600.0;
 constexpr int kOffsetSteps = 3;
 // Lines damped by this much over the pulse still have fringes, which move by one where the area changes by a turn: areas lie so far apart,
-// over pi, and by no more than the ratio. More damping leaves none to tell neighbouring areas apart. Areas twice as far apart missed the
-// mode of the truth in one of four power-broadened lines.
+// over pi, and by no more than the ratio. More damping leaves none to tell neighbouring areas apart. At ratios of 1.5 and one
+// damping the mode of the truth was missed in seven of the first 18 power-broadened lines whose interval did not hold it.
 struct Damping {
   double over_pulse, area_ratio, area_step;
 };

@@ -17,9 +17,9 @@ using constants::kTwoPi;
 constexpr SolverOptions kSorting{.decrease_tolerance = 0.01, .max_evaluations = 60};
 // Other modes of a line are compared with the best to 2e-4 in deviance.
 constexpr SolverOptions kComparing{.decrease_tolerance = 1e-4, .max_evaluations = 100};
-// A line's Doppler width that nothing holds runs away together with its area, into ensembles of ever more members: in two of five such
+// A line's Doppler width that nothing holds runs away together with its area, into ensembles of ever more members: in one of four such
 // fits of power-broadened lines, and those took two thirds of all their time. After the first so many evaluations a fit is given up that
-// is behind the mode by more half deviance than can matter; where Doppler widths are true, one fit in 300 takes more than the second.
+// is behind the mode by more half deviance than can matter; where Doppler widths are true, one fit in 70 takes more than both.
 constexpr SolverOptions kDopplerBegins{.decrease_tolerance = 0.01, .max_evaluations = 12};
 constexpr int kDopplerEnds = 48;
 constexpr double kDopplerBehind = 15.0;
