@@ -6,6 +6,7 @@
 #include <cmath>
 
 #include "model/infer/outliers.hpp"
+#include "model/infer/second_doubt.hpp"
 #include "model/infer/starts.hpp"
 #include "model/infer/under_prior.hpp"
 #include "model/quantity/constants.hpp"
@@ -153,17 +154,14 @@ Physical started(const ScanBatch& scan, const Fit& fit, const Pair& pair) {
 /// What two components leave at best: minus twice the log likelihood, in units of the deviance, priors counted.
 struct Best {
   double left = std::numeric_limits<double>::infinity();
-  Physical physical;
+  Minimum minimum;
 };
-Best best_of_two(const ScanBatch& scan, const Readout& readout, const Prior& known, const Fit& fit, double main, FitWorkspace& work) {
-  Prior with = known;
-  with.second = true;
+Best best_of_two(const ScanBatch& scan, const Readout& readout, const ScanObjective& two, const Fit& fit, double main) {
   Best best;
-  const ScanObjective two(scan, readout, with, Dynamics::dephasing, {}, fit.negative_contrast, work.objective);
   for (const auto& pair : starting_pairs(scan, readout, fit, main)) {
     const auto minimum = minimise(two, two.pack(started(scan, fit, pair)), two.bounds());
     const double left = 2.0 * minimum.value * readout.dispersion;
-    if (left < best.left) best = {left, two.unpack(minimum.x)};
+    if (left < best.left) best = {left, minimum};
   }
   return best;
 }
@@ -223,13 +221,20 @@ void look_for_second(const ScanBatch& scan, const Readout& readout, const FitOpt
   const ScanObjective one(scan, plain, known, fit.chosen, {}, fit.negative_contrast, work.objective);
   const double left_by_one = left_by_single(one, readout, fit, work);
   if (!std::isfinite(left_by_one)) return;
-  const auto best = best_of_two(scan, plain, known, fit, one.apparent_frequency(fit.physical), work);
-  const double gain = (left_by_one - best.left) / std::max(1.0, best.left / std::max(1.0, fit.quality.dof - 2.0));
-  if (!(gain > kSeen)) return;
+  const double main = one.apparent_frequency(fit.physical);
+  Prior with = known;
+  with.second = true;
+  const ScanObjective two(scan, plain, with, Dynamics::dephasing, {}, fit.negative_contrast, work.objective);
+  const auto best = best_of_two(scan, plain, two, fit, main);
+  if (!std::isfinite(best.left)) return;
+  const double scatter = std::max(1.0, best.left / std::max(1.0, fit.quality.dof - 2.0)), gain = (left_by_one - best.left) / scatter;
   const bool line = scan.kind == Axis::detuning;
-  if (!line && !pulses_doubted(options, fit, best.physical)) return;
-  const double first = line ? best.physical.line_offset : best.physical.generalised;
-  fit.quality.second = {first, line ? first + best.physical.second_place : first * best.physical.second_place, best.physical.second_share, gain};
+  if (!line && !(gain > kSeen)) return heed_second({two, best.minimum, gain, std::max(1.0, scatter / fit.dispersion)}, options, fit);
+  if (!(gain > kSeen)) return;
+  const Physical found = two.unpack(best.minimum.x);
+  if (!line && !pulses_doubted(options, fit, found)) return;
+  const double first = line ? found.line_offset : found.generalised;
+  fit.quality.second = {first, line ? first + found.second_place : first * found.second_place, found.second_share, gain};
 }
 
 }  // namespace halfturn::infer
