@@ -154,6 +154,15 @@ Estimate times(Estimate e, double factor) {
 
 namespace {
 
+/// With a standard error no smaller than the wider side of the interval tells. Where another parameter lies at its bound, such as a
+/// detuning's square at 0, the error at the minimum is that of its being there, and the likelihood reaches much further the way it may
+/// leave. Of 318 flops whose detuning the contrast did not tell (campaign, detuned_free, seed 2) the error of the Rabi frequency held 36 %
+/// before and 76 % with this (half the interval's width: 65 %), of 328 detuned_known 62 % and 77 %, of 308 clean ones 69 % and 70 %.
+Estimate as_wide_as_sides(Estimate e, const Scale& scale) {
+  if (std::isfinite(e.low) && std::isfinite(e.high)) e.sigma = std::max(e.sigma, std::max(e.high - e.value, e.value - e.low) / scale.z);
+  return e;
+}
+
 /// The average over candidates of a lead coordinate (or of the coordinate that `slot` picks). The best has its profile interval; the
 /// others, which fit worse and weigh less, that of their standard error.
 template <class Slot>
@@ -173,7 +182,10 @@ Estimate over_candidates(const Problem& problem, const ModeSolutions& mode, cons
     // A drive that saturates below what the pulse needs, or couplings that no pulse turns together. What lesser candidates say is no answer.
     if (!std::isfinite(minimum.x[index]))
       return {kUnknown, kUnknown, kUnknown, kUnknown, lead.kind == Lead::Kind::pulse_amplitude ? kOutOfReach : kNoPulse};
-    parts[count++] = {fit.candidates[i].weight, shown && i == 0 ? profiled(objective, objective.bounds(), minimum, index, scale) : normal(minimum, index, scale)};
+    Estimate& e = parts[count].estimate;
+    e = shown && i == 0 ? profiled(objective, objective.bounds(), minimum, index, scale) : normal(minimum, index, scale);
+    if (lead.kind != Lead::Kind::pulse_length && lead.kind != Lead::Kind::pulse_amplitude && index == objective.layout().lead) e = as_wide_as_sides(e, scale);
+    parts[count++].weight = fit.candidates[i].weight;
   }
   return averaged({parts.data(), count}, scale);
 }

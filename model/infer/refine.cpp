@@ -174,10 +174,9 @@ void refine_others(const Problem& problem, std::vector<ModeSolutions>& modes, Fi
 
 /// Adds what a hot thermal state says, to the mode of its frequency or as one of its own.
 void add_hot(const Problem& problem, std::vector<ModeSolutions>& modes, FitWorkspace& work) {
-  if (modes.empty()) return;
-  for (const Physical& start : hot_starts(problem, modes.front(), work)) {
+  for (const Physical& start : hot_starts(problem, modes, work)) {
     auto hot = refine(problem, Dynamics::thermal, start, work);
-    if (!hot || !(hot->aicc < modes.front().best().aicc + problem.options.rival_margin)) continue;
+    if (!hot || (!modes.empty() && !(hot->aicc < modes.front().best().aicc + problem.options.rival_margin))) continue;
     const auto same = std::find_if(modes.begin(), modes.end(), [&](const ModeSolutions& mode) { return same_mode(problem, mode.best(), *hot); });
     if (same == modes.end()) {
       modes.push_back({{std::move(*hot)}});

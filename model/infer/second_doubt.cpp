@@ -3,7 +3,6 @@
 
 #include <array>
 #include <cmath>
-#include <cstdlib>
 
 #include "model/infer/conditioning.hpp"
 #include "model/infer/estimate.hpp"
@@ -13,8 +12,11 @@
 namespace halfturn::infer {
 namespace {
 
-double kEvenOdds = std::getenv("HT_C") ? std::atof(std::getenv("HT_C")) : 9.0;
-double kUsualRatio = std::getenv("HT_R") ? std::atof(std::getenv("HT_R")) : 0.3;
+// Gain at which two components are as likely as what was fitted, for one of few cycles and a ratio near 1. The places where a second
+// one may lie grow with the cycles, and what it gains by chance with them: all ten clean, aliased flops (campaign, seed 2) of one component
+// that gained 9 to 13 and were refused for it had 19 to 61 cycles, the eight wrong answers to flops of two that gained 2 to 15 had 2.6 to 5.3.
+// A ratio further from 1 than this, in its logarithm, is less usual: of 34 healthy flops that gained over 8 by chance (six families, seed 2) 15 lay beyond 1.6 or below 0.6.
+constexpr double kEvenOdds = 8.0, kByCycles = 3.0, kUsualRatio = 0.3;
 
 /// Length of a pulse over both components, s.
 double length_of(const Physical& two, const PulseAngle& pulse) {
@@ -46,8 +48,9 @@ void heed(Estimate& given, const Estimate& of_two, double weight, const Scale& s
 
 void heed_second(const SecondFound& found, const FitOptions& options, Fit& fit) {
   const Physical two = found.two.unpack(found.minimum.x);
+  if (!(two.generalised < fit.sampling.limit)) return;  // beyond it a second one may be anything's alias
   const double far = std::log(two.second_place) / kUsualRatio, cycles = two.generalised * fit.sampling.span / constants::kTwoPi;
-  const double weight = std::exp(0.5 * (found.gain - kEvenOdds - 2.0 * std::log(1.0 + cycles) - far * far));
+  const double weight = std::exp(0.5 * (found.gain - kEvenOdds - kByCycles * std::log1p(cycles) - far * far));
   if (!(weight >= kWeightHeard)) return;
   const Matrix covariance = covariance_of(found.minimum);
   if (!covariance.allFinite()) return;

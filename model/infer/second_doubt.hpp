@@ -16,7 +16,7 @@ struct SecondFound {
 };
 
 /// Averages the pulse lengths of a flop, at both levels, with those that turn two components best: one candidate more, of a weight that
-/// the gain tells against all others together (estimate.hpp, `averaged`). Leaves the fit as it is where that weight is not heard, and
+/// the gain tells against all others together (estimate.hpp, `averaged`), less for what chance gains over many cycles. Leaves the fit as it is where that weight is not heard, and
 /// lengths that have no interval.
 void heed_second(const SecondFound& found, const FitOptions& options, Fit& fit);
 
