@@ -61,6 +61,7 @@ namespace {
 
 /// The same solution in the coordinates of another lead.
 Minimum in_coordinates(const ScanObjective& objective, const Solution& solution) {
+  if (objective.scan().kind != Axis::amplitude) return objective.in_coordinates(solution.minimum, solution.physical);
   Minimum minimum = solution.minimum;
   minimum.x = objective.pack(solution.physical);
   objective.evaluate(minimum.x, minimum.value, &minimum.gradient, &minimum.information);
@@ -154,12 +155,13 @@ Estimate times(Estimate e, double factor) {
 
 namespace {
 
-/// With a standard error no smaller than the wider side of the interval tells. Where another parameter lies at its bound, such as a
-/// detuning's square at 0, the error at the minimum is that of its being there, and the likelihood reaches much further the way it may
-/// leave. Of 318 flops whose detuning the contrast did not tell (campaign, detuned_free, seed 2) the error of the Rabi frequency held 36 %
-/// before and 76 % with this (half the interval's width: 65 %), of 328 detuned_known 62 % and 77 %, of 308 clean ones 69 % and 70 %.
-Estimate as_wide_as_sides(Estimate e, const Scale& scale) {
-  if (std::isfinite(e.low) && std::isfinite(e.high)) e.sigma = std::max(e.sigma, std::max(e.high - e.value, e.value - e.low) / scale.z);
+/// With a standard error no smaller than the wider side of the interval tells where another parameter lies at its bound, such as a
+/// detuning's square at 0: the error at the minimum is then that of its being there, and the likelihood reaches much further the way it
+/// may leave. The campaign's counts are in bound_sigma_test.
+Estimate as_wide_as_sides(Estimate e, const Minimum& minimum, const Scale& scale) {
+  const Matrix covariance = covariance_of(minimum);
+  const bool held = (covariance.diagonal().array() == 0.0).any();  // one at its bound has no variance
+  if (held && std::isfinite(e.low) && std::isfinite(e.high)) e.sigma = std::max(e.sigma, std::max(e.high - e.value, e.value - e.low) / scale.z);
   return e;
 }
 
@@ -184,7 +186,8 @@ Estimate over_candidates(const Problem& problem, const ModeSolutions& mode, cons
       return {kUnknown, kUnknown, kUnknown, kUnknown, lead.kind == Lead::Kind::pulse_amplitude ? kOutOfReach : kNoPulse};
     Estimate& e = parts[count].estimate;
     e = shown && i == 0 ? profiled(objective, objective.bounds(), minimum, index, scale) : normal(minimum, index, scale);
-    if (lead.kind != Lead::Kind::pulse_length && lead.kind != Lead::Kind::pulse_amplitude && index == objective.layout().lead) e = as_wide_as_sides(e, scale);
+    const bool pulse = lead.kind == Lead::Kind::pulse_length || lead.kind == Lead::Kind::pulse_amplitude;
+    if (!pulse && index == objective.layout().lead) e = as_wide_as_sides(e, minimum, scale);
     parts[count++].weight = fit.candidates[i].weight;
   }
   return averaged({parts.data(), count}, scale);

@@ -1,6 +1,7 @@
 // SPDX-License-Identifier: Apache-2.0
 #include "model/infer/frequency_search.hpp"
 
+#include <algorithm>
 #include <cmath>
 
 #include "model/quantity/clones.hpp"
@@ -170,15 +171,21 @@ LinearFit solve_linear(const LinearPoints& points, double frequency, double damp
   return solve(t, f, damping > 0.0);
 }
 
-void search_frequencies(const LinearPoints& points, const TrialGrid& grid, std::span<const double> dampings, FrequencySearch& search) {
+void search_frequencies(const LinearPoints& points, const TrialGrid& grid, std::span<const double> dampings, FrequencySearch& search,
+                        std::span<const char> wanted) {
   const std::size_t n = points.time.size(), count = static_cast<std::size_t>(grid.count);
   begin_phasors(points, grid, search);
   begin_envelopes(points, dampings, search);
   search.gain.assign(dampings.size() * count, -1.0);
   std::vector<FixedSums> fixed;
   for (std::size_t d = 0; d < dampings.size(); ++d) fixed.push_back(fixed_sums(points, search.envelope.data() + d * n));
+  const auto left_out = [&](std::size_t first) {
+    if (wanted.empty()) return false;
+    const auto block = wanted.subspan(first, std::min(kLanes, count - first));
+    return std::none_of(block.begin(), block.end(), [](char want) { return want != 0; });
+  };
   for (std::size_t first = 0; first < count; first += kLanes) {
-    for (std::size_t d = 0; d < dampings.size(); ++d) {
+    for (std::size_t d = 0; d < dampings.size() && !left_out(first); ++d) {
       LaneSums sums;
       const std::size_t row = d * n;
       sum_lanes(n, search.cosine.data(), search.sine.data(), search.weighted.data() + row, search.squared.data() + row,

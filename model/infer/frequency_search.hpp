@@ -38,7 +38,8 @@ struct FrequencySearch {
 
 /// The gain at each frequency of the grid for each damping, into search.gain. Every point's phasor turns by its own step from
 /// trial to trial, four trials side by side; the phase error grows to 1e-16 a trial. The gains are those of solve_linear to
-/// 1e-9 of the largest.
-void search_frequencies(const LinearPoints& points, const TrialGrid& grid, std::span<const double> dampings, FrequencySearch& search);
+/// 1e-9 of the largest. Where `wanted` (one a trial, or none) is 0 for four trials side by side, they are left out: a gain of -1.
+void search_frequencies(const LinearPoints& points, const TrialGrid& grid, std::span<const double> dampings, FrequencySearch& search,
+                        std::span<const char> wanted = {});
 
 }  // namespace halfturn::infer

@@ -24,9 +24,10 @@ DevianceMoments exact(double shots, double expected) {
   const bool counted = std::isfinite(shots);
   const double p = counted ? expected / shots : 0.0;
   double probability = counted ? std::exp(shots * std::log1p(-p)) : std::exp(-expected);
-  const double last = std::min(shots, std::ceil(expected + 10.0 * std::sqrt(expected) + 20.0));
-  // At most kFew + 10 sqrt(kFew) + 21 outcomes.
-  std::array<double, 96> outcomes, weights, means, deviances;
+  // What lies beyond is met once in 1e15.
+  const double last = std::min(shots, std::ceil(expected + 7.0 * std::sqrt(expected) + 12.0));
+  // At most kFew + 7 sqrt(kFew) + 13 outcomes.
+  std::array<double, 72> outcomes, weights, means, deviances;
   const auto count = static_cast<std::size_t>(std::floor(last)) + 1;
   for (std::size_t k = 0; k < count; ++k) outcomes[k] = static_cast<double>(k);
   std::fill_n(weights.begin(), count, counted ? shots : 1.0);

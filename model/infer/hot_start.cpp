@@ -4,7 +4,6 @@
 #include <algorithm>
 #include <cmath>
 
-#include "model/infer/monotone.hpp"
 #include "model/infer/rules.hpp"
 
 namespace halfturn::infer {
@@ -94,19 +93,19 @@ bool fades_fast(const ModeSolutions& mode) {
   });
 }
 
-bool may_be_hot(const Problem& problem, std::span<const ModeSolutions> modes) {
+bool may_be_hot(const Problem& problem, double flat, std::span<const ModeSolutions> modes) {
   const auto& prior = problem.prior;
   if (problem.scan.kind != Axis::duration || !prior.candidates.has(Dynamics::thermal) || !(heat_of_phonon(prior) > 0.0)) return false;
   if (modes.empty()) return true;
   const auto& best = modes.front();
-  return fades_fast(best) && 2.0 * (monotone_half_deviance(problem.readout, problem.scan.axis).flat - best.best().minimum.value) >= kShown;
+  return fades_fast(best) && 2.0 * (flat - best.best().minimum.value) >= kShown;
 }
 
 }  // namespace
 
-std::vector<Physical> hot_starts(const Problem& problem, std::span<const ModeSolutions> modes, FitWorkspace& work) {
+std::vector<Physical> hot_starts(const Problem& problem, double flat, std::span<const ModeSolutions> modes, FitWorkspace& work) {
   std::vector<Physical> starts;
-  if (!may_be_hot(problem, modes) || !take_points(problem.readout, problem.sampling, work.search)) return starts;
+  if (!may_be_hot(problem, flat, modes) || !take_points(problem.readout, problem.sampling, work.search)) return starts;
   const double longest = *std::max_element(problem.scan.axis.begin(), problem.scan.axis.end());
   const double most = std::min(kMostPhase, 1.25 * longest * problem.sampling.limit);
   std::vector<Trial> trials;

@@ -18,6 +18,11 @@ using constants::kTwoPi;
 constexpr SolverOptions kSorting{.decrease_tolerance = 0.01, .max_evaluations = 60};
 // Other modes of a line are compared with the best to 2e-4 in deviance.
 constexpr SolverOptions kComparing{.decrease_tolerance = 1e-4, .max_evaluations = 100};
+// A start is given up that will not come so near the best so far, deviance over what that gains over a flat line: another candidate could
+// take no more off it.
+constexpr double kStartsShare = 0.3;
+// Another candidate takes at most so many times off another mode what it took off the best.
+constexpr double kMovesOthers = 1.5;
 // What a refinement may still promise to gain to count as finished.
 constexpr double kFinished = 1e-12;  // 1e-6 of a sigma
 
@@ -144,21 +149,25 @@ void refine_lines(const Problem& problem, std::vector<ModeSolutions>& modes, Fit
   if (least != modes.begin()) refine_simple(problem, *least, work);
 }
 
-/// The best modes of a flop (or of a scan of amplitudes) under every simple candidate.
-void refine_flops(const Problem& problem, std::vector<ModeSolutions>& modes, FitWorkspace& work) {
+/// The best modes of a flop (or of a scan of amplitudes) under every simple candidate; of those that the best leaves far behind under the
+/// first one, no more than that.
+void refine_flops(const Problem& problem, double flat, std::vector<ModeSolutions>& modes, FitWorkspace& work) {
   if (modes.empty()) return;
-  const double gained = 2.0 * (monotone_half_deviance(problem.readout, problem.scan.axis).flat - modes.front().best().minimum.value);
+  const double sorted_by = modes.front().best().minimum.value, gained = 2.0 * (flat - sorted_by);
   // Of a scan that shows nothing, one mode says so and the next is its rival.
   const std::size_t most = gained >= kShown ? kModesInFull : 2;
   if (modes.size() > most) modes.resize(most);
-  for (auto& mode : modes) refine_simple(problem, mode, work);
+  refine_simple(problem, modes.front(), work);
+  const double best = modes.front().best().minimum.value, by_candidate = sorted_by - best;
+  const double worth_it = best + 0.5 * (kOthersWorthIt + kOthersShare * 2.0 * (flat - best)) + kMovesOthers * std::max(0.0, by_candidate);
+  for (std::size_t i = 1; i < modes.size(); ++i)
+    if (modes[i].best().minimum.value < worth_it) refine_simple(problem, modes[i], work);
 }
 
 /// Refines the best modes under the candidates that are not simple, where the scan shows an oscillation (or a line) that asks for them.
-void refine_others(const Problem& problem, std::vector<ModeSolutions>& modes, FitWorkspace& work) {
+void refine_others(const Problem& problem, const MonotoneFit& plain, std::vector<ModeSolutions>& modes, FitWorkspace& work) {
   if (modes.empty() || !others_asked_for(problem.prior)) return;
   const double best = modes.front().best().minimum.value;
-  const auto plain = monotone_half_deviance(problem.readout, problem.scan.axis);
   const double over_flat = 2.0 * (plain.flat - best), over_monotone = 2.0 * (std::min(plain.rising, plain.falling) - best);
   if (!(std::min(over_flat, over_monotone) >= kShown)) return;
   const double worth_it = modes.front().best().aicc + kOthersWorthIt + kOthersShare * over_flat;
@@ -173,8 +182,8 @@ void refine_others(const Problem& problem, std::vector<ModeSolutions>& modes, Fi
 }
 
 /// Adds what a hot thermal state says, to the mode of its frequency or as one of its own.
-void add_hot(const Problem& problem, std::vector<ModeSolutions>& modes, FitWorkspace& work) {
-  for (const Physical& start : hot_starts(problem, modes, work)) {
+void add_hot(const Problem& problem, double flat, std::vector<ModeSolutions>& modes, FitWorkspace& work) {
+  for (const Physical& start : hot_starts(problem, flat, modes, work)) {
     auto hot = refine(problem, Dynamics::thermal, start, work);
     if (!hot || (!modes.empty() && !(hot->aicc < modes.front().best().aicc + problem.options.rival_margin))) continue;
     const auto same = std::find_if(modes.begin(), modes.end(), [&](const ModeSolutions& mode) { return same_mode(problem, mode.best(), *hot); });
@@ -221,19 +230,27 @@ bool same_mode(const Problem& problem, const Solution& a, const Solution& b) {
 
 std::vector<ModeSolutions> refine_modes(const Problem& problem, std::span<const Mode> starts, FitWorkspace& work) {
   std::vector<ModeSolutions> modes;
+  const MonotoneFit plain = monotone_half_deviance(problem.readout, problem.scan.axis);
+  double best = std::numeric_limits<double>::infinity();
   for (const auto& start : starts) {
     const Dynamics candidate = first_candidate(problem.prior, start.damped);
     const Physical from = first_start(problem, candidate, start, work);
-    if (auto solution = refine(problem, candidate, from, work, kSorting)) add_mode(problem, modes, std::move(*solution));
+    SolverOptions sorting = kSorting;
+    // The next best is found in any case, to be said.
+    if (modes.size() > 1) sorting.give_up_above = best + 0.5 * kOthersWorthIt + kStartsShare * std::max(0.0, plain.flat - best);
+    auto solution = refine(problem, candidate, from, work, sorting);
+    if (!solution) continue;
+    best = std::min(best, solution->minimum.value);
+    add_mode(problem, modes, std::move(*solution));
   }
   auto by_deviance = [](const ModeSolutions& a, const ModeSolutions& b) { return a.best().minimum.value < b.best().minimum.value; };
   std::stable_sort(modes.begin(), modes.end(), by_deviance);
   if (problem.scan.kind == Axis::detuning) refine_lines(problem, modes, work);
-  else refine_flops(problem, modes, work);
+  else refine_flops(problem, plain.flat, modes, work);
   const auto better = [](const ModeSolutions& a, const ModeSolutions& b) { return a.best().aicc < b.best().aicc; };
   std::stable_sort(modes.begin(), modes.end(), better);
-  refine_others(problem, modes, work);
-  add_hot(problem, modes, work);
+  refine_others(problem, plain, modes, work);
+  add_hot(problem, plain.flat, modes, work);
   std::stable_sort(modes.begin(), modes.end(), better);
   return modes;
 }

@@ -245,4 +245,26 @@ ScanObjective::LeadSlopes ScanObjective::lead_slopes(const Physical& p) const {
   return slopes;
 }
 
+Minimum ScanObjective::in_coordinates(const Minimum& minimum, const Physical& p) const {
+  Minimum out = minimum;
+  out.x = pack(p);
+  if (lead_.kind == Lead::Kind::generalised) return out;
+  const auto slopes = lead_slopes(p);
+  Vector by = Vector::Zero(layout_.count);  // of the generalised frequency by the coordinates
+  const auto set = [&by](int slot, double slope) {
+    if (slot >= 0) by[slot] = slope;
+  };
+  set(layout_.dead_time, slopes.by_dead_time);
+  set(layout_.detuning_square, slopes.by_square);
+  set(layout_.breadth, slopes.by_breadth);
+  set(layout_.lead, slopes.by_lead - 1.0);  // the identity is what the rest of the transformation is
+  const Vector across = minimum.information.col(layout_.lead);
+  const double own = across[layout_.lead], slope = minimum.gradient[layout_.lead];
+  for (Eigen::Index a = 0; a < layout_.count; ++a) {
+    out.gradient[a] += by[a] * slope;
+    for (Eigen::Index b = 0; b < layout_.count; ++b) out.information(a, b) += by[a] * across[b] + across[a] * by[b] + by[a] * own * by[b];
+  }
+  return out;
+}
+
 }  // namespace halfturn::infer

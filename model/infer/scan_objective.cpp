@@ -4,6 +4,8 @@
 #include <algorithm>
 #include <cmath>
 
+#include "model/quantity/clones.hpp"
+
 namespace halfturn::infer {
 namespace {
 
@@ -16,15 +18,25 @@ constexpr double kMostPhase = 1571.0;
 // Nor a spread of the detuning beyond this many couplings, where no oscillation is left.
 constexpr double kMostDoppler = 3.0;
 
-/// Sum of products in four lanes, which makes it vector instructions without leave to reorder sums.
-double dot(const double* a, const double* b, std::size_t n) {
-  double lanes[4] = {0.0, 0.0, 0.0, 0.0};
-  std::size_t i = 0;
-  for (; i + 4 <= n; i += 4)
-    for (std::size_t lane = 0; lane < 4; ++lane) lanes[lane] += a[i + lane] * b[i + lane];
-  double sum = (lanes[0] + lanes[1]) + (lanes[2] + lanes[3]);
-  for (; i < n; ++i) sum += a[i] * b[i];
-  return sum;
+/// Lower triangle of the sums of w a b over the points, and of s a, for all pairs of `count` columns of `n` values: in four lanes, which
+/// makes it vector instructions without leave to reorder sums. `weighted` has room for one column.
+HALFTURN_CLONES void sum_products(const double* columns, int count, std::size_t n, const double* score, const double* weight, double* weighted,
+                                  double* by_score, double* by_pair) {
+  const auto sum = [n](const double* a, const double* b) HALFTURN_INLINE_LAMBDA {
+    double lanes[4] = {0.0, 0.0, 0.0, 0.0};
+    std::size_t i = 0;
+    for (; i + 4 <= n; i += 4)
+      for (std::size_t lane = 0; lane < 4; ++lane) lanes[lane] += a[i + lane] * b[i + lane];
+    double total = (lanes[0] + lanes[1]) + (lanes[2] + lanes[3]);
+    for (; i < n; ++i) total += a[i] * b[i];
+    return total;
+  };
+  for (int a = 0; a < count; ++a) {
+    const double* const own = columns + static_cast<std::size_t>(a) * n;
+    by_score[a] = sum(score, own);
+    for (std::size_t i = 0; i < n; ++i) weighted[i] = weight[i] * own[i];
+    for (int b = 0; b <= a; ++b) *by_pair++ = sum(weighted, columns + static_cast<std::size_t>(b) * n);
+  }
 }
 
 double square(double x) { return x * x; }
@@ -251,15 +263,16 @@ bool ScanObjective::evaluate(const Vector& x, double& value, Vector* gradient, M
 
 void ScanObjective::accumulate(const Physical& p, Vector* gradient, Matrix* information) const {
   fill_columns(p);
-  const auto n = scan_.points();
   const int count = layout_.count;
-  double* const weighted = column(count).data();
+  std::array<double, kMaxParameters> by_score;
+  std::array<double, kMaxParameters*(kMaxParameters + 1) / 2> by_pair;
+  sum_products(column(0).data(), count, scan_.points(), work_.score.data(), work_.information.data(), column(count).data(), by_score.data(),
+               by_pair.data());
+  std::size_t pair = 0;
   for (int a = 0; a < count; ++a) {
-    const double* const column_a = column(a).data();
-    if (gradient != nullptr) (*gradient)[a] += dot(work_.score.data(), column_a, n);
-    if (information == nullptr) continue;
-    for (std::size_t i = 0; i < n; ++i) weighted[i] = work_.information[i] * column_a[i];
-    for (int b = 0; b <= a; ++b) (*information)(a, b) = (*information)(b, a) = dot(weighted, column(b).data(), n);
+    if (gradient != nullptr) (*gradient)[a] += by_score[static_cast<std::size_t>(a)];
+    for (int b = 0; b <= a; ++b, ++pair)
+      if (information != nullptr) (*information)(a, b) = (*information)(b, a) = by_pair[pair];
   }
 }
 

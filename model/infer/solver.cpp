@@ -19,6 +19,12 @@ constexpr double kNoise = 16.0 * kEpsilon;
 // Steps that promise less than this, in log likelihood, are short enough for gradients to tell of curvature: it halves the
 // calls on ENSO and MGH09 (second start), while learning on all steps lost the four Lanczos starts (solver_test).
 constexpr double kNear = 0.5;
+// No search is given up before so many evaluations, nor while so many times the promised decrease would do.
+constexpr int kFewSteps = 3;
+constexpr double kHoped = 3.0;
+// A search that lowers the objective by less than its tolerance in so many evaluations has stalled: where the model promises more than a
+// curved valley holds, or in the objective's rounding, it would creep on to the limit.
+constexpr int kPatience = 15;
 // A trust radius of 1e-8 conditional sigmas moves no parameter that anybody could tell: the search has stalled.
 constexpr double kSmallestRadius = 1e-8;
 
@@ -73,23 +79,33 @@ double damped_step(const Model& model, double damping, BoxStep& out) {
   return damping;
 }
 
+/// Length of the gradient without the components that only press against bounds: no damped step is longer than this over the damping.
+double downhill(const Model& model) {
+  double sum = 0.0;
+  for (Index i = 0; i < model.gradient.size(); ++i) {
+    const double g = model.gradient[i];
+    if (g > 0.0 ? model.lower[i] < 0.0 : model.upper[i] > 0.0) sum += g * g;
+  }
+  return std::sqrt(sum);
+}
+
 /// The damped step whose length is the radius to 10 %: Newton's iteration on 1/length within a bracket (More 1978, section
-/// 5), the derivative taken over the coordinates that are free of their bounds.
+/// 5, with its safeguards), the derivative taken over the coordinates that are free of their bounds. Where the step ends on a bound that
+/// derivative misleads, and the bracket decides.
 void confine(const Model& model, double radius, BoxStep& out) {
-  double low = 0.0, high = std::numeric_limits<double>::infinity(), damping = 0.0;
+  if (out.step.norm() <= radius) return;
+  double low = 0.0, high = downhill(model) / radius, damping = 0.0;
   for (int attempt = 0; attempt < 20; ++attempt) {
     const double length = out.step.norm();
     if (attempt > 0 && std::abs(length - radius) <= 0.1 * radius) return;
-    if (attempt == 0 && length <= radius) return;
     (length > radius ? low : high) = damping;
     Matrix hessian = model.hessian;
     hessian.diagonal().array() += damping;
     Vector rate;
     double next = 0.0;
-    if (solve_free(hessian, out.free, out.step, rate) && out.step.dot(rate) > 0.0) {
+    if (solve_free(hessian, out.free, out.step, rate) && out.step.dot(rate) > 0.0)
       next = damping + (length - radius) / radius * length * length / out.step.dot(rate);
-    }
-    if (!(next > low && next < high)) next = std::isfinite(high) ? 0.5 * (low + high) : std::max(10.0 * damping, 1e-3);
+    if (!(next > low && next < high)) next = std::max(1e-3 * high, std::sqrt(low * high));
     damping = damped_step(model, next, out);
   }
   if (out.step.norm() > radius) out.step *= radius / out.step.norm();
@@ -139,19 +155,35 @@ class Search {
  private:
   /// Builds the model and its free step; says whether the search ends here.
   bool finished(bool fresh) {
-    if (!fresh && radius_ < kSmallestRadius) {
+    if ((!fresh && radius_ < kSmallestRadius) || crept()) {
       best_.outcome = Outcome::stalled;
       return true;
     }
-    if (fresh) model_.about(best_, step_, change_, bounds_);
-    damped_step(model_, 0.0, box_);
-    best_.expected_decrease = model_.decrease(box_.step);
+    if (fresh) {
+      model_.about(best_, step_, change_, bounds_);
+      damped_step(model_, 0.0, free_);
+      best_.expected_decrease = model_.decrease(free_.step);
+    }
+    box_ = free_;
     if (best_.expected_decrease < std::max(options_.decrease_tolerance, kEpsilon * std::abs(best_.value))) {
       best_.outcome = Outcome::converged;
       snap();
       return true;
     }
+    if (fresh && best_.evaluations > kFewSteps && best_.value - kHoped * best_.expected_decrease > options_.give_up_above) {
+      best_.outcome = Outcome::given_up;
+      return true;
+    }
     return best_.evaluations >= options_.max_evaluations;
+  }
+
+  /// Whether the last kPatience evaluations lowered the objective by less than the tolerance.
+  bool crept() {
+    if (!(best_.value > mark_ - options_.decrease_tolerance)) {
+      mark_ = best_.value;
+      marked_ = best_.evaluations;
+    }
+    return best_.evaluations - marked_ >= kPatience;
   }
 
   /// Tries one step; true where it was taken.
@@ -203,9 +235,11 @@ class Search {
   const SolverOptions& options_;
   Minimum best_, trial_;
   Model model_;
-  BoxStep box_;
+  BoxStep free_, box_;  // the model's own step, and that within the radius
   Vector step_, change_;  // the last step and the gradient's change along it, 0 where they teach nothing
   double radius_;
+  double mark_ = std::numeric_limits<double>::infinity();  // a value reached, after so many evaluations
+  int marked_ = 0;
 };
 
 }  // namespace

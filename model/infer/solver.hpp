@@ -32,12 +32,16 @@ struct SolverOptions {
   int max_evaluations = 300;
   /// Length of the first step at most, in units of the parameters' conditional sigmas; infinite leaves the first step free.
   double first_radius = std::numeric_limits<double>::infinity();
+  /// The search is given up where three times the decrease still promised would leave the value above this: among several starts, those
+  /// that cannot come near the best.
+  double give_up_above = std::numeric_limits<double>::infinity();
 };
 
 enum class Outcome : signed char {
   converged,        // the promised decrease is below the tolerance
   stalled,          // no step, however short, lowers the objective, though the model promises a decrease
   iteration_limit,  // max_evaluations are used up
+  given_up,         // nothing below give_up_above is in sight
   not_finite,       // the objective cannot be computed at the start, or the start and the bounds are no valid problem
 };
 

@@ -359,6 +359,17 @@ TEST_CASE("gradients of the objective agree with differences, all dynamics by al
           Vector gradient;
           Matrix information;
           REQUIRE(objective.evaluate(x, value, &gradient, &information));
+          // The chain rule from the generalised frequency's coordinates comes to the same, to rounding.
+          const ScanObjective plain(scan, readout, prior, dynamics, {}, false, workspace);
+          Minimum found;
+          found.x = plain.pack(at);
+          REQUIRE(plain.evaluate(found.x, found.value, &found.gradient, &found.information));
+          const Minimum carried = objective.in_coordinates(found, at);
+          const Vector unit = information.diagonal().cwiseSqrt();
+          const bool alike = (carried.information - information).cwiseAbs().cwiseQuotient(unit * unit.transpose()).maxCoeff() < 1e-10 &&
+                             (carried.gradient - gradient).cwiseAbs().cwiseQuotient(unit).maxCoeff() < 1e-8;
+          INFO("kind " << int(kind) << " axis " << int(axis) << " dynamics " << int(dynamics) << " lead " << int(lead));
+          CHECK(alike);
           for (int j = 0; j < objective.layout().count; ++j) {
             const double step = 1e-5 / std::sqrt(information(j, j)) + 1e-6 * std::abs(x[j]);
             Vector up = x, down = x;
