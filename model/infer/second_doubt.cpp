@@ -1,6 +1,7 @@
 // SPDX-License-Identifier: Apache-2.0
 #include "model/infer/second_doubt.hpp"
 
+#include <algorithm>
 #include <array>
 #include <cmath>
 
@@ -13,9 +14,9 @@ namespace halfturn::infer {
 namespace {
 
 // Gain at which two components are as likely as what was fitted, for one of few cycles and a ratio near 1. The places where a second
-// one may lie grow with the cycles, and what it gains by chance with them: all ten clean, aliased flops (campaign, seed 2) of one component
+// one may lie grow with the cycles, and what it gains by chance with them: ten clean, aliased flops (campaign, seed 2) of one component
 // that gained 9 to 13 and were refused for it had 19 to 61 cycles, the eight wrong answers to flops of two that gained 2 to 15 had 2.6 to 5.3.
-// A ratio further from 1 than this, in its logarithm, is less usual: of 34 healthy flops that gained over 8 by chance (six families, seed 2) 15 lay beyond 1.6 or below 0.6.
+// A ratio further from 1 than this, in its logarithm, is less usual: of 35 healthy flops that gained over 8 by chance (six families, seed 2) 16 lay beyond 1.6 or below 0.6.
 constexpr double kEvenOdds = 8.0, kByCycles = 3.0, kUsualRatio = 0.3;
 
 /// Length of a pulse over both components, s.
@@ -48,7 +49,7 @@ void heed(Estimate& given, const Estimate& of_two, double weight, const Scale& s
 
 void heed_second(const SecondFound& found, const FitOptions& options, Fit& fit) {
   const Physical two = found.two.unpack(found.minimum.x);
-  if (!(two.generalised < fit.sampling.limit)) return;  // beyond it a second one may be anything's alias
+  if (!(std::max(two.generalised, fit.physical.generalised) < fit.sampling.limit)) return;  // beyond it a second one may be anything's alias
   const double far = std::log(two.second_place) / kUsualRatio, cycles = two.generalised * fit.sampling.span / constants::kTwoPi;
   const double weight = std::exp(0.5 * (found.gain - kEvenOdds - kByCycles * std::log1p(cycles) - far * far));
   if (!(weight >= kWeightHeard)) return;

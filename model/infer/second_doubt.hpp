@@ -16,8 +16,8 @@ struct SecondFound {
 };
 
 /// Averages the pulse lengths of a flop, at both levels, with those that turn two components best: one candidate more, of a weight that
-/// the gain tells against all others together (estimate.hpp, `averaged`), less for what chance gains over many cycles. Leaves the fit as it is where that weight is not heard, and
-/// lengths that have no interval.
+/// the gain tells against all others together (estimate.hpp, `averaged`), less for what chance gains over many cycles. Leaves the fit
+/// as it is where that weight is not heard or the flop lies beyond the sampling limit, and lengths that have no interval.
 void heed_second(const SecondFound& found, const FitOptions& options, Fit& fit);
 
 }  // namespace halfturn::infer

@@ -74,6 +74,7 @@ TEST_CASE("a second component in doubt moves and widens the length of a pulse by
     Fit fit;
     fit.sampling.span = 3e-6;
     fit.sampling.limit = limit;
+    fit.physical.generalised = kTwoPi * 1e6;
     fit.pulse_length_s = {{0.46e-6, 4e-9, 0.452e-6, 0.468e-6, {}}};
     heed_second({two, minimum, gain, 1.0}, kPi1, fit);
     return fit.pulse_length_s[0];
