@@ -6,6 +6,7 @@
 #include <thread>
 
 #include "tests/campaign/compare.hpp"
+#include "tests/campaign/limits.hpp"
 #include "tests/campaign/run.hpp"
 #include "tests/campaign/targets.hpp"
 
@@ -17,7 +18,7 @@ struct Wish {
   Order order;
   std::string family, dump, score;
   std::optional<std::uint64_t> index;
-  bool json = false, check = false;
+  bool json = false, check = false, limits = false;
 };
 
 void describe(CLI::App& app, Wish& wish) {
@@ -29,6 +30,7 @@ void describe(CLI::App& app, Wish& wish) {
   app.add_option("--threads", wish.order.threads, "how many")->check(CLI::PositiveNumber)->capture_default_str();
   app.add_flag("--json", wish.json, "JSON instead of a table");
   app.add_flag("--check", wish.check, "exit with 1 where a figure is outside its band, widened to a chance of one in a million");
+  app.add_flag("--limits", wish.limits, "of figures out of band: what no procedure could reach on the same scans, beside what is reached");
   app.add_option("--dump", wish.dump, "write the scans to this file, a JSON object a line, and fit none");
   app.add_option("--score", wish.score, "score another pipeline's answers to such scans from this file, beside one's own");
 }
@@ -67,14 +69,24 @@ int compared(const Wish& wish) {
   }
 }
 
+bool lost_output() {
+  std::cout.flush();
+  if (std::cout) return false;
+  std::cerr << "standard output could not be written: the result is lost\n";
+  return true;
+}
+
+int limited(const Wish& wish, std::vector<const Family*> wanted) {
+  if (wish.family.empty()) std::erase_if(wanted, [](const Family* family) { return !has_limits(*family); });
+  const auto found = limits(wish.order, wanted);
+  wish.json ? print_limits_json(std::cout, found) : print_limits(std::cout, found);
+  return lost_output() ? 2 : 0;
+}
+
 int campaign(const Wish& wish, const std::vector<const Family*>& wanted) {
   const auto result = run(wish.order, wanted);
   wish.json ? print_json(std::cout, result) : print_table(std::cout, result);
-  std::cout.flush();
-  if (!std::cout) {
-    std::cerr << "standard output could not be written: the result is lost\n";
-    return 2;
-  }
+  if (lost_output()) return 2;
   if (!wish.check) return 0;
   const auto failed = failures(result);
   for (const auto& sentence : failed) std::cerr << sentence << '\n';
@@ -92,6 +104,7 @@ int main(int argc, char** argv) {
   const auto wanted = families_for(wish.family);
   if (wanted.empty()) return 2;
   if (!wish.dump.empty()) return dumped(wish, wanted);
+  if (wish.limits) return limited(wish, wanted);
   if (!wish.index) return campaign(wish, wanted);
   print_case(std::cout, draw(*wanted.front(), wish.order.seeds.front(), *wish.index), *wanted.front());
   return 0;

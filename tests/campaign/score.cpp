@@ -61,19 +61,6 @@ bool may_be_healthy(const Case& of, const Family& family) {
   return !of.aliased || !of.before.empty();
 }
 
-bool is_healthy(const Case& of, const Bound& bound, double width) {
-  if (!(bound.gain >= kExpectedGain)) return false;
-  const auto& accept = of.drive.accept;
-  if (of.truth.line)
-    return kSpare * bound.offset <= accept.max_carrier_error * width && kSpare * std::abs(of.truth.detuning) <= accept.max_carrier_step * width;
-  const auto [first, last] = std::minmax_element(of.scan.axis.begin(), of.scan.axis.end());
-  const double rate = of.truth.generalised(), span = *last - *first;
-  const double least = (rate - kSpare * kTwoSided95 * bound.generalised) * span / kTwoPi;
-  const bool precise = std::all_of(bound.pulse_s.begin(), bound.pulse_s.end(),
-                                   [&](double sigma) { return kSpare * rate * sigma <= accept.max_angle_error_rad; });
-  return rate * span / kTwoPi >= 1 && least >= accept.min_cycles && precise;
-}
-
 /// Whose answer it is. The daemon's stands at the likelihood's maximum; of another pipeline's it is asked as well what the data hold
 /// against the answer.
 enum class Whose { ours, theirs };
@@ -148,6 +135,19 @@ Scored score_use(const Case& of, const Family& family, const wire::Fitted& fitte
 }
 
 }  // namespace
+
+bool is_healthy(const Case& of, const Bound& bound, double width) {
+  if (!(bound.gain >= kExpectedGain)) return false;
+  const auto& accept = of.drive.accept;
+  if (of.truth.line)
+    return kSpare * bound.offset <= accept.max_carrier_error * width && kSpare * std::abs(of.truth.detuning) <= accept.max_carrier_step * width;
+  const auto [first, last] = std::minmax_element(of.scan.axis.begin(), of.scan.axis.end());
+  const double rate = of.truth.generalised(), span = *last - *first;
+  const double least = (rate - kSpare * kTwoSided95 * bound.generalised) * span / kTwoPi;
+  const bool precise = std::all_of(bound.pulse_s.begin(), bound.pulse_s.end(),
+                                   [&](double sigma) { return kSpare * rate * sigma <= accept.max_angle_error_rad; });
+  return rate * span / kTwoPi >= 1 && least >= accept.min_cycles && precise;
+}
 
 Scored score(const Case& of, const Family& family, const Answered& answered) {
   const auto& [fitted, fit] = answered;

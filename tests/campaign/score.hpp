@@ -7,6 +7,7 @@
 #include <vector>
 
 #include "tests/campaign/answer.hpp"
+#include "tests/campaign/bound.hpp"
 
 /// A case against its answer, and a family's cases together.
 namespace halfturn::campaign {
@@ -39,6 +40,9 @@ Scored score(const Case& of, const Family& family, const Answered& answered);
 /// as much is wrong as well where the data hold more than 25 against the answer instead of the truth: the daemon's stands at the
 /// likelihood's maximum, another's need not.
 Scored score_other(const Case& of, const Family& family, const wire::Fitted& theirs, const infer::Fit& ours);
+
+/// Healthy by its bounds alone; `width` of a line, rad/s. What a family says besides (kind, history) is not asked.
+bool is_healthy(const Case& of, const Bound& bound, double width);
 
 /// A row of the table.
 struct Row {

@@ -11,7 +11,7 @@ namespace halfturn::campaign {
 namespace {
 
 constexpr double kChance = 1e-6;
-constexpr double kWrong = 3e-6, kRefused = 0.999, kEfficiency = 1.05, kMisfitCoverage = 0.85;
+constexpr double kRefused = 0.999, kEfficiency = 1.05;
 
 double log_binomial(std::int64_t k, std::int64_t n, double p) {
   const auto a = static_cast<double>(k), b = static_cast<double>(n);
@@ -56,20 +56,6 @@ class Check {
   std::vector<std::string>& failed_;
 };
 
-/// Bands of the two coverages of all converged scans, by what the family's truth is.
-struct Bands {
-  double low_68, high_68, low_95, high_95;
-};
-Bands bands(Kind kind) {
-  switch (kind) {
-    case Kind::single: return {0.66, 0.71, 0.94, 0.965};
-    case Kind::competing: return {0.62, 0.75, 0.91, 0.975};
-    case Kind::misfit:
-    case Kind::barren: break;
-  }
-  return {0, 1, 0, 1};
-}
-
 void check_row(const Row& row, const Family& family, std::vector<std::string>& failed) {
   const Check check(row, failed);
   check.no_more("the share of wrong scans", Figure::wrong, row.wrong, row.scans, kWrong);
@@ -95,6 +81,16 @@ void check_row(const Row& row, const Family& family, std::vector<std::string>& f
 }
 
 }  // namespace
+
+Bands bands(Kind kind) {
+  switch (kind) {
+    case Kind::single: return {0.66, 0.71, 0.94, 0.965};
+    case Kind::competing: return {0.62, 0.75, 0.91, 0.975};
+    case Kind::misfit:
+    case Kind::barren: break;
+  }
+  return {0, 1, 0, 1};
+}
 
 double probability_at_least(std::int64_t k, std::int64_t n, double p) {
   if (k <= 0) return 1;
