@@ -16,7 +16,8 @@ namespace {
 // Gain at which two components are as likely as what was fitted, for one of few cycles and a ratio near 1. The places where a second
 // one may lie grow with the cycles, and what it gains by chance with them: ten clean, aliased flops (campaign, seed 2) of one component
 // that gained 9 to 13 and were refused for it had 19 to 61 cycles, the eight wrong answers to flops of two that gained 2 to 15 had 2.6 to 5.3.
-// A ratio further from 1 than this, in its logarithm, is less usual: of 35 healthy flops that gained over 8 by chance (six families, seed 2) 16 lay beyond 1.6 or below 0.6.
+// A ratio further from 1 than this, in its logarithm, is less usual: of 35 healthy flops that gained over 8 by chance (six
+// families, seed 2) 16 lay beyond 1.6 or below 0.6.
 constexpr double kEvenOdds = 8.0, kByCycles = 3.0, kUsualRatio = 0.3;
 
 /// Length of a pulse over both components, s.
