@@ -155,6 +155,16 @@ Estimate times(Estimate e, double factor) {
 
 namespace {
 
+/// With a standard error no smaller than the wider side of the interval tells where another parameter lies at its bound, such as a
+/// detuning's square at 0: the error at the minimum is then that of its being there, and the likelihood reaches much further the way it
+/// may leave. The campaign's counts are in bound_sigma_test.
+Estimate as_wide_as_sides(Estimate e, const Minimum& minimum, const Scale& scale) {
+  const Matrix covariance = covariance_of(minimum);
+  const bool held = (covariance.diagonal().array() == 0.0).any();  // one at its bound has no variance
+  if (held && std::isfinite(e.low) && std::isfinite(e.high)) e.sigma = std::max(e.sigma, std::max(e.high - e.value, e.value - e.low) / scale.z);
+  return e;
+}
+
 /// The average over candidates of a lead coordinate (or of the coordinate that `slot` picks). The best has its profile interval; the
 /// others, which fit worse and weigh less, that of their standard error.
 template <class Slot>
@@ -174,7 +184,11 @@ Estimate over_candidates(const Problem& problem, const ModeSolutions& mode, cons
     // A drive that saturates below what the pulse needs, or couplings that no pulse turns together. What lesser candidates say is no answer.
     if (!std::isfinite(minimum.x[index]))
       return {kUnknown, kUnknown, kUnknown, kUnknown, lead.kind == Lead::Kind::pulse_amplitude ? kOutOfReach : kNoPulse};
-    parts[count++] = {fit.candidates[i].weight, shown && i == 0 ? profiled(objective, objective.bounds(), minimum, index, scale) : normal(minimum, index, scale)};
+    Estimate& e = parts[count].estimate;
+    e = shown && i == 0 ? profiled(objective, objective.bounds(), minimum, index, scale) : normal(minimum, index, scale);
+    const bool pulse = lead.kind == Lead::Kind::pulse_length || lead.kind == Lead::Kind::pulse_amplitude;
+    if (!pulse && index == objective.layout().lead) e = as_wide_as_sides(e, minimum, scale);
+    parts[count++].weight = fit.candidates[i].weight;
   }
   return averaged({parts.data(), count}, scale);
 }

@@ -2,6 +2,7 @@
 #include <algorithm>
 #include <cmath>
 
+#include "model/infer/hot_start.hpp"
 #include "model/infer/line_modes.hpp"
 #include "model/infer/monotone.hpp"
 #include "model/infer/rules.hpp"
@@ -201,6 +202,24 @@ void refine_others(const Problem& problem, const MonotoneFit& plain, std::vector
   }
 }
 
+/// Adds what a hot thermal state says, to the mode of its frequency or as one of its own.
+void add_hot(const Problem& problem, double flat, std::vector<ModeSolutions>& modes, FitWorkspace& work) {
+  for (const Physical& start : hot_starts(problem, flat, modes, work)) {
+    auto hot = refine(problem, Dynamics::thermal, start, work);
+    if (!hot || (!modes.empty() && !(hot->aicc < modes.front().best().aicc + problem.options.rival_margin))) continue;
+    const auto same = std::find_if(modes.begin(), modes.end(), [&](const ModeSolutions& mode) { return same_mode(problem, mode.best(), *hot); });
+    if (same == modes.end()) {
+      modes.push_back({{std::move(*hot)}});
+      continue;
+    }
+    auto& solutions = same->solutions;
+    const auto there = std::find_if(solutions.begin(), solutions.end(), [](const Solution& s) { return s.dynamics == Dynamics::thermal; });
+    if (there == solutions.end()) solutions.push_back(std::move(*hot));
+    else if (hot->aicc < there->aicc) *there = std::move(*hot);
+    std::stable_sort(solutions.begin(), solutions.end(), by_aicc);
+  }
+}
+
 /// The candidate under which a start is refined first.
 Dynamics first_candidate(const Prior& prior, bool damped) {
   if (damped)
@@ -252,6 +271,7 @@ std::vector<ModeSolutions> refine_modes(const Problem& problem, std::span<const 
   const auto better = [](const ModeSolutions& a, const ModeSolutions& b) { return a.best().aicc < b.best().aicc; };
   std::stable_sort(modes.begin(), modes.end(), better);
   refine_others(problem, plain, modes, work);
+  add_hot(problem, plain.flat, modes, work);
   std::stable_sort(modes.begin(), modes.end(), better);
   return modes;
 }

@@ -6,6 +6,7 @@
 #include <cmath>
 
 #include "model/infer/outliers.hpp"
+#include "model/infer/second_doubt.hpp"
 #include "model/infer/starts.hpp"
 #include "model/infer/under_prior.hpp"
 #include "model/quantity/constants.hpp"
@@ -33,6 +34,11 @@ constexpr double kMostSteps = 60.0;
 constexpr double kBeyond = 0.3, kLineStep = 0.15;
 // So many pairs of a shape are refined, and of a line's shapes together.
 constexpr std::size_t kPairs = 4, kLinePairs = 6;
+
+// Starts are only sorted at first, to 0.02 in deviance or as far as so many evaluations go, as those of one component are; the best is
+// finished where it gains more than this, below which it is not heard.
+constexpr SolverOptions kSorting{.decrease_tolerance = 0.01, .max_evaluations = 60};
+constexpr double kWorthFinishing = 1.0;
 
 /// Shapes of one component at each place that is tried, a column a place.
 struct Shapes {
@@ -153,18 +159,17 @@ Physical started(const ScanBatch& scan, const Fit& fit, const Pair& pair) {
 /// What two components leave at best: minus twice the log likelihood, in units of the deviance, priors counted.
 struct Best {
   double left = std::numeric_limits<double>::infinity();
-  Physical physical;
+  Minimum minimum;
 };
-Best best_of_two(const ScanBatch& scan, const Readout& readout, const Prior& known, const Fit& fit, double main, FitWorkspace& work) {
-  Prior with = known;
-  with.second = true;
+Best best_of_two(const ScanBatch& scan, const Readout& readout, const ScanObjective& two, const Fit& fit, double main, double left_by_one) {
   Best best;
-  const ScanObjective two(scan, readout, with, Dynamics::dephasing, {}, fit.negative_contrast, work.objective);
-  for (const auto& pair : starting_pairs(scan, readout, fit, main)) {
-    const auto minimum = minimise(two, two.pack(started(scan, fit, pair)), two.bounds());
+  const auto descend = [&](const Vector& from, const SolverOptions& options) {
+    const auto minimum = minimise(two, from, two.bounds(), options);
     const double left = 2.0 * minimum.value * readout.dispersion;
-    if (left < best.left) best = {left, two.unpack(minimum.x)};
-  }
+    if (left < best.left) best = {left, minimum};
+  };
+  for (const auto& pair : starting_pairs(scan, readout, fit, main)) descend(two.pack(started(scan, fit, pair)), kSorting);
+  if (left_by_one - best.left > kWorthFinishing) descend(Vector(best.minimum.x), {});
   return best;
 }
 
@@ -223,13 +228,20 @@ void look_for_second(const ScanBatch& scan, const Readout& readout, const FitOpt
   const ScanObjective one(scan, plain, known, fit.chosen, {}, fit.negative_contrast, work.objective);
   const double left_by_one = left_by_single(one, readout, fit, work);
   if (!std::isfinite(left_by_one)) return;
-  const auto best = best_of_two(scan, plain, known, fit, one.apparent_frequency(fit.physical), work);
-  const double gain = (left_by_one - best.left) / std::max(1.0, best.left / std::max(1.0, fit.quality.dof - 2.0));
-  if (!(gain > kSeen)) return;
+  const double main = one.apparent_frequency(fit.physical);
+  Prior with = known;
+  with.second = true;
+  const ScanObjective two(scan, plain, with, Dynamics::dephasing, {}, fit.negative_contrast, work.objective);
+  const auto best = best_of_two(scan, plain, two, fit, main, left_by_one);
+  if (!std::isfinite(best.left)) return;
+  const double scatter = std::max(1.0, best.left / std::max(1.0, fit.quality.dof - 2.0)), gain = (left_by_one - best.left) / scatter;
   const bool line = scan.kind == Axis::detuning;
-  if (!line && !pulses_doubted(options, fit, best.physical)) return;
-  const double first = line ? best.physical.line_offset : best.physical.generalised;
-  fit.quality.second = {first, line ? first + best.physical.second_place : first * best.physical.second_place, best.physical.second_share, gain};
+  if (!line && !(gain > kSeen)) return heed_second({two, best.minimum, gain, std::max(1.0, scatter / fit.dispersion)}, options, fit);
+  if (!(gain > kSeen)) return;
+  const Physical found = two.unpack(best.minimum.x);
+  if (!line && !pulses_doubted(options, fit, found)) return;
+  const double first = line ? found.line_offset : found.generalised;
+  fit.quality.second = {first, line ? first + found.second_place : first * found.second_place, found.second_share, gain};
 }
 
 }  // namespace halfturn::infer

@@ -4,26 +4,20 @@
 #include <cmath>
 #include <random>
 
-#include "plugin/log/memory_log.hpp"
 #include "plugin/rehearse/integrator.hpp"
-#include "plugin/service/service.hpp"
 #include "plugin/wire/encode.hpp"
-#include "tests/support/catch.hpp"
+#include "tests/plugin/service/house.hpp"
 
 using namespace halfturn;
+using namespace halfturn::tests;
 
 namespace {
 
 constexpr double kTwoPi = 6.283185307179586;
 constexpr wire::Time kMinute = 60'000'000'000;
 
-struct StoppedClock final : service::Clock {
-  wire::Time time = 1'790'000'000'000'000'000;
-  wire::Time now() const override { return time; }
-};
-
-std::shared_ptr<const config::Configuration> configuration() {
-  const std::string text = R"(format: 1
+std::shared_ptr<const config::Configuration> red_drive() {
+  return configured(R"(format: 1
 log: nights.db
 drives:
   red:
@@ -35,11 +29,7 @@ drives:
       split: {angle: pi/2, length: 2.00 us, tick: 8 ns, limits: [0.5 us, 10 us]}
       kick:  {angle: pi/2, length: 4 us, adjust: amplitude, amplitude: 0.25, limits: [0.05, 0.9], shape: {kind: blackman}}
     switching: {dead_time: 0 ns, uncertainty: 20 ns}
-)";
-  auto reading = config::read(text, "");
-  for (const auto& f : reading.faults) UNSCOPED_INFO(f.path << ": " << f.message);
-  REQUIRE(reading.configuration);
-  return std::make_shared<const config::Configuration>(*reading.configuration);
+)");
 }
 
 /// What is true: the coupling k a / sqrt(1 + (a/a_s)^2) of a drive 1.5 kHz off the line, with the lifetime of 3P1.
@@ -72,51 +62,9 @@ struct Apparatus {
   }
 };
 
-wire::Request applied(const std::string& id, const std::map<std::string, double>& pulses) {
-  wire::Request request;
-  request.kind = wire::Kind::applied;
-  request.id = request.digest = id;
-  request.drive = "red";
-  request.pulses = pulses;
-  return request;
-}
-
-struct House {
-  StoppedClock clock;
-  log::MemoryLog log;
-  std::shared_ptr<const config::Configuration> configured = configuration();
-  std::unique_ptr<service::Service> service;
-
-  House() { restart(); }
-  void restart() {
-    service = std::make_unique<service::Service>(configured, log, clock, "test");
-    REQUIRE(service->restore());
-  }
-  wire::Reply ask(wire::Request request) {
-    auto taken = service->accept(std::move(request), true);
-    if (auto* reply = std::get_if<wire::Reply>(&taken)) return *reply;
-    auto task = std::get<service::Task>(std::move(taken));
-    if (task.needs_fit()) service::Service::fit(task);
-    auto settled = service->settle({&task, 1});
-    REQUIRE(settled.at(0).reply);
-    return *settled[0].reply;
-  }
-  wire::Fitted fit(wire::Request request) { return std::get<wire::Fitted>(ask(std::move(request))); }
+struct House : HouseWith<log::MemoryLog> {
+  House() : HouseWith(red_drive()) {}
 };
-
-const wire::Estimate& estimate(const wire::Fitted& fitted, const std::string& name) {
-  for (const auto& [key, value] : fitted.estimates)
-    if (key == name) return value;
-  FAIL("no estimate " << name);
-  return fitted.estimates.front().second;
-}
-
-const wire::Pulse& pulse(const wire::Fitted& fitted, const std::string& name) {
-  for (const auto& [key, value] : fitted.pulses)
-    if (key == name) return value;
-  FAIL("no pulse " << name);
-  return fitted.pulses.front().second;
-}
 
 bool says(const std::vector<std::string>& lines, const std::string& words) {
   return std::any_of(lines.begin(), lines.end(), [&](const std::string& line) { return line.find(words) != std::string::npos; });
@@ -172,7 +120,7 @@ TEST_CASE("amplitudes applied are those compared with, in status, and after a re
   const Apparatus apparatus;
   std::mt19937_64 random(2);
   const double proposed = pulse(house.fit(apparatus.scan("a", random)), "flip").length_s;
-  CHECK(std::holds_alternative<wire::Noted>(house.ask(applied("b", {{"flip", proposed}, {"split", 2.08e-6}}))));
+  CHECK(std::holds_alternative<wire::Noted>(house.ask(applied_of("b", {{"flip", proposed}, {"split", 2.08e-6}}))));
   for (const bool restarted : {false, true}) {
     CAPTURE(restarted);
     if (restarted) house.restart();
@@ -206,11 +154,11 @@ TEST_CASE("amplitudes applied are those compared with, in status, and after a re
 
 TEST_CASE("a length applied as an amplitude is refused") {
   House house;
-  const auto fault = std::get<wire::Error>(house.ask(applied("x", {{"flip", 4e-6}}))).fault;
+  const auto fault = std::get<wire::Error>(house.ask(applied_of("x", {{"flip", 4e-6}}))).fault;
   CHECK(fault.code == "bad_value");
   CHECK(fault.where == "pulses.flip");
   CHECK(fault.message.find("relative drive amplitude, such as 0.5") != std::string::npos);
-  CHECK(std::holds_alternative<wire::Noted>(house.ask(applied("y", {{"flip", 0.95}}))));
+  CHECK(std::holds_alternative<wire::Noted>(house.ask(applied_of("y", {{"flip", 0.95}}))));
   const auto state = house.service->state();
   REQUIRE(state.troubles.size() == 1);
   CHECK(state.troubles[0].find("red: the pulse `flip` in force, 0.95000, lies outside its limits, 0.10000 to 0.90000. Load an amplitude") == 0);

@@ -4,12 +4,10 @@
 #include <cmath>
 #include <random>
 
-#include "plugin/config/configuration.hpp"
-#include "plugin/log/memory_log.hpp"
-#include "plugin/service/service.hpp"
-#include "tests/support/catch.hpp"
+#include "tests/plugin/service/house.hpp"
 
 using namespace halfturn;
+using namespace halfturn::tests;
 
 namespace {
 
@@ -18,29 +16,16 @@ constexpr double kRabi = kTwoPi * 125e3;
 constexpr int kPoints = 40, kShots = 100;
 constexpr double kFirst = 0.4e-6, kStep = 0.4e-6, kFloor = 0.03, kContrast = 0.92;
 
-struct MovingClock final : service::Clock {
-  wire::Time time = 1'790'000'000'000'000'000;
-  wire::Time now() const override { return time; }
-};
-
-std::shared_ptr<const config::Configuration> configured(const std::string& switching) {
-  auto reading = config::read("format: 1\ndrives:\n  red:\n    dynamics: [undamped]\n    switching: " + switching +
-                                  "\n    pulses:\n      flip: {angle: pi, length: 4.06 us}\n      split: {angle: pi/2, length: 2.06 us}\n", "");
-  REQUIRE(reading.configuration);
-  return std::make_shared<const config::Configuration>(*reading.configuration);
+std::shared_ptr<const config::Configuration> switched(const std::string& switching) {
+  return configured("format: 1\ndrives:\n  red:\n    dynamics: [undamped]\n    switching: " + switching +
+                    "\n    pulses:\n      flip: {angle: pi, length: 4.06 us}\n      split: {angle: pi/2, length: 2.06 us}\n");
 }
 
-struct Night {
-  MovingClock clock;
-  log::MemoryLog log;
-  std::unique_ptr<service::Service> service;
+struct Night : HouseWith<log::MemoryLog> {
   std::mt19937_64 random;
   int scans = 0, shots = kShots;
 
-  Night(unsigned seed, const std::string& switching = "{dead_time: 0 ns, uncertainty: 100 ns}") : random(seed) {
-    service = std::make_unique<service::Service>(configured(switching), log, clock, "test");
-    REQUIRE(service->restore());
-  }
+  Night(unsigned seed, const std::string& switching = "{dead_time: 0 ns, uncertainty: 100 ns}") : HouseWith(switched(switching)), random(seed) {}
 
   wire::Fitted flop(double dead_time_s, bool store = true) {
     wire::Request request;
@@ -59,13 +44,7 @@ struct Night {
     }
     request.scans = {scan};
     clock.time += 600'000'000'000;  // ten minutes
-    auto taken = service->accept(request, true);
-    REQUIRE(std::holds_alternative<service::Task>(taken));
-    auto task = std::get<service::Task>(std::move(taken));
-    service::Service::fit(task);
-    auto settled = service->settle({&task, 1});
-    REQUIRE(settled[0].reply);
-    return std::get<wire::Fitted>(*settled[0].reply);
+    return fit(std::move(request));
   }
 };
 
@@ -230,7 +209,7 @@ TEST_CASE("what is known of the dead time is the log's: read again it is the sam
   for (int i = 0; i < 8; ++i) night.flop(60e-9);
   const double with = dead_time(night.flop(60e-9)).sigma;
   const double without = dead_time(night.flop(60e-9, false)).sigma;
-  night.service = std::make_unique<service::Service>(configured("{dead_time: 0 ns, uncertainty: 100 ns}"), night.log, night.clock, "test");
+  night.service = std::make_unique<service::Service>(switched("{dead_time: 0 ns, uncertainty: 100 ns}"), night.log, night.clock, "test");
   REQUIRE(night.service->restore());
   const double after = dead_time(night.flop(60e-9)).sigma;
   CHECK(with < 0.7 * without);

@@ -11,26 +11,21 @@
 
 #include "model/atom/catalogue.hpp"
 #include "plugin/config/scan_file.hpp"
-#include "plugin/log/memory_log.hpp"
 #include "plugin/wire/decode.hpp"
 #include "plugin/wire/encode.hpp"
 #include "plugin/wire/time.hpp"
-#include "tests/support/catch.hpp"
+#include "tests/plugin/service/house.hpp"
 
 using namespace halfturn;
+using namespace halfturn::tests;
 
 namespace {
 
 constexpr double kTwoPi = 6.283185307179586;
 constexpr wire::Time kMinute = 60'000'000'000;
 
-struct StoppedClock final : service::Clock {
-  wire::Time time = 1'790'000'000'000'000'000;
-  wire::Time now() const override { return time; }
-};
-
-std::shared_ptr<const config::Configuration> configuration() {
-  const std::string text = R"(format: 1
+std::shared_ptr<const config::Configuration> red_drive() {
+  return configured(R"(format: 1
 log: nights.db
 drives:
   red:
@@ -43,11 +38,7 @@ drives:
       flip:  {angle: pi,   length: 4.00 us, tick: 8 ns, limits: [1 us, 20 us]}
       split: {angle: pi/2, length: 2.00 us, tick: 8 ns, limits: [0.5 us, 10 us]}
     switching: {dead_time: 0 ns, uncertainty: 20 ns}
-)";
-  auto reading = config::read(text, "");
-  for (const auto& f : reading.faults) UNSCOPED_INFO(f.path << ": " << f.message);
-  REQUIRE(reading.configuration);
-  return std::make_shared<const config::Configuration>(*reading.configuration);
+)");
 }
 
 /// Counts from Torrey's closed solution on resonance (Phys. Rev. 76, 1059 (1949)) with the 21.3 us of the 3P1 level.
@@ -121,58 +112,12 @@ wire::Request history_of(const std::string& id) {
   return history;
 }
 
-wire::Request applied_of(const std::string& id, const std::map<std::string, double>& pulses) {
-  wire::Request applied;
-  applied.kind = wire::Kind::applied;
-  applied.id = applied.digest = id;
-  applied.drive = "red";
-  applied.pulses = pulses;
-  return applied;
-}
-
-template <class Log>
-struct HouseWith {
-  StoppedClock clock;
-  Log log;
-  std::shared_ptr<const config::Configuration> configured = configuration();
-  std::unique_ptr<service::Service> service;
-
-  HouseWith() { restart(); }
-  void restart() {
-    service = std::make_unique<service::Service>(configured, log, clock, "test");
-    REQUIRE(service->restore());
-  }
-  /// Accepted and fitted.
-  service::Task accepted(wire::Request request, bool answers = true) {
-    auto taken = service->accept(std::move(request), answers);
-    REQUIRE(std::holds_alternative<service::Task>(taken));
-    auto task = std::get<service::Task>(std::move(taken));
-    if (task.needs_fit()) service::Service::fit(task);
-    return task;
-  }
-  service::Settled settle(service::Task task) {
-    auto settled = service->settle({&task, 1});
-    REQUIRE(settled.size() == 1);
-    return std::move(settled[0]);
-  }
-  wire::Reply ask(wire::Request request) {
-    auto taken = service->accept(request, true);
-    if (auto* reply = std::get_if<wire::Reply>(&taken)) return *reply;
-    auto settled = settle(accepted(std::move(request)));
-    REQUIRE(settled.reply);
-    return *settled.reply;
-  }
+struct House : HouseWith<log::MemoryLog> {
+  House() : HouseWith(red_drive()) {}
 };
-
-using House = HouseWith<log::MemoryLog>;
-using FaultyHouse = HouseWith<FaultyLog>;
-
-const wire::Estimate& estimate(const wire::Fitted& fitted, const std::string& name) {
-  for (const auto& [key, value] : fitted.estimates)
-    if (key == name) return value;
-  FAIL("no estimate " << name);
-  return fitted.estimates.front().second;
-}
+struct FaultyHouse : HouseWith<FaultyLog> {
+  FaultyHouse() : HouseWith(red_drive()) {}
+};
 
 }  // namespace
 
@@ -355,7 +300,7 @@ TEST_CASE("what cannot be done is said with its code and place") {
 TEST_CASE("a log that fails answers log_unavailable and moves no state") {
   FaultyLog log;
   StoppedClock clock;
-  service::Service service(configuration(), log, clock, "test");
+  service::Service service(red_drive(), log, clock, "test");
   REQUIRE(service.restore());
   std::mt19937_64 random(6);
   log.full = true;
@@ -495,7 +440,7 @@ TEST_CASE("the text of a configuration is in the log before the first fit under 
   FaultyHouse house;
   std::mt19937_64 random(9);
   house.ask(flop("a", 118e3, random));
-  auto fresh = *configuration();
+  auto fresh = *red_drive();
   fresh.fingerprint = "another";
   house.service->configure(std::make_shared<const config::Configuration>(fresh));
   house.log.full = true;
@@ -504,7 +449,7 @@ TEST_CASE("the text of a configuration is in the log before the first fit under 
   house.log.configurations.pop_back();  // taken back with its group
   CHECK(std::holds_alternative<wire::Fitted>(house.ask(flop("b", 118e3, random))));
   house.ask(flop("c", 118e3, random));
-  CHECK(house.log.configurations == std::vector<std::string>{configuration()->fingerprint, "another"});
+  CHECK(house.log.configurations == std::vector<std::string>{red_drive()->fingerprint, "another"});
   CHECK(house.log.fits_before_a_configuration == 0);
 }
 
@@ -626,7 +571,7 @@ wire::Request joint_of(const std::string& id, std::vector<wire::Scan> scans) {
 
 TEST_CASE("a joint fit of a flop and a line is one reply, moves both tracks, and is read back from the log") {
   House house;
-  house.configured = undamped_drive();
+  house.configuration = undamped_drive();
   house.restart();
   std::mt19937_64 random(41);
   auto a = rabi_scan(wire::AxisKind::duration, 9e3, random);
