@@ -29,6 +29,8 @@ constexpr double kDopplerBehind = 15.0;
 constexpr double kStartsShare = 0.3;
 // Another candidate takes at most so many times off another mode what it took off the best.
 constexpr double kMovesOthers = 1.5;
+// A candidate whose log likelihood stays so far below that of the one it was begun from weighs nothing beside it.
+constexpr double kWeighsNothing = 10.0;
 // What a refinement may still promise to gain to count as finished.
 constexpr double kFinished = 1e-12;  // 1e-6 of a sigma
 
@@ -92,8 +94,9 @@ bool still_the_mode(const Problem& problem, const Solution& from, const Solution
 
 /// Adds a candidate to a mode, begun from `from`; one that slid to another frequency is not this mode's.
 void add_candidate(const Problem& problem, ModeSolutions& mode, Dynamics candidate, const Solution& from, FitWorkspace& work,
-                   const SolverOptions& options = {}) {
+                   SolverOptions options = {}) {
   if (candidate == from.dynamics) return mode.solutions.push_back(from);
+  options.give_up_above = from.minimum.value + kWeighsNothing;
   // An ensemble's envelope is no exponential: where a start as wide as that leads nowhere, a wider and a narrower one are tried.
   for (const double factor : {1.0, 2.5, 0.4}) {
     auto solution = refine(problem, candidate, start_for(problem, candidate, from, factor, work), work, options);

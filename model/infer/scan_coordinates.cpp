@@ -13,6 +13,8 @@ using Kind = dynamics::Ensemble::Kind;
 
 // A signal at exactly 0 or 1 makes the information of a binomial point infinite. 1e-7 costs at most 2e-7 of deviance a shot.
 constexpr double kSignalMargin = 1e-7;
+// A flop that turns by less than this in all, rad, is a parabola whatever its frequency, to a part in a thousand of its rise.
+constexpr double kLeastPhase = 0.1;
 // |Delta| is taken as at least this part of the generalised frequency while Delta^2 is fitted, so that dP/d(Delta^2) =
 // P_Delta / (2 Delta) + ... stays a number; the population changes by less than 1e-8.
 constexpr double kLeastDetuning = 1e-4;
@@ -80,7 +82,8 @@ Bounds ScanObjective::bounds() const {
   const double infinite = std::numeric_limits<double>::infinity();
   const auto& dead = prior_.dead_time;
   // A pulse cannot be shorter than the dead time: its length as the lead coordinate is kept away by `evaluate`.
-  if (lead_.kind != Lead::Kind::pulse_length) limit(layout_.lead, 0.0, infinite);
+  const double slowest = scan_.kind == Axis::duration && !scan_.axis.empty() ? kLeastPhase / longest_of(scan_.axis) : 0.0;
+  if (lead_.kind != Lead::Kind::pulse_length) limit(layout_.lead, slowest, infinite);
   if (prior_.detuning)
     limit(layout_.detuning_square, 0.0, square(std::abs(prior_.detuning->mean) + kPriorReach * prior_.detuning->sigma));
   limit(layout_.dead_time, dead.mean - kPriorReach * dead.sigma, dead.mean + kPriorReach * dead.sigma);

@@ -11,6 +11,10 @@
 namespace halfturn::campaign {
 namespace {
 
+// Where a simple candidate was chosen and the simple ones are so far from excluding a value, the others need not be asked: they take less
+// off the deviance than their parameters cost, or they would have been chosen.
+constexpr double kPlainlyHeld = 15;
+
 /// A damping of the middling sort for a candidate that was not the one chosen.
 void begin_damping(infer::Dynamics dynamics, infer::Physical& start) {
   using infer::Dynamics;
@@ -72,9 +76,12 @@ double held_against(const Case& of, const infer::Fit& fit, std::size_t pulse, do
   infer::Lead lead;
   if (!of.truth.line) lead = {infer::Lead::Kind::pulse_length, of.drive.pulses[pulse].angle_rad, of.drive.pulses[pulse].area_factor};
   double held = INFINITY, free = INFINITY;
-  for (std::size_t i = 0; i < infer::kDynamicsNames.size(); ++i) {
-    const auto dynamics = static_cast<infer::Dynamics>(i);
+  const auto between = [&] { return 2 * (held - free) * fit.dispersion / fit.quality.scatter; };
+  auto order = infer::kAllDynamics;
+  std::stable_partition(order.begin(), order.end(), infer::is_simple);
+  for (const auto dynamics : order) {
     if (!question.prior.candidates.has(dynamics)) continue;
+    if (!infer::is_simple(dynamics) && infer::is_simple(fit.chosen) && between() < kPlainlyHeld) break;
     for (const auto& start : starts(of, fit, dynamics)) {
       const auto objective = question.objective(dynamics, lead, start.contrast() < 0);
       auto bounds = objective.bounds();
@@ -87,7 +94,7 @@ double held_against(const Case& of, const infer::Fit& fit, std::size_t pulse, do
       if (std::isfinite(bound.value)) held = std::min(held, bound.value);
     }
   }
-  return 2 * (held - free) * fit.dispersion / fit.quality.scatter;
+  return between();
 }
 
 double rabi_under_truth(const Case& of, const infer::Fit& fit) {

@@ -8,13 +8,13 @@ constexpr std::string_view kNotSeen = "a Doppler shift whose damping does not sh
 constexpr std::string_view kDeadTimeHeld = "a dead time that the data contradict is held to what is configured until it is three sigma off";
 constexpr std::string_view kAlike = "two frequencies fit alike, so that an interval is the right one half of the time, whoever computes it";
 constexpr std::string_view kSecondComponent = "a second component passes for scatter";
-constexpr std::string_view kOverdamped = "more damping than oscillation: only the product of squared coupling and time is seen";
+constexpr std::string_view kDrift = "a drift below what its test sees passes for a dead time";
 constexpr std::string_view kFringes = "fringes of a line broadened by power and dephasing lie as close as its noise lets them";
 constexpr std::string_view kSecondLine = "a second line passes for scatter or for the breadth of the first";
 
 }  // namespace
 
-// Reached over 20,000 scans of seed 2; figures within three sigma of their target stand by the target. `halfturn-campaign
+// Reached over 60,000 scans of seeds 2, 4 and 5; figures within three sigma of their target stand by the target. `halfturn-campaign
 // --limits` tells how much of that the data force (limits.hpp; 444 scans of seed 2):
 // - doppler: 95 % intervals hold 0.84 at most, 0.82 with nominal ones where nothing hides the shift; 0.91 takes intervals
 //   1.5 times as long on scans that are only damped. What is reached is what can be. Of the 68 % ones 0.63 and 0.58.
@@ -28,18 +28,17 @@ const std::vector<NotYet>& not_yet() {
   static const std::vector<NotYet> table = {
       {"doppler", Figure::low_68, 0.519, kNotSeen},
       {"doppler", Figure::low_95, 0.832, kNotSeen},
-      {"dead_time_beyond", Figure::low_68, 0.455, kDeadTimeHeld},
-      {"dead_time_beyond", Figure::low_95, 0.664, kDeadTimeHeld},
-      {"alias_inside", Figure::low_68, 0.237, kAlike},
+      {"dead_time_beyond", Figure::low_68, 0.404, kDeadTimeHeld},
+      {"dead_time_beyond", Figure::low_95, 0.596, kDeadTimeHeld},
+      {"alias_inside", Figure::low_68, 0.240, kAlike},
       {"alias_inside", Figure::low_95, 0.333, kAlike},
-      {"two_component", Figure::wrong, 0.036, kSecondComponent},
-      {"two_component", Figure::low_95, 0.725, kSecondComponent},
-      {"saturated", Figure::low_95, 0.804, kOverdamped},
+      {"drifting", Figure::wrong, 0.0015, kDrift},
+      {"two_component", Figure::wrong, 0.0125, kSecondComponent},
       {"line_power", Figure::used, 0.937, kFringes},
       {"line_power", Figure::low_68, 0.622, kFringes},
       {"line_power", Figure::low_95, 0.915, kFringes},
-      {"line_two", Figure::wrong, 0.0293, kSecondLine},
-      {"line_two", Figure::low_95, 0.258, kSecondLine},
+      {"line_two", Figure::wrong, 0.0008, kSecondLine},
+      {"line_two", Figure::low_95, 0.29, kSecondLine},
   };
   return table;
 }

@@ -14,6 +14,7 @@ struct Gaps {
   double rival = std::numeric_limits<double>::infinity();  // the next best mode: another frequency, line, or sign of the contrast
   double monotone = 0;                                     // the best curve that only rises or only falls
   double flat = 0;                                         // a flat line
+  double angle_error = 0;                                  // rad: the worst pulse's standard error, the candidates' disagreement in it
 };
 
 /// By a fit of the expected counts with what the daemon is configured with; of a drive with a history, by the reply to them (only
@@ -24,7 +25,8 @@ Gaps gaps(const Case& of);
 /// normal about the gap with a standard deviation of 2 sqrt(gap), which is counted twice.
 double gap_for(double threshold);
 
-/// Whether a scan can be decided: its gaps are what the gates of rival and evidence need, and a line's centre lies inside the window
+/// Whether a scan can be decided: its gaps are what the gates of rival and evidence need, the candidates that describe the expected counts
+/// nearly alike agree on its pulses to what the gate of uncertainty asks, and a line's centre lies inside the window
 /// by twice its bound `offset_bound` (rad/s; of flops not read). Nobody could use one that is not, under these thresholds, without
 /// being told more.
 bool decidable(const Case& of, const Gaps& gaps, double offset_bound);
