@@ -24,6 +24,9 @@ constexpr double kSuspected = 0.5;
 // describes them nearly as well. Of 574 healthy flops of one component, searched whatever their deviance, the highest gained 14.4 (above 12
 // and in doubt: 3), of 107 such lines 11.7; of 250 flops whose dead time had jumped one reached 15.2 (dead_time_test).
 constexpr double kSeen = 16.0;
+// ... or where it is so likely against what was fitted (second_doubt.hpp): of 647 healthy flops (clean, few_points, grid_gapped, decay,
+// spread; seed 6) none was above 0.3.
+constexpr double kLikely = 0.3;
 // A pulse length further than this from that of two components is in doubt: in its own standard errors, which scatter may have widened
 // beyond what is harmless, and as an angle, rad.
 constexpr double kDoubted = 2.0, kDoubtedAngle = 0.025;
@@ -236,12 +239,15 @@ void look_for_second(const ScanBatch& scan, const Readout& readout, const FitOpt
   if (!std::isfinite(best.left)) return;
   const double scatter = std::max(1.0, best.left / std::max(1.0, fit.quality.dof - 2.0)), gain = (left_by_one - best.left) / scatter;
   const bool line = scan.kind == Axis::detuning;
-  if (!line && !(gain > kSeen)) return heed_second({two, best.minimum, gain, std::max(1.0, scatter / fit.dispersion)}, options, fit);
-  if (!(gain > kSeen)) return;
+  const SecondFound second{two, best.minimum, gain, std::max(1.0, scatter / fit.dispersion)};
+  const bool seen = gain > kSeen || (!line && likelihood_of_second(second, fit) > kLikely);
   const Physical found = two.unpack(best.minimum.x);
-  if (!line && !pulses_doubted(options, fit, found)) return;
-  const double first = line ? found.line_offset : found.generalised;
-  fit.quality.second = {first, line ? first + found.second_place : first * found.second_place, found.second_share, gain};
+  if (seen && (line || pulses_doubted(options, fit, found))) {
+    const double first = line ? found.line_offset : found.generalised;
+    fit.quality.second = {first, line ? first + found.second_place : first * found.second_place, found.second_share, gain};
+  } else if (!line && !(gain > kSeen)) {
+    heed_second(second, options, fit);
+  }
 }
 
 }  // namespace halfturn::infer

@@ -48,11 +48,15 @@ void heed(Estimate& given, const Estimate& of_two, double weight, const Scale& s
 
 }  // namespace
 
-void heed_second(const SecondFound& found, const FitOptions& options, Fit& fit) {
+double likelihood_of_second(const SecondFound& found, const Fit& fit) {
   const Physical two = found.two.unpack(found.minimum.x);
-  if (!(std::max(two.generalised, fit.physical.generalised) < fit.sampling.limit)) return;  // beyond it a second one may be anything's alias
+  if (!(std::max(two.generalised, fit.physical.generalised) < fit.sampling.limit)) return 0.0;  // beyond it a second one may be anything's alias
   const double far = std::log(two.second_place) / kUsualRatio, cycles = two.generalised * fit.sampling.span / constants::kTwoPi;
-  const double weight = std::exp(0.5 * (found.gain - kEvenOdds - kByCycles * std::log1p(cycles) - far * far));
+  return std::exp(0.5 * (found.gain - kEvenOdds - kByCycles * std::log1p(cycles) - far * far));
+}
+
+void heed_second(const SecondFound& found, const FitOptions& options, Fit& fit) {
+  const double weight = likelihood_of_second(found, fit);
   if (!(weight >= kWeightHeard)) return;
   const Matrix covariance = covariance_of(found.minimum);
   if (!covariance.allFinite()) return;

@@ -15,6 +15,10 @@ struct SecondFound {
   double gain = 0.0, scatter = 1.0;
 };
 
+/// How likely two components are against what was fitted, by the gain, less for what chance gains over many cycles and for a ratio far
+/// from 1; 0 where the flop lies beyond the sampling limit.
+double likelihood_of_second(const SecondFound& found, const Fit& fit);
+
 /// Averages the pulse lengths of a flop, at both levels, with those that turn two components best: one candidate more, of a weight that
 /// the gain tells against all others together (estimate.hpp, `averaged`), less for what chance gains over many cycles. Leaves the fit
 /// as it is where that weight is not heard or the flop lies beyond the sampling limit, and lengths that have no interval.
