@@ -159,8 +159,8 @@ namespace {
 /// detuning's square at 0: the error at the minimum is then that of its being there, and the likelihood reaches much further the way it
 /// may leave. The campaign's counts are in bound_sigma_test.
 Estimate as_wide_as_sides(Estimate e, const Minimum& minimum, const Scale& scale) {
-  const Matrix covariance = covariance_of(minimum);
-  const bool held = (covariance.diagonal().array() == 0.0).any();  // one at its bound has no variance
+  const auto& bound = minimum.at_bound;
+  const bool held = std::any_of(bound.begin(), bound.end(), [](signed char at) { return at != 0; });
   if (held && std::isfinite(e.low) && std::isfinite(e.high)) e.sigma = std::max(e.sigma, std::max(e.high - e.value, e.value - e.low) / scale.z);
   return e;
 }

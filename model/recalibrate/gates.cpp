@@ -105,8 +105,8 @@ bool far_apart(const infer::Known& a, const infer::Known& b) {
 }
 
 /// What a fit must gain over the best monotone curve. One of any shape fits the noise of a flank as well, so that a line is ahead of it by
-/// less than of a flat one; where the whole interval of its centre lies inside the window, both sides of the centre were seen. Only of a fit that sets nothing aside
-/// and leaves no scatter: two lines passed for one with outliers.
+/// less than of a flat one; where the whole interval of its centre lies inside the window, both sides of the centre were seen. Only of a
+/// fit that sets nothing aside and leaves no scatter: two lines passed for one with outliers.
 double asked_over_monotone(const infer::Fit& fit, const Accept& accept) {
   const bool inside = fit.axis == infer::Axis::detuning && fit.line_offset.low > fit.lowest && fit.line_offset.high < fit.longest;
   const auto& quality = fit.quality;
