@@ -155,7 +155,7 @@ Estimate times(Estimate e, double factor) {
 
 namespace {
 
-/// With a standard error no smaller than the wider side of the interval tells where another parameter lies at its bound, such as a
+/// With a standard error no smaller than the wider side of its interval where another parameter lies at its bound, such as a
 /// detuning's square at 0: the error at the minimum is then that of its being there, and the likelihood reaches much further the way it
 /// may leave. The campaign's counts are in bound_sigma_test.
 Estimate as_wide_as_sides(Estimate e, const Minimum& minimum, const Scale& scale) {
