@@ -18,31 +18,48 @@ using Kind = Readout::Kind;
 constexpr double kFew = 20.0;
 constexpr double kNan = std::numeric_limits<double>::quiet_NaN();
 
+// At most kFew + 7 sqrt(kFew) + 13 outcomes matter.
+constexpr std::size_t kOutcomes = 72;
+
+/// k log k + (n - k) log(n - k) of the outcomes k = 0, 1, ... of n shots (of Poisson, where n is infinite, k log k alone): what of their
+/// deviances does not depend on the mean, kept from point to point while n stays the same.
+struct Entropies {
+  double shots = kNan;
+  std::array<double, kOutcomes> of;
+
+  void fill(double n) {
+    if (shots == n) return;
+    shots = n;
+    const auto part = [](double k) { return k > 0.0 ? k * std::log(k) : 0.0; };
+    for (std::size_t i = 0; i < kOutcomes; ++i) {
+      const auto k = static_cast<double>(i);
+      of[i] = part(k) + (std::isfinite(n) ? part(n - k) : 0.0);
+    }
+  }
+};
+
 /// Sums over all outcomes that matter, from none of the rarer one upwards; probabilities by recurrence. `shots` is infinite
 /// for Poisson; `expected` counts of the rarer outcome. The covariances are with the count itself.
-DevianceMoments exact(double shots, double expected) {
+DevianceMoments exact(double shots, double expected, Entropies& entropies) {
+  entropies.fill(shots);
   const bool counted = std::isfinite(shots);
-  const double p = counted ? expected / shots : 0.0;
+  const double p = counted ? expected / shots : 0.0, odds = counted ? p / (1.0 - p) : expected;
   double probability = counted ? std::exp(shots * std::log1p(-p)) : std::exp(-expected);
   // What lies beyond is met once in 1e15.
   const double last = std::min(shots, std::ceil(expected + 7.0 * std::sqrt(expected) + 12.0));
-  // At most kFew + 7 sqrt(kFew) + 13 outcomes.
-  std::array<double, 72> outcomes, weights, means, deviances;
   const auto count = static_cast<std::size_t>(std::floor(last)) + 1;
-  for (std::size_t k = 0; k < count; ++k) outcomes[k] = static_cast<double>(k);
-  std::fill_n(weights.begin(), count, counted ? shots : 1.0);
-  std::fill_n(means.begin(), count, counted ? p : expected);
-  const Readout all{counted ? Kind::binomial : Kind::poisson, {outcomes.data(), count}, {weights.data(), count}};
-  half_deviances(all, {means.data(), count}, deviances);
+  const double log_rarer = std::log(expected), log_other = counted ? std::log(shots - expected) : 0.0;
   double d1 = 0.0, d2 = 0.0, dk = 0.0, dkk = 0.0;
   for (std::size_t i = 0; i < count; ++i) {
-    const double k = outcomes[i], d = 2.0 * deviances[i];
-    const double weighted = probability * d, away = k - expected;
+    const auto k = static_cast<double>(i);
+    // Half the deviance: k log(k/m) + (n - k) log((n - k)/(n - m)), of Poisson k log(k/m) - (k - m).
+    const double half = entropies.of[i] - k * log_rarer - (counted ? (shots - k) * log_other : k - expected);
+    const double d = std::max(0.0, 2.0 * half), weighted = probability * d, away = k - expected;
     d1 += weighted;
     d2 += weighted * d;
     dk += weighted * away;
     dkk += weighted * away * away;
-    probability *= counted ? (shots - k) * p / ((k + 1.0) * (1.0 - p)) : expected / (k + 1.0);
+    probability *= odds * (counted ? shots - k : 1.0) / (k + 1.0);
   }
   const double spread = expected * (1.0 - p);
   return {d1, d2 - d1 * d1, dk, dkk / spread - d1};
@@ -66,22 +83,22 @@ DevianceMoments poisson_series(double lambda) {
           -a * (1.0 / 6 + a * (1.0 / 3 + a * (0.95 + a * (3.6 + a * 4315.0 / 252)))), 2.0};
 }
 
-DevianceMoments binomial_moments(double shots, double mean) {
+DevianceMoments binomial_moments(double shots, double mean, Entropies& entropies) {
   if (!(shots > 0.0 && mean > 0.0 && mean < 1.0)) return {0.0, 0.0, 0.0, 0.0};
   const double rarer = std::min(mean, 1.0 - mean);
   DevianceMoments out = binomial_series(shots, mean);
   if (shots * rarer < kFew) {
-    out = exact(shots, shots * rarer);
+    out = exact(shots, shots * rarer, entropies);
     if (mean > 0.5) out.covariance = -out.covariance;
   }
   out.covariance = -out.covariance / (mean * (1.0 - mean));
   return out;
 }
 
-DevianceMoments poisson_moments(double exposures, double mean) {
+DevianceMoments poisson_moments(double exposures, double mean, Entropies& entropies) {
   if (!(exposures > 0.0 && mean > 0.0)) return {0.0, 0.0, 0.0, 0.0};
   const double lambda = exposures * mean;
-  DevianceMoments out = lambda < kFew ? exact(std::numeric_limits<double>::infinity(), lambda) : poisson_series(lambda);
+  DevianceMoments out = lambda < kFew ? exact(std::numeric_limits<double>::infinity(), lambda, entropies) : poisson_series(lambda);
   out.covariance = -out.covariance / mean;
   return out;
 }
@@ -159,13 +176,18 @@ void judge(Goodness& out, double used) {
   out.p_value = chi_square_tail(out.deviance / scale, out.expected / scale);
 }
 
+DevianceMoments moments_of(Kind kind, double weight, double mean, Entropies& entropies) {
+  if (kind == Kind::binomial) return binomial_moments(weight, mean, entropies);
+  if (kind == Kind::poisson) return poisson_moments(weight, mean, entropies);
+  if (!(weight < std::numeric_limits<double>::infinity())) return {0.0, 0.0, 0.0, 0.0};
+  return {1.0, 2.0, 0.0, 2.0};
+}
+
 }  // namespace
 
 DevianceMoments deviance_moments(Kind kind, double weight, double mean) {
-  if (kind == Kind::binomial) return binomial_moments(weight, mean);
-  if (kind == Kind::poisson) return poisson_moments(weight, mean);
-  if (!(weight < std::numeric_limits<double>::infinity())) return {0.0, 0.0, 0.0, 0.0};
-  return {1.0, 2.0, 0.0, 2.0};
+  Entropies entropies;
+  return moments_of(kind, weight, mean, entropies);
 }
 
 Goodness goodness(const Readout& readout, std::span<const double> mean, int parameters, std::span<const double> jacobian) {
@@ -174,13 +196,14 @@ Goodness goodness(const Readout& readout, std::span<const double> mean, int para
   Design design(jacobian, mean.size(), known ? parameters : 0);
   std::vector<DevianceMoments> moments(mean.size());
   std::vector<double> information(mean.size());
+  Entropies entropies;
   double used = 0.0;
   for (std::size_t i = 0; i < mean.size(); ++i) {
     const PointLikelihood at = point(readout, i, mean[i]);
     out.deviance += 2.0 * at.half_deviance;
     information[i] = at.information;
     if (!(at.information > 0.0)) continue;
-    moments[i] = deviance_moments(readout.kind, readout.weight[i], mean[i]);
+    moments[i] = moments_of(readout.kind, readout.weight[i], mean[i], entropies);
     out.expected += moments[i].mean;
     out.variance += moments[i].variance;
     if (known) design.add(i, at.information, moments[i].covariance);
