@@ -42,8 +42,8 @@ Estimate from_covariance(double value, double variance, const Scale& scale) {
   return e;
 }
 
-Estimate profiled(const Objective& objective, const Bounds& bounds, const Minimum& minimum, int index, const Scale& scale) {
-  Estimate e = from_covariance(minimum.x[index], covariance_of(minimum)(index, index), scale);
+Estimate profiled(const Objective& objective, const Bounds& bounds, const Minimum& minimum, int index, double variance, const Scale& scale) {
+  Estimate e = from_covariance(minimum.x[index], variance, scale);
   const auto interval = profile_interval(objective, minimum, index, scale.quantile() * scale.scatter, bounds);
   auto end = [](const ProfileEnd& at) { return at.kind == ProfileEnd::Kind::reached ? at.at : kUnknown; };
   e.low = end(interval.low);
@@ -51,10 +51,6 @@ Estimate profiled(const Objective& objective, const Bounds& bounds, const Minimu
   if (interval.lower_found) e.low = e.high = kUnknown;
   if (!std::isfinite(e.low) || !std::isfinite(e.high)) e.why = kOpenInterval;
   return e;
-}
-
-Estimate normal(const Minimum& minimum, int index, const Scale& scale) {
-  return from_covariance(minimum.x[index], covariance_of(minimum)(index, index), scale);
 }
 
 namespace {
@@ -165,18 +161,40 @@ Estimate as_wide_as_sides(Estimate e, const Minimum& minimum, const Scale& scale
   return e;
 }
 
+/// A mode's candidates with the covariance of each that is heard, in the coordinates in which they were found.
+struct Heard {
+  const Problem& problem;
+  const ModeSolutions& mode;
+  std::array<double, kDynamicsCount> weight;
+  std::array<Matrix, kDynamicsCount> covariance;
+
+  Heard(const Problem& problem_, const ModeSolutions& mode_, const Fit& fit) : problem(problem_), mode(mode_) {
+    for (std::size_t i = 0; i < mode.solutions.size(); ++i) {
+      weight[i] = fit.candidates[i].weight;
+      if (heard(i)) covariance[i] = covariance_of(mode.solutions[i].minimum);
+    }
+  }
+  bool heard(std::size_t i) const { return i == 0 || weight[i] >= kWeightHeard; }
+  double variance(std::size_t i, int index, const ScanObjective& objective, const Minimum& minimum) const {
+    if (objective.scan().kind == Axis::amplitude) return covariance_of(minimum)(index, index);
+    if (index != objective.layout().lead) return covariance[i](index, index);
+    const Vector slope = objective.lead_by_generalised(mode.solutions[i].physical);
+    return slope.dot(covariance[i] * slope);
+  }
+};
+
 /// The average over candidates of a lead coordinate (or of the coordinate that `slot` picks). The best has its profile interval; the
 /// others, which fit worse and weigh less, that of their standard error.
 template <class Slot>
-Estimate over_candidates(const Problem& problem, const ModeSolutions& mode, const Fit& fit, Lead lead, const Scale& scale, Slot slot,
-                         FitWorkspace& work) {
+Estimate over_candidates(const Heard& heard, const Fit& fit, Lead lead, const Scale& scale, Slot slot, FitWorkspace& work) {
+  const Problem& problem = heard.problem;
   // What a scan that shows nothing says is withheld in the end (shown.hpp), and not worth a profile.
   const bool shown = fit.quality.over_flat >= problem.options.least_evidence;
   std::array<Part, kDynamicsCount> parts;
   std::size_t count = 0;
-  for (std::size_t i = 0; i < mode.solutions.size(); ++i) {
-    const auto& solution = mode.solutions[i];
-    if (i > 0 && fit.candidates[i].weight < kWeightHeard) continue;
+  for (std::size_t i = 0; i < heard.mode.solutions.size(); ++i) {
+    const auto& solution = heard.mode.solutions[i];
+    if (!heard.heard(i)) continue;
     const ScanObjective objective(problem.scan, problem.readout, problem.prior, solution.dynamics, lead, solution.negative_contrast,
                                   work.objective);
     const Minimum minimum = in_coordinates(objective, solution);
@@ -184,11 +202,12 @@ Estimate over_candidates(const Problem& problem, const ModeSolutions& mode, cons
     // A drive that saturates below what the pulse needs, or couplings that no pulse turns together. What lesser candidates say is no answer.
     if (!std::isfinite(minimum.x[index]))
       return {kUnknown, kUnknown, kUnknown, kUnknown, lead.kind == Lead::Kind::pulse_amplitude ? kOutOfReach : kNoPulse};
+    const double variance = heard.variance(i, index, objective, minimum);
     Estimate& e = parts[count].estimate;
-    e = shown && i == 0 ? profiled(objective, objective.bounds(), minimum, index, scale) : normal(minimum, index, scale);
+    e = shown && i == 0 ? profiled(objective, objective.bounds(), minimum, index, variance, scale) : from_covariance(minimum.x[index], variance, scale);
     const bool pulse = lead.kind == Lead::Kind::pulse_length || lead.kind == Lead::Kind::pulse_amplitude;
     if (!pulse && index == objective.layout().lead) e = as_wide_as_sides(e, minimum, scale);
-    parts[count++].weight = fit.candidates[i].weight;
+    parts[count++].weight = heard.weight[i];
   }
   return averaged({parts.data(), count}, scale);
 }
@@ -305,25 +324,26 @@ void fill_readout(const ScanObjective& objective, const Scale& scale, Fit& fit) 
 
 /// The part of the coupling lost at the largest amplitude; below 0 where the gain rises.
 Estimate lost(const ScanObjective& objective, const Minimum& minimum, double largest, const Scale& scale) {
-  const Estimate q = profiled(objective, objective.bounds(), minimum, objective.layout().compression, scale);
+  const int index = objective.layout().compression;
+  const Estimate q = profiled(objective, objective.bounds(), minimum, index, covariance_of(minimum)(index, index), scale);
   const auto part = [largest](double compression) { return 1.0 - compressed(largest, compression) / largest; };
   return {part(q.value), q.sigma * std::abs(compressed_by_compression(largest, q.value)) / largest, part(q.low), part(q.high), q.why};
 }
 
-void fill_amplitudes(const Problem& problem, const ModeSolutions& mode, const ScanObjective& objective, const Scale& scale, Fit& fit,
-                     FitWorkspace& work) {
+void fill_amplitudes(const Heard& heard, const ScanObjective& objective, const Scale& scale, Fit& fit, FitWorkspace& work) {
+  const Problem& problem = heard.problem;
   const auto lead_slot = [](const Layout& layout) { return layout.lead; };
   const double q = fit.physical.compression;
   const double seen = compressed(fit.longest, q) - compressed(fit.lowest, q);
   fit.rabi = fit.rabi_mean = {kUnknown, kUnknown, kUnknown, kUnknown, kNotThisScan};
   fit.dead_time_s = fit.rabi;  // its prior at best
   fit.quality.cycles = fit.physical.generalised * fit.generalised.low / fit.generalised.value * seen / constants::kTwoPi;
-  fit.compression = lost(objective, mode.best().minimum, fit.longest, scale);
-  fit.rabi_per_amplitude = over_candidates(problem, mode, fit, {Lead::Kind::per_amplitude}, scale, lead_slot, work);
+  fit.compression = lost(objective, heard.mode.best().minimum, fit.longest, scale);
+  fit.rabi_per_amplitude = over_candidates(heard, fit, {Lead::Kind::per_amplitude}, scale, lead_slot, work);
   for (const auto& pulse : problem.options.pulses) {
     const Lead lead{Lead::Kind::pulse_amplitude, pulse.angle_rad, pulse.area_factor, pulse.length_s};
     const bool asked = pulse.length_s > fit.physical.dead_time;
-    fit.pulse_amplitude.push_back(asked ? over_candidates(problem, mode, fit, lead, scale, lead_slot, work) : Estimate{});
+    fit.pulse_amplitude.push_back(asked ? over_candidates(heard, fit, lead, scale, lead_slot, work) : Estimate{});
   }
 }
 
@@ -345,7 +365,8 @@ void estimate(const Problem& problem, const ModeSolutions& mode, Fit& fit, FitWo
   fit.rates = objective.rates(best.physical);
   fit.negative_contrast = best.negative_contrast;
   fit.x = best.minimum.x;
-  fit.covariance = covariance_of(best.minimum) * scale.scatter;
+  const Heard heard(problem, mode, fit);
+  fit.covariance = heard.covariance[0] * scale.scatter;
   fit.quality.conditioning = conditioning(objective, best.minimum);
   fill_from_covariance(problem, objective, scale, fit, work);
   fit.mean_factor = objective.mean_factor(best.physical);
@@ -355,20 +376,20 @@ void estimate(const Problem& problem, const ModeSolutions& mode, Fit& fit, FitWo
   const auto ensemble = [](const Solution& solution) { return is_ensemble(solution.dynamics); };
   const bool ensembles = std::any_of(mode.solutions.begin(), mode.solutions.end(), ensemble);
   const bool detuned = problem.scan.kind == Axis::duration && objective.layout().detuning_square >= 0;
-  const auto lead = [&](Lead::Kind kind) { return over_candidates(problem, mode, fit, {kind}, scale, lead_slot, work); };
+  const auto lead = [&](Lead::Kind kind) { return over_candidates(heard, fit, {kind}, scale, lead_slot, work); };
   fit.generalised = lead(ensembles ? Lead::Kind::mean : Lead::Kind::generalised);
   fit.rabi = ensembles || detuned ? lead(Lead::Kind::bare) : fit.generalised;
   fit.rabi_mean = detuned ? times(fit.rabi, fit.mean_factor) : fit.generalised;
   if (problem.scan.kind == Axis::detuning) {
-    fit.line_offset = over_candidates(problem, mode, fit, {}, scale, offset_slot, work);
+    fit.line_offset = over_candidates(heard, fit, {}, scale, offset_slot, work);
     fit.generalised = {kUnknown, kUnknown, kUnknown, kUnknown, kNotThisScan};
     return;
   }
   fit.line_offset.why = kNotThisScan;
-  if (problem.scan.kind == Axis::amplitude) return fill_amplitudes(problem, mode, objective, scale, fit, work);
+  if (problem.scan.kind == Axis::amplitude) return fill_amplitudes(heard, objective, scale, fit, work);
   for (const auto& pulse : problem.options.pulses)
     fit.pulse_length_s.push_back(
-        over_candidates(problem, mode, fit, {Lead::Kind::pulse_length, pulse.angle_rad, pulse.area_factor}, scale, lead_slot, work));
+        over_candidates(heard, fit, {Lead::Kind::pulse_length, pulse.angle_rad, pulse.area_factor}, scale, lead_slot, work));
   fit.quality.cycles = fit.generalised.low * problem.sampling.span / constants::kTwoPi;
 }
 

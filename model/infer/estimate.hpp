@@ -26,11 +26,8 @@ struct Scale {
 /// The estimate of a standard error, with its reason where there is none.
 Estimate from_covariance(double value, double variance, const Scale& scale);
 
-/// Estimate of one coordinate with its profile interval.
-Estimate profiled(const Objective& objective, const Bounds& bounds, const Minimum& minimum, int index, const Scale& scale);
-
-/// Estimate of one coordinate with the interval of its standard error.
-Estimate normal(const Minimum& minimum, int index, const Scale& scale);
+/// Estimate of one coordinate, of this variance at the minimum, with its profile interval.
+Estimate profiled(const Objective& objective, const Bounds& bounds, const Minimum& minimum, int index, double variance, const Scale& scale);
 
 /// One candidate's say.
 struct Part {

@@ -2,6 +2,7 @@
 #include <algorithm>
 #include <cmath>
 
+#include "model/infer/conditioning.hpp"
 #include "model/infer/estimate.hpp"
 #include "model/infer/joint_solution.hpp"
 #include "model/infer/rules.hpp"
@@ -25,8 +26,9 @@ Estimate over_candidates(const JointProblem& problem, const JointMode& mode, con
     minimum.x = objective.pack(solution.physical);
     objective.evaluate(minimum.x, minimum.value, &minimum.gradient, &minimum.information);
     const int index = slot(objective.layout());
-    parts[count++] = {fit.candidates[i].weight,
-                      i == 0 ? profiled(objective, objective.bounds(), minimum, index, scale) : normal(minimum, index, scale)};
+    const double variance = covariance_of(minimum)(index, index);
+    parts[count++] = {fit.candidates[i].weight, i == 0 ? profiled(objective, objective.bounds(), minimum, index, variance, scale)
+                                                       : from_covariance(minimum.x[index], variance, scale)};
   }
   return averaged({parts.data(), count}, scale);
 }

@@ -248,6 +248,19 @@ ScanObjective::LeadSlopes ScanObjective::lead_slopes(const Physical& p) const {
   return slopes;
 }
 
+Vector ScanObjective::lead_by_generalised(const Physical& p) const {
+  const auto slopes = lead_slopes(p);
+  Vector by = Vector::Zero(layout_.count);
+  const auto set = [&by, &slopes](int slot, double slope) {
+    if (slot >= 0) by[slot] = -slope / slopes.by_lead;
+  };
+  set(layout_.dead_time, slopes.by_dead_time);
+  set(layout_.detuning_square, slopes.by_square);
+  set(layout_.breadth, slopes.by_breadth);
+  set(layout_.lead, -1.0);
+  return by;
+}
+
 Minimum ScanObjective::in_coordinates(const Minimum& minimum, const Physical& p) const {
   Minimum out = minimum;
   out.x = pack(p);

@@ -109,6 +109,9 @@ class ScanObjective final : public Objective {
   /// information by the chain rule, which costs a tenth of an evaluation. Not of amplitude scans.
   Minimum in_coordinates(const Minimum& minimum, const Physical& physical) const;
 
+  /// Derivatives of the lead coordinate by the coordinates that have the generalised frequency in its place. Not of amplitude scans.
+  Vector lead_by_generalised(const Physical& physical) const;
+
   /// The part of the value that comes from the scan's points alone, without references and priors, and the signal at each
   /// point. False where it cannot be computed.
   bool data_part(const Physical& physical, double& half_deviance, std::span<double> signal) const;
