@@ -24,9 +24,9 @@ constexpr double kSuspected = 0.5;
 // describes them nearly as well. Of 574 healthy flops of one component, searched whatever their deviance, the highest gained 14.4 (above 12
 // and in doubt: 3), of 107 such lines 11.7; of 250 flops whose dead time had jumped one reached 15.2 (dead_time_test).
 constexpr double kSeen = 16.0;
-// ... or where it is so likely against what was fitted (second_doubt.hpp): of 647 healthy flops (clean, few_points, grid_gapped, decay,
-// spread; seed 6) none was above 0.3.
-constexpr double kLikely = 0.3;
+// ... or where it is likelier than what was fitted (second_doubt.hpp): of 647 healthy flops (clean, few_points, grid_gapped, decay,
+// spread; seed 6) none was above 0.3, and of 250 whose dead time had jumped one came to 0.5 (dead_time_test).
+constexpr double kLikely = 1.0;
 // A pulse length further than this from that of two components is in doubt: in its own standard errors, which scatter may have widened
 // beyond what is harmless, and as an angle, rad.
 constexpr double kDoubted = 2.0, kDoubtedAngle = 0.025;

@@ -6,8 +6,8 @@
 namespace halfturn::infer {
 
 /// Fits a fitted scan once more with a second component beside the first (Prior::second) and puts it into fit.quality.second where it
-/// explains the scan better, by a deviance of 16 or by so much that it is likelier than three in ten (second_doubt.hpp), and the answer
-/// is in doubt by it; resets that else. The gain is a likelihood ratio, over the scatter that two components leave: what they explain is
+/// explains the scan better, by a deviance of 16 or by so much that it is likelier than what was fitted (second_doubt.hpp), and the
+/// answer is in doubt by it; resets that else. The gain is a likelihood ratio, over the scatter that two components leave: what they explain is
 /// no scatter. Of a flop the answer is in doubt where the best pulse over both components (or that none was asked for) lies more than two
 /// standard errors or 25 mrad from a length given; of a line always, for it is not told which one is meant. A flop's that is less likely
 /// is heeded instead (second_doubt.hpp): it moves and widens the lengths of pulses.
