@@ -27,6 +27,7 @@ constexpr std::array<int, 2> kCoarser = {1, 2};
 constexpr double kDampedShare = 0.3;
 // Below so many cycles phase and amplitude cannot be told apart by a linear solve, and starts with the phase held are added.
 constexpr double kSlowCycles = 2.0;
+constexpr std::array<double, 5> kSlowStarts = {0.3, 0.5, 0.75, 1.0, 1.4};  // cycles
 
 struct Peak {
   double frequency = 0.0, damping = 0.0;  // the latter beyond what is known
@@ -178,13 +179,17 @@ std::size_t duration_starts(const ScanBatch& scan, const Readout& readout, const
       if (known.fit.gain > 0.0 && found < modes.size() && physical_from(known, sign, prior, readout.kind, mode.start)) modes[found++] = mode;
     }
   }
+  // Random lengths make of a slow flop a peak at many a high frequency: the slow starts have their places beside those.
+  const double slow = kSlowCycles * kTwoPi / sampling.span;
+  const bool may_be_slow = peaks.empty() || std::any_of(peaks.begin(), peaks.end(), [slow](const Peak& peak) { return peak.frequency <= slow; });
+  const std::size_t room = modes.size() - (may_be_slow ? std::min(modes.size(), kSlowStarts.size()) : 0);
   for (const Peak& peak : peaks)
     for (const double sign : {1.0, -1.0}) {
       Mode mode{{}, peak.damping > 0.0, peak.fit.gain};
-      if (found < modes.size() && physical_from(peak, sign, prior, readout.kind, mode.start)) modes[found++] = mode;
+      if (found < room && physical_from(peak, sign, prior, readout.kind, mode.start)) modes[found++] = mode;
     }
-  if (found > 0 && !peaks.empty() && peaks.front().frequency * sampling.span > kSlowCycles * kTwoPi) return found;
-  for (const double cycles : {0.3, 0.5, 0.75, 1.0, 1.4}) {
+  if (!may_be_slow && found > 0) return found;
+  for (const double cycles : kSlowStarts) {
     Mode mode;
     if (found < modes.size() && slow_start(points, prior, readout.kind, kTwoPi * cycles / sampling.span, mode.start)) modes[found++] = mode;
   }

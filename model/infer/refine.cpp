@@ -14,16 +14,12 @@ namespace {
 
 using constants::kTwoPi;
 
-// The first refinement of starts only sorts them: to 0.02 in deviance, or as far as so many evaluations go.
-constexpr SolverOptions kSorting{.decrease_tolerance = 0.01, .max_evaluations = 60};
 // Other modes of a line are compared with the best to 2e-4 in deviance.
 constexpr SolverOptions kComparing{.decrease_tolerance = 1e-4, .max_evaluations = 100};
 // A line's Doppler width that nothing holds runs away together with its area, into ensembles of ever more members: in one of four such
-// fits of power-broadened lines, and those took two thirds of all their time. After the first so many evaluations a fit is given up that
-// is behind the mode by more half deviance than can matter; where Doppler widths are true, one fit in 70 takes more than both.
-constexpr SolverOptions kDopplerBegins{.decrease_tolerance = 0.01, .max_evaluations = 12};
-constexpr int kDopplerEnds = 48;
-constexpr double kDopplerBehind = 15.0;
+// fits of power-broadened lines, and those took two thirds of all their time. Where Doppler widths are true, one fit in 70 takes more
+// evaluations than this.
+constexpr int kMostOfDopplerLine = 60;
 // A start is given up that will not come so near the best so far, deviance over what that gains over a flat line: another candidate could
 // take no more off it.
 constexpr double kStartsShare = 0.3;
@@ -119,20 +115,6 @@ void refine_simple(const Problem& problem, ModeSolutions& mode, FitWorkspace& wo
   std::stable_sort(mode.solutions.begin(), mode.solutions.end(), by_aicc);
 }
 
-/// As add_candidate, of a line's Doppler width: given up early where it leads nowhere.
-void add_doppler_line(const Problem& problem, ModeSolutions& mode, const Solution& from, FitWorkspace& work, SolverOptions options) {
-  const bool negative = from.physical.contrast() < 0.0;
-  const ScanObjective objective(problem.scan, problem.readout, problem.prior, Dynamics::doppler, {}, negative, work.objective);
-  const Physical start = start_for(problem, Dynamics::doppler, from, 1.0, work);
-  const Minimum begun = minimise(objective, objective.pack(start), objective.bounds(), kDopplerBegins);
-  const double promised = begun.outcome == Outcome::converged ? 0.0 : std::max(0.0, begun.expected_decrease);
-  const double best = mode.best().minimum.value, scatter = std::max(1.0, 2.0 * best / std::max(1, problem.measured - mode.best().parameters));
-  if (!(begun.value - promised < best + kDopplerBehind * scatter)) return;
-  options.max_evaluations = kDopplerEnds;
-  auto solution = refine(problem, Dynamics::doppler, objective.unpack(begun.x), work, options);
-  if (solution && same_mode(problem, from, *solution)) mode.solutions.push_back(std::move(*solution));
-}
-
 void refine_others(const Problem& problem, ModeSolutions& mode, FitWorkspace& work, const SolverOptions& options) {
   const bool line = problem.scan.kind == Axis::detuning;
   // The best of those with one free rate tells how fast the oscillation fades.
@@ -145,8 +127,9 @@ void refine_others(const Problem& problem, ModeSolutions& mode, FitWorkspace& wo
     if (candidate == Dynamics::thermal && problem.prior.motion.empty()) continue;
     const auto there = [candidate](const Solution& s) { return s.dynamics == candidate; };
     if (std::any_of(mode.solutions.begin(), mode.solutions.end(), there)) continue;  // it was the first, for want of a simple one
-    if (line && candidate == Dynamics::doppler && !only_candidate(problem.prior, candidate)) add_doppler_line(problem, mode, from, work, options);
-    else add_candidate(problem, mode, candidate, from, work, options);
+    SolverOptions of_candidate = options;
+    if (line && !only_candidate(problem.prior, candidate)) of_candidate.max_evaluations = std::min(options.max_evaluations, kMostOfDopplerLine);
+    add_candidate(problem, mode, candidate, from, work, of_candidate);
   }
   std::stable_sort(mode.solutions.begin(), mode.solutions.end(), by_aicc);
 }

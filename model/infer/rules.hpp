@@ -8,12 +8,15 @@
 #include <vector>
 
 #include "model/infer/fit.hpp"
+#include "model/infer/solver.hpp"
 #include "model/quantity/constants.hpp"
 
 /// Rules of the choice among candidates and modes, which fits of one scan and of several have in common. A solution S has `dynamics`,
 /// `minimum`, `aicc` and `apparent`; a mode has its solutions, the best first.
 namespace halfturn::infer {
 
+// The first refinement of starts only sorts them: to 0.02 in deviance, or as far as so many evaluations go.
+inline constexpr SolverOptions kSorting{.decrease_tolerance = 0.01, .max_evaluations = 60};
 // Deviance that a free damping must gain over none for the candidates with other causes of it to be tried. By chance, where there is
 // no damping, a one-sided rate gains more than this in one scan of six.
 inline constexpr double kDampingSeen = 1.0;

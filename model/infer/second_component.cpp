@@ -6,6 +6,7 @@
 #include <cmath>
 
 #include "model/infer/outliers.hpp"
+#include "model/infer/rules.hpp"
 #include "model/infer/second_doubt.hpp"
 #include "model/infer/starts.hpp"
 #include "model/infer/under_prior.hpp"
@@ -38,9 +39,8 @@ constexpr double kBeyond = 0.3, kLineStep = 0.15;
 // So many pairs of a shape are refined, and of a line's shapes together.
 constexpr std::size_t kPairs = 4, kLinePairs = 6;
 
-// Starts are only sorted at first, to 0.02 in deviance or as far as so many evaluations go, as those of one component are; the best is
-// finished where it gains more than this, below which it is not heard.
-constexpr SolverOptions kSorting{.decrease_tolerance = 0.01, .max_evaluations = 60};
+// Starts are only sorted at first, as those of one component are; the best is finished where it gains more than this, below which it is not
+// heard.
 constexpr double kWorthFinishing = 1.0;
 
 /// Shapes of one component at each place that is tried, a column a place.

@@ -11,7 +11,7 @@
 namespace halfturn::infer {
 namespace {
 
-constexpr std::size_t kMostModes = 24, kMostFlopModes = 16;  // of a line, whose power makes fringes; of others
+constexpr std::size_t kMostModes = 24, kMostFlopModes = 21;  // of a line, whose power makes fringes; of others, five of them slow
 // Delta is left out of a flop where even 3 sigma of it would change the frequency by less than this part.
 constexpr double kNegligibleDetuning = 1e-5;
 

@@ -71,7 +71,6 @@ std::int64_t alike(const Case& of) {
   return std::max<std::int64_t>(1, count);
 }
 
-
 /// What expected counts hold against the truth's own lengths, by pulse: the data's part of what makes an answer wrong.
 std::vector<double> held_by_pulse(const Case& quiet) {
   const auto fit = fit_of(quiet);

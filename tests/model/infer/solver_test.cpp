@@ -358,3 +358,79 @@ TEST_CASE("fixed parameters, edges of the domain and nonsense") {
   CHECK(edge.x[0] == Approx(1.0).epsilon(1e-3));
   CHECK(minimise(Edge(), Vector::Constant(1, -1.0), Bounds::none(1)).outcome == Outcome::not_finite);
 }
+
+namespace {
+
+/// floor + sum of log cosh x, whose Newton steps from afar are all of length 1 where its curvature at the minimum, 1, is taken for that
+/// everywhere; written so that it does not overflow.
+struct Funnel final : Objective {
+  double floor = 0.0;
+  bool evaluate(const Vector& x, double& value, Vector* gradient, Matrix* information) const override {
+    value = floor;
+    for (const double at : x) value += std::abs(at) + std::log1p(std::exp(-2.0 * std::abs(at))) - std::numbers::ln2;
+    if (gradient) *gradient = x.array().tanh().matrix();
+    if (information) *information = Matrix::Identity(x.size(), x.size());
+    return true;
+  }
+};
+
+/// One coordinate as in a parabola about 0, the other in a valley about 50 whose curvature the information knows from afar alone.
+struct Valley final : Objective {
+  bool evaluate(const Vector& x, double& value, Vector* gradient, Matrix* information) const override {
+    const double off = (x[1] - 50.0) / 40.0, root = std::sqrt(1.0 + off * off);
+    value = 0.5 * x[0] * x[0] + root;
+    if (gradient) {
+      gradient->resize(2);
+      *gradient << x[0], off / (40.0 * root);
+    }
+    if (information) *information = Vector(Eigen::Vector2d(1.0, x[1] < -60.0 ? 1e-4 : 1e-16)).asDiagonal();
+    return true;
+  }
+};
+
+}  // namespace
+
+TEST_CASE("a search that cannot come near what others reached is given up, and only that") {
+  Funnel funnel;
+  funnel.floor = 5.0;
+  const Vector start = Vector::Constant(3, 60.0);
+  SolverOptions options;
+  options.give_up_above = 6.0;
+  const Minimum reached = minimise(funnel, Vector::Constant(3, 1.5), Bounds::none(3), options);
+  CHECK(reached.outcome == Outcome::converged);
+  CHECK(reached.value == Approx(5.0));
+  options.give_up_above = 1.0;
+  const Minimum given_up = minimise(funnel, start, Bounds::none(3), options);
+  CHECK(given_up.outcome == Outcome::given_up);
+  CHECK(given_up.evaluations <= 5);
+  CHECK(minimise(funnel, start, Bounds::none(3)).outcome == Outcome::converged);
+}
+
+// Bug: a step that a far bound cut short misled the search for the damping that makes it as long as the trust radius. It halved its way down
+// from 1e20, gave up, and left steps of a thousandth of the radius.
+TEST_CASE("a trust region finds its step where the model's own ends on a far bound") {
+  Bounds bounds = Bounds::none(2);
+  bounds.lower[1] = -1e9;
+  bounds.upper[1] = 1e9;
+  const Minimum found = minimise(Valley(), Vector(Eigen::Vector2d(0.3, -100.0)), bounds);
+  CHECK(found.x[0] == Approx(0.0).margin(1e-4));
+  CHECK(found.x[1] == Approx(50.0).epsilon(0.02));
+  CHECK(found.evaluations < 120);
+}
+
+// A gradient that promises a thousand times what there is, as that of a narrow curved valley does: each step gains less than the tolerance.
+TEST_CASE("a search that creeps stalls before its limit") {
+  struct Promising final : Objective {
+    bool evaluate(const Vector& x, double& value, Vector* gradient, Matrix* information) const override {
+      value = 1e-3 * x[0];
+      if (gradient) *gradient = Vector::Ones(1);
+      if (information) *information = Matrix::Ones(1, 1);
+      return true;
+    }
+  };
+  SolverOptions options;
+  options.decrease_tolerance = 0.01;
+  const Minimum crept = minimise(Promising(), Vector::Zero(1), Bounds::none(1), options);
+  CHECK(crept.outcome == Outcome::stalled);
+  CHECK(crept.evaluations <= 20);
+}
